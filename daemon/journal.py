@@ -1,0 +1,65 @@
+"""The ordered journal: what people and devices tell the daemon, besides readings.
+
+A POST, a push button, an MQTT message and `dripleg drained` all write the same entries. An entry
+belongs to the first tick at or after its `at_us`; one dated before the last tick makes the model go
+back. Bodies are plain dataclasses that turn into JSON and back.
+"""
+
+from __future__ import annotations
+
+import json
+from dataclasses import asdict, dataclass
+from typing import Any, Literal
+
+from daemon.errors import JournalError
+
+Outcome = Literal["emptied", "empty", "partly"]
+
+
+@dataclass(frozen=True, slots=True)
+class Drain:
+    """Somebody opened a drain."""
+
+    trap: str
+    outcome: Outcome = "emptied"  # "empty": opened and found empty; "partly": some was left
+    volume_kg: float | None = None  # as the cup read, 1 kg to the litre; None: not measured
+    by: str = ""
+    look: str = ""  # clear, milky, oily, rusty
+
+
+@dataclass(frozen=True, slots=True)
+class Acknowledge:
+    """Somebody has seen an alarm."""
+
+    alarm: str
+    by: str = ""
+
+
+Body = Drain | Acknowledge
+_KINDS: dict[str, type[Drain] | type[Acknowledge]] = {"drain": Drain, "acknowledge": Acknowledge}
+
+
+@dataclass(frozen=True, slots=True)
+class Entry:
+    """A journal entry: when it happened, what, in which order it was written, and by which key."""
+
+    seq: int  # 1, 2, 3 ... as committed
+    at_us: int  # when it happened
+    written_us: int  # when it was committed
+    body: Body
+    key: str = ""  # idempotency key of whoever sent it; "" none
+
+
+def body_to_json(body: Body) -> str:
+    """One JSON object with a `kind`."""
+    kind = next(name for name, cls in _KINDS.items() if isinstance(body, cls))
+    return json.dumps({"kind": kind, **asdict(body)}, sort_keys=True)
+
+
+def body_from_json(text: str) -> Body:
+    """The body that `body_to_json` wrote; JournalError when it is not one."""
+    try:
+        fields: dict[str, Any] = json.loads(text)
+        return _KINDS[fields.pop("kind")](**fields)
+    except (ValueError, KeyError, TypeError) as error:
+        raise JournalError(f"journal entry {text!r} cannot be read: {error}") from error

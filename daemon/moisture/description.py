@@ -1,0 +1,127 @@
+"""A line as the model understands it: stations in order, what each value comes from, traps, outlets.
+
+All values SI: K, Pa, m3, kg of water (1 kg is taken as 1 L), s. A `give_or_take` is a 95 %
+half-width (k = 2) in the unit of its value. The site file's parser builds these; nothing here reads
+a file.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Literal
+
+WATER_KG_PER_M3 = 1000.0  # liquid water; 0.2 % at 20 degC, far below any cup's error
+
+StationKind = Literal["intake", "receiver", "cooler", "pipe", "separator", "coalescer", "regulator"]
+DrainKind = Literal["petcock", "float", "timer", "level", "pressure-off", "none"]
+
+
+@dataclass(frozen=True, slots=True)
+class Fixed:
+    """A value that a person or a default states: `"8 bar"`, `{ value = ..., give_or_take = ... }`."""
+
+    value: float
+    give_or_take: float
+    gauge: bool = False  # a pressure above the atmosphere that the intake's barometer measures
+
+
+@dataclass(frozen=True, slots=True)
+class Measured:
+    """A sensor's channel. `give_or_take` is the site file's, or the data sheet's."""
+
+    channel: str
+    give_or_take: float
+    gauge: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class Like:
+    """As another station, plus a difference."""
+
+    station: str
+    plus: float
+    give_or_take: float
+
+
+@dataclass(frozen=True, slots=True)
+class RiseByDuty:
+    """As another station, plus a rise that follows the compressor's duty with a first-order lag."""
+
+    station: str
+    rise: float  # K at duty 1
+    time_constant_s: float
+    give_or_take: float  # K, of the whole
+
+
+Source = Fixed | Measured | Like | RiseByDuty
+
+
+@dataclass(frozen=True, slots=True)
+class Share:
+    """A fraction between 0 and 1, drawn on the logit scale about its value."""
+
+    value: float
+    give_or_take: float
+
+
+@dataclass(frozen=True, slots=True)
+class Trap:
+    """Somewhere liquid collects, with a drain. Its name is its station's id."""
+
+    drain: DrainKind
+    capacity: Fixed  # kg; beyond it liquid goes on down the line
+    drain_at_kg: float
+    separation: Share  # of the liquid that arrives or forms here, what stays here
+    heel_kg: float = 0.0  # what a drain leaves behind
+    holds_at_start_kg: float = 0.0
+    drain_every: str = "never"  # "working day", "12 h", "3 days" ...: never, or as `every_s` says
+    every_s: float = 0.0  # for "12 h" and the like; 0 for "working day" and "never"
+
+
+@dataclass(frozen=True, slots=True)
+class Station:
+    """One place along the line."""
+
+    id: str
+    kind: StationKind
+    after: str  # the id of the station upstream, "" for the intake
+    temperature: Source
+    pressure: Source
+    relative_humidity: Source | None = None  # the intake's
+    volume: Fixed | None = None  # m3, a receiver's
+    trap: Trap | None = None
+    evaporated: Share = Share(0.5, 0.4)  # of arriving liquid, what may evaporate into dry air
+
+
+@dataclass(frozen=True, slots=True)
+class Outlet:
+    """Where a hose connects."""
+
+    id: str
+    after: str  # a station's id
+    share: float  # of the air used; the shares of a line add up to 1
+
+
+@dataclass(frozen=True, slots=True)
+class Compressor:
+    """What the compressor gives while it runs."""
+
+    delivered: Fixed  # m3/s of free air at intake conditions
+    running: (
+        str | None
+    )  # a contact channel: on means air is made (the loaded contact if there is one)
+    cut_in: Fixed  # Pa gauge
+    cut_out: Fixed  # Pa gauge
+    off_when_closed: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Line:
+    """Everything the model knows of a shop's air line. Stations stand after the one they hang on."""
+
+    stations: tuple[Station, ...]
+    outlets: tuple[Outlet, ...]
+    compressor: Compressor
+    period_s: float  # sampling period; a value is stale after three
+    members: int = 128
+    seed: int = 1

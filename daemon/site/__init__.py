@@ -1,0 +1,1 @@
+"""The site file: read, validated as a whole, typed, and explained."""

@@ -1,0 +1,104 @@
+"""A site file after reading: typed, in SI, every default filled in and remembered as one."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Literal
+
+from daemon.moisture.description import Line
+from sensors.reading import Channel
+from sensors.registry import SensorConfig
+
+Units = Literal["metric", "us"]
+DAY_NAMES = ("mon", "tue", "wed", "thu", "fri", "sat", "sun")
+
+
+@dataclass(frozen=True, slots=True)
+class Hours:
+    """When the shop works, in its own time zone. No spans on any day and `always_open`: always open."""
+
+    # seven tuples, Monday first, of (open, close) in minutes after local midnight, in order
+    spans: tuple[tuple[tuple[int, int], ...], ...]
+    holidays: frozenset[str]  # "2026-12-25"
+    always_open: bool
+
+
+@dataclass(frozen=True, slots=True)
+class Cup:
+    """How drained water is measured. Fractions, and kg for what is added each time."""
+
+    reads_low_by: float = 0.05
+    give_or_take: float = 0.05  # persistent, 95 % half-width, fraction
+    each_time: float = 0.05  # fraction
+    each_time_kg: float = 0.005
+
+
+@dataclass(frozen=True, slots=True)
+class OutletSettings:
+    """What a person asks of an outlet, beside its place on the line."""
+
+    id: str
+    surroundings: str  # the sensor in the air around hose and surface, "" if none
+    work: str  # a profile's name
+    line_margin_k: float | None
+    surface_margin_k: float
+
+
+@dataclass(frozen=True, slots=True)
+class Mqtt:
+    """The broker to tell."""
+
+    host: str
+    port: int
+    user: str = ""
+    password: str = ""
+    tls: bool = False
+    ca_file: str = ""
+    prefix: str = "dripleg"
+
+
+@dataclass(frozen=True, slots=True)
+class Api:
+    """Where the API listens."""
+
+    host: str = "127.0.0.1"
+    port: int = 8080
+
+
+@dataclass(frozen=True, slots=True)
+class DefaultUsed:
+    """One value that nobody said: where, what is used, and why that."""
+
+    table: str  # 'station "tank"'
+    key: str
+    value: str  # in people's units
+    because: str
+
+
+@dataclass(frozen=True, slots=True)
+class Site:
+    """Everything a site file says."""
+
+    path: str
+    id: str
+    name: str
+    timezone: str
+    units: Units
+    sample_every_us: int
+    hours: Hours
+    cup: Cup
+    sensors: tuple[SensorConfig, ...]
+    channels: Mapping[str, Channel]  # every channel that the sensors give, by name
+    line: Line
+    outlets: tuple[OutletSettings, ...]
+    mqtt: Mqtt | None
+    api: Api
+    defaults: tuple[DefaultUsed, ...] = ()
+    without_effect: tuple[str, ...] = ()  # keys that are checked but change nothing yet, with why
+    remarks: tuple[str, ...] = ()  # what a practitioner would say about this line
+
+    @property
+    def traps(self) -> tuple[str, ...]:
+        """The traps' names in the order the air meets them."""
+        return tuple(station.id for station in self.line.stations if station.trap is not None)

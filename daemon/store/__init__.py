@@ -1,0 +1,1 @@
+"""The store: one transaction per tick in SQLite through SQLAlchemy Core."""
