@@ -70,7 +70,7 @@ class ScaledClock:
 
 
 def parse_rfc3339(text: str) -> int:
-    """Microseconds since 1970 UTC from an RFC 3339 time with an offset; ValueError if it is not one."""
+    """Microseconds since 1970 UTC from an RFC 3339 time with an offset, else ValueError."""
     match = _RFC3339.match(text.strip())
     if match is None:
         raise ValueError(

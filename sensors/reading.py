@@ -2,7 +2,7 @@
 
 A reading is in SI (K, Pa, a fraction for relative humidity, 0 or 1 for a contact). It is rounded
 to its channel's step when it is made, so that the model, the store and an export carry one value.
-A part that fails never gives a value: it gives a bad reading with the reason, or raises SensorFault.
+A part that fails gives no value: a bad reading with the reason, or SensorFault.
 """
 
 from __future__ import annotations
@@ -56,7 +56,7 @@ class Reading:
 
 
 def in_steps(value: float, step: float) -> float:
-    """The value rounded to its step: always `count * step`, so that it survives storage to the bit."""
+    """The value rounded to its step: `count * step`, so that it survives storage to the bit."""
     return round(value / step) * step
 
 

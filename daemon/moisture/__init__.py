@@ -1,1 +1,1 @@
-"""The science, pure numpy: moist air, the line's water balance, the ensemble. SI, absolute pressure."""
+"""The science, pure numpy, SI: moist air, the line's water balance, the ensemble."""

@@ -1,4 +1,4 @@
-"""A line as the model understands it: stations in order, what each value comes from, traps, outlets.
+"""A line as the model understands it: stations in order, their sources, traps and outlets.
 
 All values SI: K, Pa, m3, kg of water (1 kg is taken as 1 L), s. A `give_or_take` is a 95 %
 half-width (k = 2) in the unit of its value. The site file's parser builds these; nothing here reads
@@ -18,7 +18,7 @@ DrainKind = Literal["petcock", "float", "timer", "level", "pressure-off", "none"
 
 @dataclass(frozen=True, slots=True)
 class Fixed:
-    """A value that a person or a default states: `"8 bar"`, `{ value = ..., give_or_take = ... }`."""
+    """A value that a person or a default states: `"8 bar"`."""
 
     value: float
     give_or_take: float
@@ -107,9 +107,7 @@ class Compressor:
     """What the compressor gives while it runs."""
 
     delivered: Fixed  # m3/s of free air at intake conditions
-    running: (
-        str | None
-    )  # a contact channel: on means air is made (the loaded contact if there is one)
+    running: str | None  # a contact channel: air is made while on (`loaded` before `running`)
     cut_in: Fixed  # Pa gauge
     cut_out: Fixed  # Pa gauge
     off_when_closed: bool
@@ -117,7 +115,7 @@ class Compressor:
 
 @dataclass(frozen=True, slots=True)
 class Line:
-    """Everything the model knows of a shop's air line. Stations stand after the one they hang on."""
+    """All the model knows of a shop's air line. A station stands after the one it hangs on."""
 
     stations: tuple[Station, ...]
     outlets: tuple[Outlet, ...]

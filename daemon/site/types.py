@@ -16,7 +16,7 @@ DAY_NAMES = ("mon", "tue", "wed", "thu", "fri", "sat", "sun")
 
 @dataclass(frozen=True, slots=True)
 class Hours:
-    """When the shop works, in its own time zone. No spans on any day and `always_open`: always open."""
+    """When the shop works, in its own time zone."""
 
     # seven tuples, Monday first, of (open, close) in minutes after local midnight, in order
     spans: tuple[tuple[tuple[int, int], ...], ...]

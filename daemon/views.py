@@ -1,0 +1,115 @@
+"""What the daemon shows to the outside: immutable views, and the one interface the API is built on.
+
+Views are in SI and microseconds; the API and MQTT turn them into people's units and RFC 3339.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Literal, Protocol
+
+import numpy as np
+import numpy.typing as npt
+
+from daemon.alarms import Alarm
+from daemon.clock import Clock
+from daemon.journal import Body, Entry
+from daemon.site.types import Site
+
+Because = Literal["volume", "calendar"]
+
+
+@dataclass(frozen=True, slots=True)
+class TrapView:
+    """What a trap holds, and whether its drain is due."""
+
+    trap: str
+    at_us: int
+    p05_kg: float
+    p50_kg: float
+    p95_kg: float
+    capacity_kg: float
+    drain_at_kg: float
+    probability_due: float
+    due: bool
+    because: Because | None  # why it is due, or why it will be next; None: neither is known
+    due_at_us: int | None  # the calendar's next time, None without one
+    since: Literal["start", "last drain"]
+    last_drain_us: int | None
+
+
+@dataclass(frozen=True, slots=True)
+class ChannelHealth:
+    """The last thing that a channel said."""
+
+    channel: str
+    time_us: int | None  # of the last good reading
+    value: float | None  # SI
+    fault: str  # "" while it is good
+
+
+@dataclass(frozen=True, slots=True)
+class Health:
+    """Whether the daemon does its job."""
+
+    ok: bool
+    at_us: int
+    started_us: int
+    last_tick_us: int | None
+    ticks: int
+    channels: tuple[ChannelHealth, ...]
+    mqtt: Literal["off", "connected", "not connected"]
+    outbox_waiting: int
+    problems: tuple[str, ...]  # in words
+
+
+@dataclass(frozen=True, slots=True)
+class SeriesOfReadings:
+    """Readings of one channel as arrays of one length, times increasing."""
+
+    channel: str
+    times_us: npt.NDArray[np.int64]
+    values: npt.NDArray[np.float64]  # SI; NaN where the reading is bad
+    faults: tuple[str, ...]  # "" where good
+
+
+@dataclass(frozen=True, slots=True)
+class Recorded:
+    """A journal entry as committed, and whether its key had been seen before."""
+
+    entry: Entry
+    repeated: bool
+
+
+class Running(Protocol):
+    """The running daemon as the API sees it. Safe to call from any thread."""
+
+    @property
+    def site(self) -> Site: ...
+
+    @property
+    def clock(self) -> Clock: ...
+
+    def health(self) -> Health: ...
+
+    def traps(self) -> Sequence[TrapView]:
+        """One view a trap, in line order; empty until the first tick."""
+        ...
+
+    def alarms(self) -> Sequence[Alarm]:
+        """Every alarm that the site can raise, also the normal ones."""
+        ...
+
+    def record(self, body: Body, at_us: int | None = None, key: str = "") -> Recorded:
+        """Commit a journal entry (now, when no time is said). JournalError says what is wrong.
+
+        The same key with the same content gives the first entry again; with other content, error.
+        """
+        ...
+
+    def drains(self, trap: str, from_us: int, to_us: int) -> Sequence[Entry]: ...
+
+    def readings(self, channel: str, from_us: int, to_us: int) -> SeriesOfReadings:
+        """The readings of a channel from a time on, up to but not including another."""
+        ...
