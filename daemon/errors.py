@@ -17,6 +17,10 @@ class UnitError(DriplegError, ValueError):
     """A quantity that cannot be read, or has the wrong unit for its place."""
 
 
+class RangeError(DriplegError, ValueError):
+    """A number outside the range in which a formula holds."""
+
+
 @dataclass(frozen=True, slots=True)
 class Problem:
     """One thing wrong in a site file: where, what was found, and what to write instead."""
