@@ -44,6 +44,10 @@ class Hardware(Protocol):
 
     def lines(self, chip: str) -> Any: ...
 
+    def wait(self, seconds: float) -> None:
+        """Let a part work that long. Emulated parts have finished without any real waiting."""
+        ...
+
 
 @dataclass(frozen=True, slots=True)
 class Driver:
@@ -58,6 +62,8 @@ class Driver:
     # the thread that reads it: sensors that name the same bus share one
     bus: Callable[[SensorConfig], str]
     open: Callable[[SensorConfig, Hardware], Sensor]
+    # a read takes longer than a tick may wait: its readings come with a later tick
+    slow: bool = False
 
 
 DRIVERS: dict[str, Driver] = {}

@@ -1,0 +1,137 @@
+"""The make-believe shop's hardware: the shape of the real one, with emulated parts on it.
+
+A test or the demo asks for a part by where it sits and sets it in physical units; the real drivers
+read it in bytes. `fit` puts in every part that a site file names.
+"""
+
+from __future__ import annotations
+
+import tempfile
+import threading
+from collections.abc import Callable, Iterable
+from pathlib import Path
+
+from sensors.emulated.ads1115 import EmulatedAds1115
+from sensors.emulated.bme280 import EmulatedBme280
+from sensors.emulated.bus import EmulatedI2C
+from sensors.emulated.ds18b20 import EmulatedDs18b20
+from sensors.emulated.lines import EmulatedLine, EmulatedLines
+from sensors.registry import SensorConfig
+
+# a channel's setter: (value in SI, wall-clock microseconds)
+Setter = Callable[[float, int], None]
+
+
+class EmulatedHardware:
+    """Buses, wires and lines, empty until parts are asked for."""
+
+    def __init__(self, folder: Path | None = None, frequency_hz: int = 100_000) -> None:
+        self._own = tempfile.TemporaryDirectory(prefix="dripleg-") if folder is None else None
+        self._folder = Path(self._own.name) if self._own is not None else folder
+        self._frequency_hz = frequency_hz
+        self._lock = threading.RLock()
+        self._buses: dict[int, EmulatedI2C] = {}
+        self._probes: dict[str, EmulatedDs18b20] = {}
+        self._chips: dict[str, EmulatedLines] = {}
+
+    # what drivers ask for
+
+    def i2c(self, bus: int) -> EmulatedI2C:
+        with self._lock:
+            return self._buses.setdefault(bus, EmulatedI2C(self._frequency_hz))
+
+    def one_wire_root(self) -> str:
+        return str(self._folder)
+
+    def lines(self, chip: str) -> EmulatedLines:
+        with self._lock:
+            return self._chips.setdefault(chip, EmulatedLines())
+
+    def wait(self, seconds: float) -> None:
+        """No real time passes; the buses' own time does."""
+        with self._lock:
+            for bus in self._buses.values():
+                bus.wait(seconds)
+
+    def close(self) -> None:
+        """Remove the folder if it is ours. May be called twice."""
+        if self._own is not None:
+            self._own.cleanup()
+
+    # what the shop asks for
+
+    def bme280(self, bus: int, address: int) -> EmulatedBme280:
+        part = self.i2c(bus).parts.setdefault(address, EmulatedBme280())
+        assert isinstance(part, EmulatedBme280), f"0x{address:02x} is another part"
+        return part
+
+    def ads1115(self, bus: int, address: int) -> EmulatedAds1115:
+        part = self.i2c(bus).parts.setdefault(address, EmulatedAds1115())
+        assert isinstance(part, EmulatedAds1115), f"0x{address:02x} is another part"
+        return part
+
+    def ds18b20(self, serial: str) -> EmulatedDs18b20:
+        with self._lock:
+            if serial not in self._probes:
+                self._probes[serial] = EmulatedDs18b20(Path(self.one_wire_root()), serial)
+            return self._probes[serial]
+
+    def line(self, chip: str, number: int) -> EmulatedLine:
+        return self.lines(chip).line(number)
+
+    def fit(self, sensors: Iterable[SensorConfig]) -> dict[str, Setter]:
+        """Put in the parts of these sensors; a setter for every channel, by its name."""
+        setters: dict[str, Setter] = {}
+        for config in sensors:
+            setters |= _FITTERS[config.driver](self, config)
+        return setters
+
+
+def _attribute(part: object, name: str) -> Setter:
+    def put(value: float, _now_us: int) -> None:
+        setattr(part, name, value)
+
+    return put
+
+
+def _fit_bme280(hardware: EmulatedHardware, config: SensorConfig) -> dict[str, Setter]:
+    part = hardware.bme280(config.settings["bus"], config.settings["address"])
+    return {
+        f"{config.id}.temperature": _attribute(part, "temperature_k"),
+        f"{config.id}.relative_humidity": _attribute(part, "relative_humidity"),
+        f"{config.id}.pressure": _attribute(part, "pressure_pa"),
+    }
+
+
+def _fit_transducer(hardware: EmulatedHardware, config: SensorConfig) -> dict[str, Setter]:
+    settings = config.settings
+    adc = hardware.ads1115(settings["bus"], settings["address"])
+    span = settings["range"]
+    part = adc.transducer(settings["input"], span.lowest_pa, span.highest_pa, settings["divider"])
+    if settings["supply_input"] is not None:
+        adc.read_rail(settings["supply_input"], settings["divider"])
+    return {f"{config.id}.pressure": _attribute(part, "pressure_pa")}
+
+
+def _fit_ds18b20(hardware: EmulatedHardware, config: SensorConfig) -> dict[str, Setter]:
+    part = hardware.ds18b20(config.settings["serial"])
+    return {f"{config.id}.temperature": _attribute(part, "temperature_k")}
+
+
+def _fit_contact(hardware: EmulatedHardware, config: SensorConfig) -> dict[str, Setter]:
+    line = hardware.line(config.settings["chip"], config.settings["line"])
+    closed = int(config.settings["closed"] == "high")
+
+    def put(value: float, now_us: int) -> None:
+        line.set(now_us * 1000, closed if value else 1 - closed)
+
+    put(0.0, 0)
+    return {f"{config.id}.contact": put}
+
+
+_FITTERS: dict[str, Callable[[EmulatedHardware, SensorConfig], dict[str, Setter]]] = {
+    "bme280": _fit_bme280,
+    "pressure-transducer": _fit_transducer,
+    "ds18b20": _fit_ds18b20,
+    "contact": _fit_contact,
+}

@@ -1,0 +1,49 @@
+"""The machine's own buses and lines, as drivers ask for them."""
+
+from __future__ import annotations
+
+import threading
+
+from daemon.clock import SystemClock
+from sensors.i2c import LinuxI2C
+from sensors.lines import GpiodLines
+
+ONE_WIRE_ROOT = "/sys/bus/w1/devices"
+
+
+class RealHardware:
+    """Opens a bus when it is first asked for, and once only. Safe to call from any thread."""
+
+    def __init__(self, one_wire_root: str = ONE_WIRE_ROOT) -> None:
+        self._one_wire_root = one_wire_root
+        self._clock = SystemClock()
+        self._never = threading.Event()
+        self._lock = threading.Lock()
+        self._buses: dict[int, LinuxI2C] = {}
+
+    def i2c(self, bus: int) -> LinuxI2C:
+        """`/dev/i2c-<bus>`; OSError when it cannot be opened."""
+        with self._lock:
+            if bus not in self._buses:
+                self._buses[bus] = LinuxI2C(bus)
+            return self._buses[bus]
+
+    def one_wire_root(self) -> str:
+        return self._one_wire_root
+
+    def lines(self, chip: str) -> GpiodLines:
+        return GpiodLines(
+            chip,
+            wall_ns=lambda: self._clock.now_us() * 1000,
+            monotonic_ns=lambda: round(self._clock.monotonic() * 1e9),
+        )
+
+    def wait(self, seconds: float) -> None:
+        self._clock.wait(seconds, self._never)
+
+    def close(self) -> None:
+        """Close the buses. May be called twice; a bus asked for again is opened again."""
+        with self._lock:
+            for bus in self._buses.values():
+                bus.close()
+            self._buses.clear()
