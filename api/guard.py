@@ -1,0 +1,149 @@
+"""Who may ask, and how: the checks before any route, for an API that has no keys yet.
+
+A browser on this machine can be made to send requests here by any page it visits. Three checks stop
+that: the Host header must name this machine (a name that an attacker points at 127.0.0.1 does not),
+a write must come from this API's own pages or from no page at all (Origin, Sec-Fetch-Site), and
+a write must say that it is JSON, which a form cannot. No answer ever grants another origin access.
+"""
+
+from __future__ import annotations
+
+import ipaddress
+import logging
+from urllib.parse import urlsplit
+
+from fastapi import Request
+from starlette.datastructures import Headers, MutableHeaders
+from starlette.types import ASGIApp, Message, Receive, Scope, Send
+
+from api.problems import Problem, problem_response
+
+LARGEST_BODY = 16 * 1024  # bytes; a drain is under 300
+_READING = frozenset({"GET", "HEAD", "OPTIONS"})
+# Names that the internet's name servers never hand out, so that nobody else can own them:
+# RFC 6762 (local), RFC 8375 (home.arpa), ICANN 2024 (internal), common practice (lan).
+_LOCAL_ENDINGS = (".local", ".home.arpa", ".internal", ".lan")
+_SECURITY_HEADERS = {
+    "x-content-type-options": "nosniff",
+    "cross-origin-resource-policy": "same-origin",
+    "referrer-policy": "no-referrer",
+    "content-security-policy": (
+        "default-src 'none'; style-src 'self'; form-action 'self'; "
+        "base-uri 'none'; frame-ancestors 'none'"
+    ),
+    "cache-control": "no-store",
+}
+log = logging.getLogger(__name__)
+
+
+def is_loopback(host: str) -> bool:
+    """Whether an address to listen on can be reached from this machine only."""
+    if host == "localhost":
+        return True
+    address = _address(host)
+    return address is not None and address.is_loopback
+
+
+def _address(host: str) -> ipaddress.IPv4Address | ipaddress.IPv6Address | None:
+    try:
+        return ipaddress.ip_address(host)
+    except ValueError:
+        return None
+
+
+def host_is_ours(header: str, bound_to: str) -> bool:
+    """Whether a Host header names this machine, for an API bound to that address."""
+    try:
+        name = urlsplit(f"//{header}").hostname or ""
+    except ValueError:
+        return False
+    name = name.rstrip(".")
+    if name == bound_to.lower() or is_loopback(name):
+        return True
+    if is_loopback(bound_to) or not name:
+        return False
+    # On the shop's network: an address, a name without a dot, or a name of a local zone. None
+    # of them can be somebody else's domain that was made to point here.
+    return _address(name) is not None or "." not in name or name.endswith(_LOCAL_ENDINGS)
+
+
+def origin_is_ours(headers: Headers) -> bool:
+    """Whether a write comes from this API's own pages, or from no page at all."""
+    if headers.get("sec-fetch-site", "none") not in ("same-origin", "none"):
+        return False
+    origin = headers.get("origin")
+    return origin is None or origin.lower() in (
+        f"http://{headers['host'].lower()}",
+        f"https://{headers['host'].lower()}",
+    )
+
+
+def refusal(method: str, headers: Headers, bound_to: str) -> Problem | None:
+    """Why a request must not reach its route; None when it may."""
+    host = headers.get("host", "")
+    if not host_is_ours(host, bound_to):
+        return Problem("wrong-host", f'the Host header says "{host[:80]}"')
+    if method in _READING:
+        return None
+    if not origin_is_ours(headers):
+        sender = headers.get("origin", headers.get("sec-fetch-site", ""))
+        return Problem("cross-site-write", f'the request was sent by a page of "{sender[:80]}"')
+    return _unfit_body(method, headers)
+
+
+def _unfit_body(method: str, headers: Headers) -> Problem | None:
+    if "transfer-encoding" in headers:
+        return Problem("no-length")
+    length = headers.get("content-length", "0")
+    if not length.isdecimal() or int(length[:20]) > LARGEST_BODY:
+        return Problem("too-large", f"it has {length[:20]} bytes, and {LARGEST_BODY} are taken")
+    media_type = headers.get("content-type", "").partition(";")[0].strip().lower()
+    if method == "POST" and media_type != "application/json":
+        said = f'content-type is "{media_type[:80]}"' if media_type else "no content-type is said"
+        return Problem("not-json", said)
+    return None
+
+
+async def writes_allowed(request: Request) -> None:
+    """A dependency of every route that writes: refuses while others could reach the API."""
+    host: str = request.app.state.running.site.api.host
+    if not is_loopback(host):
+        raise Problem("keys-needed", f'[api] host = "{host}" can be reached from other machines')
+
+
+class Guard:
+    """ASGI middleware: the checks, the headers of every answer, and the last catch for errors."""
+
+    def __init__(self, app: ASGIApp, bound_to: str) -> None:
+        self._app = app
+        self._bound_to = bound_to
+
+    async def __call__(self, scope: Scope, receive: Receive, send: Send) -> None:
+        if scope["type"] != "http":
+            await self._app(scope, receive, send)
+            return
+        started = False
+
+        async def send_with_headers(message: Message) -> None:
+            nonlocal started
+            if message["type"] == "http.response.start":
+                started = True
+                headers = MutableHeaders(scope=message)
+                for name, value in _SECURITY_HEADERS.items():
+                    headers.setdefault(name, value)
+            await send(message)
+
+        problem = refusal(scope["method"], Headers(scope=scope), self._bound_to)
+        if problem is not None:
+            answer = problem_response(problem, scope["path"])
+            await answer(scope, receive, send_with_headers)
+            return
+        try:
+            await self._app(scope, receive, send_with_headers)
+        except Exception:
+            # The client learns nothing of the inside; the log learns everything, once.
+            log.exception("%s %r failed", scope["method"], scope["path"])
+            if started:
+                raise
+            answer = problem_response(Problem("unexpected"), scope["path"])
+            await answer(scope, receive, send_with_headers)

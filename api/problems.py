@@ -1,0 +1,203 @@
+"""Problem documents (RFC 9457): every error that the API answers with, in one shape."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Mapping, Sequence
+from dataclasses import asdict, dataclass
+from http import HTTPStatus
+from typing import Any
+from urllib.parse import quote
+
+from fastapi import Request
+from pydantic import BaseModel, Field
+from starlette.responses import Response
+
+MEDIA_TYPE = "application/problem+json"
+
+
+@dataclass(frozen=True, slots=True)
+class Kind:
+    """One kind of problem: its status, its title, and what to do, whoever meets it."""
+
+    status: int
+    title: str
+    advice: str
+
+
+KINDS: dict[str, Kind] = {
+    "unreadable-request": Kind(400, "The request cannot be read", "Send one JSON object in UTF-8."),
+    "cross-site-write": Kind(
+        403,
+        "A page from elsewhere may not write here",
+        "Record drains and acknowledgements from this daemon's own pages or from a program "
+        "that sends no Origin header.",
+    ),
+    "keys-needed": Kind(
+        403,
+        "Writing over the network needs a key",
+        "This API listens on an address that others can reach, and keys are not there yet. "
+        'Set host = "127.0.0.1" in [api] to write from this machine, or write over MQTT.',
+    ),
+    "not-found": Kind(
+        404, "Nothing at this address", "See /api/v1/openapi.json for what there is."
+    ),
+    "unknown-trap": Kind(404, "No trap of that name", "See /api/v1/traps for the names."),
+    "unknown-alarm": Kind(404, "No alarm of that name", "See /api/v1/alarms?all=true."),
+    "unknown-channel": Kind(404, "No channel of that name", "See the channels in /api/v1/site."),
+    "wrong-method": Kind(405, "Not possible at this address", "See the Allow header."),
+    "nothing-to-acknowledge": Kind(
+        409,
+        "The alarm waits for nobody",
+        "Only an alarm that is unacknowledged or returned unacknowledged can be acknowledged.",
+    ),
+    "no-length": Kind(411, "The length of the body is not said", "Send a Content-Length header."),
+    "too-large": Kind(
+        413, "The body is too large", "A drain or an acknowledgement is a few lines."
+    ),
+    "not-json": Kind(415, "The body is not JSON", "Send content-type: application/json."),
+    "wrong-host": Kind(
+        421,
+        "Asked under a name that is not this machine's",
+        "Use the machine's own name or its address: a name from the internet that points here "
+        "may be somebody else's page trying to look in.",
+    ),
+    "invalid-request": Kind(422, "The request cannot be taken", "Correct it and send it again."),
+    "unexpected": Kind(
+        500,
+        "Something went wrong inside dripleg",
+        "The daemon's log has the details; nothing was recorded by this request.",
+    ),
+    "log-unavailable": Kind(
+        503,
+        "The log cannot be read or written",
+        "Look at /api/v1/health and at the disk; try again.",
+    ),
+    "no-estimate-yet": Kind(
+        503, "There is no estimate yet", "Ask again after the next sampling period."
+    ),
+}
+_BY_STATUS = {
+    400: "unreadable-request", 404: "not-found", 405: "wrong-method", 413: "too-large"
+}  # fmt: skip
+
+
+@dataclass(frozen=True, slots=True)
+class Point:
+    """One thing wrong in a request: where, the value found, and what to send instead."""
+
+    where: str  # "body.volume_ml", "query.from"
+    value: str
+    remedy: str
+
+    def __str__(self) -> str:
+        found = f" = {self.value}" if self.value else ""
+        return f"{self.where}{found}: {self.remedy}"
+
+
+class Problem(Exception):
+    """Raised by a route; answered as a problem document."""
+
+    def __init__(
+        self,
+        kind: str,
+        detail: str = "",
+        points: Sequence[Point] = (),
+        headers: Mapping[str, str] | None = None,
+    ) -> None:
+        self.kind = kind
+        self.points = tuple(points)
+        self.detail = detail or "; ".join(str(point) for point in points)
+        self.headers = dict(headers or {})
+        super().__init__(f"{kind}: {self.detail}")
+
+
+class PointOut(BaseModel):
+    """One thing wrong in the request."""
+
+    where: str = Field(examples=["body.volume_ml"])
+    value: str = Field(description="as it was sent, shortened", examples=["-5"])
+    remedy: str = Field(examples=["a volume is 0 or more"])
+
+
+class ProblemOut(BaseModel):
+    """A problem document, RFC 9457."""
+
+    type: str = Field(
+        description="which kind of problem; a page at this address says more",
+        json_schema_extra={"format": "uri-reference"},
+        examples=["/problems/unknown-trap"],
+    )
+    title: str = Field(examples=["No trap of that name"])
+    status: int = Field(examples=[404])
+    detail: str = Field(description="what is wrong here, with the value, and what to do")
+    instance: str = Field(
+        description="the address that was asked for",
+        json_schema_extra={"format": "uri-reference"},
+        examples=["/api/v1/traps/attic"],
+    )
+    errors: list[PointOut] | None = Field(
+        default=None, description="each point, where a request has several"
+    )
+
+
+def problem_response(problem: Problem, path: str) -> Response:
+    """The problem as an answer to a request for `path`."""
+    kind = KINDS[problem.kind]
+    document: dict[str, Any] = {
+        "type": f"/problems/{problem.kind}",
+        "title": kind.title,
+        "status": kind.status,
+        "detail": f"{problem.detail.rstrip('.')}. {kind.advice}" if problem.detail else kind.advice,
+        "instance": quote(path, safe="/:@!$&'()*+,;=~-._", errors="replace"),
+    }
+    if problem.points:
+        document["errors"] = [asdict(point) for point in problem.points]
+    # What was sent may hold a lone surrogate, which UTF-8 cannot carry; written as its JSON
+    # escape it can.
+    body = json.dumps(document, ensure_ascii=False).encode("utf-8", "backslashreplace")
+    return Response(body, kind.status, headers=problem.headers, media_type=MEDIA_TYPE)
+
+
+def problem_of_status(status: int, detail: str, headers: Mapping[str, str] | None) -> Problem:
+    """The problem for a bare HTTP status that the framework raised."""
+    kind = _BY_STATUS.get(
+        status, "unexpected" if status >= HTTPStatus.INTERNAL_SERVER_ERROR else ""
+    )
+    return Problem(kind or "unreadable-request", detail, headers=headers)
+
+
+def answered_by(*kinds: str) -> dict[int | str, dict[str, Any]]:
+    """The `responses` of a route that may answer with these kinds of problem, for OpenAPI."""
+    answers: dict[int | str, dict[str, Any]] = {}
+    for name in kinds:
+        kind = KINDS[name]
+        answer = answers.setdefault(
+            kind.status,
+            {
+                "description": "",
+                "content": {
+                    MEDIA_TYPE: {
+                        "schema": {"$ref": "#/components/schemas/ProblemOut"},
+                        "examples": {},
+                    }
+                },
+            },
+        )
+        text = f"{kind.title}. {kind.advice}"
+        answer["description"] = f"{answer['description']} {text}".strip()
+        answer["content"][MEDIA_TYPE]["examples"][name] = {
+            "value": {
+                "type": f"/problems/{name}",
+                "title": kind.title,
+                "status": kind.status,
+                "detail": kind.advice,
+                "instance": "/api/v1/",
+            }
+        }
+    return answers
+
+
+def path_of(request: Request) -> str:
+    """The path that was asked for, without its query."""
+    return request.url.path

@@ -1,0 +1,95 @@
+"""The traps, what they hold, and the drains that were recorded."""
+
+from __future__ import annotations
+
+from typing import Annotated
+
+from fastapi import APIRouter, Depends, Response
+
+from api.drains import AHEAD_US, drain_of
+from api.guard import writes_allowed
+from api.models import DrainIn, DrainOut, TrapOut
+from api.problems import Problem, answered_by
+from api.routes.running import TheDaemon
+from api.routes.spans import FROM, TO, span
+from daemon.moisture.description import Trap
+from daemon.views import Running
+
+router = APIRouter(prefix="/traps", tags=["traps"])
+
+
+@router.get("", summary="What every trap holds", responses=answered_by("log-unavailable"))
+def get_traps(daemon: TheDaemon) -> list[TrapOut]:
+    """In the order the air meets them; an empty list until the first tick."""
+    return [TrapOut.of(view) for view in daemon.traps()]
+
+
+@router.get(
+    "/{trap}",
+    summary="What one trap holds",
+    responses=answered_by("unknown-trap", "no-estimate-yet", "log-unavailable", "invalid-request"),
+)
+def get_trap(trap: str, daemon: TheDaemon) -> TrapOut:
+    """A median with its 5 to 95 % interval, and whether a drain is due."""
+    _described(daemon, trap)
+    for view in daemon.traps():
+        if view.trap == trap:
+            return TrapOut.of(view)
+    retry_s = -(-daemon.site.sample_every_us // 1_000_000)
+    raise Problem("no-estimate-yet", headers={"retry-after": str(retry_s)})
+
+
+@router.post(
+    "/{trap}/drains",
+    status_code=201,
+    summary="Record that a drain was opened",
+    dependencies=[Depends(writes_allowed)],
+    responses={
+        200: {"model": DrainOut, "description": "The key was seen before: the first entry."},
+        **answered_by(
+            "unreadable-request",
+            "cross-site-write",
+            "keys-needed",
+            "unknown-trap",
+            "no-length",
+            "too-large",
+            "not-json",
+            "invalid-request",
+            "log-unavailable",
+        ),
+    },
+)
+def post_drain(trap: str, body: DrainIn, daemon: TheDaemon, response: Response) -> DrainOut:
+    """Answers once it is committed; the estimate follows at the next tick."""
+    drain, at_us = drain_of(body, trap, _described(daemon, trap), daemon.clock.now_us())
+    recorded = daemon.record(drain, at_us, body.key or "")
+    if recorded.repeated:
+        response.status_code = 200
+    return DrainOut.of(recorded.entry)
+
+
+@router.get(
+    "/{trap}/drains",
+    summary="The drains recorded for a trap",
+    responses=answered_by("unknown-trap", "invalid-request", "log-unavailable"),
+)
+def get_drains(
+    trap: str,
+    daemon: TheDaemon,
+    from_: Annotated[str | None, FROM] = None,
+    to: Annotated[str | None, TO] = None,
+) -> list[DrainOut]:
+    """All of them without from and to, as far as the log goes back."""
+    _described(daemon, trap)
+    now_us = daemon.clock.now_us()
+    # a drain may be dated a little ahead of this clock
+    start_us, end_us = span(from_, to, now_us + AHEAD_US, now_us + AHEAD_US)
+    return [DrainOut.of(entry) for entry in daemon.drains(trap, start_us, end_us)]
+
+
+def _described(daemon: Running, name: str) -> Trap:
+    for station in daemon.site.line.stations:
+        if station.id == name and station.trap is not None:
+            return station.trap
+    known = ", ".join(daemon.site.traps) or "none"
+    raise Problem("unknown-trap", f'there is no trap "{name}"; those of this site are: {known}')
