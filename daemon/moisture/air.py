@@ -6,7 +6,7 @@ names it, for the whole call. The `..._unchecked` functions take arrays of one o
 check nothing and serve the model's inner loop: outside the range they extrapolate.
 
 Range: 173.15 to 373.15 K, above 0 to 2 MPa. Against CoolProp's real-gas moist air (0.8 to 16 bar)
-a saturated humidity ratio is within 0.18 % above 0 degC, 0.59 % down to -40, 1.4 % down to -70.
+a saturated humidity ratio is within 0.19 % above 0 degC, 0.62 % down to -40, 1.43 % down to -70.
 """
 
 from __future__ import annotations
@@ -158,7 +158,7 @@ def saturated_humidity_ratio(temperature_k: Values, pressure_pa: Values) -> Valu
     Notes
     -----
     W = 0.621945 x / (1 - x), x = f e / P (Hardy 1998). Against CoolProp (ASHRAE RP-1485) within
-    0.10 / 0.34 / 0.80 % to 9.5 bar and 0.18 / 0.59 / 1.4 % to 16 bar above 0, from -40 to 0 and
+    0.10 / 0.36 / 0.84 % to 9.5 bar and 0.19 / 0.62 / 1.43 % to 16 bar above 0, from -40 to 0 and
     from -70 to -40 degC. At 273.16 K it steps down by 0.1 % (8 bar) on warming: ice holds the
     enhancement factor a little higher.
     """
@@ -194,7 +194,7 @@ def humidity_ratio(temperature_k: Values, pressure_pa: Values, relative_humidity
         K, 173.15 to 373.15; Pa absolute, above 0 to 2 MPa.
     relative_humidity : float or array
         Fraction of saturation over liquid water, 0 to 1, as humidity sensors state it at any
-        temperature. Over ice the same air has a greater one: by 9 % of itself at -10 degC.
+        temperature. Over ice the same air has a greater one: by a tenth of itself at -10 degC.
 
     Returns
     -------

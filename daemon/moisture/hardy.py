@@ -26,6 +26,9 @@ HIGHEST_K = 373.15
 # result independent of the other elements.
 _NEWTON_STEPS = 4
 
+# A mole fraction of saturation at the triple point itself, rounded on its way, is still frost's.
+_ROUNDING = 1e-14
+
 
 @dataclass(frozen=True, slots=True)
 class Phase:
@@ -201,10 +204,11 @@ def saturation_temperature(x: Array, p: Array, over_water: bool = False) -> Arra
     frozen_end = mole_fraction_of(ICE, triple, p)
     if over_water:
         frozen_end *= water_over_ice(triple)
-    cold = held <= frozen_end
+    cold = held <= frozen_end * (1.0 + _ROUNDING)
     result = np.empty(held.shape)
     for phase, chosen in ((ICE, cold), (WATER, ~cold)):
         if chosen.any():
             result[chosen] = _inverted(phase, held[chosen], p[chosen], over_water)
+    np.minimum(result, TRIPLE_POINT_K, out=result, where=cold)
     np.clip(result, LOWEST_K, HIGHEST_K, out=result)
     return result
