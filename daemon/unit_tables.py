@@ -31,63 +31,68 @@ US_GALLON_M3 = 231 * INCH_M**3
 US_FLUID_OUNCE_M3 = US_GALLON_M3 / 128
 CUBIC_FOOT_M3 = FOOT_M**3
 
-# SI = (value + before) * factor
-Unit = tuple[float, float]  # (factor, before)
+# SI = (value + before) * times / over: whole numbers where they are, so that "5 ml" is 5e-06 m3
+Unit = tuple[float, float, float]  # (times, over, before)
+
+
+def _unit(times: float = 1.0, over: float = 1.0, before: float = 0.0) -> Unit:
+    return times, over, before
+
 
 _PRESSURES: dict[str, Unit] = {
-    "bar": (1e5, 0.0),
-    "psi": (PSI_PA, 0.0),
-    "kPa": (1e3, 0.0),
-    "MPa": (1e6, 0.0),
-    "Pa": (1.0, 0.0),
-    "hPa": (100.0, 0.0),
-    "mbar": (100.0, 0.0),
-    "inHg": (3386.389, 0.0),  # conventional, SP 811
-    "mmHg": (133.3224, 0.0),  # conventional, SP 811
+    "bar": _unit(1e5),
+    "psi": _unit(PSI_PA),
+    "kPa": _unit(1e3),
+    "MPa": _unit(1e6),
+    "Pa": _unit(),
+    "hPa": _unit(100.0),
+    "mbar": _unit(100.0),
+    "inHg": _unit(3386.389),  # conventional, SP 811
+    "mmHg": _unit(133.3224),  # conventional, SP 811
 }
 UNITS: dict[Kind, dict[str, Unit]] = {
     "temperature": {
-        "degC": (1.0, ZERO_CELSIUS_K),
-        "degF": (1 / 1.8, 459.67),
-        "K": (1.0, 0.0),
+        "degC": _unit(before=ZERO_CELSIUS_K),
+        "degF": _unit(over=1.8, before=459.67),
+        "K": _unit(),
     },
-    "temperature difference": {"K": (1.0, 0.0), "degC": (1.0, 0.0), "degF": (1 / 1.8, 0.0)},
+    "temperature difference": {"K": _unit(), "degC": _unit(), "degF": _unit(over=1.8)},
     "pressure": _PRESSURES,
     "pressure difference": _PRESSURES,
     "volume": {
-        "L": (1e-3, 0.0),
-        "ml": (1e-6, 0.0),
-        "gal": (US_GALLON_M3, 0.0),
-        "oz": (US_FLUID_OUNCE_M3, 0.0),
-        "ft3": (CUBIC_FOOT_M3, 0.0),
-        "m3": (1.0, 0.0),
+        "L": _unit(over=1e3),
+        "ml": _unit(over=1e6),
+        "gal": _unit(US_GALLON_M3),
+        "oz": _unit(US_FLUID_OUNCE_M3),
+        "ft3": _unit(CUBIC_FOOT_M3),
+        "m3": _unit(),
     },
     "flow": {
-        "L/min": (1e-3 / 60, 0.0),
-        "L/s": (1e-3, 0.0),
-        "cfm": (CUBIC_FOOT_M3 / 60, 0.0),
-        "m3/h": (1 / 3600, 0.0),
-        "m3/min": (1 / 60, 0.0),
-        "m3/s": (1.0, 0.0),
+        "L/min": _unit(over=60e3),
+        "L/s": _unit(over=1e3),
+        "cfm": _unit(CUBIC_FOOT_M3, over=60.0),
+        "m3/h": _unit(over=3600.0),
+        "m3/min": _unit(over=60.0),
+        "m3/s": _unit(),
     },
     "duration": {
-        "s": (1.0, 0.0),
-        "min": (60.0, 0.0),
-        "h": (3600.0, 0.0),
-        "days": (86400.0, 0.0),
-        "weeks": (604800.0, 0.0),
-        "ms": (1e-3, 0.0),
+        "s": _unit(),
+        "min": _unit(60.0),
+        "h": _unit(3600.0),
+        "days": _unit(86400.0),
+        "weeks": _unit(604800.0),
+        "ms": _unit(over=1e3),
     },
-    "fraction": {"%": (0.01, 0.0), "": (1.0, 0.0)},
+    "fraction": {"%": _unit(over=100.0), "": _unit()},
     "length": {
-        "m": (1.0, 0.0),
-        "cm": (0.01, 0.0),
-        "mm": (1e-3, 0.0),
-        "ft": (FOOT_M, 0.0),
-        "in": (INCH_M, 0.0),
+        "m": _unit(),
+        "cm": _unit(over=100.0),
+        "mm": _unit(over=1e3),
+        "ft": _unit(FOOT_M),
+        "in": _unit(INCH_M),
     },
-    "mass": {"kg": (1.0, 0.0), "g": (1e-3, 0.0), "lb": (POUND_KG, 0.0)},
-    "voltage": {"V": (1.0, 0.0), "mV": (1e-3, 0.0)},
+    "mass": {"kg": _unit(), "g": _unit(over=1e3), "lb": _unit(POUND_KG)},
+    "voltage": {"V": _unit(), "mV": _unit(over=1e3)},
 }
 EXAMPLES: dict[Kind, str] = {
     "temperature": '"20 degC" or "68 degF"',

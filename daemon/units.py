@@ -88,14 +88,14 @@ def canonical_unit(unit: str, kind: Kind) -> str | None:
 
 def to_si(value: float, unit: str, kind: Kind) -> float:
     """A number in a named unit (its one name, as in `units_of`) to SI; gauge stays gauge."""
-    factor, before = UNITS[kind][unit]
-    return (value + before) * factor
+    times, over, before = UNITS[kind][unit]
+    return (value + before) * times / over
 
 
 def from_si(value: float, unit: str, kind: Kind) -> float:
     """The inverse of `to_si`."""
-    factor, before = UNITS[kind][unit]
-    return value / factor - before
+    times, over, before = UNITS[kind][unit]
+    return value * over / times - before
 
 
 def units_of(kind: Kind) -> tuple[str, ...]:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Literal
 
 from daemon.moisture.description import Line
@@ -52,10 +52,11 @@ class Mqtt:
     host: str
     port: int
     user: str = ""
-    password: str = ""
+    password: str = field(default="", repr=False)
     tls: bool = False
     ca_file: str = ""
     prefix: str = "dripleg"
+    password_file: str = ""  # read when connecting, never while the site file is parsed
 
 
 @dataclass(frozen=True, slots=True)

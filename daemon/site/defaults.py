@@ -1,0 +1,136 @@
+"""What is assumed where the site file says nothing, with the reason. SI throughout.
+
+"Practice" is common practice, no source: starting values, to be calibrated by measured drains.
+The tables in the documents are generated from here.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Literal
+
+from daemon.moisture.description import Fixed, Share, StationKind
+
+ROOM = Fixed(293.15, 10.0)  # K
+ROOM_BECAUSE = "a shop's air when nobody measures it (practice)"
+HUMIDITY = Fixed(0.50, 0.30)
+HUMIDITY_BECAUSE = "air when nobody measures it (practice)"
+BAROMETER = Fixed(101_300.0, 3_000.0)  # Pa
+BAROMETER_BECAUSE = "weather at sea level; higher up say the pressure there"
+
+RISE_K = 20.0
+RISE_TIME_S = 1800.0
+RISE_GIVE_OR_TAKE_K = 8.0
+
+CUT_IN_PA = 6e5
+CUT_OUT_PA = 8e5
+CUT_BECAUSE = "a common switch setting (practice)"
+DELIVERED = Fixed(150e-3 / 60, 75e-3 / 60)  # m3/s
+DELIVERED_BECAUSE = "a small workshop compressor (practice); the type plate says better"
+OF_DISPLACEMENT = Share(0.65, 0.15)  # of a displacement, what is delivered as free air (practice)
+
+VOLUME = Fixed(0.1, 0.05)  # m3
+VOLUME_BECAUSE = "a small workshop tank; its type plate says better"
+
+# What a number is worth when its give_or_take is not said: 95 % half-widths.
+GIVE_OR_TAKE_K = 2.0
+GIVE_OR_TAKE_PA = 20_000.0
+GIVE_OR_TAKE_BAROMETER_PA = 1_000.0
+GIVE_OR_TAKE_HUMIDITY = 0.10
+GIVE_OR_TAKE_SHARES: Mapping[str, float] = {  # of the value
+    "volume": 0.05,
+    "capacity": 0.10,
+    "free_air_delivery": 0.10,
+    "set": 0.05,
+}
+SAID_BECAUSE = "what a value that is only said is worth (practice)"
+LIKE_PRESSURE_PA = 5_000.0  # of a pressure that is said to be like another
+
+# How far a temperature or a pressure may be from plausible before it is taken for a mistake.
+TEMPERATURE_LIMITS_K = (213.15, 373.15)
+LINE_PRESSURE_LIMITS_PA = (0.0, 16e5)  # gauge
+BAROMETER_LIMITS_PA = (50_000.0, 110_000.0)
+
+
+@dataclass(frozen=True, slots=True)
+class TemperatureDefault:
+    """A temperature that nobody said: a value, or like another place plus a difference."""
+
+    like: Literal["", "intake", "before", "duty"]
+    plus_k: float
+    give_or_take_k: float
+    because: str
+
+
+@dataclass(frozen=True, slots=True)
+class TrapDefault:
+    """A trap that is there although its table is short or missing."""
+
+    always: bool  # also when the file does not name it
+    capacity_m3: float  # 0: a share of the volume
+    capacity_of_volume: float
+    drain_at: float  # of the capacity
+    separation: Share
+    because: str
+
+
+@dataclass(frozen=True, slots=True)
+class KindDefault:
+    """All that a kind of station assumes."""
+
+    temperature: TemperatureDefault
+    pressure: Literal["barometer", "switch", "before", "set"]
+    trap: TrapDefault | None
+
+
+SAME_AIR = TemperatureDefault("before", 0.0, 1.0, "small, close to the station before it")
+CAPACITY_GIVE_OR_TAKE = 0.10
+
+KINDS: Mapping[StationKind, KindDefault] = {
+    "intake": KindDefault(TemperatureDefault("", 0.0, 10.0, ROOM_BECAUSE), "barometer", None),
+    "receiver": KindDefault(
+        TemperatureDefault(
+            "duty",
+            RISE_K,
+            RISE_GIVE_OR_TAKE_K,
+            "a tank warms while its compressor works (estimate)",
+        ),
+        "switch",
+        TrapDefault(True, 0.0, 0.15, 0.04, Share(0.7, 0.25), "a tank lets most liquid settle"),
+    ),
+    "cooler": KindDefault(
+        TemperatureDefault("intake", 8.0, 5.0, "a cooler stays some kelvin above its room"),
+        "before",
+        TrapDefault(False, 150e-6, 0.0, 0.5, Share(0.3, 0.3), "a coil without a separator"),
+    ),
+    "pipe": KindDefault(
+        TemperatureDefault("intake", 0.0, 4.0, "a pipe takes the temperature of its room"),
+        "before",
+        TrapDefault(False, 300e-6, 0.0, 0.5, Share(0.6, 0.3), "take-off from the top of the main"),
+    ),
+    "separator": KindDefault(
+        SAME_AIR,
+        "before",
+        TrapDefault(True, 150e-6, 0.0, 0.5, Share(0.85, 0.1), "a water separator"),
+    ),
+    "coalescer": KindDefault(
+        SAME_AIR,
+        "before",
+        TrapDefault(True, 120e-6, 0.0, 0.5, Share(0.97, 0.03), "within its rated flow"),
+    ),
+    "regulator": KindDefault(SAME_AIR, "set", None),
+}
+TAKE_OFF_BOTTOM = Share(0.1, 0.1)
+TAKE_OFF_BOTTOM_BECAUSE = "take-off from the bottom of the main"
+COOLER_WITH_SEPARATOR = Share(0.85, 0.1)
+COOLER_WITH_SEPARATOR_BECAUSE = "a cooler with a separator"
+
+# Profiles of work that the painter's page will know. Breathing is refused, with a reason.
+WORKS = ("solvent-borne", "waterborne", "two-component", "powder", "blasting")
+BREATHING = (
+    "dripleg is not for breathing air: it sees water, not oil, carbon monoxide or dust. Breathing "
+    "air has its own tests (EN 12021; Grade D). Name what is sprayed or blasted instead: "
+    + ", ".join(WORKS)
+)
+SURFACE_MARGIN_K = 3.0

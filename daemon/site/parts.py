@@ -1,0 +1,140 @@
+"""Reads the `[[sensor]]` tables against the drivers' own keys."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+from daemon.site.names import Names
+from daemon.site.notes import Notes, nearest, suggestion, written
+from daemon.site.table import Table
+from daemon.site.values import identifier, text
+from sensors.registry import REQUIRED, Driver, SensorConfig
+
+
+def read_sensors(
+    notes: Notes, tables: list[object], drivers: Mapping[str, Driver], names: Names
+) -> tuple[SensorConfig, ...]:
+    """Every sensor that could be read; its channels are put into `names`."""
+    found = []
+    occupied: dict[str, str] = {}
+    for number, raw in enumerate(tables, 1):
+        config = _sensor(notes, number, raw, drivers, names)
+        if config is not None:
+            found.append(config)
+            _occupy(notes, config, drivers[config.driver], occupied)
+    return tuple(found)
+
+
+def label(what: str, number: int, raw: object) -> str:
+    """How a message names a table of a list: by its id, else by its place in the file."""
+    name = raw.get("id") if isinstance(raw, dict) else None
+    return f'{what} "{name}"' if isinstance(name, str) and name else f"{what} {number}"
+
+
+def read_id(table: Table, what: str, taken: list[str]) -> str:
+    """The table's id as written, noted as taken; "" when there is none, or another one's.
+
+    An id that breaks the rules is told, and still serves to keep other tables quiet.
+    """
+    raw = table.values.get("id")
+    if raw is None:
+        if table.ok("id"):
+            table.wrong("id", f'a {what} needs an id; write id = "..."')
+        return ""
+    table.read("id", identifier, "")
+    if not isinstance(raw, str) or not raw:
+        return ""
+    if raw in taken:
+        table.wrong("id", f"another {what} has this id; give each its own")
+        return ""
+    taken.append(raw)
+    return raw
+
+
+def _sensor(
+    notes: Notes, number: int, raw: object, drivers: Mapping[str, Driver], names: Names
+) -> SensorConfig | None:
+    where = label("sensor", number, raw)
+    driver = _driver(raw, drivers)
+    # Of an unknown driver every key may be right: only the driver is told.
+    own = (
+        [key.name for key in driver.keys] if driver else list(raw if isinstance(raw, dict) else ())
+    )
+    table = Table(notes, where, raw, list(dict.fromkeys(["id", "driver", *own])))
+    name = read_id(table, "sensor", names.sensors)
+    if not name and table.values.get("id") not in names.sensors:
+        names.sensors_unnamed = True
+    if driver is None:
+        _no_driver(table, drivers)
+    settings = _settings(table, driver) if driver else None
+    if not name or driver is None or table.broken or settings is None:
+        names.broken_sensors.add(name)
+        return None
+    config = SensorConfig(name, driver.name, settings, said=frozenset(table.values))
+    for channel in driver.channels(config):
+        names.channels[channel.name] = channel
+    return config
+
+
+def _driver(raw: object, drivers: Mapping[str, Driver]) -> Driver | None:
+    """The driver that a table names, also under a misspelt key."""
+    if not isinstance(raw, dict):
+        return None
+    name = raw.get("driver")
+    if "driver" not in raw:
+        name = next((raw[k] for k in raw if nearest(k, ["id", "driver"]) == "driver"), None)
+    return drivers.get(name) if isinstance(name, str) else None
+
+
+def _no_driver(table: Table, drivers: Mapping[str, Driver]) -> None:
+    known = ", ".join(sorted(drivers))
+    if "driver" not in table.values:
+        if table.ok("driver"):
+            table.wrong("driver", f"a sensor needs a driver; known: {known}")
+        return
+    name = table.read("driver", text, "")
+    if name:
+        close = nearest(name, drivers)
+        end = suggestion(name, drivers) + (f" (known: {known})" if close else "")
+        table.wrong("driver", f"there is no such driver{end}")
+
+
+def _settings(table: Table, driver: Driver) -> dict[str, Any] | None:
+    """Every key of the driver, defaults filled in; None when one is wrong."""
+    settings: dict[str, Any] = {}
+    for key in driver.keys:
+        if key.name not in table.values and key.default is REQUIRED:
+            if table.ok(key.name):
+                meaning = f" ({key.meaning})" if key.meaning else ""
+                table.wrong(key.name, f"{driver.name} needs this key{meaning}")
+            continue
+        if key.name not in table.values and table.ok(key.name) and key.default is not None:
+            table.default(
+                key.name,
+                written(key.default, key.name),
+                key.meaning or f"{driver.name}'s own default",
+            )
+        settings[key.name] = table.read(key.name, key.read, key.default)
+    return settings if table.ok(*(key.name for key in driver.keys)) else None
+
+
+def _occupy(notes: Notes, config: SensorConfig, driver: Driver, occupied: dict[str, str]) -> None:
+    """Tell what two sensors would share; once for a pair."""
+    for place in driver.occupies(config):
+        other = next((occupied[each] for each in occupied if _overlap(place, each)), None)
+        occupied.setdefault(place, config.id)
+        if other is not None:
+            notes.problem(
+                f'sensor "{config.id}"',
+                "",
+                None,
+                f'{place} is taken by sensor "{other}" already; '
+                "a part answers to one sensor only, so correct one of the two",
+            )
+            return
+
+
+def _overlap(one: str, other: str) -> bool:
+    """Whether two places are one, or one is inside the other ("bus 1 address 0x48 input 2")."""
+    return one == other or one.startswith(f"{other} ") or other.startswith(f"{one} ")

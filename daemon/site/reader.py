@@ -1,0 +1,182 @@
+"""Reads a site file: all of it, and all of its problems at once."""
+
+from __future__ import annotations
+
+import re
+import tomllib
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
+from pathlib import Path
+
+import sensors.drivers  # noqa: F401  # fills DRIVERS
+from daemon.errors import Problem, SiteError
+from daemon.moisture.description import Compressor, Line
+from daemon.site.assume import Assumptions, complete_line, station_of
+from daemon.site.calendar import read_hours
+from daemon.site.compressor import choose_running, read_compressor
+from daemon.site.limits import tell_set_pressures
+from daemon.site.names import Names
+from daemon.site.notes import Notes, nearest
+from daemon.site.outlets import OutletDraft, finish_outlets, read_outlets, settings_of
+from daemon.site.parts import read_sensors
+from daemon.site.remarks import remarks
+from daemon.site.sections import read_api, read_cup, read_model, read_mqtt, read_site_table
+from daemon.site.shape import tell_circular_rules, tell_loops
+from daemon.site.stations import Draft, open_stations, read_stations
+from daemon.site.table import Table
+from daemon.site.types import Site
+from sensors.registry import DRIVERS, Driver
+
+TABLES = ("site", "hours", "compressor", "cup", "model", "mqtt", "api")
+LISTS = ("sensor", "station", "outlet")
+_LINE = re.compile(r"\(at line (\d+), column (\d+)\)\Z")
+
+
+def read_site(path: str | Path) -> Site:
+    """The site that a file describes. SiteError lists everything that is wrong with it."""
+    try:
+        data = Path(path).read_bytes()
+    except OSError as error:
+        remedy = f"the site file cannot be read ({error.strerror}); name one that exists"
+        raise SiteError(str(path), [Problem("file", "", "", remedy)]) from None
+    try:
+        text = data.decode("utf-8-sig")
+    except UnicodeDecodeError as error:
+        line = data[: error.start].count(b"\n") + 1
+        remedy = "this line has a sign that is not UTF-8; save the file as UTF-8"
+        raise SiteError(str(path), [Problem(f"line {line}", "", "", remedy)]) from None
+    return parse_site(text, str(path))
+
+
+def parse_site(text: str, path: str, drivers: Mapping[str, Driver] = DRIVERS) -> Site:
+    """The site that a text describes; `path` is for messages and for other files' folders."""
+    document = _document(text, path)
+    notes = Notes()
+    raw = _top_level(notes, document)
+    site = _Reading(notes, raw, path, drivers).site()
+    if notes.problems or site is None:
+        raise SiteError(path, notes.problems)
+    return site
+
+
+def _document(text: str, path: str) -> dict[str, object]:
+    try:
+        return tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        message = str(error)
+        match = _LINE.search(message)
+        line = int(match[1]) if match else text.count("\n") + 1
+        column = f" (column {match[2]})" if match else ""
+        what = message[: match.start()].strip() if match else message
+        lines = text.splitlines()
+        found = lines[line - 1].strip() if 0 < line <= len(lines) else ""
+        remedy = f"not TOML: {what}{column}; correct this line, the rest is checked after that"
+        raise SiteError(path, [Problem(f"line {line}", "", found[:80], remedy)]) from None
+
+
+def _top_level(notes: Notes, document: Mapping[str, object]) -> dict[str, object]:
+    """The tables by their right names; what is unknown is told."""
+    known = (*TABLES, *LISTS)
+    found: dict[str, object] = {name: document[name] for name in known if name in document}
+    for name, raw in document.items():
+        if name in known:
+            continue
+        meant = nearest(name, known)
+        brackets = f"[[{meant}]]" if meant in LISTS else f"[{meant}]"
+        if not isinstance(raw, dict | list):
+            notes.problem("file", name, raw, "stands before the first table; put it into one")
+        elif not meant:
+            notes.problem(name, "", None, f"there is no such table; known: {', '.join(known)}")
+        else:
+            notes.problem(name, "", None, f"there is no such table; did you mean {brackets}?")
+            found.setdefault(meant, raw)
+    return found
+
+
+class _Reading:
+    """One reading of one file."""
+
+    def __init__(
+        self, notes: Notes, raw: Mapping[str, object], path: str, drivers: Mapping[str, Driver]
+    ) -> None:
+        self.notes, self.raw, self.path, self.drivers = notes, raw, path, drivers
+        self.names = Names()
+
+    def site(self) -> Site | None:
+        """The site; None, or one not to be used, when there are problems."""
+        notes, raw = self.notes, self.raw
+        basics = read_site_table(notes, raw.get("site", {}))
+        hours = read_hours(notes, raw.get("hours"))
+        sensors = read_sensors(notes, self._list("sensor"), self.drivers, self.names)
+        tables = open_stations(notes, self._list("station"), self.names)
+        self._name_added_intake(tables)
+        table, compressor = read_compressor(notes, raw.get("compressor"), self.names)
+        drafts = read_stations(tables, self.names)
+        outlets = read_outlets(notes, self._list("outlet"), self.names)
+        cup = read_cup(notes, raw.get("cup", {}))
+        members, seed = read_model(notes, raw.get("model", {}))
+        mqtt = read_mqtt(notes, raw.get("mqtt"), Path(self.path).parent)
+        api = read_api(notes, raw.get("api", {}))
+        line = self._line(drafts, outlets, table, compressor, basics.sample_every_s)
+        if line is None:
+            return None
+        site = Site(
+            path=self.path,
+            id=basics.id,
+            name=basics.name,
+            timezone=basics.timezone,
+            units=basics.units,
+            sample_every_us=round(basics.sample_every_s * 1e6),
+            hours=hours,
+            cup=cup,
+            sensors=sensors,
+            channels=dict(self.names.channels),
+            line=replace(line, members=members, seed=seed),
+            outlets=tuple(settings_of(outlets, line.outlets)),
+            mqtt=mqtt,
+            api=api,
+            defaults=tuple(notes.defaults),
+            without_effect=tuple(notes.without_effect),
+        )
+        return replace(site, remarks=remarks(site, self.names))
+
+    def _list(self, name: str) -> list[object]:
+        raw = self.raw.get(name, [])
+        if isinstance(raw, list):
+            return raw
+        self.notes.problem(
+            name, "", None, f"is a list of tables; write [[{name}]], twice bracketed"
+        )
+        return [raw] if isinstance(raw, dict) else []
+
+    def _name_added_intake(self, tables: Sequence[Table]) -> None:
+        """Where no station is an intake, one called "intake" is added: others may name it."""
+        kinds = [table.values.get("kind") for table in tables]
+        if "intake" not in kinds and "intake" not in self.names.stations:
+            self.names.stations.insert(0, "intake")
+
+    def _line(
+        self,
+        drafts: list[Draft],
+        outlets: list[OutletDraft],
+        table: Table,
+        compressor: Compressor,
+        period_s: float,
+    ) -> Line | None:
+        """The line with everything assumed that was not said; None when its shape is wrong."""
+        straight = tell_loops(drafts)
+        drafts = complete_line(self.notes, drafts, self.names)
+        Assumptions(self.notes, drafts, self.names, compressor).fill()
+        running = choose_running(table, compressor, self.names)
+        if straight:
+            tell_circular_rules(drafts)
+            tell_set_pressures(drafts, table, compressor)
+        ends = finish_outlets(self.notes, outlets, drafts)
+        if self.notes.problems:
+            return None
+        return Line(
+            stations=tuple(station_of(draft) for draft in drafts),
+            outlets=tuple(ends),
+            compressor=replace(compressor, running=running),
+            period_s=period_s,
+        )
