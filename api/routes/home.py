@@ -32,7 +32,8 @@ class TrapLines:
 
     name: str
     median: str
-    interval: str
+    low: str
+    high: str
     levels: str
     due: bool
     when: str
@@ -103,7 +104,8 @@ def _trap(view: TrapView, site: Site) -> TrapLines:
     return TrapLines(
         name=view.trap,
         median=words(view.p50_kg),
-        interval=f"{words(view.p05_kg)} to {words(view.p95_kg)}",
+        low=words(view.p05_kg),
+        high=words(view.p95_kg),
         levels=f"Drain at {words(view.drain_at_kg)}; it holds {words(view.capacity_kg)}. "
         + (f"Last drained {since}." if since else "Counted since the start: not drained yet."),
         due=view.due,
