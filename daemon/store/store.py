@@ -1,0 +1,218 @@
+"""The daemon's memory: one object that all its threads share.
+
+What a call has written when it returns survives a kill and a power cut. Writers take turns, and
+readers never wait for them. Every call raises StoreError, in words, when the database fails;
+nothing of that call is stored then, and it may be tried again.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from pathlib import Path
+from typing import Self
+
+from daemon.alarms import Transition
+from daemon.errors import StoreError
+from daemon.journal import Body, Entry
+from daemon.outbox import Message, Waiting
+from daemon.store import announcements, checkpoints, entries, metas, migrations, sqlite
+from daemon.store.database import Database
+from daemon.store.ticks import TickRows
+from daemon.views import Recorded, SeriesOfReadings
+from sensors.reading import Channel, Reading
+
+_OPEN = "store.open"  # "yes" while a process has the database: what it says after a crash
+
+
+class Store:
+    """Readings, journal, checkpoints, transitions and outbox of one site."""
+
+    def __init__(
+        self, database: Database, lock: sqlite.Lock, ticks: TickRows, last_stop_clean: bool
+    ) -> None:
+        self._database = database
+        self._lock = lock
+        self._ticks = ticks
+        self.last_stop_clean = last_stop_clean
+
+    @classmethod
+    def open(cls, url_or_path: str | Path, channels: Mapping[str, Channel]) -> Store:
+        """Open or make the database, bring it up to date, and keep other processes off it.
+
+        `channels` are the site's, in its order. After a stop that was not clean every page is
+        read and checked first. StoreError when the database cannot be used, with what to do.
+        """
+        path = _path(url_or_path)
+        lock = sqlite.lock(path)
+        database: Database | None = None
+        try:
+            database = sqlite.connect(path)
+            clean = _was_closed(database)
+            if not clean:
+                sqlite.check(database)
+            migrations.upgrade(database)
+            ticks = TickRows(database, channels)
+            with database.write() as connection:
+                metas.put(connection, _OPEN, "yes")
+        except BaseException:
+            if database is not None:
+                database.close()
+            lock.release()
+            raise
+        return cls(database, lock, ticks, clean)
+
+    def close(self) -> None:
+        """Stop cleanly. May be called twice; every other call after it raises StoreError."""
+        if self._database.closed:
+            return
+        try:
+            with self._database.write() as connection:
+                metas.put(connection, _OPEN, "no")
+            sqlite.fold_log(self._database)
+        finally:
+            self._database.close()
+            self._lock.release()
+
+    def __enter__(self) -> Self:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self.close()
+
+    # --- ticks and readings
+
+    def commit_tick(
+        self,
+        now_us: int,
+        readings: Sequence[Reading],
+        transitions: Sequence[Transition] = (),
+        messages: Sequence[Message] = (),
+        checkpoint: bytes | None = None,
+    ) -> None:
+        """All that one tick leaves, in one transaction: the whole of it is stored, or nothing.
+
+        Transitions stored before, and messages with the id of one, are passed over.
+        """
+        with self._database.write() as connection:
+            self._ticks.insert(connection, now_us, readings)
+            announcements.add(connection, transitions, messages)
+            if checkpoint is not None:
+                checkpoints.save(connection, now_us, checkpoint)
+        self._ticks.committed(now_us)
+
+    @property
+    def last_tick_us(self) -> int | None:
+        """The time of the last tick stored, None before the first."""
+        return self._ticks.last_us
+
+    def ticks(self, after_us: int, until_us: int) -> Iterator[tuple[int, list[Reading]]]:
+        """(time, readings) of each tick after one time, up to and with another, in order.
+
+        Readings are as they were given: to the bit, in their order.
+        """
+        return self._ticks.stream(after_us, until_us)
+
+    def readings(self, channel: str, from_us: int, to_us: int) -> SeriesOfReadings:
+        """A channel's readings at or after one time and before another, by their own times."""
+        return self._ticks.series(channel, from_us, to_us)
+
+    # --- journal
+
+    def add_entry(self, body: Body, at_us: int, written_us: int, key: str = "") -> Recorded:
+        """Commit a journal entry; numbers grow by one.
+
+        The same non-empty key with the same body gives the first entry again, whatever its time;
+        with another body JournalError.
+        """
+        with self._database.write() as connection:
+            return entries.add(connection, body, at_us, written_us, key)
+
+    def entries(
+        self,
+        after_seq: int = 0,
+        from_us: int | None = None,
+        to_us: int | None = None,
+        trap: str | None = None,
+    ) -> Sequence[Entry]:
+        """Entries with a greater number, by when they happened (from, up to but not including).
+
+        In the order they were written. `trap` picks the drains of one trap.
+        """
+        with self._database.read() as connection:
+            return entries.find(connection, after_seq, from_us, to_us, trap)
+
+    # --- checkpoints
+
+    def save_checkpoint(self, at_us: int, state: bytes) -> None:
+        """Keep the model's state of that time; a tick can bring one along instead."""
+        with self._database.write() as connection:
+            checkpoints.save(connection, at_us, state)
+
+    def checkpoint_before(self, at_us: int) -> tuple[int, bytes] | None:
+        """The newest checkpoint at or before that time: its time and state."""
+        with self._database.read() as connection:
+            return checkpoints.before(connection, at_us)
+
+    def drop_checkpoints_after(self, at_us: int) -> None:
+        """Drop the checkpoints later than that time, which a late entry made wrong."""
+        with self._database.write() as connection:
+            checkpoints.drop_after(connection, at_us)
+
+    # --- transitions and outbox
+
+    def transitions(self, from_us: int, to_us: int) -> Sequence[Transition]:
+        """The transitions at or after one time and before another, in order."""
+        with self._database.read() as connection:
+            return announcements.find(connection, from_us, to_us)
+
+    def pending(self, limit: int, after_number: int = 0) -> Sequence[Waiting]:
+        """The oldest messages of the outbox, at most `limit`, in order."""
+        with self._database.read() as connection:
+            return announcements.pending(connection, limit, after_number)
+
+    def mark_sent(self, numbers: Sequence[int]) -> None:
+        """Take messages out of the outbox that the broker has acknowledged."""
+        with self._database.write() as connection:
+            announcements.mark_sent(connection, numbers)
+
+    def outbox_waiting(self) -> int:
+        """How many messages wait in the outbox."""
+        with self._database.read() as connection:
+            return announcements.waiting(connection)
+
+    # --- the rest
+
+    def get_meta(self, name: str) -> str | None:
+        """A named value, None when it was never set."""
+        with self._database.read() as connection:
+            return metas.get(connection, name)
+
+    def set_meta(self, name: str, value: str) -> None:
+        """Set a named value. Names that begin with `store.` or `readings.` are the store's own."""
+        with self._database.write() as connection:
+            metas.put(connection, name, value)
+
+    def backup(self, path: str | Path) -> None:
+        """Write a consistent copy, checked, in one file; the daemon goes on meanwhile."""
+        sqlite.backup(self._database, Path(path))
+
+
+def _path(url_or_path: str | Path) -> Path:
+    """The path of an SQLite file, from a path or an `sqlite:///` URL."""
+    text = str(url_or_path)
+    if "://" not in text:
+        return Path(text)
+    scheme, _, rest = text.partition("://")
+    if scheme != "sqlite" or not rest.startswith("/") or rest == "/":
+        raise StoreError(
+            f"{text}: only SQLite can be used: give the path of a file, or sqlite:///PATH"
+        )
+    return Path(rest[1:])
+
+
+def _was_closed(database: Database) -> bool:
+    """Whether the last process that had the database closed it; so for a new one."""
+    with database.read() as connection:
+        if migrations.version_of(connection) == 0:
+            return True
+        return metas.get(connection, _OPEN) != "yes"
