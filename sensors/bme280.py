@@ -163,9 +163,12 @@ class Bme280:
         pressure = int.from_bytes(burst[0:3], "big") >> 4
         temperature = int.from_bytes(burst[3:6], "big") >> 4
         words = (pressure, temperature, int.from_bytes(burst[6:8], "big"))
-        for word, unmeasured, full in zip(words, _UNMEASURED, _FULL, strict=True):
-            if word in (0, unmeasured, full):
+        for word, full in zip(words, _FULL, strict=True):
+            if word in (0, full):
                 raise self._fault(reasons.NOT_MEASURED, f"raw word 0x{word:x}")
+        # each of these alone can be true: 26.46 degC, 820 hPa or 62 % with the usual calibration
+        if sum(word == one for word, one in zip(words, _UNMEASURED, strict=True)) >= 2:
+            raise self._fault(reasons.NOT_MEASURED, "raw words as after power-on")
 
     def _decode(self, burst: bytes) -> tuple[float, float, float]:
         self._registers.burst = burst

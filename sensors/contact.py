@@ -37,7 +37,7 @@ class LineReader:
         self._sensor = sensor
         self._line = line
         self._last_us: int | None = None
-        self._last_seq: int | None = None
+        self._last_seq = 0
         self._level = line.level()
         self._doubtful = False
 
@@ -59,9 +59,9 @@ class LineReader:
 
     def _follows(self, edge: Edge) -> bool:
         """Whether this edge is the next one: by its number, and by changing the level."""
-        follows = edge.level != self._level
-        if self._last_seq is not None:
-            follows = follows and edge.seq == self._last_seq + 1
+        # the first edge may have come between asking for the line and reading its level
+        changes = edge.level != self._level or edge.seq == 1
+        follows = changes and edge.seq == self._last_seq + 1
         self._level, self._last_seq = edge.level, edge.seq
         return follows
 

@@ -97,8 +97,8 @@ class Ds18b20:
 
 
 def channels(config: SensorConfig) -> tuple[Channel, ...]:
-    """Data sheet: -55 to 125 degC; 0.5 K within -10 to 85 degC."""
-    return (Channel(f"{config.id}.temperature", "temperature", 0.01, 218.15, 398.15, 0.5),)
+    """Data sheet: -55 to 125 degC, and a step of room; 0.5 K within -10 to 85 degC."""
+    return (Channel(f"{config.id}.temperature", "temperature", 0.01, 218.14, 398.16, 0.5),)
 
 
 DS18B20 = register(

@@ -69,6 +69,7 @@ class EmulatedAds1115(Registers):
     supply_v: float = 3.3  # its own; an input cannot be read above this by more than 0.3 V
     stuck_busy: bool = False
     frozen: bool = False
+    resets_while_converting: bool = False  # a weak supply gives way when it starts to work
     flipped_data_bit: int | None = None  # of 16, in every second read of a conversion
 
     def __post_init__(self) -> None:
@@ -118,6 +119,8 @@ class EmulatedAds1115(Registers):
         return bytes(answer * (length // 2 + 1))[:length]
 
     def _settle(self, bus: EmulatedI2C) -> None:
+        if self.resets_while_converting and self._done_s is not None:
+            self.brown_out()
         if self._done_s is None or bus.time_s < self._done_s or self.stuck_busy:
             return
         self._done_s = None

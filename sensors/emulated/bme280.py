@@ -100,6 +100,7 @@ class EmulatedBme280(Registers):
         self.flipped_data_bit: int | None = None  # of 64, in every second read of the data
         self.flipped_calibration_bit: int | None = None  # of 208, in every second read
         self.frozen = False  # goes on answering with its last conversion
+        self.conversions = 0
         self.replace(calibration or Calibration())
 
     def replace(self, calibration: Calibration) -> None:
@@ -118,6 +119,11 @@ class EmulatedBme280(Registers):
         self._data = _SKIPPED
         self._done_s: float | None = None
         self._reads = 0
+
+    @property
+    def mode(self) -> int:
+        """0 asleep, 1 or 2 forced, 3 normal."""
+        return self._set[_CTRL_MEAS] & 0x03
 
     def store(self, register: int, data: bytes, bus: EmulatedI2C) -> None:
         # a write of several registers is register, value, register, value ... (section 6.2.1)
@@ -163,7 +169,7 @@ class EmulatedBme280(Registers):
         return _MEASURING if self._done_s is not None else 0
 
     def _settle(self, bus: EmulatedI2C) -> None:
-        if self._set[_CTRL_MEAS] & 0x03 == _NORMAL:
+        if self.mode == _NORMAL:
             self._convert()
         elif self._done_s is not None and bus.time_s >= self._done_s and not self.stuck_busy:
             self._convert()
@@ -173,6 +179,7 @@ class EmulatedBme280(Registers):
     def _convert(self) -> None:
         if self.frozen and self._data != _SKIPPED:
             return
+        self.conversions += 1
         self._data = self.encode(*self._times_sampled())
 
     def encode(self, t: int = 1, p: int = 1, h: int = 1) -> bytes:

@@ -60,6 +60,17 @@ class EmulatedHardware:
 
     # what the shop asks for
 
+    def __enter__(self) -> EmulatedHardware:
+        return self
+
+    def __exit__(self, *_: object) -> None:
+        self.close()
+
+    def locked_buses(self) -> tuple[int, ...]:
+        """Buses that somebody took and did not give back."""
+        with self._lock:
+            return tuple(number for number, bus in self._buses.items() if bus.locked)
+
     def bme280(self, bus: int, address: int) -> EmulatedBme280:
         part = self.i2c(bus).parts.setdefault(address, EmulatedBme280())
         assert isinstance(part, EmulatedBme280), f"0x{address:02x} is another part"
