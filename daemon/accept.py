@@ -1,0 +1,68 @@
+"""What a person or a device may tell the daemon: checked before it is committed."""
+
+from __future__ import annotations
+
+import math
+
+from daemon.clock import MINUTE_US, format_rfc3339
+from daemon.due import volume_words
+from daemon.errors import JournalError
+from daemon.journal import Acknowledge, Body, Drain
+from daemon.site.types import Site
+
+AHEAD_US = 2 * MINUTE_US  # a phone's clock may be a little fast
+LOOKS = ("", "clear", "milky", "oily", "rusty")
+MOST_OF_CAPACITY = 2.0  # more than this from one trap is a slip of the pen
+LONGEST_NAME, LONGEST_KEY = 40, 200
+
+
+def check(site: Site, body: Body, at_us: int, now_us: int, begun_us: int) -> None:
+    """Raise JournalError, saying what is wrong and what to do, unless the entry can be taken."""
+    if at_us > now_us + AHEAD_US:
+        raise JournalError(
+            f"{format_rfc3339(at_us)} is ahead of the daemon's clock ({format_rfc3339(now_us)}): "
+            "leave the time out for now, or set the clock"
+        )
+    if at_us < begun_us:
+        raise JournalError(
+            f"{format_rfc3339(at_us)} is before the record begins ({format_rfc3339(begun_us)}): "
+            "nothing is known of that time"
+        )
+    match body:
+        case Drain():
+            _check_drain(site, body)
+        case Acknowledge(by=by):
+            _check_by(by)
+
+
+def _check_drain(site: Site, drain: Drain) -> None:
+    traps = {s.id: s.trap for s in site.line.stations if s.trap is not None}
+    if drain.trap not in traps:
+        known = ", ".join(traps) or "none"
+        raise JournalError(f'"{drain.trap}" is not a trap of this site (known: {known})')
+    if drain.look not in LOOKS:
+        raise JournalError(f'look "{drain.look}" is not one of {", ".join(LOOKS[1:])}')
+    _check_by(drain.by)
+    volume_kg = drain.volume_kg
+    if volume_kg is None:
+        return
+    if not (math.isfinite(volume_kg) and volume_kg >= 0.0):
+        raise JournalError(
+            f"a volume of {volume_kg * 1000:g} ml cannot be: leave it out if it was not measured"
+        )
+    if drain.outcome == "empty" and volume_kg > 0.0:
+        raise JournalError(
+            f'"empty" with {volume_words(site, volume_kg)} contradicts itself: say "emptied", or '
+            "leave the volume out"
+        )
+    capacity_kg = traps[drain.trap].capacity.value
+    if volume_kg > MOST_OF_CAPACITY * capacity_kg:
+        raise JournalError(
+            f"{volume_words(site, volume_kg)} is more than twice what {drain.trap} can hold "
+            f"({volume_words(site, capacity_kg)}): look at the figure and its unit again"
+        )
+
+
+def _check_by(by: str) -> None:
+    if len(by) > LONGEST_NAME:
+        raise JournalError(f"initials of {len(by)} characters: at most {LONGEST_NAME}")

@@ -1,0 +1,490 @@
+"""The whole main job as one pure function: `advance(state, now, inputs)`.
+
+Inputs are readings and journal entries since the last tick. The live daemon, the demo and a replay
+all call it with the same things and get the same bits. It goes from the last tick to this one in
+steps that end at every full hour and at every journal entry, so that both are dealt with at their
+own time.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Collection, Iterable, Mapping, Sequence
+from dataclasses import dataclass, field, replace
+from functools import cached_property
+from typing import Literal
+
+import numpy as np
+
+from daemon.alarms import (
+    Alarm,
+    AlarmDefinition,
+    AlarmRecord,
+    Condition,
+    Transition,
+    acknowledge,
+    shown,
+    watch,
+)
+from daemon.clock import HOUR_US, MINUTE_US
+from daemon.due import NO_DATE, calendar_due_us, condition, due_words
+from daemon.journal import Acknowledge, Drain, Entry
+from daemon.moisture.contact import STALE_AFTER_PERIODS
+from daemon.moisture.ensemble import Array, percentiles
+from daemon.moisture.model import Heard, Model, State
+from daemon.site import hours as opening
+from daemon.site.types import Site
+from daemon.views import Because, TrapView
+from sensors.reading import Reading
+
+DUE_ON_DELAY_US = 2 * MINUTE_US
+FLOODED_RAISED_AT, FLOODED_RETURNS_BELOW = 0.5, 0.3
+
+
+@dataclass(frozen=True, slots=True)
+class TrapRecord:
+    """When a trap was last drained, and when its calendar asks again."""
+
+    last_drain_us: int = -1
+    calendar_due_us: int = NO_DATE
+
+
+@dataclass(frozen=True, slots=True)
+class ChannelRecord:
+    """The last that a channel said, good or bad."""
+
+    value: float = float("nan")  # of the last good reading
+    time_us: int = -1  # of the last good reading
+    heard_us: int = -1  # of the last reading of any kind
+    fault: str = ""  # of the last reading
+    only_edges: bool = False  # a contact that has not repeated its value: silence is normal
+
+
+@dataclass(frozen=True, slots=True)
+class HourTotals:
+    """What has moved since the last full hour, or since the beginning. Arrays are (members,)."""
+
+    from_us: int
+    on_s: Array
+    drawn_kg: Array
+    used_kg: Array
+
+
+@dataclass(frozen=True, slots=True)
+class CoreState:
+    """Everything that a tick hands to the next one."""
+
+    model: State
+    begun_us: int
+    stations: tuple[str, ...]  # the rows of the model's arrays
+    traps: Mapping[str, TrapRecord]
+    channels: Mapping[str, ChannelRecord]
+    alarms: Mapping[str, AlarmRecord]
+    hour: HourTotals
+
+    @property
+    def time_us(self) -> int:
+        return self.model.time_us
+
+
+@dataclass(frozen=True, slots=True)
+class Mark:
+    """The traps at one full hour, at one drain (before the emptying) or at the beginning."""
+
+    at_us: int
+    kind: Literal["hour", "drain"]
+    traps: tuple[str, ...]
+    kg: Array  # (3, traps): 5, 50, 95 %
+    probability_due: Array  # (traps,)
+    hour: HourTotals | None = None  # what moved in the hour that ends here
+
+
+@dataclass(frozen=True, slots=True)
+class Inputs:
+    """What arrived since the last tick: readings and entries, none after `now`."""
+
+    readings: Sequence[Reading] = ()
+    entries: Sequence[Entry] = ()
+
+
+@dataclass(frozen=True)
+class Estimate:
+    """What the model now believes. The views are made when they are asked for."""
+
+    core: Core
+    state: CoreState
+    marks: tuple[Mark, ...] = ()
+
+    @property
+    def at_us(self) -> int:
+        return self.state.time_us
+
+    @cached_property
+    def traps(self) -> tuple[TrapView, ...]:
+        return self.core.views(self.state)
+
+
+@dataclass(slots=True)
+class _Tick:
+    """The working state of one advance."""
+
+    state: CoreState
+    transitions: list[Transition] = field(default_factory=list)
+    marks: list[Mark] = field(default_factory=list)
+
+
+class Core:
+    """`advance` for one site. Holds only what never changes."""
+
+    def __init__(self, site: Site) -> None:
+        self.site = site
+        self.model = Model(site.line)
+        plan = self.model.plan
+        self.trap_names = site.traps
+        self._trap_rows = list(plan.traps)
+        self._traps = [t for s in plan.stations if (t := s.trap) is not None]
+        self._drain_at = np.array([trap.drain_at_kg for trap in self._traps])
+        self._sensors: dict[str, list[str]] = {}
+        for name, channel in site.channels.items():
+            self._sensors.setdefault(channel.sensor, []).append(name)
+        self.definitions = self._define()
+
+    def _define(self) -> dict[str, AlarmDefinition]:
+        found = []
+        for trap in self.trap_names:
+            found.append(
+                AlarmDefinition(f"{trap}-drain-due", "drain-due", trap, "medium", DUE_ON_DELAY_US)
+            )
+            found.append(
+                AlarmDefinition(f"{trap}-flooded", "trap-flooded", trap, "high", DUE_ON_DELAY_US)
+            )
+        for sensor in self._sensors:
+            found.append(
+                AlarmDefinition(
+                    f"{sensor}-sensor-fault",
+                    "sensor-fault",
+                    sensor,
+                    "medium",
+                    on_delay_us=self.model.period_us,
+                    off_delay_us=STALE_AFTER_PERIODS * self.model.period_us,
+                )
+            )
+        return {definition.id: definition for definition in found}
+
+    # ---- beginning ----
+
+    def initial(self, now_us: int, inputs: Inputs) -> tuple[CoreState, Estimate, list[Transition]]:
+        """The state at the first tick, which is the time of the first reading."""
+        heard = self._heard(inputs.readings, now_us, now_us)
+        model = self.model.initial(now_us, heard)
+        state = CoreState(
+            model=model,
+            begun_us=now_us,
+            stations=tuple(self.model.plan.index),
+            traps={
+                name: TrapRecord(-1, calendar_due_us(self.site, trap, now_us, drained=False))
+                for name, trap in zip(self.trap_names, self._traps, strict=True)
+            },
+            channels=self._told({name: ChannelRecord() for name in self.site.channels}, inputs),
+            alarms={name: AlarmRecord(since_us=now_us) for name in self.definitions},
+            hour=self._no_hour(now_us),
+        )
+        tick = _Tick(state)
+        if now_us % HOUR_US == 0:
+            tick.marks.append(self._mark(state, "hour", None))
+        self._watch_all(tick)
+        return tick.state, Estimate(self, tick.state, tuple(tick.marks)), tick.transitions
+
+    def _no_hour(self, from_us: int) -> HourTotals:
+        zero = np.zeros(self.site.line.members)
+        return HourTotals(from_us, zero, zero, zero)
+
+    # ---- the main job ----
+
+    def advance(
+        self, state: CoreState, now_us: int, inputs: Inputs
+    ) -> tuple[CoreState, Estimate, list[Transition]]:
+        """Advance to `now_us`. Entries must lie after the state's time and not after `now_us`.
+
+        Pure: the same state and inputs give the same result to the bit, and nothing is kept.
+        """
+        tick = _Tick(replace(state, channels=self._told(state.channels, inputs)))
+        entries = sorted(inputs.entries, key=lambda entry: (entry.at_us, entry.seq))
+        readings = inputs.readings
+        for until_us in self._stops(state.time_us, now_us, entries):
+            self._step(tick, until_us, readings)
+            here = [entry for entry in entries if entry.at_us == until_us]
+            if until_us % HOUR_US == 0:
+                self._full_hour(tick)
+            for entry in here:
+                self._take(tick, entry)
+        return tick.state, Estimate(self, tick.state, tuple(tick.marks)), tick.transitions
+
+    def take(
+        self, state: CoreState, entries: Sequence[Entry]
+    ) -> tuple[CoreState, Estimate, list[Transition]]:
+        """Take entries that are dated at the state's own time."""
+        tick = _Tick(state)
+        for entry in entries:
+            self._take(tick, entry)
+        return tick.state, Estimate(self, tick.state, tuple(tick.marks)), tick.transitions
+
+    def _stops(self, from_us: int, to_us: int, entries: Iterable[Entry]) -> list[int]:
+        hours = range((from_us // HOUR_US + 1) * HOUR_US, to_us + 1, HOUR_US)
+        stops = {to_us, *hours, *(entry.at_us for entry in entries)}
+        return sorted(stop for stop in stops if from_us < stop <= to_us)
+
+    def _step(self, tick: _Tick, until_us: int, readings: Sequence[Reading]) -> None:
+        state = tick.state
+        heard = self._heard(readings, state.time_us, until_us)
+        model, moved = self.model.step(state.model, until_us, heard)
+        hour = state.hour
+        hour = HourTotals(
+            hour.from_us,
+            hour.on_s + moved.on_s,
+            hour.drawn_kg + moved.drawn_kg,
+            hour.used_kg + moved.used_kg,
+        )
+        tick.state = replace(state, model=model, hour=hour)
+        self._watch_all(tick)
+
+    def _full_hour(self, tick: _Tick) -> None:
+        state = tick.state
+        state.model.ledger.check(state.model.water)
+        tick.marks.append(self._mark(state, "hour", state.hour))
+        tick.state = replace(state, hour=self._no_hour(state.time_us))
+
+    # ---- what was heard ----
+
+    def _heard(self, readings: Sequence[Reading], after_us: int, until_us: int) -> Heard:
+        """Readings of (after_us, until_us] by channel; at the beginning, those of that time."""
+        channels: dict[str, list[tuple[int, float, bool]]] = {}
+        first = after_us == until_us
+        for reading in readings:
+            within = reading.time_us <= until_us and (first or reading.time_us > after_us)
+            if within:
+                told = (reading.time_us, reading.value, reading.good)
+                channels.setdefault(reading.channel, []).append(told)
+        for told_list in channels.values():
+            told_list.sort(key=lambda told: told[0])
+        is_open = opening.is_open(self.site.hours, self.site.timezone, until_us)
+        return Heard(channels, is_open)
+
+    def _told(
+        self, channels: Mapping[str, ChannelRecord], inputs: Inputs
+    ) -> dict[str, ChannelRecord]:
+        after = dict(channels)
+        for reading in sorted(inputs.readings, key=lambda reading: reading.time_us):
+            record = after.get(reading.channel)
+            if record is None:
+                continue
+            if not reading.good:
+                after[reading.channel] = replace(
+                    record, heard_us=reading.time_us, fault=reading.fault, only_edges=False
+                )
+                continue
+            after[reading.channel] = ChannelRecord(
+                reading.value,
+                reading.time_us,
+                reading.time_us,
+                "",
+                self._only_edges(record, reading),
+            )
+        return after
+
+    def _only_edges(self, record: ChannelRecord, reading: Reading) -> bool:
+        if self.site.channels[reading.channel].quantity != "contact":
+            return False
+        if record.time_us < 0:
+            return True
+        soon = reading.time_us - record.time_us <= STALE_AFTER_PERIODS * self.model.period_us
+        repeats = reading.value == record.value and reading.time_us > record.time_us and soon
+        return record.only_edges and not repeats
+
+    # ---- journal entries ----
+
+    def _take(self, tick: _Tick, entry: Entry) -> None:
+        match entry.body:
+            case Drain() as drain:
+                self._drain(tick, entry, drain)
+            case Acknowledge(alarm=alarm, by=by):
+                self._acknowledge(tick, alarm, by)
+
+    def _drain(self, tick: _Tick, entry: Entry, drain: Drain) -> None:
+        if drain.trap not in self.trap_names:
+            return
+        state = tick.state
+        tick.marks.append(self._mark(state, "drain", None, (drain.trap,)))
+        if drain.outcome == "partly":
+            return
+        number = self.trap_names.index(drain.trap)
+        due_us = calendar_due_us(self.site, self._traps[number], entry.at_us, drained=True)
+        traps = {**state.traps, drain.trap: TrapRecord(entry.at_us, due_us)}
+        tick.state = replace(state, model=self.model.drain(state.model, drain.trap), traps=traps)
+        # whoever opens the drain has seen that it was due
+        self._acknowledge(tick, f"{drain.trap}-drain-due", drain.by)
+        self._watch_all(tick, drained=drain.trap)
+
+    def _acknowledge(self, tick: _Tick, alarm: str, by: str) -> None:
+        if alarm not in self.definitions:
+            return
+        record, transition = acknowledge(
+            self.definitions[alarm], tick.state.alarms[alarm], tick.state.time_us, by
+        )
+        self._changed(tick, alarm, record, transition)
+
+    # ---- alarms ----
+
+    def _changed(
+        self, tick: _Tick, alarm: str, record: AlarmRecord, transition: Transition | None
+    ) -> None:
+        if record is not tick.state.alarms[alarm]:
+            tick.state = replace(tick.state, alarms={**tick.state.alarms, alarm: record})
+        if transition is not None:
+            tick.transitions.append(transition)
+
+    def _watch(self, tick: _Tick, alarm: str, so: Condition, text: str) -> None:
+        record = tick.state.alarms[alarm]
+        after, transition = watch(self.definitions[alarm], record, tick.state.time_us, so, text)
+        self._changed(tick, alarm, after, transition)
+
+    def _watch_all(self, tick: _Tick, drained: str = "") -> None:
+        state = tick.state
+        contents = state.model.water.trap[self._trap_rows]
+        probability = self._probability_due(contents)
+        capacity = state.model.parameters.water.capacity_kg[self._trap_rows]
+        full = np.count_nonzero(contents >= capacity, axis=1) / contents.shape[1]
+        for number, name in enumerate(self.trap_names):
+            self._watch_drain(tick, number, float(probability[number]), name == drained)
+            self._watch_flooded(tick, number, float(full[number]))
+        for sensor, channels in self._sensors.items():
+            fault = self._fault(state, channels)
+            text = (
+                f"{sensor}: {fault}. Look at its wiring and run `dripleg check`." if fault else ""
+            )
+            self._watch(tick, f"{sensor}-sensor-fault", "so" if fault else "not so", text)
+
+    def _watch_drain(self, tick: _Tick, number: int, probability: float, drained_now: bool) -> None:
+        name = self.trap_names[number]
+        alarm = f"{name}-drain-due"
+        state = tick.state
+        due_us = state.traps[name].calendar_due_us
+        by_calendar = due_us != NO_DATE and state.time_us >= due_us
+        so = condition(probability, by_calendar, drained_now)
+        record = state.alarms[alarm]
+        text = record.text
+        if (so == "so") != record.raised:  # only then are the words needed
+            text = self._due_text(state, number, so, by_calendar and probability < 0.5)
+        definition = self.definitions[alarm]
+        if by_calendar:
+            definition = replace(definition, on_delay_us=0)
+        after, transition = watch(definition, record, state.time_us, so, text)
+        self._changed(tick, alarm, after, transition)
+
+    def _due_text(self, state: CoreState, number: int, so: Condition, calendar: bool) -> str:
+        name, trap = self.trap_names[number], self._traps[number]
+        kg = percentiles(state.model.water.trap[self._trap_rows[number]])
+        held = (float(kg[0]), float(kg[1]), float(kg[2]))
+        if so != "so":
+            return f"{name}: no longer due."
+        return due_words(self.site, name, trap, held, "calendar" if calendar else "volume")
+
+    def _watch_flooded(self, tick: _Tick, number: int, full: float) -> None:
+        name = self.trap_names[number]
+        so: Condition = "between"
+        if full >= FLOODED_RAISED_AT:
+            so = "so"
+        elif full < FLOODED_RETURNS_BELOW:
+            so = "not so"
+        text = (
+            f"{name} is full and water goes on down the line: drain it, then the traps after it."
+            if so == "so"
+            else f"{name}: no longer full."
+        )
+        self._watch(tick, f"{name}-flooded", so, text)
+
+    def _fault(self, state: CoreState, channels: Sequence[str]) -> str:
+        """Why a sensor cannot be believed, "" while it can."""
+        limit_us = STALE_AFTER_PERIODS * self.model.period_us
+        for name in channels:
+            record = state.channels[name]
+            if record.fault:
+                return f"{name} is not usable: {record.fault}"
+            silent_us = state.time_us - max(record.heard_us, state.begun_us)
+            if silent_us > limit_us and not record.only_edges:
+                return f"{name} has said nothing for {STALE_AFTER_PERIODS} periods"
+        return ""
+
+    # ---- what is shown ----
+
+    def _probability_due(self, contents: Array) -> Array:
+        at_or_above = contents >= self._drain_at[:, None]
+        probability: Array = np.count_nonzero(at_or_above, axis=1) / contents.shape[1]
+        return probability
+
+    def _mark(
+        self,
+        state: CoreState,
+        kind: Literal["hour", "drain"],
+        hour: HourTotals | None,
+        traps: Collection[str] | None = None,
+    ) -> Mark:
+        chosen = [n for n, name in enumerate(self.trap_names) if traps is None or name in traps]
+        contents = state.model.water.trap[self._trap_rows]
+        return Mark(
+            at_us=state.time_us,
+            kind=kind,
+            traps=tuple(self.trap_names[n] for n in chosen),
+            kg=percentiles(contents[chosen]),
+            probability_due=self._probability_due(contents)[chosen],
+            hour=hour,
+        )
+
+    def final_mark(self, state: CoreState, leave_out: Collection[str]) -> Mark:
+        """The traps and the unfinished hour as they stand now, for the end of a record."""
+        shown_traps = [name for name in self.trap_names if name not in leave_out]
+        return self._mark(state, "hour", state.hour, shown_traps)
+
+    def heard_us(self, state: CoreState) -> int:
+        """When a good reading was last heard, or the beginning."""
+        return max(
+            (c.time_us for c in state.channels.values() if c.time_us >= 0), default=(state.begun_us)
+        )
+
+    def views(self, state: CoreState) -> tuple[TrapView, ...]:
+        """What is believed of every trap now."""
+        contents = state.model.water.trap[self._trap_rows]
+        kg = percentiles(contents)
+        probability = self._probability_due(contents)
+        return tuple(
+            self._view(state, number, kg[:, number], float(probability[number]))
+            for number in range(len(self.trap_names))
+        )
+
+    def _view(self, state: CoreState, number: int, kg: Array, probability: float) -> TrapView:
+        name, trap = self.trap_names[number], self._traps[number]
+        record = state.traps[name]
+        by_calendar = record.calendar_due_us != NO_DATE
+        calendar_now = by_calendar and state.time_us >= record.calendar_due_us
+        due = state.alarms[f"{name}-drain-due"].raised
+        because: Because | None = "calendar" if by_calendar else None
+        if due and probability >= 0.3 and not (calendar_now and probability < 0.5):
+            because = "volume"
+        return TrapView(
+            trap=name,
+            at_us=state.time_us,
+            p05_kg=float(kg[0]),
+            p50_kg=float(kg[1]),
+            p95_kg=float(kg[2]),
+            capacity_kg=trap.capacity.value,
+            drain_at_kg=trap.drain_at_kg,
+            probability_due=probability,
+            due=due,
+            because=because,
+            due_at_us=record.calendar_due_us if by_calendar else None,
+            since="start" if record.last_drain_us < 0 else "last drain",
+            last_drain_us=None if record.last_drain_us < 0 else record.last_drain_us,
+        )
+
+    def alarms(self, state: CoreState) -> list[Alarm]:
+        """Every alarm as it stands."""
+        return [shown(self.definitions[name], record) for name, record in state.alarms.items()]

@@ -1,0 +1,107 @@
+"""A state as bytes and back, to the bit: JSON for the structure, raw float64 for the arrays."""
+
+from __future__ import annotations
+
+import json
+import struct
+import zlib
+from collections.abc import Mapping
+from dataclasses import fields, is_dataclass
+from typing import Any
+
+import numpy as np
+
+from daemon.advance import ChannelRecord, CoreState, HourTotals, TrapRecord
+from daemon.alarms import AlarmRecord
+from daemon.errors import StoreError
+from daemon.moisture.conditions import Conditions, Held, Lapse, Offsets
+from daemon.moisture.contact import ContactState
+from daemon.moisture.flow import AirState, PumpWatch
+from daemon.moisture.line import Ledger, WaterParameters, WaterState
+from daemon.moisture.model import Parameters, State
+
+FORMAT = b"DLC1"
+_CLASSES = {
+    cls.__name__: cls
+    for cls in (
+        AirState,
+        AlarmRecord,
+        ChannelRecord,
+        Conditions,
+        ContactState,
+        CoreState,
+        Held,
+        HourTotals,
+        Lapse,
+        Ledger,
+        Offsets,
+        Parameters,
+        PumpWatch,
+        State,
+        TrapRecord,
+        WaterParameters,
+        WaterState,
+    )
+}
+
+
+def encode(state: CoreState, fingerprint: str) -> bytes:
+    """The state as a blob that says which description of the line it belongs to."""
+    arrays: list[bytes] = []
+    structure = json.dumps([fingerprint, _flatten(state, arrays)]).encode()
+    head = FORMAT + struct.pack("<I", len(structure))
+    return zlib.compress(head + structure + b"".join(arrays), 1)
+
+
+def decode(blob: bytes) -> tuple[CoreState, str]:
+    """The state and the fingerprint of a blob; StoreError when it is not one."""
+    try:
+        raw = zlib.decompress(blob)
+        if raw[:4] != FORMAT:
+            raise ValueError("unknown format")
+        (length,) = struct.unpack_from("<I", raw, 4)
+        fingerprint, structure = json.loads(raw[8 : 8 + length])
+        state = _rebuild(structure, memoryview(raw)[8 + length :])
+        if not isinstance(state, CoreState):
+            raise ValueError("not a state")
+    except (zlib.error, ValueError, KeyError, TypeError, struct.error) as error:
+        raise StoreError(f"a checkpoint cannot be read: {error}") from error
+    return state, str(fingerprint)
+
+
+def _flatten(value: Any, arrays: list[bytes]) -> Any:
+    """JSON for everything but arrays, which are appended and pointed at."""
+    flat: Any = value
+    if isinstance(value, np.ndarray):
+        flat = {"array": list(value.shape), "at": sum(len(each) for each in arrays)}
+        arrays.append(np.ascontiguousarray(value, dtype="<f8").tobytes())
+    elif is_dataclass(value):
+        inner = {f.name: _flatten(getattr(value, f.name), arrays) for f in fields(value)}
+        flat = {"class": type(value).__name__, "fields": inner}
+    elif isinstance(value, frozenset):
+        flat = {"set": sorted(value)}
+    elif isinstance(value, tuple | list):
+        flat = {"tuple": [_flatten(each, arrays) for each in value]}
+    elif isinstance(value, Mapping):
+        flat = {"map": [[key, _flatten(each, arrays)] for key, each in value.items()]}
+    elif isinstance(value, np.floating):
+        flat = float(value)
+    return flat
+
+
+def _rebuild(value: Any, raw: memoryview) -> Any:
+    if not isinstance(value, dict):
+        return value
+    if "array" in value:
+        shape = tuple(value["array"])
+        count = int(np.prod(shape))
+        found = np.frombuffer(raw, dtype="<f8", count=count, offset=value["at"])
+        return found.reshape(shape).copy()
+    if "class" in value:
+        inner = {name: _rebuild(each, raw) for name, each in value["fields"].items()}
+        return _CLASSES[value["class"]](**inner)
+    if "set" in value:
+        return frozenset(value["set"])
+    if "tuple" in value:
+        return tuple(_rebuild(each, raw) for each in value["tuple"])
+    return {key: _rebuild(each, raw) for key, each in value["map"]}

@@ -1,0 +1,166 @@
+"""`dripleg demo`: the real drivers and the real daemon on a make-believe shop, sped up."""
+
+from __future__ import annotations
+
+import re
+import tempfile
+import threading
+from dataclasses import replace
+from importlib import resources
+from pathlib import Path
+
+from daemon import compose, logs
+from daemon.clock import MINUTE_US, ScaledClock, SystemClock, format_rfc3339, to_datetime
+from daemon.due import interval_words
+from daemon.errors import DriplegError
+from daemon.journal import Drain, Entry
+from daemon.make_believe import MakeBelieveShop
+from daemon.site.reader import parse_site
+from daemon.site.types import Mqtt, Site
+from sensors.emulated.hardware import EmulatedHardware
+from sensors.reading import Reading
+from sensors.sampling import HungBus, Sampler
+
+SAY_EVERY_S = 5.0
+SLOWEST, FASTEST = 1.0, 600.0
+
+
+class DemoError(DriplegError, ValueError):
+    """An option of the demo that cannot be used."""
+
+
+class _ShopSampler:
+    """Lets the make-believe shop live on before its parts are read."""
+
+    def __init__(self, sampler: Sampler, shop: MakeBelieveShop) -> None:
+        self._sampler, self._shop = sampler, shop
+        self._lock = threading.Lock()
+
+    def sample(self, now_us: int, deadline_s: float) -> list[Reading]:
+        with self._lock:
+            self._shop.advance_to(now_us)
+        return self._sampler.sample(now_us, deadline_s, patient=True)
+
+    def hung_buses(self) -> tuple[HungBus, ...]:
+        return self._sampler.hung_buses()
+
+    def drain(self, entry: Entry) -> None:
+        """What is recorded has really been done there."""
+        if isinstance(entry.body, Drain) and entry.body.outcome != "partly":
+            with self._lock:
+                self._shop.drain(entry.body.trap)
+
+
+def seconds(text: str) -> float:
+    """ "90s", "90", "5 min", "1 h" in seconds; DemoError when it is not a length of time."""
+    match = re.fullmatch(r"\s*(\d+(?:\.\d+)?)\s*(s|min|m|h)?\s*", text)
+    if match is None or float(match[1]) <= 0.0:
+        raise DemoError(f'--for "{text}": write a length of time like 90s or 5min')
+    return float(match[1]) * {"s": 1, "m": 60, "min": 60, "h": 3600, None: 1}[match[2]]
+
+
+def broker(text: str) -> Mqtt:
+    """The broker of `--broker HOST:PORT`; DemoError when it is not one."""
+    host, _, port = text.rpartition(":")
+    if not host or not port.isdigit() or not 0 < int(port) < 65536:
+        raise DemoError(f'--broker "{text}": write HOST:PORT, like 127.0.0.1:1883')
+    return Mqtt(host=host.strip("[]"), port=int(port))
+
+
+def demo_site(start_us: int, mqtt: Mqtt | None) -> Site:
+    """The make-believe shop's site file, in a time zone in which it is mid-morning now."""
+    text = resources.files("daemon").joinpath("demo-site.toml").read_text(encoding="utf-8")
+    ahead = (10 - to_datetime(start_us).hour + 12) % 24 - 12
+    # the sign of these zones' names is the wrong way round: Etc/GMT-3 is three hours ahead
+    zone = f"Etc/GMT{-ahead:+d}" if ahead else "UTC"
+    return replace(parse_site(text, "demo-site.toml"), timezone=zone, mqtt=mqtt)
+
+
+def run(port: int, length: str | None, broker_at: str | None, speed: float) -> None:
+    """Run the demo until it is stopped, or for a length of time."""
+    if not SLOWEST <= speed <= FASTEST:
+        raise DemoError(f"--speed {speed:g}: give a number from {SLOWEST:g} to {FASTEST:g}")
+    limit_s = seconds(length) if length is not None else None
+    mqtt = broker(broker_at) if broker_at is not None else None
+    logs.set_up(False)
+    start_us = SystemClock().now_us()
+    start_us -= start_us % MINUTE_US
+    site = demo_site(start_us, mqtt)
+    stop = threading.Event()
+    compose.stop_on_signals(stop)
+    with tempfile.TemporaryDirectory(prefix="dripleg-demo-") as folder, EmulatedHardware() as parts:
+        setters = parts.fit(site.sensors)
+        held = {s.id: s.trap.holds_at_start_kg for s in site.line.stations if s.trap is not None}
+        shop = MakeBelieveShop(start_us, setters, held)
+        samplers: list[_ShopSampler] = []
+
+        def wrap(sampler: Sampler) -> _ShopSampler:
+            samplers.append(_ShopSampler(sampler, shop))
+            return samplers[-1]
+
+        setting = compose.Setting(
+            site=site,
+            store_path=Path(folder) / "demo.db",
+            hardware=parts,
+            clock=ScaledClock(speed, start_us),
+            port=port,
+            wrap=wrap,
+        )
+        with compose.running(setting, stop) as running:
+            running.shell.on_entry = samplers[-1].drain
+            print(_greeting(site, running, speed, limit_s), flush=True)
+            teller = threading.Thread(
+                target=_tell, args=(running, stop, limit_s), name="teller", daemon=True
+            )
+            teller.start()
+            running.shell.run(stop)
+            stop.set()
+            teller.join()
+    print("The demo has stopped; what it stored is gone.", flush=True)
+
+
+def _greeting(site: Site, parts: compose.Parts, speed: float, limit_s: float | None) -> str:
+    url = parts.server.url
+    mqtt = f"Without MQTT: give --broker HOST:PORT to see it there (dripleg/{site.id}/#)."
+    if site.mqtt is not None:
+        mqtt = f"MQTT at {site.mqtt.host}:{site.mqtt.port}, topics {site.mqtt.prefix}/{site.id}/#"
+    ends = "until Ctrl-C" if limit_s is None else f"for {limit_s:g} s"
+    return f"""\
+{site.name} is a make-believe shop; its parts are emulated, the drivers and the daemon are real.
+An hour there passes in {3600 / speed:.0f} s here, {ends}.
+
+  look        {url}
+  the traps   curl {url}api/v1/traps
+  the alarms  curl {url}api/v1/alarms
+  drain       curl -X POST {url}api/v1/traps/tank/drains -H 'content-type: application/json' \\
+                -d '{{"outcome": "emptied", "volume_ml": 590, "by": "AM"}}'
+
+{mqtt}
+"""
+
+
+def _tell(parts: compose.Parts, stop: threading.Event, limit_s: float | None) -> None:
+    """Say now and then what the daemon believes; end the demo when its time is over."""
+    clock = SystemClock()
+    begun_s = clock.monotonic()
+    site = parts.shell.site
+    while True:
+        left_s = SAY_EVERY_S
+        if limit_s is not None:
+            left_s = min(left_s, limit_s - (clock.monotonic() - begun_s))
+        if left_s <= 0.0 or clock.wait(left_s, stop):
+            stop.set()
+            return
+        for line in _news(parts, site):
+            print(line, flush=True)
+
+
+def _news(parts: compose.Parts, site: Site) -> list[str]:
+    views = parts.shell.traps()
+    if not views:
+        return []
+    told = ", ".join(
+        f"{view.trap} {interval_words(site, view.p05_kg, view.p50_kg, view.p95_kg)}"
+        for view in views
+    )
+    return [f"{format_rfc3339(views[0].at_us)}  {told}"]

@@ -1,0 +1,100 @@
+"""`dripleg drained`: a drain from a shell, by way of the daemon or straight to the journal."""
+
+from __future__ import annotations
+
+import argparse
+import json
+import urllib.error
+import urllib.request
+from pathlib import Path
+from typing import Any
+
+from daemon import accept
+from daemon.clock import SystemClock, format_rfc3339, parse_rfc3339
+from daemon.errors import JournalError, StoreError, UnitError
+from daemon.journal import Drain
+from daemon.moisture.description import WATER_KG_PER_M3
+from daemon.payloads import drain_payload
+from daemon.site.types import Site
+from daemon.store.store import Store
+from daemon.units import parse
+
+TIMEOUT_S = 10.0
+
+
+def record_drain(site: Site, options: argparse.Namespace, store_path: Path) -> str:
+    """Record it; what to say about it. JournalError says what cannot be taken."""
+    drain, at_us = _read(options)
+    answer = _through_daemon(site, drain, at_us)
+    if answer is None:
+        answer = _straight(site, drain, at_us, store_path)
+    return (
+        f"recorded as no. {answer['seq']}: {answer['trap']} {answer['outcome']} at {answer['at']}"
+    )
+
+
+def _read(options: argparse.Namespace) -> tuple[Drain, int | None]:
+    if options.empty and options.partly:
+        raise JournalError("--empty and --partly contradict each other: give one of them")
+    volume_kg = None
+    if options.volume is not None:
+        try:
+            volume_kg = parse(options.volume, "volume") * WATER_KG_PER_M3
+        except UnitError as error:
+            raise JournalError(f"--volume: {error}") from error
+    at_us = None
+    if options.at is not None:
+        try:
+            at_us = parse_rfc3339(options.at)
+        except ValueError as error:
+            raise JournalError(f"--at: {error}") from error
+    outcome: Any = "empty" if options.empty else "partly" if options.partly else "emptied"
+    return Drain(options.trap, outcome, volume_kg, options.by, options.look), at_us
+
+
+def _through_daemon(site: Site, drain: Drain, at_us: int | None) -> dict[str, Any] | None:
+    """Ask the daemon that serves this site's API; None when nothing listens there."""
+    host = {"0.0.0.0": "127.0.0.1", "::": "::1"}.get(site.api.host, site.api.host)
+    address = f"[{host}]" if ":" in host else host
+    body = {
+        "outcome": drain.outcome,
+        "volume_ml": None if drain.volume_kg is None else drain.volume_kg * 1000.0,
+        "at": None if at_us is None else format_rfc3339(at_us),
+        "by": drain.by,
+        "look": drain.look,
+    }
+    request = urllib.request.Request(
+        f"http://{address}:{site.api.port}/api/v1/traps/{drain.trap}/drains",
+        data=json.dumps({key: value for key, value in body.items() if value}).encode(),
+        headers={"Content-Type": "application/json"},
+    )
+    opener = urllib.request.build_opener(urllib.request.ProxyHandler({}))
+    try:
+        with opener.open(request, timeout=TIMEOUT_S) as response:
+            answer: dict[str, Any] = json.load(response)
+            return answer
+    except urllib.error.HTTPError as error:
+        raise JournalError(_problem(error)) from error
+    except urllib.error.URLError:
+        return None
+
+
+def _problem(error: urllib.error.HTTPError) -> str:
+    try:
+        return str(json.load(error)["detail"])
+    except (ValueError, KeyError, TypeError):
+        return f"the daemon answered {error.code} {error.reason}"
+
+
+def _straight(site: Site, drain: Drain, at_us: int | None, path: Path) -> dict[str, Any]:
+    """No daemon: write to its journal, which it reads when it starts."""
+    if not path.exists():
+        raise StoreError(
+            f"no daemon answers at {site.api.host}:{site.api.port}, and there is no database at "
+            f"{path}: start the daemon first, or name its database with --store"
+        )
+    now_us = SystemClock().now_us()
+    accept.check(site, drain, now_us if at_us is None else at_us, now_us, 0)
+    with Store.open(path, site.channels) as store:
+        recorded = store.add_entry(drain, now_us if at_us is None else at_us, now_us)
+    return drain_payload(recorded.entry)

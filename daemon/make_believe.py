@@ -1,0 +1,131 @@
+"""The make-believe shop behind `dripleg demo`: how things "really" are there, second by second.
+
+It is not the daemon's model: one shop with its own true figures, stepped plainly. It sets the
+emulated parts in physical units; the real drivers read them. All figures are invented.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+from daemon.clock import SECOND_US
+from daemon.moisture import air
+from sensors.emulated.hardware import Setter
+
+DELIVERED_M3_S = 0.365 / 60.0  # a little less than the plate says
+TANK_M3 = 0.2
+CUT_IN_PA, CUT_OUT_PA = 7.0e5, 9.0e5  # gauge
+BAROMETER_PA = 101_000.0
+RISE_K, RISE_S = 17.0, 1500.0
+SEPARATIONS = {"tank": 0.74, "riser": 0.55, "booth-coalescer": 0.97}
+HEEL_KG = 0.004
+
+
+@dataclass(slots=True)
+class MakeBelieveShop:
+    """The truth. `advance_to` moves it on; `traps_kg` is what the traps really hold."""
+
+    now_us: int
+    setters: Mapping[str, Setter]
+    traps_kg: dict[str, float]
+    pressure_pa: float = 7.6e5  # gauge
+    running: bool = False
+    rise_k: float = 10.0
+    vapor_kg: float = 0.0
+    _begun_us: int = field(init=False)
+
+    def __post_init__(self) -> None:
+        self._begun_us = self.now_us
+        self.vapor_kg = self._dry_kg() * self._saturated("tank")
+        self._show()
+
+    def advance_to(self, now_us: int) -> None:
+        """Live on until a time, a second at a time."""
+        while self.now_us + SECOND_US <= now_us:
+            self.now_us += SECOND_US
+            self._second()
+        self._show()
+
+    def drain(self, trap: str) -> None:
+        """Somebody opened the drain: little stays behind."""
+        self.traps_kg[trap] = min(self.traps_kg[trap], HEEL_KG)
+
+    # ---- the air ----
+
+    def _hours(self) -> float:
+        return (self.now_us - self._begun_us) / 3.6e9
+
+    def _room_k(self) -> float:
+        return 295.15 + 1.5 * math.sin(self._hours() * 0.7)
+
+    def _humidity(self) -> float:
+        return 0.66 + 0.03 * math.sin(self._hours() * 1.1 + 0.5)
+
+    def _tank_k(self) -> float:
+        return self._room_k() + self.rise_k
+
+    def _pipe_k(self) -> float:
+        return self._room_k() - 2.5
+
+    def _used_m3_s(self) -> float:
+        """Somebody sprays for five minutes out of eight."""
+        seconds = (self.now_us - self._begun_us) // SECOND_US % 480
+        return 0.330 / 60.0 if seconds < 300 else 0.030 / 60.0
+
+    def _dry_kg(self) -> float:
+        absolute = self.pressure_pa + BAROMETER_PA
+        return TANK_M3 * air.dry_air_density(self._tank_k(), absolute, self._saturated("tank"))
+
+    def _saturated(self, station: str) -> float:
+        temperature_k = self._tank_k() if station == "tank" else self._pipe_k()
+        return air.saturated_humidity_ratio(temperature_k, self.pressure_pa + BAROMETER_PA)
+
+    def _second(self) -> None:
+        room_k = self._room_k()
+        ratio = air.humidity_ratio(room_k, BAROMETER_PA, self._humidity())
+        density = air.dry_air_density(room_k, BAROMETER_PA, ratio)
+        drawn = DELIVERED_M3_S * density if self.running else 0.0
+        used = self._used_m3_s() * density
+        self.rise_k += ((RISE_K if self.running else 0.0) - self.rise_k) / RISE_S
+        held = self._dry_kg()
+        self.pressure_pa += (drawn - used) / held * (self.pressure_pa + BAROMETER_PA)
+        self._water(drawn, used, ratio, held)
+        if self.running != self._switch():
+            self.running = not self.running
+            self._put("motor.contact", 1.0 if self.running else 0.0)
+
+    def _switch(self) -> bool:
+        if self.pressure_pa >= CUT_OUT_PA:
+            return False
+        return self.running or self.pressure_pa <= CUT_IN_PA
+
+    def _water(self, drawn: float, used: float, ratio: float, held: float) -> None:
+        self.vapor_kg += drawn * ratio
+        total = held + drawn
+        condensed = max(0.0, self.vapor_kg - total * self._saturated("tank"))
+        self.vapor_kg -= condensed
+        leaving = self.vapor_kg * used / total
+        self.vapor_kg -= leaving
+        carried = self._catch("tank", condensed)
+        pipe = max(0.0, leaving - used * self._saturated("riser"))
+        carried = self._catch("riser", carried + pipe)
+        self._catch("booth-coalescer", carried)
+
+    def _catch(self, trap: str, liquid: float) -> float:
+        caught = SEPARATIONS[trap] * liquid
+        self.traps_kg[trap] += caught
+        return liquid - caught
+
+    # ---- what the parts feel ----
+
+    def _put(self, channel: str, value: float) -> None:
+        self.setters[channel](value, self.now_us)
+
+    def _show(self) -> None:
+        self._put("intake-air.temperature", self._room_k())
+        self._put("intake-air.relative_humidity", self._humidity())
+        self._put("intake-air.pressure", BAROMETER_PA)
+        self._put("tank-gauge.pressure", self.pressure_pa)
+        self._put("pipe-end.temperature", self._pipe_k())

@@ -1,0 +1,213 @@
+"""What each station's temperature and pressure are, per member, from sensors, literals and rules.
+
+A channel that is silent or bad for three sampling periods is stale. A station that it fed then
+relaxes from its last good value to its kind's rule, and its spread grows to that rule's: what is
+not measured any more is known less and less. When the channel speaks again, that ends.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from daemon.moisture.contact import STALE_AFTER_PERIODS
+from daemon.moisture.description import Fixed, Like, Measured, RiseByDuty, Source
+from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, standard_normal
+from daemon.moisture.plan import Plan
+
+COLDEST_K, HOTTEST_K = 203.15, 373.15  # where the saturation formulas hold
+LOWEST_PA, HIGHEST_PA = 50_000.0, 3_000_000.0
+FORGETS_AFTER_S = {"temperature": 6 * 3600.0, "pressure": 3600.0, "relative_humidity": 6 * 3600.0}
+HUMIDITY_RULE = Fixed(0.5, 0.3)  # an intake's relative humidity that nobody measures
+
+
+@dataclass(frozen=True, slots=True)
+class Held:
+    """The last good value of one channel."""
+
+    value: float = math.nan
+    time_us: int = -1  # -1: none yet
+
+    def stale(self, now_us: int, period_us: int) -> bool:
+        """Whether it is older than three sampling periods."""
+        return self.time_us < 0 or now_us - self.time_us > STALE_AFTER_PERIODS * period_us
+
+
+@dataclass(frozen=True, slots=True)
+class Lapse:
+    """How a station's value stood to its rule when its channel went stale."""
+
+    since_us: int  # of the last good reading, -1 for never
+    deviation: Array  # value less rule at that time, shape (members,)
+    unknown: Array  # standard normal, the member's place in what is not known
+
+
+@dataclass(frozen=True, slots=True)
+class Conditions:
+    """Every station's state at one time. Arrays are (stations, members)."""
+
+    temperature_k: Array
+    pressure_pa: Array
+    relative_humidity: Array  # (members,), the intake's, over liquid water
+    measured: frozenset[int]  # stations whose pressure comes from a fresh channel
+
+
+@dataclass(frozen=True, slots=True)
+class Offsets:
+    """Each member's standing place in the width of every source, standard normal."""
+
+    channels: Mapping[str, Array]
+    temperature: Array  # (stations, members)
+    pressure: Array
+    relative_humidity: Array  # (members,)
+
+
+def draw_offsets(plan: Plan) -> Offsets:
+    """The offsets of every source of a line, from its seed."""
+    line = plan.line
+
+    def draw(name: str) -> Array:
+        return standard_normal(line.seed, name, line.members)
+
+    return Offsets(
+        channels={name: draw(f"bias of {name}") for name in plan.channels},
+        temperature=np.array([draw(f"temperature of {s.id}") for s in line.stations]),
+        pressure=np.array([draw(f"pressure of {s.id}") for s in line.stations]),
+        relative_humidity=draw("relative humidity of the intake"),
+    )
+
+
+@dataclass(slots=True)
+class Evaluation:
+    """One evaluation of all sources at one time; `lapses` is carried from one to the next."""
+
+    plan: Plan
+    held: Mapping[str, Held]
+    offsets: Offsets
+    duty: Array  # filtered, (stations, members)
+    now_us: int
+    lapses: dict[str, Lapse] = field(default_factory=dict)
+
+    def conditions(self) -> Conditions:
+        """Temperatures, pressures and the intake's humidity now."""
+        plan = self.plan
+        shape = (len(plan.stations), plan.line.members)
+        temperature, pressure = np.empty(shape), np.empty(shape)
+        measured = set()
+        for i in plan.temperature_order:
+            source = plan.stations[i].temperature
+            rule = plan.temperature_rules[i]
+            temperature[i] = self._value("temperature", i, source, rule, temperature, None)
+        np.clip(temperature, COLDEST_K, HOTTEST_K, out=temperature)
+        for i in plan.pressure_order:
+            source = plan.stations[i].pressure
+            barometer = pressure[0] if i else None
+            rule = plan.pressure_rules[i]
+            pressure[i] = self._value("pressure", i, source, rule, pressure, barometer)
+            if isinstance(source, Measured) and not self._stale(source.channel):
+                measured.add(i)
+        for i, station in enumerate(plan.stations):
+            if station.kind == "regulator":  # it can only lower a pressure
+                np.minimum(pressure[i], pressure[plan.parent[i]], out=pressure[i])
+        np.clip(pressure, LOWEST_PA, HIGHEST_PA, out=pressure)
+        return Conditions(temperature, pressure, self._humidity(), frozenset(measured))
+
+    def _stale(self, channel: str) -> bool:
+        held = self.held.get(channel)
+        return held is None or held.stale(self.now_us, round(self.plan.line.period_s * 1e6))
+
+    def _humidity(self) -> Array:
+        source = self.plan.stations[0].relative_humidity or HUMIDITY_RULE
+        empty = np.empty((0, 0))
+        value = self._value("relative_humidity", 0, source, HUMIDITY_RULE, empty, None)
+        return np.clip(value, 0.0, 1.0)
+
+    def _value(
+        self,
+        what: str,
+        i: int,
+        source: Source,
+        rule: Source,
+        values: Array,
+        barometer: Array | None,
+    ) -> Array:
+        if not isinstance(source, Measured):
+            return self._by_rule(what, i, source, values, barometer)
+        name = f"{what} of {self.plan.stations[i].id}"
+        if not self._stale(source.channel):
+            self.lapses.pop(name, None)
+            return self._by_channel(source, barometer)
+        return self._lapsed(name, what, i, source, rule, values, barometer)
+
+    def _by_channel(self, source: Measured, barometer: Array | None) -> Array:
+        spread = self.offsets.channels[source.channel] * (source.give_or_take * HALF_WIDTH_TO_SD)
+        spread += self.held[source.channel].value
+        if source.gauge and barometer is not None:
+            spread += barometer
+        return spread
+
+    def _offset(self, what: str, i: int) -> Array:
+        if what == "relative_humidity":
+            return self.offsets.relative_humidity
+        rows = self.offsets.temperature if what == "temperature" else self.offsets.pressure
+        offset: Array = rows[i]
+        return offset
+
+    def _by_rule(
+        self, what: str, i: int, source: Source, values: Array, barometer: Array | None
+    ) -> Array:
+        value = self._offset(what, i) * (source.give_or_take * HALF_WIDTH_TO_SD)
+        return value + self._middle(i, source, values, barometer)
+
+    def _middle(
+        self, i: int, source: Source, values: Array, barometer: Array | None
+    ) -> Array | float:
+        """A rule's value without its own width."""
+        match source:
+            case Fixed(value=value, gauge=gauge):
+                return value + barometer if gauge and barometer is not None else value
+            case Like(station=station, plus=plus):
+                other: Array = values[self.plan.index[station]]
+                return other + plus
+            case RiseByDuty(station=station, rise=rise):
+                base: Array = values[self.plan.index[station]]
+                risen: Array = base + rise * self.duty[i]
+                return risen
+            case Measured():
+                raise AssertionError("a channel is not a rule")
+
+    def _lapsed(
+        self,
+        name: str,
+        what: str,
+        i: int,
+        source: Measured,
+        rule: Source,
+        values: Array,
+        barometer: Array | None,
+    ) -> Array:
+        middle = self._middle(i, rule, values, barometer)
+        lapse = self.lapses.get(name)
+        if lapse is None:
+            lapse = self._begin_lapse(name, source, middle, barometer)
+            self.lapses[name] = lapse
+        sd = rule.give_or_take * HALF_WIDTH_TO_SD
+        if lapse.since_us < 0:
+            return middle + lapse.unknown * sd
+        age_s = (self.now_us - lapse.since_us) / 1e6
+        remains = math.exp(-age_s / FORGETS_AFTER_S[what])
+        grown = sd * math.sqrt(1.0 - remains * remains)
+        return middle + lapse.deviation * remains + lapse.unknown * grown
+
+    def _begin_lapse(
+        self, name: str, source: Measured, middle: Array | float, barometer: Array | None
+    ) -> Lapse:
+        line = self.plan.line
+        since_us = self.held[source.channel].time_us if source.channel in self.held else -1
+        unknown = standard_normal(line.seed, f"lapse of {name}", line.members, max(since_us, 0))
+        if since_us < 0:
+            return Lapse(-1, np.zeros(line.members), unknown)
+        return Lapse(since_us, self._by_channel(source, barometer) - middle, unknown)

@@ -1,0 +1,185 @@
+"""Dry air through the line: drawn in, stored in the receivers, used.
+
+Stored air is m = P V / (Z R T) less the vapor's share, from gauge readings made absolute with the
+measured barometer. Use is what was drawn in less the change of what is stored. Its *cumulative*
+value telescopes (the noise of each reading cancels with the next), and air moves with the running
+maximum of the cumulative use: clipped increments would rectify the pressure sensor's noise into
+air, and so into water, that never was.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from daemon.moisture.ensemble import Array
+from daemon.moisture.plan import Plan
+
+# The least rise or fall of receiver pressure that is taken for a pump-up or let-down, as a share of
+# the pressure switch's span, and as a multiple of the readings' own noise. White noise spans less
+# than ten of its standard deviations in a million readings.
+SWING_OF_SPAN = 0.05
+SWING_OF_NOISE = 12.0
+SWING_UNTRIED_OF_SPAN = 0.3  # until the noise is known
+NOISE_READINGS = 30  # readings that the noise is averaged over
+
+
+@dataclass(frozen=True, slots=True)
+class PumpWatch:
+    """Tells from a receiver's pressure when the compressor ran, for a line without a contact.
+
+    A pump-up is booked from its lowest reading to its highest; both are only known afterwards.
+    """
+
+    pumping: bool = False
+    extreme_pa: float = math.nan  # lowest since a let-down began, or highest since a pump-up did
+    extreme_us: int = -1
+    before_pa: tuple[float, float] = (math.nan, math.nan)  # the two readings before
+    noise_pa2: float = 0.0  # variance of one reading, from second differences
+    readings: int = 0
+
+    def _heard(self, pressure_pa: float) -> PumpWatch:
+        bend = pressure_pa - 2.0 * self.before_pa[1] + self.before_pa[0]
+        if not math.isfinite(bend):
+            return replace(self, before_pa=(self.before_pa[1], pressure_pa))
+        readings = self.readings + 1
+        weight = 1.0 / min(readings, NOISE_READINGS)
+        noise = self.noise_pa2 + weight * (bend * bend / 6.0 - self.noise_pa2)
+        return replace(
+            self,
+            before_pa=(self.before_pa[1], pressure_pa),
+            noise_pa2=noise,
+            readings=readings,
+        )
+
+    def _swing(self, span_pa: float) -> float:
+        if self.readings < NOISE_READINGS:
+            return SWING_UNTRIED_OF_SPAN * span_pa
+        return max(SWING_OF_SPAN * span_pa, SWING_OF_NOISE * math.sqrt(self.noise_pa2))
+
+    def told(self, pressure_pa: float, time_us: int, span_pa: float) -> tuple[PumpWatch, int, int]:
+        """After a reading: the watch, and the span (from_us, to_us] in which it now knows that
+        the compressor ran; empty when both are equal."""
+        watch = self._heard(pressure_pa)
+        if watch.extreme_us < 0:
+            return replace(watch, extreme_pa=pressure_pa, extreme_us=time_us), time_us, time_us
+        swing = watch._swing(span_pa)
+        at = replace(watch, extreme_pa=pressure_pa, extreme_us=time_us)
+        if watch.pumping:
+            if pressure_pa > watch.extreme_pa:
+                return at, watch.extreme_us, time_us
+            if pressure_pa < watch.extreme_pa - swing:
+                return replace(at, pumping=False), time_us, time_us
+        elif pressure_pa <= watch.extreme_pa:
+            return at, time_us, time_us
+        elif pressure_pa > watch.extreme_pa + swing:
+            return replace(at, pumping=True), watch.extreme_us, time_us
+        return watch, time_us, time_us
+
+
+@dataclass(frozen=True, slots=True)
+class AirState:
+    """Dry air, kg, per member. Rows are the plan's receivers in their order."""
+
+    measured: Array  # (receivers, members): as last measured
+    first: Array  # (receivers, members): as first measured
+    stored: Array  # (receivers, members): as the water balance carries it
+    drawn: Array  # (members,): cumulative
+    used: Array  # (members,): cumulative, its running maximum
+    entered: Array  # (receivers, members): cumulative into each, its running maximum
+    seen: tuple[bool, ...]  # receivers whose pressure has been measured
+
+
+@dataclass(frozen=True, slots=True)
+class AirMoved:
+    """What moved in one step, kg of dry air, all >= 0. `through` is what leaves each station."""
+
+    drawn: Array  # (members,)
+    used: Array  # (members,)
+    into: Array  # (stations, members)
+    through: Array  # (stations, members)
+
+
+def start(plan: Plan, stored: Array) -> AirState:
+    """Before anything has moved, with this much dry air stored (receivers, members)."""
+    members = plan.line.members
+    return AirState(
+        measured=stored.copy(),
+        first=stored.copy(),
+        stored=stored.copy(),
+        drawn=np.zeros(members),
+        used=np.zeros(members),
+        entered=np.zeros_like(stored),
+        seen=tuple(False for _ in plan.receivers),
+    )
+
+
+def first_sight(state: AirState, row: int, measured: Array) -> tuple[AirState, Array]:
+    """A receiver's pressure is measured for the first time: what it holds is corrected at once.
+
+    Gives the ratio of dry air after to before, (members,), for the vapor that goes with it.
+    """
+    shift = measured - state.measured[row]
+    ratio = (state.stored[row] + shift) / state.stored[row]
+    updated = {}
+    for name in ("measured", "first", "stored"):
+        array = getattr(state, name).copy()
+        array[row] += shift
+        updated[name] = array
+    seen = tuple(done or number == row for number, done in enumerate(state.seen))
+    return replace(state, seen=seen, **updated), ratio
+
+
+def move(plan: Plan, state: AirState, drawn: Array, measured: Array) -> tuple[AirState, AirMoved]:
+    """Advance by one step: `drawn` kg came in (members,), receivers now hold `measured`."""
+    total_drawn = state.drawn + drawn
+    change = measured - state.first
+    cumulative_use = total_drawn - change.sum(axis=0)
+    used_now = np.maximum(state.used, cumulative_use)
+    used = used_now - state.used
+    entered_now = state.entered.copy()
+    for row, receiver in enumerate(plan.receivers):
+        if receiver in plan.trunk:
+            entered_now[row] = state.entered[row] + drawn
+            continue
+        below = [plan.receivers.index(other) for other in plan.receivers_below[receiver]]
+        wanted = plan.share[receiver] * cumulative_use + change[below].sum(axis=0)
+        entered_now[row] = np.maximum(state.entered[row], wanted)
+    moved = _route(plan, drawn, used, entered_now - state.entered)
+    stored = state.stored.copy()
+    for row, receiver in enumerate(plan.receivers):
+        stored[row] += moved.into[receiver] - moved.through[receiver]
+    after = replace(
+        state,
+        measured=measured,
+        stored=stored,
+        drawn=total_drawn,
+        used=used_now,
+        entered=entered_now,
+    )
+    return after, moved
+
+
+def _route(plan: Plan, drawn: Array, used: Array, entered: Array) -> AirMoved:
+    """Air into and out of every station, from the ends of the line back to the intake."""
+    count = len(plan.stations)
+    into = np.zeros((count, used.size))
+    through = np.zeros((count, used.size))
+    for station in range(count - 1, -1, -1):
+        for flow in plan.outflows[station]:
+            if flow.outlet >= 0:
+                through[station] += flow.share * used
+            else:
+                through[station] += into[flow.station]
+        if station in plan.receivers:
+            into[station] = entered[plan.receivers.index(station)]
+        elif station in plan.trunk:
+            into[station] = drawn
+        else:
+            into[station] = through[station]
+    for station in plan.trunk:
+        if station not in plan.receivers and plan.receivers:
+            through[station] = drawn
+    return AirMoved(drawn=drawn, used=used, into=into, through=through)

@@ -1,0 +1,406 @@
+"""The moisture model of one line: an ensemble of believable shops, advanced step by step.
+
+Each member lives with its own draw of what is not known (sensor biases, delivered air, separations,
+...), so that systematic errors stay correlated in time: a week of averaging does not make a biased
+sensor right, and the interval shows it. Pure: no clock, no I/O; a step gives a new state.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from daemon.clock import HOUR_US
+from daemon.moisture import air, conditions, flow, line
+from daemon.moisture.conditions import Conditions, Evaluation, Held, Lapse, Offsets
+from daemon.moisture.contact import ContactState, ContactTime, integrate
+from daemon.moisture.description import Fixed, Line, Measured, RiseByDuty, Share
+from daemon.moisture.ensemble import (
+    Array,
+    positive,
+    share,
+    standard_normal,
+)
+from daemon.moisture.plan import Plan, plan_line
+
+BIAS_DRIFT_S = 30 * 86400.0  # time constant of a sensor's slow drift; practice, no source
+# A receiver's pool gives back 0.6-3 g/h at a 30 % deficit: 2-10 g/h into dry air, lognormal about
+# the geometric middle. Common practice, no source.
+POOL_KG_PER_S, POOL_LOG_SD = 4.5e-3 / 3600.0, 0.4
+# The duty of a compressor that nothing watches: logit-normal about what it was while watched, at
+# first 0.3. The memory of it is a day. Common practice, no source.
+DUTY_UNKNOWN, DUTY_LOGIT_SD, DUTY_MEMORY_S = 0.3, 0.8, 86400.0
+
+
+@dataclass(frozen=True, slots=True)
+class Parameters:
+    """What each member believes, and will until it learns otherwise."""
+
+    water: line.WaterParameters
+    delivered_m3_per_s: Array  # (members,)
+    volume_m3: Array  # (receivers, members)
+    duty_logit: Array  # (members,), standard normal
+
+
+@dataclass(frozen=True, slots=True)
+class State:
+    """Everything that is carried from one step to the next."""
+
+    time_us: int
+    offsets: Offsets
+    parameters: Parameters
+    held: Mapping[str, Held]
+    lapses: Mapping[str, Lapse]
+    contact: ContactState
+    pump: flow.PumpWatch
+    contact_unknown_us: int  # since when the contact has not been known; -1 while it is
+    duty_known: float  # what the duty was while it was known
+    duty: Array  # (stations, members), filtered, where a rise follows it
+    air: flow.AirState
+    water: line.WaterState
+    ledger: line.Ledger
+    conditions: Conditions
+    saturated: Array  # (stations, members), humidity ratio
+
+
+@dataclass(frozen=True, slots=True)
+class Moved:
+    """What one step moved, for the records. Arrays are (members,)."""
+
+    on_s: Array
+    drawn_kg: Array
+    used_kg: Array
+
+
+@dataclass(frozen=True, slots=True)
+class Heard:
+    """What was heard in one step: readings in order of time, as (time_us, value, good)."""
+
+    channels: Mapping[str, Sequence[tuple[int, float, bool]]] = field(default_factory=dict)
+    is_open: bool = True  # whether the shop works
+
+
+class Model:
+    """A line's model. All of its methods are pure."""
+
+    def __init__(self, description: Line) -> None:
+        self.plan: Plan = plan_line(description)
+        self.period_us = round(description.period_s * 1e6)
+        self._gauge = self._watched_receiver()
+        self._lagging = [
+            (i, source.time_constant_s)
+            for i, station in enumerate(self.plan.stations)
+            for source in (station.temperature, self.plan.temperature_rules[i])
+            if isinstance(source, RiseByDuty)
+        ]
+
+    def _watched_receiver(self) -> tuple[str, float] | None:
+        """The channel of the first receiver's pressure, and the pressure switch's span."""
+        compressor = self.plan.line.compressor
+        for receiver in self.plan.receivers:
+            source = self.plan.stations[receiver].pressure
+            if isinstance(source, Measured):
+                return source.channel, compressor.cut_out.value - compressor.cut_in.value
+        return None
+
+    # ---- beginning ----
+
+    def initial(self, time_us: int, heard: Heard) -> State:
+        """The state at the first tick: traps hold what they are said to, air is as drawn in."""
+        plan = self.plan
+        offsets = conditions.draw_offsets(plan)
+        parameters = self._draw_parameters()
+        held = self._hold({}, heard)
+        contact, _ = self._contact(ContactState(), heard, time_us, time_us)
+        duty = np.zeros((len(plan.stations), plan.line.members))
+        evaluation = Evaluation(plan, held, offsets, duty, time_us)
+        now = evaluation.conditions()
+        saturated = air.saturated_humidity_ratio_unchecked(now.temperature_k, now.pressure_pa)
+        intake = self._intake_ratio(now)
+        ratio = np.minimum(saturated, intake)
+        stored = self._stored(parameters, now, ratio)
+        water = line.WaterState(
+            trap=np.array([self._at_start(i) for i in range(len(plan.stations))]),
+            waiting=np.zeros_like(saturated),
+            spilled=np.zeros_like(saturated),
+            vapor=stored * ratio[list(plan.receivers)],
+            leaving_ratio=ratio,
+        )
+        state = State(
+            time_us=time_us,
+            offsets=offsets,
+            parameters=parameters,
+            held=held,
+            lapses=evaluation.lapses,
+            contact=contact,
+            pump=flow.PumpWatch(),
+            contact_unknown_us=time_us,
+            duty_known=DUTY_UNKNOWN,
+            duty=duty,
+            air=flow.start(plan, stored),
+            water=water,
+            ledger=line.new_ledger(plan, water),
+            conditions=now,
+            saturated=saturated,
+        )
+        seen = tuple(receiver in now.measured for receiver in plan.receivers)
+        pump = self._watch(state, heard)[0]
+        return replace(state, air=replace(state.air, seen=seen), pump=pump)
+
+    def _at_start(self, i: int) -> Array:
+        trap = self.plan.stations[i].trap
+        held = trap.holds_at_start_kg if trap is not None else 0.0
+        return np.full(self.plan.line.members, held)
+
+    def _draw_parameters(self) -> Parameters:
+        described = self.plan.line
+        seed, members = described.seed, described.members
+
+        def base(name: str) -> Array:
+            return standard_normal(seed, name, members)
+
+        shape = (len(self.plan.stations), members)
+        separation, evaporated, capacity = np.zeros(shape), np.zeros(shape), np.zeros(shape)
+        for i, station in enumerate(self.plan.stations):
+            evaporated[i] = share(base(f"evaporated at {station.id}"), *_pair(station.evaporated))
+            if station.trap is not None:
+                part = station.trap.separation
+                separation[i] = share(base(f"separation of {station.id}"), *_pair(part))
+                holds = station.trap.capacity
+                capacity[i] = positive(base(f"capacity of {station.id}"), *_pair(holds))
+        pool = POOL_KG_PER_S * np.exp(POOL_LOG_SD * base("pool"))
+        delivered = described.compressor.delivered
+        volumes = [
+            positive(base(f"volume of {s.id}"), *_pair(s.volume))
+            for s in (self.plan.stations[r] for r in self.plan.receivers)
+            if s.volume is not None
+        ]
+        return Parameters(
+            water=line.WaterParameters(separation, evaporated, capacity, pool),
+            delivered_m3_per_s=positive(base("delivered"), *_pair(delivered)),
+            volume_m3=np.array(volumes).reshape(-1, members),
+            duty_logit=base("duty"),
+        )
+
+    # ---- one step ----
+
+    def step(self, state: State, to_us: int, heard: Heard) -> tuple[State, Moved]:
+        """Advance to `to_us` with what was heard since; a step is at most an hour.
+
+        Values hold from their reading on, so the step is made with those last heard by its end.
+        """
+        plan = self.plan
+        dt_s = (to_us - state.time_us) / 1e6
+        offsets = self._drifted(state, to_us)
+        held = self._hold(state.held, heard)
+        contact, times = self._contact(state.contact, heard, state.time_us, to_us)
+        pump, booked_us = self._watch(state, heard)
+        on_s = self._on_time(state, held, to_us, times, booked_us, heard.is_open)
+        duty, duty_known = self._follow(state, on_s, times, dt_s)
+        evaluation = Evaluation(plan, held, offsets, duty, to_us, dict(state.lapses))
+        now = evaluation.conditions()
+        saturated = self._saturated(state, now)
+        intake_ratio = np.minimum(self._intake_ratio(now), saturated[0])
+        drawn = on_s * self._delivered(state.parameters, now, intake_ratio)
+        before, water, ledger = self._sighted(state, now)
+        measured = self._measured(before, state.parameters, now, water)
+        after, moved = flow.move(plan, before, drawn, measured)
+        water, ledger = line.step(
+            plan,
+            state.parameters.water,
+            water,
+            ledger,
+            moved,
+            before.stored,
+            intake_ratio,
+            saturated,
+            dt_s,
+        )
+        unknown_us = state.contact_unknown_us
+        if times.unknown_us == 0:
+            unknown_us = -1
+        elif unknown_us < 0:
+            unknown_us = to_us - times.unknown_us
+        stepped = State(
+            time_us=to_us,
+            offsets=offsets,
+            parameters=state.parameters,
+            held=held,
+            lapses=evaluation.lapses,
+            contact=contact,
+            pump=pump,
+            contact_unknown_us=unknown_us,
+            duty_known=duty_known,
+            duty=duty,
+            air=after,
+            water=water,
+            ledger=ledger,
+            conditions=now,
+            saturated=saturated,
+        )
+        return stepped, Moved(on_s, drawn, moved.used)
+
+    def drain(self, state: State, trap: str) -> State:
+        """A drain was opened and let run dry: the trap holds its heel."""
+        station = self.plan.index[trap]
+        described = self.plan.stations[station].trap
+        heel = described.heel_kg if described is not None else 0.0
+        water, ledger = line.empty(self.plan, state.water, state.ledger, station, heel)
+        return replace(state, water=water, ledger=ledger)
+
+    # ---- its parts ----
+
+    def _hold(self, held: Mapping[str, Held], heard: Heard) -> dict[str, Held]:
+        after = dict(held)
+        for channel in self.plan.channels:
+            for time_us, value, good in heard.channels.get(channel, ()):
+                if good and time_us >= after.get(channel, Held()).time_us:
+                    after[channel] = Held(value, time_us)
+        return after
+
+    def _contact(
+        self, contact: ContactState, heard: Heard, from_us: int, to_us: int
+    ) -> tuple[ContactState, ContactTime]:
+        channel = self.plan.line.compressor.running
+        if channel is None:
+            return contact, ContactTime(0, to_us - from_us)
+        told = heard.channels.get(channel, ())
+        return integrate(contact, told, from_us, to_us, self.period_us)
+
+    def _watch(self, state: State, heard: Heard) -> tuple[flow.PumpWatch, int]:
+        """The pump watch after what was heard, and the time it now books as run, microseconds.
+
+        Where the contact was known, the contact counts.
+        """
+        pump, booked_us = state.pump, 0
+        if self._gauge is None:
+            return pump, booked_us
+        channel, span_pa = self._gauge
+        for time_us, value, good in heard.channels.get(channel, ()):
+            if good:
+                pump, from_us, until_us = pump.told(value, time_us, span_pa)
+                if state.contact_unknown_us >= 0:
+                    booked_us += max(0, until_us - max(from_us, state.contact_unknown_us))
+        return pump, booked_us
+
+    def _on_time(
+        self,
+        state: State,
+        held: Mapping[str, Held],
+        to_us: int,
+        times: ContactTime,
+        booked_us: int,
+        is_open: bool,
+    ) -> Array:
+        """Seconds that the compressor made air, (members,)."""
+        known = np.full(self.plan.line.members, times.on_us / 1e6)
+        if times.unknown_us == 0:
+            return known
+        if self._gauge is not None:
+            gauge = held.get(self._gauge[0])
+            if gauge is not None and not gauge.stale(to_us, self.period_us):
+                return known + booked_us / 1e6
+        if not is_open and self.plan.line.compressor.off_when_closed:
+            return known
+        middle = min(max(state.duty_known, 0.02), 0.98)
+        logit = math.log(middle / (1.0 - middle)) + DUTY_LOGIT_SD * state.parameters.duty_logit
+        return known + times.unknown_us / 1e6 / (1.0 + np.exp(-logit))
+
+    def _follow(
+        self, state: State, on_s: Array, times: ContactTime, dt_s: float
+    ) -> tuple[Array, float]:
+        """The filtered duty behind every temperature that follows it, and the duty remembered."""
+        if dt_s <= 0.0:
+            return state.duty, state.duty_known
+        now = np.minimum(on_s / dt_s, 1.0)
+        duty = state.duty.copy()
+        for i, constant_s in self._lagging:
+            duty[i] += (now - duty[i]) * -math.expm1(-dt_s / constant_s)
+        known = state.duty_known
+        if times.unknown_us == 0:
+            known += (times.on_us / 1e6 / dt_s - known) * -math.expm1(-dt_s / DUTY_MEMORY_S)
+        return duty, known
+
+    def _saturated(self, state: State, now: Conditions) -> Array:
+        same = state.conditions
+        if np.array_equal(now.temperature_k, same.temperature_k) and np.array_equal(
+            now.pressure_pa, same.pressure_pa
+        ):
+            return state.saturated
+        ratio: Array = air.saturated_humidity_ratio_unchecked(now.temperature_k, now.pressure_pa)
+        return ratio
+
+    def _intake_ratio(self, now: Conditions) -> Array:
+        ratio: Array = air.humidity_ratio_unchecked(
+            now.temperature_k[0], now.pressure_pa[0], now.relative_humidity
+        )
+        return ratio
+
+    def _delivered(self, parameters: Parameters, now: Conditions, ratio: Array) -> Array:
+        """Dry air drawn in per second of running, kg/s: free air is at intake conditions."""
+        density: Array = air.dry_air_density(now.temperature_k[0], now.pressure_pa[0], ratio)
+        return parameters.delivered_m3_per_s * density
+
+    def _stored(self, parameters: Parameters, now: Conditions, ratio: Array) -> Array:
+        """Dry air in every receiver, kg, (receivers, members)."""
+        rows = list(self.plan.receivers)
+        density: Array = air.dry_air_density(
+            now.temperature_k[rows], now.pressure_pa[rows], ratio[rows]
+        )
+        return parameters.volume_m3 * density
+
+    def _measured(
+        self,
+        before: flow.AirState,
+        parameters: Parameters,
+        now: Conditions,
+        water: line.WaterState,
+    ) -> Array:
+        """Dry air by gauge where a fresh one speaks; elsewhere taken as unchanged."""
+        rows = [n for n, r in enumerate(self.plan.receivers) if r in now.measured]
+        if not rows:
+            return before.measured
+        ratio = np.zeros_like(now.temperature_k)
+        ratio[list(self.plan.receivers)] = water.vapor / before.stored
+        measured = before.measured.copy()
+        stored = self._stored(parameters, now, ratio)
+        measured[rows] = stored[rows]
+        return measured
+
+    def _sighted(
+        self, state: State, now: Conditions
+    ) -> tuple[flow.AirState, line.WaterState, line.Ledger]:
+        """Take in the first measurement of a receiver's pressure."""
+        air_state, water, ledger = state.air, state.water, state.ledger
+        for row, receiver in enumerate(self.plan.receivers):
+            if receiver in now.measured and not air_state.seen[row]:
+                stored = self._measured(air_state, state.parameters, now, water)[row]
+                air_state, ratio = flow.first_sight(air_state, row, stored)
+                vapor = water.vapor.copy()
+                vapor[row] *= ratio
+                added = vapor[row] - water.vapor[row]
+                water = replace(water, vapor=vapor)
+                ledger = replace(ledger, at_start=ledger.at_start + added)
+        return air_state, water, ledger
+
+    def _drifted(self, state: State, to_us: int) -> Offsets:
+        """A bias wanders slowly: once an hour, keeping its spread."""
+        if to_us // HOUR_US == state.time_us // HOUR_US:
+            return state.offsets
+        described = self.plan.line
+        keeps = math.exp(-HOUR_US / 1e6 / BIAS_DRIFT_S)
+        stirs = math.sqrt(1.0 - keeps * keeps)
+        hour = to_us // HOUR_US
+        channels = {
+            name: keeps * bias
+            + stirs * standard_normal(described.seed, f"drift of {name}", described.members, hour)
+            for name, bias in state.offsets.channels.items()
+        }
+        return replace(state.offsets, channels=channels)
+
+
+def _pair(described: Share | Fixed) -> tuple[float, float]:
+    return described.value, described.give_or_take

@@ -1,0 +1,202 @@
+"""A line turned into index arithmetic once, so that a tick touches only arrays."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from daemon.moisture.description import (
+    Fixed,
+    Like,
+    Line,
+    Measured,
+    RiseByDuty,
+    Source,
+    Station,
+)
+
+# What a station without a believable sensor is taken to be: the kind's rule, give or take.
+# Temperatures in K, pressures in Pa. Common practice, no source.
+_ROOM_K, _ROOM_GIVE_OR_TAKE_K = 293.15, 10.0
+_BAROMETER_PA, _BAROMETER_GIVE_OR_TAKE_PA = 101_325.0, 3_000.0
+_RECEIVER_RISE = RiseByDuty("", rise=20.0, time_constant_s=1800.0, give_or_take=8.0)
+
+
+@dataclass(frozen=True, slots=True)
+class Outflow:
+    """Where the air goes from a station: to a station further on, or out at an outlet."""
+
+    share: float  # of the air used by the whole line
+    station: int  # -1: an outlet
+    outlet: int  # -1: a station
+
+
+@dataclass(frozen=True, slots=True)
+class Plan:
+    """Indices of a line. Stations keep the line's order: each stands after the one it hangs on."""
+
+    line: Line
+    index: dict[str, int]
+    parent: tuple[int, ...]  # -1 for the intake
+    outflows: tuple[tuple[Outflow, ...], ...]  # per station
+    share: tuple[float, ...]  # of the air used, that passes each station
+    receivers: tuple[int, ...]
+    receivers_below: dict[int, tuple[int, ...]]  # at or below each receiver
+    trunk: tuple[int, ...]  # stations that pass exactly what is drawn in
+    traps: tuple[int, ...]  # stations with a trap
+    channels: tuple[str, ...]  # every channel that a station reads
+    temperature_order: tuple[int, ...]
+    pressure_order: tuple[int, ...]
+    temperature_rules: tuple[Source, ...]  # what holds while the sensor is silent
+    pressure_rules: tuple[Source, ...]
+
+    @property
+    def stations(self) -> tuple[Station, ...]:
+        return self.line.stations
+
+
+def plan_line(line: Line) -> Plan:
+    """Work out a line's indices. ValueError when sources refer to each other in a circle."""
+    index = {station.id: number for number, station in enumerate(line.stations)}
+    parent = tuple(index[s.after] if s.after else -1 for s in line.stations)
+    share = _shares(line, index, parent)
+    outflows = _outflows(line, index, parent, share)
+    receivers = tuple(i for i, s in enumerate(line.stations) if s.kind == "receiver")
+    temperature_rules = tuple(_temperature_rule(line, i, parent) for i in range(len(parent)))
+    pressure_rules = tuple(_pressure_rule(line, i, parent, receivers) for i in range(len(parent)))
+    temperatures = tuple(station.temperature for station in line.stations)
+    pressures = tuple(station.pressure for station in line.stations)
+    return Plan(
+        line=line,
+        index=index,
+        parent=parent,
+        outflows=outflows,
+        share=share,
+        receivers=receivers,
+        receivers_below={r: _below(r, parent, receivers) for r in receivers},
+        trunk=_trunk(parent, receivers),
+        traps=tuple(i for i, s in enumerate(line.stations) if s.trap is not None),
+        channels=_channels(line),
+        temperature_order=_order("temperature", index, temperatures, temperature_rules),
+        pressure_order=_order("pressure", index, pressures, pressure_rules),
+        temperature_rules=temperature_rules,
+        pressure_rules=pressure_rules,
+    )
+
+
+def _shares(line: Line, index: dict[str, int], parent: tuple[int, ...]) -> tuple[float, ...]:
+    share = [0.0] * len(parent)
+    for outlet in line.outlets:
+        at = index[outlet.after]
+        while at >= 0:
+            share[at] += outlet.share
+            at = parent[at]
+    return tuple(share)
+
+
+def _outflows(
+    line: Line, index: dict[str, int], parent: tuple[int, ...], share: tuple[float, ...]
+) -> tuple[tuple[Outflow, ...], ...]:
+    flows: list[list[Outflow]] = [[] for _ in parent]
+    for station, above in enumerate(parent):
+        if above >= 0:
+            flows[above].append(Outflow(share[station], station, -1))
+    for number, outlet in enumerate(line.outlets):
+        flows[index[outlet.after]].append(Outflow(outlet.share, -1, number))
+    return tuple(tuple(each) for each in flows)
+
+
+def _below(receiver: int, parent: tuple[int, ...], receivers: tuple[int, ...]) -> tuple[int, ...]:
+    found = []
+    for other in receivers:
+        at = other
+        while at >= 0 and at != receiver:
+            at = parent[at]
+        if at == receiver:
+            found.append(other)
+    return tuple(found)
+
+
+def _trunk(parent: tuple[int, ...], receivers: tuple[int, ...]) -> tuple[int, ...]:
+    """From the intake down to the first receiver, as long as nothing branches off before it."""
+    path = []
+    at = 0
+    while True:
+        path.append(at)
+        if at in receivers:
+            return tuple(path)
+        onward = [i for i, above in enumerate(parent) if above == at]
+        if len(onward) != 1:
+            return tuple(path)
+        at = onward[0]
+
+
+def _channels(line: Line) -> tuple[str, ...]:
+    names: list[str] = []
+    for station in line.stations:
+        for source in (station.temperature, station.pressure, station.relative_humidity):
+            if isinstance(source, Measured) and source.channel not in names:
+                names.append(source.channel)
+    return tuple(names)
+
+
+def _temperature_rule(line: Line, number: int, parent: tuple[int, ...]) -> Source:
+    station = line.stations[number]
+    intake = line.stations[0].id
+    match station.kind:
+        case "intake":
+            return Fixed(_ROOM_K, _ROOM_GIVE_OR_TAKE_K)
+        case "receiver":
+            rule = _RECEIVER_RISE
+            return RiseByDuty(intake, rule.rise, rule.time_constant_s, rule.give_or_take)
+        case "cooler":
+            return Like(intake, 8.0, 5.0)
+        case "pipe":
+            return Like(intake, 0.0, 4.0)
+        case _:
+            return Like(line.stations[parent[number]].id, 0.0, 1.0)
+
+
+def _pressure_rule(
+    line: Line, number: int, parent: tuple[int, ...], receivers: tuple[int, ...]
+) -> Source:
+    station = line.stations[number]
+    if station.kind == "intake":
+        return Fixed(_BAROMETER_PA, _BAROMETER_GIVE_OR_TAKE_PA)
+    above = parent[number]
+    while above > 0 and above not in receivers:
+        above = parent[above]
+    if station.kind == "receiver" or above <= 0:
+        low, high = line.compressor.cut_in.value, line.compressor.cut_out.value
+        return Fixed((low + high) / 2.0, (high - low) / 2.0, gauge=True)
+    return Like(line.stations[parent[number]].id, 0.0, 5_000.0)
+
+
+def _order(
+    what: str,
+    index: dict[str, int],
+    sources: tuple[Source | None, ...],
+    rules: tuple[Source, ...],
+) -> tuple[int, ...]:
+    """Stations in an order in which whatever a source or its rule refers to comes first."""
+    done: list[int] = []
+    open_now: list[int] = []
+
+    def visit(station: int) -> None:
+        if station in done:
+            return
+        if station in open_now:
+            names = [name for name, number in index.items() if number in open_now]
+            raise ValueError(f"{what}: stations refer to each other in a circle: {names}")
+        open_now.append(station)
+        referring = [sources[station]]
+        if isinstance(sources[station], Measured):
+            referring.append(rules[station])
+        for source in referring:
+            if isinstance(source, Like | RiseByDuty):
+                visit(index[source.station])
+        open_now.remove(station)
+        done.append(station)
+
+    for station in range(len(sources)):
+        visit(station)
+    return tuple(done)

@@ -1,0 +1,168 @@
+"""One connection to an MQTT broker, from its first byte to its last, driven by one thread.
+
+paho-mqtt speaks the protocol; its loop is driven from here, so that sending, acknowledging and
+waiting happen in one thread and in an order that can be read. A session is never revived: paho would
+send again what it had queued, beside what its caller sends again.
+"""
+
+from __future__ import annotations
+
+import selectors
+import socket
+import ssl
+from collections.abc import Callable
+from typing import Any
+
+from paho.mqtt.client import Client, MQTTMessage
+from paho.mqtt.enums import CallbackAPIVersion, MQTTProtocolVersion
+
+from daemon.errors import BrokerError
+from daemon.outbox import AT_LEAST_ONCE, Message
+from daemon.site.types import Mqtt
+
+CONNECT_S = 5.0  # how long a broker may take to accept the connection
+
+
+def tls_context(mqtt: Mqtt) -> ssl.SSLContext | None:
+    """What the broker's certificate is checked against; None without TLS.
+
+    BrokerError when `ca_file` cannot be read.
+    """
+    if not mqtt.tls:
+        return None
+    try:
+        return ssl.create_default_context(cafile=mqtt.ca_file or None)
+    except OSError as error:
+        raise BrokerError(
+            f"[mqtt] ca_file {mqtt.ca_file}: cannot be used ({error}): give the PEM file of the "
+            "authority that signed the broker's certificate"
+        ) from error
+
+
+class Session:
+    """A connection. `accepted` once the broker let us in; `ended` says why it is over, or ""."""
+
+    def __init__(
+        self,
+        mqtt: Mqtt,
+        client_id: str,
+        tls: ssl.SSLContext | None,
+        keepalive_s: int,
+        will: Message,
+        take: Callable[[str, bytes, bool], None],
+    ) -> None:
+        """`take(topic, payload, retained)` is given what arrives; it must not raise."""
+        self.accepted = False
+        self.ended = ""
+        self.refused_topics = False  # the broker does not let us listen
+        self._acknowledged: list[int] = []
+        self._take = take
+        self._mqtt = mqtt
+        self._keepalive_s = keepalive_s
+        self._client = client = Client(
+            CallbackAPIVersion.VERSION2,
+            client_id=client_id,
+            clean_session=True,
+            protocol=MQTTProtocolVersion.MQTTv311,
+            reconnect_on_failure=False,
+        )
+        client.connect_timeout = CONNECT_S
+        client.max_inflight_messages_set(0)  # no limit of paho's: the caller keeps its own
+        if mqtt.user:
+            client.username_pw_set(mqtt.user, mqtt.password)
+        if tls is not None:
+            client.tls_set_context(tls)
+        client.will_set(will.topic, will.payload, will.qos, will.retain)
+        client.on_connect = self._on_connect
+        client.on_disconnect = self._on_disconnect
+        client.on_publish = self._on_publish
+        client.on_subscribe = self._on_subscribe
+        client.on_message = self._on_message
+
+    def open(self) -> None:
+        """Connect and ask to be let in; the answer comes in a `step`. Sets `ended` on failure."""
+        try:
+            self._client.connect(self._mqtt.host, self._mqtt.port, self._keepalive_s)
+        except (OSError, ValueError) as error:
+            self.ended = _words(error)
+
+    def subscribe(self, topic: str) -> None:
+        """Ask for what is published under this topic, at least once."""
+        self._client.subscribe(topic, AT_LEAST_ONCE)
+
+    def send(self, message: Message) -> int:
+        """Send a message; the number that `acknowledged` will name it by."""
+        return self._client.publish(
+            message.topic, message.payload, message.qos, message.retain
+        ).mid
+
+    def acknowledged(self) -> list[int]:
+        """The numbers acknowledged since the last call."""
+        numbers, self._acknowledged = self._acknowledged, []
+        return numbers
+
+    def step(self, waker: socket.socket, wait_s: float) -> None:
+        """Wait for the network or for a byte from `waker`, no longer than that, and do the work."""
+        sock = self._client.socket()
+        if sock is None:
+            self.ended = self.ended or "the connection was closed"
+            return
+        # what TLS has decrypted already makes no socket readable
+        decrypted = isinstance(sock, ssl.SSLSocket) and sock.pending() > 0
+        wanted = selectors.EVENT_READ
+        if self._client.want_write():
+            wanted |= selectors.EVENT_WRITE
+        with selectors.PollSelector() as selector:
+            selector.register(sock, wanted)  # type: ignore[arg-type] # a real socket over TCP
+            selector.register(waker, selectors.EVENT_READ)
+            ready = {key.fileobj: mask for key, mask in selector.select(0 if decrypted else wait_s)}
+        mask = ready.get(sock, 0)  # type: ignore[call-overload] # see above
+        if mask & selectors.EVENT_READ or decrypted:
+            self._client.loop_read()
+        if mask & selectors.EVENT_WRITE:
+            self._client.loop_write()
+        self._client.loop_misc()
+
+    def close(self) -> None:
+        """Say goodbye, so that the broker forgets the last will, and let go of the socket."""
+        if self.accepted and not self.ended:
+            self._client.disconnect()
+            self.ended = "closed by us"
+        sock = self._client.socket()
+        if sock is not None:
+            sock.close()
+
+    def abandon(self) -> None:
+        """Let go of the socket without a goodbye: the broker publishes the last will."""
+
+    def _on_connect(
+        self, client: Client, data: Any, flags: Any, reason: Any, properties: Any
+    ) -> None:
+        if reason.is_failure:
+            self.ended = f"the broker refused: {str(reason).lower()}"
+        else:
+            self.accepted = True
+
+    def _on_disconnect(
+        self, client: Client, data: Any, flags: Any, reason: Any, properties: Any
+    ) -> None:
+        self.ended = self.ended or f"the connection was lost: {str(reason).lower()}"
+
+    def _on_publish(
+        self, client: Client, data: Any, number: int, reason: Any, properties: Any
+    ) -> None:
+        self._acknowledged.append(number)
+
+    def _on_subscribe(
+        self, client: Client, data: Any, number: int, reasons: Any, properties: Any
+    ) -> None:
+        self.refused_topics = any(reason.is_failure for reason in reasons)
+
+    def _on_message(self, client: Client, data: Any, message: MQTTMessage) -> None:
+        self._take(message.topic, bytes(message.payload), message.retain)
+
+
+def _words(error: Exception) -> str:
+    if isinstance(error, OSError) and error.strerror:
+        return error.strerror.lower()
+    return str(error) or type(error).__name__

@@ -1,0 +1,458 @@
+"""The live shell around `advance`: samples, advances, commits, tells the outside.
+
+One thread ticks. Whatever comes from outside (API, MQTT, a shell command) is committed to the
+journal at once by the thread that brings it, and taken in by the next tick.
+"""
+
+from __future__ import annotations
+
+import logging
+import threading
+from collections.abc import Callable, Sequence
+from dataclasses import replace
+from hashlib import blake2b
+from typing import Protocol
+
+import numpy as np
+
+from daemon import accept
+from daemon.advance import Core, CoreState, Estimate, Inputs
+from daemon.alarms import Alarm, Transition, correction, shown
+from daemon.checkpoint import decode, encode
+from daemon.clock import DAY_US, HOUR_US, Clock, format_rfc3339
+from daemon.errors import StoreError
+from daemon.journal import Body, Drain, Entry
+from daemon.moisture.line import new_ledger
+from daemon.mqtt import MqttLink
+from daemon.outbox import Message, Topics, alarm_message, event_message, trap_message
+from daemon.site.types import Site
+from daemon.store.store import Store
+from daemon.ticks import first_at_or_after, ticks
+from daemon.views import ChannelHealth, Health, Recorded, SeriesOfReadings, TrapView
+from sensors.reading import Reading
+from sensors.sampling import HungBus
+
+log = logging.getLogger("dripleg")
+
+GRID_KEY = "grid_us"  # the time of the first tick ever
+LATE_AFTER_PERIODS = 3  # without a tick for so long, health says so
+TOO_OLD_US = 7 * DAY_US  # an entry dated before this is kept, but the model does not go back
+MOST_WAITING = 100_000  # readings kept in memory while the store cannot take them
+SAMPLE_SHARE = 0.4  # of a period that sampling may take
+
+
+def fingerprint(site: Site) -> str:
+    """Changes when the line's description does, and so when an old state no longer fits."""
+    return blake2b(repr(site.line).encode(), digest_size=8).hexdigest()
+
+
+class Sampling(Protocol):
+    """Where a tick's readings come from."""
+
+    def sample(self, now_us: int, deadline_s: float) -> list[Reading]: ...
+
+    def hung_buses(self) -> tuple[HungBus, ...]: ...
+
+
+class Shell:
+    """The running daemon. Implements `daemon.views.Running`."""
+
+    def __init__(
+        self,
+        site: Site,
+        clock: Clock,
+        sampler: Sampling,
+        store: Store,
+        topics: Topics | None = None,
+    ) -> None:
+        self._site, self._clock, self._sampler, self._store = site, clock, sampler, store
+        self._topics = topics
+        self.core = Core(site)
+        self.link: MqttLink | None = None
+        self.on_entry: Callable[[Entry], None] | None = None  # told of what was committed
+        self._fingerprint = fingerprint(site)
+        self._lock = threading.RLock()
+        self._state: CoreState | None = None
+        self._grid_us = 0
+        self._shown: tuple[TrapView, ...] = ()
+        self._pending: list[Entry] = []  # committed, not yet taken in
+        self._waiting: list[Reading] = []  # sampled while no tick was due
+        self._started_us = clock.now_us()
+        self._went_back = False  # since the last commit: checkpoints after it are wrong
+        self._ticks = 0
+        self._problems: dict[str, str] = {}
+        self._ticked_us = -1
+
+    # ---- life ----
+
+    def recover(self) -> None:
+        """Come back from the last checkpoint and the inputs after it, to the same bits."""
+        grid = self._store.get_meta(GRID_KEY)
+        if grid is None:
+            return
+        self._grid_us = int(grid)
+        self._state = self._advanced_from_checkpoint(self._clock.now_us())
+        if self._state is not None:
+            with self._lock:
+                self._show(Estimate(self.core, self._state))
+            log.info("came back to %s", format_rfc3339(self._state.time_us))
+
+    def run(self, stop: threading.Event) -> None:
+        """Tick until told to stop; then leave a checkpoint.
+
+        Waiting is on the monotonic clock and never longer than a period, so that a wall clock
+        that is set back does not stop the sampling.
+        """
+        period_s = self.core.model.period_us / 1e6
+        while not stop.is_set():
+            due_us = self._next_due_us()
+            wait_s = (due_us - self._clock.now_us()) / 1e6
+            if self._clock.wait(min(max(wait_s, 0.0), period_s), stop):
+                break
+            self.tick(due_us)
+        self.checkpoint()
+
+    def _next_due_us(self) -> int:
+        """The next point of the grid: after the last tick, and not more than a period ago."""
+        now_us = self._clock.now_us()
+        if self._state is None:
+            return now_us
+        period_us = self.core.model.period_us
+        last_us = max(self._state.time_us, self._ticked_us)
+        due_us = first_at_or_after(self._grid_us, period_us, max(last_us + 1, now_us - period_us))
+        behind = due_us - now_us > 2 * period_us
+        if behind and "clock" not in self._problems:
+            log.warning("the clock went back to %s", format_rfc3339(now_us))
+            self._problems["clock"] = (
+                f"the clock was set back to {format_rfc3339(now_us)}; readings go on counting from "
+                f"{format_rfc3339(last_us)} until it has caught up"
+            )
+        elif not behind:
+            self._problems.pop("clock", None)
+        return due_us
+
+    def checkpoint(self) -> None:
+        """Keep the state as it is now."""
+        with self._lock:
+            if self._state is not None:
+                blob = encode(self._state, self._fingerprint)
+                self._store.save_checkpoint(self._state.time_us, blob)
+
+    # ---- one tick ----
+
+    def tick(self, now_us: int) -> None:
+        """Sample, advance to `now_us`, commit, tell."""
+        deadline_s = SAMPLE_SHARE * self._site.sample_every_us / 1e6
+        readings = self._sampler.sample(now_us, deadline_s)
+        with self._lock:
+            self._ticked_us = now_us
+            try:
+                self._take_in(now_us, list(readings))
+            except StoreError as error:
+                if "store" not in self._problems:
+                    log.error("tick %s was not committed: %s", format_rfc3339(now_us), error)
+                self._problems["store"] = f"readings wait in memory: {error}"
+            else:
+                self._problems.pop("store", None)
+
+    def _take_in(self, now_us: int, readings: list[Reading]) -> None:
+        if self._state is None:
+            self._begin(now_us, readings)
+            return
+        after_us = self._state.time_us
+        readings = [
+            each if each.time_us > after_us else replace(each, time_us=after_us + 1)
+            for each in self._waiting + readings
+        ]
+        readings = sorted(readings, key=lambda each: each.time_us)[-MOST_WAITING:]
+        self._waiting = readings  # until they are committed
+        transitions = self._go_back_for_late_entries(now_us)
+        state = self._state
+        entries = [entry for entry in self._pending if entry.at_us <= now_us]
+        estimate: Estimate | None = None
+        for each in ticks(
+            self._grid_us,
+            self.core.model.period_us,
+            state.time_us,
+            self.core.heard_us(state),
+            readings,
+            entries,
+            now_us,
+        ):
+            state, estimate, changed = self.core.advance(state, each.now_us, each.inputs)
+            transitions += changed
+        if estimate is None or state.time_us != now_us:
+            return  # nothing good was heard for a day: the next tick stands at the full hour
+        self._commit(state, readings, entries, transitions, checkpoint=self._went_back)
+        self._waiting, self._went_back = [], False
+        self._show(estimate)
+
+    def _begin(self, now_us: int, readings: list[Reading]) -> None:
+        at_now = [each for each in readings if each.time_us == now_us]
+        state, estimate, transitions = self.core.initial(now_us, Inputs(at_now))
+        state = self._carry_over(state)
+        self._grid_us = now_us
+        self._store.set_meta(GRID_KEY, str(now_us))
+        self._commit(state, at_now, [], transitions, checkpoint=True, every_alarm=True)
+        self._show(Estimate(self.core, state, estimate.marks))
+
+    def _commit(
+        self,
+        state: CoreState,
+        readings: Sequence[Reading],
+        entries: Sequence[Entry],
+        transitions: Sequence[Transition],
+        checkpoint: bool = False,
+        every_alarm: bool = False,
+    ) -> None:
+        before_us = self._state.time_us if self._state is not None else state.time_us
+        drained = any(isinstance(entry.body, Drain) for entry in entries)
+        full_hour = state.time_us // HOUR_US != before_us // HOUR_US
+        blob = None
+        if checkpoint or drained or full_hour:
+            blob = encode(state, self._fingerprint)
+        changed = {each.alarm for each in transitions}
+        alarms = [name for name in state.alarms if every_alarm or name in changed]
+        messages = self._messages(state, transitions, alarms)
+        self._store.commit_tick(state.time_us, readings, transitions, messages, blob)
+        taken = {entry.seq for entry in entries}
+        self._pending = [entry for entry in self._pending if entry.seq not in taken]
+        self._state = state
+        self._ticks += 1
+        for each in transitions:
+            log.info("%s: %s -> %s. %s", each.alarm, each.before, each.after, each.text)
+        if messages and self.link is not None:
+            self.link.wake()
+
+    def _messages(
+        self, state: CoreState, transitions: Sequence[Transition], alarms: Sequence[str]
+    ) -> list[Message]:
+        if self._topics is None:
+            return []
+        topics = self._topics
+        return [
+            *(event_message(topics, each) for each in transitions),
+            *(
+                alarm_message(topics, shown(self.core.definitions[name], state.alarms[name]))
+                for name in alarms
+            ),
+        ]
+
+    def _show(self, estimate: Estimate) -> None:
+        self._shown = estimate.traps
+        if self.link is not None and self._topics is not None:
+            self.link.publish_states([trap_message(self._topics, v) for v in self._shown])
+
+    # ---- going back ----
+
+    def _go_back_for_late_entries(self, now_us: int) -> list[Transition]:
+        """Entries dated before the last tick: advance again from the checkpoint before them."""
+        state = self._state
+        if state is None:
+            return []
+        late = [entry for entry in self._pending if entry.at_us <= state.time_us]
+        if not late:
+            return []
+        self._pending = [entry for entry in self._pending if entry.at_us > state.time_us]
+        usable = [entry for entry in late if entry.at_us >= now_us - TOO_OLD_US]
+        for entry in late:
+            if entry not in usable:
+                log.warning("entry %d is more than 7 days old: kept, not reckoned with", entry.seq)
+        if not usable:
+            return []
+        earliest_us = min(entry.at_us for entry in usable)
+        again = self._advanced_from_checkpoint(state.time_us, before_us=earliest_us)
+        if again is None:
+            log.warning("nothing to go back to before %s", format_rfc3339(earliest_us))
+            return []
+        self._store.drop_checkpoints_after(earliest_us - 1)
+        self._state, self._went_back = again, True
+        return self._corrections(state, again)
+
+    def _corrections(self, before: CoreState, after: CoreState) -> list[Transition]:
+        """What was announced stays; where it no longer holds, a correction follows."""
+        found = []
+        for name, record in after.alarms.items():
+            was = before.alarms[name]
+            if was.state != record.state:
+                found.append(correction(self.core.definitions[name], was, record, after.time_us))
+        return found
+
+    def _advanced_from_checkpoint(
+        self, until_us: int, before_us: int | None = None
+    ) -> CoreState | None:
+        """The state at the last stored tick up to `until_us`, from the latest checkpoint that is
+        earlier than `before_us`, or from the latest of all."""
+        state = self._latest_complete_checkpoint(until_us if before_us is None else before_us - 1)
+        if state is None:
+            return None
+        entries = [
+            entry
+            for entry in self._store.entries(from_us=state.time_us + 1)
+            if entry.at_us >= entry.written_us - TOO_OLD_US
+        ]
+        entries.sort(key=lambda entry: (entry.at_us, entry.seq))
+        taken = 0
+        for tick_us, readings in self._store.ticks(state.time_us, until_us):
+            first = taken
+            while taken < len(entries) and entries[taken].at_us <= tick_us:
+                taken += 1
+            for each in ticks(
+                self._grid_us,
+                self.core.model.period_us,
+                state.time_us,
+                self.core.heard_us(state),
+                sorted(readings, key=lambda reading: reading.time_us),
+                entries[first:taken],
+                tick_us,
+            ):
+                state, _, _ = self.core.advance(state, each.now_us, each.inputs)
+        self._pending = entries[taken:]
+        return state
+
+    def _latest_complete_checkpoint(self, until_us: int) -> CoreState | None:
+        """The latest checkpoint that knows of every entry dated before it.
+
+        An entry written after a checkpoint but dated before it (a kill came between) sends us
+        further back.
+        """
+        while True:
+            found = self._store.checkpoint_before(until_us)
+            if found is None:
+                return None
+            state, belongs_to = decode(found[1])
+            if belongs_to != self._fingerprint:
+                return None
+            at_us = state.time_us
+            unknown = [
+                entry.at_us
+                for entry in self._store.entries(from_us=at_us - TOO_OLD_US, to_us=at_us + 1)
+                if entry.written_us > at_us and entry.at_us >= entry.written_us - TOO_OLD_US
+            ]
+            if not unknown:
+                return state
+            until_us = min(unknown) - 1
+            self._store.drop_checkpoints_after(until_us)
+            self._went_back = True
+
+    def _carry_over(self, fresh: CoreState) -> CoreState:
+        """After a change of the site file: traps of the same name keep what they hold."""
+        found = self._store.checkpoint_before(fresh.time_us)
+        if found is None:
+            return fresh
+        old, _ = decode(found[1])
+        log.info("the line's description has changed: traps go on with what they held")
+        return carried_over(self.core, fresh, old)
+
+    # ---- what the outside asks (any thread) ----
+
+    @property
+    def site(self) -> Site:
+        return self._site
+
+    @property
+    def clock(self) -> Clock:
+        return self._clock
+
+    def traps(self) -> Sequence[TrapView]:
+        with self._lock:
+            return self._shown
+
+    def alarms(self) -> Sequence[Alarm]:
+        with self._lock:
+            return [] if self._state is None else self.core.alarms(self._state)
+
+    def record(self, body: Body, at_us: int | None = None, key: str = "") -> Recorded:
+        now_us = max(self._clock.now_us(), self._ticked_us)
+        with self._lock:
+            begun_us = now_us if self._state is None else self._grid_us
+            when_us = now_us if at_us is None else at_us
+            accept.check(self._site, body, when_us, now_us, begun_us)
+            recorded = self._store.add_entry(body, when_us, now_us, key)
+            if not recorded.repeated:
+                self._pending.append(recorded.entry)
+                self._preview(recorded.entry, now_us)
+        if not recorded.repeated and self.on_entry is not None:
+            self.on_entry(recorded.entry)
+        return recorded
+
+    def _preview(self, entry: Entry, now_us: int) -> None:
+        """Show at once what an entry will do, without keeping it: the next tick does that."""
+        state = self._state
+        if state is None or entry.at_us <= state.time_us:
+            return
+        entries = [each for each in self._pending if state.time_us < each.at_us <= now_us]
+        _, estimate, _ = self.core.advance(state, now_us, Inputs((), entries))
+        self._shown = estimate.traps
+
+    def drains(self, trap: str, from_us: int, to_us: int) -> Sequence[Entry]:
+        return self._store.entries(from_us=from_us, to_us=to_us, trap=trap)
+
+    def readings(self, channel: str, from_us: int, to_us: int) -> SeriesOfReadings:
+        return self._store.readings(channel, from_us, to_us)
+
+    def health(self) -> Health:
+        now_us = self._clock.now_us()
+        with self._lock:
+            state = self._state
+            problems = list(self._problems.values())
+            channels = self._channel_health(state)
+        limit_us = LATE_AFTER_PERIODS * self.core.model.period_us
+        last_us = None if state is None else state.time_us
+        if last_us is None:
+            if now_us - self._started_us > limit_us:
+                problems.append("no tick has been made yet")
+        elif now_us - last_us > limit_us:
+            problems.append(f"the last tick was at {format_rfc3339(last_us)}")
+        problems += [
+            f"{bus.name} has not answered since {format_rfc3339(bus.since_us)}"
+            for bus in self._sampler.hung_buses()
+        ]
+        problems += [f"{c.channel}: {c.fault}" for c in channels if c.fault]
+        return Health(
+            ok=not problems,
+            at_us=now_us,
+            started_us=self._started_us,
+            last_tick_us=last_us,
+            ticks=self._ticks,
+            channels=tuple(channels),
+            mqtt="off" if self.link is None else self.link.status,
+            outbox_waiting=self._store.outbox_waiting(),
+            problems=tuple(problems),
+        )
+
+    def _channel_health(self, state: CoreState | None) -> list[ChannelHealth]:
+        if state is None:
+            return [ChannelHealth(name, None, None, "nothing yet") for name in self._site.channels]
+        found = []
+        for name, record in state.channels.items():
+            known = record.time_us >= 0
+            fault = record.fault or ("" if known else "nothing yet")
+            found.append(
+                ChannelHealth(
+                    name,
+                    record.time_us if known else None,
+                    record.value if known else None,
+                    fault,
+                )
+            )
+        return found
+
+
+def carried_over(core: Core, fresh: CoreState, old: CoreState) -> CoreState:
+    """A fresh state whose traps hold what an old one's of the same name held.
+
+    Member by member where there are as many of them, else spread alike.
+    """
+    members = core.site.line.members
+    water = fresh.model.water.trap.copy()
+    for name in core.trap_names:
+        if name in old.stations:
+            held = old.model.water.trap[old.stations.index(name)]
+            if held.size != members:
+                held = np.quantile(held, (np.arange(members) + 0.5) / members)
+            water[core.model.plan.index[name]] = held
+    model = replace(fresh.model, water=replace(fresh.model.water, trap=water))
+    model = replace(model, ledger=new_ledger(core.model.plan, model.water))
+    traps = {name: old.traps.get(name, record) for name, record in fresh.traps.items()}
+    return replace(fresh, model=model, traps=traps)
