@@ -41,11 +41,17 @@ _INTAKE: tuple[tuple[str, Quantity], ...] = (
 )
 
 
-def complete_line(notes: Notes, drafts: list[Draft], names: Names) -> list[Draft]:
-    """The stations in order, with an intake and, where nothing else is declared, a tank."""
-    kinds_known = all(draft.kind is not None for draft in drafts) and not names.stations_unnamed
+def complete_line(
+    notes: Notes, drafts: list[Draft], names: Names, *, all_known: bool
+) -> list[Draft]:
+    """The stations in order, with an intake and, where nothing else is declared, a tank.
+
+    Nothing is added while a station's kind or id is not known: it may be what seems missing.
+    """
     found = list(drafts)
-    if kinds_known and not any(draft.is_intake for draft in found):
+    if not all_known:
+        return in_order(found)
+    if not any(draft.is_intake for draft in found):
         found.insert(0, _added(notes, "intake", "intake", "", "every line begins at an intake"))
     if len(found) == 1 and found[0].is_intake and "tank" not in names.stations:
         tank = _added(notes, "tank", "receiver", found[0].id, "no other station is declared")

@@ -1,4 +1,4 @@
-"""Checks that a regulator is not set above what can reach it."""
+"""Checks pressures along the line: air never gains pressure on its way."""
 
 from __future__ import annotations
 
@@ -31,6 +31,22 @@ def tell_set_pressures(drafts: Sequence[Draft], switch: Table, compressor: Compr
             f"{show_pressure(limit_pa, units, gauge=True)}; write a lower pressure, "
             "or correct the one before it",
         )
+
+
+def tell_rising_pressures(drafts: Sequence[Draft]) -> None:
+    """Tell every station that is said to stand above the pressure of one before it."""
+    by_id = {draft.id: draft for draft in drafts}
+    for draft in drafts:
+        rule = draft.pressure
+        if not isinstance(rule, Like) or rule.plus <= 0.0 or not draft.table.ok("pressure"):
+            continue
+        above = by_id.get(rule.station)
+        if above is not None and not above.is_intake and above in upstream(draft, by_id):
+            draft.table.wrong(
+                "pressure",
+                f'air loses pressure on its way, so it is lower than at "{above.id}"; '
+                'write a minus, like plus = "-0.1 bar"',
+            )
 
 
 def _highest(

@@ -1,6 +1,6 @@
 """Who is called what in a site file, and which names are used where.
 
-An unknown name is told once, where it is met first: one sensor that is spelled wrong in its own
+An unknown name is told once, where it was met first: one sensor that is spelled wrong in its own
 table is one mistake, however many stations name it.
 """
 
@@ -10,7 +10,7 @@ from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
 from typing import NoReturn
 
-from daemon.site.notes import Told, nearest, suggestion
+from daemon.site.notes import Told, Unknown, nearest, suggestion
 from sensors.reading import Channel, Quantity
 
 QUANTITY_WORDS: Mapping[Quantity, str] = {
@@ -30,12 +30,9 @@ class Names:
     channels: dict[str, Channel] = field(default_factory=dict)
     sensors: list[str] = field(default_factory=list)  # in the file's order
     broken_sensors: set[str] = field(default_factory=set)  # their channels are not known
-    sensors_unnamed: bool = False  # a sensor without a readable id: any name may be its
     stations: list[str] = field(default_factory=list)
-    stations_unnamed: bool = False
     used_channels: set[str] = field(default_factory=set)
     used_sensors: set[str] = field(default_factory=set)  # as a whole: an outlet's surroundings
-    _told: set[str] = field(default_factory=set)
 
     def channel(self, name: str, wanted: Quantity) -> Channel:
         """The channel of that name, noted as used. ValueError when it is unknown or no `wanted`."""
@@ -70,9 +67,7 @@ class Names:
             head = name.rsplit(".", 1)[0]
             if head in self.sensors:
                 raise ValueError(f'name the sensor alone, as {what}: write "{head}"')
-            if self.sensors_unnamed:
-                raise Told
-            self._tell(f"sensor {name}", "no sensor has this id" + self._suggest(name))
+            raise Unknown("sensor", name, "no sensor has this id" + self._suggest(name))
         self.used_sensors.add(name)
         return name
 
@@ -81,10 +76,8 @@ class Names:
         if not isinstance(name, str):
             raise ValueError("must be a station's id in quotes" + self._known_stations())
         if name not in self.stations:
-            if self.stations_unnamed:
-                raise Told
             end = suggestion(name, self.stations, "; there is no [[station]] yet")
-            self._tell(f"station {name}", f"no station has this id{end}")
+            raise Unknown("station", name, f"no station has this id{end}")
         return name
 
     def is_channel(self, text: str) -> bool:
@@ -99,16 +92,16 @@ class Names:
         sensor, _, quantity = name.rpartition(".")
         if not sensor:
             self._no_quantity(name, wanted)
-        if sensor in self.broken_sensors or self.sensors_unnamed:
+        if sensor in self.broken_sensors:
             raise Told
         if sensor not in self.sensors:
             right = f"{nearest(sensor, self.sensors)}.{quantity}"
             end = f'; did you mean "{right}"?' if sensor and right in self.channels else ""
             end = end or self._suggest(sensor)
-            self._tell(f"sensor {sensor}", f'no sensor has the id "{sensor}"{end}')
+            raise Unknown("sensor", sensor, f'no sensor has the id "{sensor}"{end}', quantity)
         own = [each for each in self.channels if each.rsplit(".", 1)[0] == sensor]
         end = suggestion(name, own)
-        self._tell(f"channel {name}", f'the sensor "{sensor}" gives no "{quantity}"{end}')
+        raise Unknown("channel", name, f'the sensor "{sensor}" gives no "{quantity}"{end}')
 
     def _no_quantity(self, name: str, wanted: Quantity) -> NoReturn:
         """A word that is neither a literal nor "sensor.quantity"."""
@@ -124,13 +117,6 @@ class Names:
 
     def _suggest(self, name: str) -> str:
         return suggestion(name, self.sensors, "; there is no [[sensor]] yet")
-
-    def _tell(self, name: str, remedy: str) -> NoReturn:
-        """Raise the problem the first time, and quietly afterwards."""
-        if name in self._told:
-            raise Told
-        self._told.add(name)
-        raise ValueError(remedy)
 
 
 def _these(names: Iterable[str]) -> str:

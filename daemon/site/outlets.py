@@ -14,7 +14,7 @@ from daemon.site.shape import ends
 from daemon.site.stations import Draft
 from daemon.site.table import Table
 from daemon.site.types import OutletSettings
-from daemon.site.values import quantity, text
+from daemon.site.values import choice, identifier, quantity, text
 from daemon.units import parse, show_difference, show_percent
 
 OUTLET_KEYS = ("id", "after", "share", "surroundings", "work", "line_margin", "surface_margin")
@@ -37,8 +37,9 @@ def read_outlets(notes: Notes, raws: Sequence[object], names: Names) -> list[Out
     taken: list[str] = []
     drafts = []
     for number, raw in enumerate(raws, 1):
-        table = Table(notes, label("outlet", number, raw), raw, OUTLET_KEYS)
-        name = read_id(table, "outlet", taken)
+        required = {"after": choice(names.stations, "station"), "id": identifier}
+        table = Table(notes, label("outlet", number, raw), raw, OUTLET_KEYS, required=required)
+        name = read_id(table, "outlet", taken, lambda tables, asked: False)
         drafts.append(_draft(table, name, names))
     return drafts
 

@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from typing import Any
 
 from daemon.site.names import Names
-from daemon.site.notes import Notes, nearest, suggestion, written
+from daemon.site.notes import Explains, Notes, nearest, suggestion, written
 from daemon.site.table import Table
-from daemon.site.values import identifier, text
+from daemon.site.values import choice, identifier, text
 from sensors.registry import REQUIRED, Driver, SensorConfig
 
 
@@ -32,21 +32,27 @@ def label(what: str, number: int, raw: object) -> str:
     return f'{what} "{name}"' if isinstance(name, str) and name else f"{what} {number}"
 
 
-def read_id(table: Table, what: str, taken: list[str]) -> str:
+def read_id(table: Table, what: str, taken: list[str], explains: Explains) -> str:
     """The table's id as written, noted as taken; "" when there is none, or another one's.
 
-    An id that breaks the rules is told, and still serves to keep other tables quiet.
+    An id that breaks the rules is told, and still serves to keep other tables quiet. `explains`
+    says which names elsewhere may mean a table without an id of its own.
     """
     raw = table.values.get("id")
     if raw is None:
         if table.ok("id"):
-            table.wrong("id", f'a {what} needs an id; write id = "..."')
+            table.wrong("id", f'every {what} needs an id; write id = "..."')
+        table.notes.unnamed(what, None, explains)
         return ""
     table.read("id", identifier, "")
     if not isinstance(raw, str) or not raw:
+        table.notes.unnamed(what, None, explains)
         return ""
+    if not table.ok("id"):
+        table.notes.unnamed(what, raw, explains)
     if raw in taken:
         table.wrong("id", f"another {what} has this id; give each its own")
+        table.notes.unnamed(what, None, explains)
         return ""
     taken.append(raw)
     return raw
@@ -61,10 +67,14 @@ def _sensor(
     own = (
         [key.name for key in driver.keys] if driver else list(raw if isinstance(raw, dict) else ())
     )
-    table = Table(notes, where, raw, list(dict.fromkeys(["id", "driver", *own])))
-    name = read_id(table, "sensor", names.sensors)
-    if not name and table.values.get("id") not in names.sensors:
-        names.sensors_unnamed = True
+    required: dict[str, Callable[[object], object]] = {"driver": choice(list(drivers), "driver")}
+    for key in driver.keys if driver else ():
+        if key.default is REQUIRED:
+            required[key.name] = key.read
+    required["id"] = identifier
+    known = list(dict.fromkeys(["id", "driver", *own]))
+    table = Table(notes, where, raw, known, required=required)
+    name = read_id(table, "sensor", names.sensors, _gives(table, driver))
     if driver is None:
         _no_driver(table, drivers)
     settings = _settings(table, driver) if driver else None
@@ -77,13 +87,31 @@ def _sensor(
     return config
 
 
+def _gives(table: Table, driver: Driver | None) -> Explains:
+    """Whether a sensor could be the one of which some quantities are asked elsewhere."""
+
+    def explains(_: set[str], asked: set[str]) -> bool:
+        if driver is None or not table.ok(*(key.name for key in driver.keys)):
+            return True
+        settings = {key.name: table.values.get(key.name, key.default) for key in driver.keys}
+        read = {
+            key.name: key.read(settings[key.name])
+            for key in driver.keys
+            if key.name in table.values
+        }
+        config = SensorConfig("it", driver.name, settings | read)
+        return asked <= {channel.quantity for channel in driver.channels(config)}
+
+    return explains
+
+
 def _driver(raw: object, drivers: Mapping[str, Driver]) -> Driver | None:
     """The driver that a table names, also under a misspelt key."""
     if not isinstance(raw, dict):
         return None
     name = raw.get("driver")
-    if "driver" not in raw:
-        name = next((raw[k] for k in raw if nearest(k, ["id", "driver"]) == "driver"), None)
+    if "driver" not in raw:  # perhaps under another key: then a value tells
+        name = next((value for value in raw.values() if value in drivers), None)
     return drivers.get(name) if isinstance(name, str) else None
 
 

@@ -12,17 +12,28 @@ import sensors.drivers  # noqa: F401  # fills DRIVERS
 from daemon.errors import Problem, SiteError
 from daemon.moisture.description import Compressor, Line
 from daemon.site.assume import Assumptions, complete_line, station_of
-from daemon.site.calendar import read_hours
-from daemon.site.compressor import choose_running, read_compressor
-from daemon.site.limits import tell_set_pressures
+from daemon.site.calendar import HOURS_KEYS, read_hours
+from daemon.site.compressor import COMPRESSOR_KEYS, choose_running, read_compressor
+from daemon.site.limits import tell_rising_pressures, tell_set_pressures
 from daemon.site.names import Names
 from daemon.site.notes import Notes, nearest
-from daemon.site.outlets import OutletDraft, finish_outlets, read_outlets, settings_of
+from daemon.site.outlets import OUTLET_KEYS, OutletDraft, finish_outlets, read_outlets, settings_of
 from daemon.site.parts import read_sensors
 from daemon.site.remarks import remarks
-from daemon.site.sections import read_api, read_cup, read_model, read_mqtt, read_site_table
+from daemon.site.sections import (
+    API_KEYS,
+    CUP_KEYS,
+    MODEL_KEYS,
+    MQTT_KEYS,
+    SITE_KEYS,
+    read_api,
+    read_cup,
+    read_model,
+    read_mqtt,
+    read_site_table,
+)
 from daemon.site.shape import tell_circular_rules, tell_loops
-from daemon.site.stations import Draft, open_stations, read_stations
+from daemon.site.stations import STATION_KEYS, Draft, open_stations, read_stations
 from daemon.site.table import Table
 from daemon.site.types import Site
 from sensors.registry import DRIVERS, Driver
@@ -51,12 +62,29 @@ def read_site(path: str | Path) -> Site:
 def parse_site(text: str, path: str, drivers: Mapping[str, Driver] = DRIVERS) -> Site:
     """The site that a text describes; `path` is for messages and for other files' folders."""
     document = _document(text, path)
-    notes = Notes()
+    notes = Notes(elsewhere=_elsewhere(drivers))
     raw = _top_level(notes, document)
     site = _Reading(notes, raw, path, drivers).site()
     if notes.problems or site is None:
         raise SiteError(path, notes.problems)
     return site
+
+
+def _elsewhere(drivers: Mapping[str, Driver]) -> dict[str, Sequence[str]]:
+    """The keys of every table, by how its header is written."""
+    own = [key.name for driver in drivers.values() for key in driver.keys]
+    return {
+        "[site]": SITE_KEYS,
+        "[hours]": HOURS_KEYS,
+        "[compressor]": COMPRESSOR_KEYS,
+        "[cup]": CUP_KEYS,
+        "[model]": MODEL_KEYS,
+        "[api]": API_KEYS,
+        "[mqtt]": MQTT_KEYS,
+        "[[station]]": STATION_KEYS,
+        "[[outlet]]": OUTLET_KEYS,
+        "[[sensor]]": ("id", "driver", *own),
+    }
 
 
 def _document(text: str, path: str) -> dict[str, object]:
@@ -78,19 +106,47 @@ def _top_level(notes: Notes, document: Mapping[str, object]) -> dict[str, object
     """The tables by their right names; what is unknown is told."""
     known = (*TABLES, *LISTS)
     found: dict[str, object] = {name: document[name] for name in known if name in document}
+    loose = {k: v for k, v in document.items() if k not in known and not _is_table(v)}
+    _tell_loose(notes, loose, found)
     for name, raw in document.items():
-        if name in known:
+        if name in known or name in loose:
             continue
         meant = nearest(name, known)
         brackets = f"[[{meant}]]" if meant in LISTS else f"[{meant}]"
-        if not isinstance(raw, dict | list):
-            notes.problem("file", name, raw, "stands before the first table; put it into one")
-        elif not meant:
-            notes.problem(name, "", None, f"there is no such table; known: {', '.join(known)}")
-        else:
-            notes.problem(name, "", None, f"there is no such table; did you mean {brackets}?")
+        end = f"did you mean {brackets}?" if meant else f"known: {', '.join(known)}"
+        notes.problem(name, "", None, f"there is no such table; {end}")
+        if isinstance(raw, list) and meant in LISTS:
+            already = found.get(meant, [])
+            found[meant] = [*(already if isinstance(already, list) else []), *raw]
+        elif meant:
             found.setdefault(meant, raw)
+        else:
+            for each in raw if isinstance(raw, list) else [raw]:
+                notes.lost(each.get("id") if isinstance(each, dict) else None)
     return found
+
+
+def _is_table(raw: object) -> bool:
+    return isinstance(raw, dict) or (
+        isinstance(raw, list) and bool(raw) and all(isinstance(each, dict) for each in raw)
+    )
+
+
+def _tell_loose(notes: Notes, loose: dict[str, object], found: dict[str, object]) -> None:
+    """Keys before the first table: one mistake, and most often [site] is what is missing."""
+    if not loose:
+        return
+    home = next((name for name in notes.elsewhere if set(loose) <= set(notes.elsewhere[name])), "")
+    end = f"write {home} above them" if home else "put each into its table"
+    key = next(iter(loose)) if len(loose) == 1 else ""
+    notes.problem(
+        "file",
+        key,
+        loose[key] if key else None,
+        f"{', '.join(loose)} before the first table; {end}",
+    )
+    if home == "[site]":
+        found.setdefault("site", loose)
 
 
 class _Reading:
@@ -117,6 +173,9 @@ class _Reading:
         members, seed = read_model(notes, raw.get("model", {}))
         mqtt = read_mqtt(notes, raw.get("mqtt"), Path(self.path).parent)
         api = read_api(notes, raw.get("api", {}))
+        notes.settle_unknown(
+            {"sensor": self.names.sensors, "station": self.names.stations, "outlet": ()}
+        )
         line = self._line(drafts, outlets, table, compressor, basics.sample_every_s)
         if line is None:
             return None
@@ -165,11 +224,13 @@ class _Reading:
     ) -> Line | None:
         """The line with everything assumed that was not said; None when its shape is wrong."""
         straight = tell_loops(drafts)
-        drafts = complete_line(self.notes, drafts, self.names)
+        known = len(drafts) == len(self._list("station")) and all(each.kind for each in drafts)
+        drafts = complete_line(self.notes, drafts, self.names, all_known=known)
         Assumptions(self.notes, drafts, self.names, compressor).fill()
         running = choose_running(table, compressor, self.names)
         if straight:
             tell_circular_rules(drafts)
+            tell_rising_pressures(drafts)
             tell_set_pressures(drafts, table, compressor)
         ends = finish_outlets(self.notes, outlets, drafts)
         if self.notes.problems:

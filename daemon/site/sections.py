@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from dataclasses import dataclass
+from ipaddress import ip_address
 from pathlib import Path
 from typing import cast
 from zoneinfo import ZoneInfo, ZoneInfoNotFoundError, available_timezones
@@ -158,6 +159,11 @@ def host(raw: object) -> str:
     name = text(raw)
     if not re.fullmatch(r"[A-Za-z0-9._:-]+", name) or "//" in name:
         raise ValueError('is no machine\'s name or address; write it like "127.0.0.1"')
+    if re.fullmatch(r"[0-9.]+", name):
+        try:
+            ip_address(name)
+        except ValueError:
+            raise ValueError('is no address; four numbers to 255, like "127.0.0.1"') from None
     return name
 
 

@@ -9,6 +9,7 @@ from daemon.moisture.description import Fixed, Like, Measured, RiseByDuty, Sourc
 from daemon.site import defaults
 from daemon.site.names import Names
 from daemon.site.table import Table
+from daemon.site.values import quantity
 from daemon.site.widths import OF_FRACTION, OF_PRESSURE, OF_TEMPERATURE, Width, give_or_take
 from daemon.units import parse, parse_pressure, show_barometer, show_duration
 from sensors.reading import Channel, Quantity
@@ -103,7 +104,7 @@ def _fits_intake(channel: Channel) -> str:
 TEMPERATURE = Spec("temperature", _temperature, OF_TEMPERATURE)
 PRESSURE = Spec("pressure", line_pressure, OF_PRESSURE, _fits_line)
 BAROMETER = Spec(
-    "pressure", _barometer, Width("pressure difference", show_barometer, True), _fits_intake
+    "pressure", _barometer, Width("pressure difference", show_barometer, True, 6e4), _fits_intake
 )
 HUMIDITY = Spec("relative_humidity", humidity, OF_FRACTION)
 
@@ -139,7 +140,7 @@ def _from_table(table: Table, key: str, spec: Spec, rules: Rules, names: Names) 
     forms = [form for form in ("value", "channel", "like") if form in inner.values]
     source: Source | None = None
     if len(forms) != 1:
-        if inner.ok(*KEYS):  # a misspelt key has been told already
+        if not inner.broken:  # a misspelt key has been told already
             table.wrong(key, _which_form(forms, rules))
     elif forms == ["value"]:
         source = _fixed(inner, spec)
@@ -147,7 +148,7 @@ def _from_table(table: Table, key: str, spec: Spec, rules: Rules, names: Names) 
         source = _channel(inner, spec, names)
     else:
         source = _rule(inner, spec, rules, names)
-    if source is None or not inner.ok(*KEYS):
+    if source is None or inner.broken:
         table.broken.add(key)
         return None
     return source
@@ -163,7 +164,7 @@ def _which_form(forms: Sequence[str], rules: Rules) -> str:
 def _surplus(inner: Table, form: str, *others: str) -> None:
     """Keys that say nothing in this form."""
     for other in others:
-        if other in inner.values:
+        if other in inner.values and not inner.broken:
             inner.wrong(other, f"says nothing beside {form}; take it out")
 
 
@@ -194,8 +195,13 @@ def _rule(inner: Table, spec: Spec, rules: Rules, names: Names) -> Source | None
         return _rise(inner, rules, station)
     _surplus(inner, "like without rise_by_duty", "time_constant")
     zero = spec.width.show(0.0, inner.notes.units)
+    widest = spec.width.widest
     plus = inner.value(
-        "plus", lambda raw: parse(raw, spec.width.kind), 0.0, zero, "nothing else is said"
+        "plus",
+        quantity(spec.width.kind, -widest, widest, "no such difference in a shop's line"),
+        0.0,
+        zero,
+        "nothing else is said",
     )
     because = "what a guess by another station is worth (practice)"
     width = give_or_take(inner, spec.width, None, rules.like_give_or_take, because)
@@ -207,7 +213,8 @@ def _rise(inner: Table, rules: Rules, station: str) -> Source | None:
         inner.wrong("rise_by_duty", "belongs to a receiver's temperature; write plus instead")
         return None
     _surplus(inner, "rise_by_duty", "plus")
-    rise = inner.read("rise_by_duty", lambda raw: parse(raw, "temperature difference"), 0.0)
+    most = quantity("temperature difference", 0.0, 60.0, "a tank warms by 0 to 60 K")
+    rise = inner.read("rise_by_duty", most, 0.0)
     shown = show_duration(defaults.RISE_TIME_S)
     because = "how fast a tank warms (estimate)"
     lag = inner.value("time_constant", _lag, defaults.RISE_TIME_S, shown, because)

@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import cast
 
 from daemon.moisture.description import Fixed, Share, Source, StationKind, Trap
 from daemon.site import defaults
 from daemon.site.names import Names
-from daemon.site.notes import Notes
+from daemon.site.notes import Explains, Notes
 from daemon.site.parts import label, read_id
 from daemon.site.sources import (
     BAROMETER,
@@ -22,7 +22,7 @@ from daemon.site.sources import (
 )
 from daemon.site.table import Table
 from daemon.site.traps import read_trap
-from daemon.site.values import choice, flag
+from daemon.site.values import choice, flag, identifier
 from daemon.site.widths import OF_PRESSURE, OF_VOLUME, read_fixed
 from daemon.units import parse, show_volume
 
@@ -78,18 +78,33 @@ class Draft:
 def open_stations(notes: Notes, raws: Sequence[object], names: Names) -> list[Table]:
     """The tables, with every id put into `names` so that stations may name later ones."""
     tables = []
-    for number, raw in enumerate(raws, 1):
-        table = Table(notes, label("station", number, raw), raw, STATION_KEYS)
-        given = table.values.get("id")
-        if read_id(table, "station", names.stations):
-            tables.append(table)
-        elif given in names.stations:
-            table.values["id"] = ""  # a second one of that name: read, then left out
-            tables.append(table)
-        else:
-            names.stations_unnamed = True
-            tables.append(table)
+    ids = [raw["id"] for raw in raws if isinstance(raw, dict) and isinstance(raw.get("id"), str)]
+    labels = [label("station", number, raw) for number, raw in enumerate(raws, 1)]
+    for number, (where, raw) in enumerate(zip(labels, raws, strict=True), 1):
+        table = Table(notes, where, raw, STATION_KEYS, required=_required(raw, ids))
+        onward = labels[number] if number < len(labels) else "outlet"
+        again = table.values.get("id") in names.stations
+        if not read_id(table, "station", names.stations, _explains(onward if again else "")):
+            table.values["id"] = ""  # checked like the others, then left out
+        tables.append(table)
     return tables
+
+
+def _required(raw: object, ids: Sequence[str]) -> dict[str, Callable[[object], object]]:
+    """The keys that a station must have, with what tells that a value could be theirs."""
+    found: dict[str, Callable[[object], object]] = {"kind": choice(KINDS, "kind of station")}
+    table = raw if isinstance(raw, dict) else {}
+    kinds = [table["kind"]] if "kind" in table else list(table.values())
+    if "intake" not in kinds:
+        found["after"] = choice(ids, "station")
+    if "regulator" in kinds:
+        found["set"] = gauge_pressure
+    return found | {"id": identifier}
+
+
+def _explains(onward: str) -> Explains:
+    """Whether a station could be the one that tables elsewhere name: any, or the next one only."""
+    return lambda tables, _: any(table.startswith(onward) for table in tables)
 
 
 def read_stations(tables: Sequence[Table], names: Names) -> list[Draft]:

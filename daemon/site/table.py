@@ -2,10 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from typing import Any, TypeVar
 
-from daemon.site.notes import Notes, Told, nearest
+from daemon.site.notes import Notes, Told, Unknown, nearest
 
 T = TypeVar("T")
 Reader = Callable[[object], T]  # a TOML value to a checked one; ValueError says what to write
@@ -20,7 +20,13 @@ class Table:
     """
 
     def __init__(
-        self, notes: Notes, where: str, raw: object, known: Sequence[str], prefix: str = ""
+        self,
+        notes: Notes,
+        where: str,
+        raw: object,
+        known: Sequence[str],
+        prefix: str = "",
+        required: Mapping[str, Reader[object]] | None = None,
     ) -> None:
         self.notes = notes
         self.where = where
@@ -32,9 +38,9 @@ class Table:
             self._not_a_table(raw, known)
             return
         self.values = {key: value for key, value in raw.items() if key in known}
-        for key, value in raw.items():
-            if key not in known:
-                self._unknown(key, value, known)
+        odd = {key: value for key, value in raw.items() if key not in known}
+        if not self._lost_header(odd):
+            self._tell_unknown(odd, known, required or {})
 
     def _not_a_table(self, raw: object, known: Sequence[str]) -> None:
         self.broken.update(known)
@@ -42,18 +48,52 @@ class Table:
         example = f"{name} = {{ ... }}" if name else f"a table [{self.where}]"
         self.notes.problem(self.where, name, raw, f"is not a table; write {example}")
 
-    def _unknown(self, key: str, value: object, known: Sequence[str]) -> None:
-        meant = nearest(key, known)
-        if meant:
-            remedy = f'there is no such key; did you mean "{meant}"?'
+    def _lost_header(self, odd: Mapping[str, object]) -> bool:
+        """Whether the keys are those of another table whose header is missing: one mistake."""
+        for name, keys in self.notes.elsewhere.items():
+            if len(odd) > 1 and set(odd) <= set(keys):
+                self.notes.problem(
+                    self.where,
+                    "",
+                    None,
+                    f"there are no such keys here: {', '.join(odd)}; they belong to {name}: "
+                    "is its header missing above them?",
+                )
+                self.broken.update(odd)
+                if "id" in odd:  # whoever names it is not wrong
+                    self.notes.lost(odd["id"])
+                return True
+        return False
+
+    def _tell_unknown(
+        self,
+        odd: Mapping[str, object],
+        known: Sequence[str],
+        required: Mapping[str, Reader[object]],
+    ) -> None:
+        for key, value in odd.items():
+            meant = nearest(key, known) or self._stands_for(value, required)
             if meant in self.values:
                 remedy = f'there is no such key ("{meant}" is there already); take it out'
-            else:
+            elif meant:
+                remedy = f'there is no such key; did you mean "{meant}"?'
                 self.values[meant] = value
                 self._guessed.add(meant)
-        else:
-            remedy = f"there is no such key here; known: {', '.join(known)}"
-        self.wrong(key, remedy, value)
+            else:
+                remedy = f"there is no such key here; known: {', '.join(known)}"
+            self.wrong(key, remedy, value)
+
+    def _stands_for(self, value: object, required: Mapping[str, Reader[object]]) -> str:
+        """A key that must be there, is not, and could have this value: said by another name."""
+        for key, reader in required.items():
+            if key in self.values:
+                continue
+            try:
+                reader(value)
+            except ValueError:
+                continue
+            return key
+        return ""
 
     def key(self, key: str) -> str:
         """The key's name in a message: "trap.capacity"."""
@@ -79,8 +119,10 @@ class Table:
             return default
         try:
             return reader(self.values[key])
-        except Told:
+        except Told as error:
             self.broken.add(key)
+            if isinstance(error, Unknown):
+                self.notes.unknown(error, self.where, self.key(key), self.values[key])
         except ValueError as error:
             if key in self._guessed:  # told already, as an unknown key
                 self.broken.add(key)

@@ -78,6 +78,9 @@ def _trap(
     capacity_m3 = _capacity(inner, usual, volume)
     drain_at_m3 = _drain_at(inner, usual, capacity_m3)
     held = {key: _held(inner, key, capacity_m3.value) for key in ("heel", "holds_at_start")}
+    if inner.ok("heel", "drain_at") and held["heel"] >= drain_at_m3:
+        limit = show_volume(drain_at_m3, inner.notes.units)
+        inner.wrong("heel", f"is left behind by a drain, so it lies below drain_at, {limit}")
     return Trap(
         drain=drain,
         capacity=Fixed(

@@ -26,13 +26,14 @@ class Width:
     kind: Kind
     show: Callable[[float, People], str]
     percent_of_value: bool  # whether "10 %" means a share of the value
+    widest: float  # beyond it, it is a mistake
 
 
-OF_TEMPERATURE = Width("temperature difference", show_difference, False)
-OF_PRESSURE = Width("pressure difference", show_pressure_difference, True)
-OF_FRACTION = Width("fraction", lambda value, _: show_percent(value), False)
-OF_VOLUME = Width("volume", show_volume, True)
-OF_FLOW = Width("flow", show_flow, True)
+OF_TEMPERATURE = Width("temperature difference", show_difference, False, 60.0)
+OF_PRESSURE = Width("pressure difference", show_pressure_difference, True, 16e5)
+OF_FRACTION = Width("fraction", lambda value, _: show_percent(value), False, 1.0)
+OF_VOLUME = Width("volume", show_volume, True, 100.0)
+OF_FLOW = Width("flow", show_flow, True, 100.0 / 60)
 
 
 def give_or_take(
@@ -41,24 +42,28 @@ def give_or_take(
     """The half-width that a table says, in its unit or as a share of a known value."""
     if not inner.said("give_or_take") and because:
         inner.default("give_or_take", width.show(default, inner.notes.units), because)
-    share_of = value if width.percent_of_value else None
-    return inner.read("give_or_take", lambda raw: half_width(raw, width.kind, share_of), default)
+    return inner.read("give_or_take", lambda raw: half_width(raw, width, value), default)
 
 
-def half_width(raw: object, kind: Kind, value: float | None) -> float:
+def half_width(raw: object, width: Width, value: float | None) -> float:
     """A give_or_take in SI. "10 %" is a share of `value`, where one is known ahead.
 
     Of what is itself a fraction (a humidity, a separation) per cents are points.
     """
-    if kind != "fraction" and isinstance(raw, str) and raw.strip().endswith("%"):
-        if value is None:
-            raise ValueError(f"a share says nothing here; write it like {EXAMPLES[kind]}")
-        width = abs(parse(raw, "fraction") * value)
+    if width.kind != "fraction" and isinstance(raw, str) and raw.strip().endswith("%"):
+        share = parse(raw, "fraction")
+        if value is None or not width.percent_of_value:
+            raise ValueError(f"a share says nothing here; write it like {EXAMPLES[width.kind]}")
+        if share > 1.0:
+            raise ValueError("is more than the value itself; at most 100 %")
+        half = share * abs(value)
     else:
-        width = parse(raw, kind)
-    if width < 0:
+        half = parse(raw, width.kind)
+    if half < 0:
         raise ValueError("a give or take is a half-width: it cannot be negative")
-    return width
+    if half > width.widest or (width.kind in ("volume", "flow") and value and half > value):
+        raise ValueError("is wider than anything that could be; write how far off it may be")
+    return half
 
 
 def read_share(table: Table, key: str, default: Share, because: str) -> Share:
@@ -79,7 +84,7 @@ def read_share(table: Table, key: str, default: Share, because: str) -> Share:
         value = inner.value("value", _fraction, default.value, show_percent(default.value), because)
         width = give_or_take(inner, OF_FRACTION, None, default.give_or_take, because)
         share = Share(value, width)
-        if not inner.ok("value", "give_or_take"):
+        if inner.broken:
             table.broken.add(key)
             return default
     if share.value in (0.0, 1.0) and share.give_or_take > 0:
@@ -126,16 +131,16 @@ def read_fixed(
         return fixed
     inner = table.sub(key, ("value", "give_or_take"))
     if not inner.said("value"):
-        if inner.ok("value", "give_or_take"):
+        if not inner.broken:
             table.wrong(key, 'says no value; write { value = "...", give_or_take = "..." }')
         table.broken.add(key)
         return None
     fixed = inner.read("value", literal, None)
-    if fixed is None or not inner.ok("value", "give_or_take"):
+    if fixed is None or inner.broken:
         table.broken.add(key)
         return None
     half = give_or_take(inner, width, fixed.value, fixed.give_or_take, because)
-    if not inner.ok("give_or_take"):
+    if inner.broken:
         table.broken.add(key)
         return None
     return Fixed(fixed.value, half, fixed.gauge)
