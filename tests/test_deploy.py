@@ -31,7 +31,8 @@ case "$*" in
     chmod +x "$folder/bin/dripleg"
     echo "venv" >>"$LOG" ;;
 "-m pip"*) echo "pip $*" >>"$LOG"; exit ${PIP_FAILS:-0} ;;
-"-m"*) echo "$*" >>"$LOG"; [ "$2" != "${TOOL_FAILS:-none}" ] ;;
+"-m ${TOOL_FAILS:-none} "*) exit 1 ;;
+"-m"*) echo "$*" >>"$LOG" ;;
 *) exec REAL "$@" ;;
 esac
 """
@@ -50,6 +51,7 @@ class Checkout:
         self.program("python3", PRETENDER.replace("REAL", sys.executable))
         self.program("id", "#!/bin/sh\necho 1000\n")  # not root, whoever runs the tests
         self.program("mosquitto", "#!/bin/sh\n")
+        self.program("apt-get", '#!/bin/sh\necho "apt-get $*" >>"$LOG"\n')  # installs nothing
 
     def program(self, name: str, text: str) -> None:
         path = self.programs / name
@@ -169,9 +171,8 @@ def test_a_python_without_its_venv_module_is_named_with_its_package(checkout: Ch
 
 def test_root_on_debian_gets_the_venv_module_installed(checkout: Checkout) -> None:
     checkout.program("id", "#!/bin/sh\necho 0\n")
-    checkout.program("apt-get", '#!/bin/sh\necho "apt-get $*" >>"$LOG"\n')
     outcome = checkout.run("demo", NO_VENV="1")
-    assert outcome.returncode == 1  # this apt-get installs nothing
+    assert outcome.returncode == 1  # the stand-in installed nothing
     update, install = checkout.done()
     assert update.startswith("apt-get update")
     assert re.fullmatch(r"apt-get install .*python3\.\d+-venv", install)
@@ -189,7 +190,7 @@ def test_the_tests_run_every_check_in_order(checkout: Checkout) -> None:
     ]
 
 
-@pytest.mark.parametrize("tool", ["ruff", "mypy", "pytest"])
+@pytest.mark.parametrize("tool", ["ruff check", "ruff format", "mypy", "pytest"])
 def test_a_check_that_fails_fails_the_whole(checkout: Checkout, tool: str) -> None:
     assert checkout.run("test", TOOL_FAILS=tool).returncode == 1
 
