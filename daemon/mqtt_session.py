@@ -1,8 +1,8 @@
 """One connection to an MQTT broker, from its first byte to its last, driven by one thread.
 
 paho-mqtt speaks the protocol; its loop is driven from here, so that sending, acknowledging and
-waiting happen in one thread and in an order that can be read. A session is never revived: paho would
-send again what it had queued, beside what its caller sends again.
+waiting happen in one thread and in an order that can be read. A session is never revived: paho
+would send again what it had queued, beside what its caller sends again.
 """
 
 from __future__ import annotations
@@ -31,12 +31,25 @@ def tls_context(mqtt: Mqtt) -> ssl.SSLContext | None:
     if not mqtt.tls:
         return None
     try:
-        return ssl.create_default_context(cafile=mqtt.ca_file or None)
+        context = ssl.create_default_context(cafile=mqtt.ca_file or None)
     except OSError as error:
         raise BrokerError(
             f"[mqtt] ca_file {mqtt.ca_file}: cannot be used ({error}): give the PEM file of the "
             "authority that signed the broker's certificate"
         ) from error
+    context.sslsocket_class = _TidySocket
+    return context
+
+
+class _TidySocket(ssl.SSLSocket):
+    """Closes itself when the broker's certificate is refused, which paho does not."""
+
+    def do_handshake(self, block: bool = False) -> None:
+        try:
+            super().do_handshake(block)
+        except BaseException:
+            self.close()
+            raise
 
 
 class Session:
@@ -92,9 +105,7 @@ class Session:
 
     def send(self, message: Message) -> int:
         """Send a message; the number that `acknowledged` will name it by."""
-        return self._client.publish(
-            message.topic, message.payload, message.qos, message.retain
-        ).mid
+        return self._client.publish(message.topic, message.payload, message.qos, message.retain).mid
 
     def acknowledged(self) -> list[int]:
         """The numbers acknowledged since the last call."""
@@ -104,7 +115,7 @@ class Session:
     def step(self, waker: socket.socket, wait_s: float) -> None:
         """Wait for the network or for a byte from `waker`, no longer than that, and do the work."""
         sock = self._client.socket()
-        if sock is None:
+        if not isinstance(sock, socket.socket):
             self.ended = self.ended or "the connection was closed"
             return
         # what TLS has decrypted already makes no socket readable
@@ -113,27 +124,26 @@ class Session:
         if self._client.want_write():
             wanted |= selectors.EVENT_WRITE
         with selectors.PollSelector() as selector:
-            selector.register(sock, wanted)  # type: ignore[arg-type] # a real socket over TCP
+            selector.register(sock, wanted)
             selector.register(waker, selectors.EVENT_READ)
             ready = {key.fileobj: mask for key, mask in selector.select(0 if decrypted else wait_s)}
-        mask = ready.get(sock, 0)  # type: ignore[call-overload] # see above
+        mask = ready.get(sock, 0)
         if mask & selectors.EVENT_READ or decrypted:
             self._client.loop_read()
         if mask & selectors.EVENT_WRITE:
             self._client.loop_write()
         self._client.loop_misc()
 
-    def close(self) -> None:
-        """Say goodbye, so that the broker forgets the last will, and let go of the socket."""
-        if self.accepted and not self.ended:
-            self._client.disconnect()
-            self.ended = "closed by us"
-        sock = self._client.socket()
-        if sock is not None:
-            sock.close()
+    def goodbye(self) -> None:
+        """End on purpose: the broker forgets the last will."""
+        self._client.disconnect()
+        self.ended = self.ended or "ended on purpose"
 
-    def abandon(self) -> None:
-        """Let go of the socket without a goodbye: the broker publishes the last will."""
+    def close(self) -> None:
+        """Let go of the socket. Without a goodbye before, the broker publishes the last will."""
+        sock = self._client.socket()
+        if isinstance(sock, socket.socket):
+            sock.close()
 
     def _on_connect(
         self, client: Client, data: Any, flags: Any, reason: Any, properties: Any

@@ -36,7 +36,7 @@ class Store:
         self.last_stop_clean = last_stop_clean
 
     @classmethod
-    def open(cls, url_or_path: str | Path, channels: Mapping[str, Channel]) -> Store:
+    def open(cls, url_or_path: str | Path, channels: Mapping[str, Channel]) -> Self:
         """Open or make the database, bring it up to date, and keep other processes off it.
 
         `channels` are the site's, in its order. After a stop that was not clean every page is
