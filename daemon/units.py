@@ -14,6 +14,31 @@ from typing import Literal
 from daemon.errors import UnitError
 from daemon.unit_tables import EXAMPLES, SPELLINGS, UNITS, Kind
 
+__all__ = [
+    "Kind",
+    "People",
+    "Pressure",
+    "canonical_unit",
+    "from_si",
+    "parse",
+    "parse_pressure",
+    "parse_range",
+    "recorded_from_si",
+    "recorded_to_si",
+    "recorded_units",
+    "show_barometer",
+    "show_difference",
+    "show_duration",
+    "show_flow",
+    "show_percent",
+    "show_pressure",
+    "show_pressure_difference",
+    "show_temperature",
+    "show_volume",
+    "to_si",
+    "units_of",
+]
+
 People = Literal["metric", "us"]
 
 _NUMBER = r"[+-]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][+-]?\d+)?"

@@ -41,9 +41,7 @@ _INTAKE: tuple[tuple[str, Quantity], ...] = (
 )
 
 
-def complete_line(
-    notes: Notes, drafts: list[Draft], names: Names, *, all_known: bool
-) -> list[Draft]:
+def complete_line(notes: Notes, drafts: list[Draft], *, all_known: bool) -> list[Draft]:
     """The stations in order, with an intake and, where nothing else is declared, a tank.
 
     Nothing is added while a station's kind or id is not known: it may be what seems missing.
@@ -53,7 +51,7 @@ def complete_line(
         return in_order(found)
     if not any(draft.is_intake for draft in found):
         found.insert(0, _added(notes, "intake", "intake", "", "every line begins at an intake"))
-    if len(found) == 1 and found[0].is_intake and "tank" not in names.stations:
+    if len(found) == 1 and found[0].is_intake and found[0].id != "tank":
         tank = _added(notes, "tank", "receiver", found[0].id, "no other station is declared")
         usual = defaults.VOLUME
         shown, width = (show_volume(v, notes.units) for v in (usual.value, usual.give_or_take))
@@ -113,13 +111,7 @@ class Assumptions:
             return named[0]
         if "temperature" not in missing or "relative_humidity" not in missing:
             return ""
-        free = [
-            sensor
-            for sensor in self.names.sensors
-            if self.names.of(sensor, "temperature")
-            and self.names.of(sensor, "relative_humidity")
-            and not self.names.used(sensor)
-        ]
+        free = self.names.free("temperature", "relative_humidity")
         if len(free) > 1:
             intake.table.wrong(
                 "temperature",
@@ -132,7 +124,11 @@ class Assumptions:
 
     def _barometer(self, table: Table) -> Channel | None:
         """The only barometer, wherever in the shop it is: the weather is the same there."""
-        found = [c for c in self.names.channels.values() if is_barometer(c)]
+        found = [
+            channel
+            for channel in self.names.channels.values()
+            if is_barometer(channel) and channel.sensor not in self.names.in_line
+        ]
         if len(found) > 1 and table.ok("pressure"):
             table.wrong(
                 "pressure",

@@ -45,11 +45,7 @@ def choose_running(table: Table, compressor: Compressor, names: Names) -> str | 
     """The contact that says when air is made: as said, or the only one that nobody else uses."""
     if table.said("running") or table.said("loaded"):
         return compressor.running
-    free = [
-        channel.name
-        for channel in names.channels.values()
-        if channel.quantity == "contact" and not names.used(channel.sensor)
-    ]
+    free = [f"{sensor}.contact" for sensor in names.free("contact")]
     if len(free) > 1:
         table.wrong(
             "running",

@@ -30,6 +30,7 @@ class Names:
     channels: dict[str, Channel] = field(default_factory=dict)
     sensors: list[str] = field(default_factory=list)  # in the file's order
     broken_sensors: set[str] = field(default_factory=set)  # their channels are not known
+    in_line: set[str] = field(default_factory=set)  # bled from the line: no room's air
     stations: list[str] = field(default_factory=list)
     used_channels: set[str] = field(default_factory=set)
     used_sensors: set[str] = field(default_factory=set)  # as a whole: an outlet's surroundings
@@ -60,6 +61,16 @@ class Names:
         return sensor in self.used_sensors or any(
             self.channels[name].sensor == sensor for name in self.used_channels
         )
+
+    def free(self, *quantities: Quantity) -> list[str]:
+        """Sensors in the shop's air that give all of these and that nothing names yet."""
+        return [
+            sensor
+            for sensor in self.sensors
+            if sensor not in self.in_line
+            and not self.used(sensor)
+            and all(self.of(sensor, quantity) for quantity in quantities)
+        ]
 
     def sensor(self, name: str, what: str) -> str:
         """A sensor named as a whole, noted as used."""

@@ -7,9 +7,9 @@ from dataclasses import dataclass
 
 from daemon.moisture.description import Outlet
 from daemon.site import defaults
+from daemon.site.ids import label, read_id
 from daemon.site.names import Names
 from daemon.site.notes import Notes, suggestion
-from daemon.site.parts import label, read_id
 from daemon.site.shape import ends
 from daemon.site.stations import Draft
 from daemon.site.table import Table
@@ -142,7 +142,7 @@ def _tell_outlets_at_intake(drafts: Sequence[OutletDraft], stations: Sequence[Dr
 
 def _line_end(notes: Notes, stations: Sequence[Draft]) -> list[Outlet]:
     last = ends(stations)
-    if len(last) > 1:
+    if len(last) > 1 and not notes.problems_of("station"):
         notes.problem(
             "outlet",
             "",

@@ -5,11 +5,14 @@ from __future__ import annotations
 from collections.abc import Callable, Mapping
 from typing import Any
 
+from daemon.site.ids import label, read_id
 from daemon.site.names import Names
 from daemon.site.notes import Explains, Notes, nearest, suggestion, written
 from daemon.site.table import Table
 from daemon.site.values import choice, identifier, text
 from sensors.registry import REQUIRED, Driver, SensorConfig
+
+BLED_FROM_LINE = ("vented-cell",)  # drivers whose part sits in the line's air, not the shop's
 
 
 def read_sensors(
@@ -24,38 +27,6 @@ def read_sensors(
             found.append(config)
             _occupy(notes, config, drivers[config.driver], occupied)
     return tuple(found)
-
-
-def label(what: str, number: int, raw: object) -> str:
-    """How a message names a table of a list: by its id, else by its place in the file."""
-    name = raw.get("id") if isinstance(raw, dict) else None
-    return f'{what} "{name}"' if isinstance(name, str) and name else f"{what} {number}"
-
-
-def read_id(table: Table, what: str, taken: list[str], explains: Explains) -> str:
-    """The table's id as written, noted as taken; "" when there is none, or another one's.
-
-    An id that breaks the rules is told, and still serves to keep other tables quiet. `explains`
-    says which names elsewhere may mean a table without an id of its own.
-    """
-    raw = table.values.get("id")
-    if raw is None:
-        if table.ok("id"):
-            table.wrong("id", f'every {what} needs an id; write id = "..."')
-        table.notes.unnamed(what, None, explains)
-        return ""
-    table.read("id", identifier, "")
-    if not isinstance(raw, str) or not raw:
-        table.notes.unnamed(what, None, explains)
-        return ""
-    if not table.ok("id"):
-        table.notes.unnamed(what, raw, explains)
-    if raw in taken:
-        table.wrong("id", f"another {what} has this id; give each its own")
-        table.notes.unnamed(what, None, explains)
-        return ""
-    taken.append(raw)
-    return raw
 
 
 def _sensor(
@@ -82,9 +53,23 @@ def _sensor(
         names.broken_sensors.add(name)
         return None
     config = SensorConfig(name, driver.name, settings, said=frozenset(table.values))
+    for clashing, remedy in driver.clashes(config):
+        table.wrong(clashing, remedy)
+    if table.broken:
+        names.broken_sensors.add(name)
+        return None
+    _introduce(config, driver, names)
+    return config
+
+
+def _introduce(config: SensorConfig, driver: Driver, names: Names) -> None:
+    """Make a sensor's channels known, and what it is there for if its own table says so."""
     for channel in driver.channels(config):
         names.channels[channel.name] = channel
-    return config
+    if driver.name in BLED_FROM_LINE:
+        names.in_line.add(config.id)
+    if "trap" in config.settings:
+        names.used_sensors.add(config.id)
 
 
 def _gives(table: Table, driver: Driver | None) -> Explains:

@@ -10,14 +10,14 @@ from pathlib import Path
 
 import sensors.drivers  # noqa: F401  # fills DRIVERS
 from daemon.errors import Problem, SiteError
-from daemon.moisture.description import Compressor, Line
+from daemon.moisture.description import Line
 from daemon.site.assume import Assumptions, complete_line, station_of
 from daemon.site.calendar import HOURS_KEYS, read_hours
 from daemon.site.compressor import COMPRESSOR_KEYS, choose_running, read_compressor
 from daemon.site.limits import tell_rising_pressures, tell_set_pressures
 from daemon.site.names import Names
 from daemon.site.notes import Notes, nearest
-from daemon.site.outlets import OUTLET_KEYS, OutletDraft, finish_outlets, read_outlets, settings_of
+from daemon.site.outlets import OUTLET_KEYS, finish_outlets, read_outlets, settings_of
 from daemon.site.parts import read_sensors
 from daemon.site.remarks import remarks
 from daemon.site.sections import (
@@ -33,8 +33,9 @@ from daemon.site.sections import (
     read_site_table,
 )
 from daemon.site.shape import tell_circular_rules, tell_loops
-from daemon.site.stations import STATION_KEYS, Draft, open_stations, read_stations
+from daemon.site.stations import STATION_KEYS, open_stations, read_stations
 from daemon.site.table import Table
+from daemon.site.trap_sensors import tell_traps
 from daemon.site.types import Site
 from sensors.registry import DRIVERS, Driver
 
@@ -157,27 +158,28 @@ class _Reading:
     ) -> None:
         self.notes, self.raw, self.path, self.drivers = notes, raw, path, drivers
         self.names = Names()
+        self.straight = True  # no circle in what hangs on what
 
     def site(self) -> Site | None:
-        """The site; None, or one not to be used, when there are problems."""
-        notes, raw = self.notes, self.raw
+        """The site; None when there are problems."""
+        notes, raw, names = self.notes, self.raw, self.names
         basics = read_site_table(notes, raw.get("site", {}))
         hours = read_hours(notes, raw.get("hours"))
-        sensors = read_sensors(notes, self._list("sensor"), self.drivers, self.names)
-        tables = open_stations(notes, self._list("station"), self.names)
-        self._name_added_intake(tables)
-        table, compressor = read_compressor(notes, raw.get("compressor"), self.names)
-        drafts = read_stations(tables, self.names)
-        outlets = read_outlets(notes, self._list("outlet"), self.names)
+        sensors = read_sensors(notes, self._list("sensor"), self.drivers, names)
+        stations = open_stations(notes, self._list("station"), names)
+        self._name_added(stations)
+        table, compressor = read_compressor(notes, raw.get("compressor"), names)
+        drafts = self._drafts(stations)
+        tell_traps(notes, sensors, drafts, names)
+        outlets = read_outlets(notes, self._list("outlet"), names)
         cup = read_cup(notes, raw.get("cup", {}))
         members, seed = read_model(notes, raw.get("model", {}))
         mqtt = read_mqtt(notes, raw.get("mqtt"), Path(self.path).parent)
         api = read_api(notes, raw.get("api", {}))
-        notes.settle_unknown(
-            {"sensor": self.names.sensors, "station": self.names.stations, "outlet": ()}
-        )
-        line = self._line(drafts, outlets, table, compressor, basics.sample_every_s)
-        if line is None:
+        notes.settle_unknown({"sensor": names.sensors, "station": names.stations, "outlet": ()})
+        compressor = self._complete(drafts, table, compressor)
+        ends = finish_outlets(notes, outlets, drafts)
+        if notes.problems:
             return None
         site = Site(
             path=self.path,
@@ -189,15 +191,40 @@ class _Reading:
             hours=hours,
             cup=cup,
             sensors=sensors,
-            channels=dict(self.names.channels),
-            line=replace(line, members=members, seed=seed),
-            outlets=tuple(settings_of(outlets, line.outlets)),
+            channels=dict(names.channels),
+            line=Line(
+                stations=tuple(station_of(draft) for draft in drafts),
+                outlets=tuple(ends),
+                compressor=compressor,
+                period_s=basics.sample_every_s,
+                members=members,
+                seed=seed,
+            ),
+            outlets=tuple(settings_of(outlets, ends)),
             mqtt=mqtt,
             api=api,
             defaults=tuple(notes.defaults),
             without_effect=tuple(notes.without_effect),
         )
-        return replace(site, remarks=remarks(site, self.names))
+        said = remarks(site, names, loaded_contact=table.said("loaded"))
+        return replace(site, remarks=said)
+
+    def _drafts(self, tables: Sequence[Table]) -> list[Draft]:
+        """The stations as they are said, in the air's order, with those that must be there."""
+        drafts = read_stations(tables, self.names)
+        self.straight = tell_loops(drafts)
+        known = len(drafts) == len(tables) and all(draft.kind for draft in drafts)
+        return complete_line(self.notes, drafts, all_known=known)
+
+    def _complete(self, drafts: list[Draft], table: Table, compressor: Compressor) -> Compressor:
+        """Fill in what is not said, then check what only the whole line shows."""
+        Assumptions(self.notes, drafts, self.names, compressor).fill()
+        running = choose_running(table, compressor, self.names)
+        if self.straight:
+            tell_circular_rules(drafts)
+            tell_rising_pressures(drafts)
+            tell_set_pressures(drafts, table, compressor)
+        return replace(compressor, running=running)
 
     def _list(self, name: str) -> list[object]:
         raw = self.raw.get(name, [])
@@ -208,36 +235,10 @@ class _Reading:
         )
         return [raw] if isinstance(raw, dict) else []
 
-    def _name_added_intake(self, tables: Sequence[Table]) -> None:
-        """Where no station is an intake, one called "intake" is added: others may name it."""
+    def _name_added(self, tables: Sequence[Table]) -> None:
+        """Stations that are added where the file has none: others may name them already."""
         kinds = [table.values.get("kind") for table in tables]
         if "intake" not in kinds and "intake" not in self.names.stations:
             self.names.stations.insert(0, "intake")
-
-    def _line(
-        self,
-        drafts: list[Draft],
-        outlets: list[OutletDraft],
-        table: Table,
-        compressor: Compressor,
-        period_s: float,
-    ) -> Line | None:
-        """The line with everything assumed that was not said; None when its shape is wrong."""
-        straight = tell_loops(drafts)
-        known = len(drafts) == len(self._list("station")) and all(each.kind for each in drafts)
-        drafts = complete_line(self.notes, drafts, self.names, all_known=known)
-        Assumptions(self.notes, drafts, self.names, compressor).fill()
-        running = choose_running(table, compressor, self.names)
-        if straight:
-            tell_circular_rules(drafts)
-            tell_rising_pressures(drafts)
-            tell_set_pressures(drafts, table, compressor)
-        ends = finish_outlets(self.notes, outlets, drafts)
-        if self.notes.problems:
-            return None
-        return Line(
-            stations=tuple(station_of(draft) for draft in drafts),
-            outlets=tuple(ends),
-            compressor=replace(compressor, running=running),
-            period_s=period_s,
-        )
+        if kinds in ([], ["intake"]) and "tank" not in self.names.stations:
+            self.names.stations.append("tank")

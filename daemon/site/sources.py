@@ -96,7 +96,7 @@ def _fits_line(channel: Channel) -> str:
 
 
 def _fits_intake(channel: Channel) -> str:
-    if not is_barometer(channel):
+    if channel.gauge or channel.lowest > defaults.BAROMETER_LIMITS_PA[1]:
         return "measures the line, but the intake's pressure is the barometer's; name a barometer"
     return ""
 

@@ -8,9 +8,9 @@ from typing import cast
 
 from daemon.moisture.description import Fixed, Share, Source, StationKind, Trap
 from daemon.site import defaults
+from daemon.site.ids import label, read_id
 from daemon.site.names import Names
 from daemon.site.notes import Explains, Notes
-from daemon.site.parts import label, read_id
 from daemon.site.sources import (
     BAROMETER,
     HUMIDITY,

@@ -1,0 +1,337 @@
+"""What `dripleg check` says of a site file: the line as understood, and what is only assumed.
+
+Written for a tired person in a shop: plain words, in line order, under 100 columns.
+"""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+
+from daemon.moisture.description import (
+    WATER_KG_PER_M3,
+    Fixed,
+    Like,
+    Measured,
+    RiseByDuty,
+    Source,
+    Station,
+    Trap,
+)
+from daemon.site.default_tables import defaults_table
+from daemon.site.types import DAY_NAMES, DefaultUsed, Hours, OutletSettings, Site
+from daemon.units import (
+    show_barometer,
+    show_difference,
+    show_duration,
+    show_flow,
+    show_percent,
+    show_pressure,
+    show_pressure_difference,
+    show_temperature,
+    show_volume,
+)
+from sensors.registry import DRIVERS, SensorConfig
+
+__all__ = ["Section", "defaults_table", "explain", "render", "sections"]
+
+WIDTH = 96
+_NAME = 20  # columns of a value's name
+CAUTIONS = (
+    "No Pi, sensor, cable, button or phone in the booth or near its openings unless rated for "
+    "that zone: ask whoever zoned it (29 CFR 1910.107 in the US, elsewhere the local rules for "
+    "explosive atmospheres).",
+    "The compressor starts by itself: isolate and lock it before touching belts or fittings. "
+    "Discharge pipes burn.",
+    "Never drill, weld or plug a receiver; no valve between it and its safety valve. Sensors go "
+    "into a depressurised tee and are rated above the safety valve's setting.",
+    "Crack a drain valve slowly, eyes and ears protected, the hose end held and never towards "
+    "skin. Vent before unscrewing a bowl.",
+    "The motor contact is an isolated auxiliary contact, fitted by an electrician.",
+    "Condensate is oily: to a separator or a waste carrier, never to the drain.",
+    "Does anybody breathe this air? Then stop: dripleg is not for breathing air, which has its "
+    "own tests (EN 12021; Grade D).",
+    "What dripleg says is an estimate of water only. It replaces no opening of the drain, no "
+    "inspection of a pressure vessel, and not the paint maker's sheet.",
+)
+
+
+@dataclass(frozen=True, slots=True)
+class Section:
+    """A part of the explanation; a part without lines is left out."""
+
+    title: str
+    lines: tuple[str, ...]
+
+
+def explain(site: Site) -> str:
+    """All that the site file was taken to mean."""
+    return render(sections(site))
+
+
+def sections(site: Site) -> list[Section]:
+    """The parts of the explanation in their order. What sensors read now may be put between."""
+    return [
+        Section(f"{site.name} ({site.id})", tuple(_shop(site))),
+        Section("The line, in the order in which the air meets it", tuple(_line(site))),
+        Section("The compressor", tuple(_compressor(site))),
+        Section("Sensors", tuple(_sensors(site))),
+        Section("Not said, so taken to be (write the key to say otherwise)", _assumed(site)),
+        Section("Checked, but without effect as yet", _items(site.without_effect)),
+        Section("Remarks", _items(site.remarks)),
+        Section("Cautions", _items(CAUTIONS)),
+    ]
+
+
+def render(parts: Sequence[Section]) -> str:
+    """Sections as text, titles underlined."""
+    blocks = [
+        "\n".join([part.title, "-" * len(part.title), *part.lines]) for part in parts if part.lines
+    ]
+    return "\n\n".join(blocks) + "\n"
+
+
+# --- the shop --------------------------------------------------------------------------------
+
+
+def _shop(site: Site) -> Iterator[str]:
+    yield from _row("site file", site.path)
+    yield from _row("time zone", site.timezone)
+    yield from _row("units", site.units)
+    yield from _row("sensors are read", f"every {show_duration(site.sample_every_us / 1e6)}")
+    for number, text in enumerate(_hours(site.hours)):
+        yield from _row("" if number else "open", text)
+    if site.mqtt is not None:
+        secured = ", over TLS" if site.mqtt.tls else ""
+        yield from _row("broker", f"{site.mqtt.host} port {site.mqtt.port}{secured}")
+    else:
+        yield from _row("broker", "none: nothing is told over MQTT")
+    yield from _row("pages and API", f"http://{site.api.host}:{site.api.port}/")
+
+
+def _hours(hours: Hours) -> Iterator[str]:
+    if hours.always_open:
+        yield "always"
+        return
+    for day, spans in zip(DAY_NAMES, hours.spans, strict=True):
+        if spans:
+            yield f"{day} " + ", ".join(f"{_clock(a)}-{_clock(b)}" for a, b in spans)
+    if hours.holidays:
+        yield f"not on {', '.join(sorted(hours.holidays))}"
+
+
+def _clock(minutes: int) -> str:
+    return f"{minutes // 60:02d}:{minutes % 60:02d}"
+
+
+# --- the line --------------------------------------------------------------------------------
+
+
+def _line(site: Site) -> Iterator[str]:
+    for station in site.line.stations:
+        after = f", after {station.after}" if station.after else ""
+        yield f"{station.id} ({station.kind}{after})"
+        yield from _station(site, station)
+        for outlet in site.line.outlets:
+            if outlet.after == station.id:
+                yield f"{outlet.id} (outlet, after {station.id})"
+                yield from _row("share", f"{show_percent(outlet.share)} of the air used")
+                settings = next(each for each in site.outlets if each.id == outlet.id)
+                yield from _outlet(site, settings)
+
+
+def _station(site: Site, station: Station) -> Iterator[str]:
+    def source(key: str, value: Source) -> Iterator[str]:
+        text = source_words(site, key, value, barometer=station.kind == "intake")
+        yield from _row(key.replace("_", " "), text + _mark(site, f'station "{station.id}"', key))
+
+    yield from source("temperature", station.temperature)
+    if station.relative_humidity is not None:
+        yield from source("relative_humidity", station.relative_humidity)
+    if station.kind == "regulator" and isinstance(station.pressure, Fixed):
+        yield from source("set", station.pressure)
+    else:
+        yield from source("pressure", station.pressure)
+    if station.volume is not None:
+        width = show_volume(station.volume.give_or_take, site.units)
+        text = f"{show_volume(station.volume.value, site.units)}, give or take {width}"
+        yield from _row("volume", text + _mark(site, f'station "{station.id}"', "volume"))
+    if station.trap is not None:
+        yield from _trap(site, station.trap)
+    elif station.kind in ("receiver", "separator", "coalescer"):
+        yield from _row("trap", "none")
+
+
+def _trap(site: Site, trap: Trap) -> Iterator[str]:
+    def volume(kg: float) -> str:
+        return show_volume(kg / WATER_KG_PER_M3, site.units)
+
+    every = {"never": "", "working day": ", every working day"}
+    drained = every.get(trap.drain_every, f", every {trap.drain_every.removeprefix('1 ')}")
+    yield from _row(
+        "trap", f"holds {volume(trap.capacity.value)}; due at {volume(trap.drain_at_kg)}"
+    )
+    yield from _row("drain", f"{trap.drain}{drained}")
+    keeps = show_percent(trap.separation.value)
+    width = show_percent(trap.separation.give_or_take)
+    yield from _row("keeps", f"{keeps} of the liquid that comes, give or take {width}")
+    if trap.heel_kg or trap.holds_at_start_kg:
+        start = volume(trap.holds_at_start_kg)
+        yield from _row(
+            "water in it", f"{start} at the start; a drain leaves {volume(trap.heel_kg)}"
+        )
+
+
+def _outlet(site: Site, settings: OutletSettings) -> Iterator[str]:
+    if settings.work:
+        yield from _row("work", settings.work)
+    if settings.surroundings:
+        yield from _row("air around it", f"sensor {settings.surroundings}")
+    line = settings.line_margin_k
+    surface = show_difference(settings.surface_margin_k, site.units)
+    asked = f"line {show_difference(line, site.units)}, " if line is not None else ""
+    yield from _row("margins asked for", f"{asked}surface {surface}")
+
+
+def source_words(site: Site, key: str, source: Source, *, barometer: bool = False) -> str:
+    """Where a value comes from: "sensor pipe-end.temperature, give or take 0.5 K"."""
+    width = f", give or take {_width(site, key, source.give_or_take, barometer)}"
+    match source:
+        case Measured():
+            gauge = " (gauge)" if source.gauge else ""
+            return f"sensor {source.channel}{gauge}{width}"
+        case Fixed():
+            return f"{_value(site, key, source, barometer)}{width}"
+        case Like():
+            return f"like {source.station}{_plus(site, key, source.plus)}{width}"
+        case RiseByDuty():
+            rise = show_difference(source.rise, site.units)
+            lag = show_duration(source.time_constant_s)
+            return f"like {source.station} + {rise} x duty, over {lag}{width}"
+
+
+def _value(site: Site, key: str, source: Fixed, barometer: bool) -> str:
+    if key == "temperature":
+        return show_temperature(source.value, site.units)
+    if key == "relative_humidity":
+        return show_percent(source.value)
+    if barometer:
+        return f"{show_barometer(source.value, site.units)} abs"
+    gauge = " gauge" if source.gauge else ""
+    return show_pressure(source.value, site.units, gauge=source.gauge) + gauge
+
+
+def _width(site: Site, key: str, value: float, barometer: bool) -> str:
+    if key == "temperature":
+        return show_difference(value, site.units)
+    if key == "relative_humidity":
+        return show_percent(value)
+    if barometer:
+        return show_barometer(value, site.units)
+    return show_pressure_difference(value, site.units)
+
+
+def _plus(site: Site, key: str, plus: float) -> str:
+    if plus == 0:
+        return ""
+    size = _width(site, key, abs(plus), barometer=False)
+    return f" {'+' if plus > 0 else '-'} {size}"
+
+
+# --- the compressor and the sensors ----------------------------------------------------------
+
+
+def _compressor(site: Site) -> Iterator[str]:
+    compressor = site.line.compressor
+    delivered, width = (
+        show_flow(value, site.units)
+        for value in (compressor.delivered.value, compressor.delivered.give_or_take)
+    )
+    mark = _mark(site, "compressor", "free_air_delivery")
+    yield from _row("delivers", f"{delivered} of free air, give or take {width}{mark}")
+    if compressor.running is None:
+        yield from _row("makes air", "while the tank's pressure rises: no contact says so")
+    else:
+        mark = _mark(site, "compressor", "running")
+        yield from _row("makes air", f"while {compressor.running} is closed{mark}")
+    starts, stops = (
+        show_pressure(each.value, site.units, gauge=True)
+        for each in (compressor.cut_in, compressor.cut_out)
+    )
+    mark = _mark(site, "compressor", "cut_in") or _mark(site, "compressor", "cut_out")
+    yield from _row("pressure switch", f"starts at {starts}, stops at {stops} gauge{mark}")
+    night = "off" if compressor.off_when_closed else "left on"
+    mark = _mark(site, "compressor", "off_when_closed")
+    yield from _row("when closed", f"{night} outside working hours{mark}")
+
+
+def _sensors(site: Site) -> Iterator[str]:
+    if not site.sensors:
+        yield "  none"
+    for config in site.sensors:
+        yield from _row(config.id, f"{config.driver} at {'; '.join(_places(config))}")
+        for channel in site.channels.values():
+            if channel.sensor == config.id:
+                yield from _row("", channel.name)
+
+
+def _places(config: SensorConfig) -> tuple[str, ...]:
+    driver = DRIVERS.get(config.driver)
+    return driver.occupies(config) if driver is not None else ("an unknown place",)
+
+
+# --- what is assumed -------------------------------------------------------------------------
+
+
+def _assumed(site: Site) -> tuple[str, ...]:
+    """Every default by table; what the values are worth when nobody says comes last."""
+    lines: list[str] = []
+    for table in dict.fromkeys(each.table for each in site.defaults):
+        lines.append(f"[{table}]")
+        for each in site.defaults:
+            if each.table == table:
+                lines.extend(_default(each))
+    return tuple(lines)
+
+
+def _default(each: DefaultUsed) -> list[str]:
+    text = f"{each.key} = {each.value}" if each.key else each.value
+    if len(text) + len(each.because) + 6 <= WIDTH:
+        return [f"  {text:<46}  {each.because}"]
+    return [
+        f"  {text}",
+        *textwrap.wrap(each.because, WIDTH, initial_indent=" " * 50, subsequent_indent=" " * 50),
+    ]
+
+
+def _mark(site: Site, table: str, key: str) -> str:
+    """ " (not said)" behind a value that is a default."""
+    found = any(each.table == table and each.key == key for each in site.defaults)
+    return " (not said)" if found else ""
+
+
+def _row(name: str, text: str) -> list[str]:
+    head = f"  {name:<{_NAME - 2}}"
+    return textwrap.wrap(
+        text,
+        WIDTH,
+        initial_indent=head + (" " if len(head) > _NAME else ""),
+        subsequent_indent=" " * _NAME,
+        break_long_words=False,
+        break_on_hyphens=False,
+    )
+
+
+def _items(sentences: Sequence[str]) -> tuple[str, ...]:
+    lines: list[str] = []
+    for sentence in sentences:
+        lines += textwrap.wrap(
+            sentence,
+            WIDTH,
+            initial_indent="  - ",
+            subsequent_indent="    ",
+            break_long_words=False,
+            break_on_hyphens=False,
+        )
+    return tuple(lines)
