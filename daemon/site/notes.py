@@ -95,10 +95,11 @@ class Notes:
                     break
         self.problems.extend(references[0].problem for references in self._unknown.values())
 
-    def problems_of(self, what: str) -> bool:
-        """Whether any table of a list ("station") has a problem with its place in the line."""
+    def shape_known(self) -> bool:
+        """Whether no station has a problem with its place in the line, and none is lost."""
         keys = ("id", "after", "kind", "")
-        return any(p.table.startswith(what) and p.key in keys for p in self.problems)
+        placed = not any(p.table.startswith("station") and p.key in keys for p in self.problems)
+        return placed and not self._unnamed
 
     def default(self, table: str, key: str, value: str, because: str) -> None:
         """Remember a value that nobody said."""

@@ -142,7 +142,7 @@ def _tell_outlets_at_intake(drafts: Sequence[OutletDraft], stations: Sequence[Dr
 
 def _line_end(notes: Notes, stations: Sequence[Draft]) -> list[Outlet]:
     last = ends(stations)
-    if len(last) > 1 and not notes.problems_of("station"):
+    if len(last) > 1 and notes.shape_known():
         notes.problem(
             "outlet",
             "",

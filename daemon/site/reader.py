@@ -10,7 +10,7 @@ from pathlib import Path
 
 import sensors.drivers  # noqa: F401  # fills DRIVERS
 from daemon.errors import Problem, SiteError
-from daemon.moisture.description import Line
+from daemon.moisture.description import Compressor, Line
 from daemon.site.assume import Assumptions, complete_line, station_of
 from daemon.site.calendar import HOURS_KEYS, read_hours
 from daemon.site.compressor import COMPRESSOR_KEYS, choose_running, read_compressor
@@ -33,7 +33,7 @@ from daemon.site.sections import (
     read_site_table,
 )
 from daemon.site.shape import tell_circular_rules, tell_loops
-from daemon.site.stations import STATION_KEYS, open_stations, read_stations
+from daemon.site.stations import STATION_KEYS, Draft, open_stations, read_stations
 from daemon.site.table import Table
 from daemon.site.trap_sensors import tell_traps
 from daemon.site.types import Site
