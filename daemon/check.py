@@ -6,7 +6,7 @@ Written for a tired person in a shop: plain words, in line order, under 100 colu
 from __future__ import annotations
 
 import textwrap
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 
 from daemon.moisture.description import (
@@ -38,10 +38,16 @@ __all__ = ["Section", "defaults_table", "explain", "render", "sections"]
 
 WIDTH = 96
 _NAME = 20  # columns of a value's name
-CAUTIONS = (
+_BECAUSE = 50  # the column at which a default's reason begins
+_ZONE = (
     "No Pi, sensor, cable, button or phone in the booth or near its openings unless rated for "
-    "that zone: ask whoever zoned it (29 CFR 1910.107 in the US, elsewhere the local rules for "
-    "explosive atmospheres).",
+    "that zone: ask whoever zoned it"
+)
+_RULES = {
+    "us": " (29 CFR 1910.107).",
+    "metric": " (the local rules for explosive atmospheres).",
+}
+_CAUTIONS = (
     "The compressor starts by itself: isolate and lock it before touching belts or fittings. "
     "Discharge pipes burn.",
     "Never drill, weld or plug a receiver; no valve between it and its safety valve. Sensors go "
@@ -78,9 +84,10 @@ def sections(site: Site) -> list[Section]:
         Section("The compressor", tuple(_compressor(site))),
         Section("Sensors", tuple(_sensors(site))),
         Section("Not said, so taken to be (write the key to say otherwise)", _assumed(site)),
+        Section("Give or take not said, so taken to be", _widths(site)),
         Section("Checked, but without effect as yet", _items(site.without_effect)),
         Section("Remarks", _items(site.remarks)),
-        Section("Cautions", _items(CAUTIONS)),
+        Section("Cautions", _items((_ZONE + _RULES[site.units], *_CAUTIONS))),
     ]
 
 
@@ -285,24 +292,44 @@ def _places(config: SensorConfig) -> tuple[str, ...]:
 
 
 def _assumed(site: Site) -> tuple[str, ...]:
-    """Every default by table; what the values are worth when nobody says comes last."""
+    """Every default with its reason, by table."""
+    return _by_table(each for each in site.defaults if not each.key.endswith("give_or_take"))
+
+
+def _widths(site: Site) -> tuple[str, ...]:
+    """What values are worth that are said without a give_or_take."""
+    found = [each for each in site.defaults if each.key.endswith(".give_or_take")]
     lines: list[str] = []
-    for table in dict.fromkeys(each.table for each in site.defaults):
+    for table in dict.fromkeys(each.table for each in found):
+        worth = [
+            f"{each.key.removesuffix('.give_or_take')} {each.value}"
+            for each in found
+            if each.table == table
+        ]
+        lines += textwrap.wrap(
+            f"[{table}] {', '.join(worth)}", WIDTH, initial_indent="  ", subsequent_indent="    "
+        )
+    return tuple(lines)
+
+
+def _by_table(found: Iterable[DefaultUsed]) -> tuple[str, ...]:
+    tables: dict[str, list[DefaultUsed]] = {}
+    for each in found:
+        tables.setdefault(each.table, []).append(each)
+    lines: list[str] = []
+    for table, rows in tables.items():
         lines.append(f"[{table}]")
-        for each in site.defaults:
-            if each.table == table:
-                lines.extend(_default(each))
+        for each in rows:
+            lines += _default(each)
     return tuple(lines)
 
 
 def _default(each: DefaultUsed) -> list[str]:
-    text = f"{each.key} = {each.value}" if each.key else each.value
-    if len(text) + len(each.because) + 6 <= WIDTH:
-        return [f"  {text:<46}  {each.because}"]
-    return [
-        f"  {text}",
-        *textwrap.wrap(each.because, WIDTH, initial_indent=" " * 50, subsequent_indent=" " * 50),
-    ]
+    text = f"  {each.key} = {each.value}" if each.key else f"  {each.value}"
+    because = textwrap.wrap(each.because, WIDTH - _BECAUSE) or [""]
+    if len(text) < _BECAUSE - 1:
+        text = f"{text:<{_BECAUSE}}{because.pop(0)}".rstrip()
+    return [text, *(" " * _BECAUSE + line for line in because)]
 
 
 def _mark(site: Site, table: str, key: str) -> str:

@@ -97,7 +97,11 @@ def _trap(
 
 def _drain(inner: Table) -> DrainKind:
     drain = inner.value(
-        "drain", choice(DRAINS, "kind of drain"), "petcock", '"petcock"', "said nothing"
+        "drain",
+        choice(DRAINS, "kind of drain"),
+        "petcock",
+        '"petcock"',
+        "what a drain is, unless said",
     )
     if drain not in ("petcock", "none"):
         inner.notes.no_effect(
