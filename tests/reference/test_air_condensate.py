@@ -7,6 +7,7 @@ import itertools
 import pytest
 from CoolProp.CoolProp import HAPropsSI
 
+from daemon import units
 from daemon.moisture import air
 
 ZERO_C = 273.15
@@ -139,11 +140,13 @@ def test_eleven_kelvin_halve_what_air_can_hold(celsius: float) -> None:
 
 
 # Common practice, no source: at 120 psi gauge the ratio of compression at sea level is 9.2, not
-# 8.2, for a gauge reads from the atmosphere. What air can hold falls by that ratio; the enhancement
-# factor and the vapor's own share move it by 3 % and 2 %.
+# 8.2, for a gauge reads from the atmosphere (9.16 by arithmetic). What air can hold falls by that
+# ratio; the enhancement factor and the vapor's own share move it by 3 % and 2 %.
 def test_gauges_read_from_the_atmosphere() -> None:
     kelvin = fahrenheit(68)
-    line_pa = ATMOSPHERE_PA + 120 * PSI_PA
+    written = units.parse_pressure("120 psi")
+    assert written.gauge
+    line_pa = ATMOSPHERE_PA + written.value_pa
     assert line_pa / ATMOSPHERE_PA == pytest.approx(9.16, abs=0.01)
     ratio = air.saturated_humidity_ratio(kelvin, ATMOSPHERE_PA) / air.saturated_humidity_ratio(
         kelvin, line_pa
