@@ -5,14 +5,11 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Literal
 
-import numpy as np
-import numpy.typing as npt
-
 from daemon.clock import parse_rfc3339
 from daemon.moisture.description import WATER_KG_PER_M3
 from daemon.site.types import Units
-from daemon.unit_tables import UNITS, Kind
-from daemon.units import show_volume, to_si
+from daemon.unit_tables import Kind
+from daemon.units import from_si, show_volume, to_si
 from sensors.reading import Quantity
 
 VolumeUnit = Literal["ml", "L", "oz", "gal"]
@@ -41,7 +38,6 @@ _UNITS: dict[Quantity, tuple[str, str, str]] = {
     "dew_point": ("K", "degC", "degF"),
     "free_air_flow": ("m3/s", "L/min", "cfm"),
 }
-Values = npt.NDArray[np.float64]
 
 
 @dataclass(frozen=True, slots=True)
@@ -49,19 +45,17 @@ class Shown:
     """How a quantity is shown: the unit's name, and the way there from SI."""
 
     unit: str
-    factor: float
-    before: float
+    kind: Kind
 
-    def from_si(self, values: Values) -> Values:
-        return values / self.factor - self.before
+    def from_si(self, value: float) -> float:
+        return from_si(value, "" if self.unit == "1" else self.unit, self.kind)
 
 
 def shown_in(quantity: Quantity, units: ShownIn, site_units: Units) -> Shown:
     """How to show a quantity in SI, in the site's units, or in a named system."""
     system = site_units if units == "site" else units
     unit = _UNITS[quantity][("si", "metric", "us").index(system)]
-    factor, before = UNITS[_KINDS[quantity]]["" if unit == "1" else unit]
-    return Shown(unit, factor, before)
+    return Shown(unit, _KINDS[quantity])
 
 
 def si_unit(quantity: Quantity) -> str:

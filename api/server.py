@@ -73,7 +73,10 @@ class ApiServer:
             raise ServerError("the API server was started before; make a new one")
         listener = _listen(self._host, self._port)
         self._port = listener.getsockname()[1]
-        self._thread = threading.Thread(target=self._serve, args=(listener,), name="api")
+        # daemon=True: if the daemon dies of an error, this thread must not keep the process alive
+        self._thread = threading.Thread(
+            target=self._serve, args=(listener,), name="api", daemon=True
+        )
         self._thread.start()
         self._uvicorn.settled.wait(START_WITHIN_S)
         if not self._uvicorn.started:

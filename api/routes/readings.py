@@ -83,9 +83,9 @@ def _readings_out(
 ) -> ReadingsOut:
     shown = shown_in(channel.quantity, units, daemon.site.units)
     times = _times(series)
-    values = shown.from_si(series.values).tolist()
+    values = series.values.tolist()
     if units != "si":  # in SI the recorded value goes out to the last bit
-        values = [float(f"{value:.{PLACES}g}") for value in values]
+        values = [float(f"{shown.from_si(value):.{PLACES}g}") for value in values]
     bad = np.isnan(series.values)
     # Checked here and not again by the model: for a week of readings that would take seconds.
     return ReadingsOut.model_construct(
