@@ -102,5 +102,5 @@ def service_message(
 
 
 def encode(payload: Mapping[str, object]) -> bytes:
-    """A payload as JSON in UTF-8."""
-    return json.dumps(payload, ensure_ascii=False, allow_nan=False).encode()
+    """A payload as JSON in UTF-8; half a surrogate pair, which UTF-8 lacks, becomes "?"."""
+    return json.dumps(payload, ensure_ascii=False, allow_nan=False).encode(errors="replace")

@@ -7,7 +7,7 @@ times are RFC 3339 in UTC.
 from __future__ import annotations
 
 import json
-import math
+import sys
 from typing import Any, Literal, get_args
 
 from daemon.alarms import Alarm, Transition
@@ -20,6 +20,7 @@ Service = Literal["running", "stopped", "gone"]
 
 ML_PER_KG = 1000.0
 _MOST_BYTES = 4096
+_LARGEST = sys.float_info.max
 _TEXTS = ("by", "look", "key")
 _KEYS = ("trap", "outcome", "volume_ml", "at", *_TEXTS)
 _OUTCOMES: tuple[str, ...] = get_args(Outcome)
@@ -124,16 +125,16 @@ def millilitres(volume_kg: float) -> int:
 def read_drain(payload: bytes) -> tuple[Drain, int | None, str]:
     """An inbound drain: the body, when it happened (us, None when not said) and its key.
 
-    All but `trap` may be left out: without an outcome it was emptied, or empty when the volume is
-    0. JournalError says what is wrong; whether the trap exists and can hold that much is for
-    whoever records the drain to judge.
+    All but `trap` may be left out or null: without an outcome it was emptied, or empty when the
+    volume is 0. JournalError says what is wrong; whether the trap exists and can hold that much is
+    for whoever records the drain to judge.
     """
     fields = _object(payload)
     unknown = sorted(set(fields) - set(_KEYS))
     if unknown:
         raise JournalError(f"unknown key {unknown[0]!r}: a drain has {', '.join(_KEYS)}")
     trap = fields.get("trap")
-    if not isinstance(trap, str) or not trap:
+    if not isinstance(trap, str) or not trap or not trap.isprintable():
         raise JournalError(f"trap is {_shown(trap)}: say which trap was drained, by its name")
     volume_ml = _volume_ml(fields.get("volume_ml"))
     outcome = fields.get("outcome", "empty" if volume_ml == 0.0 else "emptied")
@@ -162,13 +163,13 @@ def _object(payload: bytes) -> dict[str, Any]:
         raise JournalError(f"not a JSON object in UTF-8: {error}") from error
     if not isinstance(fields, dict):
         raise JournalError(f'{_shown(fields)} is not an object: write {{"trap": "...", ...}}')
-    return fields
+    return {name: value for name, value in fields.items() if value is not None}
 
 
 def _volume_ml(value: object) -> float | None:
     if value is None:
         return None
-    if isinstance(value, int | float) and not isinstance(value, bool) and 0 <= value < math.inf:
+    if isinstance(value, int | float) and not isinstance(value, bool) and 0 <= value <= _LARGEST:
         return float(value)
     raise JournalError(
         f"volume_ml is {_shown(value)}: write millilitres, 0 or more, or leave it out when it was "

@@ -1,4 +1,4 @@
-"""Brokers for tests: a private mosquitto, one that the test plays itself, and a listener."""
+"""Brokers for tests: a private mosquitto, one that the test plays itself; a listener, a site."""
 
 from __future__ import annotations
 
@@ -18,6 +18,9 @@ from typing import Any, Self
 from paho.mqtt.client import Client, MQTTMessage
 from paho.mqtt.enums import CallbackAPIVersion
 
+from daemon.moisture.description import Compressor, Fixed, Line
+from daemon.site.types import Api, Cup, Hours, Mqtt, Site
+
 TIMEOUT_S = 30.0  # no test waits so long unless something is broken
 
 _CONFIG = """
@@ -31,6 +34,27 @@ log_dest stderr
 log_type all
 {extra}
 """
+
+
+def a_site(port: int, **mqtt: Any) -> Site:
+    """An invented site without sensors, whose broker listens on that port."""
+    nothing = Fixed(0.0, 0.0)
+    return Site(
+        path="alder-yard.toml",
+        id="alder-yard",
+        name="Alder Yard Finishing",
+        timezone="Europe/Lisbon",
+        units="metric",
+        sample_every_us=10_000_000,
+        hours=Hours(((),) * 7, frozenset(), always_open=True),
+        cup=Cup(),
+        sensors=(),
+        channels={},
+        line=Line((), (), Compressor(nothing, None, nothing, nothing, True), 10.0),
+        outlets=(),
+        mqtt=Mqtt("127.0.0.1", port, **mqtt),
+        api=Api(),
+    )
 
 
 def free_port() -> int:

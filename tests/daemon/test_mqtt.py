@@ -19,10 +19,8 @@ import pytest
 from daemon.clock import SystemClock, parse_rfc3339
 from daemon.errors import BrokerError, JournalError
 from daemon.journal import Body, Drain, Entry
-from daemon.moisture.description import Compressor, Fixed, Line
 from daemon.mqtt import MqttLink, Timing
 from daemon.outbox import Message
-from daemon.site.types import Api, Cup, Hours, Mqtt, Site
 from daemon.store.store import Store
 from daemon.views import Recorded
 from tests.daemon.broker import (
@@ -32,6 +30,7 @@ from tests.daemon.broker import (
     Heard,
     Listener,
     PlayedBroker,
+    a_site,
     free_port,
 )
 
@@ -40,27 +39,6 @@ BASE = "dripleg/alder-yard"
 EVENTS = f"{BASE}/events"
 SERVICE = f"{BASE}/service"
 QUICK = Timing(keepalive_s=1, retry_least_s=0.05, retry_most_s=0.2)
-
-
-def a_site(port: int, **mqtt: Any) -> Site:
-    """An invented site without sensors, whose broker listens on that port."""
-    nothing = Fixed(0.0, 0.0)
-    return Site(
-        path="alder-yard.toml",
-        id="alder-yard",
-        name="Alder Yard Finishing",
-        timezone="Europe/Lisbon",
-        units="metric",
-        sample_every_us=10_000_000,
-        hours=Hours(((),) * 7, frozenset(), always_open=True),
-        cup=Cup(),
-        sensors=(),
-        channels={},
-        line=Line((), (), Compressor(nothing, None, nothing, nothing, True), 10.0),
-        outlets=(),
-        mqtt=Mqtt("127.0.0.1", port, **mqtt),
-        api=Api(),
-    )
 
 
 def event(number: int) -> Message:
@@ -586,6 +564,7 @@ def test_a_drain_is_taken_in(broker: Broker, store: Store, journal: Journal) -> 
     [
         (b"drained!", "not a JSON object in UTF-8"),
         (b"\xff\xfe", "not a JSON object in UTF-8"),
+        (b'{"trap": "\\ud800"}', 'trap is "?": say which trap was drained'),
         (b'{"trap": "riser", "outcome": "empty"}', '"riser" is not a trap of this site'),
         (b'{"trap": "tank", "volume": 380}', "unknown key 'volume': a drain has trap, outcome"),
     ],
