@@ -230,7 +230,8 @@ def joule_thomson_drop(
     Notes
     -----
     (0.2688 - 0.00165 t) K per bar, t in degC: a fit to CoolProp, from 3-8 bar gauge to atmosphere
-    within 0.012 K between 10 and 40 degC, 0.03 K between 0 and 50. Dry air; the jet's own much colder core is no steady state.
+    within 0.012 K between 10 and 40 degC, 0.03 K between 0 and 50. Dry air; the jet's own much
+    colder core is no steady state.
     """
     t = bounds.temperature(temperature_k)
     before = bounds.pressure(pressure_from_pa, "pressure_from_pa")
