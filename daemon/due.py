@@ -48,9 +48,10 @@ def volume_words(site: Site, kg: float) -> str:
 
 
 def interval_words(site: Site, p05_kg: float, p50_kg: float, p95_kg: float) -> str:
-    """ "410 ml (300 ml to 560 ml)"."""
+    """ "410 ml (300 to 560 ml)"."""
     low, middle, high = (volume_words(site, kg) for kg in (p05_kg, p50_kg, p95_kg))
-    return f"{middle} ({low} to {high})"
+    number, unit = low.split(" ", 1)
+    return f"{middle} ({number if high.endswith(f' {unit}') else low} to {high})"
 
 
 def due_words(

@@ -115,9 +115,9 @@ class Shell:
     def _next_due_us(self) -> int:
         """The next point of the grid: after the last tick, and not more than a period ago."""
         now_us = self._clock.now_us()
-        if self._state is None:
-            return now_us
         period_us = self.core.model.period_us
+        if self._state is None:  # the grid begins on a whole period, and so meets full hours
+            return first_at_or_after(0, period_us, max(now_us, self._ticked_us + 1))
         last_us = max(self._state.time_us, self._ticked_us)
         due_us = first_at_or_after(self._grid_us, period_us, max(last_us + 1, now_us - period_us))
         behind = due_us - now_us > 2 * period_us

@@ -22,8 +22,8 @@ from daemon.moisture.plan import Plan
 # than ten of its standard deviations in a million readings.
 SWING_OF_SPAN = 0.05
 SWING_OF_NOISE = 12.0
-SWING_UNTRIED_OF_SPAN = 0.3  # until the noise is known
-NOISE_READINGS = 30  # readings that the noise is averaged over
+MOST_OF_STOCK = 0.5  # of what a receiver holds, what may leave it in one step
+NOISE_READINGS = 30  # that the noise is averaged over; nothing is taken for a swing before
 
 
 @dataclass(frozen=True, slots=True)
@@ -56,7 +56,7 @@ class PumpWatch:
 
     def _swing(self, span_pa: float) -> float:
         if self.readings < NOISE_READINGS:
-            return SWING_UNTRIED_OF_SPAN * span_pa
+            return math.inf
         return max(SWING_OF_SPAN * span_pa, SWING_OF_NOISE * math.sqrt(self.noise_pa2))
 
     def told(self, pressure_pa: float, time_us: int, span_pa: float) -> tuple[PumpWatch, int, int]:
@@ -94,12 +94,13 @@ class AirState:
 
 @dataclass(frozen=True, slots=True)
 class AirMoved:
-    """What moved in one step, kg of dry air, all >= 0. `through` is what leaves each station."""
+    """What moved in one step, kg of dry air, all >= 0."""
 
     drawn: Array  # (members,)
-    used: Array  # (members,)
+    used: Array  # (members,), by all outlets
+    outlets: Array  # (outlets, members), by each
     into: Array  # (stations, members)
-    through: Array  # (stations, members)
+    through: Array  # (stations, members): what leaves each
 
 
 def start(plan: Plan, stored: Array) -> AirState:
@@ -132,54 +133,77 @@ def first_sight(state: AirState, row: int, measured: Array) -> tuple[AirState, A
     return replace(state, seen=seen, **updated), ratio
 
 
+def bias_changed(state: AirState, shift: Array) -> AirState:
+    """The gauges' errors are believed to be others now: what that changes, (receivers, members),
+    is not air that moved."""
+    return replace(state, first=state.first + shift, measured=state.measured + shift)
+
+
 def move(plan: Plan, state: AirState, drawn: Array, measured: Array) -> tuple[AirState, AirMoved]:
     """Advance by one step: `drawn` kg came in (members,), receivers now hold `measured`."""
     total_drawn = state.drawn + drawn
     change = measured - state.first
     cumulative_use = total_drawn - change.sum(axis=0)
-    used_now = np.maximum(state.used, cumulative_use)
-    used = used_now - state.used
-    entered_now = state.entered.copy()
+    used = np.maximum(cumulative_use - state.used, 0.0)
+    entered = np.empty_like(state.entered)
     for row, receiver in enumerate(plan.receivers):
         if receiver in plan.trunk:
-            entered_now[row] = state.entered[row] + drawn
+            entered[row] = drawn
             continue
         below = [plan.receivers.index(other) for other in plan.receivers_below[receiver]]
         wanted = plan.share[receiver] * cumulative_use + change[below].sum(axis=0)
-        entered_now[row] = np.maximum(state.entered[row], wanted)
-    moved = _route(plan, drawn, used, entered_now - state.entered)
-    stored = state.stored.copy()
-    for row, receiver in enumerate(plan.receivers):
-        stored[row] += moved.into[receiver] - moved.through[receiver]
+        entered[row] = np.maximum(wanted - state.entered[row], 0.0)
+    moved = _route(plan, drawn, used, entered)
+    if len(plan.receivers) > 1:
+        moved = _within_stock(plan, state, moved)
+    rows = list(plan.receivers)
     after = replace(
         state,
         measured=measured,
-        stored=stored,
+        stored=state.stored + (moved.into[rows] - moved.through[rows]),
         drawn=total_drawn,
-        used=used_now,
-        entered=entered_now,
+        used=state.used + moved.used,
+        entered=state.entered + moved.into[rows],
     )
     return after, moved
 
 
 def _route(plan: Plan, drawn: Array, used: Array, entered: Array) -> AirMoved:
     """Air into and out of every station, from the ends of the line back to the intake."""
-    count = len(plan.stations)
-    into = np.zeros((count, used.size))
-    through = np.zeros((count, used.size))
-    for station in range(count - 1, -1, -1):
+    shape = (len(plan.stations), used.size)
+    into, through = np.zeros(shape), np.zeros(shape)
+    outlets = np.array([outlet.share for outlet in plan.line.outlets])[:, None] * used
+    for station in range(shape[0] - 1, -1, -1):
         for flow in plan.outflows[station]:
-            if flow.outlet >= 0:
-                through[station] += flow.share * used
-            else:
-                through[station] += into[flow.station]
+            through[station] += outlets[flow.outlet] if flow.outlet >= 0 else into[flow.station]
         if station in plan.receivers:
             into[station] = entered[plan.receivers.index(station)]
-        elif station in plan.trunk:
-            into[station] = drawn
+        elif station in plan.trunk and plan.receivers:
+            into[station] = through[station] = drawn
         else:
             into[station] = through[station]
-    for station in plan.trunk:
-        if station not in plan.receivers and plan.receivers:
-            through[station] = drawn
-    return AirMoved(drawn=drawn, used=used, into=into, through=through)
+    return AirMoved(drawn, used, outlets, into, through)
+
+
+def _within_stock(plan: Plan, state: AirState, moved: AirMoved) -> AirMoved:
+    """Keep what leaves a receiver below what it holds: the noise of several gauges adds up.
+
+    What is held back is still wanted in the next step, since the cumulative sums stand.
+    """
+    into, through, outlets = moved.into.copy(), moved.through.copy(), moved.outlets.copy()
+    scale = np.ones_like(into)
+    for station, parent in enumerate(plan.parent):
+        if station in plan.trunk and station not in plan.receivers:
+            continue
+        if parent >= 0:
+            into[station] *= scale[parent]
+            scale[station] = scale[parent]
+        if station in plan.receivers:
+            stock = MOST_OF_STOCK * state.stored[plan.receivers.index(station)] + into[station]
+            wanted = np.maximum(through[station], 1e-300)
+            scale[station] = np.minimum(1.0, stock / wanted)
+        through[station] *= scale[station]
+        for flow in plan.outflows[station]:
+            if flow.outlet >= 0:
+                outlets[flow.outlet] *= scale[station]
+    return replace(moved, into=into, through=through, outlets=outlets, used=outlets.sum(axis=0))

@@ -192,7 +192,8 @@ class _Step:
         parts: list[Array | float] = []
         rest: Array | float = 1.0
         for flow in self.plan.outflows[i][:-1]:
-            there = self.air.into[flow.station] if flow.station >= 0 else flow.share * self.air.used
+            to_station = flow.station >= 0
+            there = self.air.into[flow.station] if to_station else self.air.outlets[flow.outlet]
             parts.append(there / through)
             rest = rest - parts[-1]
         if self.plan.outflows[i]:

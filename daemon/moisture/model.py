@@ -206,6 +206,9 @@ class Model:
         intake_ratio = np.minimum(self._intake_ratio(now), saturated[0])
         drawn = on_s * self._delivered(state.parameters, now, intake_ratio)
         before, water, ledger = self._sighted(state, now)
+        if offsets is not state.offsets:
+            as_before = replace(evaluation, offsets=state.offsets, lapses=dict(state.lapses))
+            before = self._drift_is_no_flow(before, state, now, as_before.conditions())
         measured = self._measured(before, state.parameters, now, water)
         after, moved = flow.move(plan, before, drawn, measured)
         water, ledger = line.step(
@@ -369,6 +372,15 @@ class Model:
         stored = self._stored(parameters, now, ratio)
         measured[rows] = stored[rows]
         return measured
+
+    def _drift_is_no_flow(
+        self, before: flow.AirState, state: State, now: Conditions, as_before: Conditions
+    ) -> flow.AirState:
+        """The same readings with the old biases and with the new ones: the difference."""
+        water, parameters = state.water, state.parameters
+        with_new = self._measured(before, parameters, now, water)
+        with_old = self._measured(before, parameters, as_before, water)
+        return flow.bias_changed(before, with_new - with_old)
 
     def _sighted(
         self, state: State, now: Conditions
