@@ -6,12 +6,10 @@ from api.models import DrainIn
 from api.problems import Point, Problem
 from api.quantities import ML_PER_KG, VolumeUnit, kg_from_volume, time_us
 from api.validation import shown
-from daemon.clock import MINUTE_US, format_rfc3339
+from daemon.accept import AHEAD_US, MOST_OF_CAPACITY
+from daemon.clock import format_rfc3339
 from daemon.journal import Drain, Outcome
 from daemon.moisture.description import Trap
-
-AHEAD_US = 2 * MINUTE_US  # how far a phone's clock may be ahead of the Pi's
-MOST_CAPACITIES = 2.0  # a cup that holds more than this many full traps was read wrongly
 
 
 def drain_of(body: DrainIn, name: str, trap: Trap, now_us: int) -> tuple[Drain, int | None]:
@@ -41,7 +39,7 @@ def _volume_kg(body: DrainIn, name: str, trap: Trap, points: list[Point]) -> flo
     remedy = ""
     if volume < 0:
         remedy = "a volume is 0 or more; send what the cup read"
-    elif kg > MOST_CAPACITIES * trap.capacity.value:
+    elif kg > MOST_OF_CAPACITY * trap.capacity.value:
         remedy = (
             f'more than twice what the trap "{name}" holds ({trap.capacity.value * ML_PER_KG:g} '
             "ml); check the figure and its unit, or correct the trap's capacity in the site file"

@@ -10,6 +10,7 @@ from typing import Annotated, Literal
 from pydantic import BaseModel, ConfigDict, Field, StringConstraints
 
 from api.quantities import VolumeUnit
+from daemon.accept import LONGEST_KEY, LONGEST_NAME
 from daemon.alarms import Alarm, AlarmState, Priority
 from daemon.clock import format_rfc3339
 from daemon.journal import Acknowledge, Entry, Outcome
@@ -20,10 +21,11 @@ Time = Annotated[
     str, Field(json_schema_extra={"format": "date-time"}, examples=["2026-12-01T09:00:00Z"])
 ]
 Look = Literal["clear", "milky", "oily", "rusty"]
-# one line of text: no control characters, which would spoil logs and messages
-Line = Annotated[
-    str, StringConstraints(min_length=1, max_length=80, pattern=r"^[^\x00-\x1f\x7f-\x9f]*$")
+_NO_CONTROLS = r"^[^\x00-\x1f\x7f-\x9f]*$"  # control characters would spoil logs and messages
+Name = Annotated[
+    str, StringConstraints(min_length=1, max_length=LONGEST_NAME, pattern=_NO_CONTROLS)
 ]
+Key = Annotated[str, StringConstraints(min_length=1, max_length=LONGEST_KEY, pattern=_NO_CONTROLS)]
 
 
 def _time(time_us: int | None) -> str | None:
@@ -96,9 +98,9 @@ class DrainIn(BaseModel):
         description="when it happened, RFC 3339 with an offset; left out: now",
         examples=["2026-12-01T09:00:00Z"],
     )
-    by: Line | None = Field(default=None, description="who opened it", examples=["AM"])
+    by: Name | None = Field(default=None, description="who opened it", examples=["AM"])
     look: Look | None = Field(default=None, description="what the water looked like")
-    key: Line | None = Field(
+    key: Key | None = Field(
         default=None,
         description="any text of your own; the same one again records nothing twice and is "
         "answered with the first entry",
@@ -147,7 +149,7 @@ class AcknowledgeIn(BaseModel):
         extra="forbid", strict=True, json_schema_extra={"examples": [{"by": "AM"}, {}]}
     )
 
-    by: Line | None = Field(default=None, description="who has seen it", examples=["AM"])
+    by: Name | None = Field(default=None, description="who has seen it", examples=["AM"])
 
 
 class AcknowledgeOut(BaseModel):

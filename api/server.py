@@ -82,7 +82,7 @@ class ApiServer:
         if not self._uvicorn.started:
             self.stop()
             raise ServerError(f"the API did not start on {self.url}; the log says why")
-        log.info("API and page on %s", self.url)
+        log.debug("API and page on %s", self.url)
 
     def _serve(self, listener: socket.socket) -> None:
         try:

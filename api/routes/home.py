@@ -98,7 +98,8 @@ def _alarms(daemon: Running) -> Sequence[AlarmLines]:
 
 def _trap(view: TrapView, site: Site) -> TrapLines:
     def words(kg: float) -> str:
-        return volume_words(kg, site.units)
+        # a figure and its unit stay on one line
+        return volume_words(kg, site.units).replace(" ", "\N{NO-BREAK SPACE}")
 
     since = _clock_words(view.last_drain_us, site) if view.last_drain_us is not None else ""
     return TrapLines(

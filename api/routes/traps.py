@@ -6,12 +6,13 @@ from typing import Annotated
 
 from fastapi import APIRouter, Depends, Response
 
-from api.drains import AHEAD_US, drain_of
+from api.drains import drain_of
 from api.guard import writes_allowed
 from api.models import DrainIn, DrainOut, TrapOut
 from api.problems import Problem, answered_by
 from api.routes.running import TheDaemon
 from api.routes.spans import FROM, TO, span
+from daemon.accept import AHEAD_US
 from daemon.moisture.description import Trap
 from daemon.views import Running
 

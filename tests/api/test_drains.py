@@ -195,12 +195,18 @@ REFUSED: list[tuple[dict[str, Any], str, str, str]] = [
         "380",
         "there is no such field here; leave it out, or correct its name",
     ),
-    ({"by": "A" * 81}, "body.by", f'"{"A" * 77}..."', "at most 80 characters are kept here"),
+    ({"by": "A" * 41}, "body.by", f'"{"A" * 41}"', "at most 40 characters are kept here"),
     (
         {"by": "A\nM"},
         "body.by",
         '"A\N{REPLACEMENT CHARACTER}M"',
         "it has characters that cannot be kept (control characters)",
+    ),
+    (
+        {"key": "k" * 201},
+        "body.key",
+        f'"{"k" * 77}..."',
+        "at most 200 characters are kept here",
     ),
     ({"key": ""}, "body.key", '""', "it is empty; leave it out, or say something"),
 ]

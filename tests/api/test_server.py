@@ -137,7 +137,7 @@ def test_a_request_leaves_no_line_in_the_log(
 def test_starting_is_told_once_with_the_address(
     server: ApiServer, caplog: pytest.LogCaptureFixture
 ) -> None:
-    with caplog.at_level(logging.INFO):
+    with caplog.at_level(logging.DEBUG, logger="api"):
         server.start()
     assert [record.getMessage() for record in caplog.records] == [f"API and page on {server.url}"]
 
