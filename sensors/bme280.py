@@ -4,6 +4,10 @@ Wiring: 3.3 V, ground, SDA, SCL; address 0x76 with SDO at ground, 0x77 with SDO 
 SDO open is neither). Keep it out of the sun, out of the compressor's warm exhaust and out of paint
 mist: its humidity element is open to the air.
 
+As a vented cell the same part sits in a small chamber that line air bleeds through, from a needle
+valve to an open end: its humidity and temperature at the cell's (atmospheric) pressure give the dew
+point of the line's air. The chamber must never be closed at its outlet.
+
 Each reading is one forced conversion, oversampling x1, filter off, so that the three values are of
 one instant and the part does not warm itself. The vendor's library sets it up and does the
 compensation; this module moves the bytes, because the library would take 130 bus operations, wait
@@ -13,6 +17,8 @@ BST-BME280-DS002, sections 1.1-1.3 (ranges, accuracy), 5.3-5.4 (registers), appe
 
 from __future__ import annotations
 
+import logging
+import weakref
 from collections.abc import Sequence
 from typing import Any
 
@@ -36,10 +42,15 @@ _SLEEP_X1 = 0x24  # temperature x1, pressure x1, sleep
 # the standby time has no effect in forced mode; we write one that the part never has after a
 # reset, so that a part that lost power shows it
 _MARK = 0xA0
+_DAMAGED_BITS = 8
+# what parts said when first opened, by bus and address: a changed bit has no other witness
+_KNOWN: weakref.WeakKeyDictionary[Any, dict[int, bytes]] = weakref.WeakKeyDictionary()
 _POLLS = 5
 _POLL_S = 0.002
 _UNMEASURED = (0x80000, 0x80000, 0x8000)  # section 5.4.7: a measurement that was skipped
 _FULL = (0xFFFFF, 0xFFFFF, 0xFFFF)
+
+log = logging.getLogger(__name__)
 
 
 class _Registers:
@@ -130,6 +141,19 @@ class Bme280:
                 raise self._fault(reasons.CALIBRATION, f"register 0x{start:02x} does not repeat")
             if length > 1 and len(set(first)) == 1:
                 raise self._fault(reasons.CALIBRATION, f"all bytes are 0x{first[0]:02x}")
+        self._compare_with_before(b"".join(read[key] for key in sorted(read)))
+
+    def _compare_with_before(self, words: bytes) -> None:
+        """Another part differs in dozens of bits; one that differs in a few has been damaged."""
+        known = _KNOWN.setdefault(self._hardware.i2c(self._bus_number), {})
+        before = known.get(self._address, words)
+        differ = sum((a ^ b).bit_count() for a, b in zip(before, words, strict=True))
+        if 0 < differ <= _DAMAGED_BITS:
+            detail = f"{differ} of its bits changed since it was opened first"
+            raise self._fault(reasons.CALIBRATION, detail)
+        if differ:
+            log.warning("%s: another part is on the address now", self._id)
+        known[self._address] = words
 
     def _measure(self) -> bytes:
         """One forced conversion: the eight data bytes."""
@@ -191,17 +215,39 @@ def channels(config: SensorConfig) -> tuple[Channel, ...]:
     )
 
 
+_KEYS = (
+    Key("bus", keys.whole(0, 99), 1, "number of the I2C bus: 1 is /dev/i2c-1"),
+    Key("address", keys.address(0x76, 0x77), 0x76, "0x76, or 0x77 with SDO at 3.3 V"),
+)
+
+
+def _occupies(config: SensorConfig) -> tuple[str, ...]:
+    return (f"bus {config.settings['bus']} address 0x{config.settings['address']:02x}",)
+
+
+def _bus(config: SensorConfig) -> str:
+    return f"i2c-{config.settings['bus']}"
+
+
 BME280 = register(
     Driver(
         name="bme280",
         summary="air temperature, relative humidity and barometric pressure",
-        keys=(
-            Key("bus", keys.whole(0, 99), 1, "number of the I2C bus: 1 is /dev/i2c-1"),
-            Key("address", keys.address(0x76, 0x77), 0x76, "0x76, or 0x77 with SDO at 3.3 V"),
-        ),
+        keys=_KEYS,
         channels=channels,
-        occupies=lambda c: (f"bus {c.settings['bus']} address 0x{c.settings['address']:02x}",),
-        bus=lambda c: f"i2c-{c.settings['bus']}",
+        occupies=_occupies,
+        bus=_bus,
+        open=Bme280,
+    )
+)
+VENTED_CELL = register(
+    Driver(
+        name="vented-cell",
+        summary="a BME280 in a chamber through which line air bleeds to the atmosphere",
+        keys=_KEYS,
+        channels=channels,
+        occupies=_occupies,
+        bus=_bus,
         open=Bme280,
     )
 )

@@ -1,7 +1,8 @@
 """Contact: a switch that is open or closed, on a GPIO line, with its edges at their own times.
 
-Used for the compressor's run and loaded contacts. Wiring: see `sensors/lines.py`; as it comes, the
-contact pulls the line to ground and the Pi's pull-up holds it high while it is open.
+Used for the compressor's run and loaded contacts, a float switch in a trap, and the push button
+beside a trap that says "drained". Wiring: see `sensors/lines.py`; as it comes, the contact pulls
+the line to ground and the Pi's pull-up holds it high while it is open.
 
 An edge comes out of the kernel once the line was quiet for the debounce time, so both edges are
 late by that time and a run's length is right.
@@ -26,6 +27,11 @@ LINE_KEYS = (
     ),
     Key("line", keys.whole(0, 511), meaning="the line's number on the chip: GPIO 17 is 17"),
     Key("pull", keys.choice("up", "down", "none"), "up", "the Pi's own resistor on the line"),
+)
+TRAP_KEY = Key(
+    "trap",
+    keys.text(r"[a-z0-9][a-z0-9-]*", "write the id of the trap's station"),
+    meaning="the trap it belongs to",
 )
 CLOSED_KEY = Key("closed", keys.choice("low", "high"), "low", "the line's level while closed")
 
@@ -131,23 +137,59 @@ def channels(config: SensorConfig) -> tuple[Channel, ...]:
     return (Channel(f"{config.id}.contact", "contact", 1.0, 0.0, 1.0, 0.0),)
 
 
+def _debounce(default_s: float) -> Key:
+    meaning = "how long the line must be quiet before a change counts"
+    return Key("debounce", keys.duration(0.0, 5.0), default_s, meaning)
+
+
+def _occupies(config: SensorConfig) -> tuple[str, ...]:
+    return (f"{config.settings['chip']} line {config.settings['line']}",)
+
+
+def _bus(config: SensorConfig) -> str:
+    return f"gpio {config.settings['chip']}"
+
+
 CONTACT = register(
     Driver(
         name="contact",
-        summary="a switch: compressor running or loaded, a float in a trap, a button beside it",
+        summary="a switch, as the compressor's run or loaded contact",
+        keys=(*LINE_KEYS, CLOSED_KEY, _debounce(0.02)),
+        channels=channels,
+        occupies=_occupies,
+        bus=_bus,
+        open=Contact,
+    )
+)
+FLOAT_SWITCH = register(
+    Driver(
+        name="float-switch",
+        summary="a float in a trap, closed at and above a level",
         keys=(
             *LINE_KEYS,
             CLOSED_KEY,
+            _debounce(2.0),  # the water moves when the compressor starts
+            TRAP_KEY,
             Key(
-                "debounce",
-                keys.duration(0.0, 1.0),
-                0.02,
-                "how long the line must be quiet before a change counts",
+                "closes_at",
+                keys.quantity("volume", 1e-6, 1.0),
+                meaning='what the trap holds when it closes, like "80 ml"',
             ),
         ),
         channels=channels,
-        occupies=lambda c: (f"{c.settings['chip']} line {c.settings['line']}",),
-        bus=lambda c: f"gpio {c.settings['chip']}",
+        occupies=_occupies,
+        bus=_bus,
+        open=Contact,
+    )
+)
+DRAINED_BUTTON = register(
+    Driver(
+        name="drained-button",
+        summary='a push button beside a trap: "I have drained it"',
+        keys=(*LINE_KEYS, CLOSED_KEY, _debounce(0.05), TRAP_KEY),
+        channels=channels,
+        occupies=_occupies,
+        bus=_bus,
         open=Contact,
     )
 )

@@ -2,6 +2,26 @@
 
 from __future__ import annotations
 
-from sensors import bme280, contact, ds18b20, transducer
+from sensors import (
+    bme280,
+    contact,
+    dew_point_modbus,
+    ds18b20,
+    loop,
+    mlx90614,
+    mqtt_channel,
+    pulses,
+    transducer,
+)
 
-__all__ = ["bme280", "contact", "ds18b20", "transducer"]
+__all__ = [
+    "bme280",
+    "contact",
+    "dew_point_modbus",
+    "ds18b20",
+    "loop",
+    "mlx90614",
+    "mqtt_channel",
+    "pulses",
+    "transducer",
+]

@@ -122,3 +122,42 @@ def pressure_range(value: object) -> PressureRange:
     if lowest_pa < (-101_325.0 if gauge else 0.0) or highest_pa > 1e8:
         raise ValueError("write a range that is not below a vacuum and not above 1000 bar")
     return PressureRange(lowest_pa, highest_pa, gauge)
+
+
+@dataclass(frozen=True, slots=True)
+class TemperatureRange:
+    """What a transmitter's signal spans, K."""
+
+    lowest_k: float
+    highest_k: float
+
+    @property
+    def span_k(self) -> float:
+        return self.highest_k - self.lowest_k
+
+
+def temperature_range(value: object) -> TemperatureRange:
+    """`"-60 to 20 degC"`."""
+    lowest_k, highest_k = units.parse_range(value, "temperature")
+    if lowest_k < 150.0 or highest_k > 500.0:
+        raise ValueError("write a range within -123 and 227 degC")
+    return TemperatureRange(lowest_k, highest_k)
+
+
+def quantity(kind: units.Kind, lowest: float, highest: float) -> Callable[[object], float]:
+    """A quantity with its unit, in SI, within limits (SI too)."""
+
+    def read(value: object) -> float:
+        found = units.parse(value, kind)
+        if not lowest <= found <= highest:
+            raise ValueError(f"write a {kind} from {lowest:g} to {highest:g} in SI units")
+        return found
+
+    return read
+
+
+def yes_or_no(value: object) -> bool:
+    """`true` or `false`."""
+    if not isinstance(value, bool):
+        raise ValueError("write true or false, without quotes")
+    return value

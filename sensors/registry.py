@@ -44,6 +44,14 @@ class Hardware(Protocol):
 
     def lines(self, chip: str) -> Any: ...
 
+    def modbus(self, port: Any) -> Any:
+        """The `sensors.modbus.RegisterReader` of a serial line or a TCP host."""
+        ...
+
+    def inbox(self) -> Any:
+        """The `sensors.inbox.Inbox` that the MQTT client fills."""
+        ...
+
     def wait(self, seconds: float) -> None:
         """Let a part work that long. Emulated parts have finished without any real waiting."""
         ...
@@ -64,6 +72,8 @@ class Driver:
     open: Callable[[SensorConfig, Hardware], Sensor]
     # a read takes longer than a tick may wait: its readings come with a later tick
     slow: bool = False
+    # keys that are each right but do not go together: (key, what to write instead)
+    clashes: Callable[[SensorConfig], tuple[tuple[str, str], ...]] = lambda config: ()
 
 
 DRIVERS: dict[str, Driver] = {}

@@ -1,4 +1,4 @@
-"""An emulated ADS1115 with what hangs on its inputs, and transducers set in gauge pressure.
+"""An emulated ADS1115 with what hangs on its inputs: transducers and current loops.
 
 Source: SBAS444, sections 8.3 (multiplexer, full scale, codes), 8.6 (registers), 6.3 (inputs).
 """
@@ -9,6 +9,7 @@ from dataclasses import dataclass, field
 from typing import Protocol
 
 from sensors.emulated.bus import EmulatedI2C, Registers
+from sensors.emulated.loop import CurrentLoop
 
 _CONVERSION, _CONFIG = 0, 1
 _POWER_ON = 0x8583
@@ -83,6 +84,14 @@ class EmulatedAds1115(Registers):
         there = self.inputs.get(number)
         if not isinstance(there, Transducer):
             there = Transducer(lowest_pa, highest_pa, self.rail, divider)
+            self.inputs[number] = there
+        return there
+
+    def loop(self, number: int, lowest: float, highest: float, resistor_ohm: float) -> CurrentLoop:
+        """A 4-20 mA transmitter on an input; the one there already, if there is."""
+        there = self.inputs.get(number)
+        if not isinstance(there, CurrentLoop):
+            there = CurrentLoop(lowest, highest, resistor_ohm, value=lowest)
             self.inputs[number] = there
         return there
 

@@ -7,6 +7,7 @@ the size that parts have.
 
 from __future__ import annotations
 
+import random
 import struct
 from collections.abc import Callable
 from dataclasses import dataclass
@@ -100,7 +101,9 @@ class EmulatedBme280(Registers):
         self.flipped_data_bit: int | None = None  # of 64, in every second read of the data
         self.flipped_calibration_bit: int | None = None  # of 208, in every second read
         self.frozen = False  # goes on answering with its last conversion
+        self.noisy = False  # each conversion differs a little, as a real one does
         self.conversions = 0
+        self._random = random.Random(1)
         self.replace(calibration or Calibration())
 
     def replace(self, calibration: Calibration) -> None:
@@ -187,27 +190,35 @@ class EmulatedBme280(Registers):
 
         Filter off, oversampling x1: 16 bits (sections 3.4.2, 3.4.3), one bit more each doubling.
         """
-        step_t, step_p = (1 << max(0, 4 - (n.bit_length() - 1)) if n else 1 for n in (t, p))
-        raw_t = raw_p = 0x80000
-        raw_h = 0x8000
-        wanted = (self.temperature_k - 273.15) * 5120.0
-        found = _invert(lambda raw: fine_temperature(self.calibration, raw), wanted, 20, step_t)
-        fine = float(int(fine_temperature(self.calibration, found)))
-        if t:
-            raw_t = found
-        if p:
-            raw_p = _invert(
-                lambda raw: pressure_pa(self.calibration, raw, fine), self.pressure_pa, 20, step_p
-            )
-        if h:
-            raw_h = _invert(
-                lambda raw: relative_humidity(self.calibration, raw, fine),
-                self.relative_humidity,
-                16,
-                1,
-            )
-        return (
-            (raw_p << 4).to_bytes(3, "big")
-            + (raw_t << 4).to_bytes(3, "big")
-            + (raw_h.to_bytes(2, "big"))
+        step_t, step_p = (1 << max(0, 5 - n.bit_length()) if n else 1 for n in (t, p))
+        raw_t, fine = self._raw_temperature(step_t)
+        words = (
+            self._noisy(self._raw_pressure(fine, step_p), step_p) if p else 0x80000,
+            self._noisy(raw_t, step_t) if t else 0x80000,
+            self._noisy(self._raw_humidity(fine), 1) if h else 0x8000,
         )
+        pressure, temperature, humidity = words
+        return (
+            (pressure << 4).to_bytes(3, "big")
+            + (temperature << 4).to_bytes(3, "big")
+            + humidity.to_bytes(2, "big")
+        )
+
+    def _raw_temperature(self, step: int) -> tuple[int, float]:
+        """The word, and the fine temperature that the other two are compensated with."""
+        words = self.calibration
+        wanted = (self.temperature_k - 273.15) * 5120.0
+        raw = _invert(lambda n: fine_temperature(words, n), wanted, 20, step)
+        return raw, float(int(fine_temperature(words, raw)))
+
+    def _raw_pressure(self, fine: float, step: int) -> int:
+        words = self.calibration
+        return _invert(lambda n: pressure_pa(words, n, fine), self.pressure_pa, 20, step)
+
+    def _raw_humidity(self, fine: float) -> int:
+        words = self.calibration
+        return _invert(lambda n: relative_humidity(words, n, fine), self.relative_humidity, 16, 1)
+
+    def _noisy(self, raw: int, step: int) -> int:
+        """About a count each way: 3.3 Pa and 5 mK at oversampling x1 (section 3.5.1)."""
+        return raw + step * self._random.randint(-1, 1) if self.noisy else raw

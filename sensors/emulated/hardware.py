@@ -8,18 +8,20 @@ from __future__ import annotations
 
 import tempfile
 import threading
-from collections.abc import Callable, Iterable
+from collections.abc import Iterable
 from pathlib import Path
 
 from sensors.emulated.ads1115 import EmulatedAds1115
 from sensors.emulated.bme280 import EmulatedBme280
 from sensors.emulated.bus import EmulatedI2C
 from sensors.emulated.ds18b20 import EmulatedDs18b20
+from sensors.emulated.fit import Setter, fit
 from sensors.emulated.lines import EmulatedLine, EmulatedLines
+from sensors.emulated.mlx90614 import EmulatedMlx90614
+from sensors.emulated.modbus import EmulatedModbusLine
+from sensors.inbox import Inbox
+from sensors.modbus import ModbusPort
 from sensors.registry import SensorConfig
-
-# a channel's setter: (value in SI, wall-clock microseconds)
-Setter = Callable[[float, int], None]
 
 
 class EmulatedHardware:
@@ -33,6 +35,8 @@ class EmulatedHardware:
         self._buses: dict[int, EmulatedI2C] = {}
         self._probes: dict[str, EmulatedDs18b20] = {}
         self._chips: dict[str, EmulatedLines] = {}
+        self._modbus: dict[ModbusPort, EmulatedModbusLine] = {}
+        self._inbox = Inbox()
 
     # what drivers ask for
 
@@ -46,6 +50,13 @@ class EmulatedHardware:
     def lines(self, chip: str) -> EmulatedLines:
         with self._lock:
             return self._chips.setdefault(chip, EmulatedLines())
+
+    def modbus(self, port: ModbusPort) -> EmulatedModbusLine:
+        with self._lock:
+            return self._modbus.setdefault(port, EmulatedModbusLine())
+
+    def inbox(self) -> Inbox:
+        return self._inbox
 
     def wait(self, seconds: float) -> None:
         """No real time passes; the buses' own time does."""
@@ -81,6 +92,11 @@ class EmulatedHardware:
         assert isinstance(part, EmulatedAds1115), f"0x{address:02x} is another part"
         return part
 
+    def mlx90614(self, bus: int, address: int) -> EmulatedMlx90614:
+        part = self.i2c(bus).parts.setdefault(address, EmulatedMlx90614(address))
+        assert isinstance(part, EmulatedMlx90614), f"0x{address:02x} is another part"
+        return part
+
     def ds18b20(self, serial: str) -> EmulatedDs18b20:
         with self._lock:
             if serial not in self._probes:
@@ -92,57 +108,4 @@ class EmulatedHardware:
 
     def fit(self, sensors: Iterable[SensorConfig]) -> dict[str, Setter]:
         """Put in the parts of these sensors; a setter for every channel, by its name."""
-        setters: dict[str, Setter] = {}
-        for config in sensors:
-            setters |= _FITTERS[config.driver](self, config)
-        return setters
-
-
-def _attribute(part: object, name: str) -> Setter:
-    def put(value: float, _now_us: int) -> None:
-        setattr(part, name, value)
-
-    return put
-
-
-def _fit_bme280(hardware: EmulatedHardware, config: SensorConfig) -> dict[str, Setter]:
-    part = hardware.bme280(config.settings["bus"], config.settings["address"])
-    return {
-        f"{config.id}.temperature": _attribute(part, "temperature_k"),
-        f"{config.id}.relative_humidity": _attribute(part, "relative_humidity"),
-        f"{config.id}.pressure": _attribute(part, "pressure_pa"),
-    }
-
-
-def _fit_transducer(hardware: EmulatedHardware, config: SensorConfig) -> dict[str, Setter]:
-    settings = config.settings
-    adc = hardware.ads1115(settings["bus"], settings["address"])
-    span = settings["range"]
-    part = adc.transducer(settings["input"], span.lowest_pa, span.highest_pa, settings["divider"])
-    if settings["supply_input"] is not None:
-        adc.read_rail(settings["supply_input"], settings["divider"])
-    return {f"{config.id}.pressure": _attribute(part, "pressure_pa")}
-
-
-def _fit_ds18b20(hardware: EmulatedHardware, config: SensorConfig) -> dict[str, Setter]:
-    part = hardware.ds18b20(config.settings["serial"])
-    return {f"{config.id}.temperature": _attribute(part, "temperature_k")}
-
-
-def _fit_contact(hardware: EmulatedHardware, config: SensorConfig) -> dict[str, Setter]:
-    line = hardware.line(config.settings["chip"], config.settings["line"])
-    closed = int(config.settings["closed"] == "high")
-
-    def put(value: float, now_us: int) -> None:
-        line.set(now_us * 1000, closed if value else 1 - closed)
-
-    put(0.0, 0)
-    return {f"{config.id}.contact": put}
-
-
-_FITTERS: dict[str, Callable[[EmulatedHardware, SensorConfig], dict[str, Setter]]] = {
-    "bme280": _fit_bme280,
-    "pressure-transducer": _fit_transducer,
-    "ds18b20": _fit_ds18b20,
-    "contact": _fit_contact,
-}
+        return fit(self, sensors)

@@ -212,3 +212,33 @@ def test_close_may_be_called_twice_and_a_read_opens_again(sensor: Sensor) -> Non
     sensor.close()
     sensor.close()
     assert len(sensor.read(START_US)) == 3
+
+
+def test_a_bit_that_changed_in_the_parts_memory_is_seen_when_it_is_opened_again(
+    part: EmulatedBme280, sensor: Sensor
+) -> None:
+    sensor.read(START_US)
+    part.damage_calibration(0x8B, 5)
+    part.brown_out()
+    assert fault_of(sensor) == reasons.WAS_RESET
+    for _ in range(3):
+        assert fault_of(sensor) == reasons.CALIBRATION
+    part.damage_calibration(0x8B, 5)
+    assert values(sensor.read(START_US))["temperature"] == pytest.approx(293.15, abs=0.01)
+
+
+def test_twelve_channels_take_less_than_60_ms_of_bus_time(hardware: EmulatedHardware) -> None:
+    # the waits for conversions counted in; SCL at 100 kHz, the kernel's default on a Pi
+    readers = []
+    for number in (1, 3):
+        for address in (0x76, 0x77):
+            one = config(f"air-{number}-{address}", "bme280", bus=number, address=address)
+            hardware.fit([one])
+            readers.append(open_part(one, hardware))
+    buses = [hardware.i2c(number) for number in (1, 3)]
+    before = [bus.busy_s for bus in buses]
+    waited = buses[0].waited_s
+    channels = sum(len(sensor.read(START_US)) for sensor in readers)
+    assert channels == 12
+    busy_s = sum(bus.busy_s - first for bus, first in zip(buses, before, strict=True))
+    assert busy_s + (buses[0].waited_s - waited) < 0.060

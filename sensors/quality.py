@@ -1,0 +1,258 @@
+"""Judges readings that a part gave without complaint: range, rate, frozen, saturated, disagreement.
+
+Pure: a state and a tick's readings in; the next state, the readings with the bad ones marked, and
+the verdicts that began or ended out. The time is the readings' own, so a replay judges as the live
+daemon did. A bad reading is marked with its reason and never replaced.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field, replace
+from statistics import median
+from typing import Literal
+
+from sensors.quality_rules import (
+    ACCEPT_AFTER,
+    DRY_AGAIN,
+    OFF_LONG_S,
+    SATURATED,
+    SATURATED_S,
+    Agreement,
+    Part,
+    Rule,
+    Rules,
+)
+from sensors.reading import Reading
+
+Severity = Literal["bad", "doubt"]
+
+OUT_OF_RANGE = "out of range"
+TOO_FAST = "changes too fast"
+FROZEN = "frozen"
+SATURATED_ELEMENT = "humidity element saturated"
+DISAGREES = "disagrees with its like"
+
+
+@dataclass(frozen=True, slots=True)
+class Verdict:
+    """Something that began or ended to be so of a channel."""
+
+    channel: str
+    at_us: int
+    reason: str
+    severity: Severity  # "bad": its readings are not used; "doubt": two differ, nobody knows which
+    began: bool
+    detail: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class ChannelState:
+    """What is remembered of a channel."""
+
+    value: float = math.nan  # the last one that was believed
+    time_us: int = 0
+    same_since_us: int = 0  # since when it is exactly that
+    ran_us: int = 0  # how long the compressor ran since then
+    jumped: int = 0  # consecutive readings beyond what the rate allows
+    jump_value: float = math.nan  # the last of those
+    wet_since_us: int | None = None
+    wet: bool = False
+    said: Mapping[str, Severity] = field(default_factory=dict)  # verdicts that hold
+
+
+@dataclass(frozen=True, slots=True)
+class State:
+    """What is remembered of all channels."""
+
+    channels: Mapping[str, ChannelState] = field(default_factory=dict)
+    off_since_us: int | None = None
+    last_us: int | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Judged:
+    """A tick's outcome."""
+
+    state: State
+    readings: tuple[Reading, ...]
+    verdicts: tuple[Verdict, ...]
+
+
+def judge(
+    rules: Rules, state: State, readings: Sequence[Reading], *, running: bool | None = None
+) -> Judged:
+    """Judge one tick's readings.
+
+    `running` is whether the compressor ran during the tick; None where nobody knows, and what
+    depends on it is then not judged. Channels without a rule (contacts) pass.
+    """
+    at_us = max((one.time_us for one in readings), default=state.last_us or 0)
+    ran_us = at_us - state.last_us if running and state.last_us is not None else 0
+    off_since_us = None if running is not False else state.off_since_us
+    if running is False and off_since_us is None:
+        off_since_us = at_us
+    channels = dict(state.channels)
+    reasons: dict[int, tuple[str, str]] = {}
+    for number, one in enumerate(readings):
+        rule = rules.channels.get(one.channel)
+        if rule is None or not one.good:
+            continue
+        before = channels.get(one.channel, ChannelState())
+        channels[one.channel], bad = _judge_one(rule, before, one, ran_us)
+        if bad:
+            reasons[number] = bad
+    good = {
+        one.channel: number
+        for number, one in enumerate(readings)
+        if one.good and number not in reasons
+    }
+    for part in rules.parts:
+        reasons |= _frozen_part(part, channels, good, at_us)
+    settled = off_since_us is not None and at_us - off_since_us >= OFF_LONG_S * 1e6
+    doubts: dict[str, str] = {}
+    for agreement in rules.agreements:
+        if settled or agreement.always:
+            reasons |= _disagreeing(agreement, readings, good, doubts)
+    marked = tuple(
+        replace(one, value=math.nan, fault=reasons[number][0]) if number in reasons else one
+        for number, one in enumerate(readings)
+    )
+    verdicts = _verdicts(rules, channels, readings, reasons, doubts)
+    return Judged(State(channels, off_since_us, at_us), marked, tuple(verdicts))
+
+
+def _judge_one(
+    rule: Rule, before: ChannelState, one: Reading, ran_us: int
+) -> tuple[ChannelState, tuple[str, str] | None]:
+    """What is remembered next, and why the reading is bad if it is."""
+    if not rule.lowest <= one.value <= rule.highest:
+        limits = f"{rule.lowest:g} to {rule.highest:g}"
+        return before, (OUT_OF_RANGE, f"{one.value:g} is not within {limits}")
+    jump = _too_fast(rule, before, one)
+    if jump is not None:
+        return jump
+    now = _remember(before, one, ran_us)
+    if rule.saturates:
+        now, wet = _saturation(now, one)
+        if wet:
+            return now, (SATURATED_ELEMENT, f"{one.value:.1%}")
+    limit_s = rule.frozen_running_s
+    if limit_s is not None and now.ran_us >= limit_s * 1e6:
+        return now, (FROZEN, f"{one.value:g} for {now.ran_us / 1e6:.0f} s of running")
+    return now, None
+
+
+def _too_fast(
+    rule: Rule, before: ChannelState, one: Reading
+) -> tuple[ChannelState, tuple[str, str]] | None:
+    """A jump is bad until several readings stand by it."""
+    if rule.fastest_per_s is None or math.isnan(before.value):
+        return None
+    change = abs(one.value - before.value)
+    if change <= _allowed(rule, before.time_us, one.time_us):
+        return None
+    stands = abs(one.value - before.jump_value) <= _allowed(rule, before.time_us, one.time_us)
+    jumped = before.jumped + 1 if stands or before.jumped == 0 else 1
+    if jumped >= ACCEPT_AFTER:
+        return None
+    now = replace(before, jumped=jumped, jump_value=one.value)
+    seconds = (one.time_us - before.time_us) / 1e6
+    return now, (TOO_FAST, f"{before.value:g} to {one.value:g} in {seconds:g} s")
+
+
+def _allowed(rule: Rule, from_us: int, to_us: int) -> float:
+    assert rule.fastest_per_s is not None
+    return rule.jump + rule.fastest_per_s * (to_us - from_us) / 1e6
+
+
+def _remember(before: ChannelState, one: Reading, ran_us: int) -> ChannelState:
+    same = one.value == before.value
+    return replace(
+        before,
+        value=one.value,
+        time_us=one.time_us,
+        same_since_us=before.same_since_us if same else one.time_us,
+        ran_us=before.ran_us + ran_us if same else 0,
+        jumped=0,
+        jump_value=math.nan,
+    )
+
+
+def _saturation(now: ChannelState, one: Reading) -> tuple[ChannelState, bool]:
+    """Wet once it stood at its end for long, until it is clearly dry again."""
+    if one.value < DRY_AGAIN:
+        return replace(now, wet_since_us=None, wet=False), False
+    since_us = now.wet_since_us
+    if one.value >= SATURATED and since_us is None:
+        since_us = one.time_us
+    long = since_us is not None and one.time_us - since_us >= SATURATED_S * 1e6
+    wet = now.wet or long
+    return replace(now, wet_since_us=since_us, wet=wet), wet
+
+
+def _frozen_part(
+    part: Part, channels: Mapping[str, ChannelState], good: Mapping[str, int], at_us: int
+) -> dict[int, tuple[str, str]]:
+    """All channels of a part exactly as they were: it repeats an old conversion."""
+    if not all(name in good for name in part.channels):
+        return {}
+    since_us = max(channels[name].same_since_us for name in part.channels)
+    if at_us - since_us < part.frozen_s * 1e6:
+        return {}
+    detail = f"{part.name} has repeated itself for {(at_us - since_us) / 1e6:.0f} s"
+    return {good[name]: (FROZEN, detail) for name in part.channels}
+
+
+def _disagreeing(
+    agreement: Agreement,
+    readings: Sequence[Reading],
+    good: Mapping[str, int],
+    doubts: dict[str, str],
+) -> dict[int, tuple[str, str]]:
+    """Of three or more the odd one is bad; of two nobody knows which, and both are doubted."""
+    values = {name: readings[good[name]].value for name in agreement.channels if name in good}
+    if len(values) < 2:
+        return {}
+    if len(values) == 2:
+        (first, a), (second, b) = values.items()
+        if abs(a - b) > agreement.within:
+            doubts[first] = doubts[second] = f"{first} is {a:g}, {second} is {b:g}"
+        return {}
+    middle = median(values.values())
+    return {
+        good[name]: (DISAGREES, f"{value:g}, the others are about {middle:g}")
+        for name, value in values.items()
+        if abs(value - middle) > agreement.within
+    }
+
+
+def _verdicts(
+    rules: Rules,
+    channels: dict[str, ChannelState],
+    readings: Sequence[Reading],
+    reasons: Mapping[int, tuple[str, str]],
+    doubts: Mapping[str, str],
+) -> list[Verdict]:
+    """What began and what ended; `channels` is brought up to date."""
+    verdicts: list[Verdict] = []
+    for number, one in enumerate(readings):
+        if one.channel not in rules.channels or not one.good:
+            continue
+        now: dict[str, tuple[Severity, str]] = {}
+        if number in reasons:
+            reason, detail = reasons[number]
+            now[reason] = ("bad", detail)
+        if one.channel in doubts:
+            now[DISAGREES] = ("doubt", doubts[one.channel])
+        state = channels.get(one.channel, ChannelState())
+        for reason, (severity, detail) in now.items():
+            if state.said.get(reason) != severity:
+                verdicts.append(Verdict(one.channel, one.time_us, reason, severity, True, detail))
+        for reason, severity in state.said.items():
+            if reason not in now:
+                verdicts.append(Verdict(one.channel, one.time_us, reason, severity, False))
+        said = {reason: severity for reason, (severity, _) in now.items()}
+        channels[one.channel] = replace(state, said=said)
+    return verdicts
