@@ -269,7 +269,9 @@ def test_a_lock_covers_every_dependency(lock: str, extras: tuple[str, ...]) -> N
 
 
 def test_the_tests_run_what_runs() -> None:
-    runtime, test = (locked(name) for name in LOCKS)
+    runtime, test = (
+        {name: version_of(pin) for name, pin in locked(lock).items()} for lock in LOCKS
+    )
     assert {name: test.get(name) for name in runtime} == runtime
 
 
@@ -282,9 +284,12 @@ def test_a_lock_is_pins_and_nothing_else(lock: str) -> None:
     assert not [line for line in lines if not pin.fullmatch(line)]
 
 
-def test_the_gpio_library_is_for_a_pi_alone() -> None:
-    marker = locked(LOCKS[0])["gpiod"].marker
-    assert marker is not None
+def test_the_gpio_library_is_for_a_pi_and_for_tests_on_linux() -> None:
+    runtime, test = (locked(lock)["gpiod"].marker for lock in LOCKS)
+    assert runtime is not None
+    assert test is not None
     on_a_pi = {"sys_platform": "linux", "platform_machine": "aarch64"}
-    assert marker.evaluate(on_a_pi)
-    assert not marker.evaluate(on_a_pi | {"platform_machine": "x86_64"})
+    elsewhere = {"sys_platform": "linux", "platform_machine": "x86_64"}
+    assert [runtime.evaluate(place) for place in (on_a_pi, elsewhere)] == [True, False]
+    assert [test.evaluate(place) for place in (on_a_pi, elsewhere)] == [True, True]
+    assert not test.evaluate({"sys_platform": "darwin"})
