@@ -81,6 +81,8 @@ class Assumptions:
         """Every station gets a temperature and a pressure, the intake a humidity too."""
         by_id = {draft.id: draft for draft in self.drafts}
         for draft in self.drafts:
+            if draft.is_intake and not draft.table.ok("kind"):
+                continue  # a second one, which has been told
             if draft.is_intake:
                 self._fill_intake(draft)
             elif draft.kind is not None:

@@ -116,7 +116,7 @@ def written(value: object, key: str = "") -> str:
     name = key.rsplit(".", 1)[-1]
     if value is None:
         return ""
-    if name.startswith("pass") and name != "password_file":
+    if name != "password_file" and _close(name, ["password"], 0.65):
         return '"..."'  # never shown again
     if isinstance(value, dict):
         inside = ", ".join(f"{name} = {written(each, name)}" for name, each in value.items())

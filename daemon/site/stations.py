@@ -169,7 +169,9 @@ def _tell_misplaced(table: Table, kind: StationKind | None) -> None:
 def _read_sources(table: Table, draft: Draft, names: Names) -> None:
     intake = draft.is_intake
     usual = defaults.KINDS[draft.kind].temperature if draft.kind else defaults.SAME_AIR
-    air = Rules(usual.give_or_take_k, like=not intake, rise_by_duty=draft.kind == "receiver")
+    air = Rules(
+        usual.give_or_take_k, like=not intake, rise_by_duty=draft.kind in ("receiver", None)
+    )
     line = Rules(defaults.LIKE_PRESSURE_PA, like=not intake)
     pressure = BAROMETER if intake else PRESSURE
     draft.temperature = read_source(table, "temperature", TEMPERATURE, air, names)
