@@ -10,6 +10,7 @@ from collections.abc import Iterator
 from daemon.moisture.description import Measured, Station
 from daemon.site.names import Names
 from daemon.site.types import Site
+from daemon.units import show_difference, show_flow, show_volume
 
 
 def remarks(site: Site, names: Names, *, loaded_contact: bool) -> tuple[str, ...]:
@@ -68,9 +69,10 @@ def _compressor(site: Site, loaded_contact: bool) -> Iterator[str]:
         )
     assumed = _assumed(site, "compressor", "off_when_closed")
     if assumed and not site.hours.always_open:
+        leak, water = show_flow(10e-3 / 60, site.units), show_volume(250e-6, site.units)
         yield (
             "Is the compressor off at night? It is taken to be. Left on, a small leak still makes "
-            "water: 10 L/min (0.35 cfm) over a weekend about 250 ml (8.5 oz)."
+            f"water: {leak} over a weekend about {water}."
         )
 
 
@@ -111,7 +113,7 @@ def _outlets(site: Site) -> Iterator[str]:
         if place.kind != "regulator" and not _behind_regulator(place, by_id):
             yield (
                 f"Neither a dryer nor a regulator stands before {outlet.id}: its air is saturated, "
-                "so its margin stays near 0 K for good."
+                f"so its margin stays near {show_difference(0.0, site.units)} for good."
             )
     fed = {""}
     for outlet in site.line.outlets:
