@@ -15,95 +15,19 @@ from typing import Literal
 
 import numpy as np
 
-from daemon.alarms import (
-    Alarm,
-    AlarmDefinition,
-    AlarmRecord,
-    Condition,
-    Transition,
-    acknowledge,
-    shown,
-    watch,
-)
-from daemon.clock import HOUR_US, MINUTE_US
-from daemon.due import NO_DATE, calendar_due_us, condition, due_words
+from daemon.alarm_rules import AlarmRules
+from daemon.alarms import Alarm, AlarmRecord, Transition, acknowledge, shown
+from daemon.clock import HOUR_US
+from daemon.due import NO_DATE, calendar_due_us
 from daemon.journal import Acknowledge, Drain, Entry
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.ensemble import Array, percentiles
-from daemon.moisture.model import Heard, Model, State
+from daemon.moisture.model import Heard, Model
 from daemon.site import hours as opening
 from daemon.site.types import Site
+from daemon.state import ChannelRecord, CoreState, HourTotals, Inputs, Mark, TrapRecord
 from daemon.views import Because, TrapView
 from sensors.reading import Reading
-
-DUE_ON_DELAY_US = 2 * MINUTE_US
-FLOODED_RAISED_AT, FLOODED_RETURNS_BELOW = 0.5, 0.3
-
-
-@dataclass(frozen=True, slots=True)
-class TrapRecord:
-    """When a trap was last drained, and when its calendar asks again."""
-
-    last_drain_us: int = -1
-    calendar_due_us: int = NO_DATE
-
-
-@dataclass(frozen=True, slots=True)
-class ChannelRecord:
-    """The last that a channel said, good or bad."""
-
-    value: float = float("nan")  # of the last good reading
-    time_us: int = -1  # of the last good reading
-    heard_us: int = -1  # of the last reading of any kind
-    fault: str = ""  # of the last reading
-    only_edges: bool = False  # a contact that has not repeated its value: silence is normal
-
-
-@dataclass(frozen=True, slots=True)
-class HourTotals:
-    """What has moved since the last full hour, or since the beginning. Arrays are (members,)."""
-
-    from_us: int
-    on_s: Array
-    drawn_kg: Array
-    used_kg: Array
-
-
-@dataclass(frozen=True, slots=True)
-class CoreState:
-    """Everything that a tick hands to the next one."""
-
-    model: State
-    begun_us: int
-    stations: tuple[str, ...]  # the rows of the model's arrays
-    traps: Mapping[str, TrapRecord]
-    channels: Mapping[str, ChannelRecord]
-    alarms: Mapping[str, AlarmRecord]
-    hour: HourTotals
-
-    @property
-    def time_us(self) -> int:
-        return self.model.time_us
-
-
-@dataclass(frozen=True, slots=True)
-class Mark:
-    """The traps at one full hour, at one drain (before the emptying) or at the beginning."""
-
-    at_us: int
-    kind: Literal["hour", "drain"]
-    traps: tuple[str, ...]
-    kg: Array  # (3, traps): 5, 50, 95 %
-    probability_due: Array  # (traps,)
-    hour: HourTotals | None = None  # what moved in the hour that ends here
-
-
-@dataclass(frozen=True, slots=True)
-class Inputs:
-    """What arrived since the last tick: readings and entries, none after `now`."""
-
-    readings: Sequence[Reading] = ()
-    entries: Sequence[Entry] = ()
 
 
 @dataclass(frozen=True)
@@ -142,33 +66,8 @@ class Core:
         self.trap_names = site.traps
         self._trap_rows = list(plan.traps)
         self._traps = [t for s in plan.stations if (t := s.trap) is not None]
-        self._drain_at = np.array([trap.drain_at_kg for trap in self._traps])
-        self._sensors: dict[str, list[str]] = {}
-        for name, channel in site.channels.items():
-            self._sensors.setdefault(channel.sensor, []).append(name)
-        self.definitions = self._define()
-
-    def _define(self) -> dict[str, AlarmDefinition]:
-        found = []
-        for trap in self.trap_names:
-            found.append(
-                AlarmDefinition(f"{trap}-drain-due", "drain-due", trap, "medium", DUE_ON_DELAY_US)
-            )
-            found.append(
-                AlarmDefinition(f"{trap}-flooded", "trap-flooded", trap, "high", DUE_ON_DELAY_US)
-            )
-        for sensor in self._sensors:
-            found.append(
-                AlarmDefinition(
-                    f"{sensor}-sensor-fault",
-                    "sensor-fault",
-                    sensor,
-                    "medium",
-                    on_delay_us=self.model.period_us,
-                    off_delay_us=STALE_AFTER_PERIODS * self.model.period_us,
-                )
-            )
-        return {definition.id: definition for definition in found}
+        self.rules = AlarmRules(site, self.model)
+        self.definitions = self.rules.definitions
 
     # ---- beginning ----
 
@@ -191,7 +90,7 @@ class Core:
         tick = _Tick(state)
         if now_us % HOUR_US == 0:
             tick.marks.append(self._mark(state, "hour", None))
-        self._watch_all(tick)
+        self._watch(tick)
         return tick.state, Estimate(self, tick.state, tuple(tick.marks)), tick.transitions
 
     def _no_hour(self, from_us: int) -> HourTotals:
@@ -245,7 +144,7 @@ class Core:
             hour.used_kg + moved.used_kg,
         )
         tick.state = replace(state, model=model, hour=hour)
-        self._watch_all(tick)
+        self._watch(tick)
 
     def _full_hour(self, tick: _Tick) -> None:
         state = tick.state
@@ -322,7 +221,7 @@ class Core:
         tick.state = replace(state, model=self.model.drain(state.model, drain.trap), traps=traps)
         # whoever opens the drain has seen that it was due
         self._acknowledge(tick, f"{drain.trap}-drain-due", drain.by)
-        self._watch_all(tick, drained=drain.trap)
+        self._watch(tick, drained=drain.trap)
 
     def _acknowledge(self, tick: _Tick, alarm: str, by: str) -> None:
         if alarm not in self.definitions:
@@ -330,96 +229,15 @@ class Core:
         record, transition = acknowledge(
             self.definitions[alarm], tick.state.alarms[alarm], tick.state.time_us, by
         )
-        self._changed(tick, alarm, record, transition)
+        tick.state = replace(tick.state, alarms={**tick.state.alarms, alarm: record})
+        tick.transitions += [transition] if transition is not None else []
 
-    # ---- alarms ----
-
-    def _changed(
-        self, tick: _Tick, alarm: str, record: AlarmRecord, transition: Transition | None
-    ) -> None:
-        if record is not tick.state.alarms[alarm]:
-            tick.state = replace(tick.state, alarms={**tick.state.alarms, alarm: record})
-        if transition is not None:
-            tick.transitions.append(transition)
-
-    def _watch(self, tick: _Tick, alarm: str, so: Condition, text: str) -> None:
-        record = tick.state.alarms[alarm]
-        after, transition = watch(self.definitions[alarm], record, tick.state.time_us, so, text)
-        self._changed(tick, alarm, after, transition)
-
-    def _watch_all(self, tick: _Tick, drained: str = "") -> None:
-        state = tick.state
-        contents = state.model.water.trap[self._trap_rows]
-        probability = self._probability_due(contents)
-        capacity = state.model.parameters.water.capacity_kg[self._trap_rows]
-        full = np.count_nonzero(contents >= capacity, axis=1) / contents.shape[1]
-        for number, name in enumerate(self.trap_names):
-            self._watch_drain(tick, number, float(probability[number]), name == drained)
-            self._watch_flooded(tick, number, float(full[number]))
-        for sensor, channels in self._sensors.items():
-            fault = self._fault(state, channels)
-            text = (
-                f"{sensor}: {fault}. Look at its wiring and run `dripleg check`." if fault else ""
-            )
-            self._watch(tick, f"{sensor}-sensor-fault", "so" if fault else "not so", text)
-
-    def _watch_drain(self, tick: _Tick, number: int, probability: float, drained_now: bool) -> None:
-        name = self.trap_names[number]
-        alarm = f"{name}-drain-due"
-        state = tick.state
-        due_us = state.traps[name].calendar_due_us
-        by_calendar = due_us != NO_DATE and state.time_us >= due_us
-        so = condition(probability, by_calendar, drained_now)
-        record = state.alarms[alarm]
-        text = record.text
-        if (so == "so") != record.raised:  # only then are the words needed
-            text = self._due_text(state, number, so, by_calendar and probability < 0.5)
-        definition = self.definitions[alarm]
-        if by_calendar:
-            definition = replace(definition, on_delay_us=0)
-        after, transition = watch(definition, record, state.time_us, so, text)
-        self._changed(tick, alarm, after, transition)
-
-    def _due_text(self, state: CoreState, number: int, so: Condition, calendar: bool) -> str:
-        name, trap = self.trap_names[number], self._traps[number]
-        kg = percentiles(state.model.water.trap[self._trap_rows[number]])
-        held = (float(kg[0]), float(kg[1]), float(kg[2]))
-        if so != "so":
-            return f"{name}: no longer due."
-        return due_words(self.site, name, trap, held, "calendar" if calendar else "volume")
-
-    def _watch_flooded(self, tick: _Tick, number: int, full: float) -> None:
-        name = self.trap_names[number]
-        so: Condition = "between"
-        if full >= FLOODED_RAISED_AT:
-            so = "so"
-        elif full < FLOODED_RETURNS_BELOW:
-            so = "not so"
-        text = (
-            f"{name} is full and water goes on down the line: drain it, then the traps after it."
-            if so == "so"
-            else f"{name}: no longer full."
-        )
-        self._watch(tick, f"{name}-flooded", so, text)
-
-    def _fault(self, state: CoreState, channels: Sequence[str]) -> str:
-        """Why a sensor cannot be believed, "" while it can."""
-        limit_us = STALE_AFTER_PERIODS * self.model.period_us
-        for name in channels:
-            record = state.channels[name]
-            if record.fault:
-                return f"{name} is not usable: {record.fault}"
-            silent_us = state.time_us - max(record.heard_us, state.begun_us)
-            if silent_us > limit_us and not record.only_edges:
-                return f"{name} has said nothing for {STALE_AFTER_PERIODS} periods"
-        return ""
+    def _watch(self, tick: _Tick, drained: str = "") -> None:
+        alarms, transitions = self.rules.watch(tick.state, drained)
+        tick.state = replace(tick.state, alarms=alarms)
+        tick.transitions += transitions
 
     # ---- what is shown ----
-
-    def _probability_due(self, contents: Array) -> Array:
-        at_or_above = contents >= self._drain_at[:, None]
-        probability: Array = np.count_nonzero(at_or_above, axis=1) / contents.shape[1]
-        return probability
 
     def _mark(
         self,
@@ -435,7 +253,7 @@ class Core:
             kind=kind,
             traps=tuple(self.trap_names[n] for n in chosen),
             kg=percentiles(contents[chosen]),
-            probability_due=self._probability_due(contents)[chosen],
+            probability_due=self.rules.probability_due(state)[chosen],
             hour=hour,
         )
 
@@ -454,7 +272,7 @@ class Core:
         """What is believed of every trap now."""
         contents = state.model.water.trap[self._trap_rows]
         kg = percentiles(contents)
-        probability = self._probability_due(contents)
+        probability = self.rules.probability_due(state)
         return tuple(
             self._view(state, number, kg[:, number], float(probability[number]))
             for number in range(len(self.trap_names))

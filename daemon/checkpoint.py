@@ -11,14 +11,15 @@ from typing import Any
 
 import numpy as np
 
-from daemon.advance import ChannelRecord, CoreState, HourTotals, TrapRecord
 from daemon.alarms import AlarmRecord
 from daemon.errors import StoreError
+from daemon.moisture.beliefs import Parameters
 from daemon.moisture.conditions import Conditions, Held, Lapse, Offsets
 from daemon.moisture.contact import ContactState
 from daemon.moisture.flow import AirState, PumpWatch
 from daemon.moisture.line import Ledger, WaterParameters, WaterState
-from daemon.moisture.model import Parameters, State
+from daemon.moisture.model import State
+from daemon.state import ChannelRecord, CoreState, HourTotals, TrapRecord
 
 FORMAT = b"DLC1"
 _CLASSES = {

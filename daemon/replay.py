@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
-from daemon.advance import Core, CoreState, Estimate, HourTotals, Inputs, Mark
+from daemon.advance import Core, Estimate
 from daemon.alarms import Transition
 from daemon.clock import format_rfc3339
 from daemon.errors import ReplayError
@@ -21,6 +21,7 @@ from daemon.moisture.air import REFERENCE_DRY_AIR_KG_PER_M3
 from daemon.moisture.description import WATER_KG_PER_M3
 from daemon.moisture.ensemble import Array, percentiles
 from daemon.site.types import Site
+from daemon.state import CoreState, HourTotals, Inputs, Mark
 from daemon.ticks import ticks
 from sensors.reading import Reading
 

@@ -16,7 +16,7 @@ from typing import Protocol
 import numpy as np
 
 from daemon import accept
-from daemon.advance import Core, CoreState, Estimate, Inputs
+from daemon.advance import Core, Estimate
 from daemon.alarms import Alarm, Transition, correction, shown
 from daemon.checkpoint import decode, encode
 from daemon.clock import DAY_US, HOUR_US, Clock, format_rfc3339
@@ -26,6 +26,7 @@ from daemon.moisture.line import new_ledger
 from daemon.mqtt import MqttLink
 from daemon.outbox import Message, Topics, alarm_message, event_message, trap_message
 from daemon.site.types import Site
+from daemon.state import CoreState, Inputs
 from daemon.store.store import Store
 from daemon.ticks import first_at_or_after, ticks
 from daemon.views import ChannelHealth, Health, Recorded, SeriesOfReadings, TrapView

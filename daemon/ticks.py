@@ -5,9 +5,9 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
-from daemon.advance import Inputs
 from daemon.clock import DAY_US, HOUR_US
 from daemon.journal import Entry
+from daemon.state import Inputs
 from sensors.reading import Reading
 
 SILENCE_US = DAY_US  # after so long without a good reading, ticks stand at full hours

@@ -65,21 +65,6 @@ class Offsets:
     relative_humidity: Array  # (members,)
 
 
-def draw_offsets(plan: Plan) -> Offsets:
-    """The offsets of every source of a line, from its seed."""
-    line = plan.line
-
-    def draw(name: str) -> Array:
-        return standard_normal(line.seed, name, line.members)
-
-    return Offsets(
-        channels={name: draw(f"bias of {name}") for name in plan.channels},
-        temperature=np.array([draw(f"temperature of {s.id}") for s in line.stations]),
-        pressure=np.array([draw(f"pressure of {s.id}") for s in line.stations]),
-        relative_humidity=draw("relative humidity of the intake"),
-    )
-
-
 @dataclass(slots=True)
 class Evaluation:
     """One evaluation of all sources at one time; `lapses` is carried from one to the next."""

@@ -14,35 +14,20 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from daemon.clock import HOUR_US
-from daemon.moisture import air, conditions, flow, line
+from daemon.moisture import air, flow, line
+from daemon.moisture.beliefs import Beliefs, Parameters, bias_of, draw, names
+from daemon.moisture.beliefs import offsets as make_offsets
+from daemon.moisture.beliefs import parameters as make_parameters
 from daemon.moisture.conditions import Conditions, Evaluation, Held, Lapse, Offsets
 from daemon.moisture.contact import ContactState, ContactTime, integrate
-from daemon.moisture.description import Fixed, Line, Measured, RiseByDuty, Share
-from daemon.moisture.ensemble import (
-    Array,
-    positive,
-    share,
-    standard_normal,
-)
+from daemon.moisture.description import Line, Measured, RiseByDuty
+from daemon.moisture.ensemble import Array, standard_normal
 from daemon.moisture.plan import Plan, plan_line
 
 BIAS_DRIFT_S = 30 * 86400.0  # time constant of a sensor's slow drift; practice, no source
-# A receiver's pool gives back 0.6-3 g/h at a 30 % deficit: 2-10 g/h into dry air, lognormal about
-# the geometric middle. Common practice, no source.
-POOL_KG_PER_S, POOL_LOG_SD = 4.5e-3 / 3600.0, 0.4
 # The duty of a compressor that nothing watches: logit-normal about what it was while watched, at
 # first 0.3. The memory of it is a day. Common practice, no source.
 DUTY_UNKNOWN, DUTY_LOGIT_SD, DUTY_MEMORY_S = 0.3, 0.8, 86400.0
-
-
-@dataclass(frozen=True, slots=True)
-class Parameters:
-    """What each member believes, and will until it learns otherwise."""
-
-    water: line.WaterParameters
-    delivered_m3_per_s: Array  # (members,)
-    volume_m3: Array  # (receivers, members)
-    duty_logit: Array  # (members,), standard normal
 
 
 @dataclass(frozen=True, slots=True)
@@ -50,7 +35,8 @@ class State:
     """Everything that is carried from one step to the next."""
 
     time_us: int
-    offsets: Offsets
+    beliefs: Beliefs
+    offsets: Offsets  # made of the beliefs, as are the parameters
     parameters: Parameters
     held: Mapping[str, Held]
     lapses: Mapping[str, Lapse]
@@ -111,8 +97,8 @@ class Model:
     def initial(self, time_us: int, heard: Heard) -> State:
         """The state at the first tick: traps hold what they are said to, air is as drawn in."""
         plan = self.plan
-        offsets = conditions.draw_offsets(plan)
-        parameters = self._draw_parameters()
+        beliefs = draw(plan, names(plan))
+        offsets, parameters = make_offsets(plan, beliefs), make_parameters(plan, beliefs)
         held = self._hold({}, heard)
         contact, _ = self._contact(ContactState(), heard, time_us, time_us)
         duty = np.zeros((len(plan.stations), plan.line.members))
@@ -131,6 +117,7 @@ class Model:
         )
         state = State(
             time_us=time_us,
+            beliefs=beliefs,
             offsets=offsets,
             parameters=parameters,
             held=held,
@@ -155,36 +142,6 @@ class Model:
         held = trap.holds_at_start_kg if trap is not None else 0.0
         return np.full(self.plan.line.members, held)
 
-    def _draw_parameters(self) -> Parameters:
-        described = self.plan.line
-        seed, members = described.seed, described.members
-
-        def base(name: str) -> Array:
-            return standard_normal(seed, name, members)
-
-        shape = (len(self.plan.stations), members)
-        separation, evaporated, capacity = np.zeros(shape), np.zeros(shape), np.zeros(shape)
-        for i, station in enumerate(self.plan.stations):
-            evaporated[i] = share(base(f"evaporated at {station.id}"), *_pair(station.evaporated))
-            if station.trap is not None:
-                part = station.trap.separation
-                separation[i] = share(base(f"separation of {station.id}"), *_pair(part))
-                holds = station.trap.capacity
-                capacity[i] = positive(base(f"capacity of {station.id}"), *_pair(holds))
-        pool = POOL_KG_PER_S * np.exp(POOL_LOG_SD * base("pool"))
-        delivered = described.compressor.delivered
-        volumes = [
-            positive(base(f"volume of {s.id}"), *_pair(s.volume))
-            for s in (self.plan.stations[r] for r in self.plan.receivers)
-            if s.volume is not None
-        ]
-        return Parameters(
-            water=line.WaterParameters(separation, evaporated, capacity, pool),
-            delivered_m3_per_s=positive(base("delivered"), *_pair(delivered)),
-            volume_m3=np.array(volumes).reshape(-1, members),
-            duty_logit=base("duty"),
-        )
-
     # ---- one step ----
 
     def step(self, state: State, to_us: int, heard: Heard) -> tuple[State, Moved]:
@@ -194,7 +151,7 @@ class Model:
         """
         plan = self.plan
         dt_s = (to_us - state.time_us) / 1e6
-        offsets = self._drifted(state, to_us)
+        beliefs, offsets = self._drifted(state, to_us)
         held = self._hold(state.held, heard)
         contact, times = self._contact(state.contact, heard, state.time_us, to_us)
         pump, booked_us = self._watch(state, heard)
@@ -229,6 +186,7 @@ class Model:
             unknown_us = to_us - times.unknown_us
         stepped = State(
             time_us=to_us,
+            beliefs=beliefs,
             offsets=offsets,
             parameters=state.parameters,
             held=held,
@@ -309,7 +267,7 @@ class Model:
         if not is_open and self.plan.line.compressor.off_when_closed:
             return known
         middle = min(max(state.duty_known, 0.02), 0.98)
-        logit = math.log(middle / (1.0 - middle)) + DUTY_LOGIT_SD * state.parameters.duty_logit
+        logit = math.log(middle / (1.0 - middle)) + DUTY_LOGIT_SD * state.parameters.duty
         return known + times.unknown_us / 1e6 / (1.0 + np.exp(-logit))
 
     def _follow(
@@ -398,21 +356,17 @@ class Model:
                 ledger = replace(ledger, at_start=ledger.at_start + added)
         return air_state, water, ledger
 
-    def _drifted(self, state: State, to_us: int) -> Offsets:
+    def _drifted(self, state: State, to_us: int) -> tuple[Beliefs, Offsets]:
         """A bias wanders slowly: once an hour, keeping its spread."""
         if to_us // HOUR_US == state.time_us // HOUR_US:
-            return state.offsets
+            return state.beliefs, state.offsets
         described = self.plan.line
         keeps = math.exp(-HOUR_US / 1e6 / BIAS_DRIFT_S)
         stirs = math.sqrt(1.0 - keeps * keeps)
         hour = to_us // HOUR_US
-        channels = {
-            name: keeps * bias
-            + stirs * standard_normal(described.seed, f"drift of {name}", described.members, hour)
-            for name, bias in state.offsets.channels.items()
-        }
-        return replace(state.offsets, channels=channels)
-
-
-def _pair(described: Share | Fixed) -> tuple[float, float]:
-    return described.value, described.give_or_take
+        beliefs = dict(state.beliefs)
+        for channel in self.plan.channels:
+            name = bias_of(channel)
+            stir = standard_normal(described.seed, f"drift of {name}", described.members, hour)
+            beliefs[name] = keeps * beliefs[name] + stirs * stir
+        return beliefs, make_offsets(self.plan, beliefs)

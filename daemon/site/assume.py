@@ -92,6 +92,9 @@ class Assumptions:
 
     def _fill_intake(self, intake: Draft) -> None:
         table = intake.table
+        if not table.ok("temperature", "relative_humidity"):
+            self._fill_air(intake)  # which sensor was meant is not known
+            return
         missing = [pair for pair in _INTAKE if not table.said(pair[0])]
         sensor = self._intake_sensor(intake, [key for key, _ in missing])
         for key, quantity in missing:

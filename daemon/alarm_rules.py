@@ -1,0 +1,140 @@
+"""Which alarms a site can raise, and what each one watches."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Sequence
+from dataclasses import replace
+
+import numpy as np
+
+from daemon.alarms import AlarmDefinition, AlarmRecord, Condition, Transition, watch
+from daemon.clock import MINUTE_US
+from daemon.due import NO_DATE, condition, due_words
+from daemon.moisture.contact import STALE_AFTER_PERIODS
+from daemon.moisture.ensemble import Array, percentiles
+from daemon.moisture.model import Model
+from daemon.site.types import Site
+from daemon.state import CoreState
+
+DUE_ON_DELAY_US = 2 * MINUTE_US
+FLOODED_RAISED_AT, FLOODED_RETURNS_BELOW = 0.5, 0.3
+
+# An alarm's definition, what its condition says now, and the words for it.
+Watched = tuple[AlarmDefinition, Condition, str]
+
+
+class AlarmRules:
+    """The alarms of one site. Pure: everything they look at is in the state."""
+
+    def __init__(self, site: Site, model: Model) -> None:
+        self.site, self.model = site, model
+        self._names = site.traps
+        self._rows = list(model.plan.traps)
+        self._traps = [t for s in model.plan.stations if (t := s.trap) is not None]
+        self._drain_at = np.array([trap.drain_at_kg for trap in self._traps])
+        self._sensors: dict[str, list[str]] = {}
+        for name, channel in site.channels.items():
+            self._sensors.setdefault(channel.sensor, []).append(name)
+        self.definitions = {each.id: each for each in self._define()}
+
+    def _define(self) -> Iterator[AlarmDefinition]:
+        period_us = self.model.period_us
+        for trap in self._names:
+            yield AlarmDefinition(f"{trap}-drain-due", "drain-due", trap, "medium", DUE_ON_DELAY_US)
+            yield AlarmDefinition(f"{trap}-flooded", "trap-flooded", trap, "high", DUE_ON_DELAY_US)
+        for sensor in self._sensors:
+            yield AlarmDefinition(
+                f"{sensor}-sensor-fault",
+                "sensor-fault",
+                sensor,
+                "medium",
+                on_delay_us=period_us,
+                off_delay_us=STALE_AFTER_PERIODS * period_us,
+            )
+
+    def watch(
+        self, state: CoreState, drained: str = ""
+    ) -> tuple[dict[str, AlarmRecord], list[Transition]]:
+        """Every alarm advanced to the state's time. `drained`: a trap just emptied."""
+        alarms, transitions = dict(state.alarms), []
+        for definition, so, text in self._watched(state, drained):
+            record, transition = watch(definition, alarms[definition.id], state.time_us, so, text)
+            alarms[definition.id] = record
+            if transition is not None:
+                transitions.append(transition)
+        return alarms, transitions
+
+    def _watched(self, state: CoreState, drained: str) -> Iterator[Watched]:
+        probability = self.probability_due(state)
+        contents = state.model.water.trap[self._rows]
+        capacity = state.model.parameters.water.capacity_kg[self._rows]
+        full = np.count_nonzero(contents >= capacity, axis=1) / contents.shape[1]
+        for number, name in enumerate(self._names):
+            yield self._drain_due(state, number, float(probability[number]), name == drained)
+            yield self._flooded(number, float(full[number]))
+        for sensor, channels in self._sensors.items():
+            yield self._sensor_fault(state, sensor, channels)
+
+    def probability_due(self, state: CoreState) -> Array:
+        """The share of members at or above the drain-at level, (traps,)."""
+        contents = state.model.water.trap[self._rows]
+        at_or_above = contents >= self._drain_at[:, None]
+        probability: Array = np.count_nonzero(at_or_above, axis=1) / contents.shape[1]
+        return probability
+
+    # ---- drain due ----
+
+    def _drain_due(
+        self, state: CoreState, number: int, probability: float, drained_now: bool
+    ) -> Watched:
+        name = self._names[number]
+        due_us = state.traps[name].calendar_due_us
+        by_calendar = due_us != NO_DATE and state.time_us >= due_us
+        so = condition(probability, by_calendar, drained_now)
+        definition = self.definitions[f"{name}-drain-due"]
+        record = state.alarms[definition.id]
+        text = record.text
+        if (so == "so") != record.raised:  # only then are the words needed
+            text = self._due_text(state, number, so, by_calendar and probability < 0.5)
+        if by_calendar:
+            definition = replace(definition, on_delay_us=0)
+        return definition, so, text
+
+    def _due_text(self, state: CoreState, number: int, so: Condition, calendar: bool) -> str:
+        name, trap = self._names[number], self._traps[number]
+        if so != "so":
+            return f"{name}: no longer due."
+        kg = percentiles(state.model.water.trap[self._rows[number]])
+        held = (float(kg[0]), float(kg[1]), float(kg[2]))
+        return due_words(self.site, name, trap, held, "calendar" if calendar else "volume")
+
+    # ---- the others ----
+
+    def _flooded(self, number: int, full: float) -> Watched:
+        name = self._names[number]
+        definition = self.definitions[f"{name}-flooded"]
+        if full >= FLOODED_RAISED_AT:
+            text = f"{name} is full and water goes on down the line: drain it, then those after it."
+            return definition, "so", text
+        so: Condition = "not so" if full < FLOODED_RETURNS_BELOW else "between"
+        return definition, so, f"{name}: no longer full."
+
+    def _sensor_fault(self, state: CoreState, sensor: str, channels: Sequence[str]) -> Watched:
+        definition = self.definitions[f"{sensor}-sensor-fault"]
+        fault = self._fault(state, channels)
+        if fault:
+            text = f"{sensor}: {fault}. Look at its wiring and run `dripleg check`."
+            return definition, "so", text
+        return definition, "not so", f"{sensor}: answers again."
+
+    def _fault(self, state: CoreState, channels: Sequence[str]) -> str:
+        """Why a sensor cannot be believed, "" while it can."""
+        limit_us = STALE_AFTER_PERIODS * self.model.period_us
+        for name in channels:
+            record = state.channels[name]
+            if record.fault:
+                return f"{name} is not usable: {record.fault}"
+            silent_us = state.time_us - max(record.heard_us, state.begun_us)
+            if silent_us > limit_us and not record.only_edges:
+                return f"{name} has said nothing for {STALE_AFTER_PERIODS} periods"
+        return ""
