@@ -139,6 +139,7 @@ MISTAKES = [
     ('"10 s"', '"2 h"', "[site] sample_every", "from 1 s to 10 min"),
     ('"10 s"', "10", "[site] sample_every = 10", "10 has no unit"),
     ("sample_every =", "sample_evry =", "[site] sample_evry", 'did you mean "sample_every"?'),
+    ("sample_every =", 'sample_evry = "9 s"\nsample_every =', "[site] sample_evry", "take it out"),
     ("sample_every =", "colour =", "[site] colour", "there is no such key here; known: id, name"),
     ("[site]\n", "", "[file]", "before the first table; write [site] above them"),
     # [hours]
@@ -157,6 +158,7 @@ MISTAKES = [
     ('cut_out = "8 bar"', 'cut_out = "8 degC"', "[compressor] cut_out", "is a temperature, but"),
     ('"150 L/min"', '"150 L"', "[compressor] free_air_delivery.value", "is a volume, but a flow"),
     ('"150 L/min"', '"-5 L/min"', "[compressor] free_air_delivery.value", "no compressor's flow"),
+    ('"10 %" }', '"150 %" }', "[compressor] free_air_delivery.give_or_take", "at most 100 %"),
     ('"10 %" }', '"-10 %" }', "[compressor] free_air_delivery.give_or_take", "cannot be negative"),
     ('"10 %" }', '"10 %" }\ndisplacement = "250 L/min"', "[compressor] displacement", "twice"),
     ('"motor.contact"', '"moter.contact"', "[compressor] running", 'did you mean "motor.contact"?'),
@@ -235,7 +237,30 @@ MISTAKES = [
     ('set = "3 bar"', 'set = "-1 bar"', '[station "regulator"] set', "0 to 16 bar"),
     ('set = "3 bar"\n', "", '[station "regulator"] set', "needs its set pressure"),
     ('set = "3 bar"', 'set = "3 bar"\ntrap = {}', '[station "regulator"] trap', "keeps no water"),
+    ('give_or_take = "1 K"', 'give_or_take = "10 %"', '[station "riser"] temperature.give_or_take',
+     'a share says nothing here; write it like "3 K"'),
+    ('"30 min"', '"3 weeks"', '[station "tank"] temperature.time_constant', "from 1 s to 1 day"),
+    ('rise_by_duty = "20 K"', 'rise_by_duty = "90 K"', '[station "tank"] temperature.rise_by_duty',
+     "a tank warms by 0 to 60 K"),
+    ('time_constant = "30 min"', 'plus = "3 K"', '[station "tank"] temperature.plus',
+     "says nothing beside rise_by_duty"),
+    ('channel = "skin.temperature"', 'like = "tank", rise_by_duty = "5 K"',
+     '[station "riser"] temperature.rise_by_duty', "belongs to a receiver's temperature"),
+    ('channel = "skin.temperature"', "channel = 3", '[station "riser"] temperature.channel = 3',
+     "must be a channel in quotes"),
+    ('plus = "-0.1 bar"', 'plus = "-90 bar"', '[station "riser"] pressure.plus', "no such differ"),
+    ('kind = "intake"\n', 'kind = "intake"\nafter = "tank"\n', '[station "inlet"] after',
+     "it hangs on nothing"),
     # traps
+    ('"600 ml"', '"600 ml", holds_at_start = "-1 L"', '[station "tank"] trap.holds_at_start',
+     "a volume cannot be negative"),
+    ('"600 ml"', '"600 ml", drain_every = "0.2 h"', '[station "tank"] trap.drain_every',
+     "from 1 h to a year"),
+    ('"15 L"', '"0 L"', '[station "tank"] trap.capacity', "no capacity of a trap: more than 0"),
+    ('set = "3 bar"', 'set = { give_or_take = "5 %" }', '[station "regulator"] set',
+     "says no value"),
+    ('after = "tank"\n', 'after = "tank"\ntrap = "yes"\n', '[station "riser"] trap',
+     'write trap = "none", or a table'),
     ('"600 ml"', '"20 L"', '[station "tank"] trap.drain_at', "above the trap's capacity, 15 L"),
     ('"600 ml"', '"0 ml"', '[station "tank"] trap.drain_at', "must be more than nothing"),
     ('"15 L"', '"500 L"', '[station "tank"] trap.capacity', "more than the tank's volume, 100 L"),
@@ -266,6 +291,9 @@ MISTAKES = [
     ("port = 1883", 'password = "hush"', '[mqtt] password = "..."', "a password needs a user"),
     ("port = 1883", 'tls = false\nca_file = "ca.pem"', "[mqtt] ca_file", "but tls = false"),
     ('host = "127.0.0.1"', 'host = "127.0.0"', "[mqtt] host", "is no address"),
+    ("port = 1883", 'user = "u"\npassword = "p"\npassword_file = "f"', "[mqtt] password_file",
+     "says the password twice"),
+    ("port = 1883", 'prefix = "a b"', "[mqtt] prefix", "is no beginning of a topic"),
     ("port = 8080", 'port = "8080"', '[api] port = "8080"', "without quotes"),
 ]  # fmt: skip
 
@@ -301,6 +329,13 @@ def test_two_values_like_each_other_are_one_problem() -> None:
     [
         (
             '[[sensor]]\nid = "a"\ndriver = "bme280"\n'
+            '[[sensor]]\nid = "b"\ndriver = "bme280"\naddress = 0x77\n'
+            '[[station]]\nid = "i"\nkind = "intake"\ntemperature = "20 degC"\n',
+            '[station "i"] pressure',
+            "two or more barometers could serve: a.pressure, b.pressure",
+        ),
+        (
+            '[[sensor]]\nid = "a"\ndriver = "bme280"\n'
             '[[sensor]]\nid = "b"\ndriver = "bme280"\naddress = 0x77\n',
             '[station "intake"] temperature',
             "two or more sensors could stand at the intake: a, b",
@@ -324,6 +359,32 @@ def test_between_two_candidates_the_file_must_choose(text: str, where: str, what
     (found,) = problems(text)
     assert where in str(found)
     assert what in str(found)
+
+
+def test_a_wrong_channel_at_the_intake_asks_no_further_question() -> None:
+    text = (
+        '[[sensor]]\nid = "a"\ndriver = "bme280"\n'
+        '[[sensor]]\nid = "b"\ndriver = "bme280"\naddress = 0x77\n'
+        '[[station]]\nid = "i"\nkind = "intake"\ntemperature = "a.temprature"\n'
+    )
+    (found,) = problems(text)
+    assert 'the sensor "a" gives no "temprature"; did you mean "a.temperature"?' in str(found)
+
+
+def test_shares_that_leave_nothing_are_one_problem() -> None:
+    text = GOOD.replace("share = 0.5\nsur", "share = 1\nsur").replace("share = 0.5", "")
+    (found,) = problems(text)
+    assert '[outlet "gun"] share = 1: the shares said are 100 % together' in str(found)
+    assert "which leaves nothing for blast" in str(found)
+
+
+def test_keys_that_do_not_go_together_are_told_by_the_driver() -> None:
+    text = GOOD + (
+        '[[sensor]]\nid = "far"\ndriver = "mqtt-channel"\ntopic = "shop/far"\n'
+        'quantity = "temperature"\nunit = "bar"\n'
+    )
+    (found,) = problems(text)
+    assert '[sensor "far"] unit = "bar": write one of degC' in str(found)
 
 
 def test_a_switch_at_a_trap_that_is_not_there_is_told() -> None:
