@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 
 from daemon.clock import SECOND_US
 from daemon.moisture import air
-from sensors.emulated.fitting import Setter
+from sensors.emulated.fit import Setter
 
 DELIVERED_M3_S = 0.365 / 60.0  # a little less than the plate says
 TANK_M3 = 0.2
