@@ -4,12 +4,14 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 
 import pytest
 
 from daemon.errors import Problem, SiteError
 from daemon.site.reader import parse_site, read_site
+from sensors.registry import DRIVERS
 
 EXAMPLE = Path(__file__).parents[2] / "deploy" / "site-example.toml"
 
@@ -234,6 +236,8 @@ MISTAKES = [
     ('after = "tank"\n', 'after = "tank"\nvolume = "5 L"\n', '[station "riser"] volume',
      "belongs to a station of kind receiver"),
     ('set = "3 bar"', 'set = "9 bar"', '[station "regulator"] set', "cut_out is at most 8.2 bar"),
+    ('pressure = { like = "tank", plus = "-0.1 bar" }', 'pressure = "2 bar"',
+     '[station "regulator"] set = "3 bar"', "riser is at most 2.2 bar"),
     ('set = "3 bar"', 'set = "-1 bar"', '[station "regulator"] set', "0 to 16 bar"),
     ('set = "3 bar"\n', "", '[station "regulator"] set', "needs its set pressure"),
     ('set = "3 bar"', 'set = "3 bar"\ntrap = {}', '[station "regulator"] trap', "keeps no water"),
@@ -376,6 +380,26 @@ def test_shares_that_leave_nothing_are_one_problem() -> None:
     (found,) = problems(text)
     assert '[outlet "gun"] share = 1: the shares said are 100 % together' in str(found)
     assert "which leaves nothing for blast" in str(found)
+
+
+def test_a_part_at_the_address_of_a_converter_is_one_problem() -> None:
+    spot = replace(
+        DRIVERS["bme280"],
+        name="spot",
+        occupies=lambda config: ("bus 1 address 0x48",),  # whole, where others take an input of it
+    )
+    text = GOOD + '[[sensor]]\nid = "spot"\ndriver = "spot"\n'
+    with pytest.raises(SiteError) as caught:
+        parse_site(text, "site.toml", {**DRIVERS, "spot": spot})
+    (found,) = caught.value.problems
+    assert '[sensor "spot"]: bus 1 address 0x48 is taken by sensor "tank-gauge"' in str(found)
+
+
+def test_a_second_regulator_cannot_be_set_above_the_first() -> None:
+    second = '[[station]]\nid = "fine"\nkind = "regulator"\nafter = "regulator"\nset = "4 bar"\n'
+    (found,) = problems(GOOD + second)
+    assert '[station "fine"] set = "4 bar"' in str(found)
+    assert "regulator is at most 3.15 bar" in str(found)
 
 
 def test_keys_that_do_not_go_together_are_told_by_the_driver() -> None:
