@@ -145,8 +145,10 @@ def _tell_switch(table: Table, compressor: Compressor) -> None:
     )
     key, other = ("cut_in", "cut_out") if table.said("cut_in") else ("cut_out", "cut_in")
     by_default = "" if table.said(other) else " (a default)"
-    table.wrong(
+    table.notes.problem(  # both can be read: neither is broken for what depends on it
+        table.where,
         key,
+        table.values.get(key),
         f"the compressor starts at cut_in and stops at cut_out, so cut_in lies below; "
         f"here cut_in is {cut_in} and cut_out {cut_out}: correct {key}, or say {other}{by_default}",
     )

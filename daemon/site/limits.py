@@ -53,7 +53,8 @@ def _highest(
     draft: Draft, by_id: Mapping[str, Draft], compressor: Compressor
 ) -> tuple[float, str | None]:
     """The highest gauge pressure at a station and what sets it; None: not knowable yet."""
-    limit_pa, where = compressor.cut_out.value + compressor.cut_out.give_or_take, "cut_out"
+    stops = max(compressor.cut_in, compressor.cut_out, key=lambda each: each.value)
+    limit_pa, where = stops.value + stops.give_or_take, "cut_out"
     path = [draft, *upstream(draft, by_id)]
     if not path[-1].is_intake or any(not each.table.ok("pressure", "set") for each in path):
         return limit_pa, None

@@ -83,8 +83,7 @@ def open_stations(notes: Notes, raws: Sequence[object], names: Names) -> list[Ta
     for number, (where, raw) in enumerate(zip(labels, raws, strict=True), 1):
         table = Table(notes, where, raw, STATION_KEYS, required=_required(raw, ids))
         onward = labels[number] if number < len(labels) else "outlet"
-        again = table.values.get("id") in names.stations
-        if not read_id(table, "station", names.stations, _explains(onward if again else "")):
+        if not read_id(table, "station", names.stations, _explains(onward)):
             table.values["id"] = ""  # checked like the others, then left out
         tables.append(table)
     return tables
@@ -103,8 +102,8 @@ def _required(raw: object, ids: Sequence[str]) -> dict[str, Callable[[object], o
 
 
 def _explains(onward: str) -> Explains:
-    """Whether a station could be the one that tables elsewhere name: any, or the next one only."""
-    return lambda tables, _: any(table.startswith(onward) for table in tables)
+    """Whether the next table of the file, or an outlet, names what could be this station."""
+    return lambda tables, _: any(table.startswith((onward, "outlet")) for table in tables)
 
 
 def read_stations(tables: Sequence[Table], names: Names) -> list[Draft]:

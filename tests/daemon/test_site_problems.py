@@ -461,6 +461,17 @@ def test_a_missing_id_does_not_hide_another_unknown_name() -> None:
     assert {each.table for each in found} == {"station 3", "compressor", 'station "tank"'}
 
 
+def test_a_table_without_an_id_does_not_hide_a_station_that_hangs_nowhere() -> None:
+    text = GOOD.replace('after = "riser"\nset', 'after = "nowhere"\nset')
+    assert len(problems(text + '[[station]]\nkind = "pipe"\nafter = "tank"\n')) == 2
+    assert len(problems(text + '[[station]]\nid = "tank"\nkind = "pipe"\nafter = "tank"\n')) == 2
+
+
+def test_a_set_pressure_is_checked_beside_a_switch_that_is_wrong() -> None:
+    text = GOOD.replace('cut_in = "6 bar"', 'cut_in = "9 bar"').replace('"3 bar"', '"12 bar"')
+    assert {each.key for each in problems(text)} == {"cut_in", "set"}
+
+
 # --- slips of the pen, everywhere in a file ---
 
 
