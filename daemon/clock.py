@@ -18,8 +18,11 @@ HOUR_US = 60 * MINUTE_US
 DAY_US = 24 * HOUR_US
 
 _RFC3339 = re.compile(
-    r"(\d{4})-(\d{2})-(\d{2})[Tt ](\d{2}):(\d{2}):(\d{2})(\.\d{1,9})?([Zz]|[+-]\d{2}:\d{2})\Z"
+    r"(\d{4})-(\d{2})-(\d{2})[Tt ](\d{2}):(\d{2}):(\d{2})(\.\d{1,9})?([Zz]|[+-]\d{2}:\d{2})\Z",
+    re.ASCII,
 )
+_EARLIEST_US = int(datetime.min.replace(tzinfo=UTC).timestamp()) * SECOND_US
+_LATEST_US = int(datetime.max.replace(tzinfo=UTC, microsecond=0).timestamp()) * SECOND_US
 
 
 class Clock(Protocol):
@@ -80,13 +83,18 @@ def parse_rfc3339(text: str) -> int:
     fraction = round(float(match[7] or 0) * SECOND_US)
     offset_us = 0
     if match[8] not in "Zz":
+        if not (int(match[8][1:3]) < 24 and int(match[8][4:6]) < 60):
+            raise ValueError(f'"{text}" has an offset that does not exist; write it like +01:00')
         sign = -1 if match[8][0] == "-" else 1
         offset_us = sign * (int(match[8][1:3]) * HOUR_US + int(match[8][4:6]) * MINUTE_US)
     try:
         whole = datetime(year, month, day, hour, minute, second, tzinfo=UTC)
     except ValueError as error:
         raise ValueError(f'"{text}" is not a time that exists ({error})') from None
-    return int(whole.timestamp()) * SECOND_US + fraction - offset_us
+    time_us = int(whole.timestamp()) * SECOND_US + fraction - offset_us
+    if not _EARLIEST_US <= time_us <= _LATEST_US:  # the offset took it out of the calendar
+        raise ValueError(f'"{text}" is not a time that exists (year out of range)')
+    return time_us
 
 
 def format_rfc3339(time_us: int) -> str:

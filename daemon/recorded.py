@@ -2,38 +2,26 @@
 
 from __future__ import annotations
 
-import csv
 import math
-from collections.abc import Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
 
 import numpy as np
 
 from daemon.clock import parse_rfc3339
+from daemon.csv_rows import BadRow, Rows, number, shown
 from daemon.errors import ReplayError, UnitError
 from daemon.journal import Drain, Entry
 from daemon.moisture.description import WATER_KG_PER_M3, Fixed, Measured
 from daemon.site.types import Site
-from daemon.units import recorded_to_si, recorded_units, to_si
+from daemon.units import recorded_from_si, recorded_to_si, recorded_units, to_si
 from sensors.reading import Channel, Reading, reading
 
 READINGS_HEADER = ["time", "channel", "value", "unit"]
 DRAINS_HEADER = ["time", "trap", "volume", "unit"]
 DRAIN_UNITS = ("ml", "L", "oz", "gal")
-
-
-@dataclass(frozen=True, slots=True)
-class BadRow:
-    """A row that cannot be used."""
-
-    file: str
-    line: int
-    column: str
-    problem: str
-
-    def __str__(self) -> str:
-        return f"{self.file}, line {self.line}, column {self.column}: {self.problem}"
+_EARLIEST_US = parse_rfc3339("1970-01-01T00:00:00Z")
+_LATEST_US = parse_rfc3339("2200-01-01T00:00:00Z")
 
 
 @dataclass(slots=True)
@@ -42,62 +30,6 @@ class Recorded:
 
     readings: list[Reading] = field(default_factory=list)
     bad: list[BadRow] = field(default_factory=list)
-
-
-class _Rows:
-    """The rows of one CSV file, with what to do about a bad one."""
-
-    def __init__(self, path: Path, header: list[str], skip_bad: bool) -> None:
-        self.path, self.header, self.skip_bad = path, header, skip_bad
-        self.bad: list[BadRow] = []
-        self.line = 1
-
-    def __iter__(self) -> Iterator[list[str]]:
-        try:
-            with self.path.open(encoding="utf-8-sig", newline="") as file:
-                rows = csv.reader(file, strict=True)
-                self._check_header(next(rows, None))
-                yield from self._good_rows(rows)
-        except FileNotFoundError:
-            raise ReplayError(f"{self.path}: there is no such file") from None
-        except OSError as error:
-            raise ReplayError(f"{self.path}: cannot be read ({error.strerror})") from None
-        except UnicodeDecodeError as error:
-            raise ReplayError(
-                f"{self.path}, after line {self.line}: not UTF-8 ({error.reason}); "
-                "save the file as UTF-8"
-            ) from None
-        except csv.Error as error:
-            raise ReplayError(
-                f"{self.path}, line {self.line + 1}: not CSV as in RFC 4180 ({error})"
-            ) from None
-
-    def _good_rows(self, rows: Iterator[list[str]]) -> Iterator[list[str]]:
-        reader_line = rows.line_num  # type: ignore[attr-defined]
-        for row in rows:
-            self.line, reader_line = reader_line + 1, rows.line_num  # type: ignore[attr-defined]
-            if not row:
-                continue
-            if len(row) != len(self.header):
-                self.refuse("time", f"{len(row)} columns; expected {', '.join(self.header)}")
-                continue
-            yield row
-
-    def _check_header(self, header: list[str] | None) -> None:
-        if header is None:
-            raise ReplayError(f"{self.path}: empty; expected {','.join(self.header)}")
-        if [name.strip() for name in header] != self.header:
-            raise ReplayError(
-                f'{self.path}, line 1: the header is "{",".join(header)}"; '
-                f"expected {','.join(self.header)}"
-            )
-
-    def refuse(self, column: str, problem: str) -> None:
-        """Stop at a bad row, or note it and go on."""
-        row = BadRow(str(self.path), self.line, column, problem)
-        if not self.skip_bad:
-            raise ReplayError(f"{row} (or leave bad rows out with --skip-bad)")
-        self.bad.append(row)
 
 
 @dataclass(slots=True)
@@ -122,6 +54,7 @@ class _OtherReference:
     channel: Channel
     value_pa: float
     time_us: int
+    written: str
 
 
 class _ReadingsFile:
@@ -129,11 +62,11 @@ class _ReadingsFile:
 
     def __init__(self, site: Site, path: Path, skip_bad: bool) -> None:
         self.site = site
-        self.rows = _Rows(path, READINGS_HEADER, skip_bad)
+        self.rows = Rows(path, READINGS_HEADER, skip_bad)
         self.readings: list[Reading] = []
         self.waiting: list[_OtherReference] = []
         self.last_us: dict[str, int] = {}
-        self._time = ("", 0)
+        self._time: tuple[str | None, int] = (None, 0)
 
     def read(self) -> Recorded:
         """All readings, in order of time; rows of one time stay in the file's order."""
@@ -144,6 +77,7 @@ class _ReadingsFile:
         kept.sort(key=lambda found: found.time_us)
         if not kept:
             raise ReplayError(f"{self.rows.path}: no usable readings; a replay needs at least one")
+        self.rows.bad.sort(key=lambda row: row.line)
         return Recorded(kept, self.rows.bad)
 
     def _row(self, time: str, name: str, value: str, unit: str) -> None:
@@ -153,64 +87,73 @@ class _ReadingsFile:
         channel = self.site.channels.get(name.strip())
         if channel is None:
             known = ", ".join(sorted(self.site.channels)) or "none: the site file has no sensors"
-            self.rows.refuse("channel", f'"{name}" is not a channel of this site (known: {known})')
+            self.rows.refuse(
+                "channel", f"{shown(name)} is not a channel of this site (known: {known})"
+            )
             return
         if time_us < self.last_us.get(channel.name, time_us):
             self.rows.refuse(
-                "time", f"{time} is before the row of {channel.name} above it; sort them by time"
+                "time",
+                f"{shown(time)} is before the row of {channel.name} above it; sort them by time",
             )
             return
-        number = self._number(value)
-        if number is None:
-            return
-        if self._accept(channel, number, unit.strip(), time_us):
+        if self._accept(channel, value.strip(), unit.strip(), time_us):
             self.last_us[channel.name] = time_us
 
     def _parse_time(self, text: str) -> int | None:
         if self._time[0] != text:
             try:
-                self._time = (text, parse_rfc3339(text))
+                self._time = (text, _time_us(text))
             except ValueError as error:
                 self.rows.refuse("time", str(error))
                 return None
         return self._time[1]
 
-    def _number(self, text: str) -> float | None:
-        try:
-            number = float(text)
-        except ValueError:
-            number = math.nan
-        if not math.isfinite(number):
-            self.rows.refuse("value", f'"{text}" is not a number; write it like 21.5')
-            return None
-        return number
-
-    def _accept(self, channel: Channel, number: float, unit: str, time_us: int) -> bool:
+    def _accept(self, channel: Channel, text: str, unit: str, time_us: int) -> bool:
+        value = number(text)
+        if value is None:
+            self.rows.refuse("value", f"{shown(text)} is not a number; write it like 21.5")
+            return False
         if unit not in recorded_units(channel.quantity):
             known = ", ".join(each or "an empty unit" for each in recorded_units(channel.quantity))
-            self.rows.refuse("unit", f'"{unit}" does not fit {channel.name}; expected {known}')
+            self.rows.refuse("unit", f"{shown(unit)} does not fit {channel.name}; expected {known}")
             return False
+        written = shown(f"{text} {unit}".strip())
         if self._is_other_reference(channel, unit):
-            value_pa = to_si(number, unit[:3], "pressure")
+            value_pa = to_si(value, unit[:3], "pressure")
             self.waiting.append(
-                _OtherReference(len(self.readings), self.rows.line, channel, value_pa, time_us)
+                _OtherReference(
+                    len(self.readings), self.rows.line, channel, value_pa, time_us, written
+                )
             )
             self.readings.append(Reading("", math.nan, time_us))
             return True
         try:
-            value = recorded_to_si(number, unit, channel.quantity, gauge=channel.gauge)
+            value_si = recorded_to_si(value, unit, channel.quantity, gauge=channel.gauge)
         except UnitError as error:
             self.rows.refuse("value", str(error))
             return False
-        return self._append(channel, value, time_us, f"{number:g} {unit}".strip())
-
-    def _append(self, channel: Channel, value: float, time_us: int, shown: str) -> bool:
-        found = reading(channel, value, time_us)
-        if not found.good:
-            self.rows.refuse("value", f"{shown} cannot be from {channel.name}: {found.fault} (SI)")
+        found = self._within(channel, value_si, time_us, written)
+        if found is None:
             return False
         self.readings.append(found)
         return True
+
+    def _within(
+        self, channel: Channel, value_si: float, time_us: int, written: str
+    ) -> Reading | None:
+        """The reading, unless the part cannot give such a value."""
+        found = reading(channel, value_si, time_us)
+        if found.good:
+            return found
+        low, high = (
+            "{:.5g} {}".format(*recorded_from_si(end, channel.quantity, gauge=channel.gauge))
+            for end in (channel.lowest, channel.highest)
+        )
+        self.rows.refuse(
+            "value", f"{written} cannot be from {channel.name}: expected {low} to {high}"
+        )
+        return None
 
     def _is_other_reference(self, channel: Channel, unit: str) -> bool:
         return (
@@ -229,16 +172,16 @@ class _ReadingsFile:
             self.rows.line = row.line
             if barometer is None:
                 self.rows.refuse(
-                    "unit", "needs the barometer, and the intake's pressure is not known"
+                    "unit",
+                    f"{row.written} needs the barometer of that time, and the file has no usable "
+                    f"reading of it; expected what {row.channel.name} is by itself",
                 )
                 continue
-            atmosphere_pa = barometer.at(row.time_us)
             sign = -1.0 if row.channel.gauge else 1.0
-            found = reading(row.channel, row.value_pa + sign * atmosphere_pa, row.time_us)
-            if found.good:
+            value_pa = row.value_pa + sign * barometer.at(row.time_us)
+            found = self._within(row.channel, value_pa, row.time_us, row.written)
+            if found is not None:
                 self.readings[row.position] = found
-            else:
-                self.rows.refuse("value", f"cannot be from {row.channel.name}: {found.fault} (SI)")
 
     def _barometer(self) -> _Barometer | None:
         source = self.site.line.stations[0].pressure
@@ -267,7 +210,7 @@ def read_drains(
     site: Site, path: Path, first_us: int, skip_bad: bool = False
 ) -> tuple[list[Entry], list[BadRow]]:
     """Drains from a CSV of `time,trap,volume,unit`, in order of time, as journal entries."""
-    rows = _Rows(path, DRAINS_HEADER, skip_bad)
+    rows = Rows(path, DRAINS_HEADER, skip_bad)
     found: list[tuple[int, Drain]] = []
     for time, trap, volume, unit in rows:
         entry = _drain_row(site, rows, (time, trap.strip(), volume.strip(), unit.strip()), first_us)
@@ -279,22 +222,22 @@ def read_drains(
 
 
 def _drain_row(
-    site: Site, rows: _Rows, cells: tuple[str, str, str, str], first_us: int
+    site: Site, rows: Rows, cells: tuple[str, str, str, str], first_us: int
 ) -> tuple[int, Drain] | None:
     """A row as a time and a drain; a bad one is refused by its column."""
     time, trap, volume, unit = cells
     try:
-        at_us = parse_rfc3339(time)
+        at_us = _time_us(time)
     except ValueError as error:
         rows.refuse("time", str(error))
         return None
     known = ", ".join(site.traps)
     if at_us < first_us:
-        rows.refuse("time", f"{time} is before the first reading; leave the row out")
+        rows.refuse("time", f"{shown(time)} is before the first reading; leave the row out")
     elif trap not in site.traps:
-        rows.refuse("trap", f'"{trap}" is not a trap of this site (known: {known})')
+        rows.refuse("trap", f"{shown(trap)} is not a trap of this site (known: {known})")
     elif not volume and unit:
-        rows.refuse("unit", f'"{unit}" without a volume; leave both empty if not measured')
+        rows.refuse("unit", f"{shown(unit)} without a volume; leave both empty if not measured")
     elif not volume:
         return at_us, Drain(trap)
     else:
@@ -303,19 +246,24 @@ def _drain_row(
     return None
 
 
-def _measured_drain(rows: _Rows, trap: str, volume: str, unit: str) -> Drain | None:
-    try:
-        number = float(volume)
-    except ValueError:
-        number = math.nan
-    if not (math.isfinite(number) and number >= 0.0):
+def _measured_drain(rows: Rows, trap: str, volume: str, unit: str) -> Drain | None:
+    amount = number(volume)
+    if amount is None or amount < 0.0:
         rows.refuse(
-            "volume", f'"{volume}" is not a volume; 0 means found empty, nothing: not measured'
+            "volume",
+            f"{shown(volume)} is not a volume; 0 means found empty, nothing: not measured",
         )
         return None
-    if unit not in DRAIN_UNITS and not (number == 0.0 and not unit):
-        rows.refuse("unit", f'"{unit}" is not one of {", ".join(DRAIN_UNITS)}')
+    if unit not in DRAIN_UNITS and not (amount == 0.0 and not unit):
+        rows.refuse("unit", f"{shown(unit)} is not one of {', '.join(DRAIN_UNITS)}")
         return None
-    if number == 0.0:
+    if amount == 0.0:
         return Drain(trap, "empty", 0.0)
-    return Drain(trap, "emptied", to_si(number, unit, "volume") * WATER_KG_PER_M3)
+    return Drain(trap, "emptied", to_si(amount, unit, "volume") * WATER_KG_PER_M3)
+
+
+def _time_us(text: str) -> int:
+    time_us = parse_rfc3339(text)
+    if not _EARLIEST_US <= time_us < _LATEST_US:
+        raise ValueError(f'"{text}" is outside the years 1970 to 2199; correct the year')
+    return time_us

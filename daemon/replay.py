@@ -20,6 +20,8 @@ from daemon.journal import Drain, Entry
 from daemon.moisture.air import REFERENCE_DRY_AIR_KG_PER_M3
 from daemon.moisture.description import WATER_KG_PER_M3
 from daemon.moisture.ensemble import Array, percentiles
+from daemon.moisture.learning import Learned
+from daemon.parameters import parameters_table
 from daemon.site.types import Site
 from daemon.state import CoreState, HourTotals, Inputs, Mark
 from daemon.ticks import ticks
@@ -44,11 +46,13 @@ class Result:
     transitions: list[Transition] = field(default_factory=list)
     begun_us: int = 0
     ticks: int = 0
+    learned: list[Learned] = field(default_factory=list)
 
     def add(self, advanced: tuple[CoreState, Estimate, list[Transition]]) -> None:
         """Take in what one advance gave."""
         self.state, estimate, transitions = advanced
         self.marks += estimate.marks
+        self.learned += estimate.learned
         self.transitions += transitions
 
     def finish(self, core: Core) -> None:
@@ -167,18 +171,17 @@ def summarise(core: Core, result: Result, entries: Sequence[Entry]) -> dict[str,
     state, plan = result.state.model, core.model.plan
     hours = [mark.hour for mark in result.marks if mark.hour is not None]
     ledger = state.ledger
+    held = core.model.contents(state)
     names = {plan.stations[row].id: row for row in plan.traps}
     return {
-        "from": format_rfc3339(result.begun_us),
-        "to": format_rfc3339(result.state.time_us),
+        "from": _whole(result.begun_us),
+        "to": _whole(result.state.time_us),
         "ticks": result.ticks,
         "members": core.site.line.members,
         "seed": core.site.line.seed,
         "water_in_ml": _interval(ledger.water_in * ML_PER_KG),
         "shed_ml": {name: _interval(ledger.shed[row] * ML_PER_KG) for name, row in names.items()},
-        "held_ml": {
-            name: _interval(state.water.trap[row] * ML_PER_KG) for name, row in names.items()
-        },
+        "held_ml": {name: _interval(held[row] * ML_PER_KG) for name, row in names.items()},
         "drained_ml": _interval(ledger.drained * ML_PER_KG),
         "vapor_out_ml": _interval(ledger.vapor_out * ML_PER_KG),
         "liquid_out_ml": _interval(ledger.liquid_out * ML_PER_KG),
@@ -186,6 +189,19 @@ def summarise(core: Core, result: Result, entries: Sequence[Entry]) -> dict[str,
         "drawn_in_reference_l": _interval(state.air.drawn * REFERENCE_L_PER_KG),
         "used_reference_l": _interval(state.air.used * REFERENCE_L_PER_KG),
         "duty": _duty(hours, result),
+        "corrected_by_learning_ml": _interval(ledger.corrected * ML_PER_KG),
+        "flagged_drains": [
+            {
+                "time": format_rfc3339(each.at_us),
+                "trap": each.trap,
+                "measured_ml": round(each.measured_kg * ML_PER_KG, 3),
+                "expected_ml": [round(kg * ML_PER_KG, 3) for kg in each.expected_kg],
+                "sigmas": round(each.sigmas, 2),
+            }
+            for each in result.learned
+            if each.flagged
+        ],
+        "parameters": parameters_table(core, result.state),
         "balance_residual": float(ledger.residual(state.water).max()),
     }
 
