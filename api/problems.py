@@ -9,7 +9,6 @@ from http import HTTPStatus
 from typing import Any
 from urllib.parse import quote
 
-from fastapi import Request
 from pydantic import BaseModel, Field
 from starlette.responses import Response
 
@@ -196,8 +195,3 @@ def answered_by(*kinds: str) -> dict[int | str, dict[str, Any]]:
             }
         }
     return answers
-
-
-def path_of(request: Request) -> str:
-    """The path that was asked for, without its query."""
-    return request.url.path

@@ -14,6 +14,7 @@ from daemon.errors import DriplegError
 
 START_WITHIN_S = 20.0
 FINISH_WITHIN_S = 3  # for answers on their way when the server stops
+JOIN_WITHIN_S = 2.0  # for its thread after that
 log = logging.getLogger(__name__)
 
 
@@ -87,6 +88,8 @@ class ApiServer:
     def _serve(self, listener: socket.socket) -> None:
         try:
             self._uvicorn.run(sockets=[listener])
+        except SystemExit:
+            log.error("the API server could not start")  # uvicorn has logged why
         except Exception:
             log.exception("the API server stopped by itself")
         finally:
@@ -98,10 +101,10 @@ class ApiServer:
         if self._thread is None:
             return
         self._uvicorn.should_exit = True
-        self._thread.join(FINISH_WITHIN_S + 2.0)
+        self._thread.join(FINISH_WITHIN_S + JOIN_WITHIN_S)
         if self._thread.is_alive():
             self._uvicorn.force_exit = True
-            self._thread.join(2.0)
+            self._thread.join(JOIN_WITHIN_S)
         if self._thread.is_alive():
             raise ServerError("the API server did not stop; a request does not come to an end")
 

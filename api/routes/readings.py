@@ -86,7 +86,6 @@ def _readings_out(
     values = series.values.tolist()
     if units != "si":  # in SI the recorded value goes out to the last bit
         values = [float(f"{shown.from_si(value):.{PLACES}g}") for value in values]
-    bad = np.isnan(series.values)
     # Checked here and not again by the model: for a week of readings that would take seconds.
     return ReadingsOut.model_construct(
         channel=channel.name,
@@ -96,12 +95,10 @@ def _readings_out(
         from_=format_rfc3339(between_us[0]),
         to=format_rfc3339(between_us[1]),
         times=times,
-        values=[
-            None if is_bad else value for value, is_bad in zip(values, bad.tolist(), strict=True)
-        ],
+        values=values,  # NaN becomes null as it is written
         faults=[
             FaultOut(time=times[place], reason=series.faults[place] or "not a number")
-            for place in np.flatnonzero(bad)
+            for place in np.flatnonzero(np.isnan(series.values))
         ],
     )
 

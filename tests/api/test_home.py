@@ -70,6 +70,13 @@ def test_a_calendar_reminder_says_that_it_is_one(running: FakeRunning, client: C
     assert "Drain it: the calendar asks for it." in text_of(client)
 
 
+def test_a_trap_without_a_calendar_that_is_not_due_says_so(
+    running: FakeRunning, client: Client
+) -> None:
+    running.views[1] = replace(running.views[1], due=False, because=None)
+    assert "Not due by volume." in text_of(client)
+
+
 def test_the_page_cautions_where_the_act_happens(client: Client) -> None:
     text = text_of(client)
     assert "Crack a drain valve slowly" in text

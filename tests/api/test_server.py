@@ -2,15 +2,19 @@
 
 from __future__ import annotations
 
+import errno
 import logging
+import os
 import signal
 import socket
 import threading
 import time
-from collections.abc import Iterator
+from collections.abc import AsyncIterator, Iterator
+from contextlib import asynccontextmanager, suppress
 
 import httpx
 import pytest
+from fastapi import FastAPI
 
 from api.app import create_app
 from api.server import ApiServer, ServerError
@@ -97,6 +101,108 @@ def test_an_address_that_is_not_ours_is_named(running: FakeRunning, host: str, w
     with pytest.raises(ServerError) as error:
         ApiServer(create_app(running), host, 0).start()
     assert words in str(error.value)
+
+
+@pytest.mark.parametrize(
+    ("number", "words"),
+    [
+        (errno.EACCES, "may not listen on 127.0.0.1 port 80: ports below 1024 are for root"),
+        (errno.ENOBUFS, "cannot listen on 127.0.0.1 port 80: No buffer space available"),
+    ],
+)
+def test_what_the_system_refuses_is_told_in_words(
+    running: FakeRunning, monkeypatch: pytest.MonkeyPatch, number: int, words: str
+) -> None:
+    def refuse(_socket: socket.socket, _address: object) -> None:
+        raise OSError(number, os.strerror(number))
+
+    monkeypatch.setattr("socket.socket.bind", refuse)
+    with pytest.raises(ServerError) as error:
+        ApiServer(create_app(running), "127.0.0.1", 80).start()
+    assert words in str(error.value)
+
+
+def test_a_server_is_started_once(server: ApiServer) -> None:
+    server.start()
+    with pytest.raises(ServerError, match="was started before"):
+        server.start()
+
+
+def test_an_application_that_does_not_start_is_an_error_and_leaves_no_thread() -> None:
+    @asynccontextmanager
+    async def broken(app: FastAPI | None) -> AsyncIterator[None]:
+        if app is not None:
+            raise RuntimeError("no")
+        yield
+
+    before = settled_threads()
+    with pytest.raises(ServerError, match="the API did not start on "):
+        ApiServer(FastAPI(lifespan=broken), "127.0.0.1", 0).start()
+    assert settled_threads() == before
+
+
+@pytest.fixture
+def short_stops(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("api.server.FINISH_WITHIN_S", 0)
+    monkeypatch.setattr("api.server.JOIN_WITHIN_S", 0.3)
+
+
+class Stuck:
+    """An application with a handler that does not come to an end until it is let go."""
+
+    def __init__(self, holds_the_loop: bool) -> None:
+        self.reached, self.release = threading.Event(), threading.Event()
+        self.app = FastAPI()
+        self.app.get("/stuck")(self._on_loop if holds_the_loop else self._wait)
+
+    def _wait(self) -> None:
+        self.reached.set()
+        self.release.wait(20.0)
+
+    async def _on_loop(self) -> None:
+        self._wait()
+
+    def ask(self, url: str) -> threading.Thread:
+        """Ask from a thread, which ends when the connection does."""
+
+        def get() -> None:
+            with suppress(httpx.HTTPError):
+                httpx.get(url + "stuck", timeout=20.0)
+
+        asking = threading.Thread(target=get)
+        asking.start()
+        assert self.reached.wait(10.0)
+        return asking
+
+
+@pytest.mark.usefixtures("short_stops")
+def test_a_handler_that_waits_for_ever_does_not_hold_a_stop_up() -> None:
+    stuck = Stuck(holds_the_loop=False)
+    server = ApiServer(stuck.app, "127.0.0.1", 0)
+    server.start()
+    asking = stuck.ask(server.url)
+    try:
+        server.stop()
+        asking.join(5.0)
+        assert not asking.is_alive()
+    finally:
+        stuck.release.set()
+        asking.join()
+
+
+@pytest.mark.usefixtures("short_stops")
+def test_a_server_that_cannot_be_stopped_is_an_error() -> None:
+    stuck = Stuck(holds_the_loop=True)
+    server = ApiServer(stuck.app, "127.0.0.1", 0)
+    server.start()
+    asking = stuck.ask(server.url)
+    try:
+        with pytest.raises(ServerError, match="a request does not come to an end"):
+            server.stop()
+    finally:
+        stuck.release.set()
+        asking.join()
+    server.stop()
 
 
 def test_ipv6_works_where_the_machine_has_it(running: FakeRunning) -> None:
