@@ -19,13 +19,14 @@ from sensors.registry import Hardware, Key
 
 GAIN = 1  # full scale 4.096 V, 125 uV a count
 VOLTS_PER_COUNT = 4.096 / 32768
+# with a supply of 3.3 V the inputs' protection conducts from 3.6 V on and hides what is beyond
+HIGHEST_V = 3.59
 RATE = 250  # conversions a second; 4.0 ms, at most 10 % more
 _CONVERSION_S = 0.0045
 _POLL_S = 0.001
 _POLLS = 5
 _READY = 0x8000
 _SINGLE_ENDED = 4  # the multiplexer's code of input 0 against ground
-_FULL_SCALE = 32767
 
 ADC_KEYS = (
     Key("bus", keys.whole(0, 99), 1, "number of the I2C bus: 1 is /dev/i2c-1"),
@@ -78,7 +79,7 @@ class Adc:
     def volts(self, number: int) -> float:
         """The voltage at an input, V. SensorFault when the converter cannot be believed.
 
-        A voltage at full scale is a fault too: the true one may be any higher.
+        A voltage at the end of what the inputs can take is a fault too: the true one may be higher.
         """
         chip = self._chip
         try:
@@ -91,9 +92,11 @@ class Adc:
         if again != count & 0xFFFF:
             detail = f"0x{count & 0xFFFF:04x} and 0x{again:04x}"
             raise SensorFault(self._sensor, reasons.DOES_NOT_REPEAT, detail)
-        if count >= _FULL_SCALE:
-            raise SensorFault(self._sensor, reasons.SIGNAL_HIGH, "the converter is at full scale")
-        return float(count * VOLTS_PER_COUNT)
+        volts = float(count * VOLTS_PER_COUNT)
+        if volts >= HIGHEST_V:
+            detail = f"{volts:.2f} V is more than the converter can take"
+            raise SensorFault(self._sensor, reasons.SIGNAL_HIGH, detail)
+        return volts
 
     def _wrong(self, chip: Any, reason: str) -> SensorFault:
         detail = f"wrote 0x{chip.written:04x}, reads 0x{chip.read_back:04x}"

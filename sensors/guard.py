@@ -29,13 +29,21 @@ def faults(sensor: str) -> Iterator[None]:
         raise
     except ImportError as error:
         raise SensorFault(sensor, reasons.LIBRARY_MISSING, str(error)) from error
-    except RuntimeError as error:  # the BME280 library on another chip's identifier
-        raise SensorFault(sensor, reasons.WRONG_CHIP, str(error)) from error
     except OSError as error:
         known = error.errno in _NOT_THERE
         reason = reasons.NO_ANSWER if known else reasons.BUS_UNOPENED
         raise SensorFault(sensor, reason, str(error)) from error
-    except ValueError as error:  # the bus library, when nothing acknowledges at opening
-        raise SensorFault(sensor, reasons.NO_ANSWER, str(error)) from error
+    except (ValueError, RuntimeError) as error:
+        raise SensorFault(sensor, _reason(error), str(error)) from error
     except ArithmeticError as error:  # the BME280 library divides by a calibration word
         raise SensorFault(sensor, reasons.CALIBRATION, str(error)) from error
+
+
+def _reason(error: Exception) -> str:
+    """The vendors' libraries say these two with built-in exceptions; others are our mistake."""
+    text = str(error)
+    if text.startswith("No I2C device at address"):
+        return reasons.NO_ANSWER
+    if text.startswith("Failed to find BME280"):
+        return reasons.WRONG_CHIP
+    return reasons.DRIVER_FAILED

@@ -8,7 +8,7 @@ from daemon.clock import SystemClock
 from sensors.i2c import LinuxI2C
 from sensors.inbox import Inbox
 from sensors.lines import GpiodLines
-from sensors.modbus import ModbusPort, PymodbusReader
+from sensors.modbus import TIMEOUT_S, ModbusPort, PymodbusReader
 
 ONE_WIRE_ROOT = "/sys/bus/w1/devices"
 
@@ -16,8 +16,14 @@ ONE_WIRE_ROOT = "/sys/bus/w1/devices"
 class RealHardware:
     """Opens a bus when it is first asked for, and once only. Safe to call from any thread."""
 
-    def __init__(self, one_wire_root: str = ONE_WIRE_ROOT, inbox: Inbox | None = None) -> None:
+    def __init__(
+        self,
+        one_wire_root: str = ONE_WIRE_ROOT,
+        inbox: Inbox | None = None,
+        modbus_timeout_s: float = TIMEOUT_S,
+    ) -> None:
         self._one_wire_root = one_wire_root
+        self._modbus_timeout_s = modbus_timeout_s
         self._inbox = Inbox() if inbox is None else inbox
         self._clock = SystemClock()
         self._never = threading.Event()
@@ -44,7 +50,7 @@ class RealHardware:
 
     def modbus(self, port: ModbusPort) -> PymodbusReader:
         with self._lock:
-            return self._modbus.setdefault(port, PymodbusReader(port))
+            return self._modbus.setdefault(port, PymodbusReader(port, self._modbus_timeout_s))
 
     def inbox(self) -> Inbox:
         return self._inbox

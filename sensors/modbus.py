@@ -16,7 +16,7 @@ from dataclasses import dataclass
 from typing import Any, Literal, Protocol
 
 Kind = Literal["holding", "input"]
-TIMEOUT_S = 0.5  # a device answers within some tens of milliseconds
+TIMEOUT_S = 1.0  # a device answers within some tens of milliseconds; a busy Pi looks late
 _HOST = re.compile(r"([A-Za-z0-9.-]+|\[[0-9A-Fa-f:]+\]):(\d{1,5})\Z")
 _DEVICE = re.compile(r"/dev/[\w./-]+\Z")
 _LINE = re.compile(r"(1200|2400|4800|9600|19200|38400|57600|115200)\s+8([NEO])([12])\Z")
@@ -130,6 +130,8 @@ class PymodbusReader:
         port = self._port
         if port.tcp_port:
             return ModbusTcpClient(port.host, port=port.tcp_port, **common)
+        import serial  # noqa: F401, PLC0415  # so that a missing one is named as what it is
+
         return ModbusSerialClient(
             port.host, baudrate=port.baud, parity=port.parity, stopbits=port.stop_bits, **common
         )

@@ -69,7 +69,12 @@ class PressureTransducer:
     def _supply_v(self) -> float:
         if self._supply_input is None:
             return NOMINAL_SUPPLY_V
-        volts = self._adc.volts(self._supply_input) / self._divider
+        try:
+            volts = self._adc.volts(self._supply_input) / self._divider
+        except SensorFault as fault:
+            if fault.reason != reasons.SIGNAL_HIGH:
+                raise
+            raise SensorFault(self._id, reasons.SUPPLY, fault.detail) from None
         if not SUPPLY_LOWEST_V <= volts <= SUPPLY_HIGHEST_V:
             raise SensorFault(self._id, reasons.SUPPLY, f"{volts:.2f} V")
         return volts

@@ -34,13 +34,24 @@ def wire() -> Iterator[Wire]:
         yield made
 
 
-@pytest.fixture
-def hardware() -> Iterator[RealHardware]:
+def machine(timeout_s: float) -> Iterator[RealHardware]:
     before = threading.active_count()
-    real = RealHardware()
+    real = RealHardware(modbus_timeout_s=timeout_s)
     yield real
     real.close()
     assert threading.active_count() <= before
+
+
+@pytest.fixture
+def hardware() -> Iterator[RealHardware]:
+    """Waits long, so that a busy machine fails no test."""
+    yield from machine(20.0)
+
+
+@pytest.fixture
+def hasty() -> Iterator[RealHardware]:
+    """Waits about as long as a real one, for answers that never come."""
+    yield from machine(1.5)
 
 
 def transmitter(port: str, **said: object) -> SensorConfig:
@@ -62,16 +73,16 @@ def test_registers_are_read_over_a_serial_line(wire: Wire, hardware: RealHardwar
         assert values(sensor.read(START_US))["dew_point"] == pytest.approx(283.15, abs=0.0051)
 
 
-def test_a_spoiled_frame_is_a_bad_checksum_and_heals(wire: Wire, hardware: RealHardware) -> None:
-    sensor = open_part(transmitter(wire.ends[0], line="19200 8N1"), hardware)
+def test_a_spoiled_frame_is_a_bad_checksum_and_heals(wire: Wire, hasty: RealHardware) -> None:
+    sensor = open_part(transmitter(wire.ends[0], line="19200 8N1"), hasty)
     wire.spoil = lambda data: bytes([*data[:-3], data[-3] ^ 1, *data[-2:]])
     assert fault_of(sensor) == reasons.BAD_CHECKSUM
     wire.spoil = lambda data: data
     assert values(sensor.read(START_US))["dew_point"] == pytest.approx(283.15, abs=0.0051)
 
 
-def test_a_silent_line_is_no_answer(wire: Wire, hardware: RealHardware) -> None:
-    sensor = open_part(transmitter(wire.ends[0], line="19200 8N1"), hardware)
+def test_a_silent_line_is_no_answer(wire: Wire, hasty: RealHardware) -> None:
+    sensor = open_part(transmitter(wire.ends[0], line="19200 8N1"), hasty)
     wire.spoil = lambda data: b""
     assert fault_of(sensor) == reasons.NO_ANSWER
 
@@ -107,9 +118,9 @@ def test_a_host_that_is_not_there_does_not_answer(hardware: RealHardware) -> Non
     assert fault_of(open_part(transmitter(f"127.0.0.1:{gone}"), hardware)) == reasons.NO_ANSWER
 
 
-def test_another_device_number_is_no_reading(port: int, hardware: RealHardware) -> None:
+def test_another_device_number_is_no_reading(port: int, hasty: RealHardware) -> None:
     one = config("dryer", "dew-point-modbus", port=f"127.0.0.1:{port}", device=8, registers=MAP)
-    sensor = open_part(one, hardware)
+    sensor = open_part(one, hasty)
     assert fault_of(sensor) in (reasons.NO_ANSWER, reasons.ERROR_ANSWER)
 
 

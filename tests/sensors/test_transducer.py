@@ -97,11 +97,10 @@ def test_an_absolute_range_gives_an_absolute_channel() -> None:
     assert not channel.gauge
 
 
-@pytest.mark.parametrize("supply_v", [4.2, 5.35 + 0.2])
+@pytest.mark.parametrize("supply_v", [4.2, 4.45, 5.45, 5.6, 9.0])
 def test_a_sagging_or_high_rail_is_named(
     adc: EmulatedAds1115, sensor: Sensor, supply_v: float
 ) -> None:
-    adc.supply_v = 5.0
     adc.rail.supply_v = supply_v
     assert fault_of(sensor) == reasons.SUPPLY
 
@@ -116,12 +115,14 @@ def test_a_pressure_far_above_the_range_is_named(part: Transducer, sensor: Senso
     assert fault_of(sensor) == reasons.SIGNAL_HIGH
 
 
-def test_a_voltage_at_full_scale_is_no_reading(
-    hardware: EmulatedHardware, adc: EmulatedAds1115
+@pytest.mark.parametrize(("own_supply_v", "volts"), [(5.0, 4.2), (3.3, 3.61), (3.3, 5.0)])
+def test_a_voltage_beyond_the_inputs_is_no_reading(
+    hardware: EmulatedHardware, adc: EmulatedAds1115, own_supply_v: float, volts: float
 ) -> None:
-    adc.supply_v = 5.0
-    adc.inputs[1] = Rail(supply_v=4.2, divider=1.0)
-    with pytest.raises(SensorFault, match="full scale"):
+    # SBAS444, section 6.1: no input more than 0.3 V above the supply
+    adc.supply_v = own_supply_v
+    adc.inputs[1] = Rail(supply_v=volts, divider=1.0)
+    with pytest.raises(SensorFault, match="more than the converter can take"):
         Adc("x", hardware, 1, 0x48).volts(1)
 
 
