@@ -226,8 +226,6 @@ class FaultOut(BaseModel):
 class ReadingsOut(BaseModel):
     """Readings of one channel: two arrays of one length, and the faults with their reasons."""
 
-    model_config = ConfigDict(populate_by_name=True)
-
     channel: str = Field(examples=["tank-gauge.pressure"])
     quantity: str = Field(examples=["pressure"])
     unit: str = Field(description="of the values; 1 for a fraction or a contact", examples=["Pa"])

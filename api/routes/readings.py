@@ -86,20 +86,21 @@ def _readings_out(
     values = series.values.tolist()
     if units != "si":  # in SI the recorded value goes out to the last bit
         values = [float(f"{shown.from_si(value):.{PLACES}g}") for value in values]
-    # Checked here and not again by the model: for a week of readings that would take seconds.
-    return ReadingsOut.model_construct(
-        channel=channel.name,
-        quantity=channel.quantity,
-        unit=shown.unit,
-        reference=reference_of(channel),
-        from_=format_rfc3339(between_us[0]),
-        to=format_rfc3339(between_us[1]),
-        times=times,
-        values=values,  # NaN becomes null as it is written
-        faults=[
-            FaultOut(time=times[place], reason=series.faults[place] or "not a number")
-            for place in np.flatnonzero(np.isnan(series.values))
-        ],
+    return ReadingsOut.model_validate(
+        {
+            "channel": channel.name,
+            "quantity": channel.quantity,
+            "unit": shown.unit,
+            "reference": reference_of(channel),
+            "from": format_rfc3339(between_us[0]),
+            "to": format_rfc3339(between_us[1]),
+            "times": times,
+            "values": values,  # NaN becomes null as it is written
+            "faults": [
+                FaultOut(time=times[place], reason=series.faults[place] or "not a number")
+                for place in np.flatnonzero(np.isnan(series.values))
+            ],
+        }
     )
 
 
