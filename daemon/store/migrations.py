@@ -16,6 +16,7 @@ from daemon.errors import StoreError
 from daemon.store.database import Database
 from daemon.store.tables import schema_version
 
+# the database numbers a `counted` key; `counted_once` never uses the number of a deleted row again
 _TYPES = {
     "sqlite": {
         "key": "INTEGER",

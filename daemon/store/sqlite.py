@@ -86,15 +86,6 @@ def check(database: Database) -> None:
     _refuse_damage(database.where, [str(row) for row in rows])
 
 
-def fold_log(database: Database) -> None:
-    """Move the write-ahead log into the database file, for a clean stop."""
-    with database.read() as connection:
-        try:
-            _raw(connection).execute("PRAGMA wal_checkpoint(TRUNCATE)").close()
-        except sqlite3.Error as error:
-            raise _in_words(database.where, error) from error
-
-
 def backup(database: Database, target: Path) -> None:
     """A consistent, checked copy of a database in use; `target` is replaced when it is good.
 
@@ -109,7 +100,6 @@ def backup(database: Database, target: Path) -> None:
         with closing(sqlite3.connect(part)) as copy:
             with database.read() as connection:
                 _raw(connection).backup(copy)
-            copy.execute("PRAGMA journal_mode=DELETE")  # one file, with nothing beside it
             rows = [str(row) for (row,) in copy.execute("PRAGMA quick_check")]
         _refuse_damage(str(part), rows)
         os.replace(part, target)

@@ -68,9 +68,8 @@ class Store:
         try:
             with self._database.write() as connection:
                 metas.put(connection, _OPEN, "no")
-            sqlite.fold_log(self._database)
         finally:
-            self._database.close()
+            self._database.close()  # the last connection folds the write-ahead log into the file
             self._lock.release()
 
     def __enter__(self) -> Self:

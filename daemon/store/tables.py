@@ -107,5 +107,4 @@ outbox = Table(
     Column("payload", LargeBinary, nullable=False),
     Column("qos", SmallInteger, nullable=False),
     Column("retain", Boolean, nullable=False),
-    sqlite_autoincrement=True,  # a number is never given twice, though sent rows are deleted
 )

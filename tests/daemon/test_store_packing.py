@@ -6,7 +6,7 @@ import math
 import struct
 
 import pytest
-from hypothesis import given
+from hypothesis import example, given
 from hypothesis import strategies as st
 
 from daemon.errors import StoreError
@@ -50,6 +50,8 @@ many_readings = st.lists(st.one_of(in_steps, any_value, bad), max_size=12)
 
 
 @given(many_readings)
+@example([Reading("tank.pressure", -0.0, TICK_US), Reading("motor.contact", 0.0, TICK_US)])
+@example([Reading("tank.pressure", 1e308, TICK_US), Reading("motor.contact", -math.inf, TICK_US)])
 def test_readings_come_back_to_the_bit_and_in_their_order(readings: list[Reading]) -> None:
     back = unpack(LAYOUT, TICK_US, pack(LAYOUT, TICK_US, readings))
     assert [bits(reading) for reading in back] == [bits(reading) for reading in readings]
