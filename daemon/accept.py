@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 import math
+from typing import get_args
 
 from daemon.clock import MINUTE_US, format_rfc3339
 from daemon.due import volume_words
 from daemon.errors import JournalError
-from daemon.journal import Acknowledge, Body, Drain
+from daemon.journal import Acknowledge, Body, Confirm, Drain, Service, Serviced
+from daemon.moisture.description import Trap
 from daemon.site.types import Site
 
 AHEAD_US = 2 * MINUTE_US  # a phone's clock may be a little fast
@@ -33,13 +35,23 @@ def check(site: Site, body: Body, at_us: int, now_us: int, begun_us: int) -> Non
             _check_drain(site, body)
         case Acknowledge(by=by):
             _check_by(by)
+        case Confirm(trap=trap, by=by):
+            _check_trap(site, trap)
+            _check_by(by)
+        case Service() as service:
+            _check_service(site, service)
+
+
+def _check_trap(site: Site, name: str) -> Trap:
+    traps = {s.id: s.trap for s in site.line.stations if s.trap is not None}
+    if name not in traps:
+        known = ", ".join(traps) or "none"
+        raise JournalError(f'"{name}" is not a trap of this site (known: {known})')
+    return traps[name]
 
 
 def _check_drain(site: Site, drain: Drain) -> None:
-    traps = {s.id: s.trap for s in site.line.stations if s.trap is not None}
-    if drain.trap not in traps:
-        known = ", ".join(traps) or "none"
-        raise JournalError(f'"{drain.trap}" is not a trap of this site (known: {known})')
+    trap = _check_trap(site, drain.trap)
     if drain.look not in LOOKS:
         raise JournalError(f'look "{drain.look}" is not one of {", ".join(LOOKS[1:])}')
     _check_by(drain.by)
@@ -55,11 +67,28 @@ def _check_drain(site: Site, drain: Drain) -> None:
             f'"empty" with {volume_words(site, volume_kg)} contradicts itself: say "emptied", or '
             "leave the volume out"
         )
-    capacity_kg = traps[drain.trap].capacity.value
+    capacity_kg = trap.capacity.value
     if volume_kg > MOST_OF_CAPACITY * capacity_kg:
         raise JournalError(
             f"{volume_words(site, volume_kg)} is more than twice what {drain.trap} can hold "
             f"({volume_words(site, capacity_kg)}): look at the figure and its unit again"
+        )
+
+
+def _check_service(site: Site, service: Service) -> None:
+    _check_by(service.by)
+    if service.what not in get_args(Serviced):
+        known = ", ".join(get_args(Serviced))
+        raise JournalError(f'"{service.what}" is not something that is recorded (known: {known})')
+    if service.what == "compressor serviced":
+        return
+    if service.what == "sensor replaced":
+        known_ids = [sensor.id for sensor in site.sensors]
+    else:
+        known_ids = [station.id for station in site.line.stations]
+    if service.of not in known_ids:
+        raise JournalError(
+            f'{service.what}: "{service.of}" is not one of {", ".join(known_ids) or "none"}'
         )
 
 

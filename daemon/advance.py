@@ -19,13 +19,15 @@ from daemon.alarm_rules import AlarmRules
 from daemon.alarms import Alarm, AlarmRecord, Transition, acknowledge, shown
 from daemon.clock import HOUR_US
 from daemon.due import NO_DATE, calendar_due_us
-from daemon.journal import Acknowledge, Drain, Entry
+from daemon.journal import Acknowledge, Confirm, Drain, Entry, Service
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.ensemble import Array, percentiles
+from daemon.moisture.learning import Learned
 from daemon.moisture.model import Heard, Model
 from daemon.site import hours as opening
 from daemon.site.types import Site
 from daemon.state import ChannelRecord, CoreState, HourTotals, Inputs, Mark, TrapRecord
+from daemon.taking import Taking
 from daemon.views import Because, TrapView
 from sensors.reading import Reading
 
@@ -37,6 +39,7 @@ class Estimate:
     core: Core
     state: CoreState
     marks: tuple[Mark, ...] = ()
+    learned: tuple[Learned, ...] = ()
 
     @property
     def at_us(self) -> int:
@@ -54,6 +57,12 @@ class _Tick:
     state: CoreState
     transitions: list[Transition] = field(default_factory=list)
     marks: list[Mark] = field(default_factory=list)
+    learned: list[Learned] = field(default_factory=list)
+
+    def result(self, core: Core) -> tuple[CoreState, Estimate, list[Transition]]:
+        """What an advance gives."""
+        estimate = Estimate(core, self.state, tuple(self.marks), tuple(self.learned))
+        return self.state, estimate, self.transitions
 
 
 class Core:
@@ -68,6 +77,7 @@ class Core:
         self._traps = [t for s in plan.stations if (t := s.trap) is not None]
         self.rules = AlarmRules(site, self.model)
         self.definitions = self.rules.definitions
+        self.taking = Taking(site, self.model)
 
     # ---- beginning ----
 
@@ -91,7 +101,7 @@ class Core:
         if now_us % HOUR_US == 0:
             tick.marks.append(self._mark(state, "hour", None))
         self._watch(tick)
-        return tick.state, Estimate(self, tick.state, tuple(tick.marks)), tick.transitions
+        return tick.result(self)
 
     def _no_hour(self, from_us: int) -> HourTotals:
         zero = np.zeros(self.site.line.members)
@@ -116,7 +126,7 @@ class Core:
                 self._full_hour(tick)
             for entry in here:
                 self._take(tick, entry)
-        return tick.state, Estimate(self, tick.state, tuple(tick.marks)), tick.transitions
+        return tick.result(self)
 
     def take(
         self, state: CoreState, entries: Sequence[Entry]
@@ -125,7 +135,7 @@ class Core:
         tick = _Tick(state)
         for entry in entries:
             self._take(tick, entry)
-        return tick.state, Estimate(self, tick.state, tuple(tick.marks)), tick.transitions
+        return tick.result(self)
 
     def _stops(self, from_us: int, to_us: int, entries: Iterable[Entry]) -> list[int]:
         hours = range((from_us // HOUR_US + 1) * HOUR_US, to_us + 1, HOUR_US)
@@ -207,18 +217,22 @@ class Core:
                 self._drain(tick, entry, drain)
             case Acknowledge(alarm=alarm, by=by):
                 self._acknowledge(tick, alarm, by)
+            case Confirm() as confirm:
+                if confirm.trap in self.trap_names:
+                    tick.state = self.taking.confirm(tick.state, confirm)
+            case Service() as service:
+                tick.state = self.taking.service(tick.state, service)
 
     def _drain(self, tick: _Tick, entry: Entry, drain: Drain) -> None:
         if drain.trap not in self.trap_names:
             return
-        state = tick.state
-        tick.marks.append(self._mark(state, "drain", None, (drain.trap,)))
+        tick.marks.append(self._mark(tick.state, "drain", None, (drain.trap,)))
+        tick.state, learned = self.taking.drain(tick.state, entry, drain)
+        if learned is not None:
+            tick.learned.append(learned)
         if drain.outcome == "partly":
+            self._watch(tick)
             return
-        number = self.trap_names.index(drain.trap)
-        due_us = calendar_due_us(self.site, self._traps[number], entry.at_us, drained=True)
-        traps = {**state.traps, drain.trap: TrapRecord(entry.at_us, due_us)}
-        tick.state = replace(state, model=self.model.drain(state.model, drain.trap), traps=traps)
         # whoever opens the drain has seen that it was due
         self._acknowledge(tick, f"{drain.trap}-drain-due", drain.by)
         self._watch(tick, drained=drain.trap)
@@ -247,7 +261,7 @@ class Core:
         traps: Collection[str] | None = None,
     ) -> Mark:
         chosen = [n for n, name in enumerate(self.trap_names) if traps is None or name in traps]
-        contents = state.model.water.trap[self._trap_rows]
+        contents = self.model.contents(state.model)[self._trap_rows]
         return Mark(
             at_us=state.time_us,
             kind=kind,
@@ -270,7 +284,7 @@ class Core:
 
     def views(self, state: CoreState) -> tuple[TrapView, ...]:
         """What is believed of every trap now."""
-        contents = state.model.water.trap[self._trap_rows]
+        contents = self.model.contents(state.model)[self._trap_rows]
         kg = percentiles(contents)
         probability = self.rules.probability_due(state)
         return tuple(

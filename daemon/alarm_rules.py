@@ -77,7 +77,7 @@ class AlarmRules:
 
     def probability_due(self, state: CoreState) -> Array:
         """The share of members at or above the drain-at level, (traps,)."""
-        contents = state.model.water.trap[self._rows]
+        contents = self.model.contents(state.model)[self._rows]
         at_or_above = contents >= self._drain_at[:, None]
         probability: Array = np.count_nonzero(at_or_above, axis=1) / contents.shape[1]
         return probability
@@ -104,7 +104,7 @@ class AlarmRules:
         name, trap = self._names[number], self._traps[number]
         if so != "so":
             return f"{name}: no longer due."
-        kg = percentiles(state.model.water.trap[self._rows[number]])
+        kg = percentiles(self.model.contents(state.model)[self._rows[number]])
         held = (float(kg[0]), float(kg[1]), float(kg[2]))
         return due_words(self.site, name, trap, held, "calendar" if calendar else "volume")
 

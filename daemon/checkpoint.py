@@ -17,6 +17,7 @@ from daemon.moisture.beliefs import Parameters
 from daemon.moisture.conditions import Conditions, Held, Lapse, Offsets
 from daemon.moisture.contact import ContactState
 from daemon.moisture.flow import AirState, PumpWatch
+from daemon.moisture.learning import Suspect
 from daemon.moisture.line import Ledger, WaterParameters, WaterState
 from daemon.moisture.model import State
 from daemon.state import ChannelRecord, CoreState, HourTotals, TrapRecord
@@ -39,6 +40,7 @@ _CLASSES = {
         Parameters,
         PumpWatch,
         State,
+        Suspect,
         TrapRecord,
         WaterParameters,
         WaterState,

@@ -35,8 +35,35 @@ class Acknowledge:
     by: str = ""
 
 
-Body = Drain | Acknowledge
-_KINDS: dict[str, type[Drain] | type[Acknowledge]] = {"drain": Drain, "acknowledge": Acknowledge}
+@dataclass(frozen=True, slots=True)
+class Confirm:
+    """Somebody says that a trap's last measured volume, which was surprising, is right."""
+
+    trap: str
+    by: str = ""
+
+
+Serviced = Literal[
+    "element changed", "sensor replaced", "compressor serviced", "drain seen working"
+]
+
+
+@dataclass(frozen=True, slots=True)
+class Service:
+    """A part was changed or looked at: what was learned about the old one ends."""
+
+    what: Serviced
+    of: str = ""  # a station's or a sensor's id; the compressor needs none
+    by: str = ""
+
+
+Body = Drain | Acknowledge | Confirm | Service
+_KINDS: dict[str, type[Drain] | type[Acknowledge] | type[Confirm] | type[Service]] = {
+    "drain": Drain,
+    "acknowledge": Acknowledge,
+    "confirm": Confirm,
+    "service": Service,
+}
 
 
 @dataclass(frozen=True, slots=True)

@@ -8,11 +8,12 @@ from pathlib import Path
 
 from daemon.advance import Core
 from daemon.clock import format_rfc3339
+from daemon.csv_rows import BadRow
 from daemon.due import interval_words
 from daemon.errors import ReplayError
 from daemon.journal import Entry
 from daemon.moisture.ensemble import percentiles
-from daemon.recorded import BadRow, read_drains, read_readings
+from daemon.recorded import read_drains, read_readings
 from daemon.replay import Result, replay, write
 from daemon.site.reader import read_site
 from daemon.site.types import Site

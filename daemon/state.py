@@ -10,6 +10,7 @@ from daemon.alarms import AlarmRecord
 from daemon.due import NO_DATE
 from daemon.journal import Entry
 from daemon.moisture.ensemble import Array
+from daemon.moisture.learning import Suspect
 from daemon.moisture.model import State
 from sensors.reading import Reading
 
@@ -20,6 +21,7 @@ class TrapRecord:
 
     last_drain_us: int = -1
     calendar_due_us: int = NO_DATE
+    suspect: Suspect | None = None  # its last measurement, while it is too far off to be believed
 
 
 @dataclass(frozen=True, slots=True)

@@ -19,7 +19,7 @@ from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, standard_normal
 from daemon.moisture.plan import Plan
 
 COLDEST_K, HOTTEST_K = 203.15, 373.15  # where the saturation formulas hold
-LOWEST_PA, HIGHEST_PA = 50_000.0, 3_000_000.0
+LOWEST_PA, HIGHEST_PA = 50_000.0, 2_000_000.0
 FORGETS_AFTER_S = {"temperature": 6 * 3600.0, "pressure": 3600.0, "relative_humidity": 6 * 3600.0}
 HUMIDITY_RULE = Fixed(0.5, 0.3)  # an intake's relative humidity that nobody measures
 

@@ -12,7 +12,17 @@ from typing import Literal
 
 WATER_KG_PER_M3 = 1000.0  # liquid water; 0.2 % at 20 degC, far below any cup's error
 
-StationKind = Literal["intake", "receiver", "cooler", "pipe", "separator", "coalescer", "regulator"]
+StationKind = Literal[
+    "intake",
+    "receiver",
+    "cooler",
+    "pipe",
+    "separator",
+    "coalescer",
+    "regulator",
+    "refrigerated",
+    "desiccant",
+]
 DrainKind = Literal["petcock", "float", "timer", "level", "pressure-off", "none"]
 
 
@@ -32,6 +42,8 @@ class Measured:
     channel: str
     give_or_take: float
     gauge: bool = False
+    plus: float = 0.0  # the place is so much above what the sensor measures: a cooler's approach
+    plus_give_or_take: float = 0.0
 
 
 @dataclass(frozen=True, slots=True)
@@ -65,6 +77,17 @@ class Share:
 
 
 @dataclass(frozen=True, slots=True)
+class Emptying:
+    """How a drain empties itself while it works. What its kind does not need is left alone."""
+
+    opens_at: Fixed  # kg: what the trap holds when a float or a level drain opens
+    closes_at_kg: float  # what it leaves when it closes again
+    passes: Fixed  # kg/s of water while it is open
+    period_s: float = 0.0  # a timer's: from one blow to the next
+    open_s: float = 0.0  # and how long one lasts
+
+
+@dataclass(frozen=True, slots=True)
 class Trap:
     """Somewhere liquid collects, with a drain. Its name is its station's id."""
 
@@ -76,6 +99,37 @@ class Trap:
     holds_at_start_kg: float = 0.0
     drain_every: str = "never"  # "working day", "12 h", "3 days" ...: never, or as `every_s` says
     every_s: float = 0.0  # for "12 h" and the like; 0 for "working day" and "never"
+    emptying: Emptying | None = None  # of a drain that empties itself; None: as its kind usually is
+
+
+@dataclass(frozen=True, slots=True)
+class Power:
+    """Whether a dryer runs. Where nothing says so, it does."""
+
+    contact: str | None = None  # a contact channel, closed while it runs
+    off_when_closed: bool = False  # it is switched off while the shop is closed
+    in_service: bool = True  # False: bypassed, and no more than a pipe
+
+
+@dataclass(frozen=True, slots=True)
+class Refrigerated:
+    """A refrigerated dryer, rated at 7 bar gauge, 35 degC in, 25 degC around and +3 degC."""
+
+    rated_flow: Fixed  # m3/s of free air
+    dew_point: Fixed  # K: the pressure dew point that it is set to and keeps while not overloaded
+    power: Power = Power()
+
+
+@dataclass(frozen=True, slots=True)
+class Desiccant:
+    """A desiccant dryer: a cartridge that fills up, or twin beds that dry each other in turn."""
+
+    dew_point: Fixed  # K, the pressure dew point while charge is left
+    holds: Fixed | None = None  # kg of water that a cartridge takes up; None: heatless twin beds
+    held_at_start_kg: float = 0.0
+    rated_flow: Fixed | None = None  # m3/s of free air; twin beds need it
+    purge: Share = Share(0.0, 0.0)  # of the rated flow, what twin beds blow off
+    power: Power = Power()
 
 
 @dataclass(frozen=True, slots=True)
@@ -91,6 +145,10 @@ class Station:
     volume: Fixed | None = None  # m3, a receiver's
     trap: Trap | None = None
     evaporated: Share = Share(0.5, 0.4)  # of arriving liquid, what may evaporate into dry air
+    dryer: Refrigerated | Desiccant | None = None
+    rated_flow: Fixed | None = None  # m3/s of free air: beyond it less is separated
+    ice: Fixed | None = None  # kg in the bath that cools this place at the start
+    around: Measured | Fixed | None = None  # K, the air around a dryer; None: as at the intake
 
 
 @dataclass(frozen=True, slots=True)

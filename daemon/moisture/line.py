@@ -264,8 +264,22 @@ def empty(
     plan: Plan, state: WaterState, ledger: Ledger, station: int, heel_kg: float
 ) -> tuple[WaterState, Ledger]:
     """A drain was opened: the trap keeps its heel; each member's own content is what drained."""
+    return let_out(state, ledger, station, np.minimum(state.trap[station], heel_kg))
+
+
+def let_out(
+    state: WaterState, ledger: Ledger, station: int, left: Array
+) -> tuple[WaterState, Ledger]:
+    """A trap is left with this much, (members,), not more than it holds."""
     trap = state.trap.copy()
-    left = np.minimum(trap[station], heel_kg)
     drained = trap[station] - left
     trap[station] = left
     return replace(state, trap=trap), replace(ledger, drained=ledger.drained + drained)
+
+
+def hold(state: WaterState, ledger: Ledger, station: int, held: Array) -> tuple[WaterState, Ledger]:
+    """A trap is now believed to hold this much, (members,): booked as corrected, signed."""
+    trap = state.trap.copy()
+    corrected = ledger.corrected + (held - trap[station])
+    trap[station] = held
+    return replace(state, trap=trap), replace(ledger, corrected=corrected)

@@ -14,14 +14,23 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from daemon.clock import HOUR_US
-from daemon.moisture import air, flow, line
-from daemon.moisture.beliefs import Beliefs, Parameters, bias_of, draw, names
+from daemon.moisture import air, flow, learning, line
+from daemon.moisture.beliefs import (
+    ROUND_LOG_SD,
+    Beliefs,
+    Parameters,
+    bias_of,
+    draw,
+    names,
+    round_of,
+)
 from daemon.moisture.beliefs import offsets as make_offsets
 from daemon.moisture.beliefs import parameters as make_parameters
 from daemon.moisture.conditions import Conditions, Evaluation, Held, Lapse, Offsets
 from daemon.moisture.contact import ContactState, ContactTime, integrate
 from daemon.moisture.description import Line, Measured, RiseByDuty
 from daemon.moisture.ensemble import Array, standard_normal
+from daemon.moisture.learning import CupError, Learned, Suspect
 from daemon.moisture.plan import Plan, plan_line
 
 BIAS_DRIFT_S = 30 * 86400.0  # time constant of a sensor's slow drift; practice, no source
@@ -48,6 +57,7 @@ class State:
     air: flow.AirState
     water: line.WaterState
     ledger: line.Ledger
+    round_start: Array  # (stations, members): what each trap held when its round began, kg
     conditions: Conditions
     saturated: Array  # (stations, members), humidity ratio
 
@@ -130,6 +140,7 @@ class Model:
             air=flow.start(plan, stored),
             water=water,
             ledger=line.new_ledger(plan, water),
+            round_start=water.trap,
             conditions=now,
             saturated=saturated,
         )
@@ -199,18 +210,122 @@ class Model:
             air=after,
             water=water,
             ledger=ledger,
+            round_start=state.round_start,
             conditions=now,
             saturated=saturated,
         )
         return stepped, Moved(on_s, drawn, moved.used)
 
+    # ---- traps ----
+
+    def contents(self, state: State) -> Array:
+        """What each trap holds, kg, (stations, members), with each round's own error."""
+        grown = (state.water.trap - state.round_start) * state.parameters.round_factor
+        held = np.maximum(state.round_start + grown, 0.0)
+        contents: Array = np.minimum(held, state.parameters.water.capacity_kg)
+        return contents
+
     def drain(self, state: State, trap: str) -> State:
-        """A drain was opened and let run dry: the trap holds its heel."""
+        """A drain was opened and let run dry: the trap holds its heel, a new round begins."""
         station = self.plan.index[trap]
         described = self.plan.stations[station].trap
         heel = described.heel_kg if described is not None else 0.0
+        state = self._settled(state, station)
         water, ledger = line.empty(self.plan, state.water, state.ledger, station, heel)
+        return self._new_round(replace(state, water=water, ledger=ledger), station)
+
+    def drain_partly(self, state: State, trap: str, volume_kg: float | None) -> State:
+        """Some was let out: this volume at least was there; an unknown part where none is said."""
+        station = self.plan.index[trap]
+        state = self._settled(state, station)
+        held = state.water.trap[station]
+        if volume_kg is None:
+            line_of = self.plan.line
+            name = f"left in {trap}"
+            place = standard_normal(line_of.seed, name, line_of.members, state.time_us)
+            left = held / (1.0 + np.exp(-place))  # anything from nothing to all of it
+            there = held
+        else:
+            there = np.maximum(held, volume_kg)
+            left = there - volume_kg
+        water, ledger = line.hold(state.water, state.ledger, station, there)
+        water, ledger = line.let_out(water, ledger, station, left)
+        return self._new_round(replace(state, water=water, ledger=ledger), station)
+
+    def measure(
+        self, state: State, trap: str, volume_kg: float, cup: CupError, widen: bool = False
+    ) -> tuple[State, Learned, Suspect]:
+        """Learn from what came out of a trap, before it is booked as emptied.
+
+        A volume beyond five sigmas is not learned from unless `widen` says that it is believed.
+        """
+        station = self.plan.index[trap]
+        contents = self.contents(state)[station]
+        shown = learning.expectation(contents, state.beliefs, cup)
+        seen, sigmas = learning.compare(contents, state.beliefs, cup, volume_kg)
+        flagged = sigmas > learning.SUSPECT_SIGMAS and not widen
+        record = learning.told(state.time_us, trap, volume_kg, shown, sigmas, flagged)
+        if flagged:
+            return state, record, seen
+        learned, factor = self.learn(state, trap, seen, cup, widen)
+        return learned, learning.with_widened(record, factor), seen
+
+    def learn(
+        self, state: State, trap: str, seen: Suspect, cup: CupError, widen: bool
+    ) -> tuple[State, float]:
+        """The update of beliefs and contents; the factor that spreads were widened by."""
+        plan, station = self.plan, self.plan.index[trap]
+        seed, when_us = plan.line.seed, state.time_us
+        update, factor = learning.prepare(seen, seed, trap, when_us, widen)
+        local = learning.local_names(plan, station)
+        beliefs = learning.update_beliefs(state.beliefs, local, update, factor, seed, when_us)
+        contents = self.contents(state)
+        water, ledger = state.water, state.ledger
+        for other in plan.traps:
+            most = state.parameters.water.capacity_kg[other]
+            held = learning.update_contents(contents[other], update, cup.k_kg, most)
+            water, ledger = line.hold(water, ledger, other, held)
+        started = water.trap.copy()  # contents are as updated: rounds go on from here
+        state = replace(state, water=water, ledger=ledger, round_start=started)
+        return self.believing(state, beliefs), factor
+
+    def believing(self, state: State, beliefs: Beliefs) -> State:
+        """The state with other beliefs. What that changes in stored air is not air that moved."""
+        offsets = make_offsets(self.plan, beliefs)
+        parameters = make_parameters(self.plan, beliefs)
+        lapses = dict(state.lapses)
+        evaluation = Evaluation(self.plan, state.held, offsets, state.duty, state.time_us, lapses)
+        now = evaluation.conditions()
+        measured = self._measured(state.air, parameters, now, state.water)
+        return replace(
+            state,
+            beliefs=beliefs,
+            offsets=offsets,
+            parameters=parameters,
+            air=flow.bias_changed(state.air, measured - state.air.measured),
+        )
+
+    def redrawn(self, state: State, which: Sequence[str]) -> State:
+        """Forget what was learned of these figures: a part was changed."""
+        fresh = draw(self.plan, which, state.time_us)
+        return self.believing(state, {**state.beliefs, **fresh})
+
+    def _settled(self, state: State, station: int) -> State:
+        """Book a round's own error of a trap as what it held."""
+        held = self.contents(state)[station]
+        water, ledger = line.hold(state.water, state.ledger, station, held)
         return replace(state, water=water, ledger=ledger)
+
+    def _new_round(self, state: State, station: int) -> State:
+        """A round begins with what the trap holds now, and an error of its own."""
+        starts = state.round_start.copy()
+        starts[station] = state.water.trap[station]
+        name = round_of(self.plan.stations[station].id)
+        beliefs = {**state.beliefs, **draw(self.plan, [name], state.time_us)}
+        factor = state.parameters.round_factor.copy()
+        factor[station] = np.exp(ROUND_LOG_SD * beliefs[name])
+        parameters = replace(state.parameters, round_factor=factor)
+        return replace(state, beliefs=beliefs, parameters=parameters, round_start=starts)
 
     # ---- its parts ----
 
@@ -302,13 +417,15 @@ class Model:
 
     def _delivered(self, parameters: Parameters, now: Conditions, ratio: Array) -> Array:
         """Dry air drawn in per second of running, kg/s: free air is at intake conditions."""
-        density: Array = air.dry_air_density(now.temperature_k[0], now.pressure_pa[0], ratio)
+        density: Array = air.dry_air_density_unchecked(
+            now.temperature_k[0], now.pressure_pa[0], ratio
+        )
         return parameters.delivered_m3_per_s * density
 
     def _stored(self, parameters: Parameters, now: Conditions, ratio: Array) -> Array:
         """Dry air in every receiver, kg, (receivers, members)."""
         rows = list(self.plan.receivers)
-        density: Array = air.dry_air_density(
+        density: Array = air.dry_air_density_unchecked(
             now.temperature_k[rows], now.pressure_pa[rows], ratio[rows]
         )
         return parameters.volume_m3 * density

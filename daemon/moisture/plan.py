@@ -17,6 +17,7 @@ from daemon.moisture.description import (
 # What a station without a believable sensor is taken to be: the kind's rule, give or take.
 # Temperatures in K, pressures in Pa. Common practice, no source.
 _ROOM_K, _ROOM_GIVE_OR_TAKE_K = 293.15, 10.0
+_ROOM_LIKE_GIVE_OR_TAKE_K = 5.0
 _BAROMETER_PA, _BAROMETER_GIVE_OR_TAKE_PA = 101_325.0, 3_000.0
 _RECEIVER_RISE = RiseByDuty("", rise=20.0, time_constant_s=1800.0, give_or_take=8.0)
 
@@ -65,6 +66,9 @@ def plan_line(line: Line) -> Plan:
     pressure_rules = tuple(_pressure_rule(line, i, parent, receivers) for i in range(len(parent)))
     temperatures = tuple(station.temperature for station in line.stations)
     pressures = tuple(station.pressure for station in line.stations)
+    room = Like(line.stations[0].id, 0.0, _ROOM_LIKE_GIVE_OR_TAKE_K)
+    temperature_rules = _without_circles(index, temperatures, temperature_rules, room)
+    pressure_rules = _without_circles(index, pressures, pressure_rules, _switch_pressure(line))
     return Plan(
         line=line,
         index=index,
@@ -166,9 +170,44 @@ def _pressure_rule(
     while above > 0 and above not in receivers:
         above = parent[above]
     if station.kind == "receiver" or above <= 0:
-        low, high = line.compressor.cut_in.value, line.compressor.cut_out.value
-        return Fixed((low + high) / 2.0, (high - low) / 2.0, gauge=True)
+        return _switch_pressure(line)
     return Like(line.stations[parent[number]].id, 0.0, 5_000.0)
+
+
+def _switch_pressure(line: Line) -> Fixed:
+    """Somewhere between the pressure switch's two settings."""
+    low, high = line.compressor.cut_in.value, line.compressor.cut_out.value
+    return Fixed((low + high) / 2.0, (high - low) / 2.0, gauge=True)
+
+
+def _without_circles(
+    index: dict[str, int],
+    sources: tuple[Source, ...],
+    rules: tuple[Source, ...],
+    instead: Source,
+) -> tuple[Source, ...]:
+    """Rules for silent sensors that do not lean on a station which leans on the sensor itself."""
+    safe = list(rules)
+
+    def leans_on(station: int, other: int) -> bool:
+        at, seen = station, set[int]()
+        while at not in seen:
+            if at == other:
+                return True
+            seen.add(at)
+            source = safe[at] if isinstance(sources[at], Measured) else sources[at]
+            if not isinstance(source, Like | RiseByDuty):
+                return False
+            at = index[source.station]
+        return True
+
+    for station, source in enumerate(sources):
+        rule = safe[station]
+        if not isinstance(source, Measured) or not isinstance(rule, Like | RiseByDuty):
+            continue
+        if leans_on(index[rule.station], station):
+            safe[station] = instead
+    return tuple(safe)
 
 
 def _order(

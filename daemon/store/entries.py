@@ -8,7 +8,7 @@ from typing import Any
 from sqlalchemy import Connection, Select, func, insert, select
 
 from daemon.errors import JournalError
-from daemon.journal import Acknowledge, Body, Drain, Entry, body_from_json, body_to_json
+from daemon.journal import Acknowledge, Body, Drain, Entry, Service, body_from_json, body_to_json
 from daemon.store.tables import journal
 from daemon.views import Recorded
 
@@ -68,7 +68,11 @@ def find(
 
 
 def _subject(body: Body) -> str:
-    return body.alarm if isinstance(body, Acknowledge) else body.trap
+    match body:
+        case Acknowledge(alarm=subject) | Service(of=subject):
+            return subject
+        case _:
+            return body.trap
 
 
 def _entry(row: Any) -> Entry:

@@ -1,0 +1,104 @@
+"""How journal entries about drains and parts change the state. Pure."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+from daemon.due import calendar_due_us, volume_words
+from daemon.journal import Confirm, Drain, Entry, Service
+from daemon.moisture import beliefs as believed
+from daemon.moisture.learning import CupError, Learned
+from daemon.moisture.model import Model, State
+from daemon.site.types import Site
+from daemon.state import CoreState, TrapRecord
+
+
+class Taking:
+    """Takes in entries for one site."""
+
+    def __init__(self, site: Site, model: Model) -> None:
+        self.site, self.model = site, model
+        cup = site.cup
+        self.cup = CupError(cup.reads_low_by, cup.give_or_take, cup.each_time, cup.each_time_kg)
+        self._traps = {s.id: s.trap for s in site.line.stations if s.trap is not None}
+
+    # ---- drains ----
+
+    def drain(
+        self, state: CoreState, entry: Entry, drain: Drain
+    ) -> tuple[CoreState, Learned | None]:
+        """A drain was opened: learn from what was measured, then book the emptying."""
+        record = state.traps[drain.trap]
+        if drain.outcome == "partly":
+            model = self.model.drain_partly(state.model, drain.trap, drain.volume_kg)
+            return replace(state, model=model), None
+        model, record, learned = self._measured(state.model, record, drain)
+        model = self.model.drain(model, drain.trap)
+        trap = self._traps[drain.trap]
+        due_us = calendar_due_us(self.site, trap, entry.at_us, drained=True)
+        record = replace(record, last_drain_us=entry.at_us, calendar_due_us=due_us)
+        return replace(state, model=model, traps={**state.traps, drain.trap: record}), learned
+
+    def _measured(
+        self, model: State, record: TrapRecord, drain: Drain
+    ) -> tuple[State, TrapRecord, Learned | None]:
+        volume_kg = 0.0 if drain.outcome == "empty" else drain.volume_kg
+        if volume_kg is None:
+            return model, record, None
+        after, learned, seen = self.model.measure(model, drain.trap, volume_kg, self.cup)
+        if not learned.flagged:
+            return after, replace(record, suspect=None), learned
+        if record.suspect is not None and record.suspect.above == seen.above:
+            # a second surprise on the same side is no slip of the pen
+            after, learned, _ = self.model.measure(
+                model, drain.trap, volume_kg, self.cup, widen=True
+            )
+            return after, replace(record, suspect=None), learned
+        return model, replace(record, suspect=seen), learned
+
+    def confirm(self, state: CoreState, confirm: Confirm) -> CoreState:
+        """Somebody says that a surprising measurement was right: learn from it after all."""
+        record = state.traps[confirm.trap]
+        if record.suspect is None:
+            return state
+        model, _ = self.model.learn(state.model, confirm.trap, record.suspect, self.cup, widen=True)
+        record = replace(record, suspect=None)
+        return replace(state, model=model, traps={**state.traps, confirm.trap: record})
+
+    # ---- parts ----
+
+    def service(self, state: CoreState, service: Service) -> CoreState:
+        """A part was changed: what was learned of the old one is forgotten."""
+        names = self._forgotten(service)
+        if not names:
+            return state
+        return replace(state, model=self.model.redrawn(state.model, names))
+
+    def _forgotten(self, service: Service) -> list[str]:
+        plan = self.model.plan
+        if service.what == "compressor serviced":
+            return [believed.DELIVERED, believed.DUTY]
+        if service.what == "sensor replaced":
+            mine = [c for c in plan.channels if c.rsplit(".", 1)[0] == service.of]
+            return [believed.bias_of(channel) for channel in mine]
+        if service.what == "element changed" and service.of in plan.index:
+            station = plan.stations[plan.index[service.of]]
+            own = believed.own_names(station)
+            return [name for name in own if not name.startswith(("temperature", "pressure"))]
+        return []
+
+
+def learned_words(site: Site, learned: Learned) -> str:
+    """What is said to whoever measured."""
+    low, middle, high = (volume_words(site, kg) for kg in learned.expected_kg)
+    measured = volume_words(site, learned.measured_kg)
+    if learned.flagged:
+        return (
+            f"{learned.trap}: you measured {measured}, but {middle} ({low} to {high}) was "
+            "expected. It is kept, and not learned from until you confirm it: look at the figure "
+            "and its unit again."
+        )
+    return (
+        f"{learned.trap}: you measured {measured}, expected {middle} ({low} to {high}); the next "
+        "estimate has learned from it."
+    )
