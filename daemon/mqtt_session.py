@@ -18,6 +18,7 @@ from paho.mqtt.enums import CallbackAPIVersion, MQTTProtocolVersion
 
 from daemon.errors import BrokerError
 from daemon.outbox import AT_LEAST_ONCE, Message
+from daemon.site.password import broker_password
 from daemon.site.types import Mqtt
 
 CONNECT_S = 5.0  # how long a broker may take to accept the connection
@@ -81,8 +82,6 @@ class Session:
         )
         client.connect_timeout = CONNECT_S
         client.max_inflight_messages_set(0)  # no limit of paho's: the caller keeps its own
-        if mqtt.user:
-            client.username_pw_set(mqtt.user, mqtt.password)
         if tls is not None:
             client.tls_set_context(tls)
         client.will_set(will.topic, will.payload, will.qos, will.retain)
@@ -95,8 +94,10 @@ class Session:
     def open(self) -> None:
         """Connect and ask to be let in; the answer comes in a `step`. Sets `ended` on failure."""
         try:
+            if self._mqtt.user:
+                self._client.username_pw_set(self._mqtt.user, broker_password(self._mqtt))
             self._client.connect(self._mqtt.host, self._mqtt.port, self._keepalive_s)
-        except (OSError, ValueError) as error:
+        except (BrokerError, OSError, ValueError) as error:
             self.ended = _words(error)
 
     def subscribe(self, topic: str) -> None:

@@ -423,6 +423,14 @@ def test_a_wrong_password_is_told_and_the_right_one_lets_in(tmp_path: Path, stor
             assert link.status == "not connected"
         with linked(broker.port, store, user="compressor", password="right") as link:
             assert link.wait_for("connected", TIMEOUT_S)
+        kept = tmp_path / "kept"
+        with linked(broker.port, store, user="compressor", password_file=str(kept)) as link:
+            with link._changed:
+                assert link._changed.wait_for(lambda: link.problem, TIMEOUT_S)
+            assert "password_file: " in link.problem
+            assert "cannot be read (No such file" in link.problem
+            kept.write_text("right\n")  # and it is read again at the next try
+            assert link.wait_for("connected", TIMEOUT_S)
     finally:
         broker.stop()
 
