@@ -99,7 +99,8 @@ class Update:
         if aa <= 0.0 or bb <= 0.0:
             return np.zeros_like(values)
         r2 = ab * ab / (aa * bb)
-        beyond_chance = max(0.0, (r2 * (count - 1) - 1.0) / (count - 2)) / r2 if r2 > 0.0 else 0.0
+        left = max(0.0, (r2 * (count - 1) - 1.0) / max(count - 2, 1))
+        beyond_chance = left / r2 if r2 > 0.0 else 0.0
         covariance = ab / (count - 1) * math.sqrt(beyond_chance)
         moved: Array = covariance / self.variance * self.miss
         return moved
