@@ -19,6 +19,7 @@ from daemon.alarm_rules import AlarmRules
 from daemon.alarms import Alarm, AlarmRecord, Transition, acknowledge, shown
 from daemon.clock import HOUR_US
 from daemon.due import NO_DATE, calendar_due_us
+from daemon.errors import BalanceError
 from daemon.journal import Acknowledge, Confirm, Drain, Entry, Service
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.ensemble import Array, percentiles
@@ -40,6 +41,7 @@ class Estimate:
     state: CoreState
     marks: tuple[Mark, ...] = ()
     learned: tuple[Learned, ...] = ()
+    problems: tuple[str, ...] = ()  # faults of the model itself, in words
 
     @property
     def at_us(self) -> int:
@@ -58,10 +60,13 @@ class _Tick:
     transitions: list[Transition] = field(default_factory=list)
     marks: list[Mark] = field(default_factory=list)
     learned: list[Learned] = field(default_factory=list)
+    problems: list[str] = field(default_factory=list)
 
     def result(self, core: Core) -> tuple[CoreState, Estimate, list[Transition]]:
         """What an advance gives."""
-        estimate = Estimate(core, self.state, tuple(self.marks), tuple(self.learned))
+        estimate = Estimate(
+            core, self.state, tuple(self.marks), tuple(self.learned), tuple(self.problems)
+        )
         return self.state, estimate, self.transitions
 
 
@@ -158,7 +163,10 @@ class Core:
 
     def _full_hour(self, tick: _Tick) -> None:
         state = tick.state
-        state.model.ledger.check(state.model.water)
+        try:
+            state.model.ledger.check(state.model.water)
+        except BalanceError as error:  # a daemon that stops over it would help nobody
+            tick.problems.append(str(error))
         tick.marks.append(self._mark(state, "hour", state.hour))
         tick.state = replace(state, hour=self._no_hour(state.time_us))
 

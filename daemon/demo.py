@@ -8,10 +8,11 @@ import threading
 from dataclasses import replace
 from importlib import resources
 from pathlib import Path
+from zoneinfo import ZoneInfo
 
 from daemon import compose, logs
-from daemon.clock import MINUTE_US, ScaledClock, SystemClock, format_rfc3339, to_datetime
-from daemon.due import interval_words
+from daemon.clock import MINUTE_US, ScaledClock, SystemClock, to_datetime
+from daemon.due import interval_words, volume_words
 from daemon.errors import DriplegError
 from daemon.journal import Drain, Entry
 from daemon.make_believe import MakeBelieveShop
@@ -22,6 +23,7 @@ from sensors.reading import Reading
 from sensors.sampling import HungBus, Sampler
 
 SAY_EVERY_S = 5.0
+LOOK_EVERY_S = 0.25
 SLOWEST, FASTEST = 1.0, 600.0
 
 
@@ -82,7 +84,7 @@ def run(port: int, length: str | None, broker_at: str | None, speed: float) -> N
         raise DemoError(f"--speed {speed:g}: give a number from {SLOWEST:g} to {FASTEST:g}")
     limit_s = seconds(length) if length is not None else None
     mqtt = broker(broker_at) if broker_at is not None else None
-    logs.set_up(False)
+    logs.set_up(verbose=False, quiet=True)  # alarms are told below, in the shop's own time
     start_us = SystemClock().now_us()
     start_us -= start_us % MINUTE_US
     site = demo_site(start_us, mqtt)
@@ -110,12 +112,14 @@ def run(port: int, length: str | None, broker_at: str | None, speed: float) -> N
             running.shell.on_entry = samplers[-1].drain
             print(_greeting(site, running, speed, limit_s), flush=True)
             teller = threading.Thread(
-                target=_tell, args=(running, stop, limit_s), name="teller", daemon=True
+                target=_Teller(running, limit_s).tell, args=(stop,), name="teller"
             )
             teller.start()
-            running.shell.run(stop)
-            stop.set()
-            teller.join()
+            try:
+                running.shell.run(stop)
+            finally:
+                stop.set()
+                teller.join()
     print("The demo has stopped; what it stored is gone.", flush=True)
 
 
@@ -126,41 +130,56 @@ def _greeting(site: Site, parts: compose.Parts, speed: float, limit_s: float | N
         mqtt = f"MQTT at {site.mqtt.host}:{site.mqtt.port}, topics {site.mqtt.prefix}/{site.id}/#"
     ends = "until Ctrl-C" if limit_s is None else f"for {limit_s:g} s"
     return f"""\
-{site.name} is a make-believe shop; its parts are emulated, the drivers and the daemon are real.
-An hour there passes in {3600 / speed:.0f} s here, {ends}.
+{site.name}: a make-believe shop. Its parts are emulated; drivers and daemon are the real ones.
+An hour there passes in {3600 / speed:.0f} s here, {ends}. Times below are the shop's.
 
   look        {url}
   the traps   curl {url}api/v1/traps
   the alarms  curl {url}api/v1/alarms
-  drain       curl -X POST {url}api/v1/traps/tank/drains -H 'content-type: application/json' \\
-                -d '{{"outcome": "emptied", "volume_ml": 590, "by": "AM"}}'
+  drain       curl -X POST {url}api/v1/traps/tank/drains \\
+                -H 'content-type: application/json' -d '{{"volume_ml": 590, "by": "AM"}}'
 
 {mqtt}
 """
 
 
-def _tell(parts: compose.Parts, stop: threading.Event, limit_s: float | None) -> None:
-    """Say now and then what the daemon believes; end the demo when its time is over."""
-    clock = SystemClock()
-    begun_s = clock.monotonic()
-    site = parts.shell.site
-    while True:
-        left_s = SAY_EVERY_S
-        if limit_s is not None:
-            left_s = min(left_s, limit_s - (clock.monotonic() - begun_s))
-        if left_s <= 0.0 or clock.wait(left_s, stop):
-            stop.set()
-            return
-        for line in _news(parts, site):
-            print(line, flush=True)
+class _Teller:
+    """Says now and then what the daemon believes, and at once how alarms change."""
 
+    def __init__(self, parts: compose.Parts, limit_s: float | None) -> None:
+        self._shell, self._limit_s = parts.shell, limit_s
+        self._site = parts.shell.site
+        self._states: dict[str, str] = {}
 
-def _news(parts: compose.Parts, site: Site) -> list[str]:
-    views = parts.shell.traps()
-    if not views:
-        return []
-    told = ", ".join(
-        f"{view.trap} {interval_words(site, view.p05_kg, view.p50_kg, view.p95_kg)}"
-        for view in views
-    )
-    return [f"{format_rfc3339(views[0].at_us)}  {told}"]
+    def tell(self, stop: threading.Event) -> None:
+        """Tell until stopped; set `stop` when the demo's time is over."""
+        clock = SystemClock()
+        begun_s = told_s = clock.monotonic()
+        while not clock.wait(LOOK_EVERY_S, stop):
+            now_s = clock.monotonic()
+            if self._limit_s is not None and now_s - begun_s >= self._limit_s:
+                stop.set()
+            self._tell_alarms()
+            if now_s - told_s >= SAY_EVERY_S:
+                told_s = now_s
+                self._tell_traps()
+
+    def _clock_of(self, time_us: int) -> str:
+        zone = ZoneInfo(self._site.timezone)
+        return to_datetime(time_us).astimezone(zone).strftime("%H:%M")
+
+    def _tell_alarms(self) -> None:
+        for alarm in self._shell.alarms():
+            if alarm.state != self._states.get(alarm.id, "normal"):
+                said = alarm.text if alarm.state != "normal" else ""
+                told = f"{self._clock_of(alarm.since_us)}  ALARM {alarm.id}: {alarm.state}. {said}"
+                print(told.rstrip(), flush=True)
+            self._states[alarm.id] = alarm.state
+
+    def _tell_traps(self) -> None:
+        views = self._shell.traps()
+        for number, view in enumerate(views):
+            time = self._clock_of(view.at_us) if number == 0 else ""
+            holds = interval_words(self._site, view.p05_kg, view.p50_kg, view.p95_kg)
+            limit = volume_words(self._site, view.drain_at_kg)
+            print(f"{time:<5}  {view.trap:<16} {holds:<28} drain at {limit}", flush=True)

@@ -10,6 +10,8 @@ from daemon.units import show_volume
 
 RAISED_AT, RETURNS_BELOW = 0.5, 0.3  # share of members at or above the drain-at level
 NO_DATE = -1
+FINEST_KG = 0.001  # 1 ml
+FINEST_US_KG = 0.0029573529563  # a tenth of a US fluid ounce
 
 
 def calendar_due_us(site: Site, trap: Trap, since_us: int, drained: bool) -> int:
@@ -43,8 +45,9 @@ def condition(probability_due: float, by_calendar: bool, drained_now: bool) -> C
 
 
 def volume_words(site: Site, kg: float) -> str:
-    """A mass of water as a volume in the site's units."""
-    return show_volume(kg / WATER_KG_PER_M3, site.units)
+    """A mass of water as a volume in the site's units, no finer than anybody can measure."""
+    step_kg = FINEST_US_KG if site.units == "us" else FINEST_KG
+    return show_volume(round(kg / step_kg) * step_kg / WATER_KG_PER_M3, site.units)
 
 
 def interval_words(site: Site, p05_kg: float, p50_kg: float, p95_kg: float) -> str:

@@ -15,7 +15,7 @@ from typing import Any
 from daemon.advance import Core, Estimate
 from daemon.alarms import Transition
 from daemon.clock import format_rfc3339
-from daemon.errors import ReplayError
+from daemon.errors import BalanceError, ReplayError
 from daemon.journal import Drain, Entry
 from daemon.moisture.air import REFERENCE_DRY_AIR_KG_PER_M3
 from daemon.moisture.description import WATER_KG_PER_M3
@@ -53,6 +53,8 @@ class Result:
         self.state, estimate, transitions = advanced
         self.marks += estimate.marks
         self.learned += estimate.learned
+        if estimate.problems:
+            raise BalanceError(estimate.problems[0])
         self.transitions += transitions
 
     def finish(self, core: Core) -> None:

@@ -182,6 +182,9 @@ class Shell:
         ):
             state, estimate, changed = self.core.advance(state, each.now_us, each.inputs)
             transitions += changed
+            for problem in estimate.problems:
+                log.error("%s", problem)
+                self._problems["balance"] = problem
         if estimate is None or state.time_us != now_us:
             return  # nothing good was heard for a day: the next tick stands at the full hour
         self._commit(state, readings, entries, transitions, checkpoint=self._went_back)
