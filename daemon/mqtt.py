@@ -176,11 +176,16 @@ class MqttLink:
         self._states.begin()
         session.send(service_message(self._topics, "running", connected_us, connected_us))
         session.subscribe(self._topics.drains)
+        self._look.set()
+
+    def _connected(self, session: Session) -> None:
+        """The broker has answered that it will pass drains on, or that it will not."""
         self._set_status("connected", "")
         if self._tell_of_success:
             log.info("connected to the broker at %s", self._where)
             self._tell_of_success = False
-        self._look.set()
+        if session.listening == "refused":
+            log.warning("the broker does not let this user listen on %s", self._topics.drains)
 
     def _serve(self, session: Session) -> None:
         look_at_s = 0.0
@@ -192,6 +197,8 @@ class MqttLink:
                 look_at_s = now_s + _LOOK_EVERY_S
                 self._outbox.send(session)
             self._step(session)
+            if session.listening and self._status != "connected" and not session.ended:
+                self._connected(session)
             if self._settle(session):
                 self._look.set()  # the window has room again
 
@@ -224,9 +231,6 @@ class MqttLink:
         session.step(self._woken, min(_LOOK_EVERY_S, self._timing.keepalive_s / 4))
         with suppress(BlockingIOError):
             self._woken.recv(4096)
-        if session.refused_topics:
-            session.refused_topics = False
-            log.warning("the broker does not let this user listen on %s", self._topics.drains)
 
     def _set_status(self, status: Status, problem: str) -> None:
         with self._changed:

@@ -11,7 +11,7 @@ import selectors
 import socket
 import ssl
 from collections.abc import Callable
-from typing import Any
+from typing import Any, Literal
 
 from paho.mqtt.client import Client, MQTTMessage
 from paho.mqtt.enums import CallbackAPIVersion, MQTTProtocolVersion
@@ -68,7 +68,7 @@ class Session:
         """`take(topic, payload, retained)` is given what arrives; it must not raise."""
         self.accepted = False
         self.ended = ""
-        self.refused_topics = False  # the broker does not let us listen
+        self.listening: Literal["", "granted", "refused"] = ""  # the answer to `subscribe`
         self._acknowledged: list[int] = []
         self._take = take
         self._mqtt = mqtt
@@ -167,7 +167,8 @@ class Session:
     def _on_subscribe(
         self, client: Client, data: Any, number: int, reasons: Any, properties: Any
     ) -> None:
-        self.refused_topics = any(reason.is_failure for reason in reasons)
+        refused = any(reason.is_failure for reason in reasons)
+        self.listening = "refused" if refused else "granted"
 
     def _on_message(self, client: Client, data: Any, message: MQTTMessage) -> None:
         self._take(message.topic, bytes(message.payload), message.retain)

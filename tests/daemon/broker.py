@@ -292,6 +292,14 @@ class PlayedBroker:
         assert self._connection is not None
         self._connection.sendall(bytes([0x40, 2]) + packet.number)  # PUBACK
 
+    def answer_subscribe(self, granted: bool = True) -> None:
+        """The next packet must be a SUBSCRIBE to one topic."""
+        assert self._connection is not None
+        packet = self.packet()
+        assert packet.type == SUBSCRIBE
+        answer = 1 if granted else 0x80
+        self._connection.sendall(bytes([0x90, 3]) + packet.content[:2] + bytes([answer]))  # SUBACK
+
     def answer_ping(self) -> None:
         """The next packet must be a PINGREQ, which a client sends when it has nothing to say."""
         assert self._connection is not None

@@ -24,7 +24,6 @@ from daemon.outbox import Message
 from daemon.store.store import Store
 from daemon.views import Recorded
 from tests.daemon.broker import (
-    SUBSCRIBE,
     TIMEOUT_S,
     Broker,
     Heard,
@@ -174,7 +173,7 @@ def test_events_wait_for_a_broker_that_is_not_there_yet(
         broker.start()
         with Listener(broker.port, EVENTS, "listener") as listener:
             heard = listener.wait_for_number(3)
-        assert link.status == "connected"
+        assert link.wait_for("connected", TIMEOUT_S)
         assert link.problem == ""
     assert numbers(heard) == [0, 1, 2]
     told = [record.message for record in caplog.records]
@@ -276,7 +275,7 @@ def test_no_more_events_are_under_way_than_the_window_takes(store: Store) -> Non
     with PlayedBroker() as broker, linked(broker.port, store, timing=timing):
         broker.accept()
         broker.publish()
-        assert broker.packet().type == SUBSCRIBE
+        broker.answer_subscribe()
         sent = [broker.publish() for _ in range(10)]
         broker.answer_ping()
         broker.acknowledge(sent[4])
@@ -406,6 +405,20 @@ def test_the_log_tells_of_a_missing_broker_once(
         for _ in range(6):
             broker.turn_away()
         assert [record.levelname for record in caplog.records] == ["WARNING"]
+
+
+def test_a_broker_that_does_not_let_us_listen_is_told_of(
+    store: Store, caplog: pytest.LogCaptureFixture
+) -> None:
+    with PlayedBroker() as broker, linked(broker.port, store) as link:
+        broker.accept()
+        broker.publish()
+        assert link.status == "not connected"
+        broker.answer_subscribe(granted=False)
+        assert link.wait_for("connected", TIMEOUT_S)
+        broker.answer_ping()
+        broker.drop()
+    assert "does not let this user listen on dripleg/alder-yard/drains" in caplog.text
 
 
 def test_a_wrong_password_is_told_and_the_right_one_lets_in(tmp_path: Path, store: Store) -> None:
