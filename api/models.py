@@ -120,10 +120,15 @@ class DrainOut(BaseModel):
     by: str
     look: str
     key: str
+    said: str = Field(
+        default="",
+        description="what was learned from the volume, when it has just been recorded",
+        examples=["tank: you measured 380 ml, expected 410 ml (300 to 560 ml); ..."],
+    )
 
     @classmethod
-    def of(cls, entry: Entry) -> DrainOut:
-        return cls.model_validate(drain_payload(entry))
+    def of(cls, entry: Entry, said: str = "") -> DrainOut:
+        return cls.model_validate({**drain_payload(entry), "said": said})
 
 
 class AlarmOut(BaseModel):

@@ -80,6 +80,7 @@ class Recorded:
 
     entry: Entry
     repeated: bool
+    said: str = ""  # what was learned from it, in words for whoever brought it
 
 
 class Running(Protocol):

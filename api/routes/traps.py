@@ -66,7 +66,7 @@ def post_drain(trap: str, body: DrainIn, daemon: TheDaemon, response: Response) 
     recorded = daemon.record(drain, at_us, body.key or "")
     if recorded.repeated:
         response.status_code = 200
-    return DrainOut.of(recorded.entry)
+    return DrainOut.of(recorded.entry, recorded.said)
 
 
 @router.get(

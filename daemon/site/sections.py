@@ -76,10 +76,6 @@ def read_cup(notes: Notes, raw: object) -> Cup:
     usual = Cup()
     share = quantity("fraction", 0.0, 0.5, "from 0 to 50 %")
     each, each_kg = table.read("each_time", _each_time, (usual.each_time, usual.each_time_kg))
-    if raw:
-        notes.no_effect(
-            "[cup]: how well drained water is measured counts once dripleg learns from drains."
-        )
     return Cup(
         reads_low_by=table.read("reads_low_by", share, usual.reads_low_by),
         give_or_take=table.read("give_or_take", share, usual.give_or_take),
