@@ -26,6 +26,7 @@ def test_an_empty_object_records_an_emptied_trap_now(running: FakeRunning, clien
         "by": "",
         "look": "",
         "key": "",
+        "said": "",
     }
     assert running.journal[0].body == Drain("tank")
 
@@ -46,6 +47,7 @@ def test_everything_said_is_kept(running: FakeRunning, client: Client) -> None:
         "written": "2026-12-01T09:00:00Z",
         **body,
         "at": "2026-12-01T08:30:00Z",
+        "said": "",
     }
     kept = running.journal[0].body
     assert isinstance(kept, Drain)
