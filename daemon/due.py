@@ -64,8 +64,8 @@ def due_words(
     holds = interval_words(site, *p05_p50_p95_kg)
     limit = volume_words(site, trap.drain_at_kg)
     if because == "volume":
-        return f"Drain {name} now: it holds about {holds}; its limit is {limit}."
+        return f"Drain {name} now: about {holds} when this was raised; its limit is {limit}."
     every = (
         "every working day" if trap.drain_every == "working day" else f"every {trap.drain_every}"
     )
-    return f"Drain {name}: it is drained {every}. It holds about {holds}."
+    return f"Drain {name}: it is drained {every}. About {holds} when this was raised."
