@@ -8,26 +8,23 @@ from __future__ import annotations
 
 import logging
 import threading
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
-from hashlib import blake2b
 from typing import Protocol
-
-import numpy as np
 
 from daemon import accept
 from daemon.advance import Core, Estimate
-from daemon.alarms import Alarm, Transition, correction, shown
-from daemon.checkpoint import decode, encode
-from daemon.clock import DAY_US, HOUR_US, Clock, format_rfc3339
+from daemon.alarms import Alarm, AlarmRecord, Transition, correction, shown
+from daemon.clock import HOUR_US, Clock, format_rfc3339
 from daemon.errors import StoreError
 from daemon.journal import Body, Drain, Entry
-from daemon.moisture.line import new_ledger
 from daemon.mqtt import MqttLink
 from daemon.outbox import Message, Topics, alarm_message, event_message, trap_message
+from daemon.recovery import TOO_OLD_US, Back, Recovery
 from daemon.site.types import Site
 from daemon.state import CoreState, Inputs
 from daemon.store.store import Store
+from daemon.taking import learned_words
 from daemon.ticks import first_at_or_after, ticks
 from daemon.views import ChannelHealth, Health, Recorded, SeriesOfReadings, TrapView
 from sensors.reading import Reading
@@ -37,14 +34,8 @@ log = logging.getLogger("dripleg")
 
 GRID_KEY = "grid_us"  # the time of the first tick ever
 LATE_AFTER_PERIODS = 3  # without a tick for so long, health says so
-TOO_OLD_US = 7 * DAY_US  # an entry dated before this is kept, but the model does not go back
 MOST_WAITING = 100_000  # readings kept in memory while the store cannot take them
 SAMPLE_SHARE = 0.4  # of a period that sampling may take
-
-
-def fingerprint(site: Site) -> str:
-    """Changes when the line's description does, and so when an old state no longer fits."""
-    return blake2b(repr(site.line).encode(), digest_size=8).hexdigest()
 
 
 class Sampling(Protocol):
@@ -71,7 +62,7 @@ class Shell:
         self.core = Core(site)
         self.link: MqttLink | None = None
         self.on_entry: Callable[[Entry], None] | None = None  # told of what was committed
-        self._fingerprint = fingerprint(site)
+        self._recovery = Recovery(self.core, store)
         self._lock = threading.RLock()
         self._state: CoreState | None = None
         self._grid_us = 0
@@ -80,6 +71,8 @@ class Shell:
         self._waiting: list[Reading] = []  # sampled while no tick was due
         self._started_us = clock.now_us()
         self._went_back = False  # since the last commit: checkpoints after it are wrong
+        self._untold: list[Transition] = []  # corrections that no tick has committed yet
+        self._alarms_told: dict[str, Alarm] = {}  # as the link keeps them for a new connection
         self._ticks = 0
         self._problems: dict[str, str] = {}
         self._ticked_us = -1
@@ -88,15 +81,21 @@ class Shell:
 
     def recover(self) -> None:
         """Come back from the last checkpoint and the inputs after it, to the same bits."""
+        # the clock may have been set back meanwhile: what is stored has happened all the same
+        self._ticked_us = self._store.last_tick_us or -1
         grid = self._store.get_meta(GRID_KEY)
         if grid is None:
             return
         self._grid_us = int(grid)
-        self._state = self._advanced_from_checkpoint(self._clock.now_us())
-        if self._state is not None:
-            with self._lock:
-                self._show(Estimate(self.core, self._state))
-            log.info("came back to %s", format_rfc3339(self._state.time_us))
+        back = self._recovery.come_back(self._grid_us, self._ticked_us)
+        if back is None:
+            return
+        self._take_back(back)
+        if back.rewritten:
+            self._untold = self._against_what_was_told(back.state)
+        with self._lock:
+            self._show(Estimate(self.core, back.state))
+        log.info("came back to %s", format_rfc3339(back.state.time_us))
 
     def run(self, stop: threading.Event) -> None:
         """Tick until told to stop; then leave a checkpoint.
@@ -136,7 +135,7 @@ class Shell:
         """Keep the state as it is now."""
         with self._lock:
             if self._state is not None:
-                blob = encode(self._state, self._fingerprint)
+                blob = self._recovery.blob(self._state)
                 self._store.save_checkpoint(self._state.time_us, blob)
 
     # ---- one tick ----
@@ -167,9 +166,10 @@ class Shell:
         ]
         readings = sorted(readings, key=lambda each: each.time_us)[-MOST_WAITING:]
         self._waiting = readings  # until they are committed
-        transitions = self._go_back_for_late_entries(now_us)
-        state = self._state
+        self._go_back_for_late_entries(now_us)
+        state, transitions = self._state, list(self._untold)
         entries = [entry for entry in self._pending if entry.at_us <= now_us]
+        entries.sort(key=lambda entry: (entry.at_us, entry.seq))
         estimate: Estimate | None = None
         for each in ticks(
             self._grid_us,
@@ -188,17 +188,22 @@ class Shell:
         if estimate is None or state.time_us != now_us:
             return  # nothing good was heard for a day: the next tick stands at the full hour
         self._commit(state, readings, entries, transitions, checkpoint=self._went_back)
-        self._waiting, self._went_back = [], False
+        self._waiting, self._untold, self._went_back = [], [], False
         self._show(estimate)
 
     def _begin(self, now_us: int, readings: list[Reading]) -> None:
         at_now = [each for each in readings if each.time_us == now_us]
-        state, estimate, transitions = self.core.initial(now_us, Inputs(at_now))
-        state = self._carry_over(state)
+        state, _, transitions = self.core.initial(now_us, Inputs(at_now))
+        state = self._recovery.carried_over(state)
+        # what was recorded before the first tick: nothing of that time is known, so it counts now
+        entries = [entry for entry in self._pending if entry.at_us <= now_us]
+        state, estimate, changed = self.core.take(state, entries)
         self._grid_us = now_us
         self._store.set_meta(GRID_KEY, str(now_us))
-        self._commit(state, at_now, [], transitions, checkpoint=True, every_alarm=True)
-        self._show(Estimate(self.core, state, estimate.marks))
+        self._commit(
+            state, at_now, entries, transitions + changed, checkpoint=True, every_alarm=True
+        )
+        self._show(estimate)
 
     def _commit(
         self,
@@ -214,7 +219,7 @@ class Shell:
         full_hour = state.time_us // HOUR_US != before_us // HOUR_US
         blob = None
         if checkpoint or drained or full_hour:
-            blob = encode(state, self._fingerprint)
+            blob = self._recovery.blob(state)
         changed = {each.alarm for each in transitions}
         alarms = [name for name in state.alarms if every_alarm or name in changed]
         messages = self._messages(state, transitions, alarms)
@@ -244,109 +249,60 @@ class Shell:
 
     def _show(self, estimate: Estimate) -> None:
         self._shown = estimate.traps
-        if self.link is not None and self._topics is not None:
-            self.link.publish_states([trap_message(self._topics, v) for v in self._shown])
+        if self.link is None or self._topics is None:
+            return
+        messages = [trap_message(self._topics, view) for view in self._shown]
+        for alarm in self.core.alarms(estimate.state):
+            if self._alarms_told.get(alarm.id) != alarm:
+                self._alarms_told[alarm.id] = alarm
+                messages.append(alarm_message(self._topics, alarm))
+        self.link.publish_states(messages)
 
     # ---- going back ----
 
-    def _go_back_for_late_entries(self, now_us: int) -> list[Transition]:
+    def _go_back_for_late_entries(self, now_us: int) -> None:
         """Entries dated before the last tick: advance again from the checkpoint before them."""
         state = self._state
-        if state is None:
-            return []
+        assert state is not None
         late = [entry for entry in self._pending if entry.at_us <= state.time_us]
         if not late:
-            return []
-        self._pending = [entry for entry in self._pending if entry.at_us > state.time_us]
+            return
         usable = [entry for entry in late if entry.at_us >= now_us - TOO_OLD_US]
         for entry in late:
             if entry not in usable:
                 log.warning("entry %d is more than 7 days old: kept, not reckoned with", entry.seq)
-        if not usable:
-            return []
-        earliest_us = min(entry.at_us for entry in usable)
-        again = self._advanced_from_checkpoint(state.time_us, before_us=earliest_us)
-        if again is None:
-            log.warning("nothing to go back to before %s", format_rfc3339(earliest_us))
-            return []
-        self._store.drop_checkpoints_after(earliest_us - 1)
-        self._state, self._went_back = again, True
-        return self._corrections(state, again)
+        back = None
+        if usable:
+            earliest_us = min(entry.at_us for entry in usable)
+            back = self._recovery.come_back(self._grid_us, state.time_us, before_us=earliest_us)
+            if back is None:
+                log.warning("nothing to go back to before %s", format_rfc3339(earliest_us))
+        if back is None:
+            self._pending = [entry for entry in self._pending if entry.at_us > state.time_us]
+            return
+        self._take_back(back)
+        self._untold += self._corrections(state.alarms, back.state)
 
-    def _corrections(self, before: CoreState, after: CoreState) -> list[Transition]:
+    def _corrections(self, before: Mapping[str, AlarmRecord], after: CoreState) -> list[Transition]:
         """What was announced stays; where it no longer holds, a correction follows."""
-        found = []
-        for name, record in after.alarms.items():
-            was = before.alarms[name]
-            if was.state != record.state:
-                found.append(correction(self.core.definitions[name], was, record, after.time_us))
-        return found
-
-    def _advanced_from_checkpoint(
-        self, until_us: int, before_us: int | None = None
-    ) -> CoreState | None:
-        """The state at the last stored tick up to `until_us`, from the latest checkpoint that is
-        earlier than `before_us`, or from the latest of all."""
-        state = self._latest_complete_checkpoint(until_us if before_us is None else before_us - 1)
-        if state is None:
-            return None
-        entries = [
-            entry
-            for entry in self._store.entries(from_us=state.time_us + 1)
-            if entry.at_us >= entry.written_us - TOO_OLD_US
+        return [
+            correction(self.core.definitions[name], before[name], record, after.time_us)
+            for name, record in after.alarms.items()
+            if before[name].state != record.state
         ]
-        entries.sort(key=lambda entry: (entry.at_us, entry.seq))
-        taken = 0
-        for tick_us, readings in self._store.ticks(state.time_us, until_us):
-            first = taken
-            while taken < len(entries) and entries[taken].at_us <= tick_us:
-                taken += 1
-            for each in ticks(
-                self._grid_us,
-                self.core.model.period_us,
-                state.time_us,
-                self.core.heard_us(state),
-                sorted(readings, key=lambda reading: reading.time_us),
-                entries[first:taken],
-                tick_us,
-            ):
-                state, _, _ = self.core.advance(state, each.now_us, each.inputs)
-        self._pending = entries[taken:]
-        return state
 
-    def _latest_complete_checkpoint(self, until_us: int) -> CoreState | None:
-        """The latest checkpoint that knows of every entry dated before it.
+    def _take_back(self, back: Back) -> None:
+        self._state, self._pending = back.state, back.pending
+        self._went_back = self._went_back or back.rewritten
 
-        An entry written after a checkpoint but dated before it (a kill came between) sends us
-        further back.
-        """
-        while True:
-            found = self._store.checkpoint_before(until_us)
-            if found is None:
-                return None
-            state, belongs_to = decode(found[1])
-            if belongs_to != self._fingerprint:
-                return None
-            at_us = state.time_us
-            unknown = [
-                entry.at_us
-                for entry in self._store.entries(from_us=at_us - TOO_OLD_US, to_us=at_us + 1)
-                if entry.written_us > at_us and entry.at_us >= entry.written_us - TOO_OLD_US
-            ]
-            if not unknown:
-                return state
-            until_us = min(unknown) - 1
-            self._store.drop_checkpoints_after(until_us)
-            self._went_back = True
-
-    def _carry_over(self, fresh: CoreState) -> CoreState:
-        """After a change of the site file: traps of the same name keep what they hold."""
-        found = self._store.checkpoint_before(fresh.time_us)
-        if found is None:
-            return fresh
-        old, _ = decode(found[1])
-        log.info("the line's description has changed: traps go on with what they held")
-        return carried_over(self.core, fresh, old)
+    def _against_what_was_told(self, state: CoreState) -> list[Transition]:
+        """Corrections of what was announced before a stop, where it no longer holds."""
+        told = {each.alarm: each for each in self._store.transitions(0, state.time_us + 1)}
+        before = {
+            name: AlarmRecord(told[name].after) if name in told else AlarmRecord()
+            for name in state.alarms
+        }
+        return self._corrections(before, state)
 
     # ---- what the outside asks (any thread) ----
 
@@ -375,19 +331,24 @@ class Shell:
             recorded = self._store.add_entry(body, when_us, now_us, key)
             if not recorded.repeated:
                 self._pending.append(recorded.entry)
-                self._preview(recorded.entry, now_us)
+                recorded = replace(recorded, said=self._preview(recorded.entry, now_us))
         if not recorded.repeated and self.on_entry is not None:
             self.on_entry(recorded.entry)
         return recorded
 
-    def _preview(self, entry: Entry, now_us: int) -> None:
-        """Show at once what an entry will do, without keeping it: the next tick does that."""
+    def _preview(self, entry: Entry, now_us: int) -> str:
+        """Show at once what an entry will do, without keeping it: the next tick does that.
+
+        Gives what will be learned from it, in words.
+        """
         state = self._state
         if state is None or entry.at_us <= state.time_us:
-            return
+            return ""
         entries = [each for each in self._pending if state.time_us < each.at_us <= now_us]
         _, estimate, _ = self.core.advance(state, now_us, Inputs((), entries))
         self._shown = estimate.traps
+        learned = [each for each in estimate.learned if each.at_us == entry.at_us]
+        return " ".join(learned_words(self._site, each) for each in learned)
 
     def drains(self, trap: str, from_us: int, to_us: int) -> Sequence[Entry]:
         return self._store.entries(from_us=from_us, to_us=to_us, trap=trap)
@@ -441,22 +402,3 @@ class Shell:
                 )
             )
         return found
-
-
-def carried_over(core: Core, fresh: CoreState, old: CoreState) -> CoreState:
-    """A fresh state whose traps hold what an old one's of the same name held.
-
-    Member by member where there are as many of them, else spread alike.
-    """
-    members = core.site.line.members
-    water = fresh.model.water.trap.copy()
-    for name in core.trap_names:
-        if name in old.stations:
-            held = old.model.water.trap[old.stations.index(name)]
-            if held.size != members:
-                held = np.quantile(held, (np.arange(members) + 0.5) / members)
-            water[core.model.plan.index[name]] = held
-    model = replace(fresh.model, water=replace(fresh.model.water, trap=water))
-    model = replace(model, ledger=new_ledger(core.model.plan, model.water))
-    traps = {name: old.traps.get(name, record) for name, record in fresh.traps.items()}
-    return replace(fresh, model=model, traps=traps)

@@ -250,7 +250,7 @@ def test_traps_keep_what_they_hold_when_the_site_file_changes(tmp_path: Path) ->
     rig = Rig(path, list(working(SHOP, 400)))
     for number in range(360):
         rig.tick(BEGUN_US + number * PERIOD_US)
-    held = rig.state.model.water.trap[1].copy()
+    held = rig.shell.core.model.contents(rig.state.model)[1]
     rig.shell.checkpoint()
     rig.store.close()
     changed = site(SITE.replace('set = "3 bar"', 'set = "4 bar"'))
@@ -261,4 +261,4 @@ def test_traps_keep_what_they_hold_when_the_site_file_changes(tmp_path: Path) ->
     state = shell._state
     store.close()
     assert state is not None
-    assert np.array_equal(state.model.water.trap[1], held)
+    assert np.array_equal(shell.core.model.contents(state.model)[1], held)

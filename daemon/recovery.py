@@ -1,0 +1,162 @@
+"""Coming back from a checkpoint and the inputs after it, to the same bits as without a stop."""
+
+from __future__ import annotations
+
+import logging
+from collections.abc import Iterator
+from dataclasses import dataclass, replace
+from hashlib import blake2b
+
+import numpy as np
+
+from daemon.advance import Core
+from daemon.checkpoint import decode, encode
+from daemon.clock import DAY_US, format_rfc3339
+from daemon.errors import StoreError
+from daemon.journal import Entry
+from daemon.moisture.line import new_ledger
+from daemon.site.types import Site
+from daemon.state import CoreState
+from daemon.store.store import Store
+from daemon.ticks import ticks
+
+log = logging.getLogger("dripleg")
+
+TOO_OLD_US = 7 * DAY_US  # an entry dated before this is kept, but the model does not go back
+
+
+def fingerprint(site: Site) -> str:
+    """Changes when the line's description does, and so when an old state no longer fits."""
+    return blake2b(repr(site.line).encode(), digest_size=8).hexdigest()
+
+
+@dataclass(frozen=True, slots=True)
+class Back:
+    """A state that was come back to."""
+
+    state: CoreState
+    pending: list[Entry]  # committed, dated after it
+    rewritten: bool  # checkpoints after the one it was made from are gone: they were wrong
+
+
+class Recovery:
+    """Makes states from one site's store."""
+
+    def __init__(self, core: Core, store: Store) -> None:
+        self._core, self._store = core, store
+        self._fingerprint = fingerprint(core.site)
+
+    def blob(self, state: CoreState) -> bytes:
+        """A state as a checkpoint keeps it."""
+        return encode(state, self._fingerprint)
+
+    def come_back(self, grid_us: int, until_us: int, before_us: int | None = None) -> Back | None:
+        """The state at the last stored tick up to `until_us`, from the latest checkpoint that is
+        earlier than `before_us`, or from the latest of all; None without one of this line."""
+        latest_us = until_us if before_us is None else before_us - 1
+        state, rewritten = self._latest_complete(grid_us, latest_us)
+        if state is None:
+            return None
+        entries = [
+            entry
+            for entry in self._store.entries(from_us=state.time_us + 1)
+            if entry.at_us >= entry.written_us - TOO_OLD_US
+        ]
+        entries.sort(key=lambda entry: (entry.at_us, entry.seq))
+        taken = 0
+        for tick_us, readings in self._store.ticks(state.time_us, until_us):
+            first = taken
+            while taken < len(entries) and entries[taken].at_us <= tick_us:
+                taken += 1
+            for each in ticks(
+                grid_us,
+                self._core.model.period_us,
+                state.time_us,
+                self._core.heard_us(state),
+                sorted(readings, key=lambda reading: reading.time_us),
+                entries[first:taken],
+                tick_us,
+            ):
+                state, _, _ = self._core.advance(state, each.now_us, each.inputs)
+        if before_us is not None:
+            self._store.drop_checkpoints_after(before_us - 1)
+        return Back(state, entries[taken:], rewritten or before_us is not None)
+
+    def _latest_complete(self, grid_us: int, until_us: int) -> tuple[CoreState | None, bool]:
+        """The latest checkpoint that knows of every entry dated before it.
+
+        An entry written after a checkpoint but dated before it (a kill came between) sends us
+        further back; one from before the record began cannot.
+        """
+        rewritten = False
+        while True:
+            found = next(self._readable(until_us), None)
+            if found is None or found[1] != self._fingerprint:
+                return None, rewritten
+            at_us = found[0].time_us
+            unknown = [
+                entry.at_us
+                for entry in self._store.entries(
+                    from_us=max(at_us - TOO_OLD_US, grid_us + 1), to_us=at_us + 1
+                )
+                if entry.written_us > at_us and entry.at_us >= entry.written_us - TOO_OLD_US
+            ]
+            if not unknown:
+                return found[0], rewritten
+            until_us = min(unknown) - 1
+            self._store.drop_checkpoints_after(until_us)
+            rewritten = True
+
+    def _readable(self, until_us: int) -> Iterator[tuple[CoreState, str]]:
+        """Checkpoints from the latest back, with what each belongs to; unreadable ones left out."""
+        told = False
+        while (found := self._store.checkpoint_before(until_us)) is not None:
+            at_us, blob = found
+            until_us = at_us - 1
+            try:
+                yield decode(blob)
+            except StoreError as error:  # damaged, or of another version of dripleg
+                if not told:
+                    log.warning(
+                        "the checkpoint of %s is left out: %s", format_rfc3339(at_us), error
+                    )
+                told = True
+
+    def carried_over(self, fresh: CoreState) -> CoreState:
+        """After a change of the site file: traps of the same name keep what they hold.
+
+        What was recorded while the daemon stood still is taken in.
+        """
+        found = next(self._readable(fresh.time_us), None)
+        if found is None:
+            return fresh
+        old = found[0]
+        log.info("the line's description has changed: traps go on with what they held")
+        since = self._store.entries(from_us=old.time_us + 1, to_us=fresh.time_us + 1)
+        state, _, _ = self._core.take(
+            carried_over(self._core, fresh, old),
+            sorted(since, key=lambda entry: (entry.at_us, entry.seq)),
+        )
+        return state
+
+
+def carried_over(core: Core, fresh: CoreState, old: CoreState) -> CoreState:
+    """A fresh state whose traps hold what an old one's of the same name held.
+
+    Member by member where there are as many of them, else spread alike.
+    """
+    members = core.site.line.members
+    water = fresh.model.water.trap.copy()
+    contents = core.model.contents(old.model)
+    for name in core.trap_names:
+        if name in old.stations:
+            held = contents[old.stations.index(name)]
+            if held.size != members:
+                held = np.quantile(held, (np.arange(members) + 0.5) / members)
+            water[core.model.plan.index[name]] = held
+    model = replace(
+        fresh.model, water=replace(fresh.model.water, trap=water), round_start=water.copy()
+    )
+    model = replace(model, ledger=new_ledger(core.model.plan, model.water))
+    traps = {name: old.traps.get(name, record) for name, record in fresh.traps.items()}
+    return replace(fresh, model=model, traps=traps)
