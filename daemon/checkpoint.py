@@ -16,10 +16,13 @@ from daemon.errors import StoreError
 from daemon.moisture.beliefs import Parameters
 from daemon.moisture.conditions import Conditions, Held, Lapse, Offsets
 from daemon.moisture.contact import ContactState
+from daemon.moisture.fitting_beliefs import FittingParameters
+from daemon.moisture.fittings import FittingState
 from daemon.moisture.flow import AirState, PumpWatch
 from daemon.moisture.learning import Suspect
 from daemon.moisture.line import Ledger, WaterParameters, WaterState
 from daemon.moisture.model import State
+from daemon.moisture.power import Powered
 from daemon.state import ChannelRecord, CoreState, HourTotals, TrapRecord
 
 FORMAT = b"DLC1"
@@ -32,12 +35,15 @@ _CLASSES = {
         Conditions,
         ContactState,
         CoreState,
+        FittingParameters,
+        FittingState,
         Held,
         HourTotals,
         Lapse,
         Ledger,
         Offsets,
         Parameters,
+        Powered,
         PumpWatch,
         State,
         Suspect,

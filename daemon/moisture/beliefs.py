@@ -15,6 +15,8 @@ import numpy as np
 from daemon.moisture.conditions import Offsets
 from daemon.moisture.description import Fixed, Share, Station
 from daemon.moisture.ensemble import Array, positive, share, standard_normal
+from daemon.moisture.fitting_beliefs import FittingParameters, fitting_parameters
+from daemon.moisture.fitting_beliefs import own_names as fitting_names
 from daemon.moisture.line import WaterParameters
 from daemon.moisture.plan import Plan
 
@@ -40,6 +42,7 @@ class Parameters:
     volume_m3: Array  # (receivers, members)
     duty: Array  # (members,), standard normal: of a compressor that nothing watches
     round_factor: Array  # (stations, members): what a trap caught this round, to what is reckoned
+    fittings: FittingParameters
 
 
 def bias_of(channel: str) -> str:
@@ -97,7 +100,7 @@ def own_names(station: Station) -> list[str]:
         found += [separation_of(station.id), capacity_of(station.id), round_of(station.id)]
     if station.volume is not None:
         found.append(volume_of(station.id))
-    return found
+    return found + fitting_names(station)
 
 
 def draw(plan: Plan, which: Iterable[str], when: int = 0) -> dict[str, Array]:
@@ -141,6 +144,7 @@ def parameters(plan: Plan, beliefs: Beliefs) -> Parameters:
         volume_m3=np.array(volumes).reshape(-1, plan.line.members),
         duty=beliefs[DUTY],
         round_factor=rounds,
+        fittings=fitting_parameters(plan, beliefs),
     )
 
 

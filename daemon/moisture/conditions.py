@@ -124,12 +124,14 @@ class Evaluation:
         name = f"{what} of {self.plan.stations[i].id}"
         if not self._stale(source.channel):
             self.lapses.pop(name, None)
-            return self._by_channel(source, barometer)
+            return self._by_channel(what, i, source, barometer)
         return self._lapsed(name, what, i, source, rule, values, barometer)
 
-    def _by_channel(self, source: Measured, barometer: Array | None) -> Array:
+    def _by_channel(self, what: str, i: int, source: Measured, barometer: Array | None) -> Array:
         spread = self.offsets.channels[source.channel] * (source.give_or_take * HALF_WIDTH_TO_SD)
-        spread += self.held[source.channel].value
+        spread += self.held[source.channel].value + source.plus
+        if source.plus_give_or_take > 0.0:
+            spread += self._offset(what, i) * (source.plus_give_or_take * HALF_WIDTH_TO_SD)
         if source.gauge and barometer is not None:
             spread += barometer
         return spread
@@ -177,7 +179,7 @@ class Evaluation:
         middle = self._middle(i, rule, values, barometer)
         lapse = self.lapses.get(name)
         if lapse is None:
-            lapse = self._begin_lapse(name, source, middle, barometer)
+            lapse = self._begin_lapse(name, what, i, source, middle, barometer)
             self.lapses[name] = lapse
         sd = rule.give_or_take * HALF_WIDTH_TO_SD
         if lapse.since_us < 0:
@@ -188,11 +190,17 @@ class Evaluation:
         return middle + lapse.deviation * remains + lapse.unknown * grown
 
     def _begin_lapse(
-        self, name: str, source: Measured, middle: Array | float, barometer: Array | None
+        self,
+        name: str,
+        what: str,
+        i: int,
+        source: Measured,
+        middle: Array | float,
+        barometer: Array | None,
     ) -> Lapse:
         line = self.plan.line
         since_us = self.held[source.channel].time_us if source.channel in self.held else -1
         unknown = standard_normal(line.seed, f"lapse of {name}", line.members, max(since_us, 0))
         if since_us < 0:
             return Lapse(-1, np.zeros(line.members), unknown)
-        return Lapse(since_us, self._by_channel(source, barometer) - middle, unknown)
+        return Lapse(since_us, self._by_channel(what, i, source, barometer) - middle, unknown)

@@ -90,6 +90,7 @@ class AirState:
     used: Array  # (members,): cumulative, its running maximum
     entered: Array  # (receivers, members): cumulative into each, its running maximum
     seen: tuple[bool, ...]  # receivers whose pressure has been measured
+    purged: Array  # (purging, members): cumulative, what dryers blew off
 
 
 @dataclass(frozen=True, slots=True)
@@ -100,7 +101,8 @@ class AirMoved:
     used: Array  # (members,), by all outlets
     outlets: Array  # (outlets, members), by each
     into: Array  # (stations, members)
-    through: Array  # (stations, members): what leaves each
+    through: Array  # (stations, members): what leaves each, to the next ones and to outlets
+    purge: Array | None = None  # (purging, members), what dryers blew off; None: there are none
 
 
 def start(plan: Plan, stored: Array) -> AirState:
@@ -114,6 +116,7 @@ def start(plan: Plan, stored: Array) -> AirState:
         used=np.zeros(members),
         entered=np.zeros_like(stored),
         seen=tuple(False for _ in plan.receivers),
+        purged=np.zeros((len(plan.purging), members)),
     )
 
 
@@ -139,8 +142,13 @@ def bias_changed(state: AirState, shift: Array) -> AirState:
     return replace(state, first=state.first + shift, measured=state.measured + shift)
 
 
-def move(plan: Plan, state: AirState, drawn: Array, measured: Array) -> tuple[AirState, AirMoved]:
-    """Advance by one step: `drawn` kg came in (members,), receivers now hold `measured`."""
+def move(
+    plan: Plan, state: AirState, drawn: Array, measured: Array, purging: Array | None = None
+) -> tuple[AirState, AirMoved]:
+    """Advance by one step: `drawn` kg came in (members,), receivers now hold `measured`.
+
+    `purging` is what purging dryers blow off of the air that comes to them, (purging, members).
+    """
     total_drawn = state.drawn + drawn
     change = measured - state.first
     cumulative_use = total_drawn - change.sum(axis=0)
@@ -152,8 +160,11 @@ def move(plan: Plan, state: AirState, drawn: Array, measured: Array) -> tuple[Ai
             continue
         below = [plan.receivers.index(other) for other in plan.receivers_below[receiver]]
         wanted = plan.share[receiver] * cumulative_use + change[below].sum(axis=0)
+        for number in plan.purged_above[receiver]:
+            part = plan.share[receiver] / max(plan.share[plan.purging[number]], 1e-300)
+            wanted = wanted - part * state.purged[number]
         entered[row] = np.maximum(wanted - state.entered[row], 0.0)
-    moved = _route(plan, drawn, used, entered)
+    moved = _route(plan, drawn, used, entered, purging)
     if len(plan.receivers) > 1:
         moved = _within_stock(plan, state, moved)
     rows = list(plan.receivers)
@@ -164,15 +175,42 @@ def move(plan: Plan, state: AirState, drawn: Array, measured: Array) -> tuple[Ai
         drawn=total_drawn,
         used=state.used + moved.used,
         entered=state.entered + moved.into[rows],
+        purged=state.purged if moved.purge is None else state.purged + moved.purge,
     )
     return after, moved
 
 
-def _route(plan: Plan, drawn: Array, used: Array, entered: Array) -> AirMoved:
+def _purge(plan: Plan, used: Array, outlets: Array, purging: Array) -> tuple[Array, Array]:
+    """What dryers blow off, kg (purging, members), and what outlets are left with."""
+    purge, outlets = np.zeros_like(purging), outlets.copy()
+    kept = 1.0 - purging
+
+    def left(station: int) -> Array:
+        above: Array = np.ones(used.size)
+        for number in plan.purged_above[station]:
+            above = above * kept[number]
+        return above
+
+    for number, station in enumerate(plan.purging):
+        purge[number] = purging[number] * plan.share[station] * used * left(station)
+    for number, outlet in enumerate(plan.line.outlets):
+        station = plan.index[outlet.after]
+        outlets[number] *= left(station)
+        if station in plan.purging:
+            outlets[number] *= kept[plan.purging.index(station)]
+    return purge, outlets
+
+
+def _route(
+    plan: Plan, drawn: Array, used: Array, entered: Array, purging: Array | None
+) -> AirMoved:
     """Air into and out of every station, from the ends of the line back to the intake."""
     shape = (len(plan.stations), used.size)
     into, through = np.zeros(shape), np.zeros(shape)
     outlets = np.array([outlet.share for outlet in plan.line.outlets])[:, None] * used
+    purge = None
+    if purging is not None:
+        purge, outlets = _purge(plan, used, outlets, purging)
     for station in range(shape[0] - 1, -1, -1):
         for flow in plan.outflows[station]:
             through[station] += outlets[flow.outlet] if flow.outlet >= 0 else into[flow.station]
@@ -182,7 +220,9 @@ def _route(plan: Plan, drawn: Array, used: Array, entered: Array) -> AirMoved:
             into[station] = through[station] = drawn
         else:
             into[station] = through[station]
-    return AirMoved(drawn, used, outlets, into, through)
+            if purge is not None and station in plan.purging:
+                into[station] += purge[plan.purging.index(station)]
+    return AirMoved(drawn, used, outlets, into, through, purge)
 
 
 def _within_stock(plan: Plan, state: AirState, moved: AirMoved) -> AirMoved:
@@ -206,4 +246,9 @@ def _within_stock(plan: Plan, state: AirState, moved: AirMoved) -> AirMoved:
         for flow in plan.outflows[station]:
             if flow.outlet >= 0:
                 outlets[flow.outlet] *= scale[station]
-    return replace(moved, into=into, through=through, outlets=outlets, used=outlets.sum(axis=0))
+    used, purge = outlets.sum(axis=0), moved.purge
+    if purge is not None:
+        rows = list(plan.purging)
+        purge = into[rows] - through[rows]
+        used = used + purge.sum(axis=0)
+    return replace(moved, into=into, through=through, outlets=outlets, used=used, purge=purge)

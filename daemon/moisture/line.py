@@ -12,6 +12,7 @@ import numpy as np
 
 from daemon.errors import BalanceError
 from daemon.moisture.ensemble import Array
+from daemon.moisture.fitted import Bed, Fitted
 from daemon.moisture.flow import AirMoved
 from daemon.moisture.plan import Plan
 
@@ -50,12 +51,15 @@ class Ledger:
     drained: Array
     corrected: Array
     shed: Array  # (stations, members): what traps were given, before running over
+    beds: Array  # what desiccants took up, also what left with a purge or a changed cartridge
+    passed: Array  # (stations, members): what left by drains that nobody was seen to open
 
     def residual(self, state: WaterState) -> Array:
         """What cannot be accounted for, as a share of all that came in or was there at first."""
         held = state.trap.sum(0) + state.waiting.sum(0) + state.spilled.sum(0) + state.vapor.sum(0)
         given = self.water_in + self.at_start + self.corrected
-        missing = given - (self.vapor_out + self.liquid_out + self.drained + held)
+        gone = self.vapor_out + self.liquid_out + self.drained + self.beds + self.passed.sum(0)
+        missing = given - (gone + held)
         share: Array = np.abs(missing) / np.maximum(self.water_in + self.at_start, 1e-6)
         return share
 
@@ -73,7 +77,8 @@ def new_ledger(plan: Plan, state: WaterState) -> Ledger:
     """A ledger that opens with what is already in the line."""
     zero = np.zeros(plan.line.members)
     held = state.trap.sum(0) + state.vapor.sum(0)
-    return Ledger(zero, held, zero, zero, zero, zero, np.zeros_like(state.trap))
+    none = np.zeros_like(state.trap)
+    return Ledger(zero, held, zero, zero, zero, zero, none, zero, none)
 
 
 def _arrive(
@@ -110,19 +115,50 @@ class _Step:
     vapor_in: Array
     liquid_in: Array
     spill_in: Array
+    fitted: Fitted
+    beds: Array
+    passed: Array
 
     def station(self, i: int, stored_before: Array | None) -> None:
         """Work out station `i` and pass on what leaves it."""
+        if i in self.fitted.beds:
+            self._bed(i, self.fitted.beds[i])
         vapor = self._passing(i) if stored_before is None else self._receiver(i, stored_before)
+        if i in self.plan.purging:
+            vapor = self._purge(i, vapor)
         self._hand_on(i, vapor)
 
     def _passing(self, i: int) -> Array:
         saturated = self.saturated[i] * self.air.into[i]
-        vapor, liquid, _ = _arrive(
+        vapor, liquid, condensed = _arrive(
             self.vapor_in[i], self.liquid_in[i], self.parameters.evaporated[i], saturated
         )
+        if i in self.fitted.coils:
+            self.fitted.condensed[i] = condensed
         self._divide(i, liquid)
         return vapor
+
+    def _bed(self, i: int, bed: Bed) -> None:
+        """A desiccant takes up drops, and vapor beyond what it leaves in the air."""
+        vapor, liquid, spill = self.vapor_in[i], self.liquid_in[i], self.spill_in[i]
+        excess = np.where(bed.works, np.maximum(vapor - bed.ratio * self.air.into[i], 0.0), 0.0)
+        wet = np.where(bed.works, liquid, 0.0)
+        wet_spill = np.where(bed.works, spill, 0.0)
+        offered = excess + wet + wet_spill
+        bed.taken = np.minimum(offered * bed.takes, bed.room)
+        part = bed.taken / np.maximum(offered, 1e-300)
+        self.vapor_in[i] = np.maximum(vapor - part * excess, 0.0)
+        self.liquid_in[i] = np.maximum(liquid - part * wet, 0.0)
+        self.spill_in[i] = np.maximum(spill - part * wet_spill, 0.0)
+        self.beds += bed.taken
+
+    def _purge(self, i: int, vapor: Array) -> Array:
+        """Twin beds blow off a part of the air that they have dried, with its vapor."""
+        into = self.air.into[i]
+        gone = vapor * ((into - self.air.through[i]) / np.maximum(into, 1e-300))
+        self.beds += gone
+        remains: Array = vapor - gone
+        return remains
 
     def _receiver(self, i: int, stored_before: Array) -> Array:
         row = self.plan.receivers.index(i)
@@ -163,6 +199,10 @@ class _Step:
         caught += caught_spill
         self.shed[i] += caught
         filled = self.trap[i] + caught
+        if i in self.fitted.drains:
+            left = self.fitted.drains[i].left(filled)
+            self.passed[i] += filled - left
+            filled = left
         over = np.maximum(filled - self.parameters.capacity_kg[i], 0.0)
         self.trap[i] = filled - over
         self.spilled[i] += over
@@ -211,6 +251,7 @@ def step(
     intake_ratio: Array,
     saturated: Array,
     dt_s: float,
+    fitted: Fitted | None = None,
 ) -> tuple[WaterState, Ledger]:
     """Advance the water by one step of `dt_s` seconds.
 
@@ -220,7 +261,9 @@ def step(
     stored_before : dry air in the receivers before it, kg, (receivers, members).
     intake_ratio : humidity ratio of the air drawn in, (members,).
     saturated : humidity ratio at saturation of every station now, (stations, members).
+    fitted : what some stations do besides; it is told what they did.
     """
+    fitted = fitted or Fitted()
     shape = saturated.shape
     work = _Step(
         plan,
@@ -239,6 +282,9 @@ def step(
         vapor_in=np.zeros(shape),
         liquid_in=np.zeros(shape),
         spill_in=np.zeros(shape),
+        fitted=fitted,
+        beds=ledger.beds.copy(),
+        passed=ledger.passed.copy() if fitted.drains else ledger.passed,
     )
     water_in = air.through[0] * intake_ratio
     work.vapor_in[0] += water_in
@@ -256,6 +302,8 @@ def step(
         vapor_out=work.vapor_out,
         liquid_out=work.liquid_out,
         shed=work.shed,
+        beds=work.beds,
+        passed=work.passed,
     )
     return after, booked
 

@@ -30,6 +30,7 @@ from daemon.moisture.conditions import Conditions, Evaluation, Held, Lapse, Offs
 from daemon.moisture.contact import ContactState, ContactTime, integrate
 from daemon.moisture.description import Line, Measured, RiseByDuty
 from daemon.moisture.ensemble import Array, standard_normal
+from daemon.moisture.fittings import Fittings, FittingState, Moment
 from daemon.moisture.learning import CupError, Learned, Suspect
 from daemon.moisture.plan import Plan, plan_line
 
@@ -60,6 +61,7 @@ class State:
     round_start: Array  # (stations, members): what each trap held when its round began, kg
     conditions: Conditions
     saturated: Array  # (stations, members), humidity ratio
+    fittings: FittingState
 
 
 @dataclass(frozen=True, slots=True)
@@ -84,6 +86,7 @@ class Model:
 
     def __init__(self, description: Line) -> None:
         self.plan: Plan = plan_line(description)
+        self.fittings = Fittings(self.plan)
         self.period_us = round(description.period_s * 1e6)
         self._gauge = self._watched_receiver()
         self._lagging = [
@@ -143,6 +146,12 @@ class Model:
             round_start=water.trap,
             conditions=now,
             saturated=saturated,
+            fittings=self.fittings.switched(
+                self.fittings.begin(time_us, parameters.fittings),
+                heard.channels,
+                heard.is_open,
+                time_us,
+            ),
         )
         seen = tuple(receiver in now.measured for receiver in plan.receivers)
         pump = self._watch(state, heard)[0]
@@ -169,7 +178,8 @@ class Model:
         on_s = self._on_time(state, held, to_us, times, booked_us, heard.is_open)
         duty, duty_known = self._follow(state, on_s, times, dt_s)
         evaluation = Evaluation(plan, held, offsets, duty, to_us, dict(state.lapses))
-        now = evaluation.conditions()
+        fitted = self.fittings.switched(state.fittings, heard.channels, heard.is_open, to_us)
+        now = self.fittings.warmed(fitted, state.parameters.fittings, evaluation.conditions())
         saturated = self._saturated(state, now)
         intake_ratio = np.minimum(self._intake_ratio(now), saturated[0])
         drawn = on_s * self._delivered(state.parameters, now, intake_ratio)
@@ -178,17 +188,15 @@ class Model:
             as_before = replace(evaluation, offsets=state.offsets, lapses=dict(state.lapses))
             before = self._drift_is_no_flow(before, state, now, as_before.conditions())
         measured = self._measured(before, state.parameters, now, water)
-        after, moved = flow.move(plan, before, drawn, measured)
-        water, ledger = line.step(
-            plan,
-            state.parameters.water,
-            water,
-            ledger,
+        purging = self.fittings.purged_share(fitted, state.parameters.fittings)
+        after, moved = flow.move(plan, before, drawn, measured, purging)
+        sources = Moment(now, saturated, held, offsets, state.time_us, to_us)
+        fitted, water, ledger = self._water(
+            replace(state, fittings=fitted, water=water, ledger=ledger),
             moved,
             before.stored,
             intake_ratio,
-            saturated,
-            dt_s,
+            sources,
         )
         unknown_us = state.contact_unknown_us
         if times.unknown_us == 0:
@@ -213,8 +221,43 @@ class Model:
             round_start=state.round_start,
             conditions=now,
             saturated=saturated,
+            fittings=fitted,
         )
         return stepped, Moved(on_s, drawn, moved.used)
+
+    def _water(
+        self,
+        state: State,
+        moved: flow.AirMoved,
+        stored_before: Array,
+        intake_ratio: Array,
+        moment: Moment,
+    ) -> tuple[FittingState, line.WaterState, line.Ledger]:
+        """The water of one step, and what dryers, baths and drains make of it."""
+        water_of, drawn_of = state.parameters.water, state.parameters.fittings
+        fitted = self.fittings.without_pressure(
+            state.fittings, moment.now, moment.held, moment.to_us
+        )
+        saturated, what = moment.saturated, None
+        if self.fittings.acts(fitted, moment.to_us):
+            what = self.fittings.prepare(fitted, drawn_of, water_of.separation, moved, moment)
+            saturated = what.saturated
+            water_of = replace(water_of, separation=what.separation)
+        water, ledger = line.step(
+            self.plan,
+            water_of,
+            state.water,
+            state.ledger,
+            moved,
+            stored_before,
+            intake_ratio,
+            saturated,
+            moment.dt_s,
+            None if what is None else what.fitted,
+        )
+        if what is not None:
+            fitted = self.fittings.after(fitted, drawn_of, what, moved, water.leaving_ratio, moment)
+        return fitted, water, ledger
 
     # ---- traps ----
 

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from daemon.moisture.description import (
+    Desiccant,
     Fixed,
     Like,
     Line,
@@ -49,6 +50,8 @@ class Plan:
     pressure_order: tuple[int, ...]
     temperature_rules: tuple[Source, ...]  # what holds while the sensor is silent
     pressure_rules: tuple[Source, ...]
+    purging: tuple[int, ...]  # desiccant dryers that blow off a part of the air they dry
+    purged_above: tuple[tuple[int, ...], ...]  # per station: the rows of `purging` upstream of it
 
     @property
     def stations(self) -> tuple[Station, ...]:
@@ -67,6 +70,8 @@ def plan_line(line: Line) -> Plan:
     temperatures = tuple(station.temperature for station in line.stations)
     pressures = tuple(station.pressure for station in line.stations)
     room = Like(line.stations[0].id, 0.0, _ROOM_LIKE_GIVE_OR_TAKE_K)
+    trunk = _trunk(parent, receivers)
+    purging = _purging(line, trunk if receivers else ())
     temperature_rules = _without_circles(index, temperatures, temperature_rules, room)
     pressure_rules = _without_circles(index, pressures, pressure_rules, _switch_pressure(line))
     return Plan(
@@ -77,14 +82,35 @@ def plan_line(line: Line) -> Plan:
         share=share,
         receivers=receivers,
         receivers_below={r: _below(r, parent, receivers) for r in receivers},
-        trunk=_trunk(parent, receivers),
+        trunk=trunk,
         traps=tuple(i for i, s in enumerate(line.stations) if s.trap is not None),
         channels=_channels(line),
         temperature_order=_order("temperature", index, temperatures, temperature_rules),
         pressure_order=_order("pressure", index, pressures, pressure_rules),
         temperature_rules=temperature_rules,
         pressure_rules=pressure_rules,
+        purging=purging,
+        purged_above=tuple(_above(i, parent, purging) for i in range(len(parent))),
     )
+
+
+def _purging(line: Line, trunk: tuple[int, ...]) -> tuple[int, ...]:
+    """Twin beds, but for those before the first tank: what they blow off counts as used air."""
+    return tuple(
+        i
+        for i, station in enumerate(line.stations)
+        if isinstance(station.dryer, Desiccant) and station.dryer.holds is None and i not in trunk
+    )
+
+
+def _above(station: int, parent: tuple[int, ...], purging: tuple[int, ...]) -> tuple[int, ...]:
+    found = []
+    at = parent[station]
+    while at >= 0:
+        if at in purging:
+            found.append(purging.index(at))
+        at = parent[at]
+    return tuple(found)
 
 
 def _shares(line: Line, index: dict[str, int], parent: tuple[int, ...]) -> tuple[float, ...]:
@@ -137,7 +163,8 @@ def _trunk(parent: tuple[int, ...], receivers: tuple[int, ...]) -> tuple[int, ..
 def _channels(line: Line) -> tuple[str, ...]:
     names: list[str] = []
     for station in line.stations:
-        for source in (station.temperature, station.pressure, station.relative_humidity):
+        read = (station.temperature, station.pressure, station.relative_humidity, station.around)
+        for source in read:
             if isinstance(source, Measured) and source.channel not in names:
                 names.append(source.channel)
     return tuple(names)
