@@ -9,6 +9,7 @@ from daemon.moisture.description import Compressor, Fixed
 from daemon.site import defaults
 from daemon.site.names import Names
 from daemon.site.notes import Notes
+from daemon.site.plant import LIMIT_KEYS
 from daemon.site.sources import gauge_pressure
 from daemon.site.table import Table
 from daemon.site.values import flag
@@ -17,7 +18,7 @@ from daemon.units import parse, show_flow, show_pressure
 
 COMPRESSOR_KEYS = (
     "free_air_delivery", "displacement", "running", "loaded", "cut_in", "cut_out",
-    "off_when_closed",
+    "off_when_closed", *LIMIT_KEYS,
 )  # fmt: skip
 FLOW_LIMITS_M3_S = (1e-3 / 60, 100.0 / 60)  # 1 L/min to 100 m3/min
 

@@ -9,7 +9,7 @@ from daemon.moisture.description import Fixed, Share
 from daemon.site import defaults
 from daemon.site.defaults import KindDefault, TemperatureDefault
 from daemon.site.notes import written
-from daemon.site.types import Api, Cup
+from daemon.site.types import REMINDER_TIMES, Api, Costs, Cup, Limits
 from daemon.units import (
     show_barometer,
     show_difference,
@@ -66,6 +66,16 @@ def _general() -> Iterator[Row]:
     for key, value in (("`cut_in`", defaults.CUT_IN_PA), ("`cut_out`", defaults.CUT_OUT_PA)):
         yield "", key, show_pressure(value, "metric", gauge=True), defaults.CUT_BECAUSE
     yield "", "`off_when_closed`", "`true`", "switched off overnight (practice)"
+    limits, costs = Limits(), Costs()
+    yield "", "`duty_limit`", show_percent(limits.duty), defaults.DUTY_LIMIT_BECAUSE
+    yield "", "`leak_limit`", show_percent(limits.leak), defaults.LEAK_LIMIT_BECAUSE
+    yield "`[costs]`", "`kwh_price`, `currency`", "none: only energy is reckoned", ""
+    power = costs.specific_power
+    width = show_percent(power.give_or_take / power.value)
+    shown = f"{power.value:g} kW for a m3/min +- {width}"
+    yield "", "`specific_power`", shown, defaults.SPECIFIC_POWER_BECAUSE
+    turns = ", ".join(f"`{each}`" for each in REMINDER_TIMES)
+    yield "`[reminders]`", "`at`", turns, "when hands are free (practice)"
     yield "`[cup]`", "`reads_low_by`", show_percent(cup.reads_low_by), "mist and a heel stay behind"
     yield "", "`give_or_take`", show_percent(cup.give_or_take), "practice"
     each = f"{show_percent(cup.each_time)} + {show_volume(cup.each_time_kg / 1000, 'metric')}"

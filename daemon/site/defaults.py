@@ -30,6 +30,11 @@ DELIVERED = Fixed(150e-3 / 60, 75e-3 / 60)  # m3/s
 DELIVERED_BECAUSE = "a small workshop compressor (practice); the type plate says better"
 OF_DISPLACEMENT = Share(0.65, 0.15)  # of a displacement, what is delivered as free air (practice)
 
+DUTY_LIMIT_BECAUSE = "piston compressors are made to rest a quarter of the time (practice)"
+LEAK_LIMIT_BECAUSE = "a tight plant loses less (practice)"
+SPECIFIC_POWER = Fixed(6.5, 1.625)  # kW for a m3/min of free air
+SPECIFIC_POWER_BECAUSE = "a compressor of common size (practice)"
+
 VOLUME = Fixed(0.1, 0.05)  # m3
 VOLUME_BECAUSE = "a small workshop tank; its type plate says better"
 

@@ -19,6 +19,13 @@ from daemon.site.names import Names
 from daemon.site.notes import Notes, nearest
 from daemon.site.outlets import OUTLET_KEYS, finish_outlets, read_outlets, settings_of
 from daemon.site.parts import read_sensors
+from daemon.site.plant import (
+    COSTS_KEYS,
+    REMINDERS_KEYS,
+    read_costs,
+    read_limits,
+    read_reminders,
+)
 from daemon.site.remarks import remarks
 from daemon.site.sections import (
     API_KEYS,
@@ -39,7 +46,7 @@ from daemon.site.trap_sensors import tell_traps
 from daemon.site.types import Site
 from sensors.registry import DRIVERS, Driver
 
-TABLES = ("site", "hours", "compressor", "cup", "model", "mqtt", "api")
+TABLES = ("site", "hours", "compressor", "costs", "reminders", "cup", "model", "mqtt", "api")
 LISTS = ("sensor", "station", "outlet")
 _LINE = re.compile(r"\(at line (\d+), column (\d+)\)\Z")
 
@@ -78,6 +85,8 @@ def _elsewhere(drivers: Mapping[str, Driver]) -> dict[str, Sequence[str]]:
         "[site]": SITE_KEYS,
         "[hours]": HOURS_KEYS,
         "[compressor]": COMPRESSOR_KEYS,
+        "[costs]": COSTS_KEYS,
+        "[reminders]": REMINDERS_KEYS,
         "[cup]": CUP_KEYS,
         "[model]": MODEL_KEYS,
         "[api]": API_KEYS,
@@ -169,6 +178,9 @@ class _Reading:
         stations = open_stations(notes, self._list("station"), names)
         self._name_added(stations)
         table, compressor = read_compressor(notes, raw.get("compressor"), names)
+        limits = read_limits(table)
+        costs = read_costs(notes, raw.get("costs"))
+        reminders = read_reminders(notes, raw.get("reminders"))
         drafts = self._drafts(stations)
         tell_traps(notes, sensors, drafts, names)
         outlets = read_outlets(notes, self._list("outlet"), names)
@@ -205,6 +217,9 @@ class _Reading:
             api=api,
             defaults=tuple(notes.defaults),
             without_effect=tuple(notes.without_effect),
+            limits=limits,
+            costs=costs,
+            reminders=reminders,
         )
         said = remarks(site, names, loaded_contact=table.said("loaded"))
         return replace(site, remarks=said)

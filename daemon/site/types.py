@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import Literal
+from typing import Literal, get_args
 
-from daemon.moisture.description import Line
+from daemon.moisture.description import Fixed, Line
+from daemon.site.defaults import SPECIFIC_POWER
 from sensors.reading import Channel
 from sensors.registry import SensorConfig
 
@@ -32,6 +33,27 @@ class Cup:
     give_or_take: float = 0.05  # persistent, 95 % half-width, fraction
     each_time: float = 0.05  # fraction
     each_time_kg: float = 0.005
+
+
+ReminderTime = Literal["shift start", "break", "shift end"]
+REMINDER_TIMES: tuple[ReminderTime, ...] = get_args(ReminderTime)
+
+
+@dataclass(frozen=True, slots=True)
+class Limits:
+    """What a plant may take before an alarm asks for a look. Fractions."""
+
+    duty: float = 0.75  # of working hours
+    leak: float = 0.10  # of the delivered air
+
+
+@dataclass(frozen=True, slots=True)
+class Costs:
+    """What compressed air costs."""
+
+    kwh_price: float | None = None  # None: nobody said
+    currency: str = ""
+    specific_power: Fixed = SPECIFIC_POWER  # kW for a m3/min of free air
 
 
 @dataclass(frozen=True, slots=True)
@@ -98,6 +120,9 @@ class Site:
     defaults: tuple[DefaultUsed, ...] = ()
     without_effect: tuple[str, ...] = ()  # keys that are checked but change nothing yet, with why
     remarks: tuple[str, ...] = ()  # what a practitioner would say about this line
+    limits: Limits = Limits()
+    costs: Costs = Costs()
+    reminders: tuple[ReminderTime, ...] = REMINDER_TIMES
 
     @property
     def traps(self) -> tuple[str, ...]:
