@@ -220,6 +220,7 @@ class FakeRunning:
     problems: tuple[str, ...] = ()
     recorded: dict[str, SeriesOfReadings] = field(default_factory=_no_readings)
     journal: list[Entry] = field(default_factory=list)
+    said: str = ""  # what every drain is told to have taught
     _lock: threading.Lock = field(default_factory=threading.Lock)
 
     def health(self) -> Health:
@@ -257,7 +258,7 @@ class FakeRunning:
                 raise JournalError("the time is before the log begins, 2026-11-01T09:00:00Z")
             entry = Entry(len(self.journal) + 1, when_us, now_us, body, key)
             self.journal.append(entry)
-            return Recorded(entry, repeated=False)
+            return Recorded(entry, repeated=False, said=self.said)
 
     def tick(self) -> None:
         """Let the alarms follow the journal, as the daemon's next tick would."""

@@ -80,6 +80,11 @@ def test_a_volume_of_nothing_is_a_trap_found_empty(running: FakeRunning, client:
     assert running.journal[0].body == Drain("tank", "empty", 0.0)
 
 
+def test_what_a_measured_drain_has_taught_is_told(running: FakeRunning, client: Client) -> None:
+    running.said = "tank: you measured 380 ml, expected 410 ml (300 to 560 ml)"
+    assert client.post(DRAINS, json={"volume_ml": 380}).json()["said"] == running.said
+
+
 def test_the_same_key_again_is_answered_with_the_first_entry(
     running: FakeRunning, client: Client
 ) -> None:

@@ -94,3 +94,13 @@ def test_every_reference_is_defined(described: dict[str, Any]) -> None:
 
 def test_every_kind_of_problem_has_an_error_status() -> None:
     assert all(400 <= kind.status < 600 for kind in KINDS.values())
+
+
+def test_what_stands_before_every_route_is_described_at_every_route(
+    described: dict[str, Any],
+) -> None:
+    for method, path, operation in operations(described):
+        expected = {"421", "500"}
+        if method == "post":
+            expected |= {"400", "403", "411", "413", "415", "422", "503"}
+        assert expected <= set(operation["responses"]), (method, path)
