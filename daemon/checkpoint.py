@@ -17,7 +17,7 @@ from daemon.moisture.beliefs import Parameters
 from daemon.moisture.conditions import Conditions, Held, Lapse, Offsets
 from daemon.moisture.contact import ContactState
 from daemon.moisture.fitting_beliefs import FittingParameters
-from daemon.moisture.fittings import FittingState
+from daemon.moisture.fitting_state import FittingState
 from daemon.moisture.flow import AirState, PumpWatch
 from daemon.moisture.learning import Suspect
 from daemon.moisture.line import Ledger, WaterParameters, WaterState

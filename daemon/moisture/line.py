@@ -283,7 +283,7 @@ def step(
         liquid_in=np.zeros(shape),
         spill_in=np.zeros(shape),
         fitted=fitted,
-        beds=ledger.beds.copy(),
+        beds=ledger.beds.copy() if fitted.beds or plan.purging else ledger.beds,
         passed=ledger.passed.copy() if fitted.drains else ledger.passed,
     )
     water_in = air.through[0] * intake_ratio

@@ -30,7 +30,8 @@ from daemon.moisture.conditions import Conditions, Evaluation, Held, Lapse, Offs
 from daemon.moisture.contact import ContactState, ContactTime, integrate
 from daemon.moisture.description import Line, Measured, RiseByDuty
 from daemon.moisture.ensemble import Array, standard_normal
-from daemon.moisture.fittings import Fittings, FittingState, Moment
+from daemon.moisture.fitting_state import FittingState, Moment
+from daemon.moisture.fittings import Fittings
 from daemon.moisture.learning import CupError, Learned, Suspect
 from daemon.moisture.plan import Plan, plan_line
 
@@ -146,7 +147,7 @@ class Model:
             round_start=water.trap,
             conditions=now,
             saturated=saturated,
-            fittings=self.fittings.switched(
+            fittings=self.fittings.drying.switched(
                 self.fittings.begin(time_us, parameters.fittings),
                 heard.channels,
                 heard.is_open,
@@ -178,7 +179,7 @@ class Model:
         on_s = self._on_time(state, held, to_us, times, booked_us, heard.is_open)
         duty, duty_known = self._follow(state, on_s, times, dt_s)
         evaluation = Evaluation(plan, held, offsets, duty, to_us, dict(state.lapses))
-        fitted = self.fittings.switched(state.fittings, heard.channels, heard.is_open, to_us)
+        fitted = self.fittings.drying.switched(state.fittings, heard.channels, heard.is_open, to_us)
         now = self.fittings.warmed(fitted, state.parameters.fittings, evaluation.conditions())
         saturated = self._saturated(state, now)
         intake_ratio = np.minimum(self._intake_ratio(now), saturated[0])
@@ -188,16 +189,28 @@ class Model:
             as_before = replace(evaluation, offsets=state.offsets, lapses=dict(state.lapses))
             before = self._drift_is_no_flow(before, state, now, as_before.conditions())
         measured = self._measured(before, state.parameters, now, water)
-        purging = self.fittings.purged_share(fitted, state.parameters.fittings)
+        purging = self.fittings.drying.purged_share(fitted, state.parameters.fittings)
         after, moved = flow.move(plan, before, drawn, measured, purging)
-        sources = Moment(now, saturated, held, offsets, state.time_us, to_us)
-        fitted, water, ledger = self._water(
-            replace(state, fittings=fitted, water=water, ledger=ledger),
+        fitted = self.fittings.without_pressure(fitted, now, held, to_us)
+        what, water_of, drawn_of = None, state.parameters.water, state.parameters.fittings
+        if self.fittings.acts(fitted, to_us):
+            moment = Moment(now, saturated, moved, held, offsets, state.time_us, to_us)
+            what = self.fittings.prepare(fitted, drawn_of, water_of.separation, moment)
+            water_of = replace(water_of, separation=what.separation)
+        water, ledger = line.step(
+            plan,
+            water_of,
+            water,
+            ledger,
             moved,
             before.stored,
             intake_ratio,
-            sources,
+            saturated if what is None else what.saturated,
+            dt_s,
+            None if what is None else what.fitted,
         )
+        if what is not None:
+            fitted = self.fittings.after(fitted, drawn_of, what, water.leaving_ratio)
         unknown_us = state.contact_unknown_us
         if times.unknown_us == 0:
             unknown_us = -1
@@ -224,40 +237,6 @@ class Model:
             fittings=fitted,
         )
         return stepped, Moved(on_s, drawn, moved.used)
-
-    def _water(
-        self,
-        state: State,
-        moved: flow.AirMoved,
-        stored_before: Array,
-        intake_ratio: Array,
-        moment: Moment,
-    ) -> tuple[FittingState, line.WaterState, line.Ledger]:
-        """The water of one step, and what dryers, baths and drains make of it."""
-        water_of, drawn_of = state.parameters.water, state.parameters.fittings
-        fitted = self.fittings.without_pressure(
-            state.fittings, moment.now, moment.held, moment.to_us
-        )
-        saturated, what = moment.saturated, None
-        if self.fittings.acts(fitted, moment.to_us):
-            what = self.fittings.prepare(fitted, drawn_of, water_of.separation, moved, moment)
-            saturated = what.saturated
-            water_of = replace(water_of, separation=what.separation)
-        water, ledger = line.step(
-            self.plan,
-            water_of,
-            state.water,
-            state.ledger,
-            moved,
-            stored_before,
-            intake_ratio,
-            saturated,
-            moment.dt_s,
-            None if what is None else what.fitted,
-        )
-        if what is not None:
-            fitted = self.fittings.after(fitted, drawn_of, what, moved, water.leaving_ratio, moment)
-        return fitted, water, ledger
 
     # ---- traps ----
 

@@ -99,7 +99,10 @@ def _purging(line: Line, trunk: tuple[int, ...]) -> tuple[int, ...]:
     return tuple(
         i
         for i, station in enumerate(line.stations)
-        if isinstance(station.dryer, Desiccant) and station.dryer.holds is None and i not in trunk
+        if isinstance(station.dryer, Desiccant)
+        and station.dryer.holds is None
+        and station.dryer.rated_flow is not None
+        and i not in trunk
     )
 
 
