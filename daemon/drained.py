@@ -63,9 +63,10 @@ def _through_daemon(site: Site, drain: Drain, at_us: int | None) -> dict[str, An
         "by": drain.by,
         "look": drain.look,
     }
+    said = {name: value for name, value in body.items() if value not in (None, "")}
     request = urllib.request.Request(
         f"http://{address}:{site.api.port}/api/v1/traps/{drain.trap}/drains",
-        data=json.dumps({key: value for key, value in body.items() if value}).encode(),
+        data=json.dumps(said).encode(),
         headers={"Content-Type": "application/json"},
     )
     opener = urllib.request.build_opener(urllib.request.ProxyHandler({}))

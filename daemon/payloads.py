@@ -14,6 +14,8 @@ from daemon.alarms import Alarm, Transition
 from daemon.clock import format_rfc3339, parse_rfc3339
 from daemon.errors import JournalError
 from daemon.journal import Drain, Entry, Outcome
+from daemon.moisture.description import WATER_KG_PER_M3
+from daemon.units import to_si
 from daemon.views import TrapView
 
 Service = Literal["running", "stopped", "gone"]
@@ -147,7 +149,7 @@ def read_drain(payload: bytes) -> tuple[Drain, int | None, str]:
     drain = Drain(
         trap=trap,
         outcome=outcome,
-        volume_kg=None if volume_ml is None else volume_ml / ML_PER_KG,
+        volume_kg=None if volume_ml is None else to_si(volume_ml, "ml", "volume") * WATER_KG_PER_M3,
         by=fields.get("by", ""),
         look=fields.get("look", ""),
     )
