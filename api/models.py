@@ -13,7 +13,7 @@ from api.quantities import VolumeUnit
 from daemon.accept import LONGEST_KEY, LONGEST_NAME
 from daemon.alarms import Alarm, AlarmState, Priority
 from daemon.clock import format_rfc3339
-from daemon.journal import Acknowledge, Entry, Outcome
+from daemon.journal import Acknowledge, Entry, Outcome, Serviced
 from daemon.payloads import alarm_payload, drain_payload, trap_payload
 from daemon.views import Because, ChannelHealth, Health, TrapView
 
@@ -129,6 +129,38 @@ class DrainOut(BaseModel):
     @classmethod
     def of(cls, entry: Entry, said: str = "") -> DrainOut:
         return cls.model_validate({**drain_payload(entry), "said": said})
+
+
+class ServiceIn(BaseModel):
+    """A part was changed or looked at."""
+
+    model_config = ConfigDict(
+        extra="forbid",
+        strict=True,
+        json_schema_extra={
+            "examples": [
+                {"what": "element changed", "by": "AM"},
+                {"what": "sensor replaced", "sensor": "intake-air"},
+            ]
+        },
+    )
+
+    what: Serviced
+    sensor: str | None = Field(
+        default=None, max_length=80, description="which one, when a sensor was replaced"
+    )
+    by: Name | None = Field(default=None, description="who did it", examples=["AM"])
+
+
+class RecordedOut(BaseModel):
+    """An entry as it stands in the journal."""
+
+    seq: int = Field(description="its number in the journal", examples=[42])
+    at: Time = Field(description="when it happened")
+
+    @classmethod
+    def of(cls, entry: Entry) -> RecordedOut:
+        return cls(seq=entry.seq, at=format_rfc3339(entry.at_us))
 
 
 class AlarmOut(BaseModel):

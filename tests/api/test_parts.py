@@ -1,0 +1,59 @@
+"""Confirming a surprising drain, and parts that were changed."""
+
+from __future__ import annotations
+
+import pytest
+
+from daemon.journal import Confirm, Service
+from tests.api.client import Client
+from tests.api.fake import FakeRunning
+
+
+def test_a_surprising_volume_is_confirmed(running: FakeRunning, client: Client) -> None:
+    response = client.post("/api/v1/traps/tank/confirm", json={"by": "AM"})
+    assert response.status_code == 201
+    assert response.json() == {"seq": 1, "at": "2026-12-01T09:00:00Z"}
+    assert running.journal[0].body == Confirm("tank", "AM")
+
+
+@pytest.mark.parametrize(
+    ("path", "body", "entry"),
+    [
+        ("riser", {"what": "element changed"}, Service("element changed", "riser")),
+        (
+            "intake",
+            {"what": "sensor replaced", "sensor": "intake-air", "by": "AM"},
+            Service("sensor replaced", "intake-air", "AM"),
+        ),
+        ("riser", {"what": "drain seen working"}, Service("drain seen working", "riser")),
+    ],
+)
+def test_a_changed_part_is_recorded(
+    running: FakeRunning, client: Client, path: str, body: dict[str, str], entry: Service
+) -> None:
+    response = client.post(f"/api/v1/stations/{path}/service", json=body)
+    assert response.status_code == 201
+    assert running.journal[0].body == entry
+
+
+@pytest.mark.parametrize(
+    ("path", "body", "status", "words"),
+    [
+        ("traps/tnak/confirm", {}, 404, "those of this site are: tank, riser"),
+        ("stations/nowhere/service", {"what": "element changed"}, 404, "intake, tank"),
+        ("stations/tank/service", {"what": "painted blue"}, 422, "element changed"),
+        ("stations/tank/service", {"what": "element changed", "price": 3}, 422, "price"),
+    ],
+)
+def test_what_cannot_be_is_refused_in_words(
+    running: FakeRunning,
+    client: Client,
+    path: str,
+    body: dict[str, object],
+    status: int,
+    words: str,
+) -> None:
+    response = client.post(f"/api/v1/{path}", json=body)
+    assert response.status_code == status
+    assert words in response.text
+    assert not running.journal
