@@ -21,6 +21,7 @@ from daemon.clock import HOUR_US
 from daemon.due import NO_DATE, calendar_due_us
 from daemon.errors import BalanceError
 from daemon.journal import Acknowledge, Confirm, Drain, Entry, Service
+from daemon.judging import Judging
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.ensemble import Array, percentiles
 from daemon.moisture.learning import Learned
@@ -30,6 +31,7 @@ from daemon.site.types import Site
 from daemon.state import ChannelRecord, CoreState, HourTotals, Inputs, Mark, TrapRecord
 from daemon.taking import Taking
 from daemon.views import Because, TrapView
+from sensors.quality import Judged, QualityState, Verdict, forget
 from sensors.reading import Reading
 
 
@@ -42,6 +44,8 @@ class Estimate:
     marks: tuple[Mark, ...] = ()
     learned: tuple[Learned, ...] = ()
     problems: tuple[str, ...] = ()  # faults of the model itself, in words
+    readings: tuple[Reading, ...] = ()  # the tick's, those that are not believed marked as bad
+    verdicts: tuple[Verdict, ...] = ()  # what began or ended to be so of a channel
 
     @property
     def at_us(self) -> int:
@@ -61,11 +65,18 @@ class _Tick:
     marks: list[Mark] = field(default_factory=list)
     learned: list[Learned] = field(default_factory=list)
     problems: list[str] = field(default_factory=list)
+    judged: Judged | None = None
 
     def result(self, core: Core) -> tuple[CoreState, Estimate, list[Transition]]:
         """What an advance gives."""
         estimate = Estimate(
-            core, self.state, tuple(self.marks), tuple(self.learned), tuple(self.problems)
+            core,
+            self.state,
+            tuple(self.marks),
+            tuple(self.learned),
+            tuple(self.problems),
+            () if self.judged is None else self.judged.readings,
+            () if self.judged is None else self.judged.verdicts,
         )
         return self.state, estimate, self.transitions
 
@@ -83,12 +94,15 @@ class Core:
         self.rules = AlarmRules(site, self.model)
         self.definitions = self.rules.definitions
         self.taking = Taking(site, self.model)
+        self.judging = Judging(site, self.model.period_us)
 
     # ---- beginning ----
 
     def initial(self, now_us: int, inputs: Inputs) -> tuple[CoreState, Estimate, list[Transition]]:
         """The state at the first tick, which is the time of the first reading."""
-        heard = self._heard(inputs.readings, now_us, now_us)
+        unheard = {name: ChannelRecord() for name in self.site.channels}
+        judged = self.judging.judge(QualityState(), unheard, inputs.readings, now_us)
+        heard = self._heard(judged.readings, now_us, now_us)
         model = self.model.initial(now_us, heard)
         state = CoreState(
             model=model,
@@ -98,11 +112,12 @@ class Core:
                 name: TrapRecord(-1, calendar_due_us(self.site, trap, now_us, drained=False))
                 for name, trap in zip(self.trap_names, self._traps, strict=True)
             },
-            channels=self._told({name: ChannelRecord() for name in self.site.channels}, inputs),
+            channels=self._told(unheard, judged.readings),
             alarms={name: AlarmRecord(since_us=now_us) for name in self.definitions},
             hour=self._no_hour(now_us),
+            quality=judged.state,
         )
-        tick = _Tick(state)
+        tick = _Tick(state, judged=judged)
         if now_us % HOUR_US == 0:
             tick.marks.append(self._mark(state, "hour", None))
         self._watch(tick)
@@ -121,9 +136,11 @@ class Core:
 
         Pure: the same state and inputs give the same result to the bit, and nothing is kept.
         """
-        tick = _Tick(replace(state, channels=self._told(state.channels, inputs)))
+        judged = self.judging.judge(state.quality, state.channels, inputs.readings, now_us)
+        told = self._told(state.channels, judged.readings)
+        tick = _Tick(replace(state, channels=told, quality=judged.state), judged=judged)
         entries = sorted(inputs.entries, key=lambda entry: (entry.at_us, entry.seq))
-        readings = inputs.readings
+        readings = judged.readings
         for until_us in self._stops(state.time_us, now_us, entries):
             self._step(tick, until_us, readings)
             here = [entry for entry in entries if entry.at_us == until_us]
@@ -187,10 +204,10 @@ class Core:
         return Heard(channels, is_open)
 
     def _told(
-        self, channels: Mapping[str, ChannelRecord], inputs: Inputs
+        self, channels: Mapping[str, ChannelRecord], readings: Sequence[Reading]
     ) -> dict[str, ChannelRecord]:
         after = dict(channels)
-        for reading in sorted(inputs.readings, key=lambda reading: reading.time_us):
+        for reading in sorted(readings, key=lambda reading: reading.time_us):
             record = after.get(reading.channel)
             if record is None:
                 continue
@@ -230,6 +247,9 @@ class Core:
                     tick.state = self.taking.confirm(tick.state, confirm)
             case Service() as service:
                 tick.state = self.taking.service(tick.state, service)
+                if service.what == "sensor replaced":
+                    quality = forget(tick.state.quality, service.of)
+                    tick.state = replace(tick.state, quality=quality)
 
     def _drain(self, tick: _Tick, entry: Entry, drain: Drain) -> None:
         if drain.trap not in self.trap_names:

@@ -15,6 +15,7 @@ from daemon.moisture.ensemble import Array, percentiles
 from daemon.moisture.model import Model
 from daemon.site.types import Site
 from daemon.state import CoreState
+from sensors.quality import DISAGREES
 
 DUE_ON_DELAY_US = 2 * MINUTE_US
 FLOODED_RAISED_AT, FLOODED_RETURNS_BELOW = 0.5, 0.3
@@ -137,4 +138,8 @@ class AlarmRules:
             silent_us = state.time_us - max(record.heard_us, state.begun_us)
             if silent_us > limit_us and not record.only_edges:
                 return f"{name} has said nothing for {STALE_AFTER_PERIODS} periods"
+        for name in channels:
+            quality = state.quality.channels.get(name)
+            if quality is not None and quality.said.get(DISAGREES) == "doubt":
+                return f"{name} is in doubt: it {DISAGREES}"
         return ""

@@ -24,6 +24,7 @@ from daemon.moisture.line import Ledger, WaterParameters, WaterState
 from daemon.moisture.model import State
 from daemon.moisture.power import Powered
 from daemon.state import ChannelRecord, CoreState, HourTotals, TrapRecord
+from sensors.quality import ChannelState, QualityState
 
 FORMAT = b"DLC1"
 _CLASSES = {
@@ -32,6 +33,7 @@ _CLASSES = {
         AirState,
         AlarmRecord,
         ChannelRecord,
+        ChannelState,
         Conditions,
         ContactState,
         CoreState,
@@ -45,6 +47,7 @@ _CLASSES = {
         Parameters,
         Powered,
         PumpWatch,
+        QualityState,
         State,
         Suspect,
         TrapRecord,

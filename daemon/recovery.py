@@ -19,6 +19,7 @@ from daemon.site.types import Site
 from daemon.state import CoreState
 from daemon.store.store import Store
 from daemon.ticks import ticks
+from sensors.quality import as_given
 
 log = logging.getLogger("dripleg")
 
@@ -73,7 +74,7 @@ class Recovery:
                 self._core.model.period_us,
                 state.time_us,
                 self._core.heard_us(state),
-                sorted(readings, key=lambda reading: reading.time_us),
+                sorted(as_given(readings), key=lambda reading: reading.time_us),
                 entries[first:taken],
                 tick_us,
             ):
@@ -159,4 +160,7 @@ def carried_over(core: Core, fresh: CoreState, old: CoreState) -> CoreState:
     )
     model = replace(model, ledger=new_ledger(core.model.plan, model.water))
     traps = {name: old.traps.get(name, record) for name, record in fresh.traps.items()}
-    return replace(fresh, model=model, traps=traps)
+    known = core.judging.rules.channels  # a frozen part stays one through a restart
+    judged = {name: each for name, each in old.quality.channels.items() if name in known}
+    quality = replace(fresh.quality, channels={**fresh.quality.channels, **judged})
+    return replace(fresh, model=model, traps=traps, quality=quality)

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import logging
 import threading
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import replace
 from typing import Protocol
 
@@ -27,6 +27,7 @@ from daemon.store.store import Store
 from daemon.taking import learned_words
 from daemon.ticks import first_at_or_after, ticks
 from daemon.views import ChannelHealth, Health, Recorded, SeriesOfReadings, TrapView
+from sensors.quality import Verdict
 from sensors.reading import Reading
 from sensors.sampling import HungBus
 
@@ -71,7 +72,7 @@ class Shell:
         self._waiting: list[Reading] = []  # sampled while no tick was due
         self._started_us = clock.now_us()
         self._went_back = False  # since the last commit: checkpoints after it are wrong
-        self._untold: list[Transition] = []  # corrections that no tick has committed yet
+        self._announced: dict[str, AlarmRecord] = {}  # alarms as told before we went back
         self._alarms_told: dict[str, Alarm] = {}  # as the link keeps them for a new connection
         self._ticks = 0
         self._problems: dict[str, str] = {}
@@ -92,7 +93,7 @@ class Shell:
             return
         self._take_back(back)
         if back.rewritten:
-            self._untold = self._against_what_was_told(back.state)
+            self._announced = self._as_announced(back.state)
         with self._lock:
             self._show(Estimate(self.core, back.state))
         log.info("came back to %s", format_rfc3339(back.state.time_us))
@@ -167,10 +168,13 @@ class Shell:
         readings = sorted(readings, key=lambda each: each.time_us)[-MOST_WAITING:]
         self._waiting = readings  # until they are committed
         self._go_back_for_late_entries(now_us)
-        state, transitions = self._state, list(self._untold)
+        state = self._state
+        transitions = self._corrections(state, now_us)
         entries = [entry for entry in self._pending if entry.at_us <= now_us]
         entries.sort(key=lambda entry: (entry.at_us, entry.seq))
         estimate: Estimate | None = None
+        judged: list[Reading] = []
+        verdicts: list[Verdict] = []
         for each in ticks(
             self._grid_us,
             self.core.model.period_us,
@@ -180,20 +184,25 @@ class Shell:
             entries,
             now_us,
         ):
+            if each.now_us > now_us:
+                return  # nothing good was heard for a day: the next tick stands at the full hour
             state, estimate, changed = self.core.advance(state, each.now_us, each.inputs)
             transitions += changed
+            judged += estimate.readings
+            verdicts += estimate.verdicts
             for problem in estimate.problems:
                 log.error("%s", problem)
                 self._problems["balance"] = problem
-        if estimate is None or state.time_us != now_us:
-            return  # nothing good was heard for a day: the next tick stands at the full hour
-        self._commit(state, readings, entries, transitions, checkpoint=self._went_back)
-        self._waiting, self._untold, self._went_back = [], [], False
+        if estimate is None:
+            return
+        self._commit(state, judged, entries, transitions, checkpoint=self._went_back)
+        _log_verdicts(verdicts)
+        self._waiting, self._announced, self._went_back = [], {}, False
         self._show(estimate)
 
     def _begin(self, now_us: int, readings: list[Reading]) -> None:
         at_now = [each for each in readings if each.time_us == now_us]
-        state, _, transitions = self.core.initial(now_us, Inputs(at_now))
+        state, first, transitions = self.core.initial(now_us, Inputs(at_now))
         state = self._recovery.carried_over(state)
         # what was recorded before the first tick: nothing of that time is known, so it counts now
         entries = [entry for entry in self._pending if entry.at_us <= now_us]
@@ -201,7 +210,12 @@ class Shell:
         self._grid_us = now_us
         self._store.set_meta(GRID_KEY, str(now_us))
         self._commit(
-            state, at_now, entries, transitions + changed, checkpoint=True, every_alarm=True
+            state,
+            first.readings,
+            entries,
+            transitions + changed,
+            checkpoint=True,
+            every_alarm=True,
         )
         self._show(estimate)
 
@@ -281,28 +295,27 @@ class Shell:
             self._pending = [entry for entry in self._pending if entry.at_us > state.time_us]
             return
         self._take_back(back)
-        self._untold += self._corrections(state.alarms, back.state)
+        self._announced = {**state.alarms, **self._announced}
 
-    def _corrections(self, before: Mapping[str, AlarmRecord], after: CoreState) -> list[Transition]:
+    def _corrections(self, state: CoreState, now_us: int) -> list[Transition]:
         """What was announced stays; where it no longer holds, a correction follows."""
         return [
-            correction(self.core.definitions[name], before[name], record, after.time_us)
-            for name, record in after.alarms.items()
-            if before[name].state != record.state
+            correction(self.core.definitions[name], was, state.alarms[name], now_us)
+            for name, was in self._announced.items()
+            if was.state != state.alarms[name].state
         ]
 
     def _take_back(self, back: Back) -> None:
         self._state, self._pending = back.state, back.pending
         self._went_back = self._went_back or back.rewritten
 
-    def _against_what_was_told(self, state: CoreState) -> list[Transition]:
-        """Corrections of what was announced before a stop, where it no longer holds."""
+    def _as_announced(self, state: CoreState) -> dict[str, AlarmRecord]:
+        """Every alarm as the outside was told before a stop."""
         told = {each.alarm: each for each in self._store.transitions(0, state.time_us + 1)}
-        before = {
+        return {
             name: AlarmRecord(told[name].after) if name in told else AlarmRecord()
             for name in state.alarms
         }
-        return self._corrections(before, state)
 
     # ---- what the outside asks (any thread) ----
 
@@ -402,3 +415,12 @@ class Shell:
                 )
             )
         return found
+
+
+def _log_verdicts(verdicts: Sequence[Verdict]) -> None:
+    for each in verdicts:
+        detail = f" ({each.detail})" if each.detail else ""
+        if each.began:
+            log.warning("%s: %s%s", each.channel, each.reason, detail)
+        else:
+            log.info("%s: is believed again, after: %s", each.channel, each.reason)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Literal
 
 from daemon.alarms import AlarmRecord
@@ -12,6 +12,7 @@ from daemon.journal import Entry
 from daemon.moisture.ensemble import Array
 from daemon.moisture.learning import Suspect
 from daemon.moisture.model import State
+from sensors.quality import QualityState
 from sensors.reading import Reading
 
 
@@ -56,6 +57,7 @@ class CoreState:
     channels: Mapping[str, ChannelRecord]
     alarms: Mapping[str, AlarmRecord]
     hour: HourTotals
+    quality: QualityState = field(default_factory=QualityState)
 
     @property
     def time_us(self) -> int:

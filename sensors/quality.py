@@ -2,7 +2,11 @@
 
 Pure: a state and a tick's readings in; the next state, the readings with the bad ones marked, and
 the verdicts that began or ended out. The time is the readings' own, so a replay judges as the live
-daemon did. A bad reading is marked with its reason and never replaced.
+daemon did. A bad reading is marked with its reason and never replaced; it keeps the value that the
+part gave, so that the same readings can be judged again (`as_given`), and nobody may use it.
+
+Standing still is a fault only of what has moved before: a record of a channel that never moved
+says nothing about how it moves.
 """
 
 from __future__ import annotations
@@ -16,9 +20,14 @@ from typing import Literal
 from sensors.quality_rules import (
     ACCEPT_AFTER,
     DRY_AGAIN,
+    LIVELY_MOVES,
+    LONGEST_GAP_US,
     OFF_LONG_S,
+    QUICK_STEPS,
+    REPEATED,
     SATURATED,
     SATURATED_S,
+    SLOW_COSTS,
     Agreement,
     Part,
     Rule,
@@ -54,7 +63,9 @@ class ChannelState:
     value: float = math.nan  # the last one that was believed
     time_us: int = 0
     same_since_us: int = 0  # since when it is exactly that
+    repeated: int = 0  # how many readings in a row were that
     ran_us: int = 0  # how long the compressor ran since then
+    moves: int = 0  # changes in quick succession, up to LIVELY_MOVES: then it was seen to live
     jumped: int = 0  # consecutive readings beyond what the rate allows
     jump_value: float = math.nan  # the last of those
     wet_since_us: int | None = None
@@ -63,7 +74,7 @@ class ChannelState:
 
 
 @dataclass(frozen=True, slots=True)
-class State:
+class QualityState:
     """What is remembered of all channels."""
 
     channels: Mapping[str, ChannelState] = field(default_factory=dict)
@@ -75,39 +86,56 @@ class State:
 class Judged:
     """A tick's outcome."""
 
-    state: State
+    state: QualityState
     readings: tuple[Reading, ...]
     verdicts: tuple[Verdict, ...]
 
 
+def as_given(readings: Sequence[Reading]) -> list[Reading]:
+    """The readings as their parts gave them, before they were judged."""
+    return [
+        replace(one, fault="") if one.fault and not math.isnan(one.value) else one
+        for one in readings
+    ]
+
+
+def forget(state: QualityState, sensor: str) -> QualityState:
+    """After a sensor was replaced: nothing is known of the new one."""
+    kept = {name: one for name, one in state.channels.items() if name.rpartition(".")[0] != sensor}
+    return replace(state, channels=kept)
+
+
 def judge(
-    rules: Rules, state: State, readings: Sequence[Reading], *, running: bool | None = None
+    rules: Rules, state: QualityState, readings: Sequence[Reading], *, running: bool | None = None
 ) -> Judged:
-    """Judge one tick's readings.
+    """Judge one tick's readings, as their parts gave them.
 
     `running` is whether the compressor ran during the tick; None where nobody knows, and what
     depends on it is then not judged. Channels without a rule (contacts) pass.
     """
     at_us = max((one.time_us for one in readings), default=state.last_us or 0)
-    ran_us = at_us - state.last_us if running and state.last_us is not None else 0
+    ran_us = 0
+    if running and state.last_us is not None:
+        ran_us = min(at_us - state.last_us, LONGEST_GAP_US)
     off_since_us = None if running is not False else state.off_since_us
     if running is False and off_since_us is None:
         off_since_us = at_us
     channels = dict(state.channels)
     reasons: dict[int, tuple[str, str]] = {}
+    good: dict[str, int] = {}
     for number, one in enumerate(readings):
-        rule = rules.channels.get(one.channel)
-        if rule is None or not one.good:
+        if one.fault:
             continue
-        before = channels.get(one.channel, ChannelState())
+        rule = rules.channels.get(one.channel)
+        if rule is None:
+            good[one.channel] = number
+            continue
+        before = channels.get(one.channel, _NEW)
         channels[one.channel], bad = _judge_one(rule, before, one, ran_us)
         if bad:
             reasons[number] = bad
-    good = {
-        one.channel: number
-        for number, one in enumerate(readings)
-        if one.good and number not in reasons
-    }
+        else:
+            good[one.channel] = number
     for part in rules.parts:
         reasons |= _frozen_part(part, channels, good, at_us)
     settled = off_since_us is not None and at_us - off_since_us >= OFF_LONG_S * 1e6
@@ -115,12 +143,17 @@ def judge(
     for agreement in rules.agreements:
         if settled or agreement.always:
             reasons |= _disagreeing(agreement, readings, good, doubts)
+        else:
+            reasons |= _still_disagreeing(agreement, state.channels, good, doubts)
     marked = tuple(
-        replace(one, value=math.nan, fault=reasons[number][0]) if number in reasons else one
+        replace(one, fault=reasons[number][0]) if number in reasons else one
         for number, one in enumerate(readings)
     )
     verdicts = _verdicts(rules, channels, readings, reasons, doubts)
-    return Judged(State(channels, off_since_us, at_us), marked, tuple(verdicts))
+    return Judged(QualityState(channels, off_since_us, at_us), marked, tuple(verdicts))
+
+
+_NEW = ChannelState()
 
 
 def _judge_one(
@@ -139,7 +172,8 @@ def _judge_one(
         if wet:
             return now, (SATURATED_ELEMENT, f"{one.value:.1%}")
     limit_s = rule.frozen_running_s
-    if limit_s is not None and now.ran_us >= limit_s * 1e6:
+    stands = now.repeated >= REPEATED and now.moves >= LIVELY_MOVES
+    if stands and limit_s is not None and now.ran_us >= limit_s * 1e6:
         return now, (FROZEN, f"{one.value:g} for {now.ran_us / 1e6:.0f} s of running")
     return now, None
 
@@ -168,16 +202,35 @@ def _allowed(rule: Rule, from_us: int, to_us: int) -> float:
 
 
 def _remember(before: ChannelState, one: Reading, ran_us: int) -> ChannelState:
-    same = one.value == before.value
+    if one.value == before.value:
+        return replace(
+            before,
+            time_us=one.time_us,
+            repeated=before.repeated + 1,
+            ran_us=before.ran_us + ran_us,
+            jumped=0,
+            jump_value=math.nan,
+        )
     return replace(
         before,
         value=one.value,
         time_us=one.time_us,
-        same_since_us=before.same_since_us if same else one.time_us,
-        ran_us=before.ran_us + ran_us if same else 0,
+        same_since_us=one.time_us,
+        repeated=0,
+        ran_us=0,
+        moves=_moves(before, one),
         jumped=0,
         jump_value=math.nan,
     )
+
+
+def _moves(before: ChannelState, one: Reading) -> int:
+    """How much it moved, up to the count that shows it alive; once alive it is known to live."""
+    if before.moves >= LIVELY_MOVES:
+        return before.moves
+    stood_us, step_us = one.time_us - before.same_since_us, one.time_us - before.time_us
+    quick = not math.isnan(before.value) and stood_us <= QUICK_STEPS * step_us
+    return before.moves + 1 if quick else max(before.moves - SLOW_COSTS, 0)
 
 
 def _saturation(now: ChannelState, one: Reading) -> tuple[ChannelState, bool]:
@@ -198,7 +251,12 @@ def _frozen_part(
     """All channels of a part exactly as they were: it repeats an old conversion."""
     if not all(name in good for name in part.channels):
         return {}
-    since_us = max(channels[name].same_since_us for name in part.channels)
+    of_part = [channels[name] for name in part.channels]
+    if any(one.repeated < REPEATED for one in of_part):
+        return {}
+    if all(one.moves < LIVELY_MOVES for one in of_part):
+        return {}
+    since_us = max(one.same_since_us for one in of_part)
     if at_us - since_us < part.frozen_s * 1e6:
         return {}
     detail = f"{part.name} has repeated itself for {(at_us - since_us) / 1e6:.0f} s"
@@ -221,11 +279,32 @@ def _disagreeing(
             doubts[first] = doubts[second] = f"{first} is {a:g}, {second} is {b:g}"
         return {}
     middle = median(values.values())
-    return {
-        good[name]: (DISAGREES, f"{value:g}, the others are about {middle:g}")
+    odd = {
+        name: f"{value:g}, the others are about {middle:g}"
         for name, value in values.items()
         if abs(value - middle) > agreement.within
     }
+    if agreement.doubt_only:
+        doubts |= odd
+        return {}
+    return {good[name]: (DISAGREES, detail) for name, detail in odd.items()}
+
+
+def _still_disagreeing(
+    agreement: Agreement,
+    before: Mapping[str, ChannelState],
+    good: Mapping[str, int],
+    doubts: dict[str, str],
+) -> dict[int, tuple[str, str]]:
+    """While they need not agree, what was found when they should have holds on."""
+    found: dict[int, tuple[str, str]] = {}
+    for name in agreement.channels:
+        severity = before[name].said.get(DISAGREES) if name in before else None
+        if severity == "bad" and name in good:
+            found[good[name]] = (DISAGREES, "")
+        elif severity == "doubt":
+            doubts[name] = ""
+    return found
 
 
 def _verdicts(
@@ -238,15 +317,17 @@ def _verdicts(
     """What began and what ended; `channels` is brought up to date."""
     verdicts: list[Verdict] = []
     for number, one in enumerate(readings):
-        if one.channel not in rules.channels or not one.good:
+        if one.fault or one.channel not in rules.channels:
+            continue
+        state = channels.get(one.channel, _NEW)
+        if number not in reasons and one.channel not in doubts and not state.said:
             continue
         now: dict[str, tuple[Severity, str]] = {}
+        if one.channel in doubts:
+            now[DISAGREES] = ("doubt", doubts[one.channel])
         if number in reasons:
             reason, detail = reasons[number]
             now[reason] = ("bad", detail)
-        if one.channel in doubts:
-            now[DISAGREES] = ("doubt", doubts[one.channel])
-        state = channels.get(one.channel, ChannelState())
         for reason, (severity, detail) in now.items():
             if state.said.get(reason) != severity:
                 verdicts.append(Verdict(one.channel, one.time_us, reason, severity, True, detail))

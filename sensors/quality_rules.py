@@ -19,6 +19,11 @@ DRY_AGAIN = 0.97
 SATURATED_S = 1800.0  # fog passes a workshop's intake in less (invented)
 FROZEN_S = 900.0
 FROZEN_RUNNING_S = 300.0
+REPEATED = 30  # readings in a row, however far apart, before standing still means anything
+LIVELY_MOVES = 30  # changes in quick succession show that a channel does not stand still (invented)
+SLOW_COSTS = 10  # of those, what a change after a long stand takes off again
+QUICK_STEPS = 3  # a change after no more readings than this is a quick one
+LONGEST_GAP_US = 600_000_000  # of running between two ticks; what was before is not known
 ACCEPT_AFTER = 6  # consecutive readings at the other side of a jump make it true
 
 
@@ -51,6 +56,7 @@ class Agreement:
     channels: tuple[str, ...]
     within: float  # of the median
     always: bool = False
+    doubt_only: bool = False  # the odd one of several is doubted, not bad: it may well be true
 
 
 @dataclass(frozen=True, slots=True)

@@ -107,12 +107,16 @@ class Store:
     def ticks(self, after_us: int, until_us: int) -> Iterator[tuple[int, list[Reading]]]:
         """(time, readings) of each tick after one time, up to and with another, in order.
 
-        Readings are as they were given: to the bit, in their order.
+        Readings are as they were given: to the bit, in their order. One that was judged bad has its
+        reason, and still the value that its part gave.
         """
         return self._ticks.stream(after_us, until_us)
 
     def readings(self, channel: str, from_us: int, to_us: int) -> SeriesOfReadings:
-        """A channel's readings at or after one time and before another, by their own times."""
+        """A channel's readings at or after one time and before another, by their own times.
+
+        A bad one has no value, whatever its part gave.
+        """
         return self._ticks.series(channel, from_us, to_us)
 
     # --- journal

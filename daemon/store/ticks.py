@@ -84,7 +84,10 @@ class TickRows:
             column = column.taken(np.flatnonzero(inside))
         if np.any(np.diff(column.times_us) < 0):
             column = column.taken(np.argsort(column.times_us, kind="stable"))
-        return SeriesOfReadings(channel, column.times_us, column.values, tuple(column.faults))
+        values = column.values
+        if any(column.faults):  # one that is not believed is kept as it was given, and not shown
+            values = np.where([not fault for fault in column.faults], values, math.nan)
+        return SeriesOfReadings(channel, column.times_us, values, tuple(column.faults))
 
     def _pages(self, after_us: int, until_us: int, size: int) -> Iterator[Sequence[Any]]:
         """Rows (time, layout, packed) after one time, up to and with another, in pages.
