@@ -192,25 +192,9 @@ class Model:
         purging = self.fittings.drying.purged_share(fitted, state.parameters.fittings)
         after, moved = flow.move(plan, before, drawn, measured, purging)
         fitted = self.fittings.without_pressure(fitted, now, held, to_us)
-        what, water_of, drawn_of = None, state.parameters.water, state.parameters.fittings
-        if self.fittings.acts(fitted, to_us):
-            moment = Moment(now, saturated, moved, held, offsets, state.time_us, to_us)
-            what = self.fittings.prepare(fitted, drawn_of, water_of.separation, moment)
-            water_of = replace(water_of, separation=what.separation)
-        water, ledger = line.step(
-            plan,
-            water_of,
-            water,
-            ledger,
-            moved,
-            before.stored,
-            intake_ratio,
-            saturated if what is None else what.saturated,
-            dt_s,
-            None if what is None else what.fitted,
-        )
-        if what is not None:
-            fitted = self.fittings.after(fitted, drawn_of, what, water.leaving_ratio)
+        moment = Moment(now, saturated, moved, held, offsets, state.time_us, to_us)
+        lying = replace(state, water=water, ledger=ledger, fittings=fitted)
+        water, ledger, fitted = self.water_moved(lying, before.stored, intake_ratio, moment)
         unknown_us = state.contact_unknown_us
         if times.unknown_us == 0:
             unknown_us = -1
@@ -237,6 +221,34 @@ class Model:
             fittings=fitted,
         )
         return stepped, Moved(on_s, drawn, moved.used)
+
+    def water_moved(
+        self, state: State, stored: Array, intake_ratio: Array, moment: Moment
+    ) -> tuple[line.WaterState, line.Ledger, FittingState]:
+        """The water, the ledger and the fittings of a state after the moment's air has moved.
+
+        `stored` is the dry air in the receivers before, kg, (receivers, members).
+        """
+        fitted, drawn_of = state.fittings, state.parameters.fittings
+        what, water_of = None, state.parameters.water
+        if self.fittings.acts(fitted, moment.to_us):
+            what = self.fittings.prepare(fitted, drawn_of, water_of.separation, moment)
+            water_of = replace(water_of, separation=what.separation)
+        water, ledger = line.step(
+            self.plan,
+            water_of,
+            state.water,
+            state.ledger,
+            moment.moved,
+            stored,
+            intake_ratio,
+            moment.saturated if what is None else what.saturated,
+            moment.dt_s,
+            None if what is None else what.fitted,
+        )
+        if what is not None:
+            fitted = self.fittings.after(fitted, drawn_of, what, water.leaving_ratio)
+        return water, ledger, fitted
 
     # ---- traps ----
 
