@@ -11,7 +11,7 @@ from pathlib import Path
 from zoneinfo import ZoneInfo
 
 from daemon import compose, logs
-from daemon.clock import MINUTE_US, ScaledClock, SystemClock, to_datetime
+from daemon.clock import MINUTE_US, SECOND_US, ScaledClock, SystemClock, to_datetime
 from daemon.due import interval_words, volume_words
 from daemon.errors import DriplegError
 from daemon.journal import Drain, Entry
@@ -24,6 +24,7 @@ from sensors.sampling import HungBus, Sampler
 
 SAY_EVERY_S = 5.0
 LOOK_EVERY_S = 0.25
+LATE_AFTER_S = 10.0  # here, without a tick there
 SLOWEST, FASTEST = 1.0, 600.0
 
 
@@ -110,6 +111,8 @@ def run(port: int, length: str | None, broker_at: str | None, speed: float) -> N
         )
         with compose.running(setting, stop) as running:
             running.shell.on_entry = samplers[-1].drain
+            # its clock runs fast, but not the machine that it runs on
+            running.shell.late_after_us = round(LATE_AFTER_S * speed * SECOND_US)
             print(_greeting(site, running, speed, limit_s), flush=True)
             teller = threading.Thread(
                 target=_Teller(running, limit_s).tell, args=(stop,), name="teller"

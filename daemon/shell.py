@@ -61,6 +61,7 @@ class Shell:
         self._site, self._clock, self._sampler, self._store = site, clock, sampler, store
         self._topics = topics
         self.core = Core(site)
+        self.late_after_us = LATE_AFTER_PERIODS * self.core.model.period_us
         self.link: MqttLink | None = None
         self.on_entry: Callable[[Entry], None] | None = None  # told of what was committed
         self._recovery = Recovery(self.core, store)
@@ -375,7 +376,7 @@ class Shell:
             state = self._state
             problems = list(self._problems.values())
             channels = self._channel_health(state)
-        limit_us = LATE_AFTER_PERIODS * self.core.model.period_us
+        limit_us = self.late_after_us
         last_us = None if state is None else state.time_us
         if last_us is None:
             if now_us - self._started_us > limit_us:
