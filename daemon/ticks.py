@@ -11,6 +11,7 @@ from daemon.state import Inputs
 from sensors.reading import Reading
 
 SILENCE_US = DAY_US  # after so long without a good reading, ticks stand at full hours
+_NEVER_US = 2**62
 
 
 @dataclass(frozen=True, slots=True)
@@ -61,7 +62,7 @@ def ticks(
         good = r
         while good < len(readings) and not readings[good].good:
             good += 1
-        following_us = readings[good].time_us if good < len(readings) else end_us
+        following_us = readings[good].time_us if good < len(readings) else _NEVER_US
         now_us = next_tick(grid_us, period_us, now_us, heard_us, following_us)
         first_r, first_e = r, e
         while r < len(readings) and readings[r].time_us <= now_us:
