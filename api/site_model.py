@@ -167,6 +167,8 @@ class OutletOut(BaseModel):
     after: str
     share: float = Field(description="of the air used")
     surroundings: str | None = Field(description="the sensor in the air around hose and surface")
+    slab: str | None = Field(description="the channel of the coldest thing under the hose")
+    surface: str | None = Field(description="the channel of what is sprayed or blasted")
     work: str
     line_margin_k: float | None
     surface_margin_k: float
@@ -178,6 +180,8 @@ class OutletOut(BaseModel):
             after=place.after,
             share=place.share,
             surroundings=settings.surroundings or None,
+            slab=place.slab.channel if place.slab is not None else None,
+            surface=place.surface.channel if place.surface is not None else None,
             work=settings.work,
             line_margin_k=settings.line_margin_k,
             surface_margin_k=settings.surface_margin_k,

@@ -8,14 +8,27 @@ from typing import get_args
 from daemon.clock import MINUTE_US, format_rfc3339
 from daemon.due import volume_words
 from daemon.errors import JournalError
-from daemon.journal import Acknowledge, Body, Confirm, Drain, Service, Serviced
+from daemon.journal import (
+    Acknowledge,
+    Blotted,
+    Blotter,
+    Body,
+    Confirm,
+    Drain,
+    Gauge,
+    Service,
+    Serviced,
+)
 from daemon.moisture.description import Trap
 from daemon.site.types import Site
+from daemon.units import show_difference, show_duration
 
 AHEAD_US = 2 * MINUTE_US  # a phone's clock may be a little fast
 LOOKS = ("", "clear", "milky", "oily", "rusty")
 MOST_OF_CAPACITY = 2.0  # more than this from one trap is a slip of the pen
 LONGEST_NAME, LONGEST_KEY = 40, 200
+GAUGE_SPREAD_K = (-20.0, 60.0)
+GAUGE_VALID_S = (60.0, 8 * 3600.0)
 
 
 def check(site: Site, body: Body, at_us: int, now_us: int, begun_us: int) -> None:
@@ -40,6 +53,14 @@ def check(site: Site, body: Body, at_us: int, now_us: int, begun_us: int) -> Non
             _check_by(by)
         case Service() as service:
             _check_service(site, service)
+        case Gauge() as gauge:
+            _check_gauge(site, gauge)
+        case Blotter() as blotter:
+            _check_outlet(site, blotter.outlet)
+            if blotter.result not in get_args(Blotted):
+                known = ", ".join(get_args(Blotted))
+                raise JournalError(f'"{blotter.result}" is no blotter\'s result (known: {known})')
+            _check_by(blotter.by)
 
 
 def _check_trap(site: Site, name: str) -> Trap:
@@ -90,6 +111,30 @@ def _check_service(site: Site, service: Service) -> None:
         raise JournalError(
             f'{service.what}: "{service.of}" is not one of {", ".join(known_ids) or "none"}'
         )
+
+
+def _check_outlet(site: Site, name: str) -> None:
+    known = [outlet.id for outlet in site.line.outlets]
+    if name not in known:
+        raise JournalError(f'"{name}" is not an outlet of this site (known: {", ".join(known)})')
+
+
+def _check_gauge(site: Site, gauge: Gauge) -> None:
+    _check_outlet(site, gauge.outlet)
+    least_k, most_k = GAUGE_SPREAD_K
+    if not (math.isfinite(gauge.spread_k) and least_k <= gauge.spread_k <= most_k):
+        ends = " to ".join(show_difference(each, site.units) for each in GAUGE_SPREAD_K)
+        raise JournalError(
+            f"a spread of {gauge.spread_k:g} K cannot be: send how far the surface is above the "
+            f"dew point of the air around, {ends}"
+        )
+    least_s, most_s = GAUGE_VALID_S
+    if not (math.isfinite(gauge.valid_s) and least_s <= gauge.valid_s <= most_s):
+        raise JournalError(
+            f"a gauge's reading that speaks for {gauge.valid_s:g} s: say from "
+            f"{show_duration(least_s)} to {show_duration(most_s)}"
+        )
+    _check_by(gauge.by)
 
 
 def _check_by(by: str) -> None:

@@ -20,17 +20,20 @@ from daemon.alarms import Alarm, AlarmRecord, Transition, acknowledge, shown
 from daemon.clock import HOUR_US
 from daemon.due import NO_DATE, calendar_due_us
 from daemon.errors import BalanceError
-from daemon.journal import Acknowledge, Confirm, Drain, Entry, Service
+from daemon.journal import Acknowledge, Blotter, Confirm, Drain, Entry, Gauge, Service
 from daemon.judging import Judging
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.ensemble import Array, percentiles
 from daemon.moisture.learning import Learned
 from daemon.moisture.model import Heard, Model
+from daemon.outlet_entries import OutletEntries
+from daemon.outlet_record import OutletRecord
+from daemon.outlets import OutletViews
 from daemon.site import hours as opening
 from daemon.site.types import Site
 from daemon.state import ChannelRecord, CoreState, HourTotals, Inputs, Mark, TrapRecord
 from daemon.taking import Taking
-from daemon.views import Because, TrapView
+from daemon.views import Because, OutletView, TrapView
 from sensors.quality import Judged, QualityState, Verdict, forget
 from sensors.reading import Reading
 
@@ -54,6 +57,14 @@ class Estimate:
     @cached_property
     def traps(self) -> tuple[TrapView, ...]:
         return self.core.views(self.state)
+
+    @cached_property
+    def outlets(self) -> tuple[OutletView, ...]:
+        return self.core.outlet_views.all(self.state)
+
+    def margin(self, outlet: str, surface_k: float) -> OutletView | None:
+        """An outlet's view for a surface of this temperature, K."""
+        return self.core.outlet_views.of(self.state, outlet, surface_k)
 
 
 @dataclass(slots=True)
@@ -93,6 +104,9 @@ class Core:
         self._traps = [t for s in plan.stations if (t := s.trap) is not None]
         self.rules = AlarmRules(site, self.model)
         self.definitions = self.rules.definitions
+        self.outlet_air = self.rules.margins.air
+        self.outlet_entries = OutletEntries(self.outlet_air)
+        self.outlet_views = OutletViews(self.outlet_air)
         self.taking = Taking(site, self.model)
         self.judging = Judging(site, self.model.period_us)
 
@@ -115,6 +129,7 @@ class Core:
             channels=self._told(unheard, judged.readings),
             alarms={name: AlarmRecord(since_us=now_us) for name in self.definitions},
             hour=self._no_hour(now_us),
+            outlets={outlet.id: OutletRecord() for outlet in self.outlet_air.outlets},
             quality=judged.state,
         )
         tick = _Tick(state, judged=judged)
@@ -185,7 +200,8 @@ class Core:
         except BalanceError as error:  # a daemon that stops over it would help nobody
             tick.problems.append(str(error))
         tick.marks.append(self._mark(state, "hour", state.hour))
-        tick.state = replace(state, hour=self._no_hour(state.time_us))
+        state = replace(state, hour=self._no_hour(state.time_us))
+        tick.state = self.outlet_entries.hour(state)
 
     # ---- what was heard ----
 
@@ -250,6 +266,10 @@ class Core:
                 if service.what == "sensor replaced":
                     quality = forget(tick.state.quality, service.of)
                     tick.state = replace(tick.state, quality=quality)
+            case Gauge() as gauge:
+                tick.state = self.outlet_entries.gauge(tick.state, gauge)
+            case Blotter() as blotter:
+                tick.state = self.outlet_entries.blotter(tick.state, blotter)
 
     def _drain(self, tick: _Tick, entry: Entry, drain: Drain) -> None:
         if drain.trap not in self.trap_names:
@@ -275,6 +295,7 @@ class Core:
         tick.transitions += [transition] if transition is not None else []
 
     def _watch(self, tick: _Tick, drained: str = "") -> None:
+        tick.state = self.rules.margins.look(tick.state)
         alarms, transitions = self.rules.watch(tick.state, drained)
         tick.state = replace(tick.state, alarms=alarms)
         tick.transitions += transitions
@@ -297,6 +318,7 @@ class Core:
             kg=percentiles(contents[chosen]),
             probability_due=self.rules.probability_due(state)[chosen],
             hour=hour,
+            outlets=self.outlet_views.marks(state) if kind == "hour" else (),
         )
 
     def final_mark(self, state: CoreState, leave_out: Collection[str]) -> Mark:

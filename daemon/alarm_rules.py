@@ -8,14 +8,16 @@ from dataclasses import replace
 import numpy as np
 
 from daemon.alarms import AlarmDefinition, AlarmRecord, Condition, Transition, watch
+from daemon.channel_faults import doubt_of, fault_of
 from daemon.clock import MINUTE_US
 from daemon.due import NO_DATE, condition, due_words
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.ensemble import Array, percentiles
 from daemon.moisture.model import Model
+from daemon.outlet_air import OutletAir
+from daemon.outlet_alarms import MarginAlarms
 from daemon.site.types import Site
 from daemon.state import CoreState
-from sensors.quality import DISAGREES
 
 DUE_ON_DELAY_US = 2 * MINUTE_US
 FLOODED_RAISED_AT, FLOODED_RETURNS_BELOW = 0.5, 0.3
@@ -36,6 +38,7 @@ class AlarmRules:
         self._sensors: dict[str, list[str]] = {}
         for name, channel in site.channels.items():
             self._sensors.setdefault(channel.sensor, []).append(name)
+        self.margins = MarginAlarms(OutletAir(site, model))
         self.definitions = {each.id: each for each in self._define()}
 
     def _define(self) -> Iterator[AlarmDefinition]:
@@ -52,6 +55,7 @@ class AlarmRules:
                 on_delay_us=period_us,
                 off_delay_us=STALE_AFTER_PERIODS * period_us,
             )
+        yield from self.margins.define()
 
     def watch(
         self, state: CoreState, drained: str = ""
@@ -75,6 +79,7 @@ class AlarmRules:
             yield self._flooded(number, float(full[number]))
         for sensor, channels in self._sensors.items():
             yield self._sensor_fault(state, sensor, channels)
+        yield from self.margins.watched(state, self.definitions)
 
     def probability_due(self, state: CoreState) -> Array:
         """The share of members at or above the drain-at level, (traps,)."""
@@ -130,16 +135,7 @@ class AlarmRules:
 
     def _fault(self, state: CoreState, channels: Sequence[str]) -> str:
         """Why a sensor cannot be believed, "" while it can."""
-        limit_us = STALE_AFTER_PERIODS * self.model.period_us
-        for name in channels:
-            record = state.channels[name]
-            if record.fault:
-                return f"{name} is not usable: {record.fault}"
-            silent_us = state.time_us - max(record.heard_us, state.begun_us)
-            if silent_us > limit_us and not record.only_edges:
-                return f"{name} has said nothing for {STALE_AFTER_PERIODS} periods"
-        for name in channels:
-            quality = state.quality.channels.get(name)
-            if quality is not None and quality.said.get(DISAGREES) == "doubt":
-                return f"{name} is in doubt: it {DISAGREES}"
-        return ""
+        period_us = self.model.period_us
+        faults = [fault_of(state, name, period_us) for name in channels]
+        doubts = [doubt_of(state, name) for name in channels]
+        return next((found for found in (*faults, *doubts) if found), "")

@@ -12,10 +12,12 @@ from dataclasses import dataclass
 from daemon.moisture.description import (
     WATER_KG_PER_M3,
     Fixed,
+    Outlet,
     Source,
     Station,
     Trap,
 )
+from daemon.moisture.margin import SLAB_GIVE_OR_TAKE_K, SLAB_K
 from daemon.site.default_tables import defaults_table
 from daemon.site.types import DAY_NAMES, DefaultUsed, Hours, OutletSettings, Site
 from daemon.site.words import source_words
@@ -27,6 +29,7 @@ from daemon.units import (
     show_pressure,
     show_volume,
 )
+from daemon.work import PROFILES
 from sensors.registry import DRIVERS, SensorConfig
 
 __all__ = ["Section", "defaults_table", "explain", "render", "sections"]
@@ -140,7 +143,7 @@ def _line(site: Site) -> Iterator[str]:
                 yield f"{outlet.id} (outlet, after {station.id})"
                 yield from _row("share", f"{show_percent(outlet.share)} of the air used")
                 settings = next(each for each in site.outlets if each.id == outlet.id)
-                yield from _outlet(site, settings)
+                yield from _outlet(site, outlet, settings)
 
 
 def _station(site: Site, station: Station) -> Iterator[str]:
@@ -185,15 +188,28 @@ def _trap(site: Site, trap: Trap) -> Iterator[str]:
         )
 
 
-def _outlet(site: Site, settings: OutletSettings) -> Iterator[str]:
+def _outlet(site: Site, outlet: Outlet, settings: OutletSettings) -> Iterator[str]:
     if settings.work:
         yield from _row("work", settings.work)
     if settings.surroundings:
         yield from _row("air around it", f"sensor {settings.surroundings}")
-    line = settings.line_margin_k
-    surface = show_difference(settings.surface_margin_k, site.units)
-    asked = f"line {show_difference(line, site.units)}, " if line is not None else ""
-    yield from _row("margins asked for", f"{asked}surface {surface}")
+    slab = f"sensor {outlet.slab.channel}" if outlet.slab is not None else _slab_guess(site)
+    yield from _row("coldest under it", slab)
+    if outlet.surface is not None:
+        yield from _row("surface", f"sensor {outlet.surface.channel}")
+    profile = PROFILES[settings.work]
+    said = settings.line_margin_k
+    by_work = f" (for {settings.work} work)" if settings.work else " (not said)"
+    line = show_difference(profile.line_margin_k if said is None else said, site.units)
+    asked = f"line {line}{by_work if said is None else ''}"
+    if profile.surface_rule:
+        asked += f", surface {show_difference(settings.surface_margin_k, site.units)}"
+    yield from _row("margins asked for", asked)
+
+
+def _slab_guess(site: Site) -> str:
+    below, width = (show_difference(each, site.units) for each in (-SLAB_K, SLAB_GIVE_OR_TAKE_K))
+    return f"{below} below the air around, give or take {width} (not said)"
 
 
 # --- the compressor and the sensors ----------------------------------------------------------

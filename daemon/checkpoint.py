@@ -14,6 +14,7 @@ import numpy as np
 from daemon.alarms import AlarmRecord
 from daemon.errors import StoreError
 from daemon.moisture.beliefs import Parameters
+from daemon.moisture.carried import Carried
 from daemon.moisture.conditions import Conditions, Held, Lapse, Offsets
 from daemon.moisture.contact import ContactState
 from daemon.moisture.fitting_beliefs import FittingParameters
@@ -23,6 +24,7 @@ from daemon.moisture.learning import Suspect
 from daemon.moisture.line import Ledger, WaterParameters, WaterState
 from daemon.moisture.model import State
 from daemon.moisture.power import Powered
+from daemon.outlet_record import GaugeHeld, OutletRecord
 from daemon.state import ChannelRecord, CoreState, HourTotals, TrapRecord
 from sensors.quality import ChannelState, QualityState
 
@@ -32,6 +34,7 @@ _CLASSES = {
     for cls in (
         AirState,
         AlarmRecord,
+        Carried,
         ChannelRecord,
         ChannelState,
         Conditions,
@@ -39,11 +42,13 @@ _CLASSES = {
         CoreState,
         FittingParameters,
         FittingState,
+        GaugeHeld,
         Held,
         HourTotals,
         Lapse,
         Ledger,
         Offsets,
+        OutletRecord,
         Parameters,
         Powered,
         PumpWatch,

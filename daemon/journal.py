@@ -14,6 +14,7 @@ from typing import Any, Literal
 from daemon.errors import JournalError
 
 Outcome = Literal["emptied", "empty", "partly"]
+Blotted = Literal["clean", "water", "oil"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,6 +33,25 @@ class Acknowledge:
     """Somebody has seen an alarm."""
 
     alarm: str
+    by: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Gauge:
+    """A painter's own gauge read how far a surface is above the dew point of the air around."""
+
+    outlet: str
+    spread_k: float
+    valid_s: float = 1800.0  # how long it speaks for
+    by: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Blotter:
+    """A blotter test after ASTM D4285: what a white absorbent showed in the discharge."""
+
+    outlet: str
+    result: Blotted
     by: str = ""
 
 
@@ -57,12 +77,14 @@ class Service:
     by: str = ""
 
 
-Body = Drain | Acknowledge | Confirm | Service
-_KINDS: dict[str, type[Drain] | type[Acknowledge] | type[Confirm] | type[Service]] = {
+Body = Drain | Acknowledge | Confirm | Service | Gauge | Blotter
+_KINDS: dict[str, type[Body]] = {
     "drain": Drain,
     "acknowledge": Acknowledge,
     "confirm": Confirm,
     "service": Service,
+    "gauge": Gauge,
+    "blotter": Blotter,
 }
 
 

@@ -1,9 +1,10 @@
-"""Messages for the outside, built from transitions, alarms and trap views; pure.
+"""Messages for the outside, built from transitions, alarms, trap and outlet views; pure.
 
 Topics stand under `<prefix>/<site>`, `dripleg/alder-yard` for example:
 
     service            retained: running, stopped, gone (the last will)
     traps/<trap>       retained: what the trap holds
+    outlets/<outlet>   retained: whether the air there, and the surface, are dry enough
     alarms/<alarm>     retained: how the alarm stands
     events             every alarm transition at least once, with its id, QoS 1
     drains             inbound: a button or another device reports a drain
@@ -18,9 +19,10 @@ from dataclasses import dataclass
 
 from daemon import payloads
 from daemon.alarms import Alarm, Transition
+from daemon.outlet_payloads import outlet_payload
 from daemon.payloads import Service
 from daemon.site.types import Mqtt, Site
-from daemon.views import TrapView
+from daemon.views import OutletView, TrapView
 
 AT_LEAST_ONCE = 1  # MQTT's quality of service 1
 
@@ -73,6 +75,9 @@ class Topics:
     def trap(self, trap: str) -> str:
         return f"{self.base}/traps/{trap}"
 
+    def outlet(self, outlet: str) -> str:
+        return f"{self.base}/outlets/{outlet}"
+
     def alarm(self, alarm: str) -> str:
         return f"{self.base}/alarms/{alarm}"
 
@@ -91,6 +96,11 @@ def alarm_message(topics: Topics, alarm: Alarm) -> Message:
 def trap_message(topics: Topics, view: TrapView) -> Message:
     """What a trap holds: retained, the newest one counts."""
     return Message(topics.trap(view.trap), encode(payloads.trap_payload(view)), retain=True)
+
+
+def outlet_message(topics: Topics, view: OutletView) -> Message:
+    """Whether it is dry enough at an outlet: retained, the newest one counts."""
+    return Message(topics.outlet(view.outlet), encode(outlet_payload(view)), retain=True)
 
 
 def service_message(

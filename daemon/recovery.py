@@ -15,6 +15,7 @@ from daemon.clock import DAY_US, format_rfc3339
 from daemon.errors import StoreError
 from daemon.journal import Entry
 from daemon.moisture.line import new_ledger
+from daemon.outlet_record import OutletRecord
 from daemon.site.types import Site
 from daemon.state import CoreState
 from daemon.store.store import Store
@@ -163,4 +164,16 @@ def carried_over(core: Core, fresh: CoreState, old: CoreState) -> CoreState:
     known = core.judging.rules.channels  # a frozen part stays one through a restart
     judged = {name: each for name, each in old.quality.channels.items() if name in known}
     quality = replace(fresh.quality, channels={**fresh.quality.channels, **judged})
-    return replace(fresh, model=model, traps=traps, quality=quality)
+    outlets = _blotters(fresh, old)
+    return replace(fresh, model=model, traps=traps, quality=quality, outlets=outlets)
+
+
+def _blotters(fresh: CoreState, old: CoreState) -> dict[str, OutletRecord]:
+    """What blotters showed stands, whatever was changed in the site file."""
+    outlets = dict(fresh.outlets)
+    for name, was in old.outlets.items():
+        if name in outlets:
+            outlets[name] = replace(
+                outlets[name], clean_us=was.clean_us, water_us=was.water_us, oil_us=was.oil_us
+            )
+    return outlets

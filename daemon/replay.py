@@ -25,11 +25,17 @@ from daemon.parameters import parameters_table
 from daemon.site.types import Site
 from daemon.state import CoreState, HourTotals, Inputs, Mark
 from daemon.ticks import ticks
+from daemon.unit_tables import ZERO_CELSIUS_K
+from daemon.views import Interval
 from sensors.reading import Reading
 
 ML_PER_KG = 1e6 / WATER_KG_PER_M3
 REFERENCE_L_PER_KG = 1e3 / REFERENCE_DRY_AIR_KG_PER_M3
 TRAPS_HEADER = "time,trap,p05_ml,p50_ml,p95_ml,probability_due"
+OUTLETS_HEADER = (
+    "time,outlet,pressure_dew_point_p05_c,pressure_dew_point_p50_c,pressure_dew_point_p95_c,"
+    "line_margin_p05_k,line_margin_p50_k,line_margin_p95_k,carried_liquid_p95_g_m3,verdict"
+)
 FLOW_HEADER = (
     "time,duty,drawn_in_reference_l_p05,drawn_in_reference_l_p50,drawn_in_reference_l_p95,"
     "used_reference_l_p05,used_reference_l_p50,used_reference_l_p95"
@@ -100,6 +106,7 @@ def write(core: Core, result: Result, entries: Sequence[Entry], folder: Path) ->
     try:
         folder.mkdir(parents=True, exist_ok=True)
         _write_csv(folder / "traps.csv", TRAPS_HEADER, _trap_rows(result))
+        _write_csv(folder / "outlets.csv", OUTLETS_HEADER, _outlet_rows(result))
         _write_csv(folder / "flow.csv", FLOW_HEADER, _flow_rows(result))
         _write_csv(folder / "transitions.csv", TRANSITIONS_HEADER, _transition_rows(result))
         summary = summarise(core, result, entries)
@@ -134,6 +141,28 @@ def _trap_rows(result: Result) -> Iterator[list[str]]:
                 *(f"{value:.3f}" for value in ml),
                 f"{mark.probability_due[number]:.4f}",
             ]
+
+
+def _outlet_rows(result: Result) -> Iterator[list[str]]:
+    """What cannot be known is an empty cell."""
+    for mark in result.marks:
+        for each in mark.outlets:
+            dew_point, margin = each.pressure_dew_point_k, each.line_margin_k
+            carried = each.carried_p95_kg_per_m3
+            yield [
+                _whole(mark.at_us),
+                each.outlet,
+                *_cells(dew_point, -ZERO_CELSIUS_K),
+                *_cells(margin, 0.0),
+                "" if carried is None else f"{carried * 1e3:.4f}",
+                each.verdict,
+            ]
+
+
+def _cells(interval: Interval | None, plus: float) -> list[str]:
+    if interval is None:
+        return ["", "", ""]
+    return [f"{value + plus:.3f}" for value in interval.values]
 
 
 def _flow_rows(result: Result) -> Iterator[list[str]]:

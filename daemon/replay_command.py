@@ -66,5 +66,7 @@ def _report(core: Core, result: Result, bad: list[BadRow], folder: Path) -> str:
     if bad:
         lines.append(f"{len(bad)} bad rows left out:")
         lines += [f"  {row}" for row in bad]
-    lines.append(f"written to {folder}/: traps.csv, flow.csv, transitions.csv, summary.json")
+    lines.append(
+        f"written to {folder}/: traps.csv, outlets.csv, flow.csv, transitions.csv, summary.json"
+    )
     return "\n".join(lines)

@@ -15,18 +15,32 @@ from typing import Protocol
 from daemon import accept
 from daemon.advance import Core, Estimate
 from daemon.alarms import Alarm, AlarmRecord, Transition, correction, shown
-from daemon.clock import HOUR_US, Clock, format_rfc3339
+from daemon.clock import HOUR_US, MINUTE_US, Clock, format_rfc3339
 from daemon.errors import StoreError
 from daemon.journal import Body, Drain, Entry
 from daemon.mqtt import MqttLink
-from daemon.outbox import Message, Topics, alarm_message, event_message, trap_message
+from daemon.outbox import (
+    Message,
+    Topics,
+    alarm_message,
+    event_message,
+    outlet_message,
+    trap_message,
+)
 from daemon.recovery import TOO_OLD_US, Back, Recovery
 from daemon.site.types import Site
 from daemon.state import CoreState, Inputs
 from daemon.store.store import Store
 from daemon.taking import learned_words
 from daemon.ticks import first_at_or_after, ticks
-from daemon.views import ChannelHealth, Health, Recorded, SeriesOfReadings, TrapView
+from daemon.views import (
+    ChannelHealth,
+    Health,
+    OutletView,
+    Recorded,
+    SeriesOfReadings,
+    TrapView,
+)
 from sensors.quality import Verdict
 from sensors.reading import Reading
 from sensors.sampling import HungBus
@@ -69,6 +83,8 @@ class Shell:
         self._state: CoreState | None = None
         self._grid_us = 0
         self._shown: tuple[TrapView, ...] = ()
+        self._estimate: Estimate | None = None  # what was shown last, for whoever asks more
+        self._outlets_told_us = -1
         self._pending: list[Entry] = []  # committed, not yet taken in
         self._waiting: list[Reading] = []  # sampled while no tick was due
         self._started_us = clock.now_us()
@@ -263,7 +279,7 @@ class Shell:
         ]
 
     def _show(self, estimate: Estimate) -> None:
-        self._shown = estimate.traps
+        self._shown, self._estimate = estimate.traps, estimate
         if self.link is None or self._topics is None:
             return
         messages = [trap_message(self._topics, view) for view in self._shown]
@@ -271,6 +287,10 @@ class Shell:
             if self._alarms_told.get(alarm.id) != alarm:
                 self._alarms_told[alarm.id] = alarm
                 messages.append(alarm_message(self._topics, alarm))
+        if estimate.at_us // MINUTE_US != self._outlets_told_us // MINUTE_US:
+            # margins cost more than traps to reckon, and change slowly
+            self._outlets_told_us = estimate.at_us
+            messages += [outlet_message(self._topics, view) for view in estimate.outlets]
         self.link.publish_states(messages)
 
     # ---- going back ----
@@ -332,6 +352,14 @@ class Shell:
         with self._lock:
             return self._shown
 
+    def outlets(self) -> Sequence[OutletView]:
+        with self._lock:
+            return () if self._estimate is None else self._estimate.outlets
+
+    def margin(self, outlet: str, surface_k: float) -> OutletView | None:
+        with self._lock:
+            return None if self._estimate is None else self._estimate.margin(outlet, surface_k)
+
     def alarms(self) -> Sequence[Alarm]:
         with self._lock:
             return [] if self._state is None else self.core.alarms(self._state)
@@ -360,7 +388,8 @@ class Shell:
             return ""
         entries = [each for each in self._pending if state.time_us < each.at_us <= now_us]
         _, estimate, _ = self.core.advance(state, now_us, Inputs((), entries))
-        self._shown = estimate.traps
+        self._shown, self._estimate = estimate.traps, estimate
+        self._outlets_told_us = -1  # what was told of them may have changed
         learned = [each for each in estimate.learned if each.at_us == entry.at_us]
         return " ".join(learned_words(self._site, each) for each in learned)
 

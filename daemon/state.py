@@ -12,6 +12,8 @@ from daemon.journal import Entry
 from daemon.moisture.ensemble import Array
 from daemon.moisture.learning import Suspect
 from daemon.moisture.model import State
+from daemon.outlet_record import OutletRecord
+from daemon.views import Interval, Verdict
 from sensors.quality import QualityState
 from sensors.reading import Reading
 
@@ -57,11 +59,23 @@ class CoreState:
     channels: Mapping[str, ChannelRecord]
     alarms: Mapping[str, AlarmRecord]
     hour: HourTotals
+    outlets: Mapping[str, OutletRecord] = field(default_factory=dict)
     quality: QualityState = field(default_factory=QualityState)
 
     @property
     def time_us(self) -> int:
         return self.model.time_us
+
+
+@dataclass(frozen=True, slots=True)
+class OutletMark:
+    """An outlet's air at one full hour. None: not known."""
+
+    outlet: str
+    pressure_dew_point_k: Interval | None
+    line_margin_k: Interval | None
+    carried_p95_kg_per_m3: float | None
+    verdict: Verdict
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,6 +88,7 @@ class Mark:
     kg: Array  # (3, traps): 5, 50, 95 %
     probability_due: Array  # (traps,)
     hour: HourTotals | None = None  # what moved in the hour that ends here
+    outlets: tuple[OutletMark, ...] = ()  # at full hours
 
 
 @dataclass(frozen=True, slots=True)

@@ -14,10 +14,11 @@ import numpy.typing as npt
 
 from daemon.alarms import Alarm
 from daemon.clock import Clock
-from daemon.journal import Body, Entry
+from daemon.journal import Blotted, Body, Entry
 from daemon.site.types import Site
 
 Because = Literal["volume", "calendar"]
+Verdict = Literal["wait", "care", "dry enough", "unknown"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -37,6 +38,76 @@ class TrapView:
     due_at_us: int | None  # the calendar's next time, None without one
     since: Literal["start", "last drain"]
     last_drain_us: int | None
+
+
+@dataclass(frozen=True, slots=True)
+class Interval:
+    """A median with its 5 to 95 % interval."""
+
+    p05: float
+    p50: float
+    p95: float
+
+    @property
+    def values(self) -> tuple[float, float, float]:
+        return self.p05, self.p50, self.p95
+
+
+@dataclass(frozen=True, slots=True)
+class Judgement:
+    """A verdict, why, and what would change it, in plain words and the site's units."""
+
+    verdict: Verdict
+    reasons: tuple[str, ...]
+    would_change: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class LineAirView:
+    """The air in the line at an outlet. None: not known."""
+
+    judgement: Judgement
+    pressure_pa: float | None  # absolute, median, before the nozzle
+    atmosphere_pa: float | None
+    pressure_dew_point_k: Interval | None  # the frost point at and below 0 degC
+    atmospheric_dew_point_k: Interval | None
+    line_margin_k: Interval | None
+    wanted_k: float  # dry enough from here
+    coldest: str  # the place where the margin is least, "" while it is not known
+    after_expansion_k: Interval | None  # let down to the atmosphere and come to rest
+    carried_kg_per_m3: Interval | None  # liquid, per reference m3 of dry air
+    humidity_class: str | None  # of ISO 8573-1, that the interval supports
+
+
+@dataclass(frozen=True, slots=True)
+class SurfaceView:
+    """The surface, and the air around it. None: not known."""
+
+    judgement: Judgement
+    air_k: Interval | None
+    relative_humidity: Interval | None  # 0-1
+    dew_point_k: Interval | None
+    surface_k: Interval | None
+    surface_margin_k: Interval | None
+    wanted_k: float
+    humidity_at_surface: Interval | None  # 0-1
+    by_gauge_until_us: int | None  # while a painter's gauge reading holds
+    ahead: tuple[tuple[int, Interval], ...]  # time, and the surface margin foreseen for it
+
+
+@dataclass(frozen=True, slots=True)
+class OutletView:
+    """Whether it is dry enough to spray or blast at an outlet: of water only."""
+
+    outlet: str
+    at_us: int
+    work: str
+    verdict: Verdict  # of the air and the surface together
+    air: LineAirView
+    surface: SurfaceView
+    holding: Judgement | None  # whether a blasted surface may be left bare
+    blotter: Blotted | None  # the last test's result
+    blotter_us: int | None
 
 
 @dataclass(frozen=True, slots=True)
@@ -96,6 +167,14 @@ class Running(Protocol):
 
     def traps(self) -> Sequence[TrapView]:
         """One view a trap, in line order; empty until the first tick."""
+        ...
+
+    def outlets(self) -> Sequence[OutletView]:
+        """One view an outlet, in the site file's order; empty until the first tick."""
+        ...
+
+    def margin(self, outlet: str, surface_k: float) -> OutletView | None:
+        """An outlet's view for a surface of this temperature; None until the first tick."""
         ...
 
     def alarms(self) -> Sequence[Alarm]:

@@ -85,11 +85,23 @@ def round_of(station: str) -> str:
     return f"round of {station}"
 
 
+def slab_of(outlet: str) -> str:
+    """How cold the coldest thing is that the hose lies on, where no sensor says so."""
+    return f"slab of {outlet}"
+
+
+def room_of(outlet: str) -> str:
+    """How far the air around an outlet is from its station, where no sensor says so."""
+    return f"room of {outlet}"
+
+
 def names(plan: Plan) -> list[str]:
     """Every figure that is uncertain, in a standing order."""
     found = [bias_of(channel) for channel in plan.channels]
     for station in plan.stations:
         found += own_names(station)
+    for outlet in plan.line.outlets:
+        found += [slab_of(outlet.id), room_of(outlet.id)]
     return [*found, HUMIDITY, DELIVERED, POOL, DUTY, CUP]
 
 

@@ -158,6 +158,16 @@ class Outlet:
     id: str
     after: str  # a station's id
     share: float  # of the air used; the shares of a line add up to 1
+    air_temperature: Measured | None = None  # of the air around hose and surface
+    air_humidity: Measured | None = None  # its relative humidity
+    slab: Measured | None = None  # the coldest thing that the hose lies on
+    surface: Measured | None = None  # what is sprayed or blasted
+
+    @property
+    def sources(self) -> tuple[Measured, ...]:
+        """The channels that are read for this outlet alone."""
+        every = (self.air_temperature, self.air_humidity, self.slab, self.surface)
+        return tuple(source for source in every if source is not None)
 
 
 @dataclass(frozen=True, slots=True)

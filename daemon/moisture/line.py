@@ -11,6 +11,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from daemon.errors import BalanceError
+from daemon.moisture.carried import Carried, carry
 from daemon.moisture.ensemble import Array
 from daemon.moisture.fitted import Bed, Fitted
 from daemon.moisture.flow import AirMoved
@@ -38,6 +39,7 @@ class WaterState:
     spilled: Array  # (stations, members): the same, run over from a full trap; it stays liquid
     vapor: Array  # (receivers, members)
     leaving_ratio: Array  # (stations, members): humidity ratio of the air that last left
+    carried: Carried  # out at the outlets, lately
 
 
 @dataclass(frozen=True, slots=True)
@@ -111,6 +113,7 @@ class _Step:
     shed: Array
     vapor_out: Array
     liquid_out: Array
+    liquid_at: Array  # (outlets, members): the same, in this step, by outlet
     # what arrives at each station in this step
     vapor_in: Array
     liquid_in: Array
@@ -224,8 +227,10 @@ class _Step:
                 self.liquid_in[flow.station] += part * liquid
                 self.spill_in[flow.station] += part * spill
             else:
+                gone = part * (liquid + spill)
                 self.vapor_out += part * vapor
-                self.liquid_out += part * (liquid + spill)
+                self.liquid_out += gone
+                self.liquid_at[flow.outlet] = gone
 
     def _parts(self, i: int, through: Array) -> list[Array | float]:
         """How the air that leaves a station divides; what the others leave goes the last way."""
@@ -279,6 +284,7 @@ def step(
         shed=ledger.shed.copy(),
         vapor_out=ledger.vapor_out.copy(),
         liquid_out=ledger.liquid_out.copy(),
+        liquid_at=np.zeros_like(air.outlets),
         vapor_in=np.zeros(shape),
         liquid_in=np.zeros(shape),
         spill_in=np.zeros(shape),
@@ -295,7 +301,14 @@ def step(
             row += 1
         else:
             work.station(i, None)
-    after = WaterState(work.trap, work.waiting, work.spilled, work.vapor, work.ratio)
+    after = WaterState(
+        work.trap,
+        work.waiting,
+        work.spilled,
+        work.vapor,
+        work.ratio,
+        carry(plan, state.carried, air.outlets, work.liquid_at),
+    )
     booked = replace(
         ledger,
         water_in=ledger.water_in + water_in,

@@ -26,6 +26,7 @@ from daemon.moisture.beliefs import (
 )
 from daemon.moisture.beliefs import offsets as make_offsets
 from daemon.moisture.beliefs import parameters as make_parameters
+from daemon.moisture.carried import nothing_yet
 from daemon.moisture.conditions import Conditions, Evaluation, Held, Lapse, Offsets
 from daemon.moisture.contact import ContactState, ContactTime, integrate
 from daemon.moisture.description import Line, Measured, RiseByDuty
@@ -128,6 +129,7 @@ class Model:
             spilled=np.zeros_like(saturated),
             vapor=stored * ratio[list(plan.receivers)],
             leaving_ratio=ratio,
+            carried=nothing_yet(plan),
         )
         state = State(
             time_us=time_us,

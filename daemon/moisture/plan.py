@@ -45,7 +45,7 @@ class Plan:
     receivers_below: dict[int, tuple[int, ...]]  # at or below each receiver
     trunk: tuple[int, ...]  # stations that pass exactly what is drawn in
     traps: tuple[int, ...]  # stations with a trap
-    channels: tuple[str, ...]  # every channel that a station reads
+    channels: tuple[str, ...]  # every channel that a station or an outlet reads
     temperature_order: tuple[int, ...]
     pressure_order: tuple[int, ...]
     temperature_rules: tuple[Source, ...]  # what holds while the sensor is silent
@@ -169,6 +169,10 @@ def _channels(line: Line) -> tuple[str, ...]:
         read = (station.temperature, station.pressure, station.relative_humidity, station.around)
         for source in read:
             if isinstance(source, Measured) and source.channel not in names:
+                names.append(source.channel)
+    for outlet in line.outlets:
+        for source in outlet.sources:
+            if source.channel not in names:
                 names.append(source.channel)
     return tuple(names)
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 
-from daemon.moisture.description import Outlet
+from daemon.moisture.description import Measured, Outlet
 from daemon.site import defaults
 from daemon.site.ids import label, read_id
 from daemon.site.names import Names
@@ -16,9 +16,23 @@ from daemon.site.table import Table
 from daemon.site.types import OutletSettings
 from daemon.site.values import choice, identifier, quantity, text
 from daemon.units import parse, show_difference, show_percent
+from sensors.reading import Quantity
 
-OUTLET_KEYS = ("id", "after", "share", "surroundings", "work", "line_margin", "surface_margin")
+OUTLET_KEYS = (
+    "id", "after", "share", "surroundings", "slab", "surface", "work", "line_margin",
+    "surface_margin",
+)  # fmt: skip
 SHARES_MAY_MISS = 0.002  # three times 0.333: taken for a whole
+
+
+@dataclass(frozen=True, slots=True)
+class OutletSources:
+    """The sensors at an outlet."""
+
+    air_temperature: Measured | None = None
+    air_humidity: Measured | None = None
+    slab: Measured | None = None
+    surface: Measured | None = None
 
 
 @dataclass(slots=True)
@@ -30,6 +44,7 @@ class OutletDraft:
     after: str | None
     share: float | None
     settings: OutletSettings
+    sources: OutletSources
 
 
 def read_outlets(notes: Notes, raws: Sequence[object], names: Names) -> list[OutletDraft]:
@@ -50,7 +65,7 @@ def _draft(table: Table, name: str, names: Names) -> OutletDraft:
         known = f"; known: {', '.join(names.stations)}" if names.stations else ""
         table.wrong("after", f"hangs nowhere; write the station it comes after{known}")
     share = table.read("share", _share, None)
-    _tell_effects(table)
+    surroundings = table.read("surroundings", _sensor(names), "")
     margin = quantity("temperature difference", 0.0, 50.0, "from 0 to 50 K")
     return OutletDraft(
         table,
@@ -59,7 +74,7 @@ def _draft(table: Table, name: str, names: Names) -> OutletDraft:
         share,
         OutletSettings(
             id=name,
-            surroundings=table.read("surroundings", _sensor(names), ""),
+            surroundings=surroundings,
             work=table.read("work", _work, ""),
             line_margin_k=table.read("line_margin", margin, None),
             surface_margin_k=table.value(
@@ -70,16 +85,34 @@ def _draft(table: Table, name: str, names: Names) -> OutletDraft:
                 "as in ISO 8502-4",
             ),
         ),
+        OutletSources(
+            air_temperature=_measured(names, surroundings, "temperature"),
+            air_humidity=_measured(names, surroundings, "relative_humidity"),
+            slab=table.read("slab", _temperature(names), None),
+            surface=table.read("surface", _temperature(names), None),
+        ),
     )
 
 
-def _tell_effects(table: Table) -> None:
-    said = [key for key in OUTLET_KEYS[3:] if key in table.values]
-    if said:
-        table.notes.no_effect(
-            f"[{table.where}] {', '.join(said)}: checked; they count once dripleg reckons "
-            "dew-point margins."
-        )
+def _tell_in_line(names: Names, sensor: str) -> None:
+    if sensor in names.in_line:
+        raise ValueError("sits in the line's own air; name a sensor that is in the shop's")
+
+
+def _measured(names: Names, sensor: str, quantity: Quantity) -> Measured | None:
+    channel = names.of(sensor, quantity) if sensor else None
+    if channel is None:
+        return None
+    return Measured(channel.name, channel.give_or_take, channel.gauge)
+
+
+def _temperature(names: Names) -> Callable[[object], Measured]:
+    def read(raw: object) -> Measured:
+        channel = names.channel(text(raw), "temperature")
+        _tell_in_line(names, channel.sensor)
+        return Measured(channel.name, channel.give_or_take, channel.gauge)
+
+    return read
 
 
 def _share(raw: object) -> float:
@@ -96,6 +129,7 @@ def _sensor(names: Names) -> Callable[[object], str]:
             return found
         if not (names.of(found, "temperature") and names.of(found, "relative_humidity")):
             raise ValueError("gives no temperature and relative humidity; name a sensor that does")
+        _tell_in_line(names, found)
         return found
 
     return read
@@ -119,7 +153,15 @@ def finish_outlets(
         return _line_end(notes, stations)
     shares = _shares(notes, drafts)
     return [
-        Outlet(draft.id, draft.after or "", share)
+        Outlet(
+            draft.id,
+            draft.after or "",
+            share,
+            air_temperature=draft.sources.air_temperature,
+            air_humidity=draft.sources.air_humidity,
+            slab=draft.sources.slab,
+            surface=draft.sources.surface,
+        )
         for draft, share in zip(drafts, shares, strict=True)
     ]
 

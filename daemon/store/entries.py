@@ -8,7 +8,17 @@ from typing import Any
 from sqlalchemy import Connection, Select, func, insert, select
 
 from daemon.errors import JournalError
-from daemon.journal import Acknowledge, Body, Drain, Entry, Service, body_from_json, body_to_json
+from daemon.journal import (
+    Acknowledge,
+    Blotter,
+    Body,
+    Drain,
+    Entry,
+    Gauge,
+    Service,
+    body_from_json,
+    body_to_json,
+)
 from daemon.store.tables import journal
 from daemon.views import Recorded
 
@@ -70,6 +80,8 @@ def find(
 def _subject(body: Body) -> str:
     match body:
         case Acknowledge(alarm=subject) | Service(of=subject):
+            return subject
+        case Gauge(outlet=subject) | Blotter(outlet=subject):
             return subject
         case _:
             return body.trap

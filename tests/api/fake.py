@@ -25,9 +25,17 @@ from daemon.moisture.description import (
     Trap,
 )
 from daemon.site.types import Api, Cup, DefaultUsed, Hours, Mqtt, OutletSettings, Site, Units
-from daemon.views import ChannelHealth, Health, Recorded, SeriesOfReadings, TrapView
+from daemon.views import (
+    ChannelHealth,
+    Health,
+    OutletView,
+    Recorded,
+    SeriesOfReadings,
+    TrapView,
+)
 from sensors.reading import Channel
 from sensors.registry import SensorConfig
+from tests.api.outlet_views import gun_view
 
 NOW_US = parse_rfc3339("2026-12-01T09:00:00Z")
 LOG_BEGINS_US = NOW_US - 30 * 24 * HOUR_US
@@ -217,6 +225,7 @@ class FakeRunning:
     clock: StillClock = field(default_factory=StillClock)
     views: list[TrapView] = field(default_factory=lambda: [tank_view(), riser_view()])
     standing: dict[str, Alarm] = field(default_factory=some_alarms)
+    shown_outlets: list[OutletView] = field(default_factory=lambda: [gun_view()])
     problems: tuple[str, ...] = ()
     recorded: dict[str, SeriesOfReadings] = field(default_factory=_no_readings)
     journal: list[Entry] = field(default_factory=list)
@@ -241,6 +250,12 @@ class FakeRunning:
 
     def traps(self) -> Sequence[TrapView]:
         return tuple(self.views)
+
+    def outlets(self) -> Sequence[OutletView]:
+        return tuple(self.shown_outlets)
+
+    def margin(self, outlet: str, surface_k: float) -> OutletView | None:
+        return gun_view(surface_k) if self.shown_outlets else None
 
     def alarms(self) -> Sequence[Alarm]:
         return tuple(self.standing.values())

@@ -23,7 +23,11 @@ CHECKS = (
     "negative_data_rejection",
 )
 # names that exist, so that not every generated request ends at 404
-KNOWN = {"trap": ["tank", "riser"], "alarm": ["riser-drain-due", "tank-drain-due"]}
+KNOWN = {
+    "trap": ["tank", "riser"],
+    "alarm": ["riser-drain-due", "tank-drain-due"],
+    "outlet": ["spray-gun"],
+}
 CHANNELS = ["tank-gauge.pressure", "motor.contact"]
 
 
@@ -41,10 +45,14 @@ WITHOUT_BROKEN = [
     ("/api/v1/site", "GET"),
     ("/api/v1/traps", "GET"),
     ("/api/v1/traps/{trap}", "GET"),
+    ("/api/v1/outlets", "GET"),
 ]
 OPERATIONS = [
     ("/api/v1/traps/{trap}/drains", "GET"),
     ("/api/v1/traps/{trap}/drains", "POST"),
+    ("/api/v1/outlets/{outlet}/margin", "GET"),
+    ("/api/v1/outlets/{outlet}/blotter", "POST"),
+    ("/api/v1/outlets/{outlet}/gauge", "POST"),
     ("/api/v1/alarms", "GET"),
     ("/api/v1/alarms/{alarm}/acknowledge", "POST"),
     ("/api/v1/readings", "GET"),
