@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import io
 import sys
 import threading
 from collections.abc import Sequence
@@ -11,6 +12,7 @@ from pathlib import Path
 from daemon.errors import DriplegError
 
 EXIT_OK, EXIT_BAD_INPUT, EXIT_FAILED = 0, 2, 1
+EXIT_INTERRUPTED = 130  # as shells have it for Ctrl-C
 
 
 def parser() -> argparse.ArgumentParser:
@@ -58,6 +60,9 @@ def parser() -> argparse.ArgumentParser:
 
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run a command; 0 when it did its job, 2 for bad input, 1 when something failed."""
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):  # a file's odd name must not stop a message
+            stream.reconfigure(errors="backslashreplace")
     options = parser().parse_args(arguments)
     try:
         return _COMMANDS[options.command](options)
@@ -67,6 +72,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except BrokenPipeError:
         sys.stderr.close()
         return EXIT_FAILED
+    except KeyboardInterrupt:
+        return EXIT_INTERRUPTED
 
 
 def _demo(options: argparse.Namespace) -> int:

@@ -83,6 +83,8 @@ def run(port: int, length: str | None, broker_at: str | None, speed: float) -> N
     """Run the demo until it is stopped, or for a length of time."""
     if not SLOWEST <= speed <= FASTEST:
         raise DemoError(f"--speed {speed:g}: give a number from {SLOWEST:g} to {FASTEST:g}")
+    if not 0 <= port <= 65535:
+        raise DemoError(f"--port {port}: give a number from 1 to 65535, or 0 for a free one")
     limit_s = seconds(length) if length is not None else None
     mqtt = broker(broker_at) if broker_at is not None else None
     logs.set_up(verbose=False, quiet=True)  # alarms are told below, in the shop's own time
@@ -155,7 +157,15 @@ class _Teller:
         self._states: dict[str, str] = {}
 
     def tell(self, stop: threading.Event) -> None:
-        """Tell until stopped; set `stop` when the demo's time is over."""
+        """Tell until stopped; set `stop` when the demo's time is over, or nobody reads it."""
+        try:
+            self._tell(stop)
+        except BrokenPipeError:
+            pass
+        finally:
+            stop.set()
+
+    def _tell(self, stop: threading.Event) -> None:
         clock = SystemClock()
         begun_s = told_s = clock.monotonic()
         while not clock.wait(LOOK_EVERY_S, stop):

@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import argparse
+import http.client
 import json
 import urllib.error
+import urllib.parse
 import urllib.request
 from pathlib import Path
 from typing import Any
@@ -15,6 +17,7 @@ from daemon.errors import JournalError, StoreError, UnitError
 from daemon.journal import Drain
 from daemon.moisture.description import WATER_KG_PER_M3
 from daemon.payloads import drain_payload
+from daemon.shell import GRID_KEY
 from daemon.site.types import Site
 from daemon.store.store import Store
 from daemon.units import parse
@@ -48,14 +51,13 @@ def _read(options: argparse.Namespace) -> tuple[Drain, int | None]:
             at_us = parse_rfc3339(options.at)
         except ValueError as error:
             raise JournalError(f"--at: {error}") from error
-    outcome: Any = "empty" if options.empty else "partly" if options.partly else "emptied"
+    empty = options.empty or (volume_kg == 0.0 and not options.partly)
+    outcome: Any = "empty" if empty else "partly" if options.partly else "emptied"
     return Drain(options.trap, outcome, volume_kg, options.by, options.look), at_us
 
 
 def _through_daemon(site: Site, drain: Drain, at_us: int | None) -> dict[str, Any] | None:
     """Ask the daemon that serves this site's API; None when nothing listens there."""
-    host = {"0.0.0.0": "127.0.0.1", "::": "::1"}.get(site.api.host, site.api.host)
-    address = f"[{host}]" if ":" in host else host
     body = {
         "outcome": drain.outcome,
         "volume_ml": None if drain.volume_kg is None else drain.volume_kg * 1000.0,
@@ -64,20 +66,46 @@ def _through_daemon(site: Site, drain: Drain, at_us: int | None) -> dict[str, An
         "look": drain.look,
     }
     said = {name: value for name, value in body.items() if value not in (None, "")}
+    theirs = _asked(site, "site")
+    if theirs is None:
+        return None
+    if theirs.get("id") != site.id:
+        raise JournalError(
+            f"{site.api.host}:{site.api.port} is served by another dripleg "
+            f'("{theirs.get("id")}", not "{site.id}"): stop that one, or give one of them another '
+            "port in [api]"
+        )
+    trap = urllib.parse.quote(drain.trap, safe="")
+    return _asked(site, f"traps/{trap}/drains", json.dumps(said).encode())
+
+
+def _asked(site: Site, path: str, data: bytes | None = None) -> dict[str, Any] | None:
+    """The daemon's answer to a GET, or to a POST of data; None when nothing listens there."""
+    host = {"0.0.0.0": "127.0.0.1", "::": "::1"}.get(site.api.host, site.api.host)
+    address = f"[{host}]" if ":" in host else host
+    where = f"{address}:{site.api.port}"
     request = urllib.request.Request(
-        f"http://{address}:{site.api.port}/api/v1/traps/{drain.trap}/drains",
-        data=json.dumps(said).encode(),
-        headers={"Content-Type": "application/json"},
+        f"http://{where}/api/v1/{path}", data, {"Content-Type": "application/json"}
     )
     opener = urllib.request.build_opener(urllib.request.ProxyHandler({}))
     try:
         with opener.open(request, timeout=TIMEOUT_S) as response:
-            answer: dict[str, Any] = json.load(response)
-            return answer
+            answer = json.load(response)
     except urllib.error.HTTPError as error:
-        raise JournalError(_problem(error)) from error
+        failed = StoreError if error.code >= 500 else JournalError
+        raise failed(_problem(error)) from error
     except urllib.error.URLError:
         return None
+    except (OSError, http.client.HTTPException) as error:
+        raise StoreError(
+            f"{where} does not answer as it should ({error}): look at the daemon's log, and "
+            "whether the drain is recorded, before you repeat it"
+        ) from error
+    except ValueError:
+        answer = None
+    if not isinstance(answer, dict):
+        raise StoreError(f"what answers at {where} is not dripleg: give another port in [api]")
+    return answer
 
 
 def _problem(error: urllib.error.HTTPError) -> str:
@@ -95,7 +123,9 @@ def _straight(site: Site, drain: Drain, at_us: int | None, path: Path) -> dict[s
             f"{path}: start the daemon first, or name its database with --store"
         )
     now_us = SystemClock().now_us()
-    accept.check(site, drain, now_us if at_us is None else at_us, now_us, 0)
+    when_us = now_us if at_us is None else at_us
     with Store.open(path, site.channels) as store:
-        recorded = store.add_entry(drain, now_us if at_us is None else at_us, now_us)
+        begun_us = int(store.get_meta(GRID_KEY) or 0)
+        accept.check(site, drain, when_us, now_us, begun_us)
+        recorded = store.add_entry(drain, when_us, now_us)
     return drain_payload(recorded.entry)
