@@ -33,7 +33,7 @@ def _time(time_us: int | None) -> str | None:
 
 
 class DueOut(BaseModel):
-    """When a drain is due. Without a forecast p50 is the calendar's next time."""
+    """When a drain is expected to be due: 5, 50 and 95 %; null beyond the forecast's horizon."""
 
     p05: Time | None
     p50: Time | None

@@ -20,15 +20,19 @@ from daemon.alarms import Alarm, AlarmRecord, Transition, acknowledge, shown
 from daemon.clock import HOUR_US
 from daemon.due import NO_DATE, calendar_due_us
 from daemon.errors import BalanceError
+from daemon.expected import expected_words
+from daemon.following import Following
 from daemon.journal import Acknowledge, Blotter, Confirm, Drain, Entry, Gauge, Service
 from daemon.judging import Judging
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.ensemble import Array, percentiles
+from daemon.moisture.forecast import Due
 from daemon.moisture.learning import Learned
 from daemon.moisture.model import Heard, Model
 from daemon.outlet_entries import OutletEntries
 from daemon.outlet_record import OutletRecord
 from daemon.outlets import OutletViews
+from daemon.reminders import Reminder
 from daemon.site import hours as opening
 from daemon.site.types import Site
 from daemon.state import ChannelRecord, CoreState, HourTotals, Inputs, Mark, TrapRecord
@@ -49,6 +53,7 @@ class Estimate:
     problems: tuple[str, ...] = ()  # faults of the model itself, in words
     readings: tuple[Reading, ...] = ()  # the tick's, those that are not believed marked as bad
     verdicts: tuple[Verdict, ...] = ()  # what began or ended to be so of a channel
+    reminders: tuple[Reminder, ...] = ()
 
     @property
     def at_us(self) -> int:
@@ -77,6 +82,7 @@ class _Tick:
     learned: list[Learned] = field(default_factory=list)
     problems: list[str] = field(default_factory=list)
     judged: Judged | None = None
+    reminders: list[Reminder] = field(default_factory=list)
 
     def result(self, core: Core) -> tuple[CoreState, Estimate, list[Transition]]:
         """What an advance gives."""
@@ -88,6 +94,7 @@ class _Tick:
             tuple(self.problems),
             () if self.judged is None else self.judged.readings,
             () if self.judged is None else self.judged.verdicts,
+            tuple(self.reminders),
         )
         return self.state, estimate, self.transitions
 
@@ -109,6 +116,7 @@ class Core:
         self.outlet_views = OutletViews(self.outlet_air)
         self.taking = Taking(site, self.model)
         self.judging = Judging(site, self.model.period_us)
+        self.following = Following(site, self.model)
 
     # ---- beginning ----
 
@@ -129,6 +137,7 @@ class Core:
             channels=self._told(unheard, judged.readings),
             alarms={name: AlarmRecord(since_us=now_us) for name in self.definitions},
             hour=self._no_hour(now_us),
+            followed=self.following.begun(model),
             outlets={outlet.id: OutletRecord() for outlet in self.outlet_air.outlets},
             quality=judged.state,
         )
@@ -190,8 +199,16 @@ class Core:
             hour.drawn_kg + moved.drawn_kg,
             hour.used_kg + moved.used_kg,
         )
-        tick.state = replace(state, model=model, hour=hour)
+        followed = self.following.step(state, model, moved, heard.is_open)
+        tick.state = replace(state, model=model, hour=hour, followed=followed)
         self._watch(tick)
+        self._remind(tick)
+
+    def _remind(self, tick: _Tick) -> None:
+        followed, reminder = self.following.remind(tick.state)
+        if followed is not tick.state.followed:
+            tick.state = replace(tick.state, followed=followed)
+        tick.reminders += [reminder] if reminder is not None else []
 
     def _full_hour(self, tick: _Tick) -> None:
         state = tick.state
@@ -200,7 +217,8 @@ class Core:
         except BalanceError as error:  # a daemon that stops over it would help nobody
             tick.problems.append(str(error))
         tick.marks.append(self._mark(state, "hour", state.hour))
-        state = replace(state, hour=self._no_hour(state.time_us))
+        followed = self.following.hour(state, state.hour)
+        state = replace(state, hour=self._no_hour(state.time_us), followed=followed)
         tick.state = self.outlet_entries.hour(state)
 
     # ---- what was heard ----
@@ -266,6 +284,9 @@ class Core:
                 if service.what == "sensor replaced":
                     quality = forget(tick.state.quality, service.of)
                     tick.state = replace(tick.state, quality=quality)
+                if service.what == "compressor serviced":
+                    followed = self.following.serviced(tick.state.followed)
+                    tick.state = replace(tick.state, followed=followed)
             case Gauge() as gauge:
                 tick.state = self.outlet_entries.gauge(tick.state, gauge)
             case Blotter() as blotter:
@@ -275,7 +296,10 @@ class Core:
         if drain.trap not in self.trap_names:
             return
         tick.marks.append(self._mark(tick.state, "drain", None, (drain.trap,)))
+        tick.state = replace(tick.state, followed=self.following.before_drain(tick.state))
         tick.state, learned = self.taking.drain(tick.state, entry, drain)
+        followed = self.following.after_drain(tick.state, drain.trap)
+        tick.state = replace(tick.state, followed=followed)
         if learned is not None:
             tick.learned.append(learned)
         if drain.outcome == "partly":
@@ -337,18 +361,24 @@ class Core:
         contents = self.model.contents(state.model)[self._trap_rows]
         kg = percentiles(contents)
         probability = self.rules.probability_due(state)
+        due = self.following.due(state)
         return tuple(
-            self._view(state, number, kg[:, number], float(probability[number]))
+            self._view(state, number, kg[:, number], float(probability[number]), due[number])
             for number in range(len(self.trap_names))
         )
 
-    def _view(self, state: CoreState, number: int, kg: Array, probability: float) -> TrapView:
+    def _view(
+        self, state: CoreState, number: int, kg: Array, probability: float, foreseen: Due
+    ) -> TrapView:
         name, trap = self.trap_names[number], self._traps[number]
+        station = self.model.plan.stations[self._trap_rows[number]]
         record = state.traps[name]
         by_calendar = record.calendar_due_us != NO_DATE
         calendar_now = by_calendar and state.time_us >= record.calendar_due_us
         due = state.alarms[f"{name}-drain-due"].raised
-        because: Because | None = "calendar" if by_calendar else None
+        because: Because | None = foreseen.because
+        if calendar_now:
+            because = "calendar"
         if due and probability >= 0.3 and not (calendar_now and probability < 0.5):
             because = "volume"
         return TrapView(
@@ -365,6 +395,10 @@ class Core:
             due_at_us=record.calendar_due_us if by_calendar else None,
             since="start" if record.last_drain_us < 0 else "last drain",
             last_drain_us=None if record.last_drain_us < 0 else record.last_drain_us,
+            due_p05_us=foreseen.p05_us,
+            due_p50_us=foreseen.p50_us,
+            due_p95_us=foreseen.p95_us,
+            expected=expected_words(self.site, station, foreseen, float(kg[2]), state.time_us),
         )
 
     def alarms(self, state: CoreState) -> list[Alarm]:

@@ -13,6 +13,8 @@ import numpy as np
 
 from daemon.alarms import AlarmRecord
 from daemon.errors import StoreError
+from daemon.followed import Followed
+from daemon.foresight import Foresight, Kept, Score
 from daemon.moisture.beliefs import Parameters
 from daemon.moisture.carried import Carried
 from daemon.moisture.conditions import Conditions, Held, Lapse, Offsets
@@ -23,8 +25,12 @@ from daemon.moisture.flow import AirState, PumpWatch
 from daemon.moisture.learning import Suspect
 from daemon.moisture.line import Ledger, WaterParameters, WaterState
 from daemon.moisture.model import State
+from daemon.moisture.outlook import Pattern, Typical
+from daemon.moisture.plant import Figure, Phase, Plant, Sample
 from daemon.moisture.power import Powered
+from daemon.moisture.week import Errors, Week
 from daemon.outlet_record import GaugeHeld, OutletRecord
+from daemon.reminders import Reminder, Reminders, Turn
 from daemon.state import ChannelRecord, CoreState, HourTotals, TrapRecord
 from sensors.quality import ChannelState, QualityState
 
@@ -40,22 +46,37 @@ _CLASSES = {
         Conditions,
         ContactState,
         CoreState,
+        Errors,
+        Figure,
         FittingParameters,
         FittingState,
+        Followed,
+        Foresight,
         GaugeHeld,
         Held,
         HourTotals,
+        Kept,
         Lapse,
         Ledger,
         Offsets,
         OutletRecord,
         Parameters,
+        Pattern,
+        Phase,
+        Plant,
         Powered,
         PumpWatch,
         QualityState,
+        Reminder,
+        Reminders,
+        Sample,
+        Score,
         State,
         Suspect,
         TrapRecord,
+        Turn,
+        Typical,
+        Week,
         WaterParameters,
         WaterState,
     )

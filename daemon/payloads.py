@@ -11,7 +11,7 @@ import sys
 from typing import Any, Literal, get_args
 
 from daemon.alarms import Alarm, Transition
-from daemon.clock import format_rfc3339, parse_rfc3339
+from daemon.clock import SECOND_US, format_rfc3339, parse_rfc3339
 from daemon.errors import JournalError
 from daemon.journal import Drain, Entry, Outcome
 from daemon.moisture.description import WATER_KG_PER_M3
@@ -31,9 +31,9 @@ _OUTCOMES: tuple[str, ...] = get_args(Outcome)
 def trap_payload(view: TrapView) -> dict[str, Any]:
     """What a trap holds and when its drain is due.
 
-    `due` holds times or null: without a forecast the calendar's next time is `p50`, and `p05` and
-    `p95` are null; without a calendar all three are. `because` says what makes it due, or what
-    will make it due next: volume, calendar, or null when neither is known.
+    `due` holds the 5, 50 and 95 % times at which it is expected to be due, by volume or by the
+    calendar, whichever comes first; null where that lies beyond the forecast's ten days. `because`
+    says what makes it due, or what will make it due next; null when neither will.
     """
     return {
         "trap": view.trap,
@@ -45,13 +45,18 @@ def trap_payload(view: TrapView) -> dict[str, Any]:
         "drain_at_ml": millilitres(view.drain_at_kg),
         "probability_due": round(view.probability_due, 3),
         "due": {
-            "p05": None,
-            "p50": None if view.due_at_us is None else format_rfc3339(view.due_at_us),
-            "p95": None,
+            "p05": _whole_second(view.due_p05_us),
+            "p50": _whole_second(view.due_p50_us),
+            "p95": _whole_second(view.due_p95_us),
             "because": view.because,
         },
         "since": view.since,
     }
+
+
+def _whole_second(time_us: int | None) -> str | None:
+    """A time as text without a fraction, which nobody could foresee."""
+    return None if time_us is None else format_rfc3339(time_us - time_us % SECOND_US)
 
 
 def alarm_payload(alarm: Alarm) -> dict[str, Any]:

@@ -8,6 +8,7 @@ from typing import Literal
 
 from daemon.alarms import AlarmRecord
 from daemon.due import NO_DATE
+from daemon.followed import Followed
 from daemon.journal import Entry
 from daemon.moisture.ensemble import Array
 from daemon.moisture.learning import Suspect
@@ -59,6 +60,7 @@ class CoreState:
     channels: Mapping[str, ChannelRecord]
     alarms: Mapping[str, AlarmRecord]
     hour: HourTotals
+    followed: Followed
     outlets: Mapping[str, OutletRecord] = field(default_factory=dict)
     quality: QualityState = field(default_factory=QualityState)
 

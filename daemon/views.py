@@ -38,6 +38,11 @@ class TrapView:
     due_at_us: int | None  # the calendar's next time, None without one
     since: Literal["start", "last drain"]
     last_drain_us: int | None
+    # when it is expected to be due, by volume or date; None: not within the forecast's horizon
+    due_p05_us: int | None = None
+    due_p50_us: int | None = None
+    due_p95_us: int | None = None
+    expected: str = ""  # the same in words
 
 
 @dataclass(frozen=True, slots=True)

@@ -12,6 +12,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from datetime import UTC, date, datetime, timedelta
 from functools import lru_cache
+from itertools import pairwise
 from zoneinfo import ZoneInfo
 
 from daemon.clock import DAY_US, SECOND_US, to_datetime
@@ -27,7 +28,7 @@ def is_open(hours: Hours, timezone: str, at_us: int) -> bool:
     """Whether the shop is open at a time; the closing minute itself is closed."""
     if hours.always_open:
         return True
-    today = _local_day(timezone, at_us)
+    today = local_day(timezone, at_us)
     return any(
         opens_us <= at_us < closes_us
         for day in (today - timedelta(1), today, today + timedelta(1))
@@ -58,6 +59,21 @@ def working_day(hours: Hours, timezone: str, day: date) -> tuple[int, int] | Non
     return begins_us, max(begins_us, ends_us)
 
 
+def breaks(hours: Hours, timezone: str, day: date) -> tuple[tuple[int, int], ...]:
+    """The stretches between the openings of a calendar day's work in which the shop is closed."""
+    if hours.always_open:
+        return ()
+    own = _own_spans(hours, day)
+    found = (
+        (
+            _instant(timezone, day, before[1], closing=True),
+            _instant(timezone, day, after[0], closing=False),
+        )
+        for before, after in pairwise(own)
+    )
+    return tuple((from_us, until_us) for from_us, until_us in found if from_us < until_us)
+
+
 def next_shift_end(hours: Hours, timezone: str, after_us: int) -> int | None:
     """The end of a working day next after a time; None when the shop works no more."""
     ends = (end for _, end in _from(hours, timezone, after_us) if end > after_us)
@@ -84,7 +100,7 @@ def working_day_start(hours: Hours, timezone: str, at_us: int) -> int | None:
 
 def _from(hours: Hours, timezone: str, at_us: int) -> Iterator[tuple[int, int]]:
     """Working days in order, beginning early enough to hold one that is still going on."""
-    first = _local_day(timezone, at_us) - timedelta(2)
+    first = local_day(timezone, at_us) - timedelta(2)
     for ahead in range(_DAYS_AHEAD):
         found = working_day(hours, timezone, first + timedelta(ahead))
         if found is not None:
@@ -92,7 +108,7 @@ def _from(hours: Hours, timezone: str, at_us: int) -> Iterator[tuple[int, int]]:
 
 
 def _back_from(hours: Hours, timezone: str, at_us: int) -> Iterator[tuple[int, int]]:
-    last = _local_day(timezone, at_us) + timedelta(1)
+    last = local_day(timezone, at_us) + timedelta(1)
     for back in range(_DAYS_AHEAD):
         found = working_day(hours, timezone, last - timedelta(back))
         if found is not None:
@@ -128,7 +144,8 @@ def _openings(hours: Hours, timezone: str, day: date) -> Iterator[tuple[int, int
         yield opens_us, max(opens_us, _instant(timezone, day, closes, closing=True))
 
 
-def _local_day(timezone: str, at_us: int) -> date:
+def local_day(timezone: str, at_us: int) -> date:
+    """The calendar day of a time."""
     return to_datetime(at_us).astimezone(_zone(timezone)).date()
 
 

@@ -154,6 +154,9 @@ def tank_view() -> TrapView:
         due_at_us=NOW_US + 8 * HOUR_US,
         since="last drain",
         last_drain_us=NOW_US - 16 * HOUR_US,
+        due_p05_us=NOW_US + 7 * HOUR_US,
+        due_p50_us=NOW_US + 8 * HOUR_US,
+        due_p95_us=NOW_US + 8 * HOUR_US,
     )
 
 
@@ -173,6 +176,9 @@ def riser_view() -> TrapView:
         due_at_us=None,
         since="start",
         last_drain_us=None,
+        due_p05_us=NOW_US,
+        due_p50_us=NOW_US,
+        due_p95_us=NOW_US + 2 * HOUR_US,
     )
 
 

@@ -19,10 +19,20 @@ def test_traps_come_in_line_order_with_interval_levels_and_due(client: Client) -
         "capacity_ml": 15000,
         "drain_at_ml": 600,
         "probability_due": 0.125,
-        "due": {"p05": None, "p50": "2026-12-01T17:00:00Z", "p95": None, "because": "calendar"},
+        "due": {
+            "p05": "2026-12-01T16:00:00Z",
+            "p50": "2026-12-01T17:00:00Z",
+            "p95": "2026-12-01T17:00:00Z",
+            "because": "calendar",
+        },
         "since": "last drain",
     }
-    assert riser["due"] == {"p05": None, "p50": None, "p95": None, "because": "volume"}
+    assert riser["due"] == {
+        "p05": "2026-12-01T09:00:00Z",
+        "p50": "2026-12-01T09:00:00Z",
+        "p95": "2026-12-01T11:00:00Z",
+        "because": "volume",
+    }
 
 
 def test_one_trap_is_the_same_object_as_in_the_list(client: Client) -> None:

@@ -41,6 +41,9 @@ VIEW = TrapView(
     due_at_us=parse_rfc3339("2026-12-01T17:30:00Z"),
     since="last drain",
     last_drain_us=None,
+    due_p05_us=parse_rfc3339("2026-12-01T15:10:00.7Z"),
+    due_p50_us=parse_rfc3339("2026-12-01T17:30:00Z"),
+    due_p95_us=parse_rfc3339("2026-12-01T17:30:00Z"),
 )
 TRANSITION = Transition(
     id="tank-drain-due/2026-12-01T09:00:00Z/1",
@@ -74,14 +77,19 @@ def test_a_trap_is_told_in_millilitres_with_every_key() -> None:
         "capacity_ml": 15000,
         "drain_at_ml": 600,
         "probability_due": 0.12,
-        "due": {"p05": None, "p50": "2026-12-01T17:30:00Z", "p95": None, "because": "calendar"},
+        "due": {
+            "p05": "2026-12-01T15:10:00Z",
+            "p50": "2026-12-01T17:30:00Z",
+            "p95": "2026-12-01T17:30:00Z",
+            "because": "calendar",
+        },
         "since": "last drain",
     }
     assert list(json.loads(message.payload).items()) == list(expected.items())
 
 
-def test_a_trap_without_a_calendar_has_no_time() -> None:
-    view = replace(VIEW, because=None, due_at_us=None)
+def test_a_trap_that_is_not_due_soon_has_no_time() -> None:
+    view = replace(VIEW, because=None, due_p05_us=None, due_p50_us=None, due_p95_us=None)
     assert trap_payload(view)["due"] == {"p05": None, "p50": None, "p95": None, "because": None}
 
 

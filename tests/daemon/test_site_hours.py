@@ -215,3 +215,11 @@ def test_starts_and_ends_of_working_days_alternate(hours: Hours, zone: str, at_u
     assert last is None or last <= at_us
     # the working day that ends next has its start after the one before it ended
     assert last is None or start >= last
+
+
+def test_breaks_lie_between_the_openings_of_a_day() -> None:
+    hours = week(mon="08:00-12:00 13:00-17:30 17:30-18:00")
+    monday = date(2026, 3, 2)
+    noon = parse_rfc3339("2026-03-02T12:00:00+01:00")
+    assert opening.breaks(hours, "Europe/Berlin", monday) == ((noon, noon + HOUR_US),)
+    assert opening.breaks(hours, "Europe/Berlin", date(2026, 3, 3)) == ()
