@@ -8,6 +8,7 @@ import os
 import shutil
 import signal
 import socket
+import ssl
 import subprocess
 import threading
 from collections.abc import Callable
@@ -263,7 +264,8 @@ class Packet:
 class PlayedBroker:
     """A broker that answers only what the test makes it answer."""
 
-    def __init__(self) -> None:
+    def __init__(self, tls: ssl.SSLContext | None = None) -> None:
+        self._tls = tls
         self._listening = socket.create_server(("127.0.0.1", 0))
         self._listening.settimeout(TIMEOUT_S)
         self.port = int(self._listening.getsockname()[1])
@@ -278,8 +280,11 @@ class PlayedBroker:
 
     def accept(self) -> None:
         """Wait for a connection and let it in."""
-        self._connection, _ = self._listening.accept()
-        self._connection.settimeout(TIMEOUT_S)
+        connection, _ = self._listening.accept()
+        connection.settimeout(TIMEOUT_S)
+        if self._tls is not None:
+            connection = self._tls.wrap_socket(connection, server_side=True)
+        self._connection = connection
         assert self.packet().type == CONNECT
         self._connection.sendall(bytes([0x20, 2, 0, 0]))  # CONNACK, accepted
 
@@ -292,13 +297,22 @@ class PlayedBroker:
         assert self._connection is not None
         self._connection.sendall(bytes([0x40, 2]) + packet.number)  # PUBACK
 
-    def answer_subscribe(self, granted: bool = True) -> None:
-        """The next packet must be a SUBSCRIBE to one topic."""
+    def answer_subscribe(self) -> None:
+        """The next packet must be a SUBSCRIBE to one topic; it is granted."""
+        self.answer_subscription(self.packet(), granted=True)
+
+    def answer_subscription(self, packet: Packet, granted: bool) -> None:
         assert self._connection is not None
-        packet = self.packet()
         assert packet.type == SUBSCRIBE
         answer = 1 if granted else 0x80
         self._connection.sendall(bytes([0x90, 3]) + packet.content[:2] + bytes([answer]))  # SUBACK
+
+    def say(self, topic: str, *payloads: bytes) -> None:
+        """Send short messages, QoS 0, all in one write."""
+        assert self._connection is not None
+        head = len(topic).to_bytes(2, "big") + topic.encode()
+        packets = [bytes([0x30, len(head + payload)]) + head + payload for payload in payloads]
+        self._connection.sendall(b"".join(packets))
 
     def answer_ping(self) -> None:
         """The next packet must be a PINGREQ, which a client sends when it has nothing to say."""

@@ -6,6 +6,7 @@ import json
 import logging
 import shutil
 import signal
+import ssl
 import subprocess
 import sys
 import threading
@@ -17,7 +18,7 @@ from typing import Any
 import pytest
 
 from daemon.clock import SystemClock, parse_rfc3339
-from daemon.errors import BrokerError, JournalError
+from daemon.errors import BrokerError, JournalError, StoreError
 from daemon.journal import Body, Drain, Entry
 from daemon.mqtt import MqttLink, Timing
 from daemon.outbox import Message
@@ -37,6 +38,8 @@ ROOT = Path(__file__).parents[2]
 BASE = "dripleg/alder-yard"
 EVENTS = f"{BASE}/events"
 SERVICE = f"{BASE}/service"
+DRAINS = f"{BASE}/drains"
+REFUSED = f"{BASE}/drains/refused"
 QUICK = Timing(keepalive_s=1, retry_least_s=0.05, retry_most_s=0.2)
 
 
@@ -59,9 +62,13 @@ def numbers(heard: list[Heard]) -> list[int]:
 
 
 class WatchedStore(Store):
-    """A store that tells when its outbox has been emptied."""
+    """A store that tells when its outbox has been emptied, and that can be made to fail."""
+
+    full = False
 
     def mark_sent(self, numbers: Sequence[int]) -> None:
+        if self.full:
+            raise StoreError("no space left (invented)")
         super().mark_sent(numbers)
         with marked:
             marked.notify_all()
@@ -269,6 +276,41 @@ def test_after_a_reconnection_only_unacknowledged_events_are_sent_again(store: S
         broker.drop()
 
 
+def test_what_was_acknowledged_is_not_sent_again_when_the_store_is_full(
+    store: WatchedStore,
+) -> None:
+    queue(store, 0, 2)
+    with PlayedBroker() as broker, linked(broker.port, store):
+        broker.accept()
+        broker.publish()
+        broker.answer_subscribe()
+        first, _ = broker.publish(), broker.publish()
+        store.full = True
+        broker.acknowledge(first)
+        broker.answer_ping()
+        broker.drop()
+        broker.accept()
+        broker.publish()
+        broker.answer_subscribe()
+        second = broker.publish()
+        assert json.loads(second.payload)["id"] == "e/1"
+        store.full = False
+        broker.acknowledge(second)
+        store.wait_until_sent()
+        broker.drop()
+
+
+def test_a_message_larger_than_the_network_s_buffers_arrives(store: Store) -> None:
+    large = "x" * 20_000_000
+    with PlayedBroker() as broker, linked(broker.port, store) as link:
+        broker.accept()
+        broker.publish()
+        broker.answer_subscribe()
+        link.publish_states([state("tank", large)])
+        assert broker.publish().payload.decode() == large
+        broker.drop()
+
+
 def test_no_more_events_are_under_way_than_the_window_takes(store: Store) -> None:
     queue(store, 0, 30)
     timing = Timing(keepalive_s=1, window=10)
@@ -413,8 +455,10 @@ def test_a_broker_that_does_not_let_us_listen_is_told_of(
     with PlayedBroker() as broker, linked(broker.port, store) as link:
         broker.accept()
         broker.publish()
+        subscription = broker.packet()
+        broker.answer_ping()
         assert link.status == "not connected"
-        broker.answer_subscribe(granted=False)
+        broker.answer_subscription(subscription, granted=False)
         assert link.wait_for("connected", TIMEOUT_S)
         broker.answer_ping()
         broker.drop()
@@ -482,13 +526,32 @@ def test_over_tls_events_arrive_and_drains_are_taken_in(
     ):
         listener.wait_for(lambda heard: len(numbers(heard)) == 500)
         for number in range(20):
-            listener.say(f"{BASE}/drains", json.dumps({"trap": "tank", "by": str(number)}))
-        listener.say(f"{BASE}/drains", b"-")
-        listener.wait_for(lambda heard: heard[-1].topic == f"{BASE}/drains/refused")
+            listener.say(DRAINS, json.dumps({"trap": "tank", "by": str(number)}))
+        listener.say(DRAINS, b"-")
+        listener.wait_for(lambda heard: heard[-1].topic == REFUSED)
         assert link.status == "connected"
     assert [entry.body for entry in journal.entries] == [
         Drain("tank", by=str(n)) for n in range(20)
     ]
+
+
+def test_drains_that_arrive_in_one_piece_over_tls_are_all_taken_in(
+    certificate: tuple[Path, Path], store: Store, journal: Journal
+) -> None:
+    tls = ssl.SSLContext(ssl.PROTOCOL_TLS_SERVER)
+    tls.load_cert_chain(*certificate)
+    ca_file = str(certificate[0])
+    with (
+        PlayedBroker(tls) as broker,
+        linked(broker.port, store, journal, Timing(keepalive_s=60), tls=True, ca_file=ca_file),
+    ):
+        broker.accept()
+        broker.publish()
+        broker.answer_subscribe()
+        broker.say(DRAINS, *(json.dumps({"trap": "tank", "by": n}).encode() for n in "abc"), b"-")
+        assert broker.publish().topic == REFUSED
+        broker.drop()
+    assert [entry.body for entry in journal.entries] == [Drain("tank", by=n) for n in "abc"]
 
 
 def test_a_certificate_of_an_unknown_authority_is_refused(tls_broker: Broker, store: Store) -> None:
@@ -542,18 +605,17 @@ def test_states_do_not_pile_up_at_a_broker_that_does_not_answer(store: Store) ->
         link.publish_states([state("tank", "0")])
         broker.accept()
         broker.publish()
+        broker.answer_subscribe()
         first = broker.publish()
         for number in range(1, 100):
             link.publish_states([state("tank", str(number))])
+        broker.answer_ping()  # so nothing more was sent
         broker.acknowledge(first)
         assert (first.payload, broker.publish().payload) == (b"0", b"99")
         broker.drop()
 
 
 # --- drains that arrive
-
-DRAINS = f"{BASE}/drains"
-REFUSED = f"{BASE}/drains/refused"
 
 
 def test_a_drain_is_taken_in(broker: Broker, store: Store, journal: Journal) -> None:
