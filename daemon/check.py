@@ -19,6 +19,7 @@ from daemon.moisture.description import (
 )
 from daemon.moisture.margin import SLAB_GIVE_OR_TAKE_K, SLAB_K
 from daemon.site.default_tables import defaults_table
+from daemon.site.fitting_words import drain_words, station_words
 from daemon.site.types import DAY_NAMES, DefaultUsed, Hours, OutletSettings, Site
 from daemon.site.words import source_words
 from daemon.units import (
@@ -162,6 +163,8 @@ def _station(site: Site, station: Station) -> Iterator[str]:
         width = show_volume(station.volume.give_or_take, site.units)
         text = f"{show_volume(station.volume.value, site.units)}, give or take {width}"
         yield from _row("volume", text + _mark(site, f'station "{station.id}"', "volume"))
+    for what, words in station_words(station, site.units):
+        yield from _row(what, words)
     if station.trap is not None:
         yield from _trap(site, station.trap)
     elif station.kind in ("receiver", "separator", "coalescer"):
@@ -177,7 +180,8 @@ def _trap(site: Site, trap: Trap) -> Iterator[str]:
     yield from _row(
         "trap", f"holds {volume(trap.capacity.value)}; due at {volume(trap.drain_at_kg)}"
     )
-    yield from _row("drain", f"{trap.drain}{drained}")
+    by_itself = drain_words(trap, site.units)
+    yield from _row("drain", f"{trap.drain}{drained}{': ' if by_itself else ''}{by_itself}")
     keeps = show_percent(trap.separation.value)
     width = show_percent(trap.separation.give_or_take)
     yield from _row("keeps", f"{keeps} of the liquid that comes, give or take {width}")
@@ -223,6 +227,8 @@ def _compressor(site: Site) -> Iterator[str]:
     )
     mark = _mark(site, "compressor", "free_air_delivery")
     yield from _row("delivers", f"{delivered} of free air, give or take {width}{mark}")
+    if compressor.flow_meter is not None:
+        yield from _row("measured by", f"{compressor.flow_meter.channel}, while it speaks")
     if compressor.running is None:
         yield from _row("makes air", "while the tank's pressure rises: no contact says so")
     else:

@@ -1,7 +1,7 @@
 """Flow meter by pulses: a contact or open collector that closes once for so much air.
 
 Wiring: as a contact, see `sensors/lines.py`. The meter's reference conditions (1 bar and 20 degC
-with most; "normal" is 0 degC and 1.01325 bar, 7 % apart in density) are on its label.
+with most; "normal" is 0 degC and 1.01325 bar, 8.7 % apart in density) are on its label.
 
 A reading is the mean flow since the last one, pulses times volume over time: nothing of the total
 is lost or made by sampling. Pulses may come up to 40 a second, the most that the kernel keeps for

@@ -69,6 +69,23 @@ Source = Fixed | Measured | Like | RiseByDuty
 
 
 @dataclass(frozen=True, slots=True)
+class VentedCell:
+    """A humidity sensor in air that bleeds from the line to the atmosphere."""
+
+    temperature: Measured
+    relative_humidity: Measured  # over liquid water
+    pressure: Measured  # in the cell, absolute
+
+
+@dataclass(frozen=True, slots=True)
+class FloatSwitch:
+    """A float in a trap, closed at and above a level."""
+
+    channel: str
+    level: Fixed  # kg
+
+
+@dataclass(frozen=True, slots=True)
 class Share:
     """A fraction between 0 and 1, drawn on the logit scale about its value."""
 
@@ -100,6 +117,7 @@ class Trap:
     drain_every: str = "never"  # "working day", "12 h", "3 days" ...: never, or as `every_s` says
     every_s: float = 0.0  # for "12 h" and the like; 0 for "working day" and "never"
     emptying: Emptying | None = None  # of a drain that empties itself; None: as its kind usually is
+    floats: tuple[FloatSwitch, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -149,6 +167,7 @@ class Station:
     rated_flow: Fixed | None = None  # m3/s of free air: beyond it less is separated
     ice: Fixed | None = None  # kg in the bath that cools this place at the start
     around: Measured | Fixed | None = None  # K, the air around a dryer; None: as at the intake
+    measured_dew_point: Measured | VentedCell | None = None  # of the air that leaves
 
 
 @dataclass(frozen=True, slots=True)
@@ -179,6 +198,7 @@ class Compressor:
     cut_in: Fixed  # Pa gauge
     cut_out: Fixed  # Pa gauge
     off_when_closed: bool
+    flow_meter: Measured | None = None  # of the air made, m3/s at 20 degC, 1 bar, dry
 
 
 @dataclass(frozen=True, slots=True)

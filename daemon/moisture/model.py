@@ -30,7 +30,7 @@ from daemon.moisture.carried import nothing_yet
 from daemon.moisture.conditions import Conditions, Evaluation, Held, Lapse, Offsets
 from daemon.moisture.contact import ContactState, ContactTime, integrate
 from daemon.moisture.description import Line, Measured, RiseByDuty
-from daemon.moisture.ensemble import Array, standard_normal
+from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, standard_normal
 from daemon.moisture.fitting_state import FittingState, Moment
 from daemon.moisture.fittings import Fittings
 from daemon.moisture.learning import CupError, Learned, Suspect
@@ -91,10 +91,14 @@ class Model:
         self.fittings = Fittings(self.plan)
         self.period_us = round(description.period_s * 1e6)
         self._gauge = self._watched_receiver()
+        # a station's own rule, or what holds while its sensor is silent: one lag, never both
+        lagging = [
+            s.temperature if isinstance(s.temperature, RiseByDuty) else rule
+            for s, rule in zip(self.plan.stations, self.plan.temperature_rules, strict=True)
+        ]
         self._lagging = [
             (i, source.time_constant_s)
-            for i, station in enumerate(self.plan.stations)
-            for source in (station.temperature, self.plan.temperature_rules[i])
+            for i, source in enumerate(lagging)
             if isinstance(source, RiseByDuty)
         ]
 
@@ -186,6 +190,8 @@ class Model:
         saturated = self._saturated(state, now)
         intake_ratio = np.minimum(self._intake_ratio(now), saturated[0])
         drawn = on_s * self._delivered(state.parameters, now, intake_ratio)
+        if (meter := plan.line.compressor.flow_meter) is not None:
+            drawn = self._metered(meter, held, offsets, to_us, dt_s, drawn)
         before, water, ledger = self._sighted(state, now)
         if offsets is not state.offsets:
             as_before = replace(evaluation, offsets=state.offsets, lapses=dict(state.lapses))
@@ -457,6 +463,24 @@ class Model:
             now.temperature_k[0], now.pressure_pa[0], ratio
         )
         return parameters.delivered_m3_per_s * density
+
+    def _metered(
+        self,
+        meter: Measured,
+        held: Mapping[str, Held],
+        offsets: Offsets,
+        to_us: int,
+        dt_s: float,
+        otherwise: Array,
+    ) -> Array:
+        """Dry air drawn in, kg, by the flow meter while it speaks."""
+        last = held.get(meter.channel, Held())
+        if last.stale(to_us, self.period_us):
+            return otherwise
+        off = offsets.channels[meter.channel] * (meter.give_or_take * HALF_WIDTH_TO_SD)
+        flow_m3_s = np.maximum(last.value + off * (last.value > 0.0), 0.0)
+        metered: Array = flow_m3_s * (air.REFERENCE_DRY_AIR_KG_PER_M3 * dt_s)
+        return metered
 
     def _stored(self, parameters: Parameters, now: Conditions, ratio: Array) -> Array:
         """Dry air in every receiver, kg, (receivers, members)."""

@@ -13,6 +13,7 @@ from daemon.moisture.description import (
     RiseByDuty,
     Source,
     Station,
+    VentedCell,
 )
 
 # What a station without a believable sensor is taken to be: the kind's rule, give or take.
@@ -170,11 +171,26 @@ def _channels(line: Line) -> tuple[str, ...]:
         for source in read:
             if isinstance(source, Measured) and source.channel not in names:
                 names.append(source.channel)
+        names += [name for name in _of_dew_point(station) if name not in names]
     for outlet in line.outlets:
         for source in outlet.sources:
             if source.channel not in names:
                 names.append(source.channel)
+    meter = line.compressor.flow_meter
+    if meter is not None and meter.channel not in names:
+        names.append(meter.channel)
     return tuple(names)
+
+
+def _of_dew_point(station: Station) -> tuple[str, ...]:
+    """The channels that a measured dew point is made of."""
+    match station.measured_dew_point:
+        case Measured(channel=channel):
+            return (channel,)
+        case VentedCell(relative_humidity=humidity, temperature=temperature, pressure=pressure):
+            return (humidity.channel, temperature.channel, pressure.channel)
+        case _:
+            return ()
 
 
 def _temperature_rule(line: Line, number: int, parent: tuple[int, ...]) -> Source:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Callable
 
-from daemon.moisture.description import Compressor, Fixed
+from daemon.moisture.description import Compressor, Fixed, Measured
 from daemon.site import defaults
 from daemon.site.names import Names
 from daemon.site.notes import Notes
@@ -18,7 +18,7 @@ from daemon.units import parse, show_flow, show_pressure
 
 COMPRESSOR_KEYS = (
     "free_air_delivery", "displacement", "running", "loaded", "cut_in", "cut_out",
-    "off_when_closed", *LIMIT_KEYS,
+    "off_when_closed", "flow_meter", *LIMIT_KEYS,
 )  # fmt: skip
 FLOW_LIMITS_M3_S = (1e-3 / 60, 100.0 / 60)  # 1 L/min to 100 m3/min
 
@@ -36,6 +36,7 @@ def read_compressor(notes: Notes, raw: object, names: Names) -> tuple[Table, Com
         off_when_closed=table.value(
             "off_when_closed", flag, True, "true", "switched off overnight (practice): is it?"
         ),
+        flow_meter=table.read("flow_meter", _meter(names), None),
     )
     if table.ok("cut_in", "cut_out") and compressor.cut_in.value >= compressor.cut_out.value:
         _tell_switch(table, compressor)
@@ -66,6 +67,16 @@ def _contact(names: Names) -> Callable[[object], str | None]:
         if not isinstance(raw, str):
             raise ValueError('must be a contact\'s channel in quotes, like "motor.contact"')
         return None if raw == "none" else names.channel(raw, "contact").name
+
+    return read
+
+
+def _meter(names: Names) -> Callable[[object], Measured]:
+    def read(raw: object) -> Measured:
+        if not isinstance(raw, str):
+            raise ValueError('must be a meter\'s channel in quotes, like "meter.free_air_flow"')
+        channel = names.channel(raw, "free_air_flow")
+        return Measured(channel.name, channel.give_or_take)
 
     return read
 
