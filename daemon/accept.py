@@ -16,6 +16,7 @@ from daemon.journal import (
     Confirm,
     Drain,
     Gauge,
+    SaltCheck,
     Service,
     Serviced,
 )
@@ -27,6 +28,7 @@ AHEAD_US = 2 * MINUTE_US  # a phone's clock may be a little fast
 LOOKS = ("", "clear", "milky", "oily", "rusty")
 MOST_OF_CAPACITY = 2.0  # more than this from one trap is a slip of the pen
 LONGEST_NAME, LONGEST_KEY = 40, 200
+MOST_OFF_SALT = 0.10  # of relative humidity: three times the widest that a part's data sheet allows
 GAUGE_SPREAD_K = (-20.0, 60.0)
 GAUGE_VALID_S = (60.0, 8 * 3600.0)
 
@@ -55,6 +57,8 @@ def check(site: Site, body: Body, at_us: int, now_us: int, begun_us: int) -> Non
             _check_service(site, service)
         case Gauge() as gauge:
             _check_gauge(site, gauge)
+        case SaltCheck() as check:
+            _check_salt(site, check)
         case Blotter() as blotter:
             _check_outlet(site, blotter.outlet)
             if blotter.result not in get_args(Blotted):
@@ -135,6 +139,24 @@ def _check_gauge(site: Site, gauge: Gauge) -> None:
             f"{show_duration(least_s)} to {show_duration(most_s)}"
         )
     _check_by(gauge.by)
+
+
+def _check_salt(site: Site, check: SaltCheck) -> None:
+    _check_by(check.by)
+    humid = [c.sensor for c in site.channels.values() if c.quantity == "relative_humidity"]
+    if check.sensor not in humid:
+        known = ", ".join(humid) or "none"
+        raise JournalError(f'"{check.sensor}" is not a humidity sensor of this site ({known})')
+    if not (0.0 <= check.reads <= 1.0 and 0.0 < check.true < 1.0):
+        raise JournalError(
+            f"a salt check of {check.reads:.1%} beside {check.true:.1%} cannot be: relative "
+            "humidities are fractions from 0 to 1"
+        )
+    if abs(check.reads - check.true) > MOST_OFF_SALT:
+        raise JournalError(
+            f"{check.sensor} reads {check.reads:.1%} where {check.true:.1%} is: so far off is no "
+            "bias. Was it in the jar for some hours, closed? If it was, replace the sensor"
+        )
 
 
 def _check_by(by: str) -> None:

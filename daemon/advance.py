@@ -22,7 +22,7 @@ from daemon.due import NO_DATE, calendar_due_us
 from daemon.errors import BalanceError
 from daemon.expected import expected_words
 from daemon.following import Following
-from daemon.journal import Acknowledge, Blotter, Confirm, Drain, Entry, Gauge, Service
+from daemon.journal import Acknowledge, Blotter, Confirm, Drain, Entry, Gauge, SaltCheck, Service
 from daemon.judging import Judging
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.ensemble import Array, percentiles
@@ -33,6 +33,7 @@ from daemon.outlet_entries import OutletEntries
 from daemon.outlet_record import OutletRecord
 from daemon.outlets import OutletViews
 from daemon.reminders import Reminder
+from daemon.sensing import Sensing
 from daemon.site import hours as opening
 from daemon.site.types import Site
 from daemon.state import ChannelRecord, CoreState, HourTotals, Inputs, Mark, TrapRecord
@@ -116,6 +117,7 @@ class Core:
         self.outlet_views = OutletViews(self.outlet_air)
         self.taking = Taking(site, self.model)
         self.judging = Judging(site, self.model.period_us)
+        self.sensing = Sensing(self.model)
         self.following = Following(site, self.model)
 
     # ---- beginning ----
@@ -192,6 +194,7 @@ class Core:
         state = tick.state
         heard = self._heard(readings, state.time_us, until_us)
         model, moved = self.model.step(state.model, until_us, heard)
+        model, sensed = self.sensing.step(state.sensed, state.time_us, model, heard.channels)
         hour = state.hour
         hour = HourTotals(
             hour.from_us,
@@ -200,7 +203,7 @@ class Core:
             hour.used_kg + moved.used_kg,
         )
         followed = self.following.step(state, model, moved, heard.is_open)
-        tick.state = replace(state, model=model, hour=hour, followed=followed)
+        tick.state = replace(state, model=model, hour=hour, followed=followed, sensed=sensed)
         self._watch(tick)
         self._remind(tick)
 
@@ -211,7 +214,7 @@ class Core:
         tick.reminders += [reminder] if reminder is not None else []
 
     def _full_hour(self, tick: _Tick) -> None:
-        state = tick.state
+        state = self.sensing.hour(tick.state)
         try:
             state.model.ledger.check(state.model.water)
         except BalanceError as error:  # a daemon that stops over it would help nobody
@@ -284,9 +287,12 @@ class Core:
                 if service.what == "sensor replaced":
                     quality = forget(tick.state.quality, service.of)
                     tick.state = replace(tick.state, quality=quality)
+                    tick.state = self.sensing.replaced(tick.state, service.of)
                 if service.what == "compressor serviced":
                     followed = self.following.serviced(tick.state.followed)
                     tick.state = replace(tick.state, followed=followed)
+            case SaltCheck() as check:
+                tick.state = self.sensing.salt_check(tick.state, check)
             case Gauge() as gauge:
                 tick.state = self.outlet_entries.gauge(tick.state, gauge)
             case Blotter() as blotter:

@@ -9,17 +9,21 @@ import numpy as np
 
 from daemon.alarms import AlarmDefinition, AlarmRecord, Condition, Transition, watch
 from daemon.channel_faults import doubt_of, fault_of
-from daemon.clock import MINUTE_US
+from daemon.clock import DAY_US, MINUTE_US
+from daemon.contradictions import Contradictions
 from daemon.due import NO_DATE, condition, due_words
+from daemon.moisture import salt
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.ensemble import Array, percentiles
 from daemon.moisture.model import Model
 from daemon.outlet_air import OutletAir
 from daemon.outlet_alarms import MarginAlarms
+from daemon.plant_alarms import PlantAlarms
 from daemon.site.types import Site
 from daemon.state import CoreState
 
 DUE_ON_DELAY_US = 2 * MINUTE_US
+SALT_CHECK_EVERY_US = 91 * DAY_US  # three months
 FLOODED_RAISED_AT, FLOODED_RETURNS_BELOW = 0.5, 0.3
 
 # An alarm's definition, what its condition says now, and the words for it.
@@ -38,7 +42,14 @@ class AlarmRules:
         self._sensors: dict[str, list[str]] = {}
         for name, channel in site.channels.items():
             self._sensors.setdefault(channel.sensor, []).append(name)
+        self._humid = [
+            channel.sensor
+            for name, channel in site.channels.items()
+            if next(salt.uses(model.plan, name), None) is not None
+        ]
+        self.contradictions = Contradictions(site, model)
         self.margins = MarginAlarms(OutletAir(site, model))
+        self.plant = PlantAlarms(site)
         self.definitions = {each.id: each for each in self._define()}
 
     def _define(self) -> Iterator[AlarmDefinition]:
@@ -55,7 +66,10 @@ class AlarmRules:
                 on_delay_us=period_us,
                 off_delay_us=STALE_AFTER_PERIODS * period_us,
             )
+        for sensor in self._humid:
+            yield AlarmDefinition(f"{sensor}-salt-check-due", "salt-check-due", sensor, "low")
         yield from self.margins.define()
+        yield from self.plant.define()
 
     def watch(
         self, state: CoreState, drained: str = ""
@@ -77,9 +91,13 @@ class AlarmRules:
         for number, name in enumerate(self._names):
             yield self._drain_due(state, number, float(probability[number]), name == drained)
             yield self._flooded(number, float(full[number]))
+        against = self.contradictions.found(state)
         for sensor, channels in self._sensors.items():
-            yield self._sensor_fault(state, sensor, channels)
+            yield self._sensor_fault(state, sensor, channels, against.get(sensor, ""))
+        for sensor in self._humid:
+            yield self._salt_check(state, sensor)
         yield from self.margins.watched(state, self.definitions)
+        yield from self.plant.watched(state, self.definitions)
 
     def probability_due(self, state: CoreState) -> Array:
         """The share of members at or above the drain-at level, (traps,)."""
@@ -125,13 +143,29 @@ class AlarmRules:
         so: Condition = "not so" if full < FLOODED_RETURNS_BELOW else "between"
         return definition, so, f"{name}: no longer full."
 
-    def _sensor_fault(self, state: CoreState, sensor: str, channels: Sequence[str]) -> Watched:
+    def _sensor_fault(
+        self, state: CoreState, sensor: str, channels: Sequence[str], contradiction: str
+    ) -> Watched:
         definition = self.definitions[f"{sensor}-sensor-fault"]
-        fault = self._fault(state, channels)
+        fault = self._fault(state, channels) or contradiction
         if fault:
-            text = f"{sensor}: {fault}. Look at its wiring and run `dripleg check`."
+            look = "" if fault == contradiction else ". Look at its wiring and run `dripleg check`."
+            text = f"{sensor}: {fault}{look}"
             return definition, "so", text
         return definition, "not so", f"{sensor}: answers again."
+
+    def _salt_check(self, state: CoreState, sensor: str) -> Watched:
+        """Once a humidity sensor was checked, it is checked again: elements drift."""
+        definition = self.definitions[f"{sensor}-salt-check-due"]
+        checked_us = state.sensed.salted.get(sensor)
+        if checked_us is None or state.time_us - checked_us < SALT_CHECK_EVERY_US:
+            return definition, "not so", f"{sensor}: checked."
+        months = SALT_CHECK_EVERY_US // (30 * DAY_US)
+        text = (
+            f"{sensor} was checked over salt more than {months} months ago: run "
+            f"`dripleg check --salt {sensor}` again."
+        )
+        return definition, "so", text
 
     def _fault(self, state: CoreState, channels: Sequence[str]) -> str:
         """Why a sensor cannot be believed, "" while it can."""

@@ -21,17 +21,19 @@ from daemon.moisture.conditions import Conditions, Held, Lapse, Offsets
 from daemon.moisture.contact import ContactState
 from daemon.moisture.fitting_beliefs import FittingParameters
 from daemon.moisture.fitting_state import FittingState
+from daemon.moisture.floats import FloatSeen
 from daemon.moisture.flow import AirState, PumpWatch
 from daemon.moisture.learning import Suspect
 from daemon.moisture.line import Ledger, WaterParameters, WaterState
 from daemon.moisture.model import State
+from daemon.moisture.observing import Gathered, Observed
 from daemon.moisture.outlook import Pattern, Typical
 from daemon.moisture.plant import Figure, Phase, Plant, Sample
 from daemon.moisture.power import Powered
 from daemon.moisture.week import Errors, Week
 from daemon.outlet_record import GaugeHeld, OutletRecord
 from daemon.reminders import Reminder, Reminders, Turn
-from daemon.state import ChannelRecord, CoreState, HourTotals, TrapRecord
+from daemon.state import ChannelRecord, CoreState, HourTotals, Sensed, TrapRecord
 from sensors.quality import ChannelState, QualityState
 
 FORMAT = b"DLC1"
@@ -53,11 +55,14 @@ _CLASSES = {
         Followed,
         Foresight,
         GaugeHeld,
+        FloatSeen,
+        Gathered,
         Held,
         HourTotals,
         Kept,
         Lapse,
         Ledger,
+        Observed,
         Offsets,
         OutletRecord,
         Parameters,
@@ -71,6 +76,7 @@ _CLASSES = {
         Reminders,
         Sample,
         Score,
+        Sensed,
         State,
         Suspect,
         TrapRecord,

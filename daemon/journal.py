@@ -77,7 +77,17 @@ class Service:
     by: str = ""
 
 
-Body = Drain | Acknowledge | Confirm | Service | Gauge | Blotter
+@dataclass(frozen=True, slots=True)
+class SaltCheck:
+    """A humidity sensor was read over a salt whose humidity is known; fractions."""
+
+    sensor: str
+    reads: float
+    true: float
+    by: str = ""
+
+
+Body = Drain | Acknowledge | Confirm | Service | Gauge | Blotter | SaltCheck
 _KINDS: dict[str, type[Body]] = {
     "drain": Drain,
     "acknowledge": Acknowledge,
@@ -85,6 +95,7 @@ _KINDS: dict[str, type[Body]] = {
     "service": Service,
     "gauge": Gauge,
     "blotter": Blotter,
+    "salt-check": SaltCheck,
 }
 
 

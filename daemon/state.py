@@ -11,8 +11,10 @@ from daemon.due import NO_DATE
 from daemon.followed import Followed
 from daemon.journal import Entry
 from daemon.moisture.ensemble import Array
+from daemon.moisture.floats import FloatSeen
 from daemon.moisture.learning import Suspect
 from daemon.moisture.model import State
+from daemon.moisture.observing import Observed
 from daemon.outlet_record import OutletRecord
 from daemon.views import Interval, Verdict
 from sensors.quality import QualityState
@@ -50,6 +52,15 @@ class HourTotals:
 
 
 @dataclass(frozen=True, slots=True)
+class Sensed:
+    """What the line's sensors said besides temperatures and pressures."""
+
+    observed: Mapping[str, Observed] = field(default_factory=dict)  # by station: dew points
+    floats: Mapping[str, FloatSeen] = field(default_factory=dict)  # by channel
+    salted: Mapping[str, int] = field(default_factory=dict)  # by sensor: its last salt check
+
+
+@dataclass(frozen=True, slots=True)
 class CoreState:
     """Everything that a tick hands to the next one."""
 
@@ -63,6 +74,7 @@ class CoreState:
     followed: Followed
     outlets: Mapping[str, OutletRecord] = field(default_factory=dict)
     quality: QualityState = field(default_factory=QualityState)
+    sensed: Sensed = field(default_factory=Sensed)
 
     @property
     def time_us(self) -> int:

@@ -42,7 +42,7 @@ from daemon.site.sections import (
 from daemon.site.shape import tell_circular_rules, tell_loops
 from daemon.site.stations import STATION_KEYS, Draft, open_stations, read_stations
 from daemon.site.table import Table
-from daemon.site.trap_sensors import tell_traps
+from daemon.site.trap_sensors import read_trap_sensors
 from daemon.site.types import Site
 from sensors.registry import DRIVERS, Driver
 
@@ -182,7 +182,7 @@ class _Reading:
         costs = read_costs(notes, raw.get("costs"))
         reminders = read_reminders(notes, raw.get("reminders"))
         drafts = self._drafts(stations)
-        tell_traps(notes, sensors, drafts, names)
+        read_trap_sensors(notes, sensors, drafts, names)
         outlets = read_outlets(notes, self._list("outlet"), names)
         cup = read_cup(notes, raw.get("cup", {}))
         members, seed = read_model(notes, raw.get("model", {}))

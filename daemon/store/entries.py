@@ -15,6 +15,7 @@ from daemon.journal import (
     Drain,
     Entry,
     Gauge,
+    SaltCheck,
     Service,
     body_from_json,
     body_to_json,
@@ -81,7 +82,7 @@ def _subject(body: Body) -> str:
     match body:
         case Acknowledge(alarm=subject) | Service(of=subject):
             return subject
-        case Gauge(outlet=subject) | Blotter(outlet=subject):
+        case Gauge(outlet=subject) | Blotter(outlet=subject) | SaltCheck(sensor=subject):
             return subject
         case _:
             return body.trap

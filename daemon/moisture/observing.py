@@ -1,0 +1,368 @@
+"""Measured dew points: what a transmitter or a vented cell says of the air, and learning from it.
+
+A vented cell is a humidity sensor in air that bleeds from the line to the atmosphere: the humidity
+ratio of that air is the line's, so that relative humidity, temperature and pressure in the cell
+give the pressure dew point at the line's pressure. Very dry air reads nearly nothing there: where
+the reading is within its uncertainty of zero, only "below X" can be said.
+
+These sensors speak all the time, and always with the same bias. They enter as hourly means, each
+with an error of its own that is so wide that a day of them counts as one good measurement: an
+hour's model error is much like the next hour's. The persistent bias is one of the beliefs, so that
+averaging for a week does not make a biased sensor right.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from daemon.moisture import air, line
+from daemon.moisture import beliefs as believed
+from daemon.moisture.beliefs import Beliefs, bias_of
+from daemon.moisture.conditions import Conditions, Held
+from daemon.moisture.density import mole_fraction_unchecked
+from daemon.moisture.description import Measured, Source, VentedCell
+from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, standard_normal
+from daemon.moisture.learning import (
+    FARTHEST,
+    GIVEN_BACK,
+    LEAST_K_KG,
+    LEAST_SD,
+    MOST_WIDENED,
+    SUSPECT_SIGMAS,
+    WIDENED_TO_SIGMAS,
+    Update,
+    update_contents,
+)
+from daemon.moisture.model import Model, State
+from daemon.moisture.plan import Plan
+
+# A day's mean is good to 0.3 % of humidity, or 0.3 K of dew point, beside the bias (estimate);
+# each of its 24 hours then counts for a twenty-fourth of that.
+HOUR_RH_SD, HOUR_DEW_POINT_SD_K = 0.003 * math.sqrt(24.0), 0.3 * math.sqrt(24.0)
+LEAST_SECONDS = 900.0  # of an hour that must have been measured
+DRIEST = 1e-8  # kg/kg, below every dryer's air and within the formulas' range
+
+
+@dataclass(frozen=True, slots=True)
+class MeasuredDewPoint:
+    """A pressure dew point (frost point below 0 degC) as an interval, K.
+
+    Without `low_k` and `middle_k` only an upper bound can be said: "below `high_k`".
+    """
+
+    low_k: float | None
+    middle_k: float | None
+    high_k: float
+
+
+@dataclass(frozen=True, slots=True)
+class Gathered:
+    """Sums over the hour of what was measured and believed at a station, times seconds."""
+
+    seconds: float
+    reading: float  # dew point in K, or relative humidity in the cell
+    cell_k: float
+    cell_pa: float
+    ratio: Array  # (members,): humidity ratio of the air that leaves
+    pressure_pa: Array  # (members,)
+
+
+@dataclass(frozen=True, slots=True)
+class Observed:
+    """What is carried of one station that has such a sensor."""
+
+    hour: Gathered | None = None
+    surprise: int = 0  # the sign of the last hour's, if it was too far off to be learned from
+
+
+# ---- what a sensor says by itself ----
+
+
+def cell_dew_point(
+    relative_humidity: float,
+    cell_k: float,
+    cell_pa: float,
+    line_pa: float,
+    humidity_give_or_take: float,
+    temperature_give_or_take_k: float,
+) -> MeasuredDewPoint:
+    """The pressure dew point of the line's air from a vented cell, both errors the same way.
+
+    Parameters
+    ----------
+    relative_humidity : fraction over liquid water, as read in the cell.
+    cell_k, cell_pa : temperature (K) and pressure (Pa absolute) in the cell.
+    line_pa : pressure of the line (Pa absolute) at which the dew point is wanted.
+    humidity_give_or_take, temperature_give_or_take_k : 95 % half-widths (k = 2).
+    """
+
+    def at(humidity: float, temperature_k: float) -> float:
+        cell = np.array([[temperature_k], [cell_pa], [min(max(humidity, 0.0), 1.0)]])
+        ratio = np.maximum(air.humidity_ratio_unchecked(*cell), DRIEST)
+        return float(air.dew_point_unchecked(ratio, np.array([line_pa]))[0])
+
+    width = humidity_give_or_take
+    high_k = at(relative_humidity + width, cell_k + temperature_give_or_take_k)
+    if relative_humidity <= width:
+        return MeasuredDewPoint(None, None, high_k)
+    low_k = at(relative_humidity - width, cell_k - temperature_give_or_take_k)
+    return MeasuredDewPoint(low_k, at(relative_humidity, cell_k), high_k)
+
+
+def relative_humidity_in_cell(ratio: Array, cell_k: Array, cell_pa: Array) -> Array:
+    """What a perfect sensor would read of air with this humidity ratio, a fraction, at most 1."""
+    full = mole_fraction_unchecked(
+        air.humidity_ratio_unchecked(cell_k, cell_pa, np.ones_like(cell_k))
+    )
+    share: Array = np.minimum(mole_fraction_unchecked(ratio) / full, 1.0)
+    return share
+
+
+def stations(plan: Plan) -> list[int]:
+    """Those whose air's dew point is measured."""
+    return [i for i, station in enumerate(plan.stations) if station.measured_dew_point is not None]
+
+
+def measured(
+    plan: Plan, beliefs: Beliefs, held: Mapping[str, Held], now: Conditions, station: int
+) -> MeasuredDewPoint | None:
+    """What the sensor at a station says now, with what is known of its bias; None when silent.
+
+    The pressure is the middle of what is believed of the line there.
+    """
+    source = plan.stations[station].measured_dew_point
+    if source is None or not all(channel in held for channel in channels_of(source)):
+        return None
+    if isinstance(source, Measured):
+        bias_k, width_k = _bias(beliefs, source)
+        middle_k = held[source.channel].value - bias_k
+        return MeasuredDewPoint(middle_k - width_k, middle_k, middle_k + width_k)
+    bias, width = _bias(beliefs, source.relative_humidity)
+    bias_k, width_k = _bias(beliefs, source.temperature)
+    return cell_dew_point(
+        held[source.relative_humidity.channel].value - bias,
+        held[source.temperature.channel].value - bias_k,
+        held[source.pressure.channel].value,
+        float(np.median(now.pressure_pa[station])),
+        width,
+        width_k,
+    )
+
+
+def channels_of(source: Measured | VentedCell) -> tuple[str, ...]:
+    """The channels that a measured dew point is made of."""
+    if isinstance(source, Measured):
+        return (source.channel,)
+    return (source.relative_humidity.channel, source.temperature.channel, source.pressure.channel)
+
+
+def _bias(beliefs: Beliefs, source: Measured) -> tuple[float, float]:
+    """The middle of what is believed of a channel's bias, and its 95 % half-width."""
+    sd = source.give_or_take * HALF_WIDTH_TO_SD
+    values = beliefs[bias_of(source.channel)]
+    return float(values.mean()) * sd, 2.0 * float(values.std()) * sd
+
+
+def contradicts(plan: Plan, state: State, station: int) -> MeasuredDewPoint | None:
+    """A dew point that is above any temperature the line can have there: water would drop out.
+
+    None while there is no such contradiction, and while the sensor is silent.
+    """
+    source = plan.stations[station].measured_dew_point
+    if source is None or not _fresh(plan, state, source):
+        return None
+    hottest_k = float(state.conditions.temperature_k[station].max())
+    if isinstance(source, VentedCell):
+        reading = state.held[source.relative_humidity.channel].value
+        if reading <= source.relative_humidity.give_or_take:
+            return None
+    elif state.held[source.channel].value <= hottest_k:
+        return None
+    said = measured(plan, state.beliefs, state.held, state.conditions, station)
+    if said is None or said.low_k is None or said.low_k <= hottest_k:
+        return None
+    return said
+
+
+def _fresh(plan: Plan, state: State, source: Measured | VentedCell) -> bool:
+    period_us = round(plan.line.period_s * 1e6)
+    found = [state.held.get(channel, Held()) for channel in channels_of(source)]
+    return not any(one.stale(state.time_us, period_us) for one in found)
+
+
+# ---- the hour's mean ----
+
+
+def gather(
+    plan: Plan, observed: Mapping[str, Observed], state: State, dt_s: float
+) -> Mapping[str, Observed]:
+    """Take in one step: what the sensors say now, and what is believed there."""
+    which = stations(plan)
+    if not which or dt_s <= 0.0:
+        return observed
+    after = dict(observed)
+    for i in which:
+        source = plan.stations[i].measured_dew_point
+        if source is None or not _fresh(plan, state, source) or contradicts(plan, state, i):
+            continue
+        name = plan.stations[i].id
+        before = after.get(name, Observed())
+        after[name] = replace(before, hour=_added(before.hour, state, i, source, dt_s))
+    return after
+
+
+def _added(
+    hour: Gathered | None, state: State, i: int, source: Measured | VentedCell, dt_s: float
+) -> Gathered:
+    held = state.held
+    if isinstance(source, Measured):
+        reading, cell_k, cell_pa = held[source.channel].value, 0.0, 0.0
+    else:
+        reading = held[source.relative_humidity.channel].value
+        cell_k = held[source.temperature.channel].value
+        cell_pa = held[source.pressure.channel].value
+    ratio = state.water.leaving_ratio[i] * dt_s
+    pressure = state.conditions.pressure_pa[i] * dt_s
+    if hour is None:
+        return Gathered(dt_s, reading * dt_s, cell_k * dt_s, cell_pa * dt_s, ratio, pressure)
+    return Gathered(
+        hour.seconds + dt_s,
+        hour.reading + reading * dt_s,
+        hour.cell_k + cell_k * dt_s,
+        hour.cell_pa + cell_pa * dt_s,
+        hour.ratio + ratio,
+        hour.pressure_pa + pressure,
+    )
+
+
+# ---- learning from it ----
+
+
+@dataclass(frozen=True, slots=True)
+class _Hour:
+    """An hour's mean beside what each member expected of it."""
+
+    expected: Array  # (members,)
+    measured: float
+    sd: float
+    above_only: bool  # only members that expected more are wrong: the reading says "below"
+
+
+def learn(
+    model: Model, state: State, observed: Mapping[str, Observed]
+) -> tuple[State, Mapping[str, Observed]]:
+    """At a full hour: learn from the hour's means, and begin the next."""
+    after: dict[str, Observed] = {}
+    for name, one in observed.items():
+        station = model.plan.index[name]
+        source = model.plan.stations[station].measured_dew_point
+        surprise = one.surprise
+        if source is not None and one.hour is not None and one.hour.seconds >= LEAST_SECONDS:
+            hour = _mean(state.beliefs, source, one.hour)
+            state, surprise = _learn_hour(model, state, station, hour, one.surprise)
+        after[name] = Observed(None, surprise)
+    return state, after
+
+
+def _mean(beliefs: Beliefs, source: Measured | VentedCell, hour: Gathered) -> _Hour:
+    """What the sensor said on average, and what it would have said of each member's air."""
+    reading = hour.reading / hour.seconds
+    ratio = np.maximum(hour.ratio / hour.seconds, DRIEST)
+    if isinstance(source, Measured):
+        dew_point_k = air.dew_point_unchecked(ratio, hour.pressure_pa / hour.seconds)
+        expected = dew_point_k + _offset(beliefs, source)
+        return _Hour(expected, reading, HOUR_DEW_POINT_SD_K, above_only=False)
+    cell_k = hour.cell_k / hour.seconds - _offset(beliefs, source.temperature)
+    cell_pa = np.full_like(cell_k, hour.cell_pa / hour.seconds)
+    true = relative_humidity_in_cell(ratio, cell_k, cell_pa)
+    expected = true + _offset(beliefs, source.relative_humidity)
+    _, width = _bias(beliefs, source.relative_humidity)
+    return _Hour(expected, reading, HOUR_RH_SD, above_only=reading <= width)
+
+
+def _offset(beliefs: Beliefs, source: Measured) -> Array:
+    """How much too high each member takes a channel to read."""
+    return beliefs[bias_of(source.channel)] * (source.give_or_take * HALF_WIDTH_TO_SD)
+
+
+def _learn_hour(
+    model: Model, state: State, station: int, hour: _Hour, surprise: int
+) -> tuple[State, int]:
+    """The state after one hour's mean; and the sign of a surprise that was not learned from."""
+    off = hour.measured - float(hour.expected.mean())
+    variance = float(hour.expected.var(ddof=1))
+    if hour.above_only and off >= 0.0:
+        return state, 0
+    factor = 1.0
+    if abs(off) > SUSPECT_SIGMAS * math.sqrt(variance + hour.sd**2):
+        sign = 1 if off > 0.0 else -1
+        if surprise != sign or variance <= 0.0:
+            return state, sign
+        needed = (off / WIDENED_TO_SIGMAS) ** 2 - hour.sd**2
+        factor = min(max(math.sqrt(max(needed, 0.0) / variance), 1.0), MOST_WIDENED)
+    name = f"dew point at {model.plan.stations[station].id}"
+    members = hour.expected.size
+    noise = standard_normal(model.plan.line.seed, name, members, state.time_us)
+    middle = float(hour.expected.mean())
+    expected = middle + factor * (hour.expected - middle)
+    miss = hour.measured + hour.sd * noise - expected
+    if hour.above_only:
+        miss = np.minimum(miss, 0.0)
+    update = Update(expected, miss, factor * factor * variance + hour.sd**2)
+    return take(model, state, local_names(model.plan, station), update, factor), 0
+
+
+def take(
+    model: Model, state: State, names: list[str], update: Update, factor: float = 1.0
+) -> State:
+    """The state after an update of beliefs and of what every trap holds."""
+    beliefs = dict(state.beliefs)
+    for name in names:
+        beliefs[name] = _updated(beliefs[name], update, factor)
+    contents = model.contents(state)
+    water, ledger = state.water, state.ledger
+    for trap in model.plan.traps:
+        most = state.parameters.water.capacity_kg[trap]
+        held = update_contents(contents[trap], update, LEAST_K_KG, most)
+        water, ledger = line.hold(water, ledger, trap, held)
+    state = replace(state, water=water, ledger=ledger, round_start=water.trap.copy())
+    return model.believing(state, beliefs)
+
+
+def _updated(before: Array, update: Update, factor: float) -> Array:
+    """A belief after an update, part of its lost spread given back, never below a floor."""
+    wide: Array = before.mean() + factor * (before - before.mean())
+    moved = wide + update.shift(wide)
+    prior_sd, sd = float(wide.std(ddof=1)), float(moved.std(ddof=1))
+    if sd <= 0.0:
+        return before
+    wanted = max(sd + GIVEN_BACK * max(prior_sd - sd, 0.0), LEAST_SD)
+    middle = float(moved.mean())
+    kept: Array = np.clip(middle + (moved - middle) * (wanted / sd), -FARTHEST, FARTHEST)
+    return kept
+
+
+def local_names(plan: Plan, station: int) -> list[str]:
+    """The beliefs that a measured dew point at this station can say something about."""
+    found: dict[str, None] = {}
+    at = station
+    while at >= 0:
+        one = plan.stations[at]
+        own = believed.own_names(one)
+        found |= dict.fromkeys(n for n in own if not n.startswith(("round of ", "capacity of ")))
+        found |= dict.fromkeys(_biases(one.temperature, one.pressure, one.relative_humidity))
+        at = plan.parent[at]
+    source = plan.stations[station].measured_dew_point
+    if source is not None:
+        found |= dict.fromkeys(bias_of(channel) for channel in channels_of(source))
+    return [*found, believed.HUMIDITY]
+
+
+def _biases(*sources: Source | None) -> Iterator[str]:
+    for source in sources:
+        if isinstance(source, Measured):
+            yield bias_of(source.channel)
