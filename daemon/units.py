@@ -30,6 +30,7 @@ __all__ = [
     "show_difference",
     "show_duration",
     "show_flow",
+    "show_mass",
     "show_percent",
     "show_pressure",
     "show_pressure_difference",
@@ -252,6 +253,11 @@ def show_volume(volume_m3: float, people: People) -> str:
 def show_flow(flow_m3_s: float, people: People) -> str:
     """Three figures: "150 L/min" or "5.3 cfm"."""
     return _figures(flow_m3_s, "cfm" if people == "us" else "L/min", "flow")
+
+
+def show_mass(mass_kg: float, people: People) -> str:
+    """Three figures: "1.5 kg" or "3.31 lb"."""
+    return _figures(mass_kg, "lb" if people == "us" else "kg", "mass")
 
 
 def show_duration(duration_s: float) -> str:

@@ -15,6 +15,7 @@ from daemon.moisture.description import (
     Station,
 )
 from daemon.site import defaults
+from daemon.site.fittings import with_rating
 from daemon.site.names import Names
 from daemon.site.notes import Notes
 from daemon.site.shape import first_receiver_below, in_order, upstream
@@ -187,6 +188,7 @@ class Assumptions:
     # --- the other stations ---
 
     def _fill_station(self, draft: Draft, by_id: Mapping[str, Draft]) -> None:
+        draft.fittings = with_rating(draft.table, draft.fittings, self.compressor)
         if draft.temperature is None:
             draft.temperature = self._temperature(draft)
         if draft.pressure is None and draft.set_pressure is not None:
@@ -198,6 +200,9 @@ class Assumptions:
         assert draft.kind is not None
         usual = defaults.KINDS[draft.kind].temperature
         intake = next((each.id for each in self.drafts if each.is_intake), draft.after or "")
+        approach = draft.fittings.approach
+        if approach is not None:
+            return Like(intake, approach.value, approach.give_or_take)
         like = (draft.after or "") if usual.like == "before" else intake
         if not draft.table.said("temperature"):
             draft.table.default(
@@ -261,4 +266,8 @@ def station_of(draft: Draft) -> Station:
         relative_humidity=draft.relative_humidity,
         volume=draft.volume,
         trap=draft.trap,
+        dryer=draft.fittings.dryer,
+        rated_flow=draft.fittings.rated_flow,
+        ice=draft.fittings.ice,
+        around=draft.fittings.around,
     )

@@ -8,6 +8,7 @@ import sensors.drivers  # noqa: F401  # fills DRIVERS
 from daemon.moisture.description import Fixed, Share
 from daemon.site import defaults
 from daemon.site.defaults import KindDefault, TemperatureDefault
+from daemon.site.fitting_words import default_rows
 from daemon.site.notes import written
 from daemon.site.types import REMINDER_TIMES, Api, Costs, Cup, Limits
 from daemon.units import (
@@ -84,6 +85,7 @@ def _general() -> Iterator[Row]:
     yield "`[[outlet]]`", "`share`", "an equal part of what the others leave", ""
     yield "", "`surface_margin`", margin, "as in ISO 8502-4"
     yield "", "", "one outlet `line-end` at the line's end", "where none is declared"
+    yield from default_rows()
     yield "`[model]`", "`members`", "128", "enough for a 5-95 % interval on a Pi"
     yield "", "`seed`", "1", "any number will do"
     yield "`[api]`", "`host`", f"`{api.host}`", "this machine only"

@@ -48,6 +48,11 @@ GIVE_OR_TAKE_SHARES: Mapping[str, float] = {  # of the value
     "capacity": 0.10,
     "free_air_delivery": 0.10,
     "set": 0.05,
+    "opens_at": 0.30,
+    "passes": 0.30,
+    "rated_flow": 0.10,
+    "mass": 0.05,
+    "ice": 0.10,
 }
 SAID_BECAUSE = "what a value that is only said is worth (practice)"
 LIKE_PRESSURE_PA = 5_000.0  # of a pressure that is said to be like another
@@ -125,11 +130,44 @@ KINDS: Mapping[StationKind, KindDefault] = {
         TrapDefault(True, 120e-6, 0.0, 0.5, Share(0.97, 0.03), "within its rated flow"),
     ),
     "regulator": KindDefault(SAME_AIR, "set", None),
+    "refrigerated": KindDefault(
+        TemperatureDefault("before", 0.0, 3.0, "its outlet is warmed up again by its inlet"),
+        "before",
+        TrapDefault(True, 100e-6, 0.0, 0.5, Share(0.9, 0.08), "a dryer's own separator"),
+    ),
+    "desiccant": KindDefault(SAME_AIR, "before", None),
 }
 TAKE_OFF_BOTTOM = Share(0.1, 0.1)
 TAKE_OFF_BOTTOM_BECAUSE = "take-off from the bottom of the main"
 COOLER_WITH_SEPARATOR = Share(0.85, 0.1)
 COOLER_WITH_SEPARATOR_BECAUSE = "a cooler with a separator"
+
+
+@dataclass(frozen=True, slots=True)
+class Usual:
+    """A figure of a dryer, and what it may be said to be."""
+
+    value: Fixed
+    limits: tuple[float, float]
+    because: str
+
+
+REFRIGERATED = Usual(
+    Fixed(276.15, 2.0), (274.15, 288.15), "the usual pressure dew point of a refrigerated dryer"
+)
+TWIN = Usual(Fixed(233.15, 10.0), (183.15, 283.15), "the usual one of heatless twin beds")
+CARTRIDGE = Usual(
+    Fixed(243.15, 10.0), (183.15, 283.15), "a cartridge that has charge left (practice)"
+)
+RATED_TO_DELIVERED = Fixed(1.5, 0.45)  # a dryer's rated flow to what the compressor delivers
+UNRATED = Fixed(0.01, 0.003)  # m3/s, until the compressor is known
+RATED_BECAUSE = "makers' ratings differ by that much (practice)"
+PURGE = Share(0.175, 0.05)
+PURGE_BECAUSE = "heatless beds blow off 15-20 % of the rated flow (practice)"
+SILICA = Share(0.12, 0.05)
+SILICA_BECAUSE = "of its mass, silica gel (practice)"
+APPROACH, ICE_APPROACH, ICE_K = Fixed(5.0, 3.0), Fixed(3.0, 2.0), 273.15
+APPROACH_BECAUSE = "how near air comes to what cools it (practice)"
 
 # Profiles of work that the painter's page will know. Breathing is refused, with a reason.
 WORKS = ("solvent-borne", "waterborne", "two-component", "powder", "blasting")

@@ -8,6 +8,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from daemon.moisture.description import Measured, Station
+from daemon.site.fitting_remarks import fitting_remarks, is_dried
 from daemon.site.names import Names
 from daemon.site.types import Site
 from daemon.units import show_difference, show_flow, show_volume
@@ -19,6 +20,7 @@ def remarks(site: Site, names: Names, *, loaded_contact: bool) -> tuple[str, ...
         *_sensors(site),
         *_compressor(site, loaded_contact),
         *_stations(site),
+        *fitting_remarks(site),
         *_outlets(site),
         *_hours(site),
         *_unused(names),
@@ -110,7 +112,8 @@ def _outlets(site: Site) -> Iterator[str]:
     by_id = {station.id: station for station in site.line.stations}
     for outlet in site.line.outlets:
         place = by_id[outlet.after]
-        if place.kind != "regulator" and not _behind_regulator(place, by_id):
+        regulated = place.kind == "regulator" or _behind_regulator(place, by_id)
+        if not regulated and not is_dried(place, by_id):
             yield (
                 f"Neither a dryer nor a regulator stands before {outlet.id}: its air is saturated, "
                 f"so its margin stays near {show_difference(0.0, site.units)} for good."

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import cast
 
 from daemon.moisture.description import Fixed, Share, Source, StationKind, Trap
-from daemon.site import defaults
+from daemon.site import defaults, fittings
+from daemon.site.fittings import FittingDraft, read_fittings
 from daemon.site.ids import label, read_id
 from daemon.site.names import Names
 from daemon.site.notes import Explains, Notes
@@ -28,15 +29,16 @@ from daemon.units import parse, show_volume
 
 STATION_KEYS = (
     "id", "kind", "after", "temperature", "pressure", "relative_humidity", "volume", "set",
-    "take_off", "separator", "trap",
+    "take_off", "separator", "trap", *fittings.KEYS,
 )  # fmt: skip
 KINDS = tuple(defaults.KINDS)
-_ONLY_AT: dict[str, StationKind] = {
-    "relative_humidity": "intake",
-    "volume": "receiver",
-    "set": "regulator",
-    "take_off": "pipe",
-    "separator": "cooler",
+_ONLY_AT: dict[str, tuple[StationKind, ...]] = {
+    "relative_humidity": ("intake",),
+    "volume": ("receiver",),
+    "set": ("regulator",),
+    "take_off": ("pipe",),
+    "separator": ("cooler",),
+    **fittings.BELONGS,
 }
 # What people call things, and what to write.
 _OTHER_WORDS = {
@@ -48,9 +50,9 @@ _OTHER_WORDS = {
     "dripleg": "pipe",
     "hose": "pipe",
     "filter": "coalescer or separator: say which of the two it is",
-    "dryer": "nothing yet: dryers are not known as yet, so leave the station out",
-    "refrigerated": "nothing yet: dryers are not known as yet, so leave the station out",
-    "desiccant": "nothing yet: dryers are not known as yet, so leave the station out",
+    "dryer": "refrigerated or desiccant: say which of the two it is",
+    "cartridge": "desiccant, with its mass",
+    "ice-bath": "cooler, with its ice",
     "compressor": "a [compressor] table: it is no station",
 }
 
@@ -69,6 +71,7 @@ class Draft:
     volume: Fixed | None = None
     trap: Trap | None = None
     set_pressure: Fixed | None = None
+    fittings: FittingDraft = field(default_factory=FittingDraft)
 
     @property
     def is_intake(self) -> bool:
@@ -120,6 +123,8 @@ def _draft(table: Table, names: Names) -> Draft:
     draft.after = _after(table, draft, names)
     _tell_misplaced(table, kind)
     _read_sources(table, draft, names)
+    draft.fittings = read_fittings(table, kind, names)
+    draft.temperature = draft.fittings.temperature or draft.temperature
     volume = read_fixed(table, "volume", _volume, OF_VOLUME, defaults.SAID_BECAUSE)
     if kind == "receiver":
         draft.volume = _volume_or_default(table, volume)
@@ -159,8 +164,9 @@ def _after(table: Table, draft: Draft, names: Names) -> str | None:
 
 
 def _tell_misplaced(table: Table, kind: StationKind | None) -> None:
-    for key, place in _ONLY_AT.items():
-        if kind is not None and key in table.values and kind != place and table.ok(key):
+    for key, places in _ONLY_AT.items():
+        if kind is not None and key in table.values and kind not in places and table.ok(key):
+            place = " or ".join(places)
             table.wrong(key, f"belongs to a station of kind {place}, not {kind}; take it out")
             del table.values[key]
 

@@ -14,7 +14,7 @@ from daemon.moisture.description import (
     StationKind,
     Trap,
 )
-from daemon.site import defaults
+from daemon.site import defaults, self_drains
 from daemon.site.defaults import TrapDefault
 from daemon.site.table import Table
 from daemon.site.values import choice
@@ -23,6 +23,7 @@ from daemon.units import parse, show_percent, show_volume
 
 TRAP_KEYS = (
     "drain", "drain_every", "capacity", "drain_at", "separation", "heel", "holds_at_start",
+    *self_drains.KEYS,
 )  # fmt: skip
 DRAINS: tuple[DrainKind, ...] = ("petcock", "float", "timer", "level", "pressure-off", "none")
 CAPACITY_LIMIT_M3 = 2.0
@@ -92,6 +93,7 @@ def _trap(
         holds_at_start_kg=held["holds_at_start"] * WATER_KG_PER_M3,
         drain_every=every,
         every_s=every_s,
+        emptying=self_drains.read_emptying(inner, drain, capacity_m3.value, drain_at_m3),
     )
 
 
@@ -103,11 +105,6 @@ def _drain(inner: Table) -> DrainKind:
         '"petcock"',
         "what a drain is, unless said",
     )
-    if drain not in ("petcock", "none"):
-        inner.notes.no_effect(
-            f'drain = "{drain}": a drain that empties itself is taken for a petcock as yet, '
-            "emptied when somebody says so."
-        )
     return cast(DrainKind, drain)
 
 

@@ -13,6 +13,7 @@ from daemon.units import (
     parse,
     show_difference,
     show_flow,
+    show_mass,
     show_percent,
     show_pressure_difference,
     show_volume,
@@ -33,7 +34,8 @@ OF_TEMPERATURE = Width("temperature difference", show_difference, False, 60.0)
 OF_PRESSURE = Width("pressure difference", show_pressure_difference, True, 16e5)
 OF_FRACTION = Width("fraction", lambda value, _: show_percent(value), False, 1.0)
 OF_VOLUME = Width("volume", show_volume, True, 100.0)
-OF_FLOW = Width("flow", show_flow, True, 100.0 / 60)
+OF_FLOW = Width("flow", show_flow, True, 1000.0 / 60)
+OF_MASS = Width("mass", show_mass, True, 1000.0)
 
 
 def give_or_take(
@@ -61,7 +63,7 @@ def half_width(raw: object, width: Width, value: float | None) -> float:
         half = parse(raw, width.kind)
     if half < 0:
         raise ValueError("a give or take is a half-width: it cannot be negative")
-    if half > width.widest or (width.kind in ("volume", "flow") and value and half > value):
+    if half > width.widest or (width.kind in ("volume", "flow", "mass") and value and half > value):
         raise ValueError("is wider than anything that could be; write how far off it may be")
     return half
 

@@ -21,7 +21,7 @@ def source_words(site: Site, key: str, source: Source, *, barometer: bool = Fals
     match source:
         case Measured():
             gauge = " (gauge)" if source.gauge else ""
-            return f"sensor {source.channel}{gauge}{width}"
+            return f"sensor {source.channel}{gauge}{_plus(site, key, source.plus)}{width}"
         case Fixed():
             return f"{_value(site, key, source, barometer)}{width}"
         case Like():

@@ -190,7 +190,7 @@ MISTAKES = [
     ('kind = "receiver"', 'kind = "tank"', '[station "tank"] kind', "write receiver"),
     ('kind = "receiver"', 'type = "receiver"', '[station "tank"] type', 'did you mean "kind"?'),
     ('kind = "pipe"', 'kind = "filter"', '[station "riser"] kind', "coalescer or separator"),
-    ('kind = "pipe"', 'kind = "dryer"', '[station "riser"] kind', "dryers are not known as yet"),
+    ('kind = "pipe"', 'kind = "dryer"', '[station "riser"] kind', "say which of the two it is"),
     ('= "riser"\nset', '= "rizer"\nset', '[station "regulator"] after', 'mean "riser"?'),
     ('after = "riser"\nset', "set", '[station "regulator"] after', "hangs nowhere"),
     ('after = "inlet"', 'after = "riser"', '[station "tank"] after', "tank -> riser -> tank"),
