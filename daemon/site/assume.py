@@ -270,4 +270,5 @@ def station_of(draft: Draft) -> Station:
         rated_flow=draft.fittings.rated_flow,
         ice=draft.fittings.ice,
         around=draft.fittings.around,
+        measured_dew_point=draft.measured_dew_point,
     )

@@ -55,6 +55,7 @@ GIVE_OR_TAKE_SHARES: Mapping[str, float] = {  # of the value
     "ice": 0.10,
 }
 SAID_BECAUSE = "what a value that is only said is worth (practice)"
+CLOSES_AT_GIVE_OR_TAKE = 0.10  # of a float switch's level, filled with a jug (practice)
 LIKE_PRESSURE_PA = 5_000.0  # of a pressure that is said to be like another
 
 # How far a temperature or a pressure may be from plausible before it is taken for a mistake.

@@ -6,10 +6,19 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 from typing import cast
 
-from daemon.moisture.description import Fixed, Share, Source, StationKind, Trap
-from daemon.site import defaults, fittings
+from daemon.moisture.description import (
+    Fixed,
+    Measured,
+    Share,
+    Source,
+    StationKind,
+    Trap,
+    VentedCell,
+)
+from daemon.site import defaults, fittings, measured_points
 from daemon.site.fittings import FittingDraft, read_fittings
 from daemon.site.ids import label, read_id
+from daemon.site.measured_points import read_measured_dew_point
 from daemon.site.names import Names
 from daemon.site.notes import Explains, Notes
 from daemon.site.sources import (
@@ -29,7 +38,7 @@ from daemon.units import parse, show_volume
 
 STATION_KEYS = (
     "id", "kind", "after", "temperature", "pressure", "relative_humidity", "volume", "set",
-    "take_off", "separator", "trap", *fittings.KEYS,
+    "take_off", "separator", "trap", measured_points.KEY, *fittings.KEYS,
 )  # fmt: skip
 KINDS = tuple(defaults.KINDS)
 _ONLY_AT: dict[str, tuple[StationKind, ...]] = {
@@ -71,6 +80,7 @@ class Draft:
     volume: Fixed | None = None
     trap: Trap | None = None
     set_pressure: Fixed | None = None
+    measured_dew_point: Measured | VentedCell | None = None
     fittings: FittingDraft = field(default_factory=FittingDraft)
 
     @property
@@ -123,6 +133,7 @@ def _draft(table: Table, names: Names) -> Draft:
     draft.after = _after(table, draft, names)
     _tell_misplaced(table, kind)
     _read_sources(table, draft, names)
+    draft.measured_dew_point = read_measured_dew_point(table, names)
     draft.fittings = read_fittings(table, kind, names)
     draft.temperature = draft.fittings.temperature or draft.temperature
     volume = read_fixed(table, "volume", _volume, OF_VOLUME, defaults.SAID_BECAUSE)

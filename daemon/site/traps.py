@@ -23,6 +23,7 @@ from daemon.units import parse, show_percent, show_volume
 
 TRAP_KEYS = (
     "drain", "drain_every", "capacity", "drain_at", "separation", "heel", "holds_at_start",
+    "float_switch",
     *self_drains.KEYS,
 )  # fmt: skip
 DRAINS: tuple[DrainKind, ...] = ("petcock", "float", "timer", "level", "pressure-off", "none")
