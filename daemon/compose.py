@@ -63,7 +63,8 @@ def running(setting: Setting, stop: threading.Event) -> Iterator[Parts]:
         shell.recover()
         link = None
         if site.mqtt is not None:
-            link = MqttLink(site, store, shell.record, setting.clock)
+            inbox = setting.hardware.inbox()
+            link = MqttLink(site, store, shell.record, setting.clock, inbox=inbox)
             shell.link = link
             link.start()
             parts.callback(link.stop)

@@ -1,4 +1,4 @@
-"""The link to the MQTT broker: sends the outbox and the states, takes in drains.
+"""The link to the MQTT broker: sends the outbox and the states, takes in drains and readings.
 
 One thread connects, sends what the outbox holds, and tries again when the broker is gone. A row
 leaves the outbox when the broker has acknowledged it, and not before: an MQTT client's own queue is
@@ -28,6 +28,7 @@ from daemon.payloads import read_drain, refusal_payload
 from daemon.site.types import Site
 from daemon.store.store import Store
 from daemon.views import Recorded
+from sensors.inbox import Inbox
 
 log = logging.getLogger("dripleg.mqtt")
 
@@ -52,12 +53,19 @@ class Timing:
 class MqttLink:
     """Keeps the broker told. Every method may be called from any thread.
 
-    `record` takes in a drain that arrived, or raises a DriplegError that says what is wrong.
+    `record` takes in a drain that arrived, or raises a DriplegError that says what is wrong. An
+    `inbox` is filled with what other devices publish on the topics that its readers wait for.
     BrokerError when the site's `[mqtt]` table cannot be used at all.
     """
 
     def __init__(
-        self, site: Site, store: Store, record: Record, clock: Clock, timing: Timing | None = None
+        self,
+        site: Site,
+        store: Store,
+        record: Record,
+        clock: Clock,
+        timing: Timing | None = None,
+        inbox: Inbox | None = None,
     ) -> None:
         if site.mqtt is None:
             raise BrokerError(f"{site.path}: no broker is named: add an [mqtt] table with its host")
@@ -72,6 +80,8 @@ class MqttLink:
         self._timing = timing or Timing()
         self._outbox = OutboxSender(store, self._timing.window)
         self._states = StateSender()
+        self._inbox = inbox
+        self._heard_on: set[str] = set()  # topics of the inbox, on this connection
         self._stop = threading.Event()
         self._look = threading.Event()
         self._waker, self._woken = socket.socketpair()
@@ -156,7 +166,7 @@ class MqttLink:
             self._tls,
             self._timing.keepalive_s,
             will=service_message(self._topics, "gone", connected_us, None),
-            take=lambda topic, payload, retained: self._take(session, payload, retained),
+            take=lambda topic, payload, retained: self._take(session, topic, payload, retained),
         )
         try:
             session.open()
@@ -176,6 +186,7 @@ class MqttLink:
         self._states.begin()
         session.send(service_message(self._topics, "running", connected_us, connected_us))
         session.subscribe(self._topics.drains)
+        self._heard_on.clear()
         self._look.set()
 
     def _connected(self, session: Session) -> None:
@@ -190,6 +201,7 @@ class MqttLink:
     def _serve(self, session: Session) -> None:
         look_at_s = 0.0
         while not session.ended and not self._stop.is_set():
+            self._listen(session)
             self._states.send(session)
             now_s = self._network.monotonic()
             if self._look.is_set() or now_s >= look_at_s:
@@ -201,6 +213,16 @@ class MqttLink:
                 self._connected(session)
             if self._settle(session):
                 self._look.set()  # the window has room again
+
+    def _listen(self, session: Session) -> None:
+        """Ask for what other devices publish that a sensor of this site waits for."""
+        for topic in self._inbox.topics() if self._inbox is not None else ():
+            if session.listening and topic not in self._heard_on:
+                self._heard_on.add(topic)
+                session.subscribe(topic)
+        while session.refused_topics:
+            topic = session.refused_topics.pop()
+            log.warning("the broker does not let this user listen on %s", topic)
 
     def _settle(self, session: Session) -> bool:
         """Take what was acknowledged off the books; whether anything was."""
@@ -253,7 +275,14 @@ class MqttLink:
 
     # --- what arrives
 
-    def _take(self, session: Session, payload: bytes, retained: bool) -> None:
+    def _take(self, session: Session, topic: str, payload: bytes, retained: bool) -> None:
+        """What arrived: something that a sensor waits for, or a drain."""
+        if topic in self._heard_on and self._inbox is not None:
+            self._inbox.post(topic, payload, self._clock.now_us(), retained)
+        if topic == self._topics.drains:
+            self._take_drain(session, payload, retained)
+
+    def _take_drain(self, session: Session, payload: bytes, retained: bool) -> None:
         """Record a drain that arrived, or answer why not."""
         if retained:
             log.warning(

@@ -62,13 +62,15 @@ class Session:
         client_id: str,
         tls: ssl.SSLContext | None,
         keepalive_s: int,
-        will: Message,
+        will: Message | None,
         take: Callable[[str, bytes, bool], None],
     ) -> None:
         """`take(topic, payload, retained)` is given what arrives; it must not raise."""
         self.accepted = False
         self.ended = ""
-        self.listening: Literal["", "granted", "refused"] = ""  # the answer to `subscribe`
+        self.listening: Literal["", "granted", "refused"] = ""  # what the first `subscribe` got
+        self.refused_topics: list[str] = []  # of the further ones, for the caller to take out
+        self._asked: dict[int, str] = {}  # subscriptions that the broker has not answered
         self._acknowledged: list[int] = []
         self._take = take
         self._mqtt = mqtt
@@ -84,7 +86,8 @@ class Session:
         client.max_inflight_messages_set(0)  # no limit of paho's: the caller keeps its own
         if tls is not None:
             client.tls_set_context(tls)
-        client.will_set(will.topic, will.payload, will.qos, will.retain)
+        if will is not None:
+            client.will_set(will.topic, will.payload, will.qos, will.retain)
         client.on_connect = self._on_connect
         client.on_disconnect = self._on_disconnect
         client.on_publish = self._on_publish
@@ -102,7 +105,9 @@ class Session:
 
     def subscribe(self, topic: str) -> None:
         """Ask for what is published under this topic, at least once."""
-        self._client.subscribe(topic, AT_LEAST_ONCE)
+        _, number = self._client.subscribe(topic, AT_LEAST_ONCE)
+        if number is not None:
+            self._asked[number] = topic
 
     def send(self, message: Message) -> int:
         """Send a message; the number that `acknowledged` will name it by."""
@@ -168,7 +173,11 @@ class Session:
         self, client: Client, data: Any, number: int, reasons: Any, properties: Any
     ) -> None:
         refused = any(reason.is_failure for reason in reasons)
-        self.listening = "refused" if refused else "granted"
+        topic = self._asked.pop(number, "")
+        if not self.listening:
+            self.listening = "refused" if refused else "granted"
+        elif refused:
+            self.refused_topics.append(topic)
 
     def _on_message(self, client: Client, data: Any, message: MQTTMessage) -> None:
         self._take(message.topic, bytes(message.payload), message.retain)

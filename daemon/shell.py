@@ -15,8 +15,10 @@ from typing import Protocol
 from daemon import accept
 from daemon.advance import Core, Estimate
 from daemon.alarms import Alarm, AlarmRecord, Transition, correction, shown
+from daemon.buttons import Buttons
 from daemon.clock import HOUR_US, MINUTE_US, Clock, format_rfc3339
-from daemon.errors import StoreError
+from daemon.errors import JournalError, StoreError
+from daemon.foresight import Score
 from daemon.journal import Body, Drain, Entry
 from daemon.mqtt import MqttLink
 from daemon.outbox import (
@@ -25,9 +27,12 @@ from daemon.outbox import (
     alarm_message,
     event_message,
     outlet_message,
+    reminder_message,
     trap_message,
 )
+from daemon.plant_figures import plant_view
 from daemon.recovery import TOO_OLD_US, Back, Recovery
+from daemon.reminders import Reminder
 from daemon.site.types import Site
 from daemon.state import CoreState, Inputs
 from daemon.store.store import Store
@@ -37,6 +42,7 @@ from daemon.views import (
     ChannelHealth,
     Health,
     OutletView,
+    PlantView,
     Recorded,
     SeriesOfReadings,
     TrapView,
@@ -75,6 +81,7 @@ class Shell:
         self._site, self._clock, self._sampler, self._store = site, clock, sampler, store
         self._topics = topics
         self.core = Core(site)
+        self._buttons = Buttons(site)
         self.late_after_us = LATE_AFTER_PERIODS * self.core.model.period_us
         self.link: MqttLink | None = None
         self.on_entry: Callable[[Entry], None] | None = None  # told of what was committed
@@ -184,6 +191,7 @@ class Shell:
         ]
         readings = sorted(readings, key=lambda each: each.time_us)[-MOST_WAITING:]
         self._waiting = readings  # until they are committed
+        self._record_presses(self._state, readings)
         self._go_back_for_late_entries(now_us)
         state = self._state
         transitions = self._corrections(state, now_us)
@@ -192,6 +200,7 @@ class Shell:
         estimate: Estimate | None = None
         judged: list[Reading] = []
         verdicts: list[Verdict] = []
+        reminders: list[Reminder] = []
         for each in ticks(
             self._grid_us,
             self.core.model.period_us,
@@ -207,15 +216,29 @@ class Shell:
             transitions += changed
             judged += estimate.readings
             verdicts += estimate.verdicts
+            reminders += estimate.reminders
             for problem in estimate.problems:
                 log.error("%s", problem)
                 self._problems["balance"] = problem
         if estimate is None:
             return
-        self._commit(state, judged, entries, transitions, checkpoint=self._went_back)
+        self._commit(
+            state, judged, entries, transitions, reminders=reminders, checkpoint=self._went_back
+        )
         _log_verdicts(verdicts)
         self._waiting, self._announced, self._went_back = [], {}, False
         self._show(estimate)
+
+    def _record_presses(self, state: CoreState, readings: Sequence[Reading]) -> None:
+        """Commit a drain for every press of a "drained" button, before the tick that takes it."""
+        for press in self._buttons.presses(readings, state.channels):
+            try:
+                recorded = self.record(press.drain, press.at_us, press.key)
+            except JournalError as error:
+                log.warning("%s was pressed, but: %s", press.channel, error)
+            else:
+                if not recorded.repeated:
+                    log.info("%s was pressed: %s was drained", press.channel, press.trap)
 
     def _begin(self, now_us: int, readings: list[Reading]) -> None:
         at_now = [each for each in readings if each.time_us == now_us]
@@ -242,6 +265,7 @@ class Shell:
         readings: Sequence[Reading],
         entries: Sequence[Entry],
         transitions: Sequence[Transition],
+        reminders: Sequence[Reminder] = (),
         checkpoint: bool = False,
         every_alarm: bool = False,
     ) -> None:
@@ -253,7 +277,7 @@ class Shell:
             blob = self._recovery.blob(state)
         changed = {each.alarm for each in transitions}
         alarms = [name for name in state.alarms if every_alarm or name in changed]
-        messages = self._messages(state, transitions, alarms)
+        messages = self._messages(state, transitions, alarms, reminders)
         self._store.commit_tick(state.time_us, readings, transitions, messages, blob)
         taken = {entry.seq for entry in entries}
         self._pending = [entry for entry in self._pending if entry.seq not in taken]
@@ -261,11 +285,17 @@ class Shell:
         self._ticks += 1
         for each in transitions:
             log.info("%s: %s -> %s. %s", each.alarm, each.before, each.after, each.text)
+        for reminder in reminders:
+            log.info("%s: %s", reminder.turn, reminder.text)
         if messages and self.link is not None:
             self.link.wake()
 
     def _messages(
-        self, state: CoreState, transitions: Sequence[Transition], alarms: Sequence[str]
+        self,
+        state: CoreState,
+        transitions: Sequence[Transition],
+        alarms: Sequence[str],
+        reminders: Sequence[Reminder],
     ) -> list[Message]:
         if self._topics is None:
             return []
@@ -276,6 +306,7 @@ class Shell:
                 alarm_message(topics, shown(self.core.definitions[name], state.alarms[name]))
                 for name in alarms
             ),
+            *(reminder_message(topics, each) for each in reminders),
         ]
 
     def _show(self, estimate: Estimate) -> None:
@@ -359,6 +390,21 @@ class Shell:
     def margin(self, outlet: str, surface_k: float) -> OutletView | None:
         with self._lock:
             return None if self._estimate is None else self._estimate.margin(outlet, surface_k)
+
+    def reminders(self) -> Sequence[Reminder]:
+        """The last few, oldest first."""
+        with self._lock:
+            return () if self._state is None else self._state.followed.reminders.recent
+
+    def plant(self) -> PlantView | None:
+        """What closed hours have told of the plant; None until the first tick."""
+        with self._lock:
+            return None if self._state is None else plant_view(self._site, self._state)
+
+    def forecast_scores(self) -> Sequence[Score]:
+        """What was reached of late, and what had been foreseen at least a day ahead."""
+        with self._lock:
+            return () if self._state is None else self._state.followed.foresight.scores
 
     def alarms(self) -> Sequence[Alarm]:
         with self._lock:
