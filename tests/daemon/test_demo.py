@@ -140,7 +140,9 @@ def test_it_ends_when_nobody_reads_what_it_says(tmp_path: Path) -> None:
     """As with `dripleg demo | head`: it must not run on unseen."""
     process = demo(tmp_path, "--port", "0", "--speed", "600")
     assert process.stdout is not None
-    process.stdout.readline()
+    while "Without MQTT" not in process.stdout.readline():
+        assert process.poll() is None
+    process.stdout.readline()  # the greeting's last: from here on only the teller speaks
     process.stdout.close()
     process.wait(TIMEOUT_S)
     assert process.stderr is not None
