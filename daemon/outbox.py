@@ -6,7 +6,7 @@ Topics stand under `<prefix>/<site>`, `dripleg/alder-yard` for example:
     traps/<trap>       retained: what the trap holds
     outlets/<outlet>   retained: whether the air there, and the surface, are dry enough
     alarms/<alarm>     retained: how the alarm stands
-    events             every alarm transition at least once, with its id, QoS 1
+    events             every alarm transition and reminder at least once, with its id, QoS 1
     drains             inbound: a button or another device reports a drain
     drains/refused     why an inbound drain was not taken
 """
@@ -21,6 +21,7 @@ from daemon import payloads
 from daemon.alarms import Alarm, Transition
 from daemon.outlet_payloads import outlet_payload
 from daemon.payloads import Service
+from daemon.reminders import Reminder
 from daemon.site.types import Mqtt, Site
 from daemon.views import OutletView, TrapView
 
@@ -88,6 +89,11 @@ def event_message(topics: Topics, transition: Transition) -> Message:
     return Message(topics.events, payload, id=transition.id)
 
 
+def reminder_message(topics: Topics, reminder: Reminder) -> Message:
+    """The event that is a reminder: for the outbox, in its own tick."""
+    return Message(topics.events, encode(payloads.reminder_payload(reminder)), id=reminder.id)
+
+
 def alarm_message(topics: Topics, alarm: Alarm) -> Message:
     """How an alarm stands: retained, the newest one counts."""
     return Message(topics.alarm(alarm.id), encode(payloads.alarm_payload(alarm)), retain=True)
@@ -112,5 +118,5 @@ def service_message(
 
 
 def encode(payload: Mapping[str, object]) -> bytes:
-    """A payload as JSON in UTF-8; half a surrogate pair, which UTF-8 lacks, becomes "?"."""
-    return json.dumps(payload, ensure_ascii=False, allow_nan=False).encode(errors="replace")
+    """A payload as JSON in UTF-8."""
+    return json.dumps(payload, ensure_ascii=False, allow_nan=False).encode()

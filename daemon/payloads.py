@@ -15,6 +15,7 @@ from daemon.clock import SECOND_US, format_rfc3339, parse_rfc3339
 from daemon.errors import JournalError
 from daemon.journal import Drain, Entry, Outcome
 from daemon.moisture.description import WATER_KG_PER_M3
+from daemon.reminders import Reminder
 from daemon.units import to_si
 from daemon.views import TrapView
 
@@ -85,6 +86,21 @@ def event_payload(transition: Transition) -> dict[str, Any]:
         "priority": transition.priority,
         "text": transition.text,
         "by": transition.by,
+    }
+
+
+def reminder_payload(reminder: Reminder) -> dict[str, Any]:
+    """A reminder to go on a round, or the list for opening up after a long closure.
+
+    `source` is the turn of the day; `traps` are in walking order.
+    """
+    return {
+        "id": reminder.id,
+        "at": format_rfc3339(reminder.at_us),
+        "kind": reminder.kind,
+        "source": reminder.turn,
+        "traps": list(reminder.traps),
+        "text": reminder.text,
     }
 
 
@@ -201,4 +217,6 @@ def _shown(value: object) -> str:
     if value is None:
         return "missing"
     text = json.dumps(value, ensure_ascii=False)
+    if not text.isprintable():  # nor fit for a log or for UTF-8
+        text = json.dumps(value)
     return text if len(text) <= 80 else text[:77] + "..."

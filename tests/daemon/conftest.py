@@ -8,6 +8,7 @@ from pathlib import Path
 import pytest
 
 from tests.daemon.broker import Broker
+from tests.daemon.linking import Journal, WatchedStore
 
 
 @pytest.fixture
@@ -18,3 +19,16 @@ def broker(tmp_path: Path) -> Iterator[Broker]:
     started = Broker(folder).start()
     yield started
     started.stop()
+
+
+@pytest.fixture
+def store(tmp_path: Path) -> Iterator[WatchedStore]:
+    """An open store of a site without channels."""
+    with WatchedStore.open(tmp_path / "dripleg.db", {}) as opened:
+        yield opened
+
+
+@pytest.fixture
+def journal() -> Journal:
+    """What was recorded, beside any store."""
+    return Journal()

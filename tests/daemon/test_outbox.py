@@ -22,7 +22,7 @@ from daemon.outbox import (
 from daemon.payloads import drain_payload, read_drain, refusal_payload, trap_payload
 from daemon.site.types import Mqtt
 from daemon.views import TrapView
-from tests.daemon.broker import a_site
+from tests.daemon.linking import a_site
 
 AT_US = parse_rfc3339("2026-12-01T09:00:00Z")
 TOPICS = Topics("dripleg/alder-yard")
