@@ -75,12 +75,13 @@ def _take_extras(
     present: npt.NDArray[np.bool_],
 ) -> dict[int, list[Reading]]:
     """Write lone extras of the channel into the column; return the rows with several readings."""
+    index = layout.places[channel]
     several: dict[int, list[Reading]] = {}
     for number, row in enumerate(rows):
         if not row[1] & packing.EXTRAS:
             continue
         tick_us = ticks_us[number]
-        own = [r for _, r in packing.extras(layout, tick_us, row) if r.channel == channel]
+        own = [reading for _, reading in packing.extras(layout, tick_us, row, only=index)]
         if len(own) == 1 and not present[number]:
             column.times_us[number], column.values[number] = own[0].time_us, own[0].value
             column.faults[number] = own[0].fault

@@ -113,8 +113,13 @@ def unpack(layout: Layout, tick_us: int, row: bytes) -> list[Reading]:
     return readings
 
 
-def extras(layout: Layout, tick_us: int, row: bytes) -> Iterator[tuple[int, Reading]]:
-    """(place, reading) of each extra of a checked row, in the order of their places."""
+def extras(
+    layout: Layout, tick_us: int, row: bytes, only: int | None = None
+) -> Iterator[tuple[int, Reading]]:
+    """(place, reading) of each extra of a checked row, in the order of their places.
+
+    With `only`, of the channel at that place of the layout alone.
+    """
     if not row[1] & EXTRAS:
         return
     at = layout.counts_end + (4 * len(layout.channels) if row[1] & OWN_TIMES else 0)
@@ -124,8 +129,12 @@ def extras(layout: Layout, tick_us: int, row: bytes) -> Iterator[tuple[int, Read
         for _ in range(number):
             place, index, offset, value, length = _EXTRA.unpack_from(row, at)
             at += _EXTRA.size
-            (fault,) = struct.unpack_from(f"{length}s", row, at)
+            fault = row[at : at + length]
             at += length
+            if at > len(row):
+                raise _damaged(layout, tick_us, row)
+            if only is not None and index != only:
+                continue
             yield place, Reading(layout.channels[index], value, tick_us + offset, fault.decode())
     except (struct.error, IndexError, UnicodeDecodeError) as error:
         raise _damaged(layout, tick_us, row) from error
