@@ -48,6 +48,19 @@ class Following:
         """At the first tick."""
         return Followed(Plant(), self.foreseer.begun(model), turns.begun(self.site, model.time_us))
 
+    def carried_over(self, model: State, old: Followed) -> Followed:
+        """After a change of the line's description: the week is what it was."""
+        fresh = self.begun(model)
+        foresight = replace(
+            fresh.foresight,
+            week=old.foresight.week,
+            scores=old.foresight.scores,
+            scored=old.foresight.scored,
+            hits=old.foresight.hits,
+        )
+        reminders = replace(fresh.reminders, recent=old.reminders.recent)
+        return replace(fresh, foresight=foresight, reminders=reminders)
+
     # ---- tick by tick ----
 
     def step(self, state: CoreState, after: State, moved: Moved, is_open: bool) -> Followed:

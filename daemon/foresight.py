@@ -54,7 +54,9 @@ class Foresight:
     crossed: tuple[bool, ...]  # whether the level was reached since the last drain
     kept: tuple[Kept, ...] = ()  # the last few forecasts, oldest first
     used_kg: float = -1.0  # what had been used by the last of them; -1: make a new one
-    scores: tuple[Score, ...] = ()
+    scores: tuple[Score, ...] = ()  # the last of them
+    scored: int = 0  # of all time
+    hits: int = 0
 
 
 def keep(foresight: Foresight, at_us: int, dues: Sequence[Due], used_kg: float) -> Foresight:
@@ -83,7 +85,12 @@ def score(
         return foresight
     p05_us, p50_us, p95_us = made[-1].due_us[number]
     found = Score(trap, made[-1].at_us, p05_us, p50_us, p95_us, happened_us)
-    return replace(foresight, scores=(*foresight.scores, found)[-MOST_SCORES:])
+    return replace(
+        foresight,
+        scores=(*foresight.scores, found)[-MOST_SCORES:],
+        scored=foresight.scored + 1,
+        hits=foresight.hits + found.hit,
+    )
 
 
 def hit_rate(scores: Sequence[Score], from_us: int, to_us: int) -> tuple[int, int]:

@@ -165,7 +165,10 @@ def carried_over(core: Core, fresh: CoreState, old: CoreState) -> CoreState:
     judged = {name: each for name, each in old.quality.channels.items() if name in known}
     quality = replace(fresh.quality, channels={**fresh.quality.channels, **judged})
     outlets = _blotters(fresh, old)
-    return replace(fresh, model=model, traps=traps, quality=quality, outlets=outlets)
+    followed = core.following.carried_over(model, old.followed)
+    return replace(
+        fresh, model=model, traps=traps, quality=quality, outlets=outlets, followed=followed
+    )
 
 
 def _blotters(fresh: CoreState, old: CoreState) -> dict[str, OutletRecord]:

@@ -22,6 +22,8 @@ from daemon.moisture.description import WATER_KG_PER_M3
 from daemon.moisture.ensemble import Array, percentiles
 from daemon.moisture.learning import Learned
 from daemon.parameters import parameters_table
+from daemon.plant_summary import forecast_summary, plant_summary
+from daemon.reminders import Reminder
 from daemon.site.types import Site
 from daemon.state import CoreState, HourTotals, Inputs, Mark
 from daemon.ticks import ticks
@@ -53,6 +55,7 @@ class Result:
     begun_us: int = 0
     ticks: int = 0
     learned: list[Learned] = field(default_factory=list)
+    reminders: list[Reminder] = field(default_factory=list)
 
     def add(self, advanced: tuple[CoreState, Estimate, list[Transition]]) -> None:
         """Take in what one advance gave."""
@@ -62,6 +65,7 @@ class Result:
         if estimate.problems:
             raise BalanceError(estimate.problems[0])
         self.transitions += transitions
+        self.reminders += estimate.reminders
 
     def finish(self, core: Core) -> None:
         """The traps at the end, unless that was a full hour; not the ones just emptied."""
@@ -220,6 +224,9 @@ def summarise(core: Core, result: Result, entries: Sequence[Entry]) -> dict[str,
         "drawn_in_reference_l": _interval(state.air.drawn * REFERENCE_L_PER_KG),
         "used_reference_l": _interval(state.air.used * REFERENCE_L_PER_KG),
         "duty": _duty(hours, result),
+        **plant_summary(core.site, result.state),
+        "forecasts": forecast_summary(result.state),
+        "reminders": len(result.reminders),
         "corrected_by_learning_ml": _interval(ledger.corrected * ML_PER_KG),
         "flagged_drains": [
             {

@@ -116,6 +116,26 @@ class OutletView:
 
 
 @dataclass(frozen=True, slots=True)
+class PlantView:
+    """What closed hours have told of the plant. Air is reference air: 20 degC, 1 bar, dry."""
+
+    at_us: int
+    leak_m3_per_s: Interval | None  # at the middle of the pressure switch's span; None: not yet
+    leak_at_us: int | None  # when it was measured last
+    leak_hole_m: float | None  # the diameter of the one hole that leaks as much
+    leak_kwh_per_year: Interval | None
+    leak_cost_per_year: Interval | None  # None also where nobody said the price
+    currency: str
+    leak_high: float  # the chance that it is above its limit, 0-1
+    delivered_m3_per_s: Interval | None
+    delivered_at_us: int | None
+    delivered_times: int  # how often it was measured
+    delivered_to_rated: Interval | None
+    weak: float  # the chance that it is well below the rated, 0-1
+    duty: float | None  # of the last working hours; None: too few were seen
+
+
+@dataclass(frozen=True, slots=True)
 class ChannelHealth:
     """The last thing that a channel said."""
 
