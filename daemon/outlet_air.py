@@ -11,10 +11,13 @@ from dataclasses import dataclass
 import numpy as np
 
 from daemon.channel_faults import unusable
+from daemon.contradictions import Contradictions
 from daemon.moisture import margin
 from daemon.moisture.description import Like, Measured, RiseByDuty, Source
 from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, standard_normal
+from daemon.moisture.floats import switches
 from daemon.moisture.model import Model
+from daemon.moisture.observing import channels_of, contradicts
 from daemon.outlet_record import GaugeHeld
 from daemon.site.types import OutletSettings, Site
 from daemon.state import CoreState
@@ -34,6 +37,7 @@ class Described:
     line_channels: tuple[str, ...]
     air_channels: tuple[str, ...]  # of the air around the surface
     surface_channel: str  # "" without one
+    watching: tuple[str, ...]  # sensors on the way that may contradict what is believed
     relieved: bool
 
     @property
@@ -59,6 +63,7 @@ def describe(site: Site, model: Model) -> tuple[Described, ...]:
                 line_channels=_line_channels(model, along),
                 air_channels=_named([*room, plan.stations[0].pressure]) if all(room) else (),
                 surface_channel=place.surface.channel if place.surface is not None else "",
+                watching=_watching(model, along),
                 relieved=margin.relieved(plan, along),
             )
         )
@@ -76,11 +81,14 @@ def _line_channels(model: Model, along: margin.Way) -> tuple[str, ...]:
     outlet = plan.line.outlets[along.outlet]
     rows, done = list(along.path), set(along.path)
     sources: list[Source | None] = []
+    heard: list[str] = []
     contacts = [running] if (running := plan.line.compressor.running) is not None else []
     while rows:
         station = plan.stations[rows.pop(0)]
         own = [station.temperature, station.pressure, station.relative_humidity]
         sources += [*own, station.around]
+        if station.measured_dew_point is not None:
+            heard += channels_of(station.measured_dew_point)
         if station.dryer is not None and station.dryer.power.contact is not None:
             contacts.append(station.dryer.power.contact)
         for source in own:
@@ -89,7 +97,18 @@ def _line_channels(model: Model, along: margin.Way) -> tuple[str, ...]:
                 done.add(plan.index[source.station])
     sources.append(outlet.slab if outlet.slab is not None else outlet.air_temperature)
     sources.append(outlet.air_temperature)
-    return (*_named(sources), *contacts)
+    return tuple(dict.fromkeys((*_named(sources), *heard, *contacts)))
+
+
+def _watching(model: Model, along: margin.Way) -> tuple[str, ...]:
+    """The sensors of measured dew points and of float switches on the way."""
+    plan = model.plan
+    found: list[str] = []
+    for row in along.path:
+        if (source := plan.stations[row].measured_dew_point) is not None:
+            found.append(channels_of(source)[0])
+    found += [switch.channel for row, switch in switches(plan) if row in along.path]
+    return tuple(channel.rpartition(".")[0] for channel in found)
 
 
 class OutletAir:
@@ -98,12 +117,22 @@ class OutletAir:
     def __init__(self, site: Site, model: Model) -> None:
         self.site, self.model = site, model
         self.outlets = describe(site, model)
+        self.contradictions = Contradictions(site, model)
 
     # ---- the line ----
 
     def line_faults(self, state: CoreState, outlet: Described) -> list[str]:
         """Inputs of the line's air that cannot be believed, in words."""
-        return list(self.faults(state, outlet.line_channels))
+        against = self.contradictions.found(state)
+        return [
+            *self.faults(state, outlet.line_channels),
+            *(f"{sensor}: {against[sensor]}" for sensor in outlet.watching if sensor in against),
+        ]
+
+    def beyond_belief(self, state: CoreState, outlet: Described) -> bool:
+        """Whether a measured dew point is above what the line can have: then there is no number."""
+        plan = self.model.plan
+        return any(contradicts(plan, state.model, row) is not None for row in outlet.way.path)
 
     def faults(self, state: CoreState, names: Iterable[str]) -> Iterator[str]:
         """Which of these channels cannot be believed, in words."""

@@ -9,6 +9,7 @@ import numpy as np
 
 from daemon.clock import HOUR_US, to_datetime
 from daemon.journal import Blotted
+from daemon.line_verdict import LineFacts, judge_line
 from daemon.moisture import air, margin
 from daemon.moisture.ensemble import Array, percentiles, standard_normal
 from daemon.moisture.purity import humidity_class
@@ -17,7 +18,8 @@ from daemon.outlet_air import Described, OutletAir
 from daemon.outlet_alarms import place_words
 from daemon.outlet_record import OutletRecord
 from daemon.state import CoreState, OutletMark
-from daemon.verdict import LineFacts, SurfaceFacts, judge_holding, judge_line, judge_surface, worst
+from daemon.surface_verdict import SurfaceFacts, judge_holding, judge_surface
+from daemon.verdict import worst
 from daemon.views import Interval, Judgement, LineAirView, OutletView, SurfaceView
 
 
@@ -28,7 +30,7 @@ class _Line:
     faults: list[str]  # inputs that cannot be believed, in words
     pressure_pa: Array
     hose_k: Array
-    dew_point_k: Interval
+    dew_point_k: Interval | None  # None where a sensor says what cannot be
     carried_kg_per_m3: Interval
     margin_k: Interval | None  # None where an input failed
     coldest: str
@@ -112,12 +114,14 @@ class OutletViews:
         found = self._line_figures(state, outlet)
         ratio = margin.outlet_ratio(state.model, outlet.way)
         atmosphere_pa = state.model.conditions.pressure_pa[0]
-        expanded = supported = None
+        expanded = supported = atmospheric = None
         dew_point, carried = found.dew_point_k, found.carried_kg_per_m3
         if found.margin_k is not None:
             cooled = margin.after_expansion(found.hose_k, found.pressure_pa, atmosphere_pa)
             expanded = interval(cooled)
-        if not found.faults:
+        if dew_point is not None:
+            atmospheric = interval(air.dew_point_unchecked(ratio, atmosphere_pa))
+        if dew_point is not None and not found.faults:
             ends = (dew_point.p05, dew_point.p95), (carried.p05, carried.p95)
             supported = humidity_class(*ends)
         return LineAirView(
@@ -125,7 +129,7 @@ class OutletViews:
             pressure_pa=float(np.median(found.pressure_pa)),
             atmosphere_pa=float(np.median(atmosphere_pa)),
             pressure_dew_point_k=dew_point,
-            atmospheric_dew_point_k=interval(air.dew_point_unchecked(ratio, atmosphere_pa)),
+            atmospheric_dew_point_k=atmospheric,
             line_margin_k=found.margin_k,
             wanted_k=outlet.wanted_line_k,
             coldest=found.coldest if found.margin_k is not None else "",
@@ -137,6 +141,7 @@ class OutletViews:
     def _line_figures(self, state: CoreState, outlet: Described) -> _Line:
         """The air may be known, wide, where its margin is not: an input failed."""
         faults = self.air.line_faults(state, outlet)
+        beyond = self.air.beyond_belief(state, outlet)
         ratio = margin.outlet_ratio(state.model, outlet.way)
         touched = self.air.places(state, outlet)
         found = margin.line_margin(ratio, touched)
@@ -145,7 +150,7 @@ class OutletViews:
             faults=faults,
             pressure_pa=found.pressure_pa,
             hose_k=touched.temperature_k[-2],
-            dew_point_k=interval(found.dew_point_k),
+            dew_point_k=None if beyond else interval(found.dew_point_k),
             carried_kg_per_m3=interval(state.model.water.carried.kg_per_m3[outlet.way.outlet]),
             margin_k=interval(found.margin_k) if known else None,
             coldest=found.coldest,

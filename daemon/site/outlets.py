@@ -108,6 +108,8 @@ def _measured(names: Names, sensor: str, quantity: Quantity) -> Measured | None:
 
 def _temperature(names: Names) -> Callable[[object], Measured]:
     def read(raw: object) -> Measured:
+        if not names.is_channel(text(raw)):
+            raise ValueError('is measured or left out: name a channel, like "floor.temperature"')
         channel = names.channel(text(raw), "temperature")
         _tell_in_line(names, channel.sensor)
         return Measured(channel.name, channel.give_or_take, channel.gauge)
