@@ -6,6 +6,7 @@ pacing use a monotonic clock in seconds, which no time server can turn back.
 
 from __future__ import annotations
 
+import math
 import re
 import threading
 import time
@@ -55,21 +56,38 @@ class SystemClock:
 
 
 class ScaledClock:
-    """A clock that runs `factor` times as fast as the machine's, from `start_us`: the demo's."""
+    """A clock that runs `factor` times as fast as the machine's, from `start_us`: the demo's.
 
-    def __init__(self, factor: float, start_us: int) -> None:
+    It stands still rather than run more than `patience_s` of its own seconds ahead of whoever
+    waits on it: on a machine that is too slow for the factor nothing is left out, it only takes
+    longer. One thread waits; any may ask.
+    """
+
+    def __init__(self, factor: float, start_us: int, patience_s: float = math.inf) -> None:
         self.factor = factor
         self._start_us = start_us
+        self._patience_s = patience_s
+        self._lock = threading.Lock()
         self._origin = time.monotonic()
+        self._most_s = patience_s
 
     def monotonic(self) -> float:
-        return (time.monotonic() - self._origin) * self.factor
+        with self._lock:
+            return self._now_s()
+
+    def _now_s(self) -> float:
+        return min((time.monotonic() - self._origin) * self.factor, self._most_s)
 
     def now_us(self) -> int:
         return self._start_us + round(self.monotonic() * SECOND_US)
 
     def wait(self, seconds: float, stop: threading.Event) -> bool:
-        return stop.wait(max(0.0, seconds / self.factor))
+        seconds = max(0.0, seconds)
+        with self._lock:
+            now_s = self._now_s()
+            self._origin = time.monotonic() - now_s / self.factor
+            self._most_s = now_s + seconds + self._patience_s
+        return stop.wait(seconds / self.factor)
 
 
 def parse_rfc3339(text: str) -> int:

@@ -107,7 +107,7 @@ def run(port: int, length: str | None, broker_at: str | None, speed: float) -> N
             site=site,
             store_path=Path(folder) / "demo.db",
             hardware=parts,
-            clock=ScaledClock(speed, start_us),
+            clock=ScaledClock(speed, start_us, patience_s=site.sample_every_us / SECOND_US),
             port=port,
             wrap=wrap,
         )

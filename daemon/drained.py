@@ -28,6 +28,9 @@ TIMEOUT_S = 10.0
 def record_drain(site: Site, options: argparse.Namespace, store_path: Path) -> str:
     """Record it; what to say about it. JournalError says what cannot be taken."""
     drain, at_us = _read(options)
+    if drain.trap not in site.traps:
+        known = ", ".join(site.traps) or "none"
+        raise JournalError(f'"{drain.trap}" is not a trap of this site (known: {known})')
     answer = _through_daemon(site, drain, at_us)
     if answer is None:
         answer = _straight(site, drain, at_us, store_path)

@@ -411,15 +411,21 @@ class Shell:
             return [] if self._state is None else self.core.alarms(self._state)
 
     def record(self, body: Body, at_us: int | None = None, key: str = "") -> Recorded:
-        now_us = max(self._clock.now_us(), self._ticked_us)
         with self._lock:
-            begun_us = now_us if self._state is None else self._grid_us
-            when_us = now_us if at_us is None else at_us
+            now_us = max(self._clock.now_us(), self._ticked_us)
+            begun_us, when_us = self._grid_us, at_us
+            if self._state is None:
+                begun_us = now_us
+            elif at_us is None:  # a tick may have gone on while we waited for it
+                when_us = max(now_us, self._state.time_us + 1)
+            when_us = now_us if when_us is None else when_us
             accept.check(self._site, body, when_us, now_us, begun_us)
             recorded = self._store.add_entry(body, when_us, now_us, key)
             if not recorded.repeated:
                 self._pending.append(recorded.entry)
-                recorded = replace(recorded, said=self._preview(recorded.entry, now_us))
+                recorded = replace(
+                    recorded, said=self._preview(recorded.entry, max(now_us, when_us))
+                )
         if not recorded.repeated and self.on_entry is not None:
             self.on_entry(recorded.entry)
         return recorded

@@ -328,3 +328,17 @@ def test_a_replay_of_a_long_silence_gives_the_bits_of_the_daemon(tmp_path: Path)
     daemon.start()
     assert bits(daemon.state) == held
     daemon.store.close()
+
+
+def test_a_drain_recorded_while_a_tick_goes_on_counts_just_after_it(tmp_path: Path) -> None:
+    """And is shown at once: it does not send the model back."""
+    text = SITE.replace('drain_at = "600 ml"', 'drain_at = "600 ml", holds_at_start = "650 ml"')
+    daemon = Daemon(tmp_path / "a.db", 50, site(text))
+    daemon.tick(*range(20))
+    daemon.clock.wall_us -= 3 * SECOND_US  # the time it was when the tick began
+    recorded = daemon.shell.record(Drain("tank"))
+    assert recorded.entry.at_us == daemon.state.time_us + 1
+    assert daemon.shell.traps()[0].p95_kg < 0.01
+    daemon.tick(20)
+    assert daemon.shell.traps()[0].last_drain_us == recorded.entry.at_us
+    daemon.store.close()
