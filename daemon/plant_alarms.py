@@ -70,10 +70,8 @@ class PlantAlarms:
         view = plant_view(self.site, state)
         if so != "so" or view.leak_m3_per_s is None:
             return "The line leaks less than its limit again."
-        low, middle, high = (
-            show_flow(each, self.site.units)
-            for each in (view.leak_m3_per_s.p05, view.leak_m3_per_s.p50, view.leak_m3_per_s.p95)
-        )
+        low, middle, high = (show_flow(each, self.site.units) for each in view.leak_m3_per_s.values)
+        low = low.split(" ", 1)[0]
         year = ""
         if view.leak_kwh_per_year is not None:
             year = f", {view.leak_kwh_per_year.p50:.0f} kWh a year"

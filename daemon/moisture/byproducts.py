@@ -31,6 +31,7 @@ from daemon.moisture.plant import Phase, Plant, Sample, decay, told
 
 SETTLES_US = 2 * HOUR_US  # after a stop; until then the tank cools (practice)
 SHORTEST_DECAY_US = HOUR_US
+LEAST_PERIODS = 3  # of sampling, in a pump-up whose ends only the gauge tells
 LEAST_SWING = 0.03  # of the stock, between the ends of a let-down or pump-up
 # Below about 2 bar absolute a leak is choked no more (ratio 1.89), and what is left says little.
 FLOOR_GAUGE_PA = 1.0e5
@@ -143,7 +144,9 @@ class ByProducts:
         """The compressor started or stopped within this tick."""
         last, first = _stock(before), _stock(after)
         if self._contact is None:
-            last = first = self._turning_point(before, after)
+            last = self._turning_point(before, after)
+            if not running:  # it stopped somewhere in the period before its highest reading
+                first, last = last, Sample(last.time_us - self.model.period_us // 2, last.kg)
         ended = self._ended(plant, last, before, "turned")
         return replace(ended, phase=Phase(running, first))
 
@@ -205,6 +208,9 @@ class ByProducts:
         if float((gained / last.kg).mean()) < LEAST_SWING:
             return plant
         seconds = (last.time_us - phase.first.time_us) / 1e6
+        least = 1 if self._contact is not None else LEAST_PERIODS
+        if seconds * 1e6 < least * self.model.period_us:
+            return plant
         lost = plant.decay_per_s * (phase.first.kg + last.kg) / 2.0
         figure = told(plant.delivered_kg_per_s, gained / seconds + lost, state.time_us)
         rated = self._rated(state)
