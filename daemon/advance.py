@@ -18,9 +18,11 @@ import numpy as np
 from daemon.alarm_rules import AlarmRules
 from daemon.alarms import Alarm, AlarmRecord, Transition, acknowledge, shown
 from daemon.clock import HOUR_US
+from daemon.drain_watch import DrainWatching
 from daemon.due import NO_DATE, calendar_due_us
 from daemon.errors import BalanceError
 from daemon.expected import expected_words
+from daemon.fitting_entries import FittingEntries
 from daemon.following import Following
 from daemon.journal import Acknowledge, Blotter, Confirm, Drain, Entry, Gauge, SaltCheck, Service
 from daemon.judging import Judging
@@ -36,7 +38,7 @@ from daemon.reminders import Reminder
 from daemon.sensing import Sensing
 from daemon.site import hours as opening
 from daemon.site.types import Site
-from daemon.state import ChannelRecord, CoreState, HourTotals, Inputs, Mark, TrapRecord
+from daemon.state import ChannelRecord, CoreState, HourTotals, Inputs, Mark, Sensed, TrapRecord
 from daemon.taking import Taking
 from daemon.views import Because, OutletView, TrapView
 from sensors.quality import Judged, QualityState, Verdict, forget
@@ -119,6 +121,8 @@ class Core:
         self.judging = Judging(site, self.model.period_us)
         self.sensing = Sensing(self.model)
         self.following = Following(site, self.model)
+        self.drains = DrainWatching(self.model)
+        self.fitting_entries = FittingEntries(self.model, self.drains)
 
     # ---- beginning ----
 
@@ -128,6 +132,7 @@ class Core:
         judged = self.judging.judge(QualityState(), unheard, inputs.readings, now_us)
         heard = self._heard(judged.readings, now_us, now_us)
         model = self.model.initial(now_us, heard)
+        model, sensed = self.sensing.step(Sensed(), now_us, model, heard.channels)
         state = CoreState(
             model=model,
             begun_us=now_us,
@@ -142,6 +147,8 @@ class Core:
             followed=self.following.begun(model),
             outlets={outlet.id: OutletRecord() for outlet in self.outlet_air.outlets},
             quality=judged.state,
+            sensed=sensed,
+            drains=self.drains.begun(now_us),
         )
         tick = _Tick(state, judged=judged)
         if now_us % HOUR_US == 0:
@@ -203,7 +210,8 @@ class Core:
             hour.used_kg + moved.used_kg,
         )
         followed = self.following.step(state, model, moved, heard.is_open)
-        tick.state = replace(state, model=model, hour=hour, followed=followed, sensed=sensed)
+        after = replace(state, model=model, hour=hour, followed=followed, sensed=sensed)
+        tick.state = replace(after, drains=self.drains.step(state, after, heard.channels))
         self._watch(tick)
         self._remind(tick)
 
@@ -284,6 +292,7 @@ class Core:
                     tick.state = self.taking.confirm(tick.state, confirm)
             case Service() as service:
                 tick.state = self.taking.service(tick.state, service)
+                tick.state = self.fitting_entries.service(tick.state, service)
                 if service.what == "sensor replaced":
                     quality = forget(tick.state.quality, service.of)
                     tick.state = replace(tick.state, quality=quality)
@@ -303,6 +312,7 @@ class Core:
             return
         tick.marks.append(self._mark(tick.state, "drain", None, (drain.trap,)))
         tick.state = replace(tick.state, followed=self.following.before_drain(tick.state))
+        tick.state = self.fitting_entries.drained(tick.state, drain)
         tick.state, learned = self.taking.drain(tick.state, entry, drain)
         followed = self.following.after_drain(tick.state, drain.trap)
         tick.state = replace(tick.state, followed=followed)

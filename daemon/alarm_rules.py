@@ -12,6 +12,7 @@ from daemon.channel_faults import doubt_of, fault_of
 from daemon.clock import DAY_US, MINUTE_US
 from daemon.contradictions import Contradictions
 from daemon.due import NO_DATE, condition, due_words
+from daemon.fitting_alarms import FittingAlarms
 from daemon.moisture import salt
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.ensemble import Array, percentiles
@@ -50,6 +51,7 @@ class AlarmRules:
         self.contradictions = Contradictions(site, model)
         self.margins = MarginAlarms(OutletAir(site, model))
         self.plant = PlantAlarms(site)
+        self.fittings = FittingAlarms(site, model)
         self.definitions = {each.id: each for each in self._define()}
 
     def _define(self) -> Iterator[AlarmDefinition]:
@@ -70,6 +72,7 @@ class AlarmRules:
             yield AlarmDefinition(f"{sensor}-salt-check-due", "salt-check-due", sensor, "low")
         yield from self.margins.define()
         yield from self.plant.define()
+        yield from self.fittings.define()
 
     def watch(
         self, state: CoreState, drained: str = ""
@@ -98,6 +101,7 @@ class AlarmRules:
             yield self._salt_check(state, sensor)
         yield from self.margins.watched(state, self.definitions)
         yield from self.plant.watched(state, self.definitions)
+        yield from self.fittings.watched(state, self.definitions)
 
     def probability_due(self, state: CoreState) -> Array:
         """The share of members at or above the drain-at level, (traps,)."""

@@ -7,7 +7,14 @@ from typing import Literal
 
 from daemon.clock import format_rfc3339
 
-AlarmState = Literal["normal", "unacknowledged", "acknowledged", "returned unacknowledged"]
+AlarmState = Literal[
+    "normal",
+    "unacknowledged",
+    "acknowledged",
+    "returned unacknowledged",
+    "suppressed by design",
+    "out of service",
+]
 Priority = Literal["low", "medium", "high"]
 
 
@@ -66,8 +73,13 @@ class AlarmRecord:
         return self.state in ("unacknowledged", "acknowledged")
 
 
-# What a condition says: it is so, it is not so, or it lies in the deadband and changes nothing.
-Condition = Literal["so", "not so", "between"]
+# What a condition says: it is so, it is not so, or it lies in the deadband and changes nothing; or
+# that nobody needs to know, since what it watches is switched off, or taken out of use.
+Condition = Literal["so", "not so", "between", "by design", "out of service"]
+_QUIET: dict[Condition, AlarmState] = {
+    "by design": "suppressed by design",
+    "out of service": "out of service",
+}
 
 
 def watch(
@@ -75,8 +87,16 @@ def watch(
 ) -> tuple[AlarmRecord, Transition | None]:
     """Advance one alarm to `now_us`. `text` says what is so and what to do.
 
-    A condition must hold without a break for the delay; in the deadband it does not hold.
+    A condition must hold without a break for the delay; in the deadband it does not hold. An
+    alarm that is suppressed or out of service changes at once, and begins anew after that.
     """
+    quiet = _QUIET.get(condition)
+    if quiet is not None:
+        if record.state == quiet:
+            return record, None
+        return _change(definition, record, now_us, quiet, text, "")
+    if record.state in _QUIET.values():
+        return _change(definition, record, now_us, "normal", "It is watched again.", "")
     wanted = "not so" if record.raised else "so"
     if condition != wanted:
         keeps = text if record.raised and condition == "so" else record.text

@@ -12,6 +12,7 @@ from typing import Any
 import numpy as np
 
 from daemon.alarms import AlarmRecord
+from daemon.drain_record import DrainRecord, DrainsWatched, Fall, Leak
 from daemon.errors import StoreError
 from daemon.followed import Followed
 from daemon.foresight import Foresight, Kept, Score
@@ -52,6 +53,10 @@ _CLASSES = {
         Figure,
         FittingParameters,
         FittingState,
+        DrainRecord,
+        DrainsWatched,
+        Fall,
+        Leak,
         Followed,
         Foresight,
         GaugeHeld,

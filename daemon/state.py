@@ -7,6 +7,7 @@ from dataclasses import dataclass, field
 from typing import Literal
 
 from daemon.alarms import AlarmRecord
+from daemon.drain_record import DrainsWatched
 from daemon.due import NO_DATE
 from daemon.followed import Followed
 from daemon.journal import Entry
@@ -75,6 +76,7 @@ class CoreState:
     outlets: Mapping[str, OutletRecord] = field(default_factory=dict)
     quality: QualityState = field(default_factory=QualityState)
     sensed: Sensed = field(default_factory=Sensed)
+    drains: DrainsWatched = field(default_factory=DrainsWatched)
 
     @property
     def time_us(self) -> int:

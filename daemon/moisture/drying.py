@@ -9,11 +9,12 @@ from dataclasses import replace
 import numpy as np
 
 from daemon.moisture import air, dryers
+from daemon.moisture.conditions import Conditions, Held, Offsets
 from daemon.moisture.description import Desiccant, Fixed, Measured, Refrigerated
 from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array
 from daemon.moisture.fitted import Bed
 from daemon.moisture.fitting_beliefs import FittingParameters, rated_flow
-from daemon.moisture.fitting_state import FittingState, Moment, Prepared
+from daemon.moisture.fitting_state import FittingState, Prepared
 from daemon.moisture.plan import Plan
 from daemon.moisture.power import Mask, Told, switched, works
 
@@ -148,7 +149,8 @@ class Drying:
         gauge = now.pressure_pa[i] - now.pressure_pa[0]
         inlet = now.temperature_k[self.plan.parent[i]]
         if isinstance(dryer, Refrigerated):
-            around, asked = self.around(i, moment), dryer.dew_point.value
+            around = self.around(i, now, moment.held, moment.offsets, moment.to_us)
+            asked = dryer.dew_point.value
         else:
             around = np.full(inlet.shape, dryers.RATED_AROUND_K)
             asked = dryers.RATED_DEW_POINT_K
@@ -172,17 +174,19 @@ class Drying:
         room = np.maximum(parameters.holds_kg[row] - state.charge[row], 0.0)
         return Bed(ratio, on, np.ones(ratio.shape), room)
 
-    def around(self, i: int, moment: Moment) -> Array:
+    def around(
+        self, i: int, now: Conditions, held: Mapping[str, Held], offsets: Offsets, at_us: int
+    ) -> Array:
         """The temperature of the air around a dryer, K, (members,): the intake's by default."""
         source = self.plan.stations[i].around
-        intake: Array = moment.now.temperature_k[0]
+        intake: Array = now.temperature_k[0]
         if isinstance(source, Fixed):
             return np.full(intake.shape, source.value)
         if isinstance(source, Measured):
-            held = moment.held.get(source.channel)
-            if held is not None and not held.stale(moment.to_us, self.period_us):
-                bias = moment.offsets.channels[source.channel]
-                measured: Array = held.value + bias * (source.give_or_take * HALF_WIDTH_TO_SD)
+            last = held.get(source.channel)
+            if last is not None and not last.stale(at_us, self.period_us):
+                bias = offsets.channels[source.channel]
+                measured: Array = last.value + bias * (source.give_or_take * HALF_WIDTH_TO_SD)
                 return measured
         return intake
 
