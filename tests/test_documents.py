@@ -21,7 +21,7 @@ from api.models import AcknowledgeIn, DrainIn
 from daemon.__main__ import parser
 from daemon.outbox import Topics
 from daemon.payloads import read_drain
-from daemon.replay import FLOW_HEADER, TRANSITIONS_HEADER, TRAPS_HEADER
+from daemon.replay import FLOW_HEADER, OUTLETS_HEADER, TRANSITIONS_HEADER, TRAPS_HEADER
 from daemon.site.default_tables import defaults_table
 from daemon.site.reader import parse_site
 from tests.api.fake import FakeRunning
@@ -177,8 +177,8 @@ def test_what_curl_sends_is_taken() -> None:
 
 def test_the_table_of_topics_is_the_outbox_s() -> None:
     topics = Topics("x")
-    real = [topics.service, topics.trap("<trap>"), topics.alarm("<alarm>"), topics.events]
-    real += [topics.drains, topics.refused_drains]
+    real = [topics.service, topics.trap("<trap>"), topics.outlet("<outlet>")]
+    real += [topics.alarm("<alarm>"), topics.events, topics.drains, topics.refused_drains]
     told = [f"x/{row[0].strip('`')}" for row in rows(section("MQTT"))]
     assert told == real
 
@@ -197,6 +197,7 @@ def test_what_mosquitto_pub_sends_is_taken() -> None:
 def test_the_columns_of_a_replay_are_those_written() -> None:
     told = {row[0].split(",")[0].strip("`"): row[1] for row in rows(section("Recorded data"))}
     assert f"`{TRAPS_HEADER}`" in told["traps.csv"]
+    assert f"`{OUTLETS_HEADER}`" in told["outlets.csv"]
     assert f"`{FLOW_HEADER}`" in told["flow.csv"]
     assert f"`{TRANSITIONS_HEADER}`" in told["transitions.csv"]
 

@@ -6,6 +6,7 @@ from collections.abc import Iterator, Mapping, Sequence
 
 import sensors.drivers  # noqa: F401  # fills DRIVERS
 from daemon.moisture.description import Fixed, Share
+from daemon.moisture.margin import SLAB_GIVE_OR_TAKE_K, SLAB_K
 from daemon.site import defaults
 from daemon.site.defaults import KindDefault, TemperatureDefault
 from daemon.site.fitting_words import default_rows
@@ -22,6 +23,7 @@ from daemon.units import (
     show_temperature,
     show_volume,
 )
+from daemon.work import PROFILES
 from sensors.registry import DRIVERS, REQUIRED, Driver
 
 Row = Sequence[str]
@@ -45,6 +47,19 @@ def defaults_table(drivers: Mapping[str, Driver] = DRIVERS) -> str:
 def _table(head: Row, rows: Iterator[Row]) -> str:
     lines = [head, ["---"] * len(head), *rows]
     return "\n".join(f"| {' | '.join(cell.replace('|', '/') for cell in row)} |" for row in lines)
+
+
+def _outlet_rows() -> Iterator[Row]:
+    """What is asked of the air, by the work, and how cold the coldest thing is."""
+    by_margin: dict[float, list[str]] = {}
+    for profile in PROFILES.values():
+        by_margin.setdefault(profile.line_margin_k, []).append(f"`{profile.name}`")
+    for margin_k, works in sorted(by_margin.items(), reverse=True):
+        names = ", ".join(name for name in works if name != "``")
+        because = f"for {names}" + (", and where no `work` is said" if "``" in works else "")
+        yield "", "`line_margin`", show_difference(margin_k, "metric"), because
+    below, width = (show_difference(each, "metric") for each in (-SLAB_K, SLAB_GIVE_OR_TAKE_K))
+    yield "", "`slab`", f"{below} colder than the air around +- {width}", "practice"
 
 
 def _general() -> Iterator[Row]:
@@ -84,6 +99,7 @@ def _general() -> Iterator[Row]:
     margin = show_difference(defaults.SURFACE_MARGIN_K, "metric")
     yield "`[[outlet]]`", "`share`", "an equal part of what the others leave", ""
     yield "", "`surface_margin`", margin, "as in ISO 8502-4"
+    yield from _outlet_rows()
     yield "", "", "one outlet `line-end` at the line's end", "where none is declared"
     yield from default_rows()
     yield "`[model]`", "`members`", "128", "enough for a 5-95 % interval on a Pi"

@@ -118,6 +118,13 @@ def _outlets(site: Site) -> Iterator[str]:
                 f"Neither a dryer nor a regulator stands before {outlet.id}: its air is saturated, "
                 f"so its margin stays near {show_difference(0.0, site.units)} for good."
             )
+    for settings in site.outlets:
+        if settings.work and not settings.surroundings:
+            yield (
+                f"Nobody measures the air around {settings.id}: whether it is dry enough to work "
+                "there stays unknown but for the air in the line. A bme280 in the clean supply "
+                "air, named as surroundings, tells."
+            )
     fed = {""}
     for outlet in site.line.outlets:
         at = outlet.after
