@@ -25,13 +25,13 @@ from daemon.clock import HOUR_US
 from daemon.moisture import air
 from daemon.moisture.description import Measured
 from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, positive, standard_normal
-from daemon.moisture.leaks import load_cycle_leak
+from daemon.moisture.leaks import REFERENCE_PA, load_cycle_leak
 from daemon.moisture.model import Model, State
 from daemon.moisture.plant import Phase, Plant, Sample, decay, told
 
 SETTLES_US = 2 * HOUR_US  # after a stop; until then the tank cools (practice)
 SHORTEST_DECAY_US = HOUR_US
-LEAST_PERIODS = 3  # of sampling, in a pump-up whose ends only the gauge tells
+PERIODS_A_PUMP_UP = 4.0  # at least, where only the gauge tells its ends
 LEAST_SWING = 0.03  # of the stock, between the ends of a let-down or pump-up
 # Below about 2 bar absolute a leak is choked no more (ratio 1.89), and what is left says little.
 FLOOR_GAUGE_PA = 1.0e5
@@ -64,6 +64,7 @@ class ByProducts:
         self._line = model.plan.line
         self._contact = self._line.compressor.running
         self._gauge = self._gauged()
+        self._turns_are_seen = self._contact is not None or self._sampled_often()
 
     def _gauged(self) -> _Gauge | None:
         for row in self.model.plan.receivers:
@@ -72,6 +73,15 @@ class ByProducts:
                 temperature = isinstance(station.temperature, Measured)
                 return _Gauge(row, station.pressure.channel, temperature)
         return None
+
+    def _sampled_often(self) -> bool:
+        """Whether a pump-up takes long enough to be timed by readings of its pressure."""
+        compressor, stations = self._line.compressor, self.model.plan.stations
+        volumes = [stations[row].volume for row in self.model.plan.receivers]
+        volume_m3 = sum(each.value for each in volumes if each is not None)
+        swing_pa = compressor.cut_out.value - compressor.cut_in.value
+        seconds = volume_m3 * swing_pa / (REFERENCE_PA * compressor.delivered.value)
+        return seconds * 1e6 >= PERIODS_A_PUMP_UP * self.model.period_us
 
     # ---- tick by tick ----
 
@@ -201,16 +211,13 @@ class ByProducts:
         return self._leaked(plant, constant, state) if settled else plant
 
     def _pumped_up(self, plant: Plant, phase: Phase, last: Sample, state: State) -> Plant:
-        if plant.decay_per_s is None:
+        if plant.decay_per_s is None or not self._turns_are_seen:
             return plant
         last = self._doubted(last, TURN_K)
         gained = last.kg - phase.first.kg
         if float((gained / last.kg).mean()) < LEAST_SWING:
             return plant
         seconds = (last.time_us - phase.first.time_us) / 1e6
-        least = 1 if self._contact is not None else LEAST_PERIODS
-        if seconds * 1e6 < least * self.model.period_us:
-            return plant
         lost = plant.decay_per_s * (phase.first.kg + last.kg) / 2.0
         figure = told(plant.delivered_kg_per_s, gained / seconds + lost, state.time_us)
         rated = self._rated(state)
