@@ -152,6 +152,20 @@ class ServiceIn(BaseModel):
     by: Name | None = Field(default=None, description="who did it", examples=["AM"])
 
 
+class SaltCheckIn(BaseModel):
+    """A humidity sensor was read over a salt whose humidity is known."""
+
+    model_config = ConfigDict(
+        extra="forbid",
+        strict=True,
+        json_schema_extra={"examples": [{"reads_percent": 77.1, "true_percent": 75.4}]},
+    )
+
+    reads_percent: float = Field(ge=0.0, le=100.0, description="relative humidity as it read")
+    true_percent: float = Field(gt=0.0, lt=100.0, description="relative humidity as it was")
+    by: Name | None = Field(default=None, description="who did it", examples=["AM"])
+
+
 class RecordedOut(BaseModel):
     """An entry as it stands in the journal."""
 

@@ -44,6 +44,9 @@ KINDS: dict[str, Kind] = {
     "unknown-trap": Kind(404, "No trap of that name", "See /api/v1/traps for the names."),
     "unknown-outlet": Kind(404, "No outlet of that name", "See /api/v1/outlets for the names."),
     "unknown-alarm": Kind(404, "No alarm of that name", "See /api/v1/alarms?all=true."),
+    "unknown-sensor": Kind(
+        404, "No humidity sensor of that name", "See the sensors in /api/v1/site."
+    ),
     "unknown-station": Kind(404, "No station of that name", "See the stations in /api/v1/site."),
     "unknown-channel": Kind(404, "No channel of that name", "See the channels in /api/v1/site."),
     "wrong-method": Kind(405, "Not possible at this address", "See the Allow header."),

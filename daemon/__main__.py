@@ -4,12 +4,18 @@ from __future__ import annotations
 
 import argparse
 import io
+import signal
 import sys
 import threading
 from collections.abc import Sequence
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 from daemon.errors import DriplegError
+
+if TYPE_CHECKING:
+    from daemon.site.types import Site
+    from sensors.registry import Hardware
 
 EXIT_OK, EXIT_BAD_INPUT, EXIT_FAILED = 0, 2, 1
 EXIT_INTERRUPTED = 130  # as shells have it for Ctrl-C
@@ -33,8 +39,14 @@ def parser() -> argparse.ArgumentParser:
     run.add_argument("--store", type=Path, help="the database (beside the site file)")
     run.add_argument("--verbose", action="store_true", help="log more")
 
-    check = commands.add_parser("check", help="read the site file and explain it")
+    check = commands.add_parser("check", help="explain the site file, read every sensor once")
     check.add_argument("site", type=Path, metavar="SITE", help="the site file")
+    check.add_argument("--watch", action="store_true", help="read them again until Ctrl-C")
+    check.add_argument("--no-sensors", action="store_true", help="explain the file alone")
+    check.add_argument("--salt", metavar="SENSOR", help="check a humidity sensor over wet salt")
+    check.add_argument("--for", dest="length", default="10 min", metavar="TIME", help="with --salt")
+    check.add_argument("--by", default="", help="initials, with --salt")
+    check.add_argument("--store", type=Path, help="the database, if the daemon does not run")
 
     replay = commands.add_parser("replay", help="recompute from recorded readings")
     replay.add_argument("site", type=Path, metavar="SITE", help="the site file")
@@ -108,11 +120,43 @@ def _store_path(options: argparse.Namespace, site_id: str) -> Path:
 
 
 def _check(options: argparse.Namespace) -> int:
-    from daemon.check import explain
+    from daemon.check_command import check
+    from daemon.clock import SystemClock
     from daemon.site.reader import read_site
+    from sensors.hardware import RealHardware
 
-    print(explain(read_site(options.site)))
+    site = read_site(options.site)
+    stop = threading.Event()
+    if options.watch:
+        signal.signal(signal.SIGINT, lambda *_: stop.set())
+    hardware = RealHardware()
+    try:
+        if options.salt:
+            return _salt(options, site, hardware, stop)
+        return check(site, options, hardware, SystemClock(), stop, _say)
+    finally:
+        hardware.close()
+
+
+def _salt(
+    options: argparse.Namespace, site: Site, hardware: Hardware, stop: threading.Event
+) -> int:
+    from daemon.check_salt import Wanted, salt_check
+    from daemon.clock import SystemClock
+    from daemon.errors import JournalError, UnitError
+    from daemon.units import parse
+
+    try:
+        length_s = parse(options.length, "duration")
+    except UnitError as error:
+        raise JournalError(f"--for: {error}") from error
+    wanted = Wanted(options.salt, length_s, options.by, _store_path(options, site.id))
+    salt_check(site, wanted, hardware, SystemClock(), stop, _say)
     return EXIT_OK
+
+
+def _say(text: str) -> None:
+    print(text, flush=True)
 
 
 def _replay(options: argparse.Namespace) -> int:

@@ -20,6 +20,7 @@ from daemon.moisture.description import (
 from daemon.moisture.margin import SLAB_GIVE_OR_TAKE_K, SLAB_K
 from daemon.site.default_tables import defaults_table
 from daemon.site.fitting_words import drain_words, station_words
+from daemon.site.sensor_words import sensor_words
 from daemon.site.types import DAY_NAMES, DefaultUsed, Hours, OutletSettings, Site
 from daemon.site.words import source_words
 from daemon.units import (
@@ -164,6 +165,8 @@ def _station(site: Site, station: Station) -> Iterator[str]:
         text = f"{show_volume(station.volume.value, site.units)}, give or take {width}"
         yield from _row("volume", text + _mark(site, f'station "{station.id}"', "volume"))
     for what, words in station_words(station, site.units):
+        yield from _row(what, words)
+    for what, words in sensor_words(site, station):
         yield from _row(what, words)
     if station.trap is not None:
         yield from _trap(site, station.trap)

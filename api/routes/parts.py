@@ -5,10 +5,10 @@ from __future__ import annotations
 from fastapi import APIRouter, Depends
 
 from api.guard import writes_allowed
-from api.models import AcknowledgeIn, RecordedOut, ServiceIn
+from api.models import AcknowledgeIn, RecordedOut, SaltCheckIn, ServiceIn
 from api.problems import Problem, answered_by
 from api.routes.running import TheDaemon
-from daemon.journal import Confirm, Service
+from daemon.journal import Confirm, SaltCheck, Service
 
 router = APIRouter()
 
@@ -58,3 +58,22 @@ def service(station: str, body: ServiceIn, daemon: TheDaemon) -> RecordedOut:
         )
     of = (body.sensor or "") if body.what == "sensor replaced" else station
     return RecordedOut.of(daemon.record(Service(body.what, of, body.by or "")).entry)
+
+
+@router.post(
+    "/sensors/{sensor}/salt-checks",
+    tags=["parts"],
+    status_code=201,
+    summary="Say what a humidity sensor read over wet salt",
+    dependencies=[Depends(writes_allowed)],
+    responses=answered_by("unknown-sensor", *ON_WRITING),
+)
+def salt_check(sensor: str, body: SaltCheckIn, daemon: TheDaemon) -> RecordedOut:
+    """Its bias is known better from then on. `dripleg check --salt` does the reading as well."""
+    humid = [c.sensor for c in daemon.site.channels.values() if c.quantity == "relative_humidity"]
+    if sensor not in humid:
+        known = ", ".join(humid) or "none"
+        raise Problem("unknown-sensor", f'no humidity sensor has the id "{sensor}" ({known})')
+    reads, true = (round(each / 100.0, 6) for each in (body.reads_percent, body.true_percent))
+    check = SaltCheck(sensor, reads, true, body.by or "")
+    return RecordedOut.of(daemon.record(check).entry)

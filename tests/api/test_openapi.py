@@ -39,6 +39,7 @@ def test_every_route_of_the_first_version_is_described(described: dict[str, Any]
         ("post", "/api/v1/alarms/{alarm}/acknowledge"),
         ("post", "/api/v1/outlets/{outlet}/blotter"),
         ("post", "/api/v1/outlets/{outlet}/gauge"),
+        ("post", "/api/v1/sensors/{sensor}/salt-checks"),
         ("post", "/api/v1/stations/{station}/service"),
         ("post", "/api/v1/traps/{trap}/confirm"),
         ("post", "/api/v1/traps/{trap}/drains"),

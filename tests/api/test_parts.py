@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import pytest
 
-from daemon.journal import Confirm, Service
+from daemon.journal import Confirm, SaltCheck, Service
 from tests.api.client import Client
 from tests.api.fake import FakeRunning
 
@@ -36,9 +36,27 @@ def test_a_changed_part_is_recorded(
     assert running.journal[0].body == entry
 
 
+def test_a_salt_check_is_recorded(running: FakeRunning, client: Client) -> None:
+    said = {"reads_percent": 77.1, "true_percent": 75.4, "by": "AM"}
+    response = client.post("/api/v1/sensors/intake-air/salt-checks", json=said)
+    assert response.status_code == 201
+    check = running.journal[0].body
+    assert isinstance(check, SaltCheck)
+    assert (check.sensor, check.by) == ("intake-air", "AM")
+    assert check.reads == pytest.approx(0.771)
+    assert check.true == pytest.approx(0.754)
+
+
 @pytest.mark.parametrize(
     ("path", "body", "status", "words"),
     [
+        (
+            "sensors/motor/salt-checks",
+            {"reads_percent": 77.1, "true_percent": 75.4},
+            404,
+            "intake-air",
+        ),
+        ("sensors/intake-air/salt-checks", {"reads_percent": 771, "true_percent": 75}, 422, "100"),
         ("traps/tnak/confirm", {}, 404, "those of this site are: tank, riser"),
         ("stations/nowhere/service", {"what": "element changed"}, 404, "intake, tank"),
         ("stations/tank/service", {"what": "painted blue"}, 422, "element changed"),
