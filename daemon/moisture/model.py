@@ -96,7 +96,7 @@ class Model:
             s.temperature if isinstance(s.temperature, RiseByDuty) else rule
             for s, rule in zip(self.plan.stations, self.plan.temperature_rules, strict=True)
         ]
-        self._lagging = [
+        self.lagging = [  # (station, time constant in s) of what follows the duty
             (i, source.time_constant_s)
             for i, source in enumerate(lagging)
             if isinstance(source, RiseByDuty)
@@ -435,7 +435,7 @@ class Model:
             return state.duty, state.duty_known
         now = np.minimum(on_s / dt_s, 1.0)
         duty = state.duty.copy()
-        for i, constant_s in self._lagging:
+        for i, constant_s in self.lagging:
             duty[i] += (now - duty[i]) * -math.expm1(-dt_s / constant_s)
         known = state.duty_known
         if times.unknown_us == 0:
