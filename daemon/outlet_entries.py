@@ -9,7 +9,7 @@ import numpy as np
 
 from daemon.clock import HOUR_US
 from daemon.journal import Blotter, Gauge
-from daemon.moisture import margin
+from daemon.moisture import blotting, margin
 from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, standard_normal
 from daemon.outlet_air import Described, OutletAir
 from daemon.outlet_record import HOURS_KEPT, GaugeHeld, OutletRecord
@@ -27,10 +27,15 @@ class OutletEntries:
         self._by_id = {outlet.id: outlet for outlet in air.outlets}
 
     def blotter(self, state: CoreState, told: Blotter) -> CoreState:
-        """A stain stands until a clean test."""
-        if told.outlet not in self._by_id:
+        """A stain stands until a clean test; of water, both are learned from."""
+        outlet = self._by_id.get(told.outlet)
+        if outlet is None:
             return state
         record, now_us = state.outlets[told.outlet], state.time_us
+        if told.result != "oil":
+            stained = told.result == "water"
+            model = blotting.observe(self.air.model, state.model, outlet.way.outlet, stained)
+            state = replace(state, model=model)
         match told.result:
             case "clean":
                 record = replace(record, clean_us=now_us, water_us=-1, oil_us=-1)

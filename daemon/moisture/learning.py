@@ -115,7 +115,7 @@ def local_names(plan: Plan, station: int) -> list[str]:
         at = plan.parent[at]
     found = [name for name in found if not name.startswith("round of ")]
     found.append(believed.round_of(plan.stations[station].id))
-    found += [believed.bias_of(channel) for channel in plan.channels]
+    found += [believed.bias_of(channel) for channel in plan.line_channels]
     return [*found, believed.HUMIDITY, believed.DELIVERED, believed.POOL, believed.CUP]
 
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from daemon.moisture.description import (
     Desiccant,
@@ -53,6 +53,11 @@ class Plan:
     pressure_rules: tuple[Source, ...]
     purging: tuple[int, ...]  # desiccant dryers that blow off a part of the air they dry
     purged_above: tuple[tuple[int, ...], ...]  # per station: the rows of `purging` upstream of it
+
+    @property
+    def line_channels(self) -> tuple[str, ...]:
+        """Those that a station reads: the others tell of the air around an outlet only."""
+        return _channels(replace(self.line, outlets=()))
 
     @property
     def stations(self) -> tuple[Station, ...]:
