@@ -13,6 +13,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from daemon.clock import HOUR_US
+from daemon.moisture import air
 from daemon.moisture.ensemble import Array
 from daemon.outlet_record import HOURS_KEPT
 
@@ -23,12 +24,24 @@ DAY_TO_DAY_K, UNKNOWN_DAY_K = 2.0, 4.0
 GROWS_OVER_H = 24.0
 
 
+def with_dew_points(past: Array, pressure_pa: float) -> Array:
+    """`OutletRecord.past` with dew points, K, in place of humidity ratios."""
+    known = np.isfinite(past[:, 1])
+    found = np.full_like(past, np.nan)
+    found[:, 0] = past[:, 0]
+    if known.any():
+        ratio = past[known, 1]
+        found[known, 1] = air.dew_point_unchecked(ratio, np.full_like(ratio, pressure_pa))
+    return found
+
+
 def foresee(past: Array, now_us: int, margin_k: Array, place: Array, hours: Sequence[int]) -> Array:
     """The surface margin some hours ahead, (hours, members), K.
 
     Parameters
     ----------
-    past : air temperature and dew point at the last full hours, K, as `OutletRecord.past`.
+    past : air temperature and dew point at the last full hours, K, in the rows of
+        `OutletRecord.past`.
     margin_k : the margin now, (members,).
     place : each member's standing place in what is not known, standard normal, (members,).
     hours : whole hours ahead, 1 to 23.

@@ -87,18 +87,7 @@ class OutletEntries:
         room = self.air.around(state, outlet)
         if room is None or any(self.air.faults(state, outlet.air_channels)):
             return math.nan, math.nan
-        middle = margin.Around(
-            *(
-                np.atleast_1d(np.median(each))
-                for each in (
-                    room.temperature_k,
-                    room.relative_humidity,
-                    room.pressure_pa,
-                    room.ratio,
-                )
-            )
-        )
-        return float(middle.temperature_k[0]), float(margin.dew_point_around(middle)[0])
+        return float(np.median(room.temperature_k)), float(np.median(room.ratio))
 
 
 def observe(expected: Array, observed: Array, reading: float, sd: float) -> tuple[Array, float]:

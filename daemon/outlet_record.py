@@ -45,5 +45,6 @@ class OutletRecord:
     looked_us: int = -1  # when the margins were last looked at for the alarms
     line: Condition = "between"  # what was found then
     surface: Condition = "between"
-    # air temperature and dew point at the full hours, K, row (hours since 1970) % 48; NaN unknown
+    # air temperature, K, and humidity ratio at the full hours, row (hours since 1970) % 48; NaN
+    # where they were not known
     past: Array = field(default_factory=no_past)

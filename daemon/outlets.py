@@ -13,7 +13,7 @@ from daemon.line_verdict import LineFacts, judge_line
 from daemon.moisture import air, margin
 from daemon.moisture.ensemble import Array, percentiles, standard_normal
 from daemon.moisture.purity import humidity_class
-from daemon.outlet_ahead import HOURS_AHEAD, foresee
+from daemon.outlet_ahead import HOURS_AHEAD, foresee, with_dew_points
 from daemon.outlet_air import Described, OutletAir
 from daemon.outlet_alarms import place_words
 from daemon.outlet_record import OutletRecord
@@ -242,7 +242,8 @@ class OutletViews:
         line = self.model.plan.line
         place = standard_normal(line.seed, f"ahead of {outlet.id}", line.members)
         hours = range(1, HOURS_AHEAD + 1)
-        past = state.outlets[outlet.id].past
+        atmosphere_pa = float(np.median(state.model.conditions.pressure_pa[0]))
+        past = with_dew_points(state.outlets[outlet.id].past, atmosphere_pa)
         foreseen = percentiles(foresee(past, state.time_us, margin_k, place, hours))
         return tuple(
             (state.time_us + hour * HOUR_US, Interval(*(float(v) for v in foreseen[:, hour - 1])))
