@@ -68,7 +68,7 @@ class Ahead:
         at_us = self._coldest_us(stretch) if idle else stretch.from_us
         duty, mean_duty = self._follow(state.duty, stretch.duty, dt_s)
         drying = model.fittings.drying
-        fitted = drying.switched(state.fittings, {}, stretch.is_open, stretch.from_us)
+        fitted = drying.foreseen(state.fittings, stretch.is_open, stretch.from_us)
         held = self._outlook.held(at_us)
         now = self._conditions(state, held, at_us, mean_duty)
         now = model.fittings.warmed(fitted, parameters.fittings, self._warmer(now, at_us, idle))

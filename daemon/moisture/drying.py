@@ -16,7 +16,7 @@ from daemon.moisture.fitted import Bed
 from daemon.moisture.fitting_beliefs import FittingParameters, rated_flow
 from daemon.moisture.fitting_state import FittingState, Prepared
 from daemon.moisture.plan import Plan
-from daemon.moisture.power import Mask, Told, switched, works
+from daemon.moisture.power import Mask, Told, foreseen, switched, works
 
 LOAD_S = 120.0  # a dryer's cold mass, or a bowl, does not feel a burst of air: estimate
 MOST_PURGED = 0.9  # of the air that comes to twin beds
@@ -59,6 +59,16 @@ class Drying:
                 to_us,
                 self.period_us,
             )
+            for (_, dryer), before in zip(self.dryers, state.power, strict=True)
+        )
+        return replace(state, power=power)
+
+    def foreseen(self, state: FittingState, is_open: bool, at_us: int) -> FittingState:
+        """Which dryers will run at a time to come: as they do now, but for the shop's hours."""
+        if not self.dryers:
+            return state
+        power = tuple(
+            foreseen(before, dryer.power, is_open, at_us)
             for (_, dryer), before in zip(self.dryers, state.power, strict=True)
         )
         return replace(state, power=power)

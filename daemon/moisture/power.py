@@ -63,6 +63,19 @@ def switched(
     return Powered(contact, since_us, known)
 
 
+def foreseen(before: Powered, power: Power, is_open: bool, at_us: int) -> Powered:
+    """The state at a time to come, for which no contact has told anything yet.
+
+    One that stands off now and is not switched by the hours stays off; one whose contact cannot
+    be believed stays that.
+    """
+    if not power.in_service or (power.off_when_closed and not is_open):
+        return replace(before, since_us=-1, known=True)
+    if power.off_when_closed and before.since_us < 0 and before.contact.closed is not False:
+        return replace(before, since_us=at_us)
+    return before
+
+
 def works(powered: Powered, unknown: Array, warms_us: int, to_us: int) -> Mask:
     """The members in which a dryer dries, (members,) of bool.
 
