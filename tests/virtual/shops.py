@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
@@ -25,6 +26,7 @@ class Trial:
     kind: Kind = "plain"
     measured: float = week.MEASURED_ODDS  # share of drains whose volume is measured
     every_s: int = 60  # sampling period; a real shop's is 10 s, which takes six times as long
+    quiet_after_s: float = math.inf  # no drain is opened after this time
     certain: bool = False  # nothing is unknown: every width is 0
 
 
@@ -71,7 +73,14 @@ def build(numbers: Sequence[int], trial: Trial) -> list[Shop]:
             for random, site in zip(randoms, sites, strict=True)
         ]
     )
-    plans = [week.rounds(random, trial.days, trial.measured) for random in randoms]
+    plans = [
+        [
+            each
+            for each in week.rounds(random, trial.days, trial.measured)
+            if each.at_s <= trial.quiet_after_s
+        ]
+        for random in randoms
+    ]
     seen = simulate(truths, trial.kind, times, skies, wants, plans)
     return [
         Shop(

@@ -6,28 +6,28 @@ model as good as its goals fails once in a thousand draws of shops, no tighter.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 
 import numpy as np
 import pytest
 
 from daemon.moisture import learning
+from tests.virtual.foreseen import coverage, foresee_all
 from tests.virtual.physics import KINDS, Kind
 from tests.virtual.rigs import TRAPS
-from tests.virtual.runner import Run, Seen, run_all
-from tests.virtual.score import after, clustered_error, least_share, score, untaught
+from tests.virtual.runner import Seen, run_all
+from tests.virtual.score import (
+    WORTH_A_RATIO_KG,
+    after,
+    clustered_error,
+    least_share,
+    score,
+    untaught,
+)
 from tests.virtual.shops import Trial, build
 
-SHOPS, DAYS = 12, 3
-
-
-@pytest.fixture(scope="module")
-def runs() -> list[Run]:
-    return run_all(range(100, 100 + SHOPS), Trial(DAYS))
-
-
-def of(runs: Sequence[Run], least: int, most: int) -> list[Seen]:
-    return [each for run in runs for each in after(least, most)(run)]
+SHOPS, DAYS = 8, 3
 
 
 # ---- the bench ----
@@ -35,7 +35,7 @@ def of(runs: Sequence[Run], least: int, most: int) -> list[Seen]:
 
 @pytest.mark.parametrize("kind", KINDS)
 def test_a_virtual_shop_neither_makes_nor_loses_water(kind: Kind) -> None:
-    for shop in build(range(6), Trial(1, kind)):
+    for shop in build(range(3), Trial(1, kind)):
         assert abs(shop.missing) < 1e-12
         assert shop.contents_kg.max() > 0.01
 
@@ -49,7 +49,7 @@ def test_a_shop_is_the_same_whichever_others_stand_beside_it() -> None:
 
 def test_what_breaks_a_shop_changes_where_its_water_goes() -> None:
     plain, slack, short, drift = (
-        build(range(4), Trial(1, kind)) for kind in ("plain", "separation", "mixing", "drift")
+        build(range(2), Trial(1, kind)) for kind in ("plain", "separation", "mixing", "drift")
     )
     for usual, other, hurried, same in zip(plain, slack, short, drift, strict=True):
         assert same.held_kg == usual.held_kg  # the sensor drifts, not the shop
@@ -61,7 +61,7 @@ def test_what_breaks_a_shop_changes_where_its_water_goes() -> None:
 def test_with_nothing_unknown_the_model_says_what_is_so() -> None:
     """Two programs of one physics, written apart, differ by what samples every 10 s miss of a
     pressure that cycles: 0.1 to 3 % measured."""
-    for run in run_all([4, 6, 17], Trial(days=1, every_s=10, certain=True)):
+    for run in run_all([4, 6], Trial(days=1, every_s=10, certain=True)):
         assert len(run.untaught) == len(TRAPS)
         for seen in run.untaught:
             assert seen.said.middle == pytest.approx(seen.true_kg, rel=0.04)
@@ -82,26 +82,35 @@ def test_the_least_share_is_the_binomial_distributions() -> None:
 # ---- the estimates ----
 
 
-def test_intervals_hold_the_truth_before_anything_was_learned(runs: list[Run]) -> None:
-    found = score(each for run in runs for each in untaught(run))
-    assert found.drains >= 30
-    assert found.coverage >= least_share(0.86, found.drains)
-    assert found.error <= 0.45  # goal 0.30
-
-
-def test_intervals_hold_the_truth_after_learning(runs: list[Run]) -> None:
-    found = score(of(runs, 1, 99))
-    assert found.drains >= 25
-    assert found.coverage >= least_share(0.85, found.drains)
-    assert found.width < 0.6 * score(each for run in runs for each in untaught(run)).width
-
-
-def test_one_measured_drain_brings_the_middle_near(runs: list[Run]) -> None:
-    taught = [each for each in of(runs, 1, 99) if each.true_kg >= 0.02]
-    near = [abs(each.said.middle - each.true_kg) <= 0.10 * each.true_kg for each in taught]
-    assert len(near) >= 20
-    assert np.mean(near) >= least_share(0.5, len(near))
-
-
-def test_no_belief_collapses(runs: list[Run]) -> None:
+def test_what_is_said_of_a_few_shops_is_honest() -> None:
+    """One run serves all questions: it is what takes the time."""
+    runs = run_all(range(100, 100 + SHOPS), Trial(DAYS, measured=0.9))
+    before = score(each for run in runs for each in untaught(run))
+    taught = [each for run in runs for each in after(1, 99)(run)]
+    learned = score(taught)
+    assert before.drains >= 3 * SHOPS
+    assert learned.drains >= 2 * SHOPS
+    # the intervals hold the truth
+    assert before.coverage >= least_share(0.86, before.drains)
+    assert learned.coverage >= least_share(0.85, learned.drains)
+    # more often than not the middle is as near as it should be in the median
+    assert _near(0.30, [each for run in runs for each in untaught(run)])
+    assert _near(0.10, taught)
+    # what is learned narrows the intervals, and no belief collapses
+    assert learned.width < 0.6 * before.width
     assert min(run.least_spread for run in runs) > 0.9 * learning.LEAST_SD
+
+
+def _near(within: float, seen: Sequence[Seen]) -> bool:
+    worth = [each for each in seen if each.true_kg >= WORTH_A_RATIO_KG]
+    near = [abs(each.said.middle - each.true_kg) <= within * each.true_kg for each in worth]
+    return bool(np.mean(near) >= least_share(0.5, len(near)))
+
+
+def test_forecasts_of_a_few_shops_are_honest() -> None:
+    found = foresee_all(range(200, 205), Trial())
+    assert len(found) >= 12
+    assert coverage(found) >= least_share(0.80, len(found))
+    assert all(each.early_h <= each.middle_h <= each.late_h for each in found)
+    reached = [each for each in found if math.isfinite(each.true_h)]
+    assert len(reached) >= len(found) / 2  # else there was little to hold it against

@@ -6,6 +6,7 @@ that a shop is the same whichever others are simulated beside it.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -26,6 +27,7 @@ ENDS_S = 18 * 3600.0  # the last day's end
 STEP_OPEN_S, STEP_CLOSED_S = 10.0, 60.0
 EVERY_DAYS, EVERY_ODDS = (1, 2, 3), (0.6, 0.25, 0.15)
 MEASURED_ODDS = 0.75
+DAY_LOG_SD = 0.25  # how much one day's load differs from another's
 
 
 def step_times(days: int) -> Array:
@@ -53,16 +55,21 @@ class Weather:
 
 
 def weather(random: np.random.Generator, times: Array) -> Weather:
-    """A daily cycle about the season's level, with slow changes of the air's water."""
+    """A daily cycle about the season's level, and days that differ as days do.
+
+    From one day to the next 2.7 K and 27 % of the air's water, warmer days being moister: what a
+    year of two places' weather shows (see `daemon.moisture.outlook`).
+    """
     hours = (times + BEGUN_S) / 3600.0
     level, swing = random.uniform(12.0, 30.0), random.uniform(1.5, 6.0)
-    temperature = level + swing * np.sin(2.0 * np.pi * (hours - 9.0) / 24.0)
-    temperature = temperature + _slow(random, times, 1.5)
+    warm, moist = _slow(random, times), _slow(random, times)
+    temperature = level + swing * np.sin(2.0 * np.pi * (hours - 9.0) / 24.0) + 3.0 * warm
     humid = random.uniform(0.40, 0.85)
-    vapor = humid * _magnus(np.full_like(times, level)) * np.exp(_slow(random, times, 0.08))
+    water = np.exp(0.3 * (0.7 * warm + math.sqrt(1.0 - 0.7**2) * moist))
+    vapor = humid * _magnus(np.full_like(times, level)) * water
     relative = np.clip(vapor / _magnus(temperature), 0.15, 0.96)
     altitude = random.uniform(0.0, 500.0)
-    pressure = 101_325.0 * np.exp(-altitude / 8400.0) + _slow(random, times, 500.0)
+    pressure = 101_325.0 * np.exp(-altitude / 8400.0) + 500.0 * _slow(random, times)
     return Weather(temperature + 273.15, relative, pressure, level + 273.15)
 
 
@@ -71,15 +78,15 @@ def _magnus(celsius: Array) -> Array:
     return np.asarray(611.2 * np.exp(17.62 * celsius / (243.12 + celsius)), dtype=np.float64)
 
 
-def _slow(random: np.random.Generator, times: Array, sd: float) -> Array:
-    """A smooth walk with a correlation of most of a day, (times,)."""
+def _slow(random: np.random.Generator, times: Array) -> Array:
+    """A smooth walk of variance 1 that remembers 0.6 of itself a day later, (times,)."""
+    keeps = 0.6**0.25
     knots = np.arange(0.0, times[-1] + 12 * 3600.0, 6 * 3600.0)
     values = np.empty_like(knots)
     values[0] = random.normal()
     for k in range(1, knots.size):
-        values[k] = 0.75 * values[k - 1] + 0.66 * random.normal()
-    walk: Array = sd * np.interp(times, knots, values)
-    return walk
+        values[k] = keeps * values[k - 1] + math.sqrt(1.0 - keeps**2) * random.normal()
+    return np.interp(times, knots, values)
 
 
 def demand(random: np.random.Generator, times: Array, delivered_m3_per_s: float) -> Array:
@@ -92,11 +99,13 @@ def demand(random: np.random.Generator, times: Array, delivered_m3_per_s: float)
     job_s = random.uniform(600.0, 2400.0)
     busy = _switching(random, times, job_s * busy_share, job_s * (1.0 - busy_share))
     trigger = _switching(random, times, random.uniform(20.0, 90.0), random.uniform(20.0, 90.0))
-    duty = random.uniform(0.15, 0.65)
+    duty = random.uniform(0.15, 0.6)
     # what hangs on a hose was bought for the compressor: not far above what it delivers
     gun = min(float(duty / (0.5 * busy_share)), 1.5) * delivered_m3_per_s
+    days = ((times[:-1] + BEGUN_S) // DAY_S).astype(np.intp)
+    load = np.exp(DAY_LOG_SD * random.normal(size=int(days.max()) + 1))
     leak = random.uniform(0.005, 0.06) * delivered_m3_per_s
-    return np.where(working & busy & trigger, gun + leak, leak)
+    return np.where(working & busy & trigger, gun * load[days] + leak, leak)
 
 
 def _switching(
