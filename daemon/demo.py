@@ -95,6 +95,7 @@ def run(port: int, length: str | None, broker_at: str | None, speed: float) -> N
     compose.stop_on_signals(stop)
     with tempfile.TemporaryDirectory(prefix="dripleg-demo-") as folder, EmulatedHardware() as parts:
         setters = parts.fit(site.sensors)
+        parts.make_noisy()
         held = {s.id: s.trap.holds_at_start_kg for s in site.line.stations if s.trap is not None}
         shop = MakeBelieveShop(start_us, setters, held)
         samplers: list[_ShopSampler] = []

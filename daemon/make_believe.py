@@ -34,6 +34,7 @@ class MakeBelieveShop:
     running: bool = False
     rise_k: float = 10.0
     vapor_kg: float = 0.0
+    step_us: int = SECOND_US
     _begun_us: int = field(init=False)
 
     def __post_init__(self) -> None:
@@ -42,10 +43,10 @@ class MakeBelieveShop:
         self._show()
 
     def advance_to(self, now_us: int) -> None:
-        """Live on until a time, a second at a time."""
-        while self.now_us + SECOND_US <= now_us:
-            self.now_us += SECOND_US
-            self._second()
+        """Live on until a time, a second (or what the step is) at a time."""
+        while self.now_us + self.step_us <= now_us:
+            self.now_us += self.step_us
+            self._step(self.step_us / SECOND_US)
         self._show()
 
     def drain(self, trap: str) -> None:
@@ -82,13 +83,13 @@ class MakeBelieveShop:
         temperature_k = self._tank_k() if station == "tank" else self._pipe_k()
         return air.saturated_humidity_ratio(temperature_k, self.pressure_pa + BAROMETER_PA)
 
-    def _second(self) -> None:
+    def _step(self, seconds: float) -> None:
         room_k = self._room_k()
         ratio = air.humidity_ratio(room_k, BAROMETER_PA, self._humidity())
         density = air.dry_air_density(room_k, BAROMETER_PA, ratio)
-        drawn = DELIVERED_M3_S * density if self.running else 0.0
-        used = self._used_m3_s() * density
-        self.rise_k += ((RISE_K if self.running else 0.0) - self.rise_k) / RISE_S
+        drawn = DELIVERED_M3_S * density * seconds if self.running else 0.0
+        used = self._used_m3_s() * density * seconds
+        self.rise_k += ((RISE_K if self.running else 0.0) - self.rise_k) * seconds / RISE_S
         held = self._dry_kg()
         self.pressure_pa += (drawn - used) / held * (self.pressure_pa + BAROMETER_PA)
         self._water(drawn, used, ratio, held)

@@ -106,6 +106,14 @@ class EmulatedHardware:
     def line(self, chip: str, number: int) -> EmulatedLine:
         return self.lines(chip).line(number)
 
+    def make_noisy(self) -> None:
+        """From now on the parts' conversions differ a little, as those of real parts do."""
+        with self._lock:
+            parts = [part for bus in self._buses.values() for part in bus.parts.values()]
+        for part in parts:
+            if isinstance(part, EmulatedBme280):
+                part.noisy = True
+
     def fit(self, sensors: Iterable[SensorConfig]) -> dict[str, Setter]:
         """Put in the parts of these sensors; a setter for every channel, by its name."""
         return fit(self, sensors)
