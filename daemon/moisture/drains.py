@@ -120,7 +120,7 @@ class Opening:
         else:
             left = np.where(self.opened > 0.0, np.minimum(held, self.closes_at_kg), held)
             behind = np.zeros(held.shape, dtype=bool)
-        self.limited = np.count_nonzero(behind) / behind.size
+        self.limited = float(np.count_nonzero(behind) / behind.size)
         settled: Array = left
         return settled
 

@@ -45,6 +45,7 @@ BELONGS: dict[str, tuple[StationKind, ...]] = {
     "ice": ("cooler",),
 }
 KEYS = tuple(BELONGS)
+OUTSIDE = "no station of the line says it"  # how warm a room or a coolant is
 FLOW_LIMITS_M3_S = (1e-3 / 60, 1000.0 / 60)
 
 
@@ -137,7 +138,7 @@ def _dew_point(table: Table, usual: Usual) -> Fixed:
 
 
 def _around(table: Table, names: Names) -> Measured | Fixed | None:
-    rules = Rules(0.0, like=False)
+    rules = Rules(0.0, like=False, unlike=OUTSIDE)
     source = read_source(table, "around", TEMPERATURE, rules, names)
     if not table.said("around"):
         table.default("around", "as at the intake", "the air around the dryer")
@@ -191,7 +192,9 @@ def _used(raw: object) -> float:
 
 def _cooled(table: Table, names: Names) -> FittingDraft:
     """The temperature of air that leaves a cooler: its coolant's plus the approach."""
-    coolant = read_source(table, "coolant", TEMPERATURE, Rules(0.0, like=False), names)
+    coolant = read_source(
+        table, "coolant", TEMPERATURE, Rules(0.0, like=False, unlike=OUTSIDE), names
+    )
     ice = read_fixed(table, "ice", _mass("ice"), OF_MASS, defaults.SAID_BECAUSE)
     if not any(table.said(key) for key in ("approach", "coolant", "ice")):
         return FittingDraft()

@@ -34,6 +34,7 @@ class Rules:
     like_give_or_take: float  # of a `like` without give_or_take
     like: bool = True
     rise_by_duty: bool = False
+    unlike: str = "the line begins at the intake"  # why no `like` may stand here
 
 
 def _temperature(raw: object) -> Fixed:
@@ -188,7 +189,7 @@ def _channel(inner: Table, spec: Spec, names: Names) -> Source | None:
 
 def _rule(inner: Table, spec: Spec, rules: Rules, names: Names) -> Source | None:
     if not rules.like:
-        inner.wrong("like", "the line begins at the intake: name a channel or write a value")
+        inner.wrong("like", f"{rules.unlike}: name a channel or write a value")
         return None
     station = inner.read("like", names.station, "")
     if "rise_by_duty" in inner.values:
