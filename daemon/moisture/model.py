@@ -125,7 +125,7 @@ class Model:
         now = evaluation.conditions()
         saturated = air.saturated_humidity_ratio_unchecked(now.temperature_k, now.pressure_pa)
         intake = self._intake_ratio(now)
-        ratio = np.minimum(saturated, intake)
+        ratio = self._passed(saturated, intake)
         stored = self._stored(parameters, now, ratio)
         water = line.WaterState(
             trap=np.array([self._at_start(i) for i in range(len(plan.stations))]),
@@ -163,6 +163,14 @@ class Model:
         seen = tuple(receiver in now.measured for receiver in plan.receivers)
         pump = self._watch(state, heard)[0]
         return replace(state, air=replace(state.air, seen=seen), pump=pump)
+
+    def _passed(self, saturated: Array, intake: Array) -> Array:
+        """Humidity ratios of air that has come down the line as it is now, (stations, members)."""
+        ratio = np.minimum(saturated, intake)
+        for i, above in enumerate(self.plan.parent):
+            if above >= 0:
+                np.minimum(ratio[i], ratio[above], out=ratio[i])
+        return ratio
 
     def _at_start(self, i: int) -> Array:
         trap = self.plan.stations[i].trap

@@ -67,6 +67,13 @@ def test_saturated_air_behind_a_regulator_has_its_dew_point_and_margin() -> None
     assert payload["speaks_of"].startswith("water only")
 
 
+def test_air_that_rests_in_the_line_at_the_start_has_passed_it() -> None:
+    first = list(still(SHOP, 0.0))
+    begun = known(gun(CORE, run(CORE, first)).air.pressure_dew_point_k)
+    later = known(gun_of(SHOP).air.pressure_dew_point_k)
+    assert begun.p50 == pytest.approx(later.p50, abs=1.0)
+
+
 def test_without_dryer_and_regulator_the_margin_stays_near_nothing() -> None:
     regulator = SITE[SITE.index('[[station]]\nid = "booth-regulator"') : SITE.index("[[outlet]]")]
     text = SITE.replace(regulator, "").replace('after = "booth-regulator"', 'after = "bowl"')
