@@ -36,9 +36,8 @@ class Contradictions:
                 if text:
                     found[switch.channel.rpartition(".")[0]] = text
         for station in self._points:
-            said = observing.contradicts(self.model.plan, state.model, station)
-            if said is not None:
-                sensor, text = self._point(state, station, said)
+            if observing.contradicts(self.model.plan, state.model, station):
+                sensor, text = self._point(state, station)
                 found[sensor] = text
         return found
 
@@ -65,14 +64,16 @@ class Contradictions:
             f"{high}: does the float stick, or was it drained and nobody said so?"
         )
 
-    def _point(
-        self, state: CoreState, station: int, said: observing.MeasuredDewPoint
-    ) -> tuple[str, str]:
-        one = self.model.plan.stations[station]
+    def _point(self, state: CoreState, station: int) -> tuple[str, str]:
+        one, model = self.model.plan.stations[station], state.model
+        said = observing.measured(
+            self.model.plan, model.beliefs, model.held, model.conditions, station
+        )
         source = one.measured_dew_point
         assert isinstance(source, Measured | VentedCell)
         sensor = observing.channels_of(source)[0].rpartition(".")[0]
-        hottest_k = float(state.model.conditions.temperature_k[station].max())
+        assert said is not None
+        hottest_k = float(model.conditions.temperature_k[station].max())
         units = self.site.units
         dew_point = show_temperature(said.low_k if said.low_k is not None else said.high_k, units)
         return sensor, (

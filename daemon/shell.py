@@ -14,9 +14,10 @@ from typing import Protocol
 
 from daemon import accept
 from daemon.advance import Core, Estimate
-from daemon.alarms import Alarm, AlarmRecord, Transition, correction, shown
+from daemon.alarms import Alarm, AlarmRecord, Transition, correction
 from daemon.buttons import Buttons
 from daemon.clock import HOUR_US, MINUTE_US, Clock, format_rfc3339
+from daemon.dew_points import dew_point_views
 from daemon.errors import JournalError, StoreError
 from daemon.foresight import Score
 from daemon.journal import Body, Drain, Entry
@@ -40,6 +41,7 @@ from daemon.taking import learned_words
 from daemon.ticks import first_at_or_after, ticks
 from daemon.views import (
     ChannelHealth,
+    DewPointView,
     Health,
     OutletView,
     PlantView,
@@ -255,7 +257,6 @@ class Shell:
             entries,
             transitions + changed,
             checkpoint=True,
-            every_alarm=True,
         )
         self._show(estimate)
 
@@ -267,7 +268,6 @@ class Shell:
         transitions: Sequence[Transition],
         reminders: Sequence[Reminder] = (),
         checkpoint: bool = False,
-        every_alarm: bool = False,
     ) -> None:
         before_us = self._state.time_us if self._state is not None else state.time_us
         drained = any(isinstance(entry.body, Drain) for entry in entries)
@@ -275,9 +275,7 @@ class Shell:
         blob = None
         if checkpoint or drained or full_hour:
             blob = self._recovery.blob(state)
-        changed = {each.alarm for each in transitions}
-        alarms = [name for name in state.alarms if every_alarm or name in changed]
-        messages = self._messages(state, transitions, alarms, reminders)
+        messages = self._messages(transitions, reminders)
         self._store.commit_tick(state.time_us, readings, transitions, messages, blob)
         taken = {entry.seq for entry in entries}
         self._pending = [entry for entry in self._pending if entry.seq not in taken]
@@ -291,21 +289,14 @@ class Shell:
             self.link.wake()
 
     def _messages(
-        self,
-        state: CoreState,
-        transitions: Sequence[Transition],
-        alarms: Sequence[str],
-        reminders: Sequence[Reminder],
+        self, transitions: Sequence[Transition], reminders: Sequence[Reminder]
     ) -> list[Message]:
+        """What must not be lost. States are told apart: of them only the newest counts."""
         if self._topics is None:
             return []
         topics = self._topics
         return [
             *(event_message(topics, each) for each in transitions),
-            *(
-                alarm_message(topics, shown(self.core.definitions[name], state.alarms[name]))
-                for name in alarms
-            ),
             *(reminder_message(topics, each) for each in reminders),
         ]
 
@@ -386,6 +377,13 @@ class Shell:
     def outlets(self) -> Sequence[OutletView]:
         with self._lock:
             return () if self._estimate is None else self._estimate.outlets
+
+    def dew_points(self) -> Sequence[DewPointView]:
+        with self._lock:
+            state = self._state
+        if state is None:
+            return ()
+        return tuple(dew_point_views(self.core.model, self.core.rules.contradictions, state))
 
     def margin(self, outlet: str, surface_k: float) -> OutletView | None:
         with self._lock:

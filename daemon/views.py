@@ -136,6 +136,23 @@ class PlantView:
 
 
 @dataclass(frozen=True, slots=True)
+class DewPointView:
+    """A measured pressure dew point (frost point below 0 degC), K; None where it is not known.
+
+    With `high_k` alone nothing but "below" can be said.
+    """
+
+    station: str
+    sensor: str
+    at_us: int
+    pressure_pa: float  # absolute, of the line there
+    low_k: float | None
+    middle_k: float | None
+    high_k: float | None
+    fault: str  # why there is no number, in words
+
+
+@dataclass(frozen=True, slots=True)
 class ChannelHealth:
     """The last thing that a channel said."""
 
@@ -196,6 +213,10 @@ class Running(Protocol):
 
     def outlets(self) -> Sequence[OutletView]:
         """One view an outlet, in the site file's order; empty until the first tick."""
+        ...
+
+    def dew_points(self) -> Sequence[DewPointView]:
+        """One view a station whose dew point is measured; empty until the first tick."""
         ...
 
     def margin(self, outlet: str, surface_k: float) -> OutletView | None:

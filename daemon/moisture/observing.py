@@ -167,25 +167,30 @@ def _bias(beliefs: Beliefs, source: Measured) -> tuple[float, float]:
     return float(values.mean()) * sd, 2.0 * float(values.std()) * sd
 
 
-def contradicts(plan: Plan, state: State, station: int) -> MeasuredDewPoint | None:
-    """A dew point that is above any temperature the line can have there: water would drop out.
+def contradicts(plan: Plan, state: State, station: int) -> bool:
+    """Whether a dew point is above any temperature the line can have there: water would drop out.
 
-    None while there is no such contradiction, and while the sensor is silent.
+    Not while the sensor is silent. Cheap: it is asked at every step.
     """
     source = plan.stations[station].measured_dew_point
     if source is None or not _fresh(plan, state, source):
-        return None
-    hottest_k = float(state.conditions.temperature_k[station].max())
-    if isinstance(source, VentedCell):
-        reading = state.held[source.relative_humidity.channel].value
-        if reading <= source.relative_humidity.give_or_take:
-            return None
-    elif state.held[source.channel].value <= hottest_k:
-        return None
-    said = measured(plan, state.beliefs, state.held, state.conditions, station)
-    if said is None or said.low_k is None or said.low_k <= hottest_k:
-        return None
-    return said
+        return False
+    if isinstance(source, Measured):
+        bias_k, width_k = _bias(state.beliefs, source)
+        low_k = state.held[source.channel].value - bias_k - width_k
+        return low_k > float(state.conditions.temperature_k[station].max())
+    bias, width = _bias(state.beliefs, source.relative_humidity)
+    humidity = state.held[source.relative_humidity.channel].value - bias - width
+    if humidity <= 0.0:
+        return False
+    bias_k, width_k = _bias(state.beliefs, source.temperature)
+    cell = (
+        [state.held[source.temperature.channel].value - bias_k - width_k],
+        [state.held[source.pressure.channel].value],
+        [min(humidity, 1.0)],
+    )
+    ratio = air.humidity_ratio_unchecked(*(np.array(each) for each in cell))
+    return float(ratio[0]) > float(state.saturated[station].max())
 
 
 def _fresh(plan: Plan, state: State, source: Measured | VentedCell) -> bool:

@@ -27,6 +27,7 @@ from daemon.moisture.description import (
 from daemon.site.types import Api, Cup, DefaultUsed, Hours, Mqtt, OutletSettings, Site, Units
 from daemon.views import (
     ChannelHealth,
+    DewPointView,
     Health,
     OutletView,
     Recorded,
@@ -232,6 +233,7 @@ class FakeRunning:
     views: list[TrapView] = field(default_factory=lambda: [tank_view(), riser_view()])
     standing: dict[str, Alarm] = field(default_factory=some_alarms)
     shown_outlets: list[OutletView] = field(default_factory=lambda: [gun_view()])
+    shown_dew_points: list[DewPointView] = field(default_factory=list)
     problems: tuple[str, ...] = ()
     recorded: dict[str, SeriesOfReadings] = field(default_factory=_no_readings)
     journal: list[Entry] = field(default_factory=list)
@@ -259,6 +261,9 @@ class FakeRunning:
 
     def outlets(self) -> Sequence[OutletView]:
         return tuple(self.shown_outlets)
+
+    def dew_points(self) -> Sequence[DewPointView]:
+        return tuple(self.shown_dew_points)
 
     def margin(self, outlet: str, surface_k: float) -> OutletView | None:
         return gun_view(surface_k) if self.shown_outlets else None

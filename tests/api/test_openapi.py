@@ -28,6 +28,7 @@ def operations(described: dict[str, Any]) -> Iterator[tuple[str, str, dict[str, 
 def test_every_route_of_the_first_version_is_described(described: dict[str, Any]) -> None:
     assert sorted((method, path) for method, path, _ in operations(described)) == [
         ("get", "/api/v1/alarms"),
+        ("get", "/api/v1/dew-points"),
         ("get", "/api/v1/health"),
         ("get", "/api/v1/outlets"),
         ("get", "/api/v1/outlets/{outlet}/margin"),

@@ -10,12 +10,16 @@ import numpy as np
 import pytest
 
 from daemon.advance import Core
+from daemon.dew_points import dew_point_views
+from daemon.errors import SiteError
 from daemon.moisture import air, observing
 from daemon.moisture.beliefs import bias_of
+from daemon.moisture.description import Measured, VentedCell
 from daemon.moisture.ensemble import Array, percentiles
 from daemon.moisture.observing import Gathered, Observed, cell_dew_point
 from daemon.site.types import Site
 from daemon.state import CoreState, Inputs
+from daemon.views import DewPointView
 from sensors.reading import Reading, reading
 from tests.daemon.shops import BEGUN_US, SITE, site
 
@@ -232,6 +236,65 @@ def test_a_surprise_is_learned_from_only_when_it_comes_twice() -> None:
     assert observed["riser"].surprise == 0
     bias = bias_of("hygrometer.dew_point")
     assert float(second.beliefs[bias].mean()) < float(first.beliefs[bias].mean()) - 0.5
+
+
+def views_of(shop: Site, says: dict[str, float]) -> list[DewPointView]:
+    core = Core(shop)
+    state = run(shop, 1, lambda _: says)
+    return list(dew_point_views(core.model, core.rules.contradictions, state))
+
+
+def test_the_daemon_shows_a_cell_s_dew_point_at_the_line_s_pressure() -> None:
+    cell = {"cell.temperature": 293.15, "cell.pressure": 101_300.0}
+    shop = watched(CELL, '"cell"')
+    (view,) = views_of(shop, cell | {"cell.relative_humidity": 0.068})
+    assert (view.station, view.sensor, view.fault) == ("riser", "cell", "")
+    assert view.pressure_pa == pytest.approx(801_300.0, rel=0.02)
+    assert view.low_k is not None
+    assert view.middle_k is not None
+    assert view.high_k is not None
+    assert view.middle_k - 273.15 == pytest.approx(10.0, abs=0.4)
+    assert view.low_k < view.middle_k - 5.0
+    assert view.high_k > view.middle_k + 5.0
+    (dry,) = views_of(shop, cell | {"cell.relative_humidity": 0.01})
+    assert (dry.low_k, dry.middle_k) == (None, None)
+    assert dry.high_k is not None
+    (wet,) = views_of(shop, cell | {"cell.relative_humidity": 0.60})
+    assert wet.high_k is None
+    assert "is there liquid in its cell?" in wet.fault
+    (silent,) = views_of(shop, {})
+    assert silent.high_k is None
+    assert "cell.relative_humidity" in silent.fault
+
+
+@pytest.mark.parametrize(
+    ("said", "problem"),
+    [
+        ('"hygrometer"', 'names a sensor, not what it gives; write "hygrometer.dew_point"'),
+        ('"tank-gauge.pressure"', "gives a pressure, but a dew point belongs here"),
+        ('"hygrometre.dew_point"', 'did you mean "hygrometer.dew_point"?'),
+        ('"3 degC"', "is neither a value"),
+        ("3", "must be in quotes"),
+        ('{ give_or_take = "1 K" }', "says no channel"),
+        ('{ channel = "cell", give_or_take = "1 K" }', "write its id alone"),
+        ('{ channel = "hygrometer.dew_point", give_or_take = "1 bar" }', "is a pressure"),
+    ],
+)
+def test_a_measured_dew_point_that_cannot_be_is_told(said: str, problem: str) -> None:
+    with pytest.raises(SiteError) as caught:
+        watched(TRANSMITTER + CELL, said)
+    assert len(caught.value.problems) == 1
+    assert problem in str(caught.value.problems[0])
+    assert caught.value.problems[0].key.startswith("measured_dew_point")
+
+
+def test_a_measured_dew_point_is_a_transmitter_or_a_cell() -> None:
+    by_table = '{ channel = "hygrometer.dew_point", give_or_take = "3 K" }'
+    station = watched(TRANSMITTER, by_table).line.stations[RISER]
+    assert station.measured_dew_point == Measured("hygrometer.dew_point", 3.0)
+    cell = watched(CELL, '"cell"').line.stations[RISER].measured_dew_point
+    assert isinstance(cell, VentedCell)
+    assert cell.relative_humidity.channel == "cell.relative_humidity"
 
 
 def test_a_dew_point_above_the_line_s_temperature_is_a_fault_and_not_learned_from() -> None:
