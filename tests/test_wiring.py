@@ -69,6 +69,13 @@ def test_an_example_is_what_its_driver_asks_for(example: dict[str, Any]) -> None
     assert driver.channels(config)
 
 
+def test_every_driver_has_an_example_and_every_key_is_told() -> None:
+    assert {example["driver"] for example in EXAMPLES} == set(DRIVERS)
+    for driver in DRIVERS.values():
+        for key in driver.keys:
+            assert re.search(rf"(?<![\w-]){key.name}(?![\w-])", TEXT), f"{driver.name} {key.name}"
+
+
 def test_the_examples_are_one_shops_and_share_no_place() -> None:
     # The converter's and the bus's addresses too: all of them could be on one Pi.
     places: list[str] = []
