@@ -1,0 +1,132 @@
+"""How long a live tick takes, and what the daemon weighs. Run by hand:
+
+    python -m pytest -m bench -s tests/daemon/test_benchmarks.py
+
+Goals: a tick of 12 channels, 128 members and 10 stations, commit included, under 10 ms (median);
+the model's step alone under 0.5 ms; the daemon's process under 110 MB. Figures are printed; the
+tests fail only far beyond the goals, since machines differ and are shared.
+"""
+
+from __future__ import annotations
+
+import json
+import subprocess
+import sys
+from collections.abc import Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass, field
+from pathlib import Path
+from time import perf_counter, thread_time
+
+import numpy as np
+import pytest
+
+from daemon.advance import Core
+from daemon.clock import HOUR_US
+from daemon.moisture.model import Heard
+from daemon.recovery import Recovery
+from daemon.shell import Shell
+from daemon.state import Inputs
+from daemon.store.store import Store
+from tests.daemon.shops import BEGUN_US
+from tests.daemon.test_shell import HandClock, Played
+from tests.daemon.willow_yard import a_day, willow_yard
+from tests.tree import ROOT
+
+pytestmark = pytest.mark.bench
+
+TICKS = 720  # two hours
+TICK_GOAL_S, STEP_GOAL_S, MEMORY_GOAL_MB = 0.010, 0.0005, 110.0
+
+
+@dataclass
+class Times:
+    """How long one kind of work took, each time: by the clock, and of this thread's processor."""
+
+    name: str
+    clock_s: list[float] = field(default_factory=list)
+    processor_s: list[float] = field(default_factory=list)
+
+    @contextmanager
+    def one(self) -> Iterator[None]:
+        clock_s, processor_s = perf_counter(), thread_time()
+        yield
+        self.clock_s.append(perf_counter() - clock_s)
+        self.processor_s.append(thread_time() - processor_s)
+
+    @property
+    def median_s(self) -> float:
+        return float(np.median(self.clock_s))
+
+    def tell(self) -> None:
+        """Medians tell of the program, the worst of the machine's other work too."""
+        ms = np.array(self.clock_s) * 1e3
+        middle, most, nearly_all = np.percentile(ms, [50, 90, 99])
+        print(
+            f"{self.name}: median {middle:.2f} ms (of the processor "
+            f"{np.median(self.processor_s) * 1e3:.2f}), 90 % {most:.2f}, 99 % {nearly_all:.2f}, "
+            f"worst {ms.max():.1f}"
+        )
+
+
+def test_a_live_tick(tmp_path: Path) -> None:
+    site = willow_yard()
+    record = a_day(site, TICKS)
+    clock = HandClock(BEGUN_US)
+    with Store.open(tmp_path / "willow-yard.db", site.channels) as store:
+        shell = Shell(site, clock, Played(record), store)
+        ordinary = Times("live tick, commit included")
+        hourly = Times("at full hours")
+        for now_us, _ in record:
+            clock.wall_us = now_us
+            with (hourly if now_us % HOUR_US == 0 else ordinary).one():
+                shell.tick(now_us)
+        again = Shell(site, clock, Played([]), store)
+        back = Times(f"coming back over {(TICKS - 1) % 360} ticks")
+        with back.one():
+            again.recover()
+        checkpoint = len(Recovery(shell.core, store).blob(shell._state))  # type: ignore[arg-type]
+    print()
+    for each in (ordinary, hourly, back):
+        each.tell()
+    print(f"a checkpoint: {checkpoint / 1024:.0f} KiB")
+    assert ordinary.median_s < 5 * TICK_GOAL_S
+
+
+def test_the_parts_of_a_tick(tmp_path: Path) -> None:
+    """The model's step alone, all of advance, and the commit alone."""
+    site = willow_yard()
+    core = Core(site)
+    record = a_day(site, 400)
+    state = core.initial(record[0][0], Inputs(record[0][1]))[0]
+    model = state.model
+    step, advance, commit = (
+        Times(name) for name in ("the model's step", "advance, model included", "commit")
+    )
+    with Store.open(tmp_path / "willow-yard.db", site.channels) as store:
+        for now_us, readings in record[1:]:
+            heard = Heard({r.channel: [(r.time_us, r.value, r.good)] for r in readings})
+            with step.one():
+                model, _ = core.model.step(model, now_us, heard)
+            with advance.one():
+                state = core.advance(state, now_us, Inputs(readings))[0]
+            with commit.one():
+                store.commit_tick(now_us, readings)
+    print()
+    for each in (step, advance, commit):
+        each.tell()
+    assert step.median_s < 10 * STEP_GOAL_S
+
+
+def test_what_the_daemon_weighs(tmp_path: Path) -> None:
+    """A process of its own, with its API and emulated parts, after 200 ticks."""
+    done = subprocess.run(
+        [sys.executable, "-m", "tests.daemon.willow_yard", str(tmp_path / "willow-yard.db")],
+        cwd=ROOT,
+        capture_output=True,
+        text=True,
+        check=True,
+    )
+    found = json.loads(done.stdout)
+    print(f"\nresident after 200 ticks: {found['VmRSS']:.0f} MB, at most {found['VmHWM']:.0f} MB")
+    assert found["VmRSS"] < 2 * MEMORY_GOAL_MB
