@@ -73,19 +73,22 @@ class DrainWatching:
         """After a step in which this was heard."""
         watched = before.drains
         if self._volumes:
-            watched = self._pressures(watched, after.model, heard)
+            watched = self._pressures(watched, before.model, after.model, heard)
         if self.switches:
             watched = self._floats(watched, before, after)
         if self.traps:
             watched = self._leak(watched, after.followed.plant)
         return watched
 
-    def _pressures(self, watched: DrainsWatched, model: State, heard: Heard) -> DrainsWatched:
+    def _pressures(
+        self, watched: DrainsWatched, before: State, model: State, heard: Heard
+    ) -> DrainsWatched:
         gauges, falls = watched.gauges, watched.falls
         rests = model.contact.closed is False or (
             model.contact.closed is None and not model.pump.pumping
         )
-        noise_pa = SWING_OF_NOISE * float(np.sqrt(model.pump.noise_pa2))
+        # of the readings before: the fall itself looks like noise to the pump's watch
+        noise_pa = SWING_OF_NOISE * float(np.sqrt(before.pump.noise_pa2))
         for tank, (channel, volume_m3) in self._volumes.items():
             told = [(at, value) for at, value, good in heard.get(channel, ()) if good]
             if not told:
