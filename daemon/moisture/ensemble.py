@@ -35,7 +35,8 @@ def standard_normal(seed: int, name: str, members: int, when: int = 0) -> Array:
     """Standard normal values, shape (members,), for the draw `name` at counter `when`."""
     name_key = int.from_bytes(blake2b(name.encode(), digest_size=8).digest(), "little")
     key = np.array([seed & (2**64 - 1), name_key], dtype=np.uint64)
-    bits = np.random.Philox(key=key, counter=[when, 0, 0, 0]).random_raw(members)
+    # the first word counts up as bits are taken: times of their own must differ in another
+    bits = np.random.Philox(key=key, counter=[0, when, 0, 0]).random_raw(members)
     order = np.argsort(bits, kind="stable")
     values = np.empty(members)
     values[order] = _strata(members)
