@@ -18,6 +18,7 @@ from daemon.moisture.description import (
     Station,
     Trap,
 )
+from daemon.moisture.observing import channels_of
 from daemon.site.types import DAY_NAMES, OutletSettings, Site, Units
 from sensors.reading import Channel
 from sensors.registry import SensorConfig
@@ -107,6 +108,13 @@ class ShareOut(BaseModel):
         return cls(value=share.value, give_or_take=share.give_or_take)
 
 
+class FloatSwitchOut(BaseModel):
+    """A float in a trap."""
+
+    channel: str = Field(examples=["tank-float.contact"])
+    closes_at_ml: float = Field(description="closed at and above this")
+
+
 class TrapDescriptionOut(BaseModel):
     """A trap as described, not what it holds."""
 
@@ -118,6 +126,7 @@ class TrapDescriptionOut(BaseModel):
     separation: ShareOut
     heel_ml: float
     holds_at_start_ml: float
+    float_switches: list[FloatSwitchOut]
 
     @classmethod
     def of(cls, trap: Trap) -> TrapDescriptionOut:
@@ -130,6 +139,12 @@ class TrapDescriptionOut(BaseModel):
             separation=ShareOut.of(trap.separation),
             heel_ml=_clean(trap.heel_kg * ML_PER_KG),
             holds_at_start_ml=_clean(trap.holds_at_start_kg * ML_PER_KG),
+            float_switches=[
+                FloatSwitchOut(
+                    channel=each.channel, closes_at_ml=_clean(each.level.value * ML_PER_KG)
+                )
+                for each in trap.floats
+            ],
         )
 
 
@@ -144,6 +159,9 @@ class StationOut(BaseModel):
     relative_humidity: SourceOut | None
     volume: SourceOut | None
     trap: TrapDescriptionOut | None
+    measured_dew_point: list[str] = Field(
+        description="the channels that the dew point of its air is measured with"
+    )
 
     @classmethod
     def of(cls, station: Station) -> StationOut:
@@ -157,7 +175,13 @@ class StationOut(BaseModel):
             relative_humidity=None if humidity is None else source_out(humidity, "1"),
             volume=None if volume is None else source_out(volume, "m3"),
             trap=None if trap is None else TrapDescriptionOut.of(trap),
+            measured_dew_point=_dew_point_channels(station),
         )
+
+
+def _dew_point_channels(station: Station) -> list[str]:
+    point = station.measured_dew_point
+    return [] if point is None else list(channels_of(point))
 
 
 class OutletOut(BaseModel):

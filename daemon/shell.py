@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import logging
 import threading
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Collection, Sequence
 from dataclasses import replace
 from typing import Protocol
 
@@ -229,7 +229,8 @@ class Shell:
         )
         _log_verdicts(verdicts)
         self._waiting, self._announced, self._went_back = [], {}, False
-        self._show(estimate)
+        # an entry may be later than this tick, which took its time: it stays in sight
+        self._show(self._with_pending(state, self._clock.now_us()) or estimate)
 
     def _record_presses(self, state: CoreState, readings: Sequence[Reading]) -> None:
         """Commit a drain for every press of a "drained" button, before the tick that takes it."""
@@ -406,7 +407,7 @@ class Shell:
 
     def alarms(self) -> Sequence[Alarm]:
         with self._lock:
-            return [] if self._state is None else self.core.alarms(self._state)
+            return [] if self._estimate is None else self.core.alarms(self._estimate.state)
 
     def record(self, body: Body, at_us: int | None = None, key: str = "") -> Recorded:
         with self._lock:
@@ -436,12 +437,20 @@ class Shell:
         state = self._state
         if state is None or entry.at_us <= state.time_us:
             return ""
-        entries = [each for each in self._pending if state.time_us < each.at_us <= now_us]
-        _, estimate, _ = self.core.advance(state, now_us, Inputs((), entries))
+        estimate = self._with_pending(state, now_us)
+        assert estimate is not None  # the entry itself is pending
         self._shown, self._estimate = estimate.traps, estimate
         self._outlets_told_us = -1  # what was told of them may have changed
         learned = [each for each in estimate.learned if each.at_us == entry.at_us]
         return " ".join(learned_words(self._site, each) for each in learned)
+
+    def _with_pending(self, state: CoreState, now_us: int) -> Estimate | None:
+        """What the entries that no tick has taken in yet will do; None without any."""
+        entries = [each for each in self._pending if state.time_us < each.at_us <= now_us]
+        if not entries:
+            return None
+        _, estimate, _ = self.core.advance(state, now_us, Inputs((), entries))
+        return estimate
 
     def drains(self, trap: str, from_us: int, to_us: int) -> Sequence[Entry]:
         return self._store.entries(from_us=from_us, to_us=to_us, trap=trap)
@@ -467,6 +476,7 @@ class Shell:
             for bus in self._sampler.hung_buses()
         ]
         problems += [f"{c.channel}: {c.fault}" for c in channels if c.fault]
+        problems += self._sensor_problems(state, {c.channel for c in channels if c.fault})
         return Health(
             ok=not problems,
             at_us=now_us,
@@ -478,6 +488,17 @@ class Shell:
             outbox_waiting=self._store.outbox_waiting(),
             problems=tuple(problems),
         )
+
+    def _sensor_problems(self, state: CoreState | None, faulty: Collection[str]) -> list[str]:
+        """Sensors whose alarm stands though every channel answers: silent, or contradicting."""
+        told = {name.rpartition(".")[0] for name in faulty}
+        return [
+            record.text
+            for name, record in (state.alarms.items() if state is not None else ())
+            if (one := self.core.definitions[name]).kind == "sensor-fault"
+            and record.raised
+            and one.source not in told
+        ]
 
     def _channel_health(self, state: CoreState | None) -> list[ChannelHealth]:
         if state is None:

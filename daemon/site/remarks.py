@@ -24,6 +24,7 @@ def remarks(site: Site, names: Names, *, loaded_contact: bool) -> tuple[str, ...
         *_outlets(site),
         *_hours(site),
         *_unused(names),
+        *_unheard(site),
     )
 
 
@@ -150,6 +151,15 @@ def _unused(names: Names) -> Iterator[str]:
     for sensor in names.sensors:
         if not names.used(sensor):
             yield f"Nothing uses the sensor {sensor}: name it where it hangs."
+
+
+def _unheard(site: Site) -> Iterator[str]:
+    for config in site.sensors:
+        if config.driver == "mqtt-channel" and site.mqtt is None:
+            yield (
+                f"{config.id} waits for messages of another device, but there is no [mqtt] table: "
+                "without a broker nothing will ever arrive."
+            )
 
 
 def _behind_regulator(station: Station, by_id: dict[str, Station]) -> bool:

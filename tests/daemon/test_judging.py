@@ -108,7 +108,7 @@ def test_lies_are_judged_alike_live_after_a_kill_and_in_a_replay(
     assert daemon.bits == bits(replay(Core(SHOP), flat(played), []))
     found = {name: faults(daemon.store, name) for name in SHOP.channels}
     daemon.store.close()
-    # three spikes; then a step that is within the fastest rate at its second reading, there and back
+    # three spikes; then a step that its second reading makes likely, there and back
     assert found["pipe-end.temperature"] == {TOO_FAST: 3 + 1 + 1}
     assert found["intake-air.relative_humidity"].keys() == {SATURATED_ELEMENT, FROZEN}
     assert found["intake-air.temperature"] == {FROZEN: found["intake-air.pressure"][FROZEN]}
@@ -196,3 +196,20 @@ def test_a_replaced_sensor_is_judged_afresh() -> None:
     after = core.take(state, [replaced])[0]
     assert not any(name.startswith("intake-air.") for name in after.quality.channels)
     assert "pipe-end.temperature" in after.quality.channels
+
+
+def test_health_says_what_an_alarm_of_a_sensor_says_though_its_channels_answer(
+    tmp_path: Path,
+) -> None:
+    """A sensor that has fallen silent has no bad reading, and one that is doubted has none."""
+    played = [
+        (t, [each for each in readings if each.channel != "pipe-end.temperature" or n < 20])
+        for n, (t, readings) in enumerate(working(SHOP, 40))
+    ]
+    daemon = Daemon(tmp_path / "a.db", played)
+    daemon.run()
+    health = daemon.shell.health()
+    daemon.store.close()
+    assert not health.ok
+    (problem,) = health.problems
+    assert problem.startswith("pipe-end: pipe-end.temperature has said nothing for 3 periods")

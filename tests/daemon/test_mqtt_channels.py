@@ -173,3 +173,9 @@ def test_topics_are_asked_for_again_after_a_reconnection(broker: Broker, bench: 
             say_until_heard(device, daemon, "shop/motor", "0")
             readings = [one for one in daemon.sample() if one.good]
     assert {(one.channel, one.value) for one in readings} == {("motor.contact", 0.0)}
+
+
+def test_without_a_broker_the_site_file_is_told_that_nothing_will_come() -> None:
+    said = "\n".join(parse_site(SITE.partition("[mqtt]")[0], "birch-works.toml").remarks)
+    assert "slab waits for messages of another device, but there is no [mqtt] table" in said
+    assert "waits for messages" not in "\n".join(parse_site(SITE, "birch-works.toml").remarks)
