@@ -22,12 +22,13 @@ from tests.virtual.score import (
     after,
     clustered_error,
     least_share,
+    most_ranks,
     score,
     untaught,
 )
 from tests.virtual.shops import Trial, build
 
-SHOPS, DAYS = 8, 3
+SHOPS, DAYS = 16, 2
 
 
 # ---- the bench ----
@@ -60,11 +61,11 @@ def test_what_breaks_a_shop_changes_where_its_water_goes() -> None:
 
 def test_with_nothing_unknown_the_model_says_what_is_so() -> None:
     """Two programs of one physics, written apart, differ by what samples every 10 s miss of a
-    pressure that cycles: 0.1 to 3 % measured."""
-    for run in run_all([4, 6], Trial(days=1, every_s=10, certain=True)):
+    pressure that cycles: 0.1 to 1.6 % in these shops, up to 7 % where guns draw in bursts."""
+    for run in run_all([2, 10], Trial(days=1, every_s=10, certain=True)):
         assert len(run.untaught) == len(TRAPS)
         for seen in run.untaught:
-            assert seen.said.middle == pytest.approx(seen.true_kg, rel=0.04)
+            assert seen.said.middle == pytest.approx(seen.true_kg, rel=0.02)
 
 
 def test_the_error_of_a_coverage_counts_shops_and_not_drains() -> None:
@@ -84,15 +85,17 @@ def test_the_least_share_is_the_binomial_distributions() -> None:
 
 def test_what_is_said_of_a_few_shops_is_honest() -> None:
     """One run serves all questions: it is what takes the time."""
-    runs = run_all(range(100, 100 + SHOPS), Trial(DAYS, measured=0.9))
+    runs = run_all(range(100, 100 + SHOPS), Trial(DAYS, measured=1.0))
     before = score(each for run in runs for each in untaught(run))
     taught = [each for run in runs for each in after(1, 99)(run)]
     learned = score(taught)
     assert before.drains >= 3 * SHOPS
-    assert learned.drains >= 2 * SHOPS
+    assert learned.drains >= SHOPS
     # the intervals hold the truth
     assert before.coverage >= least_share(0.86, before.drains)
     assert learned.coverage >= least_share(0.85, learned.drains)
+    assert before.ranks <= most_ranks(before.drains)
+    assert learned.ranks <= most_ranks(learned.drains)
     # more often than not the middle is as near as it should be in the median
     assert _near(0.30, [each for run in runs for each in untaught(run)])
     assert _near(0.10, taught)
