@@ -39,8 +39,11 @@ def ask(site: Site, path: str, body: dict[str, Any] | None = None) -> tuple[int,
 
 
 def serves(site: Site) -> bool:
-    """Whether a daemon of this very site runs here."""
-    answer = ask(site, "site")
+    """Whether a daemon of this very site runs here; whatever else listens there is not one."""
+    try:
+        answer = ask(site, "site")
+    except StoreError:
+        return False
     if answer is None or answer[0] != 200 or not isinstance(answer[1], dict):
         return False
     return answer[1].get("id") == site.id

@@ -8,6 +8,7 @@ from collections.abc import Callable
 from contextlib import ExitStack
 from pathlib import Path
 
+from daemon.asking import serves
 from daemon.check import render, sections
 from daemon.check_readings import Looker, missing_devices
 from daemon.check_sensors import elsewhere_section, now_section
@@ -37,7 +38,7 @@ def check(
         say(render(sections(site)))
         return EXIT_OK
     missing, nothing_here = missing_devices(site, root)
-    if nothing_here:
+    if nothing_here and not serves(site):
         said = sections(site)
         said.insert(SENSORS_AT, elsewhere_section(missing))
         say(render(said))

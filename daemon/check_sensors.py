@@ -56,7 +56,9 @@ def _sensor(site: Site, config: SensorConfig, looked: Looked) -> Iterator[str]:
 def _nothing_yet(config: SensorConfig) -> str:
     if config.driver == "mqtt-channel":
         return "has published nothing while this listened"
-    return "nothing yet: no pulse came while this looked"
+    if config.driver == "flow-pulses":
+        return "no pulse came while this looked"
+    return NOTHING_YET
 
 
 def _good(site: Site, channel: Channel, value: float) -> str:

