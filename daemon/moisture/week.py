@@ -39,6 +39,7 @@ KEEPS_A_WEEK = 0.8  # of a bin's weight when its hour comes again: five weeks co
 KEEPS_A_DAY = KEEPS_A_WEEK ** (1.0 / 5.0)
 KEEPS_AN_HOUR = KEEPS_A_WEEK ** (1.0 / 40.0)
 DAY_TO_DAY = 0.5
+HOURS_A_DAY = 8.0  # at first
 LEAST_SPREAD, WIDEST_SPREAD = 0.05, 1.5
 
 
@@ -99,6 +100,15 @@ def day_spread(week: Week) -> float:
     """How much days differ, relative."""
     typical = 1.0 if week.days_seen <= 0.0 else week.days.scale / week.days_seen
     return week.days.spread(DAY_SPREAD, DAY_PRIOR * typical)
+
+
+def common_spread(week: Week) -> float:
+    """How much days differ beyond what their hours do by themselves, relative."""
+    hours = HOURS_A_DAY
+    if week.days_seen > 0.0:
+        hours = max(float(week.count[OPEN].sum()) / week.days_seen, 1.0)
+    own = hour_spread(week) ** 2 / hours
+    return math.sqrt(max(day_spread(week) ** 2 - own, LEAST_SPREAD**2))
 
 
 def hour_spread(week: Week) -> float:
@@ -179,7 +189,7 @@ def duties(
     """
     means = np.stack([mean(week, CLOSED, closed_prior), mean(week, OPEN, open_prior)])
     level = _factor(standard_normal(seed, "load: level", members), level_spread(week))
-    day_width, hour_width = day_spread(week), hour_spread(week)
+    day_width, hour_width = common_spread(week), hour_spread(week)
     of_days = wandering([each.day for each in ahead], DAY_TO_DAY, "load: day", seed, members)
     drawn = np.empty((len(ahead), members))
     for number, each in enumerate(ahead):

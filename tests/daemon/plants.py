@@ -1,7 +1,7 @@
 """A tank, a compressor and a leak, reckoned apart from the model: an invented shop's physics.
 
 The tank's air is an ideal gas at one temperature; the leak is choked, a share of the stock per
-second. The gun uses what a function says. Steps are a second long.
+second. The gun uses what a function says.
 """
 
 from __future__ import annotations
@@ -34,6 +34,7 @@ class Plant:
     on_when_closed: bool = False
     relative_humidity: float = 0.55
     noise_pa: float = 200.0
+    step_s: int = 1
 
     def record(self, from_us: int, seconds: int, period_s: int) -> Iterator[list[Reading]]:
         """The readings of each tick."""
@@ -41,7 +42,7 @@ class Plant:
         room_k = self.ambient_k(0.0)
         stock = 8.0e5 * self.volume_m3 / (GAS * room_k)
         on = False
-        for second in range(seconds):
+        for second in range(0, seconds, self.step_s):
             now_us = from_us + second * SECOND_US
             room_k = self.ambient_k(now_us / 3.6e9 % 24.0)
             tank_k = room_k + warm
@@ -51,11 +52,12 @@ class Plant:
                 yield self._readings(now_us, room_k, pressure - BAROMETER_PA + noise, on)
             is_open = opening.is_open(self.site.hours, self.site.timezone, now_us)
             on = self._switch(on, pressure - BAROMETER_PA, is_open or self.on_when_closed)
-            warm += ((self.rise_k if on else 0.0) - warm) / 1800.0
+            warm += ((self.rise_k if on else 0.0) - warm) / 1800.0 * self.step_s
             density = BAROMETER_PA / (GAS * room_k)
             leak = self.leak_l_min / 60e3 * REFERENCE_KG_PER_M3 * pressure / (7e5 + BAROMETER_PA)
             used = self.used_l_min(now_us) / 60e3 * REFERENCE_KG_PER_M3
-            stock += on * self.delivered_l_min / 60e3 * density - (leak + used) * (pressure > 1.5e5)
+            gone = (leak + used) * (pressure > 1.5e5)
+            stock += (on * self.delivered_l_min / 60e3 * density - gone) * self.step_s
 
     def _switch(self, on: bool, gauge_pa: float, may_run: bool) -> bool:
         if not may_run or gauge_pa >= 8e5:
