@@ -18,7 +18,7 @@ from daemon.moisture.description import (
     Station,
     Trap,
 )
-from daemon.moisture.observing import channels_of
+from daemon.moisture.dew_sensors import channels_of
 from daemon.site.types import DAY_NAMES, OutletSettings, Site, Units
 from sensors.reading import Channel
 from sensors.registry import SensorConfig

@@ -9,7 +9,7 @@ from daemon.check import WIDTH, Section
 from daemon.check_readings import NOTHING_YET, Looked, Said
 from daemon.check_words import plausible, plausible_words, remedy, value_words
 from daemon.moisture.description import Fixed, Measured, Station, VentedCell
-from daemon.moisture.observing import MeasuredDewPoint, cell_dew_point
+from daemon.moisture.dew_sensors import MeasuredDewPoint, cell_dew_point
 from daemon.site.types import Site
 from daemon.units import show_pressure, show_temperature
 from sensors.reading import Channel

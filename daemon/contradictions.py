@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from daemon.clock import MINUTE_US
 from daemon.due import volume_words
-from daemon.moisture import floats, observing
+from daemon.moisture import dew_sensors, floats
 from daemon.moisture.description import FloatSwitch, Measured, VentedCell
 from daemon.moisture.ensemble import Array, percentiles
 from daemon.moisture.model import Model
@@ -24,7 +24,7 @@ class Contradictions:
     def __init__(self, site: Site, model: Model) -> None:
         self.site, self.model = site, model
         self._switches = list(floats.switches(model.plan))
-        self._points = observing.stations(model.plan)
+        self._points = dew_sensors.stations(model.plan)
 
     def found(self, state: CoreState) -> dict[str, str]:
         """The contradictions now, by sensor."""
@@ -36,7 +36,7 @@ class Contradictions:
                 if text:
                     found[switch.channel.rpartition(".")[0]] = text
         for station in self._points:
-            if observing.contradicts(self.model.plan, state.model, station):
+            if dew_sensors.contradicts(self.model.plan, state.model, station):
                 sensor, text = self._point(state, station)
                 found[sensor] = text
         return found
@@ -66,12 +66,12 @@ class Contradictions:
 
     def _point(self, state: CoreState, station: int) -> tuple[str, str]:
         one, model = self.model.plan.stations[station], state.model
-        said = observing.measured(
+        said = dew_sensors.measured(
             self.model.plan, model.beliefs, model.held, model.conditions, station
         )
         source = one.measured_dew_point
         assert isinstance(source, Measured | VentedCell)
-        sensor = observing.channels_of(source)[0].rpartition(".")[0]
+        sensor = dew_sensors.channels_of(source)[0].rpartition(".")[0]
         assert said is not None
         hottest_k = float(model.conditions.temperature_k[station].max())
         units = self.site.units

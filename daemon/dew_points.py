@@ -8,7 +8,7 @@ import numpy as np
 
 from daemon.channel_faults import unusable
 from daemon.contradictions import Contradictions
-from daemon.moisture import observing
+from daemon.moisture import dew_sensors
 from daemon.moisture.model import Model
 from daemon.state import CoreState
 from daemon.views import DewPointView
@@ -19,15 +19,15 @@ def dew_point_views(
 ) -> Iterator[DewPointView]:
     """One view a station that has such a sensor, in line order. Costly: not for every tick."""
     against = contradictions.found(state)
-    for i in observing.stations(model.plan):
+    for i in dew_sensors.stations(model.plan):
         station = model.plan.stations[i]
         assert station.measured_dew_point is not None
-        channels = observing.channels_of(station.measured_dew_point)
+        channels = dew_sensors.channels_of(station.measured_dew_point)
         sensor = channels[0].rpartition(".")[0]
         faults = [unusable(state, name, model.period_us) for name in channels]
         fault = next((each for each in (*faults, against.get(sensor, "")) if each), "")
         inner = state.model
-        said = observing.measured(model.plan, inner.beliefs, inner.held, inner.conditions, i)
+        said = dew_sensors.measured(model.plan, inner.beliefs, inner.held, inner.conditions, i)
         yield DewPointView(
             station=station.id,
             sensor=sensor,

@@ -14,10 +14,10 @@ from daemon.channel_faults import unusable
 from daemon.contradictions import Contradictions
 from daemon.moisture import margin
 from daemon.moisture.description import Like, Measured, RiseByDuty, Source
+from daemon.moisture.dew_sensors import channels_of, contradicts
 from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, standard_normal
 from daemon.moisture.floats import switches
 from daemon.moisture.model import Model
-from daemon.moisture.observing import channels_of, contradicts
 from daemon.outlet_record import GaugeHeld
 from daemon.site.types import OutletSettings, Site
 from daemon.state import CoreState

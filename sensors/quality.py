@@ -13,10 +13,9 @@ from __future__ import annotations
 
 import math
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field, replace
-from statistics import median
-from typing import Literal
+from dataclasses import replace
 
+from sensors.quality_likes import disagreeing, still_disagreeing
 from sensors.quality_rules import (
     ACCEPT_AFTER,
     DRY_AGAIN,
@@ -28,67 +27,39 @@ from sensors.quality_rules import (
     SATURATED,
     SATURATED_S,
     SLOW_COSTS,
-    Agreement,
     Part,
     Rule,
     Rules,
 )
+from sensors.quality_state import (
+    DISAGREES,
+    FROZEN,
+    OUT_OF_RANGE,
+    SATURATED_ELEMENT,
+    TOO_FAST,
+    ChannelState,
+    Judged,
+    QualityState,
+    Severity,
+    Verdict,
+)
 from sensors.reading import Reading
 
-Severity = Literal["bad", "doubt"]
-
-OUT_OF_RANGE = "out of range"
-TOO_FAST = "changes too fast"
-FROZEN = "frozen"
-SATURATED_ELEMENT = "humidity element saturated"
-DISAGREES = "disagrees with its like"
-
-
-@dataclass(frozen=True, slots=True)
-class Verdict:
-    """Something that began or ended to be so of a channel."""
-
-    channel: str
-    at_us: int
-    reason: str
-    severity: Severity  # "bad": its readings are not used; "doubt": two differ, nobody knows which
-    began: bool
-    detail: str = ""
-
-
-@dataclass(frozen=True, slots=True)
-class ChannelState:
-    """What is remembered of a channel."""
-
-    value: float = math.nan  # the last one that was believed
-    time_us: int = 0
-    same_since_us: int = 0  # since when it is exactly that
-    repeated: int = 0  # how many readings in a row were that
-    ran_us: int = 0  # how long the compressor ran since then
-    moves: int = 0  # changes in quick succession, up to LIVELY_MOVES: then it was seen to live
-    jumped: int = 0  # consecutive readings beyond what the rate allows
-    jump_value: float = math.nan  # the last of those
-    wet_since_us: int | None = None
-    wet: bool = False
-    said: Mapping[str, Severity] = field(default_factory=dict)  # verdicts that hold
-
-
-@dataclass(frozen=True, slots=True)
-class QualityState:
-    """What is remembered of all channels."""
-
-    channels: Mapping[str, ChannelState] = field(default_factory=dict)
-    off_since_us: int | None = None
-    last_us: int | None = None
-
-
-@dataclass(frozen=True, slots=True)
-class Judged:
-    """A tick's outcome."""
-
-    state: QualityState
-    readings: tuple[Reading, ...]
-    verdicts: tuple[Verdict, ...]
+__all__ = [
+    "DISAGREES",
+    "FROZEN",
+    "OUT_OF_RANGE",
+    "SATURATED_ELEMENT",
+    "TOO_FAST",
+    "ChannelState",
+    "Judged",
+    "QualityState",
+    "Severity",
+    "Verdict",
+    "as_given",
+    "forget",
+    "judge",
+]
 
 
 def as_given(readings: Sequence[Reading]) -> list[Reading]:
@@ -142,9 +113,9 @@ def judge(
     doubts: dict[str, str] = {}
     for agreement in rules.agreements:
         if settled or agreement.always:
-            reasons |= _disagreeing(agreement, readings, good, doubts)
+            reasons |= disagreeing(agreement, readings, good, doubts)
         else:
-            reasons |= _still_disagreeing(agreement, state.channels, good, doubts)
+            reasons |= still_disagreeing(agreement, state.channels, good, doubts)
     marked = tuple(
         replace(one, fault=reasons[number][0]) if number in reasons else one
         for number, one in enumerate(readings)
@@ -261,50 +232,6 @@ def _frozen_part(
         return {}
     detail = f"{part.name} has repeated itself for {(at_us - since_us) / 1e6:.0f} s"
     return {good[name]: (FROZEN, detail) for name in part.channels}
-
-
-def _disagreeing(
-    agreement: Agreement,
-    readings: Sequence[Reading],
-    good: Mapping[str, int],
-    doubts: dict[str, str],
-) -> dict[int, tuple[str, str]]:
-    """Of three or more the odd one is bad; of two nobody knows which, and both are doubted."""
-    values = {name: readings[good[name]].value for name in agreement.channels if name in good}
-    if len(values) < 2:
-        return {}
-    if len(values) == 2:
-        (first, a), (second, b) = values.items()
-        if abs(a - b) > agreement.within:
-            doubts[first] = doubts[second] = f"{first} is {a:g}, {second} is {b:g}"
-        return {}
-    middle = median(values.values())
-    odd = {
-        name: f"{value:g}, the others are about {middle:g}"
-        for name, value in values.items()
-        if abs(value - middle) > agreement.within
-    }
-    if agreement.doubt_only:
-        doubts |= odd
-        return {}
-    return {good[name]: (DISAGREES, detail) for name, detail in odd.items()}
-
-
-def _still_disagreeing(
-    agreement: Agreement,
-    before: Mapping[str, ChannelState],
-    good: Mapping[str, int],
-    doubts: dict[str, str],
-) -> dict[int, tuple[str, str]]:
-    """While they need not agree, what was found when they should have holds on."""
-    found: dict[int, tuple[str, str]] = {}
-    for name in agreement.channels:
-        severity = before[name].said.get(DISAGREES) if name in before else None
-        if severity == "bad" and name in good:
-            found[good[name]] = (DISAGREES, "")
-        elif severity == "doubt":
-            doubts[name] = ""
-    return found
 
 
 def _verdicts(

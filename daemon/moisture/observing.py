@@ -1,14 +1,8 @@
-"""Measured dew points: what a transmitter or a vented cell says of the air, and learning from it.
+"""Learning from measured dew points, which speak all the time and always with the same bias.
 
-A vented cell is a humidity sensor in air that bleeds from the line to the atmosphere: the humidity
-ratio of that air is the line's, so that relative humidity, temperature and pressure in the cell
-give the pressure dew point at the line's pressure. Very dry air reads nearly nothing there: where
-the reading is within its uncertainty of zero, only "below X" can be said.
-
-These sensors speak all the time, and always with the same bias. They enter as hourly means, each
-with an error of its own that is so wide that a day of them counts as one good measurement: an
-hour's model error is much like the next hour's. The persistent bias is one of the beliefs, so that
-averaging for a week does not make a biased sensor right.
+They enter as hourly means, each with an error of its own that is so wide that a day of them counts
+as one good measurement: an hour's model error is much like the next hour's. The persistent bias is
+one of the beliefs, so that averaging for a week does not make a biased sensor right.
 """
 
 from __future__ import annotations
@@ -22,9 +16,16 @@ import numpy as np
 from daemon.moisture import air, line
 from daemon.moisture import beliefs as believed
 from daemon.moisture.beliefs import Beliefs, bias_of
-from daemon.moisture.conditions import Conditions, Held
-from daemon.moisture.density import mole_fraction_unchecked
 from daemon.moisture.description import Measured, Source, VentedCell
+from daemon.moisture.dew_sensors import (
+    DRIEST,
+    bias_and_width,
+    channels_of,
+    contradicts,
+    fresh,
+    relative_humidity_in_cell,
+    stations,
+)
 from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, standard_normal
 from daemon.moisture.learning import (
     FARTHEST,
@@ -44,19 +45,6 @@ from daemon.moisture.plan import Plan
 # each of its 24 hours then counts for a twenty-fourth of that.
 HOUR_RH_SD, HOUR_DEW_POINT_SD_K = 0.003 * math.sqrt(24.0), 0.3 * math.sqrt(24.0)
 LEAST_SECONDS = 900.0  # of an hour that must have been measured
-DRIEST = 1e-8  # kg/kg, below every dryer's air and within the formulas' range
-
-
-@dataclass(frozen=True, slots=True)
-class MeasuredDewPoint:
-    """A pressure dew point (frost point below 0 degC) as an interval, K.
-
-    Without `low_k` and `middle_k` only an upper bound can be said: "below `high_k`".
-    """
-
-    low_k: float | None
-    middle_k: float | None
-    high_k: float
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,129 +67,6 @@ class Observed:
     surprise: int = 0  # the sign of the last hour's, if it was too far off to be learned from
 
 
-# ---- what a sensor says by itself ----
-
-
-def cell_dew_point(
-    relative_humidity: float,
-    cell_k: float,
-    cell_pa: float,
-    line_pa: float,
-    humidity_give_or_take: float,
-    temperature_give_or_take_k: float,
-) -> MeasuredDewPoint:
-    """The pressure dew point of the line's air from a vented cell, both errors the same way.
-
-    Parameters
-    ----------
-    relative_humidity : fraction over liquid water, as read in the cell.
-    cell_k, cell_pa : temperature (K) and pressure (Pa absolute) in the cell.
-    line_pa : pressure of the line (Pa absolute) at which the dew point is wanted.
-    humidity_give_or_take, temperature_give_or_take_k : 95 % half-widths (k = 2).
-    """
-
-    def at(humidity: float, temperature_k: float) -> float:
-        cell = np.array([[temperature_k], [cell_pa], [min(max(humidity, 0.0), 1.0)]])
-        ratio = np.maximum(air.humidity_ratio_unchecked(*cell), DRIEST)
-        return float(air.dew_point_unchecked(ratio, np.array([line_pa]))[0])
-
-    width = humidity_give_or_take
-    high_k = at(relative_humidity + width, cell_k + temperature_give_or_take_k)
-    if relative_humidity <= width:
-        return MeasuredDewPoint(None, None, high_k)
-    low_k = at(relative_humidity - width, cell_k - temperature_give_or_take_k)
-    return MeasuredDewPoint(low_k, at(relative_humidity, cell_k), high_k)
-
-
-def relative_humidity_in_cell(ratio: Array, cell_k: Array, cell_pa: Array) -> Array:
-    """What a perfect sensor would read of air with this humidity ratio, a fraction, at most 1."""
-    full = mole_fraction_unchecked(
-        air.humidity_ratio_unchecked(cell_k, cell_pa, np.ones_like(cell_k))
-    )
-    share: Array = np.minimum(mole_fraction_unchecked(ratio) / full, 1.0)
-    return share
-
-
-def stations(plan: Plan) -> list[int]:
-    """Those whose air's dew point is measured."""
-    return [i for i, station in enumerate(plan.stations) if station.measured_dew_point is not None]
-
-
-def measured(
-    plan: Plan, beliefs: Beliefs, held: Mapping[str, Held], now: Conditions, station: int
-) -> MeasuredDewPoint | None:
-    """What the sensor at a station says now, with what is known of its bias; None when silent.
-
-    The pressure is the middle of what is believed of the line there.
-    """
-    source = plan.stations[station].measured_dew_point
-    if source is None or not all(channel in held for channel in channels_of(source)):
-        return None
-    if isinstance(source, Measured):
-        bias_k, width_k = _bias(beliefs, source)
-        middle_k = held[source.channel].value - bias_k
-        return MeasuredDewPoint(middle_k - width_k, middle_k, middle_k + width_k)
-    bias, width = _bias(beliefs, source.relative_humidity)
-    bias_k, width_k = _bias(beliefs, source.temperature)
-    return cell_dew_point(
-        held[source.relative_humidity.channel].value - bias,
-        held[source.temperature.channel].value - bias_k,
-        held[source.pressure.channel].value,
-        float(np.median(now.pressure_pa[station])),
-        width,
-        width_k,
-    )
-
-
-def channels_of(source: Measured | VentedCell) -> tuple[str, ...]:
-    """The channels that a measured dew point is made of."""
-    if isinstance(source, Measured):
-        return (source.channel,)
-    return (source.relative_humidity.channel, source.temperature.channel, source.pressure.channel)
-
-
-def _bias(beliefs: Beliefs, source: Measured) -> tuple[float, float]:
-    """The middle of what is believed of a channel's bias, and its 95 % half-width."""
-    sd = source.give_or_take * HALF_WIDTH_TO_SD
-    values = beliefs[bias_of(source.channel)]
-    return float(values.mean()) * sd, 2.0 * float(values.std()) * sd
-
-
-def contradicts(plan: Plan, state: State, station: int) -> bool:
-    """Whether a dew point is above any temperature the line can have there: water would drop out.
-
-    Not while the sensor is silent. Cheap: it is asked at every step.
-    """
-    source = plan.stations[station].measured_dew_point
-    if source is None or not _fresh(plan, state, source):
-        return False
-    if isinstance(source, Measured):
-        bias_k, width_k = _bias(state.beliefs, source)
-        low_k = state.held[source.channel].value - bias_k - width_k
-        return low_k > float(state.conditions.temperature_k[station].max())
-    bias, width = _bias(state.beliefs, source.relative_humidity)
-    humidity = state.held[source.relative_humidity.channel].value - bias - width
-    if humidity <= 0.0:
-        return False
-    bias_k, width_k = _bias(state.beliefs, source.temperature)
-    cell = (
-        [state.held[source.temperature.channel].value - bias_k - width_k],
-        [state.held[source.pressure.channel].value],
-        [min(humidity, 1.0)],
-    )
-    ratio = air.humidity_ratio_unchecked(*(np.array(each) for each in cell))
-    return float(ratio[0]) > float(state.saturated[station].max())
-
-
-def _fresh(plan: Plan, state: State, source: Measured | VentedCell) -> bool:
-    period_us = round(plan.line.period_s * 1e6)
-    found = [state.held.get(channel, Held()) for channel in channels_of(source)]
-    return not any(one.stale(state.time_us, period_us) for one in found)
-
-
-# ---- the hour's mean ----
-
-
 def gather(
     plan: Plan, observed: Mapping[str, Observed], state: State, dt_s: float
 ) -> Mapping[str, Observed]:
@@ -212,7 +77,7 @@ def gather(
     after = dict(observed)
     for i in which:
         source = plan.stations[i].measured_dew_point
-        if source is None or not _fresh(plan, state, source) or contradicts(plan, state, i):
+        if source is None or not fresh(plan, state, source) or contradicts(plan, state, i):
             continue
         name = plan.stations[i].id
         before = after.get(name, Observed())
@@ -285,7 +150,7 @@ def _mean(beliefs: Beliefs, source: Measured | VentedCell, hour: Gathered) -> _H
     cell_pa = np.full_like(cell_k, hour.cell_pa / hour.seconds)
     true = relative_humidity_in_cell(ratio, cell_k, cell_pa)
     expected = true + _offset(beliefs, source.relative_humidity)
-    _, width = _bias(beliefs, source.relative_humidity)
+    _, width = bias_and_width(beliefs, source.relative_humidity)
     return _Hour(expected, reading, HOUR_RH_SD, above_only=reading <= width)
 
 

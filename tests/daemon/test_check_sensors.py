@@ -223,6 +223,10 @@ def test_a_hung_bus_does_not_hang_the_check(
     options = argparse.Namespace(no_sensors=False, watch=False)
     code = check(shop(), options, parts, QuickClock(), threading.Event(), told.append, a_pi)
     release.set()
+    for thread in threading.enumerate():
+        if thread.name.startswith("bus "):
+            thread.join(10.0)
+            assert not thread.is_alive()
     assert code == 1
     assert "not usable: bus does not answer" in told[0]
     assert "open" in told[0]  # the contact, on another bus

@@ -15,8 +15,9 @@ from daemon.errors import SiteError
 from daemon.moisture import air, observing
 from daemon.moisture.beliefs import bias_of
 from daemon.moisture.description import Measured, VentedCell
+from daemon.moisture.dew_sensors import cell_dew_point, relative_humidity_in_cell
 from daemon.moisture.ensemble import Array, percentiles
-from daemon.moisture.observing import Gathered, Observed, cell_dew_point
+from daemon.moisture.observing import Gathered, Observed
 from daemon.site.types import Site
 from daemon.state import CoreState, Inputs
 from daemon.views import DewPointView
@@ -40,7 +41,7 @@ def in_cell(dew_point_c: float) -> float:
     """The relative humidity in the cell of air with that pressure dew point (frost below 0)."""
     ratio = np.array([air.saturated_humidity_ratio(dew_point_c + 273.15, LINE_PA)])
     cell_k, cell_pa = np.array([CELL_K]), np.array([CELL_PA])
-    return float(observing.relative_humidity_in_cell(ratio, cell_k, cell_pa)[0])
+    return float(relative_humidity_in_cell(ratio, cell_k, cell_pa)[0])
 
 
 @pytest.mark.parametrize(("true_c", "reads", "wide", "narrow"), VENTED)
