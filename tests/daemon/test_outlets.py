@@ -20,6 +20,7 @@ from daemon.moisture.description import Fixed
 from daemon.outlet_payloads import outlet_payload
 from daemon.replay import OUTLETS_HEADER, Result, replay, write
 from daemon.site.types import Site
+from daemon.state import Inputs
 from daemon.views import Interval, OutletView
 from sensors.reading import Reading, reading
 from tests.daemon.outlet_shops import AT_GUN, DRY_BOWL, STILL, a_shop, site_text, still
@@ -409,3 +410,33 @@ def test_shares_of_several_outlets_are_judged_each_by_its_own_way() -> None:
     assert (pot.outlet, spray.outlet) == ("blast-pot", "spray-gun")
     assert known(pot.air.line_margin_k).p50 < 1.0 < known(spray.air.line_margin_k).p50
     assert pot.air.pressure_pa == pytest.approx(101_300 + 7e5, abs=2e4)
+
+
+def test_sensors_that_have_never_spoken_leave_an_outlet_unknown() -> None:
+    for silent in ("booth-air", "floor", "panel", "pipe-end", "intake-air"):
+        record = [each for each in still(SHOP, 0.25) if not each.channel.startswith(silent)]
+        view = gun(CORE, run(CORE, record))
+        assert view.verdict == "unknown", silent
+        told = (BEGUN_US + 5 * MINUTE_US, Gauge("spray-gun", 8.0))
+        assert gun(CORE, run(CORE, record, told)).verdict == "unknown", silent
+        assert json.dumps(outlet_payload(view), allow_nan=False)
+
+
+def test_an_hour_with_no_sensor_at_all_still_gives_an_answer_and_a_wider_one() -> None:
+    """Sensors that are declared and silent are another matter: nothing is declared here."""
+    text = SITE[: SITE.index("[[sensor]]")] + SITE[SITE.index('[[station]]\nid = "tank"') :]
+    for channel in ("tank-gauge.pressure", "pipe-end.temperature", "motor.contact"):
+        key = channel.split(".")[1].replace("contact", "running")
+        text = text.replace(f'{key} = "{channel}"\n', "")
+    blind = site(text)
+    core = Core(blind)
+    state, _, _ = core.initial(BEGUN_US, Inputs())
+    for number in range(1, 361):
+        state, _, _ = core.advance(state, BEGUN_US + number * PERIOD_US, Inputs())
+    (view,) = core.outlet_views.all(state)
+    wide, narrow = (
+        known(view.air.pressure_dew_point_k),
+        known(gun_of(SHOP).air.pressure_dew_point_k),
+    )
+    assert view.air.judgement.verdict in ("wait", "care")
+    assert wide.p95 - wide.p05 > 2.0 * (narrow.p95 - narrow.p05)

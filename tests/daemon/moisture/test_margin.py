@@ -174,6 +174,9 @@ def test_what_was_carried_is_forgotten_with_the_air_and_not_with_the_hours() -> 
     burst = [(0.01, 1e-4)]
     rests = burst + [(0.0, 0.0)] * 1000
     assert after(rests)[0] == pytest.approx(after(burst)[0])
+    # the first breath after a weekend does not wipe out what Friday carried
+    breath = [(0.001, 0.0)]
+    assert after(rests + breath)[0] == pytest.approx(after(burst + breath)[0])
     dry = after(burst + [(FIVE_MINUTES_KG / 30, 0.0)] * 30 * 3)
     assert dry[0, 0] < 0.1 * after(burst + [(FIVE_MINUTES_KG / 30, 0.0)] * 10)[0, 0]
 
