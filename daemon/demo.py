@@ -16,6 +16,7 @@ from daemon.due import interval_words, volume_words
 from daemon.errors import DriplegError
 from daemon.journal import Drain, Entry
 from daemon.make_believe import MakeBelieveShop
+from daemon.site import hours as opening
 from daemon.site.reader import parse_site
 from daemon.site.types import Mqtt, Site
 from sensors.emulated.hardware import EmulatedHardware
@@ -97,7 +98,12 @@ def run(port: int, length: str | None, broker_at: str | None, speed: float) -> N
         setters = parts.fit(site.sensors)
         parts.make_noisy()
         held = {s.id: s.trap.holds_at_start_kg for s in site.line.stations if s.trap is not None}
-        shop = MakeBelieveShop(start_us, setters, held)
+        shop = MakeBelieveShop(
+            start_us,
+            setters,
+            held,
+            at_work=lambda time_us: opening.is_open(site.hours, site.timezone, time_us),
+        )
         samplers: list[_ShopSampler] = []
 
         def wrap(sampler: Sampler) -> _ShopSampler:

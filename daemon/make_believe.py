@@ -7,7 +7,7 @@ emulated parts in physical units; the real drivers read them. All figures are in
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 
 from daemon.clock import SECOND_US
@@ -21,6 +21,7 @@ BAROMETER_PA = 101_000.0
 RISE_K, RISE_S = 17.0, 1500.0
 SEPARATIONS = {"tank": 0.74, "riser": 0.55, "booth-coalescer": 0.97}
 HEEL_KG = 0.004
+LEAK_M3_S = 0.012 / 60.0
 
 
 @dataclass(slots=True)
@@ -35,6 +36,7 @@ class MakeBelieveShop:
     rise_k: float = 10.0
     vapor_kg: float = 0.0
     step_us: int = SECOND_US
+    at_work: Callable[[int], bool] = lambda _: True  # outside working hours only leaks use air
     _begun_us: int = field(init=False)
 
     def __post_init__(self) -> None:
@@ -71,7 +73,9 @@ class MakeBelieveShop:
         return self._room_k() - 2.5
 
     def _used_m3_s(self) -> float:
-        """Somebody sprays for five minutes out of eight."""
+        """At work somebody sprays for five minutes out of eight."""
+        if not self.at_work(self.now_us):
+            return LEAK_M3_S
         seconds = (self.now_us - self._begun_us) // SECOND_US % 480
         return 0.330 / 60.0 if seconds < 300 else 0.030 / 60.0
 

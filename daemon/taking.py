@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import replace
 
-from daemon.due import calendar_due_us, volume_words
+from daemon.due import calendar_due_us, interval_words, volume_words
 from daemon.journal import Confirm, Drain, Entry, Service
 from daemon.moisture import beliefs as believed
 from daemon.moisture.learning import CupError, Learned
@@ -90,15 +90,14 @@ class Taking:
 
 def learned_words(site: Site, learned: Learned) -> str:
     """What is said to whoever measured."""
-    low, middle, high = (volume_words(site, kg) for kg in learned.expected_kg)
+    expected = interval_words(site, *learned.expected_kg)
     measured = volume_words(site, learned.measured_kg)
     if learned.flagged:
         return (
-            f"{learned.trap}: you measured {measured}, but {middle} ({low} to {high}) was "
-            "expected. It is kept, and not learned from until you confirm it: look at the figure "
-            "and its unit again."
+            f"{learned.trap}: you measured {measured}, but {expected} was expected. It is kept, "
+            "and not learned from until you confirm it: look at the figure and its unit again."
         )
     return (
-        f"{learned.trap}: you measured {measured}, expected {middle} ({low} to {high}); the next "
+        f"{learned.trap}: you measured {measured}, expected {expected}; the next "
         "estimate has learned from it."
     )
