@@ -16,10 +16,12 @@ from daemon.outbox import (
     Topics,
     alarm_message,
     event_message,
+    reminder_message,
     service_message,
     trap_message,
 )
 from daemon.payloads import drain_payload, read_drain, refusal_payload, trap_payload
+from daemon.reminders import Reminder
 from daemon.site.types import Mqtt
 from daemon.views import TrapView
 from tests.daemon.linking import a_site
@@ -245,4 +247,26 @@ def test_a_refusal_shows_what_was_sent_as_far_as_it_can_be_shown() -> None:
         "at": "2026-12-01T09:00:00Z",
         "reason": "why",
         "payload": "\ufffd" + "x" * 4095,
+    }
+
+
+def test_a_reminder_is_an_event_of_its_own_kind() -> None:
+    reminder = Reminder(
+        "reminder/shift-end/2026-12-01T17:20:00Z",
+        parse_rfc3339("2026-12-01T17:21:00Z"),
+        "round",
+        "shift end",
+        ("bowl", "tank"),
+        "Drain, in this order: ...",
+    )
+    message = reminder_message(TOPICS, reminder)
+    assert (message.topic, message.qos, message.retain) == ("dripleg/alder-yard/events", 1, False)
+    assert message.id == "reminder/shift-end/2026-12-01T17:20:00Z"
+    assert json.loads(message.payload) == {
+        "id": "reminder/shift-end/2026-12-01T17:20:00Z",
+        "at": "2026-12-01T17:21:00Z",
+        "kind": "round",
+        "source": "shift end",
+        "traps": ["bowl", "tank"],
+        "text": "Drain, in this order: ...",
     }
