@@ -132,7 +132,7 @@ class OutletAir:
     def beyond_belief(self, state: CoreState, outlet: Described) -> bool:
         """Whether a measured dew point is above what the line can have: then there is no number."""
         plan = self.model.plan
-        return any(contradicts(plan, state.model, row) is not None for row in outlet.way.path)
+        return any(contradicts(plan, state.model, row) for row in outlet.way.path)
 
     def faults(self, state: CoreState, names: Iterable[str]) -> Iterator[str]:
         """Which of these channels cannot be believed, in words."""
