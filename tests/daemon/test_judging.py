@@ -116,6 +116,19 @@ def test_lies_are_judged_alike_live_after_a_kill_and_in_a_replay(
     assert found["motor.contact"] == {}
 
 
+@pytest.mark.parametrize(
+    ("killed", "length"), [(52, 53), (82, 84), (320, 330), (540, 550), (650, 660)]
+)
+def test_a_kill_in_the_middle_of_a_lie_forgets_nothing_of_it(
+    tmp_path: Path, killed: int, length: int
+) -> None:
+    played = record(length, wild)
+    daemon = Daemon(tmp_path / "a.db", played)
+    daemon.run(frozenset({killed}))
+    assert daemon.bits == bits(replay(Core(SHOP), flat(played), []))
+    daemon.store.close()
+
+
 def test_a_reading_that_is_not_believed_changes_no_estimate() -> None:
     """Spikes cost three readings, which is not enough to be stale: all else stays as it was."""
     spiked = record(400, of("pipe-end.temperature", 380.0, 200, 203))
