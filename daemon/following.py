@@ -79,7 +79,10 @@ class Following:
         turn = followed.reminders.turn
         if turn is None or state.time_us < turn.at_us - turns.WATCHED_US:
             return followed, None
-        scene = Scene(state.time_us, self._used_kg(state), self._flooded(state))
+        flooded = self._flooded(state)
+        if not flooded and turns.is_watching(followed.reminders, state.time_us):
+            return followed, None
+        scene = Scene(state.time_us, self._used_kg(state), flooded)
         reminders, reminder = turns.tick(
             self.site,
             followed.reminders,

@@ -147,6 +147,13 @@ def tick(
     return replace(after, recent=(*after.recent, reminder)[-MOST_RECENT:]), reminder
 
 
+def is_watching(reminders: Reminders, now_us: int) -> bool:
+    """Whether the use of air is still being watched, so that nothing can be said before."""
+    turn = reminders.turn
+    within = reminders.watched_us != NEVER and now_us - reminders.watched_us < WATCHED_US
+    return within and turn is not None and now_us < turn.until_us
+
+
 def _onward(site: Site, reminders: Reminders, now_us: int) -> Reminders:
     assert reminders.turn is not None
     after_us = max(now_us, reminders.turn.at_us)
