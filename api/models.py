@@ -58,6 +58,12 @@ class TrapOut(BaseModel):
     )
     due: DueOut
     since: Literal["start", "last drain"] = Field(description="what the estimate counts from")
+    chance_stuck: float = Field(
+        default=0.0,
+        description="only of a drain that empties itself: the volumes are those of one that "
+        "works, and this is the chance, 0 to 1, that it is stuck",
+        examples=[0.02],
+    )
 
     @classmethod
     def of(cls, view: TrapView) -> TrapOut:

@@ -415,6 +415,7 @@ class Core:
             due_p50_us=foreseen.p50_us,
             due_p95_us=foreseen.p95_us,
             expected=expected_words(self.site, station, foreseen, float(kg[2]), state.time_us),
+            chance_stuck=self.drains.chance_stuck(state.drains, name, state.time_us),
         )
 
     def alarms(self, state: CoreState) -> list[Alarm]:

@@ -34,8 +34,11 @@ def trap_payload(view: TrapView) -> dict[str, Any]:
 
     `due` holds the 5, 50 and 95 % times at which it is expected to be due, by volume or by the
     calendar, whichever comes first; null where that lies beyond the forecast's ten days. `because`
-    says what makes it due, or what will make it due next; null when neither will.
+    says what makes it due, or what will make it due next; null when neither will. Of a drain that
+    empties itself the volumes are those of one that works, and `chance_stuck` is the chance that it
+    does not; a drain that is worked by hand has no such key.
     """
+    stuck = view.chance_stuck
     return {
         "trap": view.trap,
         "at": format_rfc3339(view.at_us),
@@ -52,6 +55,7 @@ def trap_payload(view: TrapView) -> dict[str, Any]:
             "because": view.because,
         },
         "since": view.since,
+        **({} if stuck is None else {"chance_stuck": round(stuck, 3)}),
     }
 
 

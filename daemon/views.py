@@ -43,6 +43,8 @@ class TrapView:
     due_p50_us: int | None = None
     due_p95_us: int | None = None
     expected: str = ""  # the same in words
+    # of a drain that empties itself: it is taken to work, and this is the chance that it is stuck
+    chance_stuck: float | None = None
 
 
 @dataclass(frozen=True, slots=True)

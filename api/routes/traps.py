@@ -19,7 +19,12 @@ from daemon.views import Running
 router = APIRouter(prefix="/traps", tags=["traps"])
 
 
-@router.get("", summary="What every trap holds", responses=answered_by("log-unavailable"))
+@router.get(
+    "",
+    summary="What every trap holds",
+    response_model_exclude_unset=True,
+    responses=answered_by("log-unavailable"),
+)
 def get_traps(daemon: TheDaemon) -> list[TrapOut]:
     """In the order the air meets them; an empty list until the first tick."""
     return [TrapOut.of(view) for view in daemon.traps()]
@@ -28,6 +33,7 @@ def get_traps(daemon: TheDaemon) -> list[TrapOut]:
 @router.get(
     "/{trap}",
     summary="What one trap holds",
+    response_model_exclude_unset=True,
     responses=answered_by("unknown-trap", "no-estimate-yet", "log-unavailable", "invalid-request"),
 )
 def get_trap(trap: str, daemon: TheDaemon) -> TrapOut:

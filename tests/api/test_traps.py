@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from tests.api.client import Client, problem_of
 from tests.api.fake import FakeRunning
 
@@ -58,3 +60,13 @@ def test_an_unknown_trap_is_answered_with_the_known_ones(client: Client) -> None
 
 def test_a_station_without_a_trap_is_not_a_trap(client: Client) -> None:
     problem_of(client.get("/api/v1/traps/intake"), 404, "unknown-trap")
+
+
+def test_only_a_drain_that_empties_itself_says_how_likely_it_is_stuck(
+    running: FakeRunning, client: Client
+) -> None:
+    running.views[1] = replace(running.views[1], chance_stuck=0.0213)
+    tank, riser = client.get("/api/v1/traps").json()
+    assert "chance_stuck" not in tank
+    assert riser["chance_stuck"] == 0.021
+    assert client.get("/api/v1/traps/riser").json() == riser

@@ -64,7 +64,7 @@ def run(
 ) -> State:
     """So many ticks of a compressor that runs all the time."""
     model = Model(description)
-    values = TICK | {name.replace("__", "."): value for name, value in said.items()}
+    values = TICK | {_channel(name): value for name, value in said.items()}
     begun_us = BEGUN_US if state is None else state.time_us
     for number in range(1, ticks + 1):
         now_us = begun_us + number * period_us
@@ -75,6 +75,11 @@ def run(
     assert state is not None
     state.ledger.check(state.water)
     return state
+
+
+def _channel(name: str) -> str:
+    """ "dry_tank__pressure" as "dry-tank.pressure"."""
+    return name.replace("__", ".").replace("_", "-")
 
 
 def leaving_dew_point(state: State, row: int = 2) -> Array:
@@ -278,3 +283,26 @@ def test_a_separator_beyond_its_rated_flow_keeps_less() -> None:
     assert np.allclose(within, run(after_tank(separator), 360).water.trap[2])
     assert float(np.median(beyond / within)) < 0.4
     assert np.all(beyond < within)
+
+
+def test_a_dry_tank_behind_twin_beds_holds_what_its_gauge_says() -> None:
+    """What the beds blow off never reaches the tank behind them."""
+    dry = replace(receiver("dry-tank", "dry"), temperature=Fixed(298.15, 0.0))
+    tank = replace(receiver("tank", "intake"), temperature=Fixed(308.15, 0.0))
+    stations = [INTAKE, tank, twins(), dry]
+    description = line(stations, [Outlet("hose", "dry-tank", 1.0)], 16)
+    begun = run(description, 60, dry_tank__pressure=6.5e5)
+    state = run(description, 300, begun, dry_tank__pressure=6.5e5)
+    assert (state.air.purged - begun.air.purged).min() > 1.0
+    off = [(each.air.stored / each.air.measured) for each in (begun, state)]
+    assert np.allclose(off[0], off[1], atol=2e-3)
+    assert np.allclose(off[1], 1.0, atol=0.01)
+
+
+def test_a_dryer_never_leaves_air_moister_than_its_outlet_can_hold() -> None:
+    cold = replace(
+        dryer(),
+        temperature=Fixed(274.15, 0.0),
+        dryer=Refrigerated(Fixed(0.01, 0.0), Fixed(278.15, 0.0)),
+    )
+    assert leaving_dew_point(run(after_tank(cold), 60)).max() < 274.3
