@@ -17,7 +17,6 @@ import numpy as np
 from daemon.clock import HOUR_US
 from daemon.moisture import air, flow
 from daemon.moisture.conditions import COLDEST_K, HOTTEST_K, Conditions, Evaluation, Held
-from daemon.moisture.description import RiseByDuty
 from daemon.moisture.ensemble import Array
 from daemon.moisture.fitting_state import Moment
 from daemon.moisture.model import Model, State
@@ -53,12 +52,6 @@ class Ahead:
 
     def __init__(self, model: Model, outlook: Outlook) -> None:
         self._model, self._plan, self._outlook = model, model.plan, outlook
-        self._lagging = [
-            (i, source.time_constant_s)
-            for i, station in enumerate(self._plan.stations)
-            for source in (station.temperature, self._plan.temperature_rules[i])
-            if isinstance(source, RiseByDuty)
-        ]
 
     def step(self, state: State, stretch: Stretch) -> State:
         """The state at the end of one stretch."""
@@ -102,7 +95,7 @@ class Ahead:
     def _follow(self, before: Array, duty: Array, dt_s: float) -> tuple[Array, Array]:
         """The filtered duty behind temperatures that follow it: at the end, and on average."""
         after, mean = before.copy(), before.copy()
-        for i, constant_s in self._lagging:
+        for i, constant_s in self._model.lagging:
             left = math.exp(-dt_s / constant_s)
             gone = before[i] - duty
             after[i] = duty + gone * left
