@@ -297,9 +297,9 @@ class Core:
                     quality = forget(tick.state.quality, service.of)
                     tick.state = replace(tick.state, quality=quality)
                     tick.state = self.sensing.replaced(tick.state, service.of)
-                if service.what == "compressor serviced":
-                    followed = self.following.serviced(tick.state.followed)
-                    tick.state = replace(tick.state, followed=followed)
+                compressor = service.what == "compressor serviced"
+                followed = self.following.serviced(tick.state.followed, compressor)
+                tick.state = replace(tick.state, followed=followed)
             case SaltCheck() as check:
                 tick.state = self.sensing.salt_check(tick.state, check)
             case Gauge() as gauge:
@@ -377,7 +377,7 @@ class Core:
         contents = self.model.contents(state.model)[self._trap_rows]
         kg = percentiles(contents)
         probability = self.rules.probability_due(state)
-        due = self.following.due(state)
+        due = self.following.foreseen(state).traps
         return tuple(
             self._view(state, number, kg[:, number], float(probability[number]), due[number])
             for number in range(len(self.trap_names))

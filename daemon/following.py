@@ -17,10 +17,9 @@ from daemon.clock import HOUR_US
 from daemon.due import NO_DATE, interval_words
 from daemon.expected import AGAINST_RUST, LITTLE
 from daemon.followed import Followed
-from daemon.foreseer import UNKNOWN_ABOVE_S, Dates, Foreseer, hour_ahead
+from daemon.foreseer import UNKNOWN_ABOVE_S, Dates, Foreseen, Foreseer, hour_ahead
 from daemon.moisture.byproducts import ByProducts
 from daemon.moisture.ensemble import percentiles
-from daemon.moisture.forecast import Due
 from daemon.moisture.model import Model, Moved, State
 from daemon.moisture.plant import Plant
 from daemon.reminders import Reminder, Scene
@@ -122,8 +121,12 @@ class Following:
         foresight = self.foreseer.drained(state.followed.foresight, state.model, number)
         return replace(state.followed, foresight=foresight)
 
-    def serviced(self, followed: Followed) -> Followed:
-        """The compressor was worked on."""
+    def serviced(self, followed: Followed, compressor: bool) -> Followed:
+        """A part was changed, or the compressor was worked on."""
+        foresight = followed.foresight
+        followed = replace(followed, foresight=replace(foresight, services=foresight.services + 1))
+        if not compressor:
+            return followed
         return replace(followed, plant=self.byproducts.serviced(followed.plant))
 
     # ---- looking ahead ----
@@ -134,8 +137,8 @@ class Following:
         since = tuple(max(each.last_drain_us, state.begun_us) for each in records)
         return Dates(since, tuple(each.calendar_due_us for each in records))
 
-    def due(self, state: CoreState) -> tuple[Due, ...]:
-        """When each trap is due, as seen now."""
+    def foreseen(self, state: CoreState) -> Foreseen:
+        """When each trap is due and each supply is used up, as seen now."""
         return self.foreseer.now(state.followed.foresight, state.model, self.dates(state))
 
     # ---- reminders ----

@@ -8,6 +8,7 @@ remembers its last answer, which changes nothing but its cost.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from functools import lru_cache
 from zoneinfo import ZoneInfo
@@ -21,6 +22,7 @@ from daemon.moisture.ahead import Ahead, stretches
 from daemon.moisture.ensemble import Array
 from daemon.moisture.forecast import HORIZON_US, NO_DATE, Due, Level, foresee
 from daemon.moisture.model import Model, State
+from daemon.moisture.supplies import Supplies
 from daemon.site import hours as opening
 from daemon.site.types import Hours, Site
 
@@ -36,6 +38,14 @@ class Dates:
 
     since_us: tuple[int, ...]
     next_us: tuple[int, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Foreseen:
+    """A forecast."""
+
+    traps: tuple[Due, ...]  # in the line's order
+    supplies: Mapping[str, Due]  # by station: when its desiccant or ice is used up
 
 
 @lru_cache(maxsize=2048)
@@ -66,7 +76,8 @@ class Foreseer:
         self._drain_at = np.array([trap.drain_at_kg for trap in self._traps])
         off = model.plan.line.compressor.off_when_closed
         self._closed_prior = 0.0 if off else LEAK_DUTY
-        self._memo: tuple[tuple[object, ...], tuple[Due, ...]] | None = None
+        self._supplies = Supplies(model)
+        self._memo: tuple[tuple[object, ...], Foreseen] | None = None
 
     # ---- inside `advance` ----
 
@@ -92,7 +103,8 @@ class Foreseer:
         used = float(state.air.drawn.mean())
         if used == foresight.used_kg:  # nothing moved: the last one stands
             return foresight
-        return keep(foresight, state.time_us, self.forecast(foresight, state, dates), used)
+        foreseen = self.forecast(foresight, state, dates)
+        return keep(foresight, state.time_us, foreseen.traps, used)
 
     def looked(self, foresight: Foresight, state: State, dates: Dates) -> Foresight:
         """Whether a median has reached its level since the last look; also before each drain."""
@@ -142,15 +154,15 @@ class Foreseer:
 
     # ---- looking ahead ----
 
-    def now(self, foresight: Foresight, state: State, dates: Dates) -> tuple[Due, ...]:
-        """When each trap is due, worked out once an hour and after each drain."""
-        key = (state.time_us // HOUR_US, dates)
+    def now(self, foresight: Foresight, state: State, dates: Dates) -> Foreseen:
+        """The forecast, worked out once an hour and after each drain and service."""
+        key = (state.time_us // HOUR_US, dates, foresight.services)
         if self._memo is None or self._memo[0] != key:
             self._memo = (key, self.forecast(foresight, state, dates))
         return self._memo[1]
 
-    def forecast(self, foresight: Foresight, state: State, dates: Dates) -> tuple[Due, ...]:
-        """When each trap is due, as seen from this state."""
+    def forecast(self, foresight: Foresight, state: State, dates: Dates) -> Foreseen:
+        """When each trap is due and each supply is used up, as seen from this state."""
         line = self._model.plan.line
         hours = self._hours(state.time_us)
         duty = week.duties(
@@ -163,8 +175,10 @@ class Foreseer:
         air_ahead = outlook.Outlook(
             self._model.plan, foresight.pattern, state, through[-1].until_us
         )
-        ahead = Ahead(self._model, air_ahead)
-        return foresee(ahead, state, through, self._levels(state, dates), self._values)
+        levels = [*self._levels(state, dates), *self._supplies.levels()]
+        dues = foresee(Ahead(self._model, air_ahead), state, through, levels, self._values)
+        count = len(self._names)
+        return Foreseen(dues[:count], dict(zip(self._supplies.names, dues[count:], strict=True)))
 
     def _hours(self, now_us: int) -> list[week.Ahead]:
         first_us = now_us // HOUR_US * HOUR_US
@@ -187,5 +201,7 @@ class Foreseer:
         ]
 
     def _values(self, state: State) -> Array:
-        values: Array = self._model.contents(state)[self._rows]
-        return values
+        contents: Array = self._model.contents(state)[self._rows]
+        if not self._supplies.names:
+            return contents
+        return np.concatenate([contents, self._supplies.used(state)])

@@ -57,6 +57,7 @@ class Foresight:
     scores: tuple[Score, ...] = ()  # the last of them
     scored: int = 0  # of all time
     hits: int = 0
+    services: int = 0  # of any part, so that a forecast knows that something was renewed
 
 
 def keep(foresight: Foresight, at_us: int, dues: Sequence[Due], used_kg: float) -> Foresight:

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import logging
 import threading
-from collections.abc import Callable, Collection, Sequence
+from collections.abc import Callable, Collection, Mapping, Sequence
 from dataclasses import replace
 from typing import Protocol
 
@@ -21,6 +21,7 @@ from daemon.dew_points import dew_point_views
 from daemon.errors import JournalError, StoreError
 from daemon.foresight import Score
 from daemon.journal import Body, Drain, Entry
+from daemon.moisture.forecast import Due
 from daemon.mqtt import MqttLink
 from daemon.outbox import (
     Message,
@@ -399,6 +400,13 @@ class Shell:
         """What closed hours have told of the plant; None until the first tick."""
         with self._lock:
             return None if self._state is None else plant_view(self._site, self._state)
+
+    def supplies(self) -> Mapping[str, Due]:
+        """By station: when its desiccant or ice is expected to be used up."""
+        with self._lock:
+            if self._state is None:
+                return {}
+            return self.core.following.foreseen(self._state).supplies
 
     def forecast_scores(self) -> Sequence[Score]:
         """What was reached of late, and what had been foreseen at least a day ahead."""

@@ -12,7 +12,7 @@ import pytest
 from daemon.advance import Core
 from daemon.checkpoint import decode, encode
 from daemon.clock import DAY_US, HOUR_US, parse_rfc3339
-from daemon.foreseer import Foreseer
+from daemon.foreseer import Foreseen, Foreseer
 from daemon.foresight import (
     MOST_KEPT,
     MOST_SCORES,
@@ -139,7 +139,7 @@ def test_asking_again_within_the_hour_costs_nothing_and_a_drain_asks_anew(
     asked: list[int] = []
     forecast = Foreseer.forecast
 
-    def counted(self: Foreseer, *given: object) -> tuple[Due, ...]:
+    def counted(self: Foreseer, *given: object) -> Foreseen:
         asked.append(1)
         return forecast(self, *given)  # type: ignore[arg-type]
 
