@@ -109,7 +109,7 @@ def _no_driver(table: Table, drivers: Mapping[str, Driver]) -> None:
     name = table.read("driver", text, "")
     if name:
         close = nearest(name, drivers)
-        end = suggestion(name, drivers) + (f" (known: {known})" if close else "")
+        end = suggestion(name, sorted(drivers)) + (f" (known: {known})" if close else "")
         table.wrong("driver", f"there is no such driver{end}")
 
 
