@@ -106,7 +106,7 @@ def _forecast(site: Site, state: CoreState, levels: dict[str, float]) -> tuple[D
     asked = replace(site, line=replace(site.line, stations=stations))
     foreseer = Foreseer(asked, Model(asked.line))
     dates = Dates((state.time_us,) * len(levels), (NO_DATE,) * len(levels))
-    return foreseer.forecast(state.followed.foresight, state.model, dates)
+    return foreseer.forecast(state.followed.foresight, state.model, dates).traps
 
 
 def _beside(shop: Shop, trap: str, level_kg: float, due: Due) -> Foreseen:
