@@ -7,13 +7,12 @@ from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from hashlib import blake2b
 
-import numpy as np
-
 from daemon.advance import Core
 from daemon.checkpoint import decode, encode
 from daemon.clock import DAY_US, format_rfc3339
 from daemon.errors import StoreError
 from daemon.journal import Entry
+from daemon.moisture.ensemble import spread
 from daemon.moisture.line import new_ledger
 from daemon.outlet_record import OutletRecord
 from daemon.site.types import Site
@@ -153,13 +152,15 @@ def carried_over(core: Core, fresh: CoreState, old: CoreState) -> CoreState:
     for name in core.trap_names:
         if name in old.stations:
             held = contents[old.stations.index(name)]
-            if held.size != members:
-                held = np.quantile(held, (np.arange(members) + 0.5) / members)
-            water[core.model.plan.index[name]] = held
+            water[core.model.plan.index[name]] = spread(held, members)
     model = replace(
         fresh.model, water=replace(fresh.model.water, trap=water), round_start=water.copy()
     )
-    model = replace(model, ledger=new_ledger(core.model.plan, model.water))
+    model = replace(
+        model,
+        ledger=new_ledger(core.model.plan, model.water),
+        fittings=core.model.fittings.carried_over(model.fittings, old.model.fittings),
+    )
     traps = {name: old.traps.get(name, record) for name, record in fresh.traps.items()}
     known = core.judging.rules.channels  # a frozen part stays one through a restart
     judged = {name: each for name, each in old.quality.channels.items() if name in known}
@@ -167,7 +168,13 @@ def carried_over(core: Core, fresh: CoreState, old: CoreState) -> CoreState:
     outlets = _blotters(fresh, old)
     followed = core.following.carried_over(model, old.followed)
     return replace(
-        fresh, model=model, traps=traps, quality=quality, outlets=outlets, followed=followed
+        fresh,
+        model=model,
+        traps=traps,
+        quality=quality,
+        outlets=outlets,
+        followed=followed,
+        drains=core.drains.carried_over(fresh.drains, old.drains),
     )
 
 

@@ -74,6 +74,14 @@ def share(base: Array, value: float, give_or_take: float) -> Array:
     return drawn
 
 
+def spread(values: Array, members: int) -> Array:
+    """What an ensemble held, for one of so many members: as it was, else spread alike."""
+    if values.size == members:
+        return values
+    alike: Array = np.quantile(values, (np.arange(members) + 0.5) / members)
+    return alike
+
+
 def percentiles(values: Array) -> Array:
     """5, 50 and 95 % over the last axis (numpy's linear percentiles), shape (3, ...)."""
     result: Array = np.percentile(values, PERCENTILES, axis=-1)

@@ -26,6 +26,8 @@ class FittingState:
     begun_us: int  # since when uptake and melting are known
     draining: Array  # (drains, members), 1 while a level drain stands open
     limited: tuple[float, ...]  # per drain, the share of members in which it could not pass all
+    cartridges: tuple[str, ...]  # the stations of the rows of charge
+    baths: tuple[str, ...]  # ... and of heat
     empty_since_us: tuple[int, ...]  # per receiver with a petcock: without pressure since; -1: no
 
 

@@ -18,7 +18,7 @@ from daemon.moisture.conditions import Conditions, Held
 from daemon.moisture.description import Measured
 from daemon.moisture.drains import Opening
 from daemon.moisture.drying import Drying, lasts_s
-from daemon.moisture.ensemble import Array
+from daemon.moisture.ensemble import Array, spread
 from daemon.moisture.fitted import Fitted
 from daemon.moisture.fitting_beliefs import FittingParameters, drains_itself, may_be_let_down
 from daemon.moisture.fitting_state import FittingState, Moment, Prepared
@@ -58,6 +58,8 @@ class Fittings:
             begun_us=time_us,
             draining=np.zeros((len(self.drains), members)),
             limited=tuple(0.0 for _ in self.drains),
+            cartridges=tuple(self.plan.stations[i].id for i in self.drying.cartridges),
+            baths=tuple(self.plan.stations[i].id for i in self.baths),
             empty_since_us=tuple(-1 for _ in self.tanks),
         )
 
@@ -70,6 +72,20 @@ class Fittings:
         if i in self.baths:
             heat[self.baths.index(i)] = 0.0
         return replace(state, charge=charge, heat=heat)
+
+    def carried_over(self, fresh: FittingState, old: FittingState) -> FittingState:
+        """After a change of the line's description: cartridges of the same name hold what they
+        held, and ice is as far gone."""
+        members = self.plan.line.members
+        charge, heat = fresh.charge.copy(), fresh.heat.copy()
+        for rows, names, was, held in (
+            (charge, fresh.cartridges, old.cartridges, old.charge),
+            (heat, fresh.baths, old.baths, old.heat),
+        ):
+            for row, name in enumerate(names):
+                if name in was:
+                    rows[row] = spread(held[was.index(name)], members)
+        return replace(fresh, charge=charge, heat=heat)
 
     # ---- one step ----
 

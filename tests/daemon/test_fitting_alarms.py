@@ -17,6 +17,7 @@ from daemon.checkpoint import decode, encode
 from daemon.clock import DAY_US, HOUR_US, MINUTE_US, SECOND_US
 from daemon.journal import Body, Drain, Entry, Service
 from daemon.moisture.ensemble import percentiles
+from daemon.recovery import carried_over
 from daemon.replay import replay
 from daemon.site.types import Site
 from daemon.state import CoreState, Inputs
@@ -459,3 +460,22 @@ def test_a_replay_with_a_dryer_gives_the_live_bits() -> None:
     live = played.play(record, extra=extra)
     readings = flat([(now_us, [*said_, *extra(now_us)]) for now_us, said_ in record])
     assert encode(replay(Core(shop), readings, []).state, "") == encode(live, "")
+
+
+def test_a_changed_site_file_keeps_what_a_cartridge_holds_and_when_drains_were_seen() -> None:
+    text = FLOATED.replace(
+        'kind = "coalescer"\nafter = "riser"\ntrap = { capacity = "120 ml", drain_at = "60 ml" }',
+        'kind = "desiccant"\nafter = "riser"\nmass = "2 kg"',
+    )
+    shop = site(text)
+    played = Played(shop)
+    old = played.play(stretch(shop, 400))
+    changed = Core(site(text.replace("members = 32", "members = 48").replace("3 bar", "4 bar")))
+    now_us = old.time_us + HOUR_US
+    fresh, _, _ = changed.initial(now_us, Inputs(a_tick(shop, now_us, {"motor.contact": 0.0})))
+    state = carried_over(changed, fresh, old)
+    was, now = old.model.fittings.charge[0], state.model.fittings.charge[0]
+    assert now.size == 48
+    assert percentiles(now) == pytest.approx(percentiles(was), rel=0.05)
+    assert state.drains.drains["riser"].seen_us == BEGUN_US
+    state.model.ledger.check(state.model.water)
