@@ -15,6 +15,7 @@ from daemon.shell import Shell
 from daemon.site.reader import parse_site
 from daemon.site.types import Site
 from daemon.store.store import Store
+from sensors import reasons
 from sensors.dew_point_modbus import port_of
 from sensors.emulated.hardware import EmulatedHardware
 from sensors.reading import Reading
@@ -22,7 +23,7 @@ from sensors.registry import DRIVERS, SensorConfig
 from sensors.sampling import HungBus, Sampler
 from tests.daemon.shops import BEGUN_US, PERIOD_US
 from tests.daemon.test_shell import HandClock
-from tests.sensors.contract_cases import CASES, Case
+from tests.sensors.contract_cases import CASES, SERIAL, Case, modbus
 
 LINE = """
 [[sensor]]
@@ -138,6 +139,67 @@ def test_every_fault_is_on_record_with_its_name_within_two_periods(
         assert all(math.isnan(value) for value, bad in told if bad)
     assert rig.shell.health().last_tick_us == rig.clock.wall_us  # the tick went on
     assert rig.sampler.hung_buses() == ()
+
+
+def by_driver(driver: str) -> Case:
+    return next(case for case in CASES if case.config.driver == driver)
+
+
+def another_chip(hardware: EmulatedHardware) -> None:
+    """A BMP280, which has no humidity, is plugged in where the BME280 was."""
+    part = hardware.bme280(1, 0x76)
+    part.brown_out()
+    part.chip_id = 0x58
+
+
+def damaged(hardware: EmulatedHardware) -> None:
+    part = hardware.bme280(1, 0x76)
+    part.damage_calibration(0x8B, 5)
+    part.brown_out()
+
+
+@pytest.mark.parametrize(
+    ("driver", "act", "reason"),
+    [
+        ("bme280", another_chip, reasons.WRONG_CHIP),
+        ("bme280", damaged, reasons.CALIBRATION),
+        ("ds18b20", lambda h: h.ds18b20(SERIAL).fail("starved"), reasons.NOT_MEASURED),
+        ("dew-point-loop", lambda h: _input(h, 2, "wire_off", True), reasons.SIGNAL_LOW),
+        ("pressure-loop", lambda h: _input(h, 1, "failed_ma", 3.5), reasons.SIGNAL_LOW),
+        ("dew-point-modbus", lambda h: modbus(h).registers.clear(), reasons.ERROR_ANSWER),
+    ],
+)
+def test_what_is_found_when_a_part_is_opened_anew_is_named_in_two_periods(
+    driver: str,
+    act: Callable[[EmulatedHardware], None],
+    reason: str,
+    rigs: Callable[[Case], Rig],
+) -> None:
+    rig = rigs(by_driver(driver))
+    rig.set()
+    rig.tick()
+    act(rig.hardware)
+    rig.tick()
+    rig.tick()
+    assert {one.fault for one in rig.shell.health().channels} == {reason}
+
+
+def _input(hardware: EmulatedHardware, number: int, name: str, value: object) -> None:
+    setattr(hardware.ads1115(1, 0x48).inputs[number], name, value)
+
+
+def test_a_contact_that_bounces_closes_once(rigs: Callable[[Case], Rig]) -> None:
+    rig = rigs(by_driver("contact"))
+    rig.tick()
+    rig.tick()
+    line = rig.hardware.line("/dev/gpiochip0", 17)
+    line.bounce((rig.clock.wall_us + 3_000_000) * 1000, 0, times=5, every_ns=400_000)
+    rig.tick()
+    series = rig.shell.readings("switch.contact", BEGUN_US, rig.clock.wall_us + 1)
+    assert series.values.tolist() == [0.0, 0.0, 1.0, 1.0]
+    assert not any(series.faults)
+    closed_after_us = int(series.times_us[2]) - (BEGUN_US + PERIOD_US)
+    assert 3_000_000 <= closed_after_us <= 3_050_000
 
 
 HEALING = [case for case in CASES if "silent" in case.breaks]
