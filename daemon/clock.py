@@ -118,7 +118,7 @@ def parse_rfc3339(text: str) -> int:
 def format_rfc3339(time_us: int) -> str:
     """RFC 3339 in UTC, ending in Z; whole seconds without a fraction, else six decimals."""
     seconds, fraction = divmod(time_us, SECOND_US)
-    text = datetime.fromtimestamp(seconds, UTC).strftime("%Y-%m-%dT%H:%M:%S")
+    text = datetime.fromtimestamp(seconds, UTC).replace(tzinfo=None).isoformat()
     return f"{text}.{fraction:06d}Z" if fraction else f"{text}Z"
 
 
