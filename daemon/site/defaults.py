@@ -134,7 +134,7 @@ KINDS: Mapping[StationKind, KindDefault] = {
     "refrigerated": KindDefault(
         TemperatureDefault("before", 0.0, 3.0, "its outlet is warmed up again by its inlet"),
         "before",
-        TrapDefault(True, 100e-6, 0.0, 0.5, Share(0.9, 0.08), "a dryer's own separator"),
+        TrapDefault(True, 100e-6, 0.0, 0.5, Share(0.97, 0.03), "a dryer's own separator"),
     ),
     "desiccant": KindDefault(SAME_AIR, "before", None),
 }

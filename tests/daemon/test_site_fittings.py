@@ -127,7 +127,7 @@ def test_a_refrigerated_dryer_is_read_with_all_its_keys() -> None:
     assert isinstance(found.around, Fixed)
     assert found.around.value == pytest.approx(301.15)
     assert found.trap is not None
-    assert found.trap.separation.value == 0.9
+    assert found.trap.separation.value == 0.97
 
 
 def test_a_dryer_s_contact_is_not_taken_for_the_compressor_s() -> None:
