@@ -70,6 +70,7 @@ class Week:
     days: Errors = Errors()
     days_seen: float = 0.0
     day: int = -1  # the local day whose hours are being summed, as an ordinal
+    day_hours: int = 0
     day_duty: float = 0.0
     day_foreseen: float = 0.0
 
@@ -93,7 +94,8 @@ def mean(week: Week, kind: int, prior: float) -> Array:
 def level_spread(week: Week) -> float:
     """What is not known of all open hours together, a relative standard deviation."""
     day = day_spread(week)
-    return math.sqrt(1.0 / (1.0 / LEVEL_SPREAD**2 + week.days_seen / (day * day)))
+    seen = week.days_seen + min(week.day_hours / HOURS_A_DAY, 1.0)
+    return math.sqrt(1.0 / (1.0 / LEVEL_SPREAD**2 + seen / (day * day)))
 
 
 def day_spread(week: Week) -> float:
@@ -148,6 +150,7 @@ def _foreseen(week: Week, hour: int, duty: float, prior: float) -> Week:
     return replace(
         week,
         hours=week.hours.told(miss, like_the_day**2, KEEPS_AN_HOUR),
+        day_hours=week.day_hours + 1,
         day_duty=week.day_duty + duty,
         day_foreseen=week.day_foreseen + expected,
     )
@@ -157,11 +160,11 @@ def _day_over(week: Week, day: int) -> Week:
     """When a new day begins, hold what was expected of the last one against it."""
     if day == week.day:
         return week
-    after = replace(week, day=day, day_duty=0.0, day_foreseen=0.0)
+    after = replace(week, day=day, day_hours=0, day_duty=0.0, day_foreseen=0.0)
     if week.day < 0 or week.day_foreseen <= 0.0:
         return after
     miss = (week.day_duty - week.day_foreseen) ** 2
-    known = 1.0 / (1.0 + level_spread(week) ** 2 / day_spread(week) ** 2)
+    known = 1.0 / (1.0 + level_spread(after) ** 2 / day_spread(week) ** 2)
     return replace(
         after,
         days=week.days.told(miss * known, week.day_foreseen**2, KEEPS_A_DAY),
