@@ -226,7 +226,7 @@ def test_a_daemon_that_is_killed_comes_back_to_the_same_bits(tmp_path: Path) -> 
     for life in (1, 2):
         with Process("tests.emulated_daemon", str(path), str(start_us)) as daemon:
             url = daemon.wait_for(r"(http://\S+/)")
-            daemon.wait_for(r"^(150)$")
+            daemon.wait_for(r"^(90)$")
             answer = ask(f"{url}api/v1/traps/tank/drains", {"volume_ml": 20 * life})
             code, _, _ = daemon.end(signal.SIGKILL)
             assert code == -signal.SIGKILL
@@ -240,7 +240,7 @@ def test_a_daemon_that_is_killed_comes_back_to_the_same_bits(tmp_path: Path) -> 
             assert isinstance(body, Drain)
             assert body.volume_kg == pytest.approx(0.02 * life)
             stored = sum(1 for _ in store.ticks(0, BEGUN_US + 100 * DAY_US))
-            assert stored >= ticks + 150
+            assert stored >= ticks + 90
             ticks = stored
             assert store.last_tick_us is not None
             start_us = store.last_tick_us + 7 * 60_000_000

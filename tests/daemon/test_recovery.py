@@ -71,7 +71,7 @@ class Daemon:
 
 @pytest.fixture
 def daemon(tmp_path: Path) -> Iterator[Daemon]:
-    made = Daemon(tmp_path / "birch-works.db", 900)
+    made = Daemon(tmp_path / "birch-works.db", 400)
     yield made
     made.store.close()
 
@@ -82,15 +82,15 @@ def replayed(daemon: Daemon, ticks: int, *entries: Entry) -> bytes:
 
 def test_a_clock_behind_the_last_tick_at_the_start_loses_nothing(daemon: Daemon) -> None:
     """A Pi has no clock battery: after a power cut it starts with an old time."""
-    daemon.tick(*range(400))
+    daemon.tick(*range(120))
     daemon.stop()
-    daemon.clock.wall_us = BEGUN_US + 100 * PERIOD_US
+    daemon.clock.wall_us = BEGUN_US + 50 * PERIOD_US
     daemon.start()
     due_us = daemon.shell._next_due_us()
-    assert due_us == BEGUN_US + 400 * PERIOD_US
+    assert due_us == BEGUN_US + 120 * PERIOD_US
     daemon.shell.tick(due_us)
     assert not daemon.shell._problems.get("store")
-    assert bits(daemon.state) == replayed(daemon, 401)
+    assert bits(daemon.state) == replayed(daemon, 121)
     assert "set back" in daemon.shell._problems["clock"]
 
 
@@ -108,15 +108,15 @@ def test_a_clock_behind_also_after_a_change_of_the_site_file(daemon: Daemon) -> 
 
 
 def test_a_drain_recorded_while_it_stood_still_is_taken_in(daemon: Daemon) -> None:
-    daemon.tick(*range(300))
+    daemon.tick(*range(60))
     daemon.stop()
-    at_us = BEGUN_US + 299 * PERIOD_US + 2 * SECOND_US
+    at_us = BEGUN_US + 59 * PERIOD_US + 2 * SECOND_US
     with Store.open(daemon.path, SHOP.channels) as store:
         store.add_entry(Drain("tank"), at_us, at_us)
     daemon.start()
-    daemon.tick(*range(300, 310))
+    daemon.tick(*range(60, 70))
     entry = Entry(1, at_us, at_us, Drain("tank"))
-    assert bits(daemon.state) == replayed(daemon, 310, entry)
+    assert bits(daemon.state) == replayed(daemon, 70, entry)
 
 
 def test_a_drain_dated_before_the_stop_corrects_what_was_announced(tmp_path: Path) -> None:
@@ -173,37 +173,37 @@ def test_entries_reported_out_of_order_while_the_store_fails_are_all_taken(
     daemon: Daemon,
 ) -> None:
     """Several ticks are then made at once, each with its own entries."""
-    daemon.tick(*range(300))
+    daemon.tick(*range(80))
     commit = daemon.store.commit_tick
 
     def fails(*_: object) -> None:
         raise StoreError("no space left for the database")
 
     daemon.store.commit_tick = fails  # type: ignore[method-assign, assignment]
-    daemon.tick(300, 301, 302, 303)
-    later_us, earlier_us = (BEGUN_US + n * PERIOD_US + SECOND_US for n in (302, 300))
+    daemon.tick(80, 81, 82, 83)
+    later_us, earlier_us = (BEGUN_US + n * PERIOD_US + SECOND_US for n in (82, 80))
     daemon.shell.record(Drain("riser"), later_us)
     daemon.shell.record(Drain("tank"), earlier_us)
     daemon.store.commit_tick = commit  # type: ignore[method-assign]
-    daemon.tick(304)
-    written_us = BEGUN_US + 303 * PERIOD_US
+    daemon.tick(84)
+    written_us = BEGUN_US + 83 * PERIOD_US
     entries = [
         Entry(2, earlier_us, written_us, Drain("tank")),
         Entry(1, later_us, written_us, Drain("riser")),
     ]
-    assert bits(daemon.state) == replayed(daemon, 305, *entries)
+    assert bits(daemon.state) == replayed(daemon, 85, *entries)
 
 
 def test_a_drain_dated_before_the_record_does_not_lose_the_record(
     daemon: Daemon, caplog: pytest.LogCaptureFixture
 ) -> None:
     """Nothing is known of that time; what is known since must stay."""
-    daemon.tick(*range(200))
+    daemon.tick(*range(60))
     held = bits(daemon.state)
     daemon.stop()
     for at_us in (BEGUN_US - HOUR_US, BEGUN_US):
         with Store.open(daemon.path, SHOP.channels) as store:
-            store.add_entry(Drain("tank"), at_us, BEGUN_US + 220 * PERIOD_US)
+            store.add_entry(Drain("tank"), at_us, BEGUN_US + 80 * PERIOD_US)
     daemon.start()
     assert bits(daemon.state) == held
 
@@ -241,7 +241,7 @@ def test_a_checkpoint_that_cannot_be_read_is_left_out(
     daemon: Daemon, caplog: pytest.LogCaptureFixture
 ) -> None:
     """Damaged, or of another version: an earlier one and the readings since give the same bits."""
-    daemon.tick(*range(500))
+    daemon.tick(*range(370))
     held = bits(daemon.state)
     daemon.stop()
     damage(daemon.path, f"at_us > {BEGUN_US}")
@@ -263,15 +263,15 @@ def test_without_a_readable_checkpoint_it_begins_anew(daemon: Daemon) -> None:
 
 
 def test_a_drain_recorded_beside_a_change_of_the_site_file_counts(daemon: Daemon) -> None:
-    daemon.tick(*range(400))
+    daemon.tick(*range(150))
     contents = daemon.shell.core.model.contents(daemon.state.model)
     daemon.stop()
-    at_us = BEGUN_US + 400 * PERIOD_US
+    at_us = BEGUN_US + 150 * PERIOD_US
     with Store.open(daemon.path, SHOP.channels) as store:
         store.add_entry(Drain("tank"), at_us, at_us)
     daemon.shop = site(SITE.replace('set = "3 bar"', 'set = "4 bar"'))
     daemon.start()
-    daemon.tick(401)
+    daemon.tick(151)
     views = {view.trap: view for view in daemon.shell.traps()}
     assert views["tank"].p95_kg == 0.0
     assert views["tank"].last_drain_us == at_us
