@@ -186,7 +186,7 @@ def test_the_tests_run_every_check_in_order(checkout: Checkout) -> None:
         "-m ruff check .",
         "-m ruff format --check .",
         "-m mypy --strict",
-        "-m pytest --numprocesses=auto --cov --cov-report=term:skip-covered",
+        "-m pytest --numprocesses=auto",
     ]
 
 
