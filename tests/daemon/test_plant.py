@@ -21,6 +21,7 @@ from daemon.plant_summary import plant_summary
 from daemon.replay import Result, replay
 from daemon.site.types import Site
 from daemon.views import Interval, PlantView
+from sensors.reading import reading
 from tests.daemon.plants import BAROMETER_PA, GAS, REFERENCE_KG_PER_M3, Plant
 from tests.daemon.shops import SITE
 from tests.daemon.shops import site as parsed
@@ -145,6 +146,25 @@ def test_a_drain_at_night_ends_what_was_being_followed() -> None:
     figure = result.state.followed.plant.leak_kg_per_s
     assert figure is not None
     assert figure.count == 1.0  # the one after the drain
+
+
+def test_a_run_between_two_readings_ends_what_was_being_followed() -> None:
+    """The contact closes and opens again within one tick: its level is as before."""
+    at_us = EVENING + 4 * HOUR_US + 13 * SECOND_US
+    contact = SHOP.channels["motor.contact"]
+    short = [reading(contact, 1.0, at_us), reading(contact, 0.0, at_us + 20 * SECOND_US)]
+    plant = Plant(SHOP, leak_l_min=1.0, used_l_min=working_until_closing)
+    readings = [each for tick in plant.record(EVENING, 5 * 3600, 60) for each in tick]
+    before = [each for each in readings if each.time_us < at_us]
+    followed = replay(Core(SHOP), before, []).state.followed.plant.phase
+    assert followed is not None
+    assert followed.settled is not None
+    told = sorted([*readings, *short], key=lambda each: each.time_us)
+    until = [each for each in told if each.time_us < at_us + 10 * MINUTE_US]
+    again = replay(Core(SHOP), until, []).state.followed.plant.phase
+    assert again is not None
+    assert again.settled is None
+    assert again.first.time_us > at_us
 
 
 # ---- the compressor ----

@@ -117,6 +117,14 @@ def test_a_gun_that_never_rests_leaves_it_at_the_alarms() -> None:
     assert found == []
 
 
+def test_a_gun_that_rests_after_hours_is_too_late() -> None:
+    def late(now_us: int) -> float:
+        return 0.003 if now_us < at(f"{MONDAY}17:40:00") else 0.0
+
+    found = day(SHOP, at(f"{MONDAY}16:00:00"), at("2026-03-03T07:59:00"), late)
+    assert found == []
+
+
 def test_where_nobody_knows_whether_air_is_used_nobody_waits() -> None:
     found = day(SHOP, at(f"{MONDAY}10:00:00"), at(f"{MONDAY}13:00:00"), lambda now_us: math.nan)
     assert told(found) == [("break", f"{MONDAY}12:00")]
