@@ -19,6 +19,7 @@ from daemon.moisture.description import (
     Trap,
 )
 from daemon.moisture.dew_sensors import channels_of
+from daemon.site.fitting_words import drain_words, station_words
 from daemon.site.types import DAY_NAMES, OutletSettings, Site, Units
 from sensors.reading import Channel
 from sensors.registry import SensorConfig
@@ -162,9 +163,13 @@ class StationOut(BaseModel):
     measured_dew_point: list[str] = Field(
         description="the channels that the dew point of its air is measured with"
     )
+    fittings: list[str] = Field(
+        description="in words: what its dryer, its rating, its ice and its drain are taken for",
+        examples=[["rated for 333 L/min of free air, give or take 33.3 L/min"]],
+    )
 
     @classmethod
-    def of(cls, station: Station) -> StationOut:
+    def of(cls, station: Station, units: Units) -> StationOut:
         humidity, volume, trap = station.relative_humidity, station.volume, station.trap
         return cls(
             id=station.id,
@@ -176,7 +181,14 @@ class StationOut(BaseModel):
             volume=None if volume is None else source_out(volume, "m3"),
             trap=None if trap is None else TrapDescriptionOut.of(trap),
             measured_dew_point=_dew_point_channels(station),
+            fittings=_fittings(station, units),
         )
+
+
+def _fittings(station: Station, units: Units) -> list[str]:
+    found = [f"{what} {words}" for what, words in station_words(station, units)]
+    by_itself = "" if station.trap is None else drain_words(station.trap, units)
+    return [*found, f"drain {by_itself}"] if by_itself else found
 
 
 def _dew_point_channels(station: Station) -> list[str]:
@@ -336,7 +348,7 @@ class SiteOut(BaseModel):
             hours=HoursOut.of(site),
             compressor=CompressorOut.of(site.line.compressor),
             sensors=[SensorOut.of(sensor, site) for sensor in site.sensors],
-            stations=[StationOut.of(station) for station in site.line.stations],
+            stations=[StationOut.of(station, site.units) for station in site.line.stations],
             traps=list(site.traps),
             outlets=[OutletOut.of(place, settings[place.id]) for place in site.line.outlets],
             defaults=[

@@ -79,6 +79,7 @@ def test_the_site_is_shown_as_understood(client: Client) -> None:
     assert tank["trap"]["drain_every"] == "working day"
     assert site["stations"][2]["pressure"]["how"] == "like"
     assert site["stations"][3]["trap"] is None
+    assert site["stations"][1]["fittings"] == []
     assert site["outlets"][0]["after"] == "gun-regulator"
     assert site["compressor"]["cut_out"]["value"] == 8e5
     assert site["hours"]["week"]["mon"] == ["08:00-12:00", "13:00-17:30"]
