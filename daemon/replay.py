@@ -16,6 +16,7 @@ from daemon.advance import Core, Estimate
 from daemon.alarms import Transition
 from daemon.clock import format_rfc3339
 from daemon.errors import BalanceError, ReplayError
+from daemon.hours_left import hours_left
 from daemon.journal import Drain, Entry
 from daemon.moisture.air import REFERENCE_DRY_AIR_KG_PER_M3
 from daemon.moisture.description import WATER_KG_PER_M3
@@ -220,6 +221,7 @@ def summarise(core: Core, result: Result, entries: Sequence[Entry]) -> dict[str,
         "drained_ml": _interval(ledger.drained * ML_PER_KG),
         "passed_by_drains_ml": _interval(ledger.passed.sum(0) * ML_PER_KG),
         "taken_by_desiccants_ml": _interval(ledger.beds * ML_PER_KG),
+        "lasts_h": hours_left(core.model, state),
         "vapor_out_ml": _interval(ledger.vapor_out * ML_PER_KG),
         "liquid_out_ml": _interval(ledger.liquid_out * ML_PER_KG),
         "measured_drains": _measured_drains(core.site, entries),
