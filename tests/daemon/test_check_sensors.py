@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import contextlib
 import socket
 import threading
 from collections.abc import Iterator
@@ -309,11 +310,12 @@ def test_another_program_on_the_port_is_no_daemon(parts: EmulatedHardware, a_pi:
         port = other.getsockname()[1]
 
         def answer() -> None:
-            for _ in range(2):
-                connection, _ = other.accept()
-                with connection:
-                    connection.recv(1000)
-                    connection.sendall(b"HTTP/1.0 200 OK\r\n\r\n<html>hello</html>")
+            with contextlib.suppress(OSError):  # closed below, whether it was asked twice or not
+                while True:
+                    connection, _ = other.accept()
+                    with connection:
+                        connection.recv(1000)
+                        connection.sendall(b"HTTP/1.0 200 OK\r\n\r\n<html>hello</html>")
 
         answering = threading.Thread(target=answer, daemon=True)
         answering.start()
