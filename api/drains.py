@@ -4,10 +4,9 @@ from __future__ import annotations
 
 from api.models import DrainIn
 from api.problems import Point, Problem
-from api.quantities import ML_PER_KG, VolumeUnit, kg_from_volume, time_us
-from api.validation import shown
-from daemon.accept import AHEAD_US, MOST_OF_CAPACITY
-from daemon.clock import format_rfc3339
+from api.quantities import ML_PER_KG, VolumeUnit, kg_from_volume
+from api.validation import moment_of, shown
+from daemon.accept import MOST_OF_CAPACITY
 from daemon.journal import Drain, Outcome
 from daemon.moisture.description import Trap
 
@@ -16,7 +15,7 @@ def drain_of(body: DrainIn, name: str, trap: Trap, now_us: int) -> tuple[Drain, 
     """The journal's body, and when it happened (None: now). Raises Problem with every point."""
     points: list[Point] = []
     volume_kg = _volume_kg(body, name, trap, points)
-    at_us = _at_us(body.at, now_us, points)
+    at_us = moment_of(body.at, now_us, points, "a drain")
     outcome = _outcome(body.outcome, volume_kg, points)
     if points:
         raise Problem("invalid-request", points=points)
@@ -75,20 +74,3 @@ def _outcome(said: Outcome | None, volume_kg: float | None, points: list[Point])
         remedy = 'nothing came out; say "empty", or leave the volume out if it was not measured'
         points.append(Point("body.outcome", '"emptied"', remedy))
     return said
-
-
-def _at_us(text: str | None, now_us: int, points: list[Point]) -> int | None:
-    if text is None:
-        return None
-    try:
-        at_us = time_us(text)
-    except ValueError as error:
-        points.append(Point("body.at", shown(text), str(error)))
-        return None
-    if at_us > now_us + AHEAD_US:
-        remedy = (
-            f"it is ahead of this machine's clock ({format_rfc3339(now_us)}); record a drain "
-            "after it has happened, and check the clocks"
-        )
-        points.append(Point("body.at", shown(text), remedy))
-    return at_us

@@ -4,10 +4,8 @@ from __future__ import annotations
 
 from api.outlet_models import GaugeIn
 from api.problems import Point, Problem
-from api.quantities import time_us
-from api.validation import shown
-from daemon.accept import AHEAD_US, GAUGE_SPREAD_K, GAUGE_VALID_S
-from daemon.clock import format_rfc3339
+from api.validation import moment_of, shown
+from daemon.accept import GAUGE_SPREAD_K, GAUGE_VALID_S
 from daemon.journal import Gauge
 from daemon.units import to_si
 
@@ -69,21 +67,3 @@ def _spread_k(body: GaugeIn, points: list[Point]) -> float:
         )
         points.append(Point(f"body.{name}", f"{value:g}", remedy))
     return spread_k
-
-
-def moment_of(text: str | None, now_us: int, points: list[Point]) -> int | None:
-    """When something was, None: now. What is wrong goes to the points."""
-    if text is None:
-        return None
-    try:
-        at_us = time_us(text)
-    except ValueError as error:
-        points.append(Point("body.at", shown(text), str(error)))
-        return None
-    if at_us > now_us + AHEAD_US:
-        remedy = (
-            f"it is ahead of this machine's clock ({format_rfc3339(now_us)}); record it after it "
-            "has happened, and check the clocks"
-        )
-        points.append(Point("body.at", shown(text), remedy))
-    return at_us

@@ -6,6 +6,9 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 from api.problems import Point
+from api.quantities import time_us
+from daemon.accept import AHEAD_US
+from daemon.clock import format_rfc3339
 
 LONGEST_ECHO = 80  # characters of a sent value that an answer repeats
 
@@ -51,3 +54,21 @@ def _point(error: Mapping[str, Any]) -> Point:
         context = {"error": f"{context['error']}, at character {int(parts.pop()) + 1}"}
     remedy = template.format_map(context) if template else str(error["msg"])
     return Point(".".join(parts), shown(error.get("input")), remedy)
+
+
+def moment_of(text: str | None, now_us: int, points: list[Point], what: str = "it") -> int | None:
+    """When something was, None: now. What is wrong goes to the points."""
+    if text is None:
+        return None
+    try:
+        at_us = time_us(text)
+    except ValueError as error:
+        points.append(Point("body.at", shown(text), str(error)))
+        return None
+    if at_us > now_us + AHEAD_US:
+        remedy = (
+            f"it is ahead of this machine's clock ({format_rfc3339(now_us)}); record {what} "
+            "after it has happened, and check the clocks"
+        )
+        points.append(Point("body.at", shown(text), remedy))
+    return at_us

@@ -14,9 +14,10 @@ from api.outlet_models import (
     GaugeOut,
     OutletStateOut,
 )
-from api.outlet_reports import gauge_of, moment_of, surface_of
+from api.outlet_reports import gauge_of, surface_of
 from api.problems import Point, Problem, answered_by
 from api.routes.running import TheDaemon
+from api.validation import moment_of
 from daemon.journal import Blotter
 from daemon.views import OutletView, Running
 

@@ -8,6 +8,7 @@ from api.guard import writes_allowed
 from api.models import AcknowledgeIn, RecordedOut, SaltCheckIn, ServiceIn
 from api.problems import Problem, answered_by
 from api.routes.running import TheDaemon
+from api.routes.traps import described
 from daemon.journal import Confirm, SaltCheck, Service
 
 router = APIRouter()
@@ -34,9 +35,7 @@ ON_WRITING = (
 )
 def confirm(trap: str, daemon: TheDaemon, body: AcknowledgeIn | None = None) -> RecordedOut:
     """The trap's last measured drain was far off what was expected: it is learned from now."""
-    if trap not in daemon.site.traps:
-        known = ", ".join(daemon.site.traps) or "none"
-        raise Problem("unknown-trap", f'there is no trap "{trap}"; those of this site are: {known}')
+    described(daemon, trap)
     return RecordedOut.of(daemon.record(Confirm(trap, (body.by if body else None) or "")).entry)
 
 

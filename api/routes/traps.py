@@ -38,7 +38,7 @@ def get_traps(daemon: TheDaemon) -> list[TrapOut]:
 )
 def get_trap(trap: str, daemon: TheDaemon) -> TrapOut:
     """A median with its 5 to 95 % interval, and whether a drain is due."""
-    _described(daemon, trap)
+    described(daemon, trap)
     for view in daemon.traps():
         if view.trap == trap:
             return TrapOut.of(view)
@@ -68,7 +68,7 @@ def get_trap(trap: str, daemon: TheDaemon) -> TrapOut:
 )
 def post_drain(trap: str, body: DrainIn, daemon: TheDaemon, response: Response) -> DrainOut:
     """Answers once it is committed; the estimate follows at the next tick."""
-    drain, at_us = drain_of(body, trap, _described(daemon, trap), daemon.clock.now_us())
+    drain, at_us = drain_of(body, trap, described(daemon, trap), daemon.clock.now_us())
     recorded = daemon.record(drain, at_us, body.key or "")
     if recorded.repeated:
         response.status_code = 200
@@ -87,14 +87,15 @@ def get_drains(
     to: Annotated[str | None, TO] = None,
 ) -> list[DrainOut]:
     """All of them without from and to, as far as the log goes back."""
-    _described(daemon, trap)
+    described(daemon, trap)
     now_us = daemon.clock.now_us()
     # a drain may be dated a little ahead of this clock
     start_us, end_us = span(from_, to, now_us + AHEAD_US, now_us + AHEAD_US)
     return [DrainOut.of(entry) for entry in daemon.drains(trap, start_us, end_us)]
 
 
-def _described(daemon: Running, name: str) -> Trap:
+def described(daemon: Running, name: str) -> Trap:
+    """The trap of that name; Problem names those of the site."""
     for station in daemon.site.line.stations:
         if station.id == name and station.trap is not None:
             return station.trap
