@@ -21,6 +21,7 @@ from daemon.dew_points import dew_point_views
 from daemon.errors import JournalError, StoreError
 from daemon.foresight import Score
 from daemon.journal import Body, Drain, Entry
+from daemon.line_views import LineViews
 from daemon.moisture.forecast import Due
 from daemon.mqtt import MqttLink
 from daemon.outbox import (
@@ -48,6 +49,7 @@ from daemon.views import (
     PlantView,
     Recorded,
     SeriesOfReadings,
+    StationView,
     TrapView,
 )
 from sensors.quality import Verdict
@@ -85,6 +87,7 @@ class Shell:
         self._topics = topics
         self.core = Core(site)
         self._buttons = Buttons(site)
+        self._line_views = LineViews(site, self.core.model)
         self.late_after_us = LATE_AFTER_PERIODS * self.core.model.period_us
         self.link: MqttLink | None = None
         self.on_entry: Callable[[Entry], None] | None = None  # told of what was committed
@@ -386,6 +389,11 @@ class Shell:
         if state is None:
             return ()
         return tuple(dew_point_views(self.core.model, self.core.rules.contradictions, state))
+
+    def stations(self) -> Sequence[StationView]:
+        with self._lock:
+            state = self._state
+        return () if state is None else self._line_views.all(state)
 
     def margin(self, outlet: str, surface_k: float) -> OutletView | None:
         with self._lock:

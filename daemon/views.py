@@ -19,6 +19,8 @@ from daemon.site.types import Site
 
 Because = Literal["volume", "calendar"]
 Verdict = Literal["wait", "care", "dry enough", "unknown"]
+# where a station's value comes from: "rule" also while a silent sensor's rule stands in for it
+Origin = Literal["sensor", "site file", "rule", "default"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,6 +117,32 @@ class OutletView:
     holding: Judgement | None  # whether a blasted surface may be left bare
     blotter: Blotted | None  # the last test's result
     blotter_us: int | None
+
+
+@dataclass(frozen=True, slots=True)
+class StationValue:
+    """One value of a station, and where it comes from."""
+
+    value: Interval
+    origin: Origin
+    words: str  # the same in words and in the site's units, with its width
+
+
+@dataclass(frozen=True, slots=True)
+class StationView:
+    """A station as it is now. Pressures are absolute."""
+
+    station: str
+    kind: str
+    after: str  # "" for the intake
+    at_us: int
+    temperature: StationValue  # K
+    pressure: StationValue  # Pa
+    atmosphere_pa: float
+    relative_humidity: StationValue | None  # 0-1, over liquid water: the intake's
+    dew_point_k: Interval  # of the air that leaves, at the station's own pressure
+    saturated: float  # the chance that this air can hold no more, 0-1
+    trap: bool
 
 
 @dataclass(frozen=True, slots=True)
@@ -219,6 +247,10 @@ class Running(Protocol):
 
     def dew_points(self) -> Sequence[DewPointView]:
         """One view a station whose dew point is measured; empty until the first tick."""
+        ...
+
+    def stations(self) -> Sequence[StationView]:
+        """One view a station, in line order; empty until the first tick. Costs a millisecond."""
         ...
 
     def margin(self, outlet: str, surface_k: float) -> OutletView | None:

@@ -32,6 +32,7 @@ from daemon.views import (
     OutletView,
     Recorded,
     SeriesOfReadings,
+    StationView,
     TrapView,
 )
 from sensors.reading import Channel
@@ -234,6 +235,7 @@ class FakeRunning:
     standing: dict[str, Alarm] = field(default_factory=some_alarms)
     shown_outlets: list[OutletView] = field(default_factory=lambda: [gun_view()])
     shown_dew_points: list[DewPointView] = field(default_factory=list)
+    shown_stations: list[StationView] = field(default_factory=list)
     problems: tuple[str, ...] = ()
     recorded: dict[str, SeriesOfReadings] = field(default_factory=_no_readings)
     journal: list[Entry] = field(default_factory=list)
@@ -264,6 +266,9 @@ class FakeRunning:
 
     def dew_points(self) -> Sequence[DewPointView]:
         return tuple(self.shown_dew_points)
+
+    def stations(self) -> Sequence[StationView]:
+        return self.shown_stations
 
     def margin(self, outlet: str, surface_k: float) -> OutletView | None:
         return gun_view(surface_k) if self.shown_outlets else None

@@ -34,6 +34,7 @@ def test_every_route_of_the_first_version_is_described(described: dict[str, Any]
         ("get", "/api/v1/outlets/{outlet}/margin"),
         ("get", "/api/v1/readings"),
         ("get", "/api/v1/site"),
+        ("get", "/api/v1/stations"),
         ("get", "/api/v1/traps"),
         ("get", "/api/v1/traps/{trap}"),
         ("get", "/api/v1/traps/{trap}/drains"),
