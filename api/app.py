@@ -23,7 +23,18 @@ from api.problems import (
     problem_of_status,
     problem_response,
 )
-from api.routes import alarms, dew_points, health, home, outlets, parts, readings, stations, traps
+from api.routes import (
+    alarms,
+    dew_points,
+    health,
+    home,
+    outlets,
+    parts,
+    plant,
+    readings,
+    stations,
+    traps,
+)
 from api.validation import points_of
 from daemon.errors import JournalError, StoreError
 from daemon.views import Running
@@ -68,7 +79,7 @@ def create_app(running: Running) -> FastAPI:
     app.add_exception_handler(JournalError, _answer_journal)
     app.add_exception_handler(StoreError, _answer_store)
     everywhere = APIRouter(prefix=PREFIX, responses=answered_by("wrong-host", "unexpected"))
-    for module in (health, traps, outlets, dew_points, alarms, parts, readings, stations):
+    for module in (health, traps, outlets, dew_points, alarms, parts, plant, readings, stations):
         everywhere.include_router(module.router)
     app.include_router(everywhere)
     app.include_router(home.router)

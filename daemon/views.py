@@ -5,7 +5,7 @@ Views are in SI and microseconds; the API and MQTT turn them into people's units
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Literal, Protocol
 
@@ -14,7 +14,10 @@ import numpy.typing as npt
 
 from daemon.alarms import Alarm
 from daemon.clock import Clock
+from daemon.foresight import Score
 from daemon.journal import Blotted, Body, Entry
+from daemon.moisture.forecast import Due
+from daemon.reminders import Reminder
 from daemon.site.types import Site
 
 Because = Literal["volume", "calendar"]
@@ -251,6 +254,22 @@ class Running(Protocol):
 
     def stations(self) -> Sequence[StationView]:
         """One view a station, in line order; empty until the first tick. Costs a millisecond."""
+        ...
+
+    def reminders(self) -> Sequence[Reminder]:
+        """The last few, oldest first."""
+        ...
+
+    def plant(self) -> PlantView | None:
+        """What closed hours have told of the plant; None until the first tick."""
+        ...
+
+    def supplies(self) -> Mapping[str, Due]:
+        """By station: when its desiccant or ice is expected to be used up."""
+        ...
+
+    def forecast_scores(self) -> Sequence[Score]:
+        """What was reached of late, and what had been foreseen at least a day ahead."""
         ...
 
     def margin(self, outlet: str, surface_k: float) -> OutletView | None:

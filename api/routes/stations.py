@@ -6,9 +6,11 @@ from fastapi import APIRouter
 from pydantic import BaseModel, Field
 
 from api.outlet_models import IntervalOut
+from api.plant_models import UsedUpOut
 from api.problems import answered_by
 from api.routes.running import TheDaemon
 from daemon.clock import format_rfc3339
+from daemon.moisture.forecast import Due
 from daemon.unit_tables import ZERO_CELSIUS_K
 from daemon.views import Interval, Origin, StationValue, StationView
 
@@ -51,9 +53,12 @@ class StationNowOut(BaseModel):
     )
     saturated: float = Field(description="the chance that this air can hold no more, 0 to 1")
     trap: bool = Field(description="whether liquid collects here; see traps")
+    used_up: UsedUpOut | None = Field(
+        description="when its desiccant or ice is expected to be used up; null: it has none"
+    )
 
     @classmethod
-    def of(cls, view: StationView) -> StationNowOut:
+    def of(cls, view: StationView, used_up: Due | None) -> StationNowOut:
         humidity = view.relative_humidity
         return cls(
             station=view.station,
@@ -71,6 +76,7 @@ class StationNowOut(BaseModel):
             dew_point_c=_celsius(view.dew_point_k),
             saturated=round(view.saturated, 3),
             trap=view.trap,
+            used_up=None if used_up is None else UsedUpOut.of(used_up),
         )
 
 
@@ -90,4 +96,5 @@ def _scaled(interval: Interval, times: float, plus: float, digits: int) -> Inter
 )
 def get_stations(daemon: TheDaemon) -> list[StationNowOut]:
     """In the order in which the air meets them; an empty list until the first tick."""
-    return [StationNowOut.of(view) for view in daemon.stations()]
+    supplies = daemon.supplies()
+    return [StationNowOut.of(view, supplies.get(view.station)) for view in daemon.stations()]

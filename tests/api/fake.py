@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import threading
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -11,6 +11,7 @@ import numpy as np
 from daemon.alarms import Alarm
 from daemon.clock import HOUR_US, MINUTE_US, SECOND_US, parse_rfc3339
 from daemon.errors import JournalError
+from daemon.foresight import Score
 from daemon.journal import Acknowledge, Body, Drain, Entry
 from daemon.moisture.description import (
     Compressor,
@@ -24,12 +25,16 @@ from daemon.moisture.description import (
     Station,
     Trap,
 )
+from daemon.moisture.forecast import Due
+from daemon.reminders import Reminder
 from daemon.site.types import Api, Cup, DefaultUsed, Hours, Mqtt, OutletSettings, Site, Units
 from daemon.views import (
     ChannelHealth,
     DewPointView,
     Health,
+    Interval,
     OutletView,
+    PlantView,
     Recorded,
     SeriesOfReadings,
     StationView,
@@ -221,6 +226,38 @@ def some_alarms() -> dict[str, Alarm]:
     }
 
 
+def some_plant() -> PlantView:
+    """A leak of 12 L/min (8-18) that costs money, and a compressor that gives what it should."""
+    return PlantView(
+        at_us=NOW_US - 5 * SECOND_US,
+        leak_m3_per_s=Interval(8 / 60e3, 12 / 60e3, 18 / 60e3),
+        leak_at_us=NOW_US - 10 * HOUR_US,
+        leak_hole_m=0.0006,
+        leak_kwh_per_year=Interval(200.0, 310.0, 480.0),
+        leak_cost_per_year=Interval(60.0, 93.0, 144.0),
+        currency="EUR",
+        leak_high=0.25,
+        delivered_m3_per_s=Interval(0.0022, 0.0024, 0.0026),
+        delivered_at_us=NOW_US - 15 * HOUR_US,
+        delivered_times=7,
+        delivered_to_rated=Interval(0.88, 0.96, 1.04),
+        weak=0.03,
+        duty=0.42,
+    )
+
+
+def some_reminder() -> Reminder:
+    """What was called out at the shift's start."""
+    return Reminder(
+        "reminder/shift-start/2026-12-01T08:00:00Z",
+        NOW_US - HOUR_US,
+        "round",
+        "shift start",
+        ("riser", "tank"),
+        "2 to drain, the tank last: about 0.6 L.",
+    )
+
+
 def _no_readings() -> dict[str, SeriesOfReadings]:
     return {}
 
@@ -236,6 +273,10 @@ class FakeRunning:
     shown_outlets: list[OutletView] = field(default_factory=lambda: [gun_view()])
     shown_dew_points: list[DewPointView] = field(default_factory=list)
     shown_stations: list[StationView] = field(default_factory=list)
+    shown_plant: PlantView | None = field(default_factory=some_plant)
+    shown_reminders: list[Reminder] = field(default_factory=lambda: [some_reminder()])
+    shown_supplies: dict[str, Due] = field(default_factory=dict)
+    shown_scores: list[Score] = field(default_factory=list)
     problems: tuple[str, ...] = ()
     recorded: dict[str, SeriesOfReadings] = field(default_factory=_no_readings)
     journal: list[Entry] = field(default_factory=list)
@@ -269,6 +310,18 @@ class FakeRunning:
 
     def stations(self) -> Sequence[StationView]:
         return self.shown_stations
+
+    def reminders(self) -> Sequence[Reminder]:
+        return tuple(self.shown_reminders)
+
+    def plant(self) -> PlantView | None:
+        return self.shown_plant
+
+    def supplies(self) -> Mapping[str, Due]:
+        return self.shown_supplies
+
+    def forecast_scores(self) -> Sequence[Score]:
+        return tuple(self.shown_scores)
 
     def margin(self, outlet: str, surface_k: float) -> OutletView | None:
         return gun_view(surface_k) if self.shown_outlets else None

@@ -29,10 +29,13 @@ def test_every_route_of_the_first_version_is_described(described: dict[str, Any]
     assert sorted((method, path) for method, path, _ in operations(described)) == [
         ("get", "/api/v1/alarms"),
         ("get", "/api/v1/dew-points"),
+        ("get", "/api/v1/forecasts"),
         ("get", "/api/v1/health"),
         ("get", "/api/v1/outlets"),
         ("get", "/api/v1/outlets/{outlet}/margin"),
+        ("get", "/api/v1/plant"),
         ("get", "/api/v1/readings"),
+        ("get", "/api/v1/reminders"),
         ("get", "/api/v1/site"),
         ("get", "/api/v1/stations"),
         ("get", "/api/v1/traps"),
