@@ -24,6 +24,8 @@ from daemon.errors import BalanceError
 from daemon.expected import expected_words
 from daemon.fitting_entries import FittingEntries
 from daemon.following import Following
+from daemon.hour_figures import NOTHING, DrainCheck, Noted, joined
+from daemon.hourly import Hourly, noted_ahead
 from daemon.journal import Acknowledge, Blotter, Confirm, Drain, Entry, Gauge, SaltCheck, Service
 from daemon.judging import Judging
 from daemon.moisture.contact import STALE_AFTER_PERIODS
@@ -57,6 +59,7 @@ class Estimate:
     readings: tuple[Reading, ...] = ()  # the tick's, those that are not believed marked as bad
     verdicts: tuple[Verdict, ...] = ()  # what began or ended to be so of a channel
     reminders: tuple[Reminder, ...] = ()
+    noted: Noted = NOTHING  # for the weekly log
 
     @property
     def at_us(self) -> int:
@@ -86,6 +89,7 @@ class _Tick:
     problems: list[str] = field(default_factory=list)
     judged: Judged | None = None
     reminders: list[Reminder] = field(default_factory=list)
+    noted: list[Noted] = field(default_factory=list)
 
     def result(self, core: Core) -> tuple[CoreState, Estimate, list[Transition]]:
         """What an advance gives."""
@@ -98,14 +102,18 @@ class _Tick:
             () if self.judged is None else self.judged.readings,
             () if self.judged is None else self.judged.verdicts,
             tuple(self.reminders),
+            joined(self.noted) if self.noted else NOTHING,
         )
         return self.state, estimate, self.transitions
 
 
 class Core:
-    """`advance` for one site. Holds only what never changes."""
+    """`advance` for one site. Holds only what never changes.
 
-    def __init__(self, site: Site) -> None:
+    Without `hourly`, nothing is gathered for the weekly log.
+    """
+
+    def __init__(self, site: Site, hourly: bool = True) -> None:
         self.site = site
         self.model = Model(site.line)
         plan = self.model.plan
@@ -123,15 +131,21 @@ class Core:
         self.following = Following(site, self.model)
         self.drains = DrainWatching(self.model)
         self.fitting_entries = FittingEntries(self.model, self.drains)
+        self.hourly = Hourly(site, self.model, self.outlet_views) if hourly else None
 
     # ---- beginning ----
 
-    def initial(self, now_us: int, inputs: Inputs) -> tuple[CoreState, Estimate, list[Transition]]:
-        """The state at the first tick, which is the time of the first reading."""
+    def initial(
+        self, now_us: int, inputs: Inputs, known: Mapping[str, Array] | None = None
+    ) -> tuple[CoreState, Estimate, list[Transition]]:
+        """The state at the first tick, which is the time of the first reading.
+
+        `known` are beliefs that were learned before, by name; the others are drawn.
+        """
         unheard = {name: ChannelRecord() for name in self.site.channels}
         judged = self.judging.judge(QualityState(), unheard, inputs.readings, now_us)
         heard = self._heard(judged.readings, now_us, now_us)
-        model = self.model.initial(now_us, heard)
+        model = self.model.initial(now_us, heard, known)
         model, sensed = self.sensing.step(Sensed(), now_us, model, heard.channels)
         state = CoreState(
             model=model,
@@ -149,12 +163,31 @@ class Core:
             quality=judged.state,
             sensed=sensed,
             drains=self.drains.begun(now_us),
+            hourly=self.hourly.begun(model) if self.hourly is not None else None,
         )
         tick = _Tick(state, judged=judged)
         if now_us % HOUR_US == 0:
             tick.marks.append(self._mark(state, "hour", None))
         self._watch(tick)
         return tick.result(self)
+
+    def fitted(self, state: CoreState) -> CoreState:
+        """A state of the same line, for a site file that was edited elsewhere.
+
+        Alarms, channels and outlets that are new begin, those that are gone are dropped.
+        """
+        begun = AlarmRecord(since_us=state.time_us)
+        return replace(
+            state,
+            channels={
+                name: state.channels.get(name, ChannelRecord()) for name in self.site.channels
+            },
+            alarms={name: state.alarms.get(name, begun) for name in self.definitions},
+            outlets={
+                outlet.id: state.outlets.get(outlet.id, OutletRecord())
+                for outlet in self.outlet_air.outlets
+            },
+        )
 
     def _no_hour(self, from_us: int) -> HourTotals:
         zero = np.zeros(self.site.line.members)
@@ -181,6 +214,7 @@ class Core:
                 self._full_hour(tick)
             for entry in here:
                 self._take(tick, entry)
+        self._foreseen(tick, state)
         return tick.result(self)
 
     def take(
@@ -190,7 +224,14 @@ class Core:
         tick = _Tick(state)
         for entry in entries:
             self._take(tick, entry)
+        self._foreseen(tick, state)
         return tick.result(self)
+
+    def _foreseen(self, tick: _Tick, before: CoreState) -> None:
+        """Note forecasts that were made or scored."""
+        was, now = before.followed.foresight, tick.state.followed.foresight
+        if self.hourly is not None and now is not was:
+            tick.noted += noted_ahead(self.trap_names, was, now)
 
     def _stops(self, from_us: int, to_us: int, entries: Iterable[Entry]) -> list[int]:
         hours = range((from_us // HOUR_US + 1) * HOUR_US, to_us + 1, HOUR_US)
@@ -210,9 +251,16 @@ class Core:
             hour.used_kg + moved.used_kg,
         )
         followed = self.following.step(state, model, moved, heard.is_open)
-        after = replace(state, model=model, hour=hour, followed=followed, sensed=sensed)
+        tally = state.hourly
+        if self.hourly is not None:
+            tally = self.hourly.step(state, until_us, moved, heard.is_open)
+        after = replace(
+            state, model=model, hour=hour, followed=followed, sensed=sensed, hourly=tally
+        )
         tick.state = replace(after, drains=self.drains.step(state, after, heard.channels))
         self._watch(tick)
+        if self.hourly is not None:
+            tick.state = self.hourly.look(tick.state)
         self._remind(tick)
 
     def _remind(self, tick: _Tick) -> None:
@@ -222,6 +270,7 @@ class Core:
         tick.reminders += [reminder] if reminder is not None else []
 
     def _full_hour(self, tick: _Tick) -> None:
+        self._note_hour(tick)
         state = self.sensing.hour(tick.state)
         try:
             state.model.ledger.check(state.model.water)
@@ -231,6 +280,12 @@ class Core:
         followed = self.following.hour(state, state.hour)
         state = replace(state, hour=self._no_hour(state.time_us), followed=followed)
         tick.state = self.outlet_entries.hour(state)
+
+    def _note_hour(self, tick: _Tick) -> None:
+        closed = self.hourly.close(tick.state) if self.hourly is not None else None
+        if closed is not None:
+            tick.state, figures, day = closed
+            tick.noted.append(Noted(hours=(figures,), days=(day,)))
 
     # ---- what was heard ----
 
@@ -282,6 +337,8 @@ class Core:
     # ---- journal entries ----
 
     def _take(self, tick: _Tick, entry: Entry) -> None:
+        if self.hourly is not None:
+            tick.state = self.hourly.settled(tick.state)
         match entry.body:
             case Drain() as drain:
                 self._drain(tick, entry, drain)
@@ -318,6 +375,7 @@ class Core:
         tick.state = replace(tick.state, followed=followed)
         if learned is not None:
             tick.learned.append(learned)
+            tick.noted.append(Noted(drains=(DrainCheck.of(entry, learned),)))
         if drain.outcome == "partly":
             self._watch(tick)
             return

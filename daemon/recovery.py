@@ -3,11 +3,11 @@
 from __future__ import annotations
 
 import logging
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
-from hashlib import blake2b
 
-from daemon.advance import Core
+from daemon.advance import Core, Estimate
+from daemon.alarms import Transition
 from daemon.checkpoint import decode, encode
 from daemon.clock import DAY_US, format_rfc3339
 from daemon.errors import StoreError
@@ -15,20 +15,16 @@ from daemon.journal import Entry
 from daemon.moisture.ensemble import spread
 from daemon.moisture.line import new_ledger
 from daemon.outlet_record import OutletRecord
-from daemon.site.types import Site
-from daemon.state import CoreState
+from daemon.site_parts import fingerprint, same_line, untouched
+from daemon.state import CoreState, Inputs
 from daemon.store.store import Store
 from daemon.ticks import ticks
 from sensors.quality import as_given
+from sensors.reading import Reading
 
 log = logging.getLogger("dripleg")
 
 TOO_OLD_US = 7 * DAY_US  # an entry dated before this is kept, but the model does not go back
-
-
-def fingerprint(site: Site) -> str:
-    """Changes when the line's description does, and so when an old state no longer fits."""
-    return blake2b(repr(site.line).encode(), digest_size=8).hexdigest()
 
 
 @dataclass(frozen=True, slots=True)
@@ -45,7 +41,7 @@ class Recovery:
 
     def __init__(self, core: Core, store: Store) -> None:
         self._core, self._store = core, store
-        self._fingerprint = fingerprint(core.site)
+        self._fingerprint = fingerprint(core.site, core.model.plan)
 
     def blob(self, state: CoreState) -> bytes:
         """A state as a checkpoint keeps it."""
@@ -92,7 +88,7 @@ class Recovery:
         rewritten = False
         while True:
             found = next(self._readable(until_us), None)
-            if found is None or found[1] != self._fingerprint:
+            if found is None or not same_line(found[1], self._fingerprint):
                 return None, rewritten
             at_us = found[0].time_us
             unknown = [
@@ -103,7 +99,7 @@ class Recovery:
                 if entry.written_us > at_us and entry.at_us >= entry.written_us - TOO_OLD_US
             ]
             if not unknown:
-                return found[0], rewritten
+                return self._core.fitted(found[0]), rewritten
             until_us = min(unknown) - 1
             self._store.drop_checkpoints_after(until_us)
             rewritten = True
@@ -123,22 +119,35 @@ class Recovery:
                     )
                 told = True
 
-    def carried_over(self, fresh: CoreState) -> CoreState:
-        """After a change of the site file: traps of the same name keep what they hold.
+    def begin(
+        self, now_us: int, readings: Sequence[Reading]
+    ) -> tuple[CoreState, Estimate, list[Transition]]:
+        """The first state of this line: like `Core.initial`, but what is known goes on.
 
-        What was recorded while the daemon stood still is taken in.
+        After a change of the site file traps of the same name keep what they hold, and what was
+        learned of untouched parts stays. What was recorded while the daemon stood still is taken
+        in.
         """
-        found = next(self._readable(fresh.time_us), None)
+        found = next(self._readable(now_us), None)
         if found is None:
-            return fresh
-        old = found[0]
+            return self._core.initial(now_us, Inputs(readings))
+        old, before = found
         log.info("the line's description has changed: traps go on with what they held")
-        since = self._store.entries(from_us=old.time_us + 1, to_us=fresh.time_us + 1)
+        plan = self._core.model.plan
+        known = untouched(plan, self._fingerprint, before, old.model.beliefs)
+        fresh, estimate, transitions = self._core.initial(now_us, Inputs(readings), known)
+        since = self._store.entries(from_us=old.time_us + 1, to_us=now_us + 1)
+        state = carried_over(self._core, fresh, old)
+        changed = {each.alarm for each in transitions}
+        standing = {
+            name: record if name in changed else old.alarms.get(name, record)
+            for name, record in state.alarms.items()
+        }
         state, _, _ = self._core.take(
-            carried_over(self._core, fresh, old),
+            replace(state, alarms=standing),
             sorted(since, key=lambda entry: (entry.at_us, entry.seq)),
         )
-        return state
+        return state, replace(estimate, state=state), transitions
 
 
 def carried_over(core: Core, fresh: CoreState, old: CoreState) -> CoreState:

@@ -249,8 +249,7 @@ class Shell:
 
     def _begin(self, now_us: int, readings: list[Reading]) -> None:
         at_now = [each for each in readings if each.time_us == now_us]
-        state, first, transitions = self.core.initial(now_us, Inputs(at_now))
-        state = self._recovery.carried_over(state)
+        state, first, transitions = self._recovery.begin(now_us, at_now)
         # what was recorded before the first tick: nothing of that time is known, so it counts now
         entries = [entry for entry in self._pending if entry.at_us <= now_us]
         state, estimate, changed = self.core.take(state, entries)

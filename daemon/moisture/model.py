@@ -113,10 +113,15 @@ class Model:
 
     # ---- beginning ----
 
-    def initial(self, time_us: int, heard: Heard) -> State:
-        """The state at the first tick: traps hold what they are said to, air is as drawn in."""
+    def initial(
+        self, time_us: int, heard: Heard, known: Mapping[str, Array] | None = None
+    ) -> State:
+        """The state at the first tick: traps hold what they are said to, air is as drawn in.
+
+        `known` are beliefs of the same parts that were learned before.
+        """
         plan = self.plan
-        beliefs = draw(plan, names(plan))
+        beliefs = {**draw(plan, names(plan)), **(known or {})}
         offsets, parameters = make_offsets(plan, beliefs), make_parameters(plan, beliefs)
         held = self._hold({}, heard)
         contact, _ = self._contact(ContactState(), heard, time_us, time_us)
@@ -314,7 +319,7 @@ class Model:
         shown = learning.expectation(contents, state.beliefs, cup)
         seen, sigmas = learning.compare(contents, state.beliefs, cup, volume_kg)
         flagged = sigmas > learning.SUSPECT_SIGMAS and not widen
-        record = learning.told(state.time_us, trap, volume_kg, shown, sigmas, flagged)
+        record = learning.told(state.time_us, trap, volume_kg, shown, sigmas, flagged, cup)
         if flagged:
             return state, record, seen
         learned, factor = self.learn(state, trap, seen, cup, widen)
