@@ -60,6 +60,10 @@ class StoreError(DriplegError):
     """The database cannot be opened, read or written as it must be."""
 
 
+class InUseError(StoreError):
+    """Another process has the database."""
+
+
 class BrokerError(DriplegError):
     """The MQTT broker cannot be reached or refuses us."""
 

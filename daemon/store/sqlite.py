@@ -18,7 +18,7 @@ from typing import Any
 from sqlalchemy import URL, Connection, create_engine, event
 from sqlalchemy.exc import DBAPIError, SQLAlchemyError
 
-from daemon.errors import StoreError
+from daemon.errors import InUseError, StoreError
 from daemon.store.database import Database
 
 BUSY_MS = 5000
@@ -42,7 +42,7 @@ class Lock:
             os.close(self._descriptor)
             if error.errno not in (errno.EAGAIN, errno.EACCES):
                 raise
-            raise StoreError(
+            raise InUseError(
                 f"{path}: another dripleg (process {holder or 'unknown'}) is using this database: "
                 "stop it first, or give this one another path"
             ) from None

@@ -14,8 +14,9 @@ from typing import Self
 from daemon.alarms import Transition
 from daemon.errors import StoreError
 from daemon.journal import Body, Entry
+from daemon.keys import ApiKey
 from daemon.outbox import Message, Waiting
-from daemon.store import announcements, checkpoints, entries, metas, migrations, sqlite
+from daemon.store import announcements, checkpoints, entries, key_rows, metas, migrations, sqlite
 from daemon.store.database import Database
 from daemon.store.ticks import TickRows
 from daemon.views import Recorded, SeriesOfReadings
@@ -182,6 +183,18 @@ class Store:
         """How many messages wait in the outbox."""
         with self._database.read() as connection:
             return announcements.waiting(connection)
+
+    # --- keys (another process may add and end them: see `daemon/keys_store.py`)
+
+    def find_key(self, key_id: str) -> tuple[ApiKey, bytes] | None:
+        """The key of that id with its secret's digest; revoked ones too."""
+        with self._database.read() as connection:
+            return key_rows.find(connection, key_id)
+
+    def key_used(self, key_id: str, at_us: int) -> None:
+        """Note when a key was used last."""
+        with self._database.write() as connection:
+            key_rows.used(connection, key_id, at_us)
 
     # --- the rest
 

@@ -62,6 +62,51 @@ ticks = Table(
     Column("packed", LargeBinary, nullable=False),
 )
 
+# Finished hours: a run of ticks is one row here, and one of `sealed_values` for each channel
+sealed_ticks = Table(
+    "sealed_ticks",
+    metadata,
+    Column("first_us", _Key, primary_key=True, autoincrement=False),  # the first tick of the run
+    Column("last_us", BigInteger, nullable=False),
+    Column("layout", Integer, ForeignKey("layouts.layout"), nullable=False),
+    Column("packed", LargeBinary, nullable=False),
+)
+
+sealed_values = Table(
+    "sealed_values",
+    metadata,
+    Column(
+        "first_us",
+        BigInteger,
+        ForeignKey("sealed_ticks.first_us"),
+        primary_key=True,
+        autoincrement=False,
+    ),
+    Column("position", Integer, primary_key=True, autoincrement=False),
+    Column("packed", LargeBinary, nullable=False),
+)
+
+# What sealed runs gave to the hours of their channels, by the readings' own times
+channel_hours = Table(
+    "channel_hours",
+    metadata,
+    Column("channel", Text, primary_key=True),
+    Column("hour_us", BigInteger, primary_key=True, autoincrement=False),
+    Column("run_us", BigInteger, primary_key=True, autoincrement=False),
+    Column("good", Integer, nullable=False),
+    Column("bad", Integer, nullable=False),
+    Column("least", Double, nullable=True),
+    Column("greatest", Double, nullable=True),
+    Column("total", Double, nullable=False),
+    Column("begins_us", BigInteger, nullable=False),
+    Column("ends_us", BigInteger, nullable=False),
+    Column("last_value", Double, nullable=True),
+    Column("held_us", BigInteger, nullable=False),
+    Column("held_total", Double, nullable=False),
+    Column("sampled", Boolean, nullable=False),
+    sqlite_with_rowid=False,  # kept in the key's order: a channel's year lies together
+)
+
 journal = Table(
     "journal",
     metadata,
@@ -107,4 +152,16 @@ outbox = Table(
     Column("payload", LargeBinary, nullable=False),
     Column("qos", SmallInteger, nullable=False),
     Column("retain", Boolean, nullable=False),
+)
+
+api_keys = Table(
+    "api_keys",
+    metadata,
+    Column("id", Text, primary_key=True),
+    Column("digest", LargeBinary, nullable=False),  # of the secret, which is kept nowhere
+    Column("name", Text, nullable=False),
+    Column("may", Text, nullable=False),  # "read,record"
+    Column("made_us", BigInteger, nullable=False),
+    Column("used_us", BigInteger, nullable=True),  # to the hour
+    Column("revoked_us", BigInteger, nullable=True),
 )

@@ -170,8 +170,9 @@ def test_an_upgrade_that_fails_leaves_the_version_before_it(old: Path) -> None:
         connection.exec_driver_sql("CREATE TABLE extra (x INTEGER)")
         connection.exec_driver_sql("INSERT INTO nowhere VALUES (1)")
 
-    before = schema(old)
     database = sqlite.connect(old)
+    upgrade(database)
+    before = schema(old)
     with pytest.raises(StoreError, match="no such table: nowhere"):
         upgrade(database, (*MIGRATIONS, Migration(99, "fails", fails)))
     with database.read() as connection:
