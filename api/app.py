@@ -16,6 +16,8 @@ from starlette.responses import Response
 from starlette.routing import Match
 
 from api.guard import Guard
+from api.pages import assets
+from api.pages.problem_page import problem_page, wants_page
 from api.problems import (
     Problem,
     ProblemOut,
@@ -82,7 +84,8 @@ def create_app(running: Running) -> FastAPI:
     for module in (health, traps, outlets, dew_points, alarms, parts, plant, readings, stations):
         everywhere.include_router(module.router)
     app.include_router(everywhere)
-    app.include_router(home.router)
+    for shown in (home, assets):  # the pages for people
+        app.include_router(shown.router)
     app.openapi = lambda: _openapi(app)  # type: ignore[method-assign]  # FastAPI's own way
     return app
 
@@ -113,13 +116,19 @@ def _openapi(app: FastAPI) -> dict[str, Any]:
 
 async def _answer_problem(request: Request, error: Exception) -> Response:
     assert isinstance(error, Problem)
-    return problem_response(error, request.url.path)
+    return _answer(request, error)
+
+
+def _answer(request: Request, problem: Problem) -> Response:
+    if wants_page(request):
+        return problem_page(request, problem)
+    return problem_response(problem, request.url.path)
 
 
 async def _answer_invalid(request: Request, error: Exception) -> Response:
     assert isinstance(error, RequestValidationError)
     problem = Problem("invalid-request", points=points_of(error.errors()))
-    return problem_response(problem, request.url.path)
+    return _answer(request, problem)
 
 
 async def _answer_status(request: Request, error: Exception) -> Response:
@@ -130,7 +139,7 @@ async def _answer_status(request: Request, error: Exception) -> Response:
     elif error.status_code == 405:
         detail = f"{request.method} is not possible here"
         headers = {"allow": ", ".join(_possible_methods(request))}
-    return problem_response(problem_of_status(error.status_code, detail, headers), path)
+    return _answer(request, problem_of_status(error.status_code, detail, headers))
 
 
 def _possible_methods(request: Request) -> list[str]:
@@ -146,9 +155,9 @@ def _possible_methods(request: Request) -> list[str]:
 
 
 async def _answer_journal(request: Request, error: Exception) -> Response:
-    return problem_response(Problem("invalid-request", str(error)), request.url.path)
+    return _answer(request, Problem("invalid-request", str(error)))
 
 
 async def _answer_store(request: Request, error: Exception) -> Response:
     log.error("%s %r: %s", request.method, request.url.path, error)
-    return problem_response(Problem("log-unavailable", str(error)), request.url.path)
+    return _answer(request, Problem("log-unavailable", str(error)))

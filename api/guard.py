@@ -19,6 +19,7 @@ from starlette.types import ASGIApp, Message, Receive, Scope, Send
 from api.problems import Problem, problem_response
 
 LARGEST_BODY = 16 * 1024  # bytes; a drain is under 300
+FORM = "application/x-www-form-urlencoded"
 _READING = frozenset({"GET", "HEAD", "OPTIONS"})
 # Names that the internet's name servers never hand out, so that nobody else can own them:
 # RFC 6762 (local), RFC 8375 (home.arpa), ICANN 2024 (internal), common practice (lan).
@@ -26,10 +27,11 @@ _LOCAL_ENDINGS = (".local", ".home.arpa", ".internal", ".lan")
 _SECURITY_HEADERS = {
     "x-content-type-options": "nosniff",
     "cross-origin-resource-policy": "same-origin",
-    "referrer-policy": "no-referrer",
+    # our own pages' forms must say where they come from; nobody else is told
+    "referrer-policy": "same-origin",
     "content-security-policy": (
-        "default-src 'none'; style-src 'self'; form-action 'self'; "
-        "base-uri 'none'; frame-ancestors 'none'"
+        "default-src 'none'; style-src 'self'; script-src 'self'; connect-src 'self'; "
+        "img-src 'self'; form-action 'self'; base-uri 'none'; frame-ancestors 'none'"
     ),
     "cache-control": "no-store",
 }
@@ -78,7 +80,7 @@ def origin_is_ours(headers: Headers) -> bool:
     )
 
 
-def refusal(method: str, headers: Headers, bound_to: str) -> Problem | None:
+def refusal(method: str, headers: Headers, bound_to: str, path: str = "/api/") -> Problem | None:
     """Why a request must not reach its route; None when it may."""
     host = headers.get("host", "")
     if not host_is_ours(host, bound_to):
@@ -88,19 +90,23 @@ def refusal(method: str, headers: Headers, bound_to: str) -> Problem | None:
     if not origin_is_ours(headers):
         sender = headers.get("origin", headers.get("sec-fetch-site", ""))
         return Problem("cross-site-write", f'the request was sent by a page of "{sender[:80]}"')
-    return _unfit_body(method, headers)
+    return _unfit_body(method, headers, path)
 
 
-def _unfit_body(method: str, headers: Headers) -> Problem | None:
+def _unfit_body(method: str, headers: Headers, path: str) -> Problem | None:
     if "transfer-encoding" in headers:
         return Problem("no-length")
     length = headers.get("content-length", "0")
     if not length.isdecimal() or int(length[:20]) > LARGEST_BODY:
         return Problem("too-large", f"it has {length[:20]} bytes, and {LARGEST_BODY} are taken")
     media_type = headers.get("content-type", "").partition(";")[0].strip().lower()
-    if method == "POST" and media_type != "application/json":
+    # the pages' own addresses take forms, which carry a token (`api/pages/forms.py`)
+    wanted, refused = (
+        ("application/json", "not-json") if path.startswith("/api/") else (FORM, "not-a-form")
+    )
+    if method == "POST" and media_type != wanted:
         said = f'content-type is "{media_type[:80]}"' if media_type else "no content-type is said"
-        return Problem("not-json", said)
+        return Problem(refused, said)
     return None
 
 
@@ -133,7 +139,7 @@ class Guard:
                     headers.setdefault(name, value)
             await send(message)
 
-        problem = refusal(scope["method"], Headers(scope=scope), self._bound_to)
+        problem = refusal(scope["method"], Headers(scope=scope), self._bound_to, scope["path"])
         if problem is not None:
             answer = problem_response(problem, scope["path"])
             await answer(scope, receive, send_with_headers)

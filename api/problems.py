@@ -60,6 +60,9 @@ KINDS: dict[str, Kind] = {
         413, "The body is too large", "A drain or an acknowledgement is a few lines."
     ),
     "not-json": Kind(415, "The body is not JSON", "Send content-type: application/json."),
+    "not-a-form": Kind(
+        415, "The body is not a form", "Programs write to /api/v1/, in JSON; pages send forms."
+    ),
     "wrong-host": Kind(
         421,
         "Asked under a name that is not this machine's",

@@ -1,72 +1,35 @@
-"""A plain page for people at `/`, and a page for each kind of problem."""
+"""The start page at `/`, and a page for each kind of problem."""
 
 from __future__ import annotations
 
-from collections.abc import Sequence
-from dataclasses import dataclass
-from pathlib import Path
-from zoneinfo import ZoneInfo
-
 from fastapi import APIRouter
-from jinja2 import Environment, FileSystemLoader, StrictUndefined
-from starlette.responses import FileResponse, HTMLResponse, PlainTextResponse, Response
+from starlette.responses import HTMLResponse, PlainTextResponse, Response
 
+from api.models import AcknowledgeIn
+from api.pages.alarm_cards import alarm_cards
+from api.pages.forms import Fields, is_fresh
+from api.pages.frame import page
 from api.problems import KINDS, Problem
-from api.quantities import volume_words
+from api.routes.alarms import acknowledge
 from api.routes.running import TheDaemon
-from daemon.clock import to_datetime
-from daemon.site.types import Site
-from daemon.views import Running, TrapView
+from daemon.views import Running
 
 router = APIRouter(include_in_schema=False)
-
-_HERE = Path(__file__).resolve().parent.parent
-_PAGES = Environment(
-    loader=FileSystemLoader(_HERE / "templates"), autoescape=True, undefined=StrictUndefined
-)
-
-
-@dataclass(frozen=True, slots=True)
-class TrapLines:
-    """A trap as the page shows it."""
-
-    name: str
-    median: str
-    low: str
-    high: str
-    levels: str
-    due: bool
-    when: str
-
-
-@dataclass(frozen=True, slots=True)
-class AlarmLines:
-    """An alarm as the page shows it."""
-
-    text: str
-    state: str
-    priority: str
-    since: str
 
 
 @router.get("/")
 def home(daemon: TheDaemon) -> HTMLResponse:
-    """The traps with their intervals, the alarms, and whether all is well."""
-    health = daemon.health()
-    page = _PAGES.get_template("home.html").render(
-        name=daemon.site.name,
-        now=_clock_words(health.at_us, daemon.site),
-        ok=health.ok,
-        problems=health.problems,
-        alarms=_alarms(daemon),
-        traps=[_trap(view, daemon.site) for view in daemon.traps()],
-    )
-    return HTMLResponse(page)
+    """Where to go, the alarms, and whether all is well."""
+    return _home(daemon)
 
 
-@router.get("/style.css")
-async def style() -> FileResponse:
-    return FileResponse(_HERE / "static" / "style.css", media_type="text/css")
+@router.post("/alarms/{alarm}/seen")
+def seen(alarm: str, fields: Fields, daemon: TheDaemon) -> HTMLResponse:
+    """Somebody has seen an alarm, and their browser runs no script."""
+    if not is_fresh(fields):
+        return _home(daemon, "This page was out of date, and nothing was recorded: tap again.")
+    acknowledge(alarm, daemon, AcknowledgeIn(by=fields.get("by") or None))
+    return _home(daemon, "Noted as seen; it shows within a few seconds.")
 
 
 @router.get("/problems/{kind}")
@@ -78,54 +41,15 @@ async def problem(kind: str) -> Response:
     return PlainTextResponse(f"{known.title} ({known.status})\n\n{known.advice}\n")
 
 
-def _alarms(daemon: Running) -> Sequence[AlarmLines]:
-    return [
-        AlarmLines(
-            alarm.text,
-            # on a page people read "seen" for acknowledged
-            {
-                "unacknowledged": "not seen by anybody yet",
-                "acknowledged": "seen",
-                "returned unacknowledged": "over, but not seen by anybody yet",
-            }.get(alarm.state, alarm.state),
-            alarm.priority,
-            _clock_words(alarm.since_us, daemon.site),
-        )
-        for alarm in daemon.alarms()
-        if alarm.state != "normal"
-    ]
-
-
-def _trap(view: TrapView, site: Site) -> TrapLines:
-    def words(kg: float) -> str:
-        # a figure and its unit stay on one line
-        return volume_words(kg, site.units).replace(" ", "\N{NO-BREAK SPACE}")
-
-    since = _clock_words(view.last_drain_us, site) if view.last_drain_us is not None else ""
-    return TrapLines(
-        name=view.trap,
-        median=words(view.p50_kg),
-        low=words(view.p05_kg),
-        high=words(view.p95_kg),
-        levels=f"Drain at {words(view.drain_at_kg)}; it holds {words(view.capacity_kg)}. "
-        + (f"Last drained {since}." if since else "Counted since the start: not drained yet."),
-        due=view.due,
-        when=_when(view, site),
+def _home(daemon: Running, told: str = "") -> HTMLResponse:
+    health = daemon.health()
+    return page(
+        daemon,
+        "home.html",
+        here="/",
+        title="Water in the air line",
+        told=told,
+        ok=health.ok,
+        problems=health.problems,
+        alarms=alarm_cards(daemon),
     )
-
-
-def _when(view: TrapView, site: Site) -> str:
-    if view.due:
-        return {"volume": "Drain it: the water has reached its level.",
-                "calendar": "Drain it: the calendar asks for it."}.get(
-            view.because or "", "Drain it."
-        )  # fmt: skip
-    if view.due_at_us is not None:
-        return f"Next by the calendar: {_clock_words(view.due_at_us, site)}, however little is in."
-    return "Not due by volume."
-
-
-def _clock_words(time_us: int, site: Site) -> str:
-    """A time on the shop's wall: "Tue 1 Dec, 09:00"."""
-    local = to_datetime(time_us).astimezone(ZoneInfo(site.timezone))
-    return f"{local:%a} {local.day} {local:%b}, {local:%H:%M}"

@@ -1,0 +1,43 @@
+"""Forms that a browser sends without script, and why another site's page cannot send one.
+
+The API takes JSON alone, which a form cannot send. The pages' own addresses take forms, under three
+conditions: the guard has seen that the request comes from this API's own pages (Origin and
+Sec-Fetch-Site), one of the two is really there, and the form carries this process's token, which
+only somebody who can read our pages knows. Writing needs the same key as the API's.
+"""
+
+from __future__ import annotations
+
+import secrets
+from collections.abc import Mapping
+from typing import Annotated
+from urllib.parse import parse_qsl
+
+from fastapi import Depends, Request
+
+from api.guard import writes_allowed
+from api.problems import Problem
+
+TOKEN = secrets.token_urlsafe(16)  # of this process: a page from before a restart is out of date
+MOST_FIELDS = 20
+
+
+async def _fields(request: Request) -> dict[str, str]:
+    """What a form says, by name. Problem when it comes from elsewhere or cannot be read."""
+    if not ({"origin", "sec-fetch-site"} & set(request.headers)):
+        raise Problem("cross-site-write", "the browser does not say which page it was sent from")
+    await writes_allowed(request)
+    try:
+        text = (await request.body()).decode("utf-8")
+        pairs = parse_qsl(text, keep_blank_values=True, max_num_fields=MOST_FIELDS, errors="strict")
+    except ValueError as error:
+        raise Problem("unreadable-request", f"the form cannot be read: {error}") from error
+    return {name: value.strip() for name, value in pairs}
+
+
+Fields = Annotated[dict[str, str], Depends(_fields)]
+
+
+def is_fresh(fields: Mapping[str, str]) -> bool:
+    """Whether a form was made by this process."""
+    return secrets.compare_digest(fields.get("token", "").encode(), TOKEN.encode())

@@ -1,0 +1,220 @@
+// What every page does: send forms in the background, keep what cannot be sent, stay fresh without
+// losing what is typed. Without this script the forms are ordinary ones and the page stands still.
+import { flush, forget, kept, newKey, send, serverSays, whenKeptChanges } from "./send.js";
+
+const FRESH_MS = 15000;
+const RETRY_MS = 5000;
+const BY = "dripleg.by";
+const net = document.getElementById("net");
+let lostSince = null;
+
+// ---- forms ----
+
+// The JSON of a form: a field's name is the body's; `data-number` makes a number of it; what is
+// empty is left out, and so is what only goes `data-with` a field that is.
+function bodyOf(form, button) {
+  const body = {};
+  const fields = new FormData(form, button);
+  for (const [name, text] of fields) {
+    const said = String(text).trim();
+    const field = form.elements[name];
+    const needs = field?.dataset?.with;
+    if (["token", "key"].includes(name) || said === "") continue;
+    if (needs && !String(fields.get(needs) ?? "").trim()) continue;
+    body[name] = field?.dataset?.number === undefined ? said : numberIn(field, said);
+  }
+  if (form.dataset.keyed !== undefined) body.key = newKey();
+  return body;
+}
+
+class NotANumber extends Error {}
+
+function numberIn(field, said) {
+  const figure = said.replace(",", ".");
+  const wrong = !/^[+-]?(\d+\.?\d*|\.\d+)$/.test(figure);
+  field.setAttribute("aria-invalid", String(wrong));
+  if (wrong) {
+    field.focus();
+    throw new NotANumber(`"${said}" is not a number. Write it like ${field.dataset.number || "12.5"}.`);
+  }
+  return Number(figure);
+}
+
+function say(form, text, wrong = false) {
+  const output = form.querySelector("output");
+  output.classList.toggle("wrong", wrong);
+  output.textContent = text;
+}
+
+document.addEventListener("submit", async (event) => {
+  const form = event.target;
+  if (form.dataset.send === undefined) return;
+  event.preventDefault();
+  const button = event.submitter;
+  let body;
+  try {
+    body = bodyOf(form, button);
+  } catch (error) {
+    if (!(error instanceof NotANumber)) throw error;
+    say(form, error.message, true);
+    return;
+  }
+  if (body.by) rememberBy(body.by);
+  button?.setAttribute("disabled", "");
+  say(form, "Sending ...");
+  const outcome = await send(form.dataset.send, body, labelOf(form, button));
+  button?.removeAttribute("disabled");
+  told(form, outcome);
+  if (outcome.taken) {
+    form.reset();
+    fillBy(document);
+    await refresh();
+    document.getElementById(form.id)?.querySelector("output")?.scrollIntoView({ block: "nearest" });
+  }
+});
+
+function told(form, outcome) {
+  if (outcome.taken) say(form, outcome.answer.said || form.dataset.done || "Recorded.");
+  else if (outcome.refused) {
+    say(form, `Not recorded. ${outcome.refused}`, true);
+    form.querySelector("[data-number]")?.setAttribute("aria-invalid", "true");
+  } else say(form, `Kept on this phone, as ${outcome.kept}. It is sent by itself, once.`, true);
+}
+
+function labelOf(form, button) {
+  return [form.dataset.label, button?.textContent].filter(Boolean).join(": ").trim();
+}
+
+// ---- initials ----
+
+function rememberBy(by) {
+  try {
+    localStorage.setItem(BY, by);
+  } catch {
+    // then they are typed each time
+  }
+}
+
+function fillBy(root) {
+  let by = null;
+  try {
+    by = localStorage.getItem(BY);
+  } catch {
+    return;
+  }
+  if (!by) return;
+  for (const field of root.querySelectorAll('input[name="by"]')) {
+    if (!field.value) field.value = by;
+  }
+}
+
+document.addEventListener("change", (event) => {
+  const field = event.target;
+  if (field.name !== "by" || !field.value.trim()) return;
+  rememberBy(field.value.trim());
+  for (const other of document.querySelectorAll('input[name="by"]')) other.value = field.value.trim();
+});
+
+document.addEventListener("input", (event) => event.target.removeAttribute?.("aria-invalid"));
+
+// ---- staying fresh ----
+
+async function refresh() {
+  let text;
+  try {
+    const response = await fetch(location.href, { signal: AbortSignal.timeout?.(8000) });
+    if (!response.ok) throw new Error(String(response.status));
+    text = await response.text();
+  } catch {
+    lostSince ??= Date.now();
+    tellNet();
+    return;
+  }
+  lostSince = null;
+  const page = new DOMParser().parseFromString(text, "text/html");
+  for (const old of document.querySelectorAll("[data-fresh]")) {
+    const made = page.getElementById(old.id);
+    if (made && !isTyping(old)) renew(old, made);
+  }
+  readClock();
+  tellNet();
+}
+
+function isTyping(part) {
+  const field = document.activeElement;
+  return part.contains(field) && field.matches("input:not([type=radio]), select, textarea");
+}
+
+// What somebody typed, chose, opened or is told stays, by the ids of the elements.
+function renew(old, made) {
+  const focused = old.contains(document.activeElement) ? document.activeElement.id : "";
+  for (const was of old.querySelectorAll("[id]")) {
+    const now = made.querySelector(`#${CSS.escape(was.id)}`);
+    if (!now) continue;
+    if (was.matches("output") && was.textContent && !now.textContent) {
+      now.textContent = was.textContent;
+      now.className = was.className;
+    } else if (was.matches("details")) now.open = was.open || now.open;
+    else if (was.matches("[type=radio], [type=checkbox]")) now.checked = was.checked;
+    else if (was.matches("select")) now.value = was.value;
+    else if (was.matches("input:not([type=hidden])") && was.value !== was.defaultValue) {
+      now.value = was.value;
+    }
+  }
+  old.replaceWith(document.adoptNode(made));
+  fillBy(made);
+  if (focused) document.getElementById(focused)?.focus();
+}
+
+function readClock() {
+  const made = document.getElementById("made");
+  if (made) serverSays(Number(made.dataset.now));
+}
+
+// ---- the network ----
+
+function tellNet() {
+  const waiting = kept().filter((tap) => tap.tries > 0);
+  const parts = [];
+  if (lostSince !== null) {
+    const since = new Date(lostSince).toTimeString().slice(0, 5);
+    parts.push(paragraph(`No connection since ${since}: the page shows what was so then.`));
+  }
+  for (const tap of waiting) {
+    const line = paragraph(`Kept on this phone, to be sent once: ${tap.label || tap.path}. ${tap.why || ""} `);
+    const button = document.createElement("button");
+    button.type = "button";
+    button.textContent = "Do not send it";
+    button.addEventListener("click", () => forget(tap.id));
+    line.append(button);
+    parts.push(line);
+  }
+  const same = parts.map((part) => part.textContent).join() === [...net.children].map((part) => part.textContent).join();
+  if (!same) net.replaceChildren(...parts);
+}
+
+function paragraph(text) {
+  const made = document.createElement("p");
+  made.textContent = text;
+  return made;
+}
+
+async function retry() {
+  if (!kept().length) return;
+  const through = await flush();
+  for (const { tap, outcome } of through) {
+    const form = [...document.querySelectorAll("form[data-send]")].find((one) => one.dataset.send === tap.path);
+    if (form) told(form, outcome);
+  }
+  if (through.length) await refresh();
+}
+
+whenKeptChanges(tellNet);
+addEventListener("online", retry);
+document.addEventListener("visibilitychange", () => document.visibilityState === "visible" && refresh());
+setInterval(retry, RETRY_MS);
+setInterval(() => document.visibilityState === "visible" && refresh(), FRESH_MS);
+readClock();
+fillBy(document);
+tellNet();
+retry();
