@@ -16,6 +16,7 @@ from daemon.drain_record import DrainRecord, DrainsWatched, Fall, Leak
 from daemon.errors import StoreError
 from daemon.followed import Followed
 from daemon.foresight import Foresight, Kept, Score
+from daemon.hour_figures import HourTally, Least, OutletTally
 from daemon.moisture.beliefs import Parameters
 from daemon.moisture.carried import Carried
 from daemon.moisture.conditions import Conditions, Held, Lapse, Offsets
@@ -63,13 +64,16 @@ _CLASSES = {
         FloatSeen,
         Gathered,
         Held,
+        HourTally,
         HourTotals,
         Kept,
         Lapse,
+        Least,
         Ledger,
         Observed,
         Offsets,
         OutletRecord,
+        OutletTally,
         Parameters,
         Pattern,
         Phase,

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from zoneinfo import ZoneInfo
 
@@ -20,7 +21,7 @@ from daemon.outlet_record import OutletRecord
 from daemon.state import CoreState, OutletMark
 from daemon.surface_verdict import SurfaceFacts, judge_holding, judge_surface
 from daemon.verdict import worst
-from daemon.views import Interval, Judgement, LineAirView, OutletView, SurfaceView
+from daemon.views import Interval, Judgement, LineAirView, OutletView, SurfaceView, Verdict
 
 
 @dataclass(frozen=True, slots=True)
@@ -47,6 +48,17 @@ class _Surface:
     margin_k: Interval | None = None
     humidity_at_surface: Interval | None = None
     ahead: tuple[tuple[int, Interval], ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class OutletNote:
+    """An outlet as the weekly log takes it down. None: not known."""
+
+    verdict: Verdict
+    line_margin_k: Interval | None
+    coldest: str
+    surface_margin_k: Interval | None
+    humidity_class: str | None
 
 
 class OutletViews:
@@ -108,22 +120,32 @@ class OutletViews:
             )
         return tuple(found)
 
+    def notes(self, state: CoreState) -> Iterator[tuple[str, OutletNote]]:
+        """Every outlet for the log: verdicts as they are shown, but for the hours ahead."""
+        for outlet in self.air.outlets:
+            line = self._line_figures(state, outlet)
+            counts = [self._judged(state, outlet, line).verdict]
+            surface = self._surface(state, outlet, None, ahead=False)
+            margin_k = surface.surface_margin_k
+            if outlet.profile.name or outlet.air_channels or margin_k is not None:
+                counts.append(surface.judgement.verdict)
+            coldest = place_words(line.coldest)
+            found = _class(line)
+            yield outlet.id, OutletNote(worst(counts), line.margin_k, coldest, margin_k, found)
+
     # ---- the air in the line ----
 
     def _line(self, state: CoreState, outlet: Described) -> LineAirView:
         found = self._line_figures(state, outlet)
         ratio = margin.outlet_ratio(state.model, outlet.way)
         atmosphere_pa = state.model.conditions.pressure_pa[0]
-        expanded = supported = atmospheric = None
+        expanded = atmospheric = None
         dew_point, carried = found.dew_point_k, found.carried_kg_per_m3
         if found.margin_k is not None:
             cooled = margin.after_expansion(found.hose_k, found.pressure_pa, atmosphere_pa)
             expanded = interval(cooled)
         if dew_point is not None:
             atmospheric = interval(air.dew_point_unchecked(ratio, atmosphere_pa))
-        if dew_point is not None and not found.faults:
-            ends = (dew_point.p05, dew_point.p95), (carried.p05, carried.p95)
-            supported = humidity_class(*ends)
         return LineAirView(
             judgement=self._judged(state, outlet, found),
             pressure_pa=float(np.median(found.pressure_pa)),
@@ -135,7 +157,7 @@ class OutletViews:
             coldest=found.coldest if found.margin_k is not None else "",
             after_expansion_k=expanded,
             carried_kg_per_m3=carried,
-            humidity_class=supported,
+            humidity_class=_class(found),
         )
 
     def _line_figures(self, state: CoreState, outlet: Described) -> _Line:
@@ -174,9 +196,11 @@ class OutletViews:
 
     # ---- the surface ----
 
-    def _surface(self, state: CoreState, outlet: Described, typed_k: float | None) -> SurfaceView:
+    def _surface(
+        self, state: CoreState, outlet: Described, typed_k: float | None, ahead: bool = True
+    ) -> SurfaceView:
         faults = self.air.surface_faults(state, outlet)
-        found = _Surface() if faults else self._surface_figures(state, outlet, typed_k)
+        found = _Surface() if faults else self._surface_figures(state, outlet, typed_k, ahead)
         gauge = self.air.gauge(state, outlet) if typed_k is None else None
         view = SurfaceView(
             judgement=Judgement("unknown", (), ()),
@@ -215,7 +239,7 @@ class OutletViews:
         return ""
 
     def _surface_figures(
-        self, state: CoreState, outlet: Described, typed_k: float | None
+        self, state: CoreState, outlet: Described, typed_k: float | None, ahead: bool = True
     ) -> _Surface:
         room = self.air.around(state, outlet)
         dew_point_k = None if room is None else margin.dew_point_around(room)
@@ -233,7 +257,7 @@ class OutletViews:
             surface_k=None if surface_k is None else interval(surface_k),
             margin_k=None if margin_k is None else interval(margin_k),
             humidity_at_surface=None if at_surface is None else interval(at_surface),
-            ahead=() if margin_k is None else self._ahead(state, outlet, margin_k),
+            ahead=() if margin_k is None or not ahead else self._ahead(state, outlet, margin_k),
         )
 
     def _ahead(
@@ -261,6 +285,14 @@ def interval(values: Array) -> Interval:
     """The median and the 5 to 95 % interval of members."""
     low, middle, high = percentiles(values)
     return Interval(float(low), float(middle), float(high))
+
+
+def _class(line: _Line) -> str | None:
+    """The class of ISO 8573-1 that the air's interval supports; None: it cannot be told."""
+    dew_point, carried = line.dew_point_k, line.carried_kg_per_m3
+    if dew_point is None or line.faults:
+        return None
+    return humidity_class((dew_point.p05, dew_point.p95), (carried.p05, carried.p95))
 
 
 def _blotter(record: OutletRecord) -> tuple[Blotted | None, int | None]:

@@ -11,6 +11,7 @@ from daemon.alarms import Transition
 from daemon.checkpoint import decode, encode
 from daemon.clock import DAY_US, format_rfc3339
 from daemon.errors import StoreError
+from daemon.hour_figures import Noted, joined
 from daemon.journal import Entry
 from daemon.moisture.ensemble import spread
 from daemon.moisture.line import new_ledger
@@ -34,6 +35,8 @@ class Back:
     state: CoreState
     pending: list[Entry]  # committed, dated after it
     rewritten: bool  # checkpoints after the one it was made from are gone: they were wrong
+    from_us: int  # the time of that one
+    noted: Noted  # for the weekly log, since then
 
 
 class Recovery:
@@ -60,7 +63,7 @@ class Recovery:
             if entry.at_us >= entry.written_us - TOO_OLD_US
         ]
         entries.sort(key=lambda entry: (entry.at_us, entry.seq))
-        taken = 0
+        from_us, noted, taken = state.time_us, [], 0
         for tick_us, readings in self._store.ticks(state.time_us, until_us):
             first = taken
             while taken < len(entries) and entries[taken].at_us <= tick_us:
@@ -74,10 +77,12 @@ class Recovery:
                 entries[first:taken],
                 tick_us,
             ):
-                state, _, _ = self._core.advance(state, each.now_us, each.inputs)
+                state, estimate, _ = self._core.advance(state, each.now_us, each.inputs)
+                noted += [estimate.noted] if estimate.noted else []
         if before_us is not None:
             self._store.drop_checkpoints_after(before_us - 1)
-        return Back(state, entries[taken:], rewritten or before_us is not None)
+        rewritten = rewritten or before_us is not None
+        return Back(state, entries[taken:], rewritten, from_us, joined(noted))
 
     def _latest_complete(self, grid_us: int, until_us: int) -> tuple[CoreState | None, bool]:
         """The latest checkpoint that knows of every entry dated before it.
@@ -143,11 +148,11 @@ class Recovery:
             name: record if name in changed else old.alarms.get(name, record)
             for name, record in state.alarms.items()
         }
-        state, _, _ = self._core.take(
+        state, taken, _ = self._core.take(
             replace(state, alarms=standing),
             sorted(since, key=lambda entry: (entry.at_us, entry.seq)),
         )
-        return state, replace(estimate, state=state), transitions
+        return state, replace(estimate, state=state, noted=taken.noted), transitions
 
 
 def carried_over(core: Core, fresh: CoreState, old: CoreState) -> CoreState:
@@ -184,6 +189,7 @@ def carried_over(core: Core, fresh: CoreState, old: CoreState) -> CoreState:
         outlets=outlets,
         followed=followed,
         drains=core.drains.carried_over(fresh.drains, old.drains),
+        hourly=None if core.hourly is None else core.hourly.carried_over(fresh, old),
     )
 
 

@@ -10,6 +10,7 @@ from daemon.alarms import AlarmRecord
 from daemon.drain_record import DrainsWatched
 from daemon.due import NO_DATE
 from daemon.followed import Followed
+from daemon.hour_figures import HourTally
 from daemon.journal import Entry
 from daemon.moisture.ensemble import Array
 from daemon.moisture.floats import FloatSeen
@@ -77,6 +78,7 @@ class CoreState:
     quality: QualityState = field(default_factory=QualityState)
     sensed: Sensed = field(default_factory=Sensed)
     drains: DrainsWatched = field(default_factory=DrainsWatched)
+    hourly: HourTally | None = None  # for the weekly log; None: nothing is gathered
 
     @property
     def time_us(self) -> int:

@@ -22,6 +22,7 @@ from __future__ import annotations
 import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from statistics import NormalDist
 
 import numpy as np
 
@@ -38,6 +39,8 @@ WIDENED_TO_SIGMAS = 2.0  # how far off a confirmed surprise may then still be
 MOST_WIDENED = 3.0  # a spread is widened by no more: beyond it, the surprise is not the model's
 FARTHEST = 4.0  # from the middle of its prior that any belief is taken, in standard deviations
 LEAST_K_KG = 0.002
+# Standard normal quantiles at the middles of sixteen equal slices.
+_PLACES = np.array([NormalDist().inv_cdf((place + 0.5) / 16.0) for place in range(16)])
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,6 +82,7 @@ class Learned:
     expected_kg: tuple[float, float, float]  # 5, 50, 95 % of what the cup should have shown
     sigmas: float
     flagged: bool  # kept, but not learned from
+    cup_kg: tuple[float, float, float]  # the same with what a cup is off by each time
     widened: bool = False
 
 
@@ -193,11 +197,31 @@ def update_contents(contents_kg: Array, update: Update, k_kg: float, most_kg: Ar
 
 
 def told(
-    at_us: int, trap: str, volume_kg: float, shown_kg: Array, sigmas: float, flagged: bool
+    at_us: int,
+    trap: str,
+    volume_kg: float,
+    shown_kg: Array,
+    sigmas: float,
+    flagged: bool,
+    cup: CupError,
 ) -> Learned:
     """The record of a measurement."""
     low, middle, high = (float(value) for value in percentiles(shown_kg))
-    return Learned(at_us, trap, volume_kg, (low, middle, high), sigmas, flagged)
+    least, median, most = (float(value) for value in percentiles(_as_read(shown_kg, cup)))
+    return Learned(
+        at_us, trap, volume_kg, (low, middle, high), sigmas, flagged, (least, median, most)
+    )
+
+
+def _as_read(shown_kg: Array, cup: CupError) -> Array:
+    """What the cup may be read as, (members * places,): each time it is off by another amount.
+
+    Every member at as many equally likely places of that error.
+    """
+    sd = (cup.each_time * shown_kg + cup.each_time_kg) * HALF_WIDTH_TO_SD
+    read = shown_kg[:, None] + sd[:, None] * _PLACES
+    floored: Array = np.maximum(read, 0.0).ravel()
+    return floored
 
 
 def with_widened(learned: Learned, factor: float) -> Learned:

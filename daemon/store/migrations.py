@@ -130,6 +130,39 @@ CREATE TABLE channel_hours (
 ) {by_key};
 """
 
+_LOG = """
+CREATE TABLE hour_figures (hour_us {key} NOT NULL PRIMARY KEY, figures TEXT NOT NULL);
+CREATE TABLE day_members (day TEXT NOT NULL PRIMARY KEY, packed {bytes} NOT NULL);
+CREATE TABLE drain_checks (
+    seq {key} NOT NULL PRIMARY KEY,
+    at_us BIGINT NOT NULL,
+    trap TEXT NOT NULL,
+    measured_kg {double} NOT NULL,
+    p05_kg {double} NOT NULL,
+    p50_kg {double} NOT NULL,
+    p95_kg {double} NOT NULL,
+    learned BOOLEAN NOT NULL
+);
+CREATE INDEX drain_checks_at_us ON drain_checks (at_us);
+CREATE TABLE forecasts (
+    made_us BIGINT NOT NULL,
+    trap TEXT NOT NULL,
+    p05_us BIGINT NOT NULL,
+    p50_us BIGINT NOT NULL,
+    p95_us BIGINT NOT NULL,
+    PRIMARY KEY (made_us, trap)
+);
+CREATE TABLE forecast_scores (
+    happened_us BIGINT NOT NULL,
+    trap TEXT NOT NULL,
+    made_us BIGINT NOT NULL,
+    p05_us BIGINT NOT NULL,
+    p50_us BIGINT NOT NULL,
+    p95_us BIGINT NOT NULL,
+    PRIMARY KEY (happened_us, trap)
+);
+"""
+
 
 @dataclass(frozen=True, slots=True)
 class Migration:
@@ -150,8 +183,8 @@ def run(connection: Connection, script: str) -> None:
 
 MIGRATIONS: tuple[Migration, ...] = (
     Migration(1, "first tables", lambda connection: run(connection, _FIRST)),
-    Migration(2, "finished hours are sealed", lambda connection: run(connection, _SEALED_HOURS)),
     Migration(3, "keys for the API", lambda connection: run(connection, _KEYS)),
+    Migration(4, "the weekly log", lambda connection: run(connection, _LOG)),
 )
 
 

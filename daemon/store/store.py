@@ -13,10 +13,28 @@ from typing import Self
 
 from daemon.alarms import Transition
 from daemon.errors import StoreError
+from daemon.foresight import Score
+from daemon.hour_figures import (
+    NOTHING,
+    DayMembers,
+    DrainCheck,
+    Forecast,
+    HourFigures,
+    Noted,
+)
 from daemon.journal import Body, Entry
 from daemon.keys import ApiKey
 from daemon.outbox import Message, Waiting
-from daemon.store import announcements, checkpoints, entries, key_rows, metas, migrations, sqlite
+from daemon.store import (
+    announcements,
+    checkpoints,
+    entries,
+    key_rows,
+    log_rows,
+    metas,
+    migrations,
+    sqlite,
+)
 from daemon.store.database import Database
 from daemon.store.ticks import TickRows
 from daemon.views import Recorded, SeriesOfReadings
@@ -88,16 +106,21 @@ class Store:
         transitions: Sequence[Transition] = (),
         messages: Sequence[Message] = (),
         checkpoint: bytes | None = None,
+        noted: Noted = NOTHING,
+        renewed_us: int | None = None,
     ) -> None:
         """All that one tick leaves, in one transaction: the whole of it is stored, or nothing.
 
-        Transitions stored before, and messages with the id of one, are passed over.
+        Transitions stored before, and messages with the id of one, are passed over. `noted` is for
+        the weekly log; with `renewed_us` it replaces what was noted after that time.
         """
         with self._database.write() as connection:
             self._ticks.insert(connection, now_us, readings)
             announcements.add(connection, transitions, messages)
             if checkpoint is not None:
                 checkpoints.save(connection, now_us, checkpoint)
+            if noted or renewed_us is not None:
+                log_rows.add(connection, noted, renewed_us)
         self._ticks.committed(now_us)
 
     @property
@@ -195,6 +218,33 @@ class Store:
         """Note when a key was used last."""
         with self._database.write() as connection:
             key_rows.used(connection, key_id, at_us)
+
+    # --- the weekly log's rows
+
+    def hour_figures(self, from_us: int, to_us: int) -> Sequence[HourFigures]:
+        """The hours that begin at or after one time and before another, in order."""
+        with self._database.read() as connection:
+            return log_rows.hours(connection, from_us, to_us)
+
+    def day_members(self, first: str, last: str) -> Sequence[DayMembers]:
+        """The sums of the local days from one to another ("2026-12-01"), both included."""
+        with self._database.read() as connection:
+            return log_rows.days(connection, first, last)
+
+    def drain_checks(self, from_us: int, to_us: int) -> Sequence[DrainCheck]:
+        """Measured drains beside what was expected, at or after one time and before another."""
+        with self._database.read() as connection:
+            return log_rows.measured(connection, from_us, to_us)
+
+    def forecasts(self, from_us: int, to_us: int) -> Sequence[Forecast]:
+        """Forecasts made at or after one time and before another, in order."""
+        with self._database.read() as connection:
+            return log_rows.made(connection, from_us, to_us)
+
+    def forecast_scores(self, from_us: int, to_us: int) -> Sequence[Score]:
+        """Levels that were reached in that time, with what had been foreseen, in order."""
+        with self._database.read() as connection:
+            return log_rows.scores(connection, from_us, to_us)
 
     # --- the rest
 

@@ -165,3 +165,53 @@ api_keys = Table(
     Column("used_us", BigInteger, nullable=True),  # to the hour
     Column("revoked_us", BigInteger, nullable=True),
 )
+
+# What the weekly log is made of
+hour_figures = Table(
+    "hour_figures",
+    metadata,
+    Column("hour_us", _Key, primary_key=True, autoincrement=False),
+    Column("figures", Text, nullable=False),
+)
+
+day_members = Table(
+    "day_members",
+    metadata,
+    Column("day", Text, primary_key=True),
+    Column("packed", LargeBinary, nullable=False),
+)
+
+drain_checks = Table(
+    "drain_checks",
+    metadata,
+    Column("seq", _Key, primary_key=True, autoincrement=False),  # of the journal's entry
+    Column("at_us", BigInteger, nullable=False),
+    Column("trap", Text, nullable=False),
+    Column("measured_kg", Double, nullable=False),
+    Column("p05_kg", Double, nullable=False),
+    Column("p50_kg", Double, nullable=False),
+    Column("p95_kg", Double, nullable=False),
+    Column("learned", Boolean, nullable=False),
+    Index("drain_checks_at_us", "at_us"),
+)
+
+forecasts = Table(
+    "forecasts",
+    metadata,
+    Column("made_us", BigInteger, primary_key=True, autoincrement=False),
+    Column("trap", Text, primary_key=True),
+    Column("p05_us", BigInteger, nullable=False),
+    Column("p50_us", BigInteger, nullable=False),
+    Column("p95_us", BigInteger, nullable=False),
+)
+
+forecast_scores = Table(
+    "forecast_scores",
+    metadata,
+    Column("happened_us", BigInteger, primary_key=True, autoincrement=False),
+    Column("trap", Text, primary_key=True),
+    Column("made_us", BigInteger, nullable=False),
+    Column("p05_us", BigInteger, nullable=False),
+    Column("p50_us", BigInteger, nullable=False),
+    Column("p95_us", BigInteger, nullable=False),
+)
