@@ -16,6 +16,7 @@ from daemon.alarms import Alarm
 from daemon.clock import Clock
 from daemon.foresight import Score
 from daemon.journal import Blotted, Body, Entry
+from daemon.keys import KeyRing
 from daemon.moisture.forecast import Due
 from daemon.reminders import Reminder
 from daemon.site.types import Site
@@ -221,6 +222,37 @@ class SeriesOfReadings:
 
 
 @dataclass(frozen=True, slots=True)
+class StepsOfReadings:
+    """What one channel comes to step by step, as arrays of one length; SI.
+
+    A step has the readings whose own times are at or after its start and before the next step's.
+    NaN where it has no good one.
+    """
+
+    channel: str
+    step_us: int
+    start_us: npt.NDArray[np.int64]
+    count: npt.NDArray[np.int64]  # good readings
+    bad: npt.NDArray[np.int64]
+    least: npt.NDArray[np.float64]  # of the good ones
+    greatest: npt.NDArray[np.float64]
+    total: npt.NDArray[np.float64]  # the sum of their values
+    held_us: npt.NDArray[np.int64]  # how long a value was known, each until the next reading
+    held_total: npt.NDArray[np.float64]  # the sum of value times how long it held, in s
+
+    @property
+    def mean(self) -> npt.NDArray[np.float64]:
+        """Of the good readings, each counting alike."""
+        return self.total / np.where(self.count > 0, self.count, 1)
+
+    @property
+    def held_mean(self) -> npt.NDArray[np.float64]:
+        """Over the time in which a value was known: of a contact the share that it was closed."""
+        known = self.held_us > 0
+        return np.where(known, self.held_total / np.where(known, self.held_us / 1e6, 1.0), np.nan)
+
+
+@dataclass(frozen=True, slots=True)
 class Recorded:
     """A journal entry as committed, and whether its key had been seen before."""
 
@@ -237,6 +269,9 @@ class Running(Protocol):
 
     @property
     def clock(self) -> Clock: ...
+
+    @property
+    def keys(self) -> KeyRing: ...
 
     def health(self) -> Health: ...
 
@@ -291,4 +326,10 @@ class Running(Protocol):
 
     def readings(self, channel: str, from_us: int, to_us: int) -> SeriesOfReadings:
         """The readings of a channel from a time on, up to but not including another."""
+        ...
+
+    def reading_steps(
+        self, channel: str, from_us: int, to_us: int, step_us: int
+    ) -> StepsOfReadings:
+        """What a channel comes to in steps from a time on; the last one reaches `to_us`."""
         ...

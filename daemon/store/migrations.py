@@ -183,6 +183,7 @@ def run(connection: Connection, script: str) -> None:
 
 MIGRATIONS: tuple[Migration, ...] = (
     Migration(1, "first tables", lambda connection: run(connection, _FIRST)),
+    Migration(2, "finished hours are sealed", lambda connection: run(connection, _SEALED_HOURS)),
     Migration(3, "keys for the API", lambda connection: run(connection, _KEYS)),
     Migration(4, "the weekly log", lambda connection: run(connection, _LOG)),
 )

@@ -31,7 +31,7 @@ ABSENT = -(2**31)
 COUNTS_START = 2
 _MOST = 2**31 - 1
 
-_NUMBER = struct.Struct("<I")
+NUMBER = struct.Struct("<I")
 _EXTRA = struct.Struct("<IHqdI")
 
 
@@ -80,16 +80,21 @@ def pack(layout: Layout, tick_us: int, readings: Sequence[Reading]) -> bytes:
         if count is not None and index > last and abs(offset) <= _MOST:
             counts[index], offsets[index], last = count, offset, index
         else:
-            fault = reading.fault.encode()
-            extras.append(_EXTRA.pack(place, index, offset, reading.value, len(fault)) + fault)
+            extras.append(packed_extra(place, index, offset, reading.value, reading.fault))
     own_times = any(offsets)
     flags = (OWN_TIMES if own_times else 0) | (EXTRAS if extras else 0)
     parts = [bytes((FORMAT, flags)), struct.pack(f"<{width}i", *counts)]
     if own_times:
         parts.append(struct.pack(f"<{width}i", *offsets))
     if extras:
-        parts.append(_NUMBER.pack(len(extras)))
+        parts.append(NUMBER.pack(len(extras)))
     return b"".join(parts + extras)
+
+
+def packed_extra(place: int, index: int, offset: int, value: float, fault: str) -> bytes:
+    """One extra as it stands in a row."""
+    told = fault.encode()
+    return _EXTRA.pack(place, index, offset, value, len(told)) + told
 
 
 def unpack(layout: Layout, tick_us: int, row: bytes) -> list[Reading]:
@@ -124,8 +129,8 @@ def extras(
         return
     at = layout.counts_end + (4 * len(layout.channels) if row[1] & OWN_TIMES else 0)
     try:
-        (number,) = _NUMBER.unpack_from(row, at)
-        at += _NUMBER.size
+        (number,) = NUMBER.unpack_from(row, at)
+        at += NUMBER.size
         for _ in range(number):
             place, index, offset, value, length = _EXTRA.unpack_from(row, at)
             at += _EXTRA.size

@@ -12,6 +12,7 @@ from pathlib import Path
 from typing import Self
 
 from daemon.alarms import Transition
+from daemon.clock import HOUR_US
 from daemon.errors import StoreError
 from daemon.foresight import Score
 from daemon.hour_figures import (
@@ -36,8 +37,8 @@ from daemon.store import (
     sqlite,
 )
 from daemon.store.database import Database
-from daemon.store.ticks import TickRows
-from daemon.views import Recorded, SeriesOfReadings
+from daemon.store.ticks import HOLDS_US, TickRows
+from daemon.views import Recorded, SeriesOfReadings, StepsOfReadings
 from sensors.reading import Channel, Reading
 
 _OPEN = "store.open"  # "yes" while a process has the database: what it says after a crash
@@ -55,11 +56,15 @@ class Store:
         self.last_stop_clean = last_stop_clean
 
     @classmethod
-    def open(cls, url_or_path: str | Path, channels: Mapping[str, Channel]) -> Self:
+    def open(
+        cls, url_or_path: str | Path, channels: Mapping[str, Channel], holds_us: int = HOLDS_US
+    ) -> Self:
         """Open or make the database, bring it up to date, and keep other processes off it.
 
-        `channels` are the site's, in its order. After a stop that was not clean every page is
-        read and checked first. StoreError when the database cannot be used, with what to do.
+        `channels` are the site's, in its order; `holds_us` is how long a sampled value is taken to
+        hold when its channel falls silent, in what `steps` gives. After a stop that was not clean
+        every page is read and checked first. StoreError when the database cannot be used, with
+        what to do.
         """
         path = _path(url_or_path)
         lock = sqlite.lock(path)
@@ -70,7 +75,7 @@ class Store:
             if not clean:
                 sqlite.check(database)
             migrations.upgrade(database)
-            ticks = TickRows(database, channels)
+            ticks = TickRows(database, channels, holds_us)
             with database.write() as connection:
                 metas.put(connection, _OPEN, "yes")
         except BaseException:
@@ -143,6 +148,27 @@ class Store:
         """
         return self._ticks.series(channel, from_us, to_us)
 
+    def steps(self, channel: str, from_us: int, to_us: int, step_us: int) -> StepsOfReadings:
+        """What a channel comes to in steps from one time on, the last of which reaches another.
+
+        Whole hours that begin at an hour of UTC cost next to nothing: they stand in the database.
+        Other steps are reckoned from their readings.
+        """
+        return self._ticks.steps(channel, from_us, to_us, step_us)
+
+    def hours(self, channel: str, from_us: int, to_us: int) -> StepsOfReadings:
+        """The hours of UTC of a channel that begin at or after one time and before another."""
+        from_us, to_us = (-(-each_us // HOUR_US) * HOUR_US for each_us in (from_us, to_us))
+        return self._ticks.steps(channel, from_us, to_us, HOUR_US)
+
+    def seal_next(self) -> bool:
+        """Pack the oldest finished hour that is not packed yet; False when there is none.
+
+        One short transaction, which a tick of another thread may have to wait for. Readings come
+        out as before.
+        """
+        return self._ticks.seal_next()
+
     # --- journal
 
     def add_entry(self, body: Body, at_us: int, written_us: int, key: str = "") -> Recorded:
@@ -160,13 +186,25 @@ class Store:
         from_us: int | None = None,
         to_us: int | None = None,
         trap: str | None = None,
+        every: bool = False,
     ) -> Sequence[Entry]:
         """Entries with a greater number, by when they happened (from, up to but not including).
 
-        In the order they were written. `trap` picks the drains of one trap.
+        In the order they were written. `trap` picks the drains of one trap. Those that count,
+        without drains that were undone and the undoing itself, unless `every`.
         """
         with self._database.read() as connection:
-            return entries.find(connection, after_seq, from_us, to_us, trap)
+            return entries.find(connection, after_seq, from_us, to_us, trap, every)
+
+    def entry(self, seq: int) -> Entry | None:
+        """The entry with that number."""
+        with self._database.read() as connection:
+            return entries.one(connection, seq)
+
+    def undoings(self) -> Mapping[int, Entry]:
+        """The entries that undo a drain, by the drain's number."""
+        with self._database.read() as connection:
+            return entries.undoings(connection)
 
     # --- checkpoints
 

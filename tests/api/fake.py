@@ -13,6 +13,7 @@ from daemon.clock import HOUR_US, MINUTE_US, SECOND_US, parse_rfc3339
 from daemon.errors import JournalError
 from daemon.foresight import Score
 from daemon.journal import Acknowledge, Body, Drain, Entry
+from daemon.keys import ApiKey, KeyRing
 from daemon.moisture.description import (
     Compressor,
     Fixed,
@@ -28,6 +29,8 @@ from daemon.moisture.description import (
 from daemon.moisture.forecast import Due
 from daemon.reminders import Reminder
 from daemon.site.types import Api, Cup, DefaultUsed, Hours, Mqtt, OutletSettings, Site, Units
+from daemon.store.columns import Column
+from daemon.store.rollups import parts_of, steps_of
 from daemon.views import (
     ChannelHealth,
     DewPointView,
@@ -38,6 +41,7 @@ from daemon.views import (
     Recorded,
     SeriesOfReadings,
     StationView,
+    StepsOfReadings,
     TrapView,
 )
 from sensors.reading import Channel
@@ -48,7 +52,12 @@ NOW_US = parse_rfc3339("2026-12-01T09:00:00Z")
 LOG_BEGINS_US = NOW_US - 30 * 24 * HOUR_US
 
 
-def a_site(host: str = "127.0.0.1", units: Units = "metric", password: str = "") -> Site:
+def a_site(
+    host: str = "127.0.0.1",
+    units: Units = "metric",
+    password: str = "",
+    open_reading: bool = False,
+) -> Site:
     """An invented shop with two traps, in metric or US units."""
     channels = [
         Channel("intake-air.temperature", "temperature", 0.01, 233.15, 358.15, 1.0),
@@ -123,7 +132,7 @@ def a_site(host: str = "127.0.0.1", units: Units = "metric", password: str = "")
         line=line,
         outlets=(OutletSettings("spray-gun", "", "solvent-borne", None, 3.0),),
         mqtt=Mqtt("127.0.0.1", 1883, "shop", password),
-        api=Api(host, 8080),
+        api=Api(host, 8080, open_reading),
         defaults=(DefaultUsed("cup", "reads_low_by", "5 %", "common practice"),),
     )
 
@@ -263,6 +272,22 @@ def _no_readings() -> dict[str, SeriesOfReadings]:
 
 
 @dataclass
+class MemoryKeys:
+    """Where keys are kept, in memory."""
+
+    keys: dict[str, tuple[ApiKey, bytes]] = field(default_factory=dict)
+    writes: int = 0
+
+    def find_key(self, key_id: str) -> tuple[ApiKey, bytes] | None:
+        return self.keys.get(key_id)
+
+    def key_used(self, key_id: str, at_us: int) -> None:
+        self.writes += 1
+        key, digest = self.keys[key_id]
+        self.keys[key_id] = (replace(key, used_us=at_us), digest)
+
+
+@dataclass
 class FakeRunning:
     """What the API needs of a daemon, kept in memory."""
 
@@ -281,7 +306,12 @@ class FakeRunning:
     recorded: dict[str, SeriesOfReadings] = field(default_factory=_no_readings)
     journal: list[Entry] = field(default_factory=list)
     said: str = ""  # what every drain is told to have taught
+    kept_keys: MemoryKeys = field(default_factory=MemoryKeys)
     _lock: threading.Lock = field(default_factory=threading.Lock)
+
+    @property
+    def keys(self) -> KeyRing:
+        return KeyRing(self.kept_keys, self.clock)
 
     def health(self) -> Health:
         return Health(
@@ -375,3 +405,12 @@ class FakeRunning:
             series.values[chosen],
             tuple(fault for fault, keep in zip(series.faults, chosen, strict=True) if keep),
         )
+
+    def reading_steps(
+        self, channel: str, from_us: int, to_us: int, step_us: int
+    ) -> StepsOfReadings:
+        found = self.readings(channel, from_us, to_us)
+        column = Column(found.times_us, found.values, list(found.faults))
+        starts_us = np.arange(from_us, to_us, step_us, dtype=np.int64)
+        parts = list(parts_of(column, 30 * SECOND_US, step_us, from_us))
+        return steps_of(channel, parts, starts_us, step_us, 30 * SECOND_US, self.clock.now_us())
