@@ -16,7 +16,8 @@ from starlette.responses import Response
 from starlette.routing import Match
 
 from api.guard import Guard
-from api.pages import assets
+from api.keys import Door
+from api.pages import assets, pair
 from api.pages.problem_page import problem_page, wants_page
 from api.problems import (
     Problem,
@@ -31,6 +32,7 @@ from api.routes import (
     health,
     home,
     outlets,
+    pairing,
     parts,
     plant,
     readings,
@@ -52,9 +54,11 @@ replace opening the drain.
 A number's unit is in its name, or in `unit` beside it. Times are RFC 3339 in UTC. An estimate is a
 median (`p50`) with its 5 to 95 % interval. Errors are problem documents (RFC 9457).
 
-Writing is possible only while the API is bound to this machine's own address: keys come later. A
-write must say `content-type: application/json` and must not come from a page of another origin; a
-request must name this machine in its Host header. No answer grants another origin access.
+While the API is bound to this machine's own address it asks nobody for a key. On any other address
+writing needs one, and so does reading unless the site file opens it: `dripleg key` makes keys. Send
+yours as `Authorization: Bearer <key>`. A write must say `content-type: application/json` and must
+not come from a page of another origin; a request must name this machine in its Host header. No
+answer grants another origin access.
 """
 log = logging.getLogger(__name__)
 
@@ -74,17 +78,31 @@ def create_app(running: Running) -> FastAPI:
         lifespan=_few_threads,
     )
     app.state.running = running
-    app.add_middleware(Guard, bound_to=running.site.api.host)
+    app.state.door = Door(running)
+    app.add_middleware(Guard, bound_to=running.site.api.host, door=app.state.door)
     app.add_exception_handler(Problem, _answer_problem)
     app.add_exception_handler(RequestValidationError, _answer_invalid)
     app.add_exception_handler(HTTPException, _answer_status)
     app.add_exception_handler(JournalError, _answer_journal)
     app.add_exception_handler(StoreError, _answer_store)
-    everywhere = APIRouter(prefix=PREFIX, responses=answered_by("wrong-host", "unexpected"))
-    for module in (health, traps, outlets, dew_points, alarms, parts, plant, readings, stations):
+    everywhere = APIRouter(
+        prefix=PREFIX, responses=answered_by("keys-needed", "wrong-host", "unexpected")
+    )
+    for module in (
+        pairing,
+        health,
+        traps,
+        outlets,
+        dew_points,
+        alarms,
+        parts,
+        plant,
+        readings,
+        stations,
+    ):
         everywhere.include_router(module.router)
     app.include_router(everywhere)
-    for shown in (home, assets):  # the pages for people
+    for shown in (home, assets, pair):  # the pages for people
         app.include_router(shown.router)
     app.openapi = lambda: _openapi(app)  # type: ignore[method-assign]  # FastAPI's own way
     return app
@@ -110,6 +128,14 @@ def _openapi(app: FastAPI) -> dict[str, Any]:
         problem = ProblemOut.model_json_schema(ref_template="#/components/schemas/{model}")
         schemas.update(problem.pop("$defs"))
         schemas["ProblemOut"] = problem
+        described["components"]["securitySchemes"] = {
+            "key": {
+                "type": "http",
+                "scheme": "bearer",
+                "description": "a key that `dripleg key` made; on a loopback address none is asked",
+            }
+        }
+        described["security"] = [{}, {"key": []}]
         app.openapi_schema = described
     return app.openapi_schema
 

@@ -1,4 +1,4 @@
-"""Who may ask, and how: the checks before any route, for an API that has no keys yet.
+"""Who may ask, and how: the checks before any route. Keys are checked in `api/keys.py`.
 
 A browser on this machine can be made to send requests here by any page it visits. Three checks stop
 that: the Host header must name this machine (a name that an attacker points at 127.0.0.1 does not),
@@ -8,19 +8,22 @@ a write must say that it is JSON, which a form cannot. No answer ever grants ano
 
 from __future__ import annotations
 
-import ipaddress
 import logging
 from urllib.parse import urlsplit
 
-from fastapi import Request
 from starlette.datastructures import Headers, MutableHeaders
+from starlette.requests import Request
+from starlette.responses import Response
 from starlette.types import ASGIApp, Message, Receive, Scope, Send
 
+from api.keys import READING, Door
+from api.pages.problem_page import problem_page, wants_page
 from api.problems import Problem, problem_response
+from daemon.addresses import address_of, is_loopback
+from daemon.errors import StoreError
 
 LARGEST_BODY = 16 * 1024  # bytes; a drain is under 300
 FORM = "application/x-www-form-urlencoded"
-_READING = frozenset({"GET", "HEAD", "OPTIONS"})
 # Names that the internet's name servers never hand out, so that nobody else can own them:
 # RFC 6762 (local), RFC 8375 (home.arpa), ICANN 2024 (internal), common practice (lan).
 _LOCAL_ENDINGS = (".local", ".home.arpa", ".internal", ".lan")
@@ -35,22 +38,8 @@ _SECURITY_HEADERS = {
     ),
     "cache-control": "no-store",
 }
+ABOUT_KEYS = frozenset({"keys-needed", "key-unknown", "key-may-not", "too-many-tries"})
 log = logging.getLogger(__name__)
-
-
-def is_loopback(host: str) -> bool:
-    """Whether an address to listen on can be reached from this machine only."""
-    if host == "localhost":
-        return True
-    address = _address(host)
-    return address is not None and address.is_loopback
-
-
-def _address(host: str) -> ipaddress.IPv4Address | ipaddress.IPv6Address | None:
-    try:
-        return ipaddress.ip_address(host)
-    except ValueError:
-        return None
 
 
 def host_is_ours(header: str, bound_to: str) -> bool:
@@ -66,7 +55,7 @@ def host_is_ours(header: str, bound_to: str) -> bool:
         return False
     # On the shop's network: an address, a name without a dot, or a name of a local zone. None
     # of them can be somebody else's domain that was made to point here.
-    return _address(name) is not None or "." not in name or name.endswith(_LOCAL_ENDINGS)
+    return address_of(name) is not None or "." not in name or name.endswith(_LOCAL_ENDINGS)
 
 
 def origin_is_ours(headers: Headers) -> bool:
@@ -85,7 +74,7 @@ def refusal(method: str, headers: Headers, bound_to: str, path: str = "/api/") -
     host = headers.get("host", "")
     if not host_is_ours(host, bound_to):
         return Problem("wrong-host", f'the Host header says "{host[:80]}"')
-    if method in _READING:
+    if method in READING:
         return None
     if not origin_is_ours(headers):
         sender = headers.get("origin", headers.get("sec-fetch-site", ""))
@@ -110,19 +99,13 @@ def _unfit_body(method: str, headers: Headers, path: str) -> Problem | None:
     return None
 
 
-async def writes_allowed(request: Request) -> None:
-    """A dependency of every route that writes: refuses while others could reach the API."""
-    host: str = request.app.state.running.site.api.host
-    if not is_loopback(host):
-        raise Problem("keys-needed", f'[api] host = "{host}" can be reached from other machines')
-
-
 class Guard:
     """ASGI middleware: the checks, the headers of every answer, and the last catch for errors."""
 
-    def __init__(self, app: ASGIApp, bound_to: str) -> None:
+    def __init__(self, app: ASGIApp, bound_to: str, door: Door) -> None:
         self._app = app
         self._bound_to = bound_to
+        self._door = door
 
     async def __call__(self, scope: Scope, receive: Receive, send: Send) -> None:
         if scope["type"] != "http":
@@ -139,12 +122,11 @@ class Guard:
                     headers.setdefault(name, value)
             await send(message)
 
-        problem = refusal(scope["method"], Headers(scope=scope), self._bound_to, scope["path"])
-        if problem is not None:
-            answer = problem_response(problem, scope["path"])
-            await answer(scope, receive, send_with_headers)
-            return
         try:
+            problem = await self._refusal(scope)
+            if problem is not None:
+                await _answer(scope, problem)(scope, receive, send_with_headers)
+                return
             await self._app(scope, receive, send_with_headers)
         except Exception:
             # The client learns nothing of the inside; the log learns everything, once.
@@ -153,3 +135,27 @@ class Guard:
                 raise
             answer = problem_response(Problem("unexpected"), scope["path"])
             await answer(scope, receive, send_with_headers)
+
+    async def _refusal(self, scope: Scope) -> Problem | None:
+        method, path, headers = scope["method"], scope["path"], Headers(scope=scope)
+        problem = refusal(method, headers, self._bound_to, path)
+        if problem is not None:
+            return problem
+        address = scope["client"][0] if scope.get("client") else ""
+        try:
+            key, problem = await self._door.enter(method, path, headers, address)
+        except StoreError as error:
+            log.error("%s %r: %s", method, path, error)
+            return Problem("log-unavailable", str(error))
+        scope["dripleg.key"] = key
+        return problem
+
+
+def _answer(scope: Scope, problem: Problem) -> Response:
+    """The problem: a page for a browser, except where the request itself is an attack."""
+    request = Request(scope)
+    if problem.kind in ABOUT_KEYS and wants_page(request):
+        page = problem_page(request, problem)
+        page.headers.update(problem.headers)
+        return page
+    return problem_response(problem, scope["path"])

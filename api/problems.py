@@ -33,10 +33,26 @@ KINDS: dict[str, Kind] = {
         "that sends no Origin header.",
     ),
     "keys-needed": Kind(
+        401,
+        "This needs a key",
+        "This API listens on an address that others can reach. On the machine that it runs on "
+        "`dripleg key SITE make` makes a key: open its link on a phone, or send it from a program "
+        "as Authorization: Bearer <key>.",
+    ),
+    "key-unknown": Kind(
+        401,
+        "This key opens nothing",
+        "It was revoked, or never made here. On the machine that the API runs on "
+        "`dripleg key SITE list` shows those that are good, and make another one.",
+    ),
+    "key-may-not": Kind(
         403,
-        "Writing over the network needs a key",
-        "This API listens on an address that others can reach, and keys are not there yet. "
-        'Set host = "127.0.0.1" in [api] to write from this machine, or write over MQTT.',
+        "This key may not do that",
+        "Keys are made for what they are needed for. On the machine that the API runs on "
+        "`dripleg key SITE make --may` makes one that may do more.",
+    ),
+    "too-many-tries": Kind(
+        429, "Too many wrong keys", "Wait as long as Retry-After says, and look at the key."
     ),
     "not-found": Kind(
         404, "Nothing at this address", "See /api/v1/openapi.json for what there is."
@@ -84,6 +100,8 @@ KINDS: dict[str, Kind] = {
         503, "There is no estimate yet", "Ask again after the next sampling period."
     ),
 }
+# what else may be said wherever a key is asked for
+WITH_KEYS = ("key-unknown", "key-may-not", "too-many-tries")
 _BY_STATUS = {
     400: "unreadable-request", 404: "not-found", 405: "wrong-method", 413: "too-large"
 }  # fmt: skip
@@ -177,6 +195,8 @@ def problem_of_status(status: int, detail: str, headers: Mapping[str, str] | Non
 def answered_by(*kinds: str) -> dict[int | str, dict[str, Any]]:
     """The `responses` of a route that may answer with these kinds of problem, for OpenAPI."""
     answers: dict[int | str, dict[str, Any]] = {}
+    if "keys-needed" in kinds:
+        kinds += WITH_KEYS
     for name in kinds:
         kind = KINDS[name]
         answer = answers.setdefault(

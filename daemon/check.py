@@ -9,6 +9,7 @@ import textwrap
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 
+from daemon.addresses import is_loopback, url_host
 from daemon.moisture.description import (
     WATER_KG_PER_M3,
     Fixed,
@@ -20,6 +21,7 @@ from daemon.moisture.description import (
 from daemon.moisture.margin import SLAB_GIVE_OR_TAKE_K, SLAB_K
 from daemon.site.default_tables import defaults_table
 from daemon.site.fitting_words import drain_words, station_words
+from daemon.site.keeping import kept_words
 from daemon.site.sensor_words import sensor_words
 from daemon.site.types import DAY_NAMES, DefaultUsed, Hours, OutletSettings, Site
 from daemon.site.words import source_words
@@ -114,7 +116,16 @@ def _shop(site: Site) -> Iterator[str]:
         yield from _row("broker", f"{site.mqtt.host} port {site.mqtt.port}{secured}")
     else:
         yield from _row("broker", "none: nothing is told over MQTT")
-    yield from _row("pages and API", f"http://{site.api.host}:{site.api.port}/")
+    yield from _row("readings are kept", kept_words(site.keeping))
+    yield from _row("pages and API", f"http://{url_host(site.api.host)}:{site.api.port}/")
+    yield from _row("keys", _keys(site))
+
+
+def _keys(site: Site) -> str:
+    if is_loopback(site.api.host):
+        return "none asked: only this machine can reach it"
+    reading = "reading is open to all" if site.api.open_reading else "reading needs one"
+    return f"{reading}, writing needs one: `dripleg key` makes them, and pairs a phone"
 
 
 def _hours(hours: Hours) -> Iterator[str]:

@@ -13,10 +13,15 @@ from types import FrameType
 
 from api.app import create_app
 from api.server import ApiServer
+from daemon.addresses import is_loopback
 from daemon.clock import Clock, SystemClock
 from daemon.jobs import WallClockJobs
+from daemon.keys import SCOPES
+from daemon.keys_local import remove_key, write_key
+from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.mqtt import MqttLink
 from daemon.outbox import Topics
+from daemon.sealing import Sealer
 from daemon.shell import Sampling, Shell
 from daemon.site.types import Site
 from daemon.store.store import Store
@@ -54,8 +59,9 @@ def running(setting: Setting, stop: threading.Event) -> Iterator[Parts]:
     DriplegError when a part cannot start; what had started is stopped again.
     """
     site = setting.site
+    holds_us = STALE_AFTER_PERIODS * site.sample_every_us
     with ExitStack() as parts:
-        store = parts.enter_context(Store.open(setting.store_path, site.channels))
+        store = parts.enter_context(Store.open(setting.store_path, site.channels, holds_us))
         sampler = Sampler(site.sensors, setting.hardware, SystemClock().monotonic)
         parts.callback(sampler.close)
         topics = Topics.of(site, site.mqtt) if site.mqtt is not None else None
@@ -68,11 +74,17 @@ def running(setting: Setting, stop: threading.Event) -> Iterator[Parts]:
             shell.link = link
             link.start()
             parts.callback(link.stop)
+        if not is_loopback(site.api.host):
+            write_key(setting.store_path, shell.keys.own("commands on this machine", SCOPES))
+            parts.callback(remove_key, setting.store_path)
         port = site.api.port if setting.port is None else setting.port
         server = ApiServer(create_app(shell), site.api.host, port)
         server.start()
         parts.callback(server.stop)
-        jobs = WallClockJobs(store, setting.store_path, site.timezone)
+        sealer = Sealer(store, SystemClock())
+        sealer.start()
+        parts.callback(sealer.stop)
+        jobs = WallClockJobs(store, setting.store_path, site)
         jobs.start()
         parts.callback(jobs.stop)
         yield Parts(shell, server, link)

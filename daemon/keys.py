@@ -24,7 +24,7 @@ SCOPES: tuple[Scope, ...] = get_args(Scope)
 MEANING: dict[Scope, str] = {
     "read": "see traps, outlets, alarms, readings and the weekly log",
     "record": "record drains, blotter tests and gauge readings; acknowledge and put off alarms",
-    "service": "record changed parts, salt checks, and that a surprising volume was right",
+    "service": "record changed parts and salt checks",
 }
 SECRET_BYTES = 24
 ID_LETTERS = "abcdefghjkmnpqrstuvwxyz23456789"  # none that look alike

@@ -322,7 +322,13 @@ class Running(Protocol):
         """
         ...
 
-    def drains(self, trap: str, from_us: int, to_us: int) -> Sequence[Entry]: ...
+    def drains(self, trap: str, from_us: int, to_us: int) -> Sequence[Entry]:
+        """The drains recorded for a trap, also those that were undone."""
+        ...
+
+    def undoings(self) -> Mapping[int, Entry]:
+        """The entries that undo a drain, by the drain's number."""
+        ...
 
     def readings(self, channel: str, from_us: int, to_us: int) -> SeriesOfReadings:
         """The readings of a channel from a time on, up to but not including another."""

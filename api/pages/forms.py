@@ -15,7 +15,7 @@ from urllib.parse import parse_qsl
 
 from fastapi import Depends, Request
 
-from api.guard import writes_allowed
+from api.keys import writes_allowed
 from api.problems import Problem
 
 TOKEN = secrets.token_urlsafe(16)  # of this process: a page from before a restart is out of date

@@ -6,7 +6,7 @@ from typing import Annotated
 
 from fastapi import APIRouter, Depends, Query
 
-from api.guard import writes_allowed
+from api.keys import writes_allowed
 from api.models import AcknowledgeIn, AcknowledgeOut, AlarmOut
 from api.problems import Problem, answered_by
 from api.routes.running import TheDaemon

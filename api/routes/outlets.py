@@ -6,7 +6,7 @@ from typing import Annotated
 
 from fastapi import APIRouter, Depends, Query, Response
 
-from api.guard import writes_allowed
+from api.keys import writes_allowed
 from api.outlet_models import (
     BlotterIn,
     BlotterOut,

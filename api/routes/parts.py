@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from fastapi import APIRouter, Depends
 
-from api.guard import writes_allowed
+from api.keys import service_allowed, writes_allowed
 from api.models import AcknowledgeIn, RecordedOut, SaltCheckIn, ServiceIn
 from api.problems import Problem, answered_by
 from api.routes.running import TheDaemon
@@ -44,7 +44,7 @@ def confirm(trap: str, daemon: TheDaemon, body: AcknowledgeIn | None = None) -> 
     tags=["parts"],
     status_code=201,
     summary="Say that a part was changed or looked at",
-    dependencies=[Depends(writes_allowed)],
+    dependencies=[Depends(service_allowed)],
     responses=answered_by("unknown-station", *ON_WRITING),
 )
 def service(station: str, body: ServiceIn, daemon: TheDaemon) -> RecordedOut:
@@ -64,7 +64,7 @@ def service(station: str, body: ServiceIn, daemon: TheDaemon) -> RecordedOut:
     tags=["parts"],
     status_code=201,
     summary="Say what a humidity sensor read over wet salt",
-    dependencies=[Depends(writes_allowed)],
+    dependencies=[Depends(service_allowed)],
     responses=answered_by("unknown-sensor", *ON_WRITING),
 )
 def salt_check(sensor: str, body: SaltCheckIn, daemon: TheDaemon) -> RecordedOut:

@@ -7,7 +7,7 @@ from typing import Annotated
 from fastapi import APIRouter, Depends, Response
 
 from api.drains import drain_of
-from api.guard import writes_allowed
+from api.keys import writes_allowed
 from api.models import DrainIn, DrainOut, TrapOut
 from api.problems import Problem, answered_by
 from api.routes.running import TheDaemon

@@ -10,8 +10,10 @@ from daemon.moisture.margin import SLAB_GIVE_OR_TAKE_K, SLAB_K
 from daemon.site import defaults
 from daemon.site.defaults import KindDefault, TemperatureDefault
 from daemon.site.fitting_words import default_rows
+from daemon.site.keeping import BECAUSE as KEPT_BECAUSE
+from daemon.site.keeping import kept_words
 from daemon.site.notes import written
-from daemon.site.types import REMINDER_TIMES, Api, Costs, Cup, Limits
+from daemon.site.types import REMINDER_TIMES, Api, Costs, Cup, Keeping, Limits
 from daemon.units import (
     show_barometer,
     show_difference,
@@ -104,8 +106,11 @@ def _general() -> Iterator[Row]:
     yield from default_rows()
     yield "`[model]`", "`members`", "128", "enough for a 5-95 % interval on a Pi"
     yield "", "`seed`", "1", "any number will do"
+    yield "`[store]`", "`keep_readings`", kept_words(Keeping()), KEPT_BECAUSE
     yield "`[api]`", "`host`", f"`{api.host}`", "this machine only"
     yield "", "`port`", f"{api.port}", "a port for pages"
+    reading = f"`{str(api.open_reading).lower()}`"
+    yield "", "`open_reading`", reading, "on the network, reading needs a key too"
     yield "`[mqtt]`", "", "no broker", "nothing leaves the shop unasked"
 
 

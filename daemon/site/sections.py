@@ -19,7 +19,7 @@ SITE_KEYS = ("id", "name", "timezone", "units", "sample_every")
 CUP_KEYS = ("reads_low_by", "give_or_take", "each_time")
 MODEL_KEYS = ("members", "seed")
 MQTT_KEYS = ("host", "port", "user", "password", "password_file", "tls", "ca_file", "prefix")
-API_KEYS = ("host", "port")
+API_KEYS = ("host", "port", "open_reading")
 SAMPLE_EVERY_S = 10.0
 
 
@@ -172,4 +172,7 @@ def read_api(notes: Notes, raw: object) -> Api:
     return Api(
         host=table.value("host", host, "127.0.0.1", '"127.0.0.1"', "this machine only"),
         port=table.value("port", PORT, 8080, "8080", "a port for pages"),
+        open_reading=table.value(
+            "open_reading", flag, False, "false", "on the network, reading needs a key too"
+        ),
     )

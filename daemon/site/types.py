@@ -57,6 +57,13 @@ class Costs:
 
 
 @dataclass(frozen=True, slots=True)
+class Keeping:
+    """What the database keeps."""
+
+    readings_s: float | None = 2 * 31_557_600.0  # None: for ever
+
+
+@dataclass(frozen=True, slots=True)
 class OutletSettings:
     """What a person asks of an outlet, beside its place on the line."""
 
@@ -87,6 +94,7 @@ class Api:
 
     host: str = "127.0.0.1"
     port: int = 8080
+    open_reading: bool = False  # without a key, on an address that others can reach
 
 
 @dataclass(frozen=True, slots=True)
@@ -122,6 +130,7 @@ class Site:
     remarks: tuple[str, ...] = ()  # what a practitioner would say about this line
     limits: Limits = Limits()
     costs: Costs = Costs()
+    keeping: Keeping = Keeping()
     reminders: tuple[ReminderTime, ...] = REMINDER_TIMES
 
     @property

@@ -10,7 +10,8 @@ from __future__ import annotations
 
 import pytest
 
-from api.guard import LARGEST_BODY, host_is_ours, is_loopback
+from api.guard import LARGEST_BODY, host_is_ours
+from daemon.addresses import is_loopback
 from tests.api.client import Client, client_of, problem_of
 from tests.api.fake import FakeRunning, a_site
 
@@ -153,14 +154,13 @@ def test_a_body_of_unsaid_length_is_refused(running: FakeRunning, client: Client
 
 
 @pytest.mark.parametrize("host", ["0.0.0.0", "192.168.1.20", "::", ""])
-def test_an_api_that_others_can_reach_is_read_only(host: str) -> None:
+def test_an_api_that_others_can_reach_tells_and_takes_nothing_without_a_key(host: str) -> None:
     running = FakeRunning(site=a_site(host))
     client = client_of(running, host="192.168.1.20:8080")
-    assert client.get("/api/v1/traps").status_code == 200
+    problem_of(client.get("/api/v1/traps"), 401, "keys-needed")
     for path in (DRAINS, "/api/v1/alarms/riser-drain-due/acknowledge"):
-        problem = problem_of(client.post(path, json={}), 403, "keys-needed")
-        assert f'[api] host = "{host}" can be reached from other machines' in problem["detail"]
-        assert "keys are not there yet" in problem["detail"]
+        problem = problem_of(client.post(path, json={}), 401, "keys-needed")
+        assert "`dripleg key SITE make` makes a key" in problem["detail"]
     assert running.journal == []
 
 

@@ -166,7 +166,7 @@ def test_what_is_told_of_an_outlet_may_be_a_little_ahead(
 def test_nothing_is_written_over_the_network_without_a_key(path: str) -> None:
     running = FakeRunning(site=a_site(host="192.168.7.20"))
     client = client_of(running, "192.168.7.20:8080")
-    problem_of(client.post(path, json={"result": "clean"}), 403, "keys-needed")
+    problem_of(client.post(path, json={"result": "clean"}), 401, "keys-needed")
     assert running.journal == []
 
 
