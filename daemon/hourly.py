@@ -75,9 +75,7 @@ class Hourly:
         tally = state.hourly if state.hourly is not None else self.begun(state.model)
         dt_us = until_us - state.time_us
         if dt_us > self._stale_us:
-            if not is_open:
-                return tally
-            return replace(tally, on_open_s=tally.on_open_s + moved.on_s)
+            return tally
         faults = tally.faults_us
         for name, record in state.channels.items():
             if record.fault or self._silent(record, state, until_us):
