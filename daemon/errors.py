@@ -52,8 +52,16 @@ class ReplayError(DriplegError, ValueError):
     """A recorded row that cannot be read: file, line, column, the value, what was expected."""
 
 
+class WeekError(DriplegError, ValueError):
+    """A week that does not exist, or whose log cannot be made."""
+
+
 class JournalError(DriplegError, ValueError):
     """A journal entry that cannot be taken: an unknown trap, an impossible volume, a time ahead."""
+
+
+class UndoError(JournalError):
+    """A drain that cannot be taken back: too late, by somebody else, or not there."""
 
 
 class StoreError(DriplegError):

@@ -36,6 +36,24 @@ def is_open(hours: Hours, timezone: str, at_us: int) -> bool:
     )
 
 
+def open_us(hours: Hours, timezone: str, from_us: int, to_us: int) -> int:
+    """How long the shop is open between two times."""
+    if to_us <= from_us:
+        return 0
+    if hours.always_open:
+        return to_us - from_us
+    day, last = local_day(timezone, from_us) - timedelta(1), local_day(timezone, to_us)
+    total = reached_us = 0
+    while day <= last:
+        for opens_us, closes_us in _openings(hours, timezone, day):
+            begins_us = max(opens_us, from_us, reached_us)
+            ends_us = min(closes_us, to_us)
+            total += max(ends_us - begins_us, 0)
+            reached_us = max(reached_us, ends_us)
+        day += timedelta(1)
+    return total
+
+
 def is_working_day(hours: Hours, day: date) -> bool:
     """Whether a shift begins on this calendar day."""
     return hours.always_open or bool(_own_spans(hours, day))

@@ -1,0 +1,83 @@
+"""What a weekly log is computed from: the store's rows of one week."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Protocol
+
+from daemon.alarms import Transition
+from daemon.clock import DAY_US, HOUR_US
+from daemon.foresight import Score
+from daemon.hour_figures import DayMembers, DrainCheck, HourFigures
+from daemon.journal import Entry
+from daemon.weekly.weeks import Week, first_hour_us
+
+STANDING_US = 60 * DAY_US  # how far back an alarm is looked for that stood as the week began
+
+
+class LogRows(Protocol):
+    """The part of the store that the log reads."""
+
+    def hour_figures(self, from_us: int, to_us: int) -> Sequence[HourFigures]: ...
+
+    def day_members(self, first: str, last: str) -> Sequence[DayMembers]: ...
+
+    def drain_checks(self, from_us: int, to_us: int) -> Sequence[DrainCheck]: ...
+
+    def forecast_scores(self, from_us: int, to_us: int) -> Sequence[Score]: ...
+
+    def transitions(self, from_us: int, to_us: int) -> Sequence[Transition]: ...
+
+    def entries(
+        self, after_seq: int = 0, from_us: int | None = None, to_us: int | None = None
+    ) -> Sequence[Entry]: ...
+
+    def get_meta(self, name: str) -> str | None: ...
+
+
+@dataclass(frozen=True, slots=True)
+class WeekRows:
+    """Everything that was noted of one week."""
+
+    week: Week
+    from_us: int
+    to_us: int
+    now_us: int
+    begun_us: int | None  # when the record began
+    hours: Sequence[HourFigures]
+    days: Sequence[DayMembers]
+    checks: Sequence[DrainCheck]
+    scores: Sequence[Score]
+    transitions: Sequence[Transition]  # also some from before the week
+    entries: Sequence[Entry]
+
+    @property
+    def hours_from_us(self) -> int:
+        """The first full hour that belongs to the week."""
+        return first_hour_us(self.from_us)
+
+    @property
+    def until_us(self) -> int:
+        """The end of the week, or of what has passed of it in full hours."""
+        return min(first_hour_us(self.to_us), self.now_us // HOUR_US * HOUR_US)
+
+
+def read_rows(store: LogRows, week: Week, timezone: str, now_us: int) -> WeekRows:
+    """The rows of a week, as of now."""
+    from_us, to_us = week.bounds_us(timezone)
+    days = week.days()
+    begun = store.get_meta("grid_us")
+    return WeekRows(
+        week=week,
+        from_us=from_us,
+        to_us=to_us,
+        now_us=now_us,
+        begun_us=None if begun is None else int(begun),
+        hours=store.hour_figures(first_hour_us(from_us), first_hour_us(to_us)),
+        days=store.day_members(days[0].isoformat(), days[-1].isoformat()),
+        checks=store.drain_checks(from_us, to_us),
+        scores=store.forecast_scores(from_us, to_us),
+        transitions=store.transitions(from_us - STANDING_US, to_us),
+        entries=store.entries(from_us=from_us, to_us=to_us),
+    )
