@@ -22,9 +22,11 @@ from daemon.outlet_alarms import MarginAlarms
 from daemon.plant_alarms import PlantAlarms
 from daemon.site.types import Site
 from daemon.state import CoreState
+from daemon.unset_clock import is_set
 
 DUE_ON_DELAY_US = 2 * MINUTE_US
 SALT_CHECK_EVERY_US = 91 * DAY_US  # three months
+CLOCK_NOT_SET = "clock-not-set"
 FLOODED_RAISED_AT, FLOODED_RETURNS_BELOW = 0.5, 0.3
 
 # An alarm's definition, what its condition says now, and the words for it.
@@ -70,6 +72,7 @@ class AlarmRules:
             )
         for sensor in self._humid:
             yield AlarmDefinition(f"{sensor}-salt-check-due", "salt-check-due", sensor, "low")
+        yield AlarmDefinition(CLOCK_NOT_SET, CLOCK_NOT_SET, "clock", "high")
         yield from self.margins.define()
         yield from self.plant.define()
         yield from self.fittings.define()
@@ -99,9 +102,21 @@ class AlarmRules:
             yield self._sensor_fault(state, sensor, channels, against.get(sensor, ""))
         for sensor in self._humid:
             yield self._salt_check(state, sensor)
+        yield self._clock(state)
         yield from self.margins.watched(state, self.definitions)
         yield from self.plant.watched(state, self.definitions)
         yield from self.fittings.watched(state, self.definitions)
+
+    def _clock(self, state: CoreState) -> Watched:
+        definition = self.definitions[CLOCK_NOT_SET]
+        if is_set(state.time_us):
+            return definition, "not so", "The clock is set."
+        return (
+            definition,
+            "so",
+            "The clock is not set: dates, working hours and the calendar are wrong until it is. "
+            "Connect the Pi to a time server, or set its clock.",
+        )
 
     def probability_due(self, state: CoreState) -> Array:
         """The share of members at or above the drain-at level, (traps,)."""

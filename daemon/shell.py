@@ -12,16 +12,17 @@ from collections.abc import Callable, Collection, Mapping, Sequence
 from dataclasses import replace
 from typing import Protocol
 
-from daemon import accept
+from daemon import accept, undoing
 from daemon.advance import Core, Estimate
 from daemon.alarms import Alarm, AlarmRecord, Transition, correction
 from daemon.buttons import Buttons
 from daemon.clock import HOUR_US, MINUTE_US, Clock, format_rfc3339
 from daemon.dew_points import dew_point_views
-from daemon.errors import JournalError, StoreError
+from daemon.errors import JournalError, StoreError, UndoError
 from daemon.foresight import Score
 from daemon.hour_figures import NOTHING, Noted, joined
-from daemon.journal import Body, Drain, Entry
+from daemon.journal import Body, Drain, Entry, Undo
+from daemon.keys import KeyRing
 from daemon.line_views import LineViews
 from daemon.moisture.forecast import Due
 from daemon.mqtt import MqttLink
@@ -42,6 +43,7 @@ from daemon.state import CoreState, Inputs
 from daemon.store.store import Store
 from daemon.taking import learned_words
 from daemon.ticks import first_at_or_after, ticks
+from daemon.unset_clock import PATIENCE_S, HeldSamples, is_set
 from daemon.views import (
     ChannelHealth,
     DewPointView,
@@ -51,6 +53,7 @@ from daemon.views import (
     Recorded,
     SeriesOfReadings,
     StationView,
+    StepsOfReadings,
     TrapView,
 )
 from sensors.quality import Verdict
@@ -88,6 +91,7 @@ class Shell:
         self._topics = topics
         self.core = Core(site)
         self._buttons = Buttons(site)
+        self._keys = KeyRing(store, clock)
         self._line_views = LineViews(site, self.core.model)
         self.late_after_us = LATE_AFTER_PERIODS * self.core.model.period_us
         self.link: MqttLink | None = None
@@ -138,6 +142,7 @@ class Shell:
         that is set back does not stop the sampling.
         """
         period_s = self.core.model.period_us / 1e6
+        self._wait_for_the_clock(stop)
         while not stop.is_set():
             due_us = self._next_due_us()
             wait_s = (due_us - self._clock.now_us()) / 1e6
@@ -145,6 +150,31 @@ class Shell:
                 break
             self.tick(due_us)
         self.checkpoint()
+
+    def _wait_for_the_clock(self, stop: threading.Event) -> None:
+        """Sample, but make no tick, while the clock cannot be right; for ten minutes at most."""
+        period_us = self.core.model.period_us
+        held, begun_s = HeldSamples(period_us), self._clock.monotonic()
+        while not is_set(self._clock.now_us()):
+            now_us, now_s = self._clock.now_us(), self._clock.monotonic()
+            self._problems["clock"] = (
+                f"the clock is not set: it says {format_rfc3339(now_us)}. Readings wait until a "
+                "time server has answered, or somebody sets the clock"
+            )
+            if now_s - begun_s > PATIENCE_S or stop.is_set():
+                break
+            if not held.samples:
+                log.warning("%s", self._problems["clock"])
+            stamp_us = held.stamp_us(now_us)
+            readings = self._sampler.sample(stamp_us, SAMPLE_SHARE * period_us / 1e6)
+            held.add(now_s, stamp_us, readings)
+            if self._clock.wait(period_us / 1e6, stop):
+                break
+        if is_set(self._clock.now_us()):
+            self._problems.pop("clock", None)
+        for at_us, readings in held.told(self._clock.monotonic(), self._clock.now_us()):
+            if at_us > self._ticked_us:
+                self._tick_with(at_us, readings)
 
     def _next_due_us(self) -> int:
         """The next point of the grid: after the last tick, and not more than a period ago."""
@@ -177,7 +207,9 @@ class Shell:
     def tick(self, now_us: int) -> None:
         """Sample, advance to `now_us`, commit, tell."""
         deadline_s = SAMPLE_SHARE * self._site.sample_every_us / 1e6
-        readings = self._sampler.sample(now_us, deadline_s)
+        self._tick_with(now_us, self._sampler.sample(now_us, deadline_s))
+
+    def _tick_with(self, now_us: int, readings: Sequence[Reading]) -> None:
         with self._lock:
             self._ticked_us = now_us
             try:
@@ -190,6 +222,12 @@ class Shell:
                 self._problems.pop("store", None)
 
     def _take_in(self, now_us: int, readings: list[Reading]) -> None:
+        if self._state is not None and is_set(now_us) > is_set(self._state.time_us):
+            # nothing of the decades between is true: begin again, with what is known
+            log.warning("the clock was set: it says %s", format_rfc3339(now_us))
+            self._problems.pop("clock", None)
+            self.checkpoint()
+            self._state = None
         if self._state is None:
             self._begin(now_us, readings)
             return
@@ -399,6 +437,10 @@ class Shell:
     def clock(self) -> Clock:
         return self._clock
 
+    @property
+    def keys(self) -> KeyRing:
+        return self._keys
+
     def traps(self) -> Sequence[TrapView]:
         with self._lock:
             return self._shown
@@ -450,6 +492,8 @@ class Shell:
             return [] if self._estimate is None else self.core.alarms(self._estimate.state)
 
     def record(self, body: Body, at_us: int | None = None, key: str = "") -> Recorded:
+        if isinstance(body, Undo):
+            return self._undo(body)
         with self._lock:
             now_us = max(self._clock.now_us(), self._ticked_us)
             begun_us, when_us = self._grid_us, at_us
@@ -468,6 +512,43 @@ class Shell:
         if not recorded.repeated and self.on_entry is not None:
             self.on_entry(recorded.entry)
         return recorded
+
+    def _undo(self, undo: Undo) -> Recorded:
+        """Take back a drain: go back to before it, and advance again without it."""
+        with self._lock:
+            state, now_us = self._state, max(self._clock.now_us(), self._ticked_us)
+            accept.check(self._site, undo, now_us, now_us, now_us)
+            done = self._store.undoings().get(undo.entry)
+            if done is not None:
+                undoing.check(undo, self._store.entry(undo.entry), done.written_us)
+                return Recorded(done, repeated=True)
+            drain = undoing.check(undo, self._store.entry(undo.entry), now_us)
+            taken_in = state is not None and drain.at_us <= state.time_us
+            if taken_in and not self._recovery.reaches(drain.at_us):
+                raise UndoError(
+                    "dripleg keeps nothing from before it (the record began with it, or the line's "
+                    f"description was changed): drain {undo.trap} again and record what came"
+                )
+            at_us = now_us if state is None else max(now_us, state.time_us + 1)
+            recorded = self._store.add_entry(undo, at_us, now_us)
+            self._without(drain, now_us)
+        return recorded
+
+    def _without(self, drain: Entry, now_us: int) -> None:
+        """The state and what is shown of it, as if a drain had not been recorded."""
+        waiting = [entry for entry in self._pending if entry.seq != drain.seq]
+        state = self._state
+        if len(waiting) < len(self._pending) or state is None:
+            self._pending = waiting  # no tick had taken it in
+        elif drain.at_us >= drain.written_us - TOO_OLD_US:
+            back = self._recovery.come_back(self._grid_us, state.time_us, before_us=drain.at_us)
+            if back is not None:
+                self._take_back(back)
+                self._announced = {**state.alarms, **self._announced}
+        if self._state is not None:
+            shown = self._with_pending(self._state, now_us) or Estimate(self.core, self._state)
+            self._outlets_told_us = -1
+            self._show(shown)
 
     def _preview(self, entry: Entry, now_us: int) -> str:
         """Show at once what an entry will do, without keeping it: the next tick does that.
@@ -493,10 +574,18 @@ class Shell:
         return estimate
 
     def drains(self, trap: str, from_us: int, to_us: int) -> Sequence[Entry]:
-        return self._store.entries(from_us=from_us, to_us=to_us, trap=trap)
+        return self._store.entries(from_us=from_us, to_us=to_us, trap=trap, every=True)
+
+    def undoings(self) -> Mapping[int, Entry]:
+        return self._store.undoings()
 
     def readings(self, channel: str, from_us: int, to_us: int) -> SeriesOfReadings:
         return self._store.readings(channel, from_us, to_us)
+
+    def reading_steps(
+        self, channel: str, from_us: int, to_us: int, step_us: int
+    ) -> StepsOfReadings:
+        return self._store.steps(channel, from_us, to_us, step_us)
 
     def health(self) -> Health:
         now_us = self._clock.now_us()
