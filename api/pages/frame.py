@@ -60,11 +60,19 @@ def _filter(name: str) -> Callable[..., str]:
     return shown
 
 
+def _with_degree_signs(value: object) -> object:
+    """What is shown, with a sign where plain text says "degC"."""
+    if not isinstance(value, str) or "deg" not in value:
+        return value
+    return value.replace("degC", "\N{DEGREE SIGN}C").replace("degF", "\N{DEGREE SIGN}F")
+
+
 def _environment() -> Environment:
     made = Environment(
         loader=FileSystemLoader(TEMPLATES),
         autoescape=True,
         undefined=StrictUndefined,
+        finalize=_with_degree_signs,
         trim_blocks=True,
         lstrip_blocks=True,
     )

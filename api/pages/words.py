@@ -8,7 +8,13 @@ from zoneinfo import ZoneInfo
 from daemon import due, expected
 from daemon.clock import DAY_US, HOUR_US, MINUTE_US, SECOND_US, to_datetime
 from daemon.site.types import Site
-from daemon.units import show_difference, show_percent, show_pressure, show_temperature
+from daemon.units import (
+    show_barometer,
+    show_difference,
+    show_percent,
+    show_pressure,
+    show_temperature,
+)
 from daemon.views import Interval
 
 _TIED = str.maketrans({" ": "\N{NO-BREAK SPACE}"})
@@ -58,6 +64,27 @@ class Words:
     def gauge_pressure(self, absolute_pa: float, atmosphere_pa: float) -> str:
         """A pressure as a gauge shows it: "8 bar" or "116 psi"."""
         return tied(show_pressure(absolute_pa - atmosphere_pa, self.site.units, gauge=True))
+
+    def temperatures(self, interval: Interval) -> str:
+        """The ends of an interval of temperatures: "17.2 to 23.4 degC"."""
+        return self._ends(self.temperature(interval.p05), self.temperature(interval.p95))
+
+    def percents(self, interval: Interval) -> str:
+        """The ends of an interval of fractions: "45 to 58 %"."""
+        return self._ends(self.percent(interval.p05), self.percent(interval.p95))
+
+    def gauge_pressures(self, interval: Interval, atmosphere_pa: float) -> str:
+        """The ends of an interval of pressures as a gauge shows them: "7.4 to 7.7 bar"."""
+        low, high = (self.gauge_pressure(each, atmosphere_pa) for each in interval.values[::2])
+        return self._ends(low, high)
+
+    def barometer(self, absolute_pa: float) -> str:
+        """The atmosphere's pressure: "1013 hPa" or "29.92 inHg"."""
+        return tied(show_barometer(absolute_pa, self.site.units))
+
+    def barometers(self, interval: Interval) -> str:
+        """The ends of an interval of the atmosphere's pressure: "1012 to 1014 hPa"."""
+        return self._ends(self.barometer(interval.p05), self.barometer(interval.p95))
 
     @staticmethod
     def _ends(low: str, high: str) -> str:
