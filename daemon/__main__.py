@@ -46,7 +46,7 @@ def parser() -> argparse.ArgumentParser:
     check.add_argument("--salt", metavar="SENSOR", help="check a humidity sensor over wet salt")
     check.add_argument("--for", dest="length", default="10 min", metavar="TIME", help="with --salt")
     check.add_argument("--by", default="", help="initials, with --salt")
-    check.add_argument("--store", type=Path, help="the database, if the daemon does not run")
+    check.add_argument("--store", type=Path, help="the database (beside the site file)")
 
     replay = commands.add_parser("replay", help="recompute from recorded readings")
     replay.add_argument("site", type=Path, metavar="SITE", help="the site file")
@@ -66,7 +66,19 @@ def parser() -> argparse.ArgumentParser:
     drained.add_argument("--at", metavar="TIME", help="when, like 2026-03-02T17:10:00Z (now)")
     drained.add_argument("--by", default="", help="initials")
     drained.add_argument("--look", default="", help="clear, milky, oily or rusty")
-    drained.add_argument("--store", type=Path, help="the database, if the daemon does not run")
+    drained.add_argument("--store", type=Path, help="the database (beside the site file)")
+    key = commands.add_parser("key", help="make, list and end keys for phones and programs")
+    key.add_argument("site", type=Path, metavar="SITE", help="the site file")
+    key.add_argument(
+        "action", choices=("make", "list", "revoke"), metavar="ACTION", help="make, list or revoke"
+    )
+    key.add_argument("key", nargs="?", metavar="KEY", help="with revoke: its id, or whom it is for")
+    key.add_argument("--for", dest="made_for", metavar="NAME", help="who or what it is for")
+    key.add_argument("--may", help="read, record, service, with commas (read,record)")
+    key.add_argument("--host", help="under what name or address the phone finds this machine")
+    key.add_argument("--png", type=Path, metavar="FILE", help="the link's code as an image")
+    key.add_argument("--svg", type=Path, metavar="FILE", help="the same as a drawing")
+    key.add_argument("--store", type=Path, help="the database (beside the site file)")
     return top
 
 
@@ -175,12 +187,23 @@ def _drained(options: argparse.Namespace) -> int:
     return EXIT_OK
 
 
+def _key(options: argparse.Namespace) -> int:
+    from daemon.clock import SystemClock
+    from daemon.keys_command import run_command
+    from daemon.site.reader import read_site
+
+    site = read_site(options.site)
+    print(run_command(site, options, _store_path(options, site.id), SystemClock()))
+    return EXIT_OK
+
+
 _COMMANDS = {
     "demo": _demo,
     "run": _run,
     "check": _check,
     "replay": _replay,
     "drained": _drained,
+    "key": _key,
 }
 
 

@@ -6,15 +6,32 @@ import http.client
 import json
 import urllib.error
 import urllib.request
+from pathlib import Path
 from typing import Any
 
+from daemon.addresses import is_loopback
 from daemon.errors import StoreError
+from daemon.keys_local import key_file, read_key, usual_store
 from daemon.site.types import Site
 
 TIMEOUT_S = 10.0
 
 
-def ask(site: Site, path: str, body: dict[str, Any] | None = None) -> tuple[int, Any] | None:
+def key_header(site: Site, store_path: Path | None = None) -> dict[str, str]:
+    """What shows the daemon that a command comes from its own machine and user.
+
+    `store_path` is its database, where that is not beside the site file. StoreError when there is
+    a key that this user may not read.
+    """
+    if is_loopback(site.api.host):
+        return {}  # none is asked
+    key = read_key(usual_store(site) if store_path is None else store_path)
+    return {"Authorization": f"Bearer {key}"} if key else {}
+
+
+def ask(
+    site: Site, path: str, body: dict[str, Any] | None = None, store_path: Path | None = None
+) -> tuple[int, Any] | None:
     """Status and JSON of a GET under /api/v1/, or of a POST of `body`; None: nobody listens there.
 
     StoreError when something listens that does not answer as dripleg does.
@@ -23,7 +40,9 @@ def ask(site: Site, path: str, body: dict[str, Any] | None = None) -> tuple[int,
     where = f"[{host}]:{site.api.port}" if ":" in host else f"{host}:{site.api.port}"
     data = None if body is None else json.dumps(body).encode()
     request = urllib.request.Request(
-        f"http://{where}/api/v1/{path}", data, {"Content-Type": "application/json"}
+        f"http://{where}/api/v1/{path}",
+        data,
+        {"Content-Type": "application/json", **key_header(site, store_path)},
     )
     opener = urllib.request.build_opener(urllib.request.ProxyHandler({}))
     try:
@@ -38,15 +57,30 @@ def ask(site: Site, path: str, body: dict[str, Any] | None = None) -> tuple[int,
         raise StoreError(f"{where} does not answer as dripleg does ({error})") from error
 
 
-def serves(site: Site) -> bool:
-    """Whether a daemon of this very site runs here; whatever else listens there is not one."""
+def serves(site: Site, store_path: Path | None = None) -> bool:
+    """Whether a daemon of this very site runs here; whatever else listens there is not one.
+
+    StoreError when one listens that wants a key which cannot be read here.
+    """
+    key_header(site, store_path)  # so that a key that may not be read is told
     try:
-        answer = ask(site, "site")
+        answer = ask(site, "site", store_path=store_path)
     except StoreError:
         return False
-    if answer is None or answer[0] != 200 or not isinstance(answer[1], dict):
+    if answer is None or not isinstance(answer[1], dict):
         return False
-    return answer[1].get("id") == site.id
+    if answer[0] == 401:
+        raise StoreError(wants_key(site, store_path))
+    return answer[0] == 200 and answer[1].get("id") == site.id
+
+
+def wants_key(site: Site, store_path: Path | None = None) -> str:
+    """What to say when a daemon does not know this machine's key."""
+    path = key_file(usual_store(site) if store_path is None else store_path)
+    return (
+        f"the daemon at {site.api.host}:{site.api.port} asks for a key, and the one for commands "
+        f"on this machine is not in {path}: name the daemon's own database with --store"
+    )
 
 
 def _body(error: urllib.error.HTTPError) -> Any:

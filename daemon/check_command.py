@@ -38,14 +38,14 @@ def check(
         say(render(sections(site)))
         return EXIT_OK
     missing, nothing_here = missing_devices(site, root)
-    if nothing_here and not serves(site):
+    if nothing_here and not serves(site, options.store):
         said = sections(site)
         said.insert(SENSORS_AT, elsewhere_section(missing))
         say(render(said))
         return EXIT_OK
     with ExitStack() as parts:
         listen = parts.enter_context(listening(site, hardware.inbox(), clock))
-        looker = Looker(site, hardware, clock, listen)
+        looker = Looker(site, hardware, clock, listen, options.store)
         parts.callback(looker.close)
         if options.watch:
             return _watch(site, looker, clock, stop, say)

@@ -75,13 +75,14 @@ class Looker:
     hardware: Hardware
     clock: Clock
     listen: Callable[[], None] = lambda: None  # let what other devices publish come in
+    store_path: Path | None = None  # of the daemon, where it is not beside the site file
     _sampler: Sampler | None = field(default=None, init=False)
     _never: threading.Event = field(default_factory=threading.Event, init=False)
     _said: dict[str, Said] = field(default_factory=dict, init=False)
 
     def look(self) -> Looked:
         """Ask a daemon that runs, else read every part; nothing is read where no part can be."""
-        if serves(self.site):
+        if serves(self.site, self.store_path):
             return self._of_daemon()
         return self._of_parts()
 
@@ -93,7 +94,7 @@ class Looker:
 
     def _of_daemon(self) -> Looked:
         self.close()  # two programs must not drive one bus
-        answer = ask(self.site, "health")
+        answer = ask(self.site, "health", store_path=self.store_path)
         channels = answer[1].get("channels", []) if answer is not None else []
         said = {one["channel"]: Said(one["value"], one["fault"]) for one in channels}
         return Looked(said, "as the running daemon last heard them")

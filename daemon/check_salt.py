@@ -81,7 +81,9 @@ def salt_check(
     say(HOW.format(sensor=wanted.sensor, length=show_duration(wanted.length_s)))
     # the sensor alone: the others have nothing to do with the jar
     mine = tuple(one for one in site.sensors if one.id == wanted.sensor)
-    looker = Looker(replace(site, sensors=mine), hardware, clock)
+    looker = Looker(
+        replace(site, sensors=mine), hardware, clock, store_path=wanted.store_path
+    )
     try:
         read = _read(looker, wanted, clock, stop)
     finally:
@@ -150,13 +152,13 @@ def judge(site: Site, sensor: str, read: Sequence[tuple[float, float]]) -> Jar:
 
 
 def _record(site: Site, check: SaltCheck, path: Path, clock: Clock) -> None:
-    if serves(site):
+    if serves(site, path):
         body = {
             "reads_percent": check.reads * 100.0,
             "true_percent": check.true * 100.0,
             "by": check.by or None,
         }
-        answer = ask(site, f"sensors/{check.sensor}/salt-checks", body)
+        answer = ask(site, f"sensors/{check.sensor}/salt-checks", body, path)
         if answer is None or answer[0] != 201:
             detail = answer[1].get("detail", "") if answer is not None else "it is gone"
             raise JournalError(f"the daemon did not take it: {detail}")

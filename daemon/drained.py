@@ -12,6 +12,7 @@ from pathlib import Path
 from typing import Any
 
 from daemon import accept
+from daemon.asking import key_header, wants_key
 from daemon.clock import SystemClock, format_rfc3339, parse_rfc3339
 from daemon.errors import JournalError, StoreError, UnitError
 from daemon.journal import Drain
@@ -31,7 +32,7 @@ def record_drain(site: Site, options: argparse.Namespace, store_path: Path) -> s
     if drain.trap not in site.traps:
         known = ", ".join(site.traps) or "none"
         raise JournalError(f'"{drain.trap}" is not a trap of this site (known: {known})')
-    answer = _through_daemon(site, drain, at_us)
+    answer = _through_daemon(site, drain, at_us, store_path)
     if answer is None:
         answer = _straight(site, drain, at_us, store_path)
     return (
@@ -59,7 +60,9 @@ def _read(options: argparse.Namespace) -> tuple[Drain, int | None]:
     return Drain(options.trap, outcome, volume_kg, options.by, options.look), at_us
 
 
-def _through_daemon(site: Site, drain: Drain, at_us: int | None) -> dict[str, Any] | None:
+def _through_daemon(
+    site: Site, drain: Drain, at_us: int | None, store_path: Path
+) -> dict[str, Any] | None:
     """Ask the daemon that serves this site's API; None when nothing listens there."""
     body = {
         "outcome": drain.outcome,
@@ -69,7 +72,7 @@ def _through_daemon(site: Site, drain: Drain, at_us: int | None) -> dict[str, An
         "look": drain.look,
     }
     said = {name: value for name, value in body.items() if value not in (None, "")}
-    theirs = _asked(site, "site")
+    theirs = _asked(site, store_path, "site")
     if theirs is None:
         return None
     if theirs.get("id") != site.id:
@@ -79,22 +82,28 @@ def _through_daemon(site: Site, drain: Drain, at_us: int | None) -> dict[str, An
             "port in [api]"
         )
     trap = urllib.parse.quote(drain.trap, safe="")
-    return _asked(site, f"traps/{trap}/drains", json.dumps(said).encode())
+    return _asked(site, store_path, f"traps/{trap}/drains", json.dumps(said).encode())
 
 
-def _asked(site: Site, path: str, data: bytes | None = None) -> dict[str, Any] | None:
+def _asked(
+    site: Site, store_path: Path, path: str, data: bytes | None = None
+) -> dict[str, Any] | None:
     """The daemon's answer to a GET, or to a POST of data; None when nothing listens there."""
     host = {"0.0.0.0": "127.0.0.1", "::": "::1"}.get(site.api.host, site.api.host)
     address = f"[{host}]" if ":" in host else host
     where = f"{address}:{site.api.port}"
     request = urllib.request.Request(
-        f"http://{where}/api/v1/{path}", data, {"Content-Type": "application/json"}
+        f"http://{where}/api/v1/{path}",
+        data,
+        {"Content-Type": "application/json", **key_header(site, store_path)},
     )
     opener = urllib.request.build_opener(urllib.request.ProxyHandler({}))
     try:
         with opener.open(request, timeout=TIMEOUT_S) as response:
             answer = json.load(response)
     except urllib.error.HTTPError as error:
+        if error.code == 401:
+            raise StoreError(wants_key(site, store_path)) from error
         failed = StoreError if error.code >= 500 else JournalError
         raise failed(_problem(error)) from error
     except urllib.error.URLError:

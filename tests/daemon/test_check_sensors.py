@@ -144,7 +144,7 @@ def run(
     **said: Any,
 ) -> tuple[int, str]:
     told: list[str] = []
-    options = argparse.Namespace(**({"no_sensors": False, "watch": False} | said))
+    options = argparse.Namespace(**({"no_sensors": False, "watch": False, "store": None} | said))
     code = check(
         site, options, hardware, clock or QuickClock(), threading.Event(), told.append, root
     )
@@ -221,7 +221,7 @@ def test_a_hung_bus_does_not_hang_the_check(
     monkeypatch.setattr("sensors.sampling.CLOSE_WAIT_S", 0.0)
     told: list[str] = []
     release = parts.i2c(1).hang = threading.Event()
-    options = argparse.Namespace(no_sensors=False, watch=False)
+    options = argparse.Namespace(no_sensors=False, watch=False, store=None)
     code = check(shop(), options, parts, QuickClock(), threading.Event(), told.append, a_pi)
     release.set()
     for thread in threading.enumerate():
@@ -320,7 +320,7 @@ def test_another_program_on_the_port_is_no_daemon(parts: EmulatedHardware, a_pi:
         answering = threading.Thread(target=answer, daemon=True)
         answering.start()
         told: list[str] = []
-        options = argparse.Namespace(no_sensors=False, watch=False)
+        options = argparse.Namespace(no_sensors=False, watch=False, store=None)
         site = shop(port=port)
         code = check(site, options, parts, QuickClock(), threading.Event(), told.append, a_pi)
     assert code == 0
@@ -389,7 +389,7 @@ def test_a_channel_over_mqtt_is_listened_to(
     speaker.start()
     told: list[str] = []
     try:
-        options = argparse.Namespace(no_sensors=False, watch=False)
+        options = argparse.Namespace(no_sensors=False, watch=False, store=None)
         code = check(site, options, parts, SystemClock(), threading.Event(), told.append, a_pi)
     finally:
         stop.set()
