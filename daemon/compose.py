@@ -21,6 +21,7 @@ from daemon.keys_local import remove_key, write_key
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.mqtt import MqttLink
 from daemon.outbox import Topics
+from daemon.retained import gone, retained_topics
 from daemon.sealing import Sealer
 from daemon.shell import Sampling, Shell
 from daemon.site.types import Site
@@ -72,6 +73,9 @@ def running(setting: Setting, stop: threading.Event) -> Iterator[Parts]:
             inbox = setting.hardware.inbox()
             link = MqttLink(site, store, shell.record, setting.clock, inbox=inbox)
             shell.link = link
+            if topics is not None:
+                used = retained_topics(topics, site, shell.core.definitions)
+                link.publish_states(gone(store, used))
             link.start()
             parts.callback(link.stop)
         if not is_loopback(site.api.host):
