@@ -91,6 +91,9 @@ class AirState:
     entered: Array  # (receivers, members): cumulative into each, its running maximum
     seen: tuple[bool, ...]  # receivers whose pressure has been measured
     purged: Array  # (purging, members): cumulative, what dryers blew off
+    # (receivers, members): humidity ratio that the gauges' stock is reckoned with, over an hour:
+    # 1 g/kg more or less is 0.16 % of the stock, and is no hurry
+    ratio: Array
 
 
 @dataclass(frozen=True, slots=True)
@@ -105,8 +108,9 @@ class AirMoved:
     purge: Array | None = None  # (purging, members), what dryers blew off; None: there are none
 
 
-def start(plan: Plan, stored: Array) -> AirState:
-    """Before anything has moved, with this much dry air stored (receivers, members)."""
+def start(plan: Plan, stored: Array, ratio: Array) -> AirState:
+    """Before anything has moved, with this much dry air stored, and its humidity ratio: both
+    (receivers, members)."""
     members = plan.line.members
     return AirState(
         measured=stored.copy(),
@@ -117,6 +121,7 @@ def start(plan: Plan, stored: Array) -> AirState:
         entered=np.zeros_like(stored),
         seen=tuple(False for _ in plan.receivers),
         purged=np.zeros((len(plan.purging), members)),
+        ratio=ratio,
     )
 
 

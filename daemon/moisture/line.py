@@ -121,6 +121,7 @@ class _Step:
     fitted: Fitted
     beds: Array
     passed: Array
+    spills: bool  # whether any trap has run over, or may in this step
 
     def station(self, i: int, stored_before: Array | None) -> None:
         """Work out station `i` and pass on what leaves it."""
@@ -193,19 +194,25 @@ class _Step:
         spill = self.spill_in[i]
         if self.plan.stations[i].trap is None:
             self.waiting[i] += liquid
-            self.spilled[i] += spill
+            if self.spills:
+                self.spilled[i] += spill
             return
         kept = self.parameters.separation[i]
-        caught, caught_spill = kept * liquid, kept * spill
+        caught = kept * liquid
         self.waiting[i] += liquid - caught
-        self.spilled[i] += spill - caught_spill
-        caught += caught_spill
+        if self.spills:
+            caught_spill = kept * spill
+            self.spilled[i] += spill - caught_spill
+            caught += caught_spill
         self.shed[i] += caught
         filled = self.trap[i] + caught
         if i in self.fitted.drains:
             left = self.fitted.drains[i].left(filled)
             self.passed[i] += filled - left
             filled = left
+        if not self.spills:
+            self.trap[i] = filled
+            return
         over = np.maximum(filled - self.parameters.capacity_kg[i], 0.0)
         self.trap[i] = filled - over
         self.spilled[i] += over
@@ -214,18 +221,25 @@ class _Step:
         """What leaves a station arrives at the next ones, or is gone at an outlet."""
         through = self.air.through[i]
         moving = through > 0.0
-        safe = np.where(moving, through, 1.0)
-        self.ratio[i] = np.where(moving, vapor / safe, self.ratio[i])
-        liquid = np.where(moving, self.waiting[i], 0.0)
-        spill = np.where(moving, self.spilled[i], 0.0)
-        self.waiting[i] -= liquid
-        self.spilled[i] -= spill
+        if moving.all():  # the usual case, and the same bits
+            safe, liquid, spill = through, self.waiting[i].copy(), self.spilled[i].copy()
+            np.divide(vapor, through, out=self.ratio[i])
+            self.waiting[i] = 0.0
+            self.spilled[i] = 0.0
+        else:
+            safe = np.where(moving, through, 1.0)
+            self.ratio[i] = np.where(moving, vapor / safe, self.ratio[i])
+            liquid = np.where(moving, self.waiting[i], 0.0)
+            spill = np.where(moving, self.spilled[i], 0.0)
+            self.waiting[i] -= liquid
+            self.spilled[i] -= spill
         parts = self._parts(i, safe)
         for flow, part in zip(self.plan.outflows[i], parts, strict=True):
             if flow.station >= 0:
                 self.vapor_in[flow.station] += part * vapor
                 self.liquid_in[flow.station] += part * liquid
-                self.spill_in[flow.station] += part * spill
+                if self.spills:
+                    self.spill_in[flow.station] += part * spill
             else:
                 gone = part * (liquid + spill)
                 self.vapor_out += part * vapor
@@ -244,6 +258,16 @@ class _Step:
         if self.plan.outflows[i]:
             parts.append(rest)
         return parts
+
+
+def _may_spill(plan: Plan, parameters: WaterParameters, state: WaterState, water_in: Array) -> bool:
+    """Whether a trap has run over, or could if all water on its way came to it in this step."""
+    if not plan.traps:
+        return bool(state.spilled.any())
+    rows = list(plan.traps)
+    on_its_way = water_in + state.waiting.sum(0) + state.vapor.sum(0)
+    room = (parameters.capacity_kg[rows] - state.trap[rows]).min(0)
+    return bool((room <= on_its_way).any()) or bool(state.spilled.any())
 
 
 def step(
@@ -270,6 +294,7 @@ def step(
     """
     fitted = fitted or Fitted()
     shape = saturated.shape
+    water_in = air.through[0] * intake_ratio
     work = _Step(
         plan,
         parameters,
@@ -291,8 +316,8 @@ def step(
         fitted=fitted,
         beds=ledger.beds.copy() if fitted.beds or plan.purging else ledger.beds,
         passed=ledger.passed.copy() if fitted.drains else ledger.passed,
+        spills=_may_spill(plan, parameters, state, water_in),
     )
-    water_in = air.through[0] * intake_ratio
     work.vapor_in[0] += water_in
     row = 0
     for i, station in enumerate(plan.stations):

@@ -131,7 +131,7 @@ class Model:
         saturated = air.saturated_humidity_ratio_unchecked(now.temperature_k, now.pressure_pa)
         intake = self._intake_ratio(now)
         ratio = self._passed(saturated, intake)
-        stored = self._stored(parameters, now, ratio)
+        stored = self._stored(parameters, now, ratio[list(plan.receivers)])
         water = line.WaterState(
             trap=np.array([self._at_start(i) for i in range(len(plan.stations))]),
             waiting=np.zeros_like(saturated),
@@ -152,7 +152,7 @@ class Model:
             contact_unknown_us=time_us,
             duty_known=DUTY_UNKNOWN,
             duty=duty,
-            air=flow.start(plan, stored),
+            air=flow.start(plan, stored, ratio[list(plan.receivers)]),
             water=water,
             ledger=line.new_ledger(plan, water),
             round_start=water.trap,
@@ -209,7 +209,8 @@ class Model:
         if offsets is not state.offsets:
             as_before = replace(evaluation, offsets=state.offsets, lapses=dict(state.lapses))
             before = self._drift_is_no_flow(before, state, now, as_before.conditions())
-        measured = self._measured(before, state.parameters, now, water)
+            before = replace(before, ratio=water.vapor / before.stored)
+        measured = self.measured(before, state.parameters, now)
         purging = self.fittings.drying.purged_share(fitted, state.parameters.fittings)
         after, moved = flow.move(plan, before, drawn, measured, purging)
         fitted = self.fittings.without_pressure(fitted, now, held, to_us)
@@ -351,7 +352,7 @@ class Model:
         lapses = dict(state.lapses)
         evaluation = Evaluation(self.plan, state.held, offsets, state.duty, state.time_us, lapses)
         now = evaluation.conditions()
-        measured = self._measured(state.air, parameters, now, state.water)
+        measured = self.measured(state.air, parameters, now)
         return replace(
             state,
             beliefs=beliefs,
@@ -496,28 +497,22 @@ class Model:
         return metered
 
     def _stored(self, parameters: Parameters, now: Conditions, ratio: Array) -> Array:
-        """Dry air in every receiver, kg, (receivers, members)."""
+        """Dry air in every receiver, kg, (receivers, members), as `ratio` is."""
         rows = list(self.plan.receivers)
         density: Array = air.dry_air_density_unchecked(
-            now.temperature_k[rows], now.pressure_pa[rows], ratio[rows]
+            now.temperature_k[rows], now.pressure_pa[rows], ratio
         )
         return parameters.volume_m3 * density
 
-    def _measured(
-        self,
-        before: flow.AirState,
-        parameters: Parameters,
-        now: Conditions,
-        water: line.WaterState,
-    ) -> Array:
+    def measured(self, before: flow.AirState, parameters: Parameters, now: Conditions) -> Array:
         """Dry air by gauge where a fresh one speaks; elsewhere taken as unchanged."""
         rows = [n for n, r in enumerate(self.plan.receivers) if r in now.measured]
         if not rows:
             return before.measured
-        ratio = np.zeros_like(now.temperature_k)
-        ratio[list(self.plan.receivers)] = water.vapor / before.stored
+        stored = self._stored(parameters, now, before.ratio)
+        if len(rows) == len(self.plan.receivers):
+            return stored
         measured = before.measured.copy()
-        stored = self._stored(parameters, now, ratio)
         measured[rows] = stored[rows]
         return measured
 
@@ -525,9 +520,8 @@ class Model:
         self, before: flow.AirState, state: State, now: Conditions, as_before: Conditions
     ) -> flow.AirState:
         """The same readings with the old biases and with the new ones: the difference."""
-        water, parameters = state.water, state.parameters
-        with_new = self._measured(before, parameters, now, water)
-        with_old = self._measured(before, parameters, as_before, water)
+        with_new = self.measured(before, state.parameters, now)
+        with_old = self.measured(before, state.parameters, as_before)
         return flow.bias_changed(before, with_new - with_old)
 
     def _sighted(
@@ -537,7 +531,7 @@ class Model:
         air_state, water, ledger = state.air, state.water, state.ledger
         for row, receiver in enumerate(self.plan.receivers):
             if receiver in now.measured and not air_state.seen[row]:
-                stored = self._measured(air_state, state.parameters, now, water)[row]
+                stored = self.measured(air_state, state.parameters, now)[row]
                 air_state, ratio = flow.first_sight(air_state, row, stored)
                 vapor = water.vapor.copy()
                 vapor[row] *= ratio
