@@ -81,6 +81,7 @@ UNITS: dict[Kind, dict[str, Unit]] = {
         "h": _unit(3600.0),
         "days": _unit(86400.0),
         "weeks": _unit(604800.0),
+        "years": _unit(31557600.0),  # 365.25 days
         "ms": _unit(over=1e3),
     },
     "fraction": {"%": _unit(over=100.0), "": _unit()},
@@ -118,5 +119,6 @@ SPELLINGS = {
     "lpm": "L/min", "ft3/min": "cfm", "cu ft/min": "cfm", "lps": "L/s",
     "second": "s", "seconds": "s", "sec": "s", "minute": "min", "minutes": "min", "mins": "min",
     "hour": "h", "hours": "h", "hr": "h", "hrs": "h", "day": "days", "d": "days", "week": "weeks",
+    "year": "years",
     "percent": "%", "inch": "in", "inches": "in", "lbs": "lb",
 }  # fmt: skip

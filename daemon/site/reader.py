@@ -14,6 +14,7 @@ from daemon.moisture.description import Compressor, Line
 from daemon.site.assume import Assumptions, complete_line, station_of
 from daemon.site.calendar import HOURS_KEYS, read_hours
 from daemon.site.compressor import COMPRESSOR_KEYS, choose_running, read_compressor
+from daemon.site.keeping import STORE_KEYS, read_store
 from daemon.site.limits import tell_rising_pressures, tell_set_pressures
 from daemon.site.names import Names
 from daemon.site.notes import Notes, nearest
@@ -46,7 +47,9 @@ from daemon.site.trap_sensors import read_trap_sensors
 from daemon.site.types import Site
 from sensors.registry import DRIVERS, Driver
 
-TABLES = ("site", "hours", "compressor", "costs", "reminders", "cup", "model", "mqtt", "api")
+TABLES = (
+    "site", "hours", "compressor", "costs", "reminders", "cup", "model", "store", "mqtt", "api",
+)  # fmt: skip
 LISTS = ("sensor", "station", "outlet")
 _LINE = re.compile(r"\(at line (\d+), column (\d+)\)\Z")
 
@@ -89,6 +92,7 @@ def _elsewhere(drivers: Mapping[str, Driver]) -> dict[str, Sequence[str]]:
         "[reminders]": REMINDERS_KEYS,
         "[cup]": CUP_KEYS,
         "[model]": MODEL_KEYS,
+        "[store]": STORE_KEYS,
         "[api]": API_KEYS,
         "[mqtt]": MQTT_KEYS,
         "[[station]]": STATION_KEYS,
@@ -186,6 +190,7 @@ class _Reading:
         outlets = read_outlets(notes, self._list("outlet"), names)
         cup = read_cup(notes, raw.get("cup", {}))
         members, seed = read_model(notes, raw.get("model", {}))
+        keeping = read_store(notes, raw.get("store"))
         mqtt = read_mqtt(notes, raw.get("mqtt"), Path(self.path).parent)
         api = read_api(notes, raw.get("api", {}))
         notes.settle_unknown({"sensor": names.sensors, "station": names.stations, "outlet": ()})
@@ -219,6 +224,7 @@ class _Reading:
             without_effect=tuple(notes.without_effect),
             limits=limits,
             costs=costs,
+            keeping=keeping,
             reminders=reminders,
         )
         said = remarks(site, names, loaded_contact=table.said("loaded"))

@@ -71,6 +71,23 @@ class _Channel:
     own_times: int  # which list, 0 for none
     extras: _Extras | None
 
+    def from_tick(self, first: int) -> _Channel:
+        """The same without what stands in earlier ticks."""
+        counts, extras = self.counts.copy(), self.extras
+        counts[:first] = packing.ABSENT
+        if extras is not None:
+            both = np.intersect1d(np.flatnonzero(self.counts != packing.ABSENT), extras.ticks)
+            kept = int(np.searchsorted(extras.ticks, first))
+            extras = _Extras(
+                extras.ticks[kept:],
+                extras.places[kept:],
+                extras.offsets[kept:],
+                extras.faults[kept:],
+                extras.values[kept:],
+                extras.before[int(np.searchsorted(both, first)) :],
+            )
+        return _Channel(counts, self.own_times, extras)
+
 
 @dataclass(frozen=True, slots=True)
 class Times:
@@ -158,10 +175,12 @@ def unseal(layout: Layout, times: Times, channels: Mapping[int, bytes]) -> Itera
         yield bytes((packing.FORMAT, flags)) + b"".join(parts)
 
 
-def open_column(step: float, times: Times, blob: bytes) -> Column:
-    """One channel's readings, in the order of the ticks and of the readings within a tick."""
+def open_column(step: float, times: Times, blob: bytes, after_us: int) -> Column:
+    """One channel's readings in ticks after a time, in the order of the ticks and within a tick."""
     with _words(int(times.ticks_us[0])):
         channel = _open_channel(blob, len(times.ticks_us))
+        passed = int(np.searchsorted(times.ticks_us, after_us, side="right"))
+        channel = channel.from_tick(passed) if passed else channel
         at_us = times.ticks_us
         if channel.own_times:
             at_us = at_us + times.own[channel.own_times - 1]

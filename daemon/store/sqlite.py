@@ -23,6 +23,9 @@ from daemon.store.database import Database
 
 BUSY_MS = 5000
 _MOST_FINDINGS = 5
+_INCREMENTAL = 2  # what `PRAGMA auto_vacuum` answers
+_RESERVE_PAGES = 256  # 1 MB: the running hour's rows come and go
+_PAGES_AT_ONCE = 256
 
 
 class Lock:
@@ -111,6 +114,22 @@ def backup(database: Database, target: Path) -> None:
         part.unlink(missing_ok=True)
 
 
+def give_back(database: Database) -> None:
+    """Give pages that stand empty back to the file system, a few at a time, but for a reserve.
+
+    A database that was made before `auto_vacuum` was set keeps its size, and fills those pages.
+    """
+    while True:
+        with database.write() as connection:
+            mode = connection.exec_driver_sql("PRAGMA auto_vacuum").scalar_one()
+            free = connection.exec_driver_sql("PRAGMA freelist_count").scalar_one()
+            if mode != _INCREMENTAL or free <= _RESERVE_PAGES:
+                return
+            number = min(free - _RESERVE_PAGES, _PAGES_AT_ONCE)
+            # it goes on by one page for each row, which the driver's own cursor alone fetches
+            _raw(connection).execute(f"PRAGMA incremental_vacuum({number})").fetchall()
+
+
 def explain(where: str, error: SQLAlchemyError) -> StoreError:
     """A driver's error as what is wrong and what to do."""
     original = error.orig if isinstance(error, DBAPIError) else None
@@ -165,6 +184,7 @@ def _settings(raw: Any, _record: object) -> None:
     raw.isolation_level = None  # transactions are begun by `_begin`, also around CREATE TABLE
     for setting in (
         f"busy_timeout={BUSY_MS}",
+        "auto_vacuum=INCREMENTAL",  # counts for a database that is made now: see `give_back`
         "journal_mode=WAL",
         "synchronous=FULL",
         "foreign_keys=ON",

@@ -169,6 +169,16 @@ class Store:
         """
         return self._ticks.seal_next()
 
+    def drop_readings(self, before_us: int, most_hours: int) -> int:
+        """Drop packed hours of readings that ended before a time, at most so many of the oldest.
+
+        Gives how many were dropped. What they came to by the hour (`hours`) stays, as does all that
+        is not a reading. Space is given back.
+        """
+        dropped = self._ticks.drop(before_us, most_hours)
+        sqlite.give_back(self._database)
+        return dropped
+
     # --- journal
 
     def add_entry(self, body: Body, at_us: int, written_us: int, key: str = "") -> Recorded:

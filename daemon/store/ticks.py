@@ -33,6 +33,7 @@ HOLDS_US = 30 * SECOND_US  # a sampled value that falls silent: three periods of
 _STREAMED = 1000  # rows in memory together when each becomes readings
 _IN_A_SERIES = 20_000  # rows in memory together when they become arrays
 _RUNS_IN_A_SERIES = 200
+_DROPPED = 24  # runs in one transaction
 _REACH = "readings.reach_us"
 
 
@@ -66,13 +67,13 @@ class TickReader:
 
     def stream(self, after_us: int, until_us: int) -> Iterator[tuple[int, list[Reading]]]:
         """(time, readings) of each tick after one time, up to and with another, in order."""
-        for piece in self._pieces(after_us, until_us, 1, _STREAMED):
+        for passed_us, piece in self._pieces(after_us, until_us, 1, _STREAMED):
             if isinstance(piece, Run):
                 layout = self._layout_of(piece.layout)
                 times = open_times(piece.first_us, piece.ticks)
                 rows = unseal(layout, times, piece.channels)
                 for tick_us, row in zip(times.ticks_us.tolist(), rows, strict=True):
-                    if after_us < tick_us <= until_us:
+                    if passed_us < tick_us <= until_us:
                         yield tick_us, unpack(layout, tick_us, row)
             else:
                 for tick_us, version, packed in piece:
@@ -158,9 +159,10 @@ class TickReader:
     def _column(self, channel: str, after_us: int, until_us: int) -> Column:
         """A channel's readings in ticks after one time, up to and with another."""
         columns: list[Column] = []
-        for piece in self._pieces(after_us, until_us, _RUNS_IN_A_SERIES, _IN_A_SERIES, channel):
+        pieces = self._pieces(after_us, until_us, _RUNS_IN_A_SERIES, _IN_A_SERIES, channel)
+        for passed_us, piece in pieces:
             if isinstance(piece, Run):
-                column = self._sealed_column(piece, channel)
+                column = self._sealed_column(piece, channel, passed_us)
                 columns += [] if column is None else [column]
                 continue
             for version, rows in groupby(piece, key=itemgetter(1)):
@@ -168,31 +170,34 @@ class TickReader:
                 columns.append(unpack_column(self._layout_of(version), channel, times, packed))
         return Column.joined(columns)
 
-    def _sealed_column(self, run: Run, channel: str) -> Column | None:
+    def _sealed_column(self, run: Run, channel: str, after_us: int) -> Column | None:
         layout = self._layout_of(run.layout)
         place = layout.places.get(channel)
         blob = None if place is None else run.channels.get(place)
         if place is None or blob is None:
             return None
-        return open_column(layout.steps[place], open_times(run.first_us, run.ticks), blob)
+        times = open_times(run.first_us, run.ticks)
+        return open_column(layout.steps[place], times, blob, after_us)
 
     def _pieces(
         self, after_us: int, until_us: int, runs: int, rows: int, channel: str | None = None
-    ) -> Iterator[Run | Sequence[Any]]:
-        """Sealed runs, then pages of rows (time, layout, packed), in order.
+    ) -> Iterator[tuple[int, Run | Sequence[Any]]]:
+        """Sealed runs, then pages of rows (time, layout, packed), in order, each with a time.
 
-        They hold the ticks after one time up to and with another; of the first and the last run
-        also the others. Each page is a read of its own: a slow reader that held one open would keep
-        the write-ahead log from shrinking.
+        They hold the ticks after one time up to and with another. A run may begin before and reach
+        beyond: of it only what is after the time that stands with it was not met yet. Each page is
+        a read of its own: a slow reader that held one open would keep the write-ahead log from
+        shrinking.
         """
         while True:
             positions = None if channel is None else self._positions(channel)
             with self._database.read() as connection:
                 sealed = sealed_rows.runs(connection, after_us, until_us, runs, positions)
                 page = [] if sealed else _page(connection, after_us, until_us, rows)
-            yield from sealed
+            for run in sealed:
+                yield after_us, run
             if page:
-                yield page
+                yield after_us, page
             if not sealed and len(page) < rows:
                 return
             after_us = sealed[-1].last_us if sealed else page[-1][0]
@@ -263,6 +268,17 @@ class TickRows(TickReader):
         if not sealed:
             self._all_sealed_us = last_us
         return sealed
+
+    def drop(self, before_us: int, most: int) -> int:
+        """Drop sealed runs that ended before a time, at most so many; gives how many."""
+        dropped = 0
+        while dropped < most:
+            with self._database.write() as connection:
+                some = sealed_rows.drop(connection, before_us, min(_DROPPED, most - dropped))
+            if not some:
+                break
+            dropped += some
+        return dropped
 
     def _nothing_since(self, last_us: int) -> bool:
         """Whether no hour has ended since there was nothing to seal: asked without the database."""
