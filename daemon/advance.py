@@ -253,7 +253,7 @@ class Core:
         followed = self.following.step(state, model, moved, heard.is_open)
         tally = state.hourly
         if self.hourly is not None:
-            tally = self.hourly.step(state, until_us, moved, heard.is_open)
+            tally = self.hourly.step(state, until_us, moved, heard.is_open, bool(readings))
         after = replace(
             state, model=model, hour=hour, followed=followed, sensed=sensed, hourly=tally
         )

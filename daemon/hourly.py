@@ -67,14 +67,17 @@ class Hourly:
 
     # ---- tick by tick ----
 
-    def step(self, state: CoreState, until_us: int, moved: Moved, is_open: bool) -> HourTally:
-        """After the model's step from a state to a time.
+    def step(
+        self, state: CoreState, until_us: int, moved: Moved, is_open: bool, heard: bool
+    ) -> HourTally:
+        """After the model's step to a time; `heard`: its tick had readings, good or bad.
 
-        A longer step than a channel may be silent for is one in which nobody watched.
+        Nobody watched a tick in which no part of any kind said anything, nor a step longer than a
+        channel may be silent for.
         """
         tally = state.hourly if state.hourly is not None else self.begun(state.model)
         dt_us = until_us - state.time_us
-        if dt_us > self._stale_us:
+        if dt_us > self._stale_us or not heard:
             return tally
         faults = tally.faults_us
         for name, record in state.channels.items():

@@ -105,6 +105,9 @@ def _lead(words: Words, log: WeekLog) -> str:
     drains = counted(len(log.drains), "drain")
     parts = [f"{words.waters(log.water_in_kg)} of water came in with the air"]
     parts.append(f"{drains}, {late} of them late" if late else f"{drains}, none late")
+    due = [trap.trap for trap in log.traps if trap.due_since_us is not None]
+    if due:
+        parts.append(f"still due: {', '.join(due)}")
     if log.outlets:
         unfit = max(outlet.unfit_s for outlet in log.outlets)
         worst = next(outlet.outlet for outlet in log.outlets if outlet.unfit_s == unfit)
