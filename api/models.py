@@ -132,9 +132,26 @@ class DrainOut(BaseModel):
         examples=["tank: you measured 380 ml, expected 410 ml (300 to 560 ml); ..."],
     )
 
+    undone: Time | None = Field(
+        default=None, description="when it was taken back, so that it does not count; null: it does"
+    )
+
     @classmethod
-    def of(cls, entry: Entry, said: str = "") -> DrainOut:
-        return cls.model_validate({**drain_payload(entry), "said": said})
+    def of(cls, entry: Entry, said: str = "", undone: Entry | None = None) -> DrainOut:
+        undone_at = None if undone is None else format_rfc3339(undone.at_us)
+        return cls.model_validate({**drain_payload(entry), "said": said, "undone": undone_at})
+
+
+class UndoIn(BaseModel):
+    """Somebody takes back a drain that they recorded by mistake."""
+
+    model_config = ConfigDict(
+        extra="forbid", strict=True, json_schema_extra={"examples": [{"by": "AM"}]}
+    )
+
+    by: Name | None = Field(
+        default=None, description="the initials that it was recorded with", examples=["AM"]
+    )
 
 
 class ServiceIn(BaseModel):
@@ -192,6 +209,7 @@ class AlarmOut(BaseModel):
     state: AlarmState
     priority: Priority
     since: Time = Field(description="when it took this state")
+    shelved_until: Time | None = Field(description="until when it is put off; null: it is not")
     text: str = Field(description="what is so, how sure, and what to do")
 
     @classmethod

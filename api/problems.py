@@ -71,6 +71,17 @@ KINDS: dict[str, Kind] = {
         "The alarm waits for nobody",
         "Only an alarm that is unacknowledged or returned unacknowledged can be acknowledged.",
     ),
+    "cannot-be-undone": Kind(
+        409,
+        "The drain cannot be taken back",
+        "A drain can be taken back for ten minutes after it was recorded, with the same initials.",
+    ),
+    "cannot-be-shelved": Kind(
+        409,
+        "The alarm cannot be put off",
+        "It says nothing as it is: what it watches is switched off or out of use.",
+    ),
+    "not-shelved": Kind(409, "The alarm is not put off", "There is nothing to end."),
     "no-length": Kind(411, "The length of the body is not said", "Send a Content-Length header."),
     "too-large": Kind(
         413, "The body is too large", "A drain or an acknowledgement is a few lines."

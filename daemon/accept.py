@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from typing import get_args
 
+from daemon.alarms import SHELVED_LEAST_US, SHELVED_US
 from daemon.clock import MINUTE_US, format_rfc3339
 from daemon.due import volume_words
 from daemon.errors import JournalError
@@ -19,6 +20,9 @@ from daemon.journal import (
     SaltCheck,
     Service,
     Serviced,
+    Shelve,
+    Undo,
+    Unshelve,
 )
 from daemon.moisture.description import Trap
 from daemon.site.types import Site
@@ -48,9 +52,11 @@ def check(site: Site, body: Body, at_us: int, now_us: int, begun_us: int) -> Non
     match body:
         case Drain():
             _check_drain(site, body)
-        case Acknowledge(by=by):
+        case Acknowledge(by=by) | Unshelve(by=by):
             _check_by(by)
-        case Confirm(trap=trap, by=by):
+        case Shelve() as shelve:
+            _check_shelve(shelve)
+        case Confirm(trap=trap, by=by) | Undo(trap=trap, by=by):
             _check_trap(site, trap)
             _check_by(by)
         case Service() as service:
@@ -115,6 +121,16 @@ def _check_service(site: Site, service: Service) -> None:
         raise JournalError(
             f'{service.what}: "{service.of}" is not one of {", ".join(known_ids) or "none"}'
         )
+
+
+def _check_shelve(shelve: Shelve) -> None:
+    least_s, most_s = (each / 1e6 for each in (SHELVED_LEAST_US, SHELVED_US))
+    if not (math.isfinite(shelve.for_s) and least_s <= shelve.for_s <= most_s):
+        raise JournalError(
+            f"an alarm put off for {shelve.for_s:g} s: say from {show_duration(least_s)} to "
+            f"{show_duration(most_s)}"
+        )
+    _check_by(shelve.by)
 
 
 def _check_outlet(site: Site, name: str) -> None:

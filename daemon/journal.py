@@ -29,8 +29,34 @@ class Drain:
 
 
 @dataclass(frozen=True, slots=True)
+class Undo:
+    """Somebody takes back a drain that they recorded by mistake: it never was."""
+
+    trap: str
+    entry: int  # the drain's number in the journal
+    by: str = ""
+
+
+@dataclass(frozen=True, slots=True)
 class Acknowledge:
     """Somebody has seen an alarm."""
+
+    alarm: str
+    by: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Shelve:
+    """Somebody puts an alarm off for a while."""
+
+    alarm: str
+    for_s: float
+    by: str = ""
+
+
+@dataclass(frozen=True, slots=True)
+class Unshelve:
+    """Somebody ends that before its time."""
 
     alarm: str
     by: str = ""
@@ -87,10 +113,24 @@ class SaltCheck:
     by: str = ""
 
 
-Body = Drain | Acknowledge | Confirm | Service | Gauge | Blotter | SaltCheck
+Body = (
+    Drain
+    | Undo
+    | Acknowledge
+    | Shelve
+    | Unshelve
+    | Confirm
+    | Service
+    | Gauge
+    | Blotter
+    | SaltCheck
+)
 _KINDS: dict[str, type[Body]] = {
     "drain": Drain,
+    "undo": Undo,
     "acknowledge": Acknowledge,
+    "shelve": Shelve,
+    "unshelve": Unshelve,
     "confirm": Confirm,
     "service": Service,
     "gauge": Gauge,

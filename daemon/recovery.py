@@ -81,16 +81,20 @@ class Recovery:
                 noted += [estimate.noted] if estimate.noted else []
         if before_us is not None:
             self._store.drop_checkpoints_after(before_us - 1)
-        rewritten = rewritten or before_us is not None
+        # an undoing that no tick has followed: what was announced has not been corrected yet
+        untold = any(undo.at_us > state.time_us for undo in self._store.undoings().values())
+        rewritten = rewritten or before_us is not None or untold
         return Back(state, entries[taken:], rewritten, from_us, joined(noted))
 
     def _latest_complete(self, grid_us: int, until_us: int) -> tuple[CoreState | None, bool]:
         """The latest checkpoint that knows of every entry dated before it.
 
         An entry written after a checkpoint but dated before it (a kill came between) sends us
-        further back; one from before the record began cannot.
+        further back, and so does the undoing of a drain dated before it; one from before the
+        record began cannot.
         """
         rewritten = False
+        undone = self._undone()
         while True:
             found = next(self._readable(until_us), None)
             if found is None or not same_line(found[1], self._fingerprint):
@@ -103,11 +107,28 @@ class Recovery:
                 )
                 if entry.written_us > at_us and entry.at_us >= entry.written_us - TOO_OLD_US
             ]
+            unknown += [
+                drain.at_us for drain, undo in undone if grid_us < drain.at_us <= at_us < undo.at_us
+            ]
             if not unknown:
                 return self._core.fitted(found[0]), rewritten
             until_us = min(unknown) - 1
             self._store.drop_checkpoints_after(until_us)
             rewritten = True
+
+    def _undone(self) -> list[tuple[Entry, Entry]]:
+        """Drains that were reckoned with until they were undone, with what undid them."""
+        found = []
+        for seq, undo in self._store.undoings().items():
+            drain = self._store.entry(seq)
+            if drain is not None and drain.at_us >= drain.written_us - TOO_OLD_US:
+                found.append((drain, undo))
+        return found
+
+    def reaches(self, before_us: int) -> bool:
+        """Whether there is a checkpoint of this line to go back to, earlier than a time."""
+        found = next(self._readable(before_us - 1), None)
+        return found is not None and same_line(found[1], self._fingerprint)
 
     def _readable(self, until_us: int) -> Iterator[tuple[CoreState, str]]:
         """Checkpoints from the latest back, with what each belongs to; unreadable ones left out."""

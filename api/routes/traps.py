@@ -4,15 +4,18 @@ from __future__ import annotations
 
 from typing import Annotated
 
-from fastapi import APIRouter, Depends, Response
+from fastapi import APIRouter, Depends, Path, Response
 
 from api.drains import drain_of
 from api.keys import writes_allowed
-from api.models import DrainIn, DrainOut, TrapOut
+from api.models import DrainIn, DrainOut, TrapOut, UndoIn
 from api.problems import Problem, answered_by
+from api.quantities import EARLIEST_US, LATEST_US
 from api.routes.running import TheDaemon
 from api.routes.spans import FROM, TO, span
 from daemon.accept import AHEAD_US
+from daemon.errors import UndoError
+from daemon.journal import Undo
 from daemon.moisture.description import Trap
 from daemon.views import Running
 
@@ -91,7 +94,52 @@ def get_drains(
     now_us = daemon.clock.now_us()
     # a drain may be dated a little ahead of this clock
     start_us, end_us = span(from_, to, now_us + AHEAD_US, now_us + AHEAD_US)
-    return [DrainOut.of(entry) for entry in daemon.drains(trap, start_us, end_us)]
+    undone = daemon.undoings()
+    return [
+        DrainOut.of(entry, undone=undone.get(entry.seq))
+        for entry in daemon.drains(trap, start_us, end_us)
+    ]
+
+
+@router.post(
+    "/{trap}/drains/{seq}/undo",
+    status_code=201,
+    summary="Take back a drain",
+    dependencies=[Depends(writes_allowed)],
+    responses={
+        200: {"model": DrainOut, "description": "It had been taken back before."},
+        **answered_by(
+            "unreadable-request",
+            "cross-site-write",
+            "keys-needed",
+            "unknown-trap",
+            "cannot-be-undone",
+            "no-length",
+            "too-large",
+            "not-json",
+            "invalid-request",
+            "log-unavailable",
+        ),
+    },
+)
+def undo_drain(
+    trap: str,
+    seq: Annotated[int, Path(ge=1, le=2**53, description="the drain's number in the journal")],
+    daemon: TheDaemon,
+    response: Response,
+    body: UndoIn | None = None,
+) -> DrainOut:
+    """For ten minutes after it was recorded, with the same initials. The estimate is then as if it
+    had never been; what was announced stays, and corrections follow."""
+    described(daemon, trap)
+    try:
+        recorded = daemon.record(Undo(trap, seq, (body.by if body else None) or ""))
+    except UndoError as error:
+        raise Problem("cannot-be-undone", str(error)) from error
+    if recorded.repeated:
+        response.status_code = 200
+    drain = next(entry for entry in daemon.drains(trap, EARLIEST_US, LATEST_US) if entry.seq == seq)
+    return DrainOut.of(drain, undone=recorded.entry)
 
 
 def described(daemon: Running, name: str) -> Trap:

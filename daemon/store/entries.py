@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 from sqlalchemy import Connection, Select, func, insert, select
@@ -17,6 +17,9 @@ from daemon.journal import (
     Gauge,
     SaltCheck,
     Service,
+    Shelve,
+    Undo,
+    Unshelve,
     body_from_json,
     body_to_json,
 )
@@ -61,8 +64,12 @@ def find(
     from_us: int | None = None,
     to_us: int | None = None,
     trap: str | None = None,
+    every: bool = False,
 ) -> Sequence[Entry]:
-    """Entries in the order they were written; `trap` picks the drains of one trap."""
+    """Entries in the order they were written; `trap` picks the drains of one trap.
+
+    Those that count, without drains that were undone and the undoing itself, unless `every`.
+    """
     statement: Select[Any] = (
         select(journal).where(journal.c.seq > after_seq).order_by(journal.c.seq)
     )
@@ -73,14 +80,41 @@ def find(
     if trap is not None:
         statement = statement.where(journal.c.subject == trap)
     entries = [_entry(row) for row in connection.execute(statement)]
-    if trap is None:
+    if trap is not None:
+        entries = [entry for entry in entries if isinstance(entry.body, Drain)]
+    if every or not any(isinstance(entry.body, Drain | Undo) for entry in entries):
         return entries
-    return [entry for entry in entries if isinstance(entry.body, Drain)]
+    undone = undoings(connection, min(entry.seq for entry in entries))
+    return [
+        entry for entry in entries if entry.seq not in undone and not isinstance(entry.body, Undo)
+    ]
+
+
+def one(connection: Connection, seq: int) -> Entry | None:
+    """The entry with that number."""
+    found = connection.execute(select(journal).where(journal.c.seq == seq)).first()
+    return None if found is None else _entry(found)
+
+
+def undoings(connection: Connection, after_seq: int = 0) -> Mapping[int, Entry]:
+    """The entries that undo a drain, by the drain's number; those written after a number."""
+    rows = connection.execute(
+        select(journal)
+        .where(journal.c.seq > after_seq, journal.c.body.like('%"kind": "undo"%'))
+        .order_by(journal.c.seq)
+    )
+    found: dict[int, Entry] = {}
+    for entry in map(_entry, rows):
+        if isinstance(entry.body, Undo):
+            found.setdefault(entry.body.entry, entry)
+    return found
 
 
 def _subject(body: Body) -> str:
     match body:
         case Acknowledge(alarm=subject) | Service(of=subject):
+            return subject
+        case Shelve(alarm=subject) | Unshelve(alarm=subject):
             return subject
         case Gauge(outlet=subject) | Blotter(outlet=subject) | SaltCheck(sensor=subject):
             return subject

@@ -8,11 +8,12 @@ from dataclasses import dataclass, field, replace
 
 import numpy as np
 
+from daemon import undoing
 from daemon.alarms import Alarm
 from daemon.clock import HOUR_US, MINUTE_US, SECOND_US, parse_rfc3339
 from daemon.errors import JournalError
 from daemon.foresight import Score
-from daemon.journal import Acknowledge, Body, Drain, Entry
+from daemon.journal import Acknowledge, Body, Drain, Entry, Shelve, Undo, Unshelve
 from daemon.keys import ApiKey, KeyRing
 from daemon.moisture.description import (
     Compressor,
@@ -367,6 +368,11 @@ class FakeRunning:
                         return Recorded(entry, repeated=True)
                     raise JournalError(f'the key "{key}" was used before for something else')
             now_us = self.clock.now_us()
+            if isinstance(body, Undo):
+                found = next((e for e in self.journal if e.seq == body.entry), None)
+                if (done := self.undoings().get(body.entry)) is not None:
+                    return Recorded(done, repeated=True)
+                undoing.check(body, found, now_us)
             when_us = now_us if at_us is None else at_us
             if when_us < LOG_BEGINS_US:
                 raise JournalError("the time is before the log begins, 2026-11-01T09:00:00Z")
@@ -377,12 +383,24 @@ class FakeRunning:
     def tick(self) -> None:
         """Let the alarms follow the journal, as the daemon's next tick would."""
         for entry in self.journal:
+            if isinstance(entry.body, Shelve):
+                until_us = entry.at_us + round(entry.body.for_s * SECOND_US)
+                self.standing[entry.body.alarm] = replace(
+                    self.standing[entry.body.alarm], state="shelved", shelved_until_us=until_us
+                )
+            if isinstance(entry.body, Unshelve):
+                self.standing[entry.body.alarm] = replace(
+                    self.standing[entry.body.alarm], state="unacknowledged", shelved_until_us=None
+                )
             if isinstance(entry.body, Acknowledge):
                 alarm = self.standing[entry.body.alarm]
                 seen = "acknowledged" if alarm.state == "unacknowledged" else alarm.state
                 self.standing[alarm.id] = replace(
                     alarm, state="normal" if seen == "returned unacknowledged" else seen
                 )
+
+    def undoings(self) -> Mapping[int, Entry]:
+        return {e.body.entry: e for e in self.journal if isinstance(e.body, Undo)}
 
     def drains(self, trap: str, from_us: int, to_us: int) -> Sequence[Entry]:
         return [

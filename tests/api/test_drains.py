@@ -27,6 +27,7 @@ def test_an_empty_object_records_an_emptied_trap_now(running: FakeRunning, clien
         "look": "",
         "key": "",
         "said": "",
+        "undone": None,
     }
     assert running.journal[0].body == Drain("tank")
 
@@ -48,6 +49,7 @@ def test_everything_said_is_kept(running: FakeRunning, client: Client) -> None:
         **body,
         "at": "2026-12-01T08:30:00Z",
         "said": "",
+        "undone": None,
     }
     kept = running.journal[0].body
     assert isinstance(kept, Drain)

@@ -43,6 +43,8 @@ def test_every_route_of_the_first_version_is_described(described: dict[str, Any]
         ("get", "/api/v1/traps/{trap}"),
         ("get", "/api/v1/traps/{trap}/drains"),
         ("post", "/api/v1/alarms/{alarm}/acknowledge"),
+        ("post", "/api/v1/alarms/{alarm}/shelve"),
+        ("post", "/api/v1/alarms/{alarm}/unshelve"),
         ("post", "/api/v1/outlets/{outlet}/blotter"),
         ("post", "/api/v1/outlets/{outlet}/gauge"),
         ("post", "/api/v1/pairing"),
@@ -51,6 +53,7 @@ def test_every_route_of_the_first_version_is_described(described: dict[str, Any]
         ("post", "/api/v1/stations/{station}/service"),
         ("post", "/api/v1/traps/{trap}/confirm"),
         ("post", "/api/v1/traps/{trap}/drains"),
+        ("post", "/api/v1/traps/{trap}/drains/{seq}/undo"),
     ]
 
 
