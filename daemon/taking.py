@@ -12,6 +12,8 @@ from daemon.moisture.model import Model, State
 from daemon.site.types import Site
 from daemon.state import CoreState, TrapRecord
 
+TIGHTER = 0.95  # of the spread of what is to come: from here down a person may be told so
+
 
 class Taking:
     """Takes in entries for one site."""
@@ -97,7 +99,8 @@ def learned_words(site: Site, learned: Learned) -> str:
             f"{learned.trap}: you measured {measured}, but {expected} was expected. It is kept, "
             "and not learned from until you confirm it: look at the figure and its unit again."
         )
+    after = "is tighter" if learned.narrowed < TIGHTER else "has learned from it"
     return (
-        f"{learned.trap}: you measured {measured}, expected {expected}; the next "
-        "estimate has learned from it."
+        f"{learned.trap}: you measured {measured}, expected {expected}; the next estimate of "
+        f"{learned.trap} {after}."
     )

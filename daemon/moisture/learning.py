@@ -84,6 +84,7 @@ class Learned:
     flagged: bool  # kept, but not learned from
     cup_kg: tuple[float, float, float]  # the same with what a cup is off by each time
     widened: bool = False
+    narrowed: float = 1.0  # what is unknown of the water to come, against before; below 1: tighter
 
 
 @dataclass(frozen=True, slots=True)
@@ -96,18 +97,40 @@ class Update:
 
     def shift(self, values: Array) -> Array:
         """By how much these values move, (members,)."""
-        count = values.size
-        a = values - values.mean()
-        b = self.expected - self.expected.mean()
-        aa, bb, ab = float(a @ a), float(b @ b), float(a @ b)
-        if aa <= 0.0 or bb <= 0.0:
-            return np.zeros_like(values)
-        r2 = ab * ab / (aa * bb)
-        left = max(0.0, (r2 * (count - 1) - 1.0) / max(count - 2, 1))
-        beyond_chance = left / r2 if r2 > 0.0 else 0.0
-        covariance = ab / (count - 1) * math.sqrt(beyond_chance)
-        moved: Array = covariance / self.variance * self.miss
+        moved: Array = _covariance(values, self.expected) / self.variance * self.miss
         return moved
+
+
+def _covariance(values: Array, expected: Array) -> float:
+    """Of two figures over the members, as far as their correlation is beyond chance."""
+    count = values.size
+    a = values - values.mean()
+    b = expected - expected.mean()
+    aa, bb, ab = float(a @ a), float(b @ b), float(a @ b)
+    if aa <= 0.0 or bb <= 0.0:
+        return 0.0
+    r2 = ab * ab / (aa * bb)
+    left = max(0.0, (r2 * (count - 1) - 1.0) / max(count - 2, 1))
+    beyond_chance = left / r2 if r2 > 0.0 else 0.0
+    return ab / (count - 1) * math.sqrt(beyond_chance)
+
+
+def narrowed(expected: Array, names: Sequence[str], before: Beliefs, after: Beliefs) -> float:
+    """The spread of what lasting beliefs make of a trap's water, after an update against before.
+
+    Their part in the logarithm of a content is linear, by the members' own regression. A round's
+    own error is drawn anew for the next, and the cup's is none of the water's: both are left out.
+    """
+    was, now = np.zeros_like(expected), np.zeros_like(expected)
+    for name in names:
+        variance = float(before[name].var(ddof=1))
+        if name == believed.CUP or name.startswith("round of ") or variance <= 0.0:
+            continue
+        slope = _covariance(before[name], expected) / variance
+        was += slope * (before[name] - before[name].mean())
+        now += slope * (after[name] - after[name].mean())
+    spread = float(was.std(ddof=1))
+    return float(now.std(ddof=1)) / spread if spread > 0.0 else 1.0
 
 
 def local_names(plan: Plan, station: int) -> list[str]:
@@ -224,6 +247,6 @@ def _as_read(shown_kg: Array, cup: CupError) -> Array:
     return floored
 
 
-def with_widened(learned: Learned, factor: float) -> Learned:
-    """The same, saying that spreads were widened first."""
-    return replace(learned, widened=factor > 1.0)
+def with_outcome(learned: Learned, factor: float, ratio: float) -> Learned:
+    """The same, saying whether spreads were widened first, and how much narrower they are now."""
+    return replace(learned, widened=factor > 1.0, narrowed=ratio)

@@ -324,7 +324,9 @@ class Model:
         if flagged:
             return state, record, seen
         learned, factor = self.learn(state, trap, seen, cup, widen)
-        return learned, learning.with_widened(record, factor), seen
+        local = learning.local_names(self.plan, station)
+        ratio = learning.narrowed(seen.expected, local, state.beliefs, learned.beliefs)
+        return learned, learning.with_outcome(record, factor, ratio), seen
 
     def learn(
         self, state: State, trap: str, seen: Suspect, cup: CupError, widen: bool
