@@ -16,16 +16,17 @@ from typing import Any
 import numpy as np
 from sqlalchemy import Connection, func, insert, select
 
-from daemon.clock import HOUR_US, SECOND_US, format_rfc3339
+from daemon.clock import DAY_US, HOUR_US, SECOND_US, format_rfc3339
 from daemon.errors import StoreError
 from daemon.store import metas, sealed_rows
 from daemon.store.columns import Column, unpack_column
 from daemon.store.database import Database
+from daemon.store.layout_rows import layout_for, read_layouts
 from daemon.store.packing import Layout, pack, unpack
 from daemon.store.rollups import Part, overlapping, parts_of, steps_of
 from daemon.store.sealed_rows import Run
 from daemon.store.sealing import open_column, open_times, unseal
-from daemon.store.tables import layout_channels, layouts, ticks
+from daemon.store.tables import ticks
 from daemon.views import SeriesOfReadings, StepsOfReadings
 from sensors.reading import Channel, Reading
 
@@ -44,7 +45,7 @@ class TickReader:
         self._database = database
         self._holds_us = holds_us
         with database.read() as connection:
-            self._layouts = _layouts(connection)
+            self._layouts = read_layouts(connection)
 
     @property
     def _reach_us(self) -> int:
@@ -99,39 +100,42 @@ class TickReader:
         if step_us % HOUR_US == 0 and from_us % HOUR_US == 0:
             parts = self._hours(channel, from_us, end_us)
         else:
-            parts = list(
-                parts_of(
-                    self._between(channel, from_us - HOUR_US, end_us),
-                    self._holds_us,
-                    step_us,
-                    from_us,
-                )
-            )
-        if not any(part.start_us < from_us for part in parts):
-            with self._database.read() as connection:
-                before = sealed_rows.last_part(connection, channel, from_us)
-            parts += [] if before is None or before.ends_us >= from_us else [before]
-        until_us = self.last() or 0
-        return steps_of(channel, parts, starts_us, step_us, self._holds_us, until_us)
+            column = self._between(channel, from_us, end_us)
+            parts = list(parts_of(column, self._holds_us, step_us, from_us))
+        parts += self._before(channel, from_us)
+        return steps_of(channel, parts, starts_us, step_us, self._holds_us, self.last() or 0)
 
     def _hours(self, channel: str, from_us: int, to_us: int) -> list[Part]:
-        """The parts of a channel's hours from one to another, and what is known of one before."""
+        """The parts of a channel's hours from one to another."""
         with self._database.read() as connection:
             sealed_us = sealed_rows.last_tick(connection)
             found = sealed_rows.parts(connection, channel, from_us, to_us)
-        reach_us = self._reach_us
-        after_us = from_us - HOUR_US - reach_us - 1
-        if sealed_us is not None:
-            after_us = max(after_us, sealed_us)
-        tail = self._column(channel, after_us, to_us + reach_us)
-        found += [
-            part
-            for part in parts_of(tail, self._holds_us)
-            if from_us - HOUR_US <= part.start_us < to_us
-        ]
+        tail = parts_of(self._unsealed(channel, sealed_us, from_us, to_us), self._holds_us)
+        found += [part for part in tail if from_us <= part.start_us < to_us]
         found.sort(key=lambda part: part.start_us)
         hours = [list(group) for _, group in groupby(found, key=lambda part: part.start_us)]
         return [part for hour in hours for part in self._in_order(channel, hour)]
+
+    def _before(self, channel: str, from_us: int) -> list[Part]:
+        """The last part of a channel before a time, if any: its value may hold on."""
+        hour_us = from_us // HOUR_US * HOUR_US
+        begun = list(parts_of(self._between(channel, hour_us, from_us), self._holds_us))
+        if begun:
+            return begun
+        with self._database.read() as connection:
+            sealed_us = sealed_rows.last_tick(connection)
+            sealed = sealed_rows.last_part(connection, channel, hour_us)
+        column = self._unsealed(channel, sealed_us, hour_us - DAY_US, hour_us)
+        column = column.taken(np.flatnonzero(column.times_us < hour_us))
+        found = [*([] if sealed is None else [sealed]), *parts_of(column, self._holds_us)]
+        return [max(found, key=lambda part: part.ends_us)] if found else []
+
+    def _unsealed(self, channel: str, sealed_us: int | None, from_us: int, to_us: int) -> Column:
+        """A channel's readings from about a time to another in ticks after `sealed_us`."""
+        after_us = from_us - self._reach_us - 1
+        if sealed_us is not None:
+            after_us = max(after_us, sealed_us)
+        return self._column(channel, after_us, to_us + self._reach_us)
 
     def _in_order(self, channel: str, parts: list[Part]) -> list[Part]:
         """An hour's parts, reckoned again from its readings where they lie in one another."""
@@ -147,6 +151,8 @@ class TickReader:
 
     def _between(self, channel: str, from_us: int, to_us: int) -> Column:
         """A channel's readings by their own times, in order."""
+        if from_us >= to_us:
+            return Column.joined(())
         reach_us = self._reach_us
         column = self._column(channel, from_us - reach_us - 1, to_us + reach_us)
         inside = (column.times_us >= from_us) & (column.times_us < to_us)
@@ -212,7 +218,7 @@ class TickReader:
     def _layout_of(self, version: int) -> Layout:
         if version not in self._layouts:  # another process opened the database with more channels
             with self._database.read() as connection:
-                self._layouts.update(_layouts(connection))
+                self._layouts.update(read_layouts(connection))
         return self._layouts[version]
 
 
@@ -224,7 +230,7 @@ class TickRows(TickReader):
     ) -> None:
         super().__init__(database, holds_us)
         with database.write() as connection:
-            self._layout = _layout_for(connection, self._layouts, channels)
+            self._layout = layout_for(connection, self._layouts, channels)
             self._reach_now_us = self._reach_kept_us = int(metas.get(connection, _REACH) or 0)
             self.last_us = _last(connection)
         self._all_sealed_us: int | None = None  # the last tick when nothing was left to seal
@@ -299,36 +305,3 @@ def _page(connection: Connection, after_us: int, until_us: int, size: int) -> Se
 def _last(connection: Connection) -> int | None:
     last: int | None = connection.execute(select(func.max(ticks.c.at_us))).scalar()
     return sealed_rows.last_tick(connection) if last is None else last
-
-
-def _layouts(connection: Connection) -> dict[int, Layout]:
-    """Every layout in the database, by its version."""
-    columns: dict[int, list[tuple[str, float]]] = {
-        version: [] for version in connection.execute(select(layouts.c.layout)).scalars()
-    }
-    rows = select(layout_channels).order_by(layout_channels.c.layout, layout_channels.c.position)
-    for version, _, channel, step in connection.execute(rows):
-        columns[version].append((channel, step))
-    return {version: Layout.of(version, pairs) for version, pairs in columns.items()}
-
-
-def _layout_for(
-    connection: Connection, known: dict[int, Layout], channels: Mapping[str, Channel]
-) -> Layout:
-    """The layout of these channels: the newest one when it is the same, else a new one."""
-    columns = tuple((channel.name, channel.step) for channel in channels.values())
-    for name, step in columns:
-        if not 0.0 < step < math.inf:
-            raise StoreError(f"channel {name!r} has the step {step:g}: it must be above 0")
-    newest = max(known, default=0)
-    if known and known[newest].columns == columns:
-        return known[newest]
-    layout = known[newest + 1] = Layout.of(newest + 1, columns)
-    connection.execute(insert(layouts).values(layout=layout.version))
-    for position, (name, step) in enumerate(columns):
-        connection.execute(
-            insert(layout_channels).values(
-                layout=layout.version, position=position, channel=name, step=step
-            )
-        )
-    return layout
