@@ -58,6 +58,11 @@ KINDS: dict[str, Kind] = {
         404, "Nothing at this address", "See /api/v1/openapi.json for what there is."
     ),
     "unknown-trap": Kind(404, "No trap of that name", "See /api/v1/traps for the names."),
+    "unknown-week": Kind(
+        404,
+        "No such week",
+        "Write an ISO week that has begun, like 2026-W49: it goes from Monday to Sunday.",
+    ),
     "unknown-outlet": Kind(404, "No outlet of that name", "See /api/v1/outlets for the names."),
     "unknown-alarm": Kind(404, "No alarm of that name", "See /api/v1/alarms?all=true."),
     "unknown-sensor": Kind(

@@ -56,6 +56,10 @@ from daemon.views import (
     StepsOfReadings,
     TrapView,
 )
+from daemon.weekly.compute import week_log
+from daemon.weekly.records import WeekLog
+from daemon.weekly.rows import read_rows
+from daemon.weekly.weeks import Week
 from sensors.quality import Verdict
 from sensors.reading import Reading
 from sensors.sampling import HungBus
@@ -586,6 +590,10 @@ class Shell:
         self, channel: str, from_us: int, to_us: int, step_us: int
     ) -> StepsOfReadings:
         return self._store.steps(channel, from_us, to_us, step_us)
+
+    def week(self, week: Week) -> WeekLog:
+        timezone = self._site.timezone
+        return week_log(self._site, read_rows(self._store, week, timezone, self._clock.now_us()))
 
     def health(self) -> Health:
         now_us = self._clock.now_us()

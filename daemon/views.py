@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
-from typing import Literal, Protocol
+from typing import TYPE_CHECKING, Literal, Protocol
 
 import numpy as np
 import numpy.typing as npt
@@ -20,6 +20,10 @@ from daemon.keys import KeyRing
 from daemon.moisture.forecast import Due
 from daemon.reminders import Reminder
 from daemon.site.types import Site
+
+if TYPE_CHECKING:  # they are made of these views
+    from daemon.weekly.records import WeekLog
+    from daemon.weekly.weeks import Week
 
 Because = Literal["volume", "calendar"]
 Verdict = Literal["wait", "care", "dry enough", "unknown"]
@@ -332,6 +336,10 @@ class Running(Protocol):
 
     def readings(self, channel: str, from_us: int, to_us: int) -> SeriesOfReadings:
         """The readings of a channel from a time on, up to but not including another."""
+        ...
+
+    def week(self, week: Week) -> WeekLog:
+        """The moisture log of a week, as far as it has gone. Costs some 10 ms."""
         ...
 
     def reading_steps(

@@ -73,7 +73,9 @@ _PLAIN = ParagraphStyle("plain", **_TEXT)
 _SMALL = ParagraphStyle("small", fontName=BODY, fontSize=8.0, leading=10.5)
 _CELL = ParagraphStyle("cell", fontName=BODY, fontSize=8.5, leading=10.5)
 _HEAD = ParagraphStyle("head", fontName=BOLD, fontSize=8.5, leading=10.5)
-_CAPTION = ParagraphStyle("caption", fontName=BOLD, fontSize=8.5, leading=11.0, spaceBefore=5.0)
+_CAPTION = ParagraphStyle(
+    "caption", fontName=BOLD, fontSize=8.5, leading=11.0, spaceBefore=5.0, keepWithNext=1
+)
 _LEAD = ParagraphStyle("lead", fontName=BOLD, fontSize=11.0, leading=15.0, spaceAfter=4.0)
 _TITLE = ParagraphStyle("title", fontName=BOLD, fontSize=17.0, leading=21.0)
 _SECTION = ParagraphStyle(

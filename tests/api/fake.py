@@ -45,9 +45,14 @@ from daemon.views import (
     StepsOfReadings,
     TrapView,
 )
+from daemon.weekly.compute import week_log
+from daemon.weekly.records import WeekLog
+from daemon.weekly.rows import read_rows
+from daemon.weekly.weeks import Week
 from sensors.reading import Channel
 from sensors.registry import SensorConfig
 from tests.api.outlet_views import gun_view
+from tests.daemon.week_rows import HeldRows
 
 NOW_US = parse_rfc3339("2026-12-01T09:00:00Z")
 LOG_BEGINS_US = NOW_US - 30 * 24 * HOUR_US
@@ -307,6 +312,7 @@ class FakeRunning:
     recorded: dict[str, SeriesOfReadings] = field(default_factory=_no_readings)
     journal: list[Entry] = field(default_factory=list)
     said: str = ""  # what every drain is told to have taught
+    log_rows: HeldRows = field(default_factory=HeldRows)
     kept_keys: MemoryKeys = field(default_factory=MemoryKeys)
     _lock: threading.Lock = field(default_factory=threading.Lock)
 
@@ -410,6 +416,10 @@ class FakeRunning:
             and entry.body.trap == trap
             and from_us <= entry.at_us < to_us
         ]
+
+    def week(self, week: Week) -> WeekLog:
+        rows = read_rows(self.log_rows, week, self.site.timezone, self.clock.now_us())
+        return week_log(self.site, rows)
 
     def readings(self, channel: str, from_us: int, to_us: int) -> SeriesOfReadings:
         series = self.recorded.get(channel)
