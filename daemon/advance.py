@@ -16,17 +16,37 @@ from typing import Literal
 import numpy as np
 
 from daemon.alarm_rules import AlarmRules
-from daemon.alarms import Alarm, AlarmRecord, Transition, acknowledge, shown
+from daemon.alarms import (
+    Alarm,
+    AlarmRecord,
+    Transition,
+    acknowledge,
+    longest_shelved_us,
+    shelve,
+    shown,
+    unshelve,
+)
 from daemon.clock import HOUR_US
 from daemon.drain_watch import DrainWatching
 from daemon.due import NO_DATE, calendar_due_us
 from daemon.errors import BalanceError
-from daemon.expected import expected_words
+from daemon.expected import expected_words, shelved_words
 from daemon.fitting_entries import FittingEntries
 from daemon.following import Following
 from daemon.hour_figures import NOTHING, DrainCheck, Noted, joined
 from daemon.hourly import Hourly, noted_ahead
-from daemon.journal import Acknowledge, Blotter, Confirm, Drain, Entry, Gauge, SaltCheck, Service
+from daemon.journal import (
+    Acknowledge,
+    Blotter,
+    Confirm,
+    Drain,
+    Entry,
+    Gauge,
+    SaltCheck,
+    Service,
+    Shelve,
+    Unshelve,
+)
 from daemon.judging import Judging
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.ensemble import Array, percentiles
@@ -344,6 +364,10 @@ class Core:
                 self._drain(tick, entry, drain)
             case Acknowledge(alarm=alarm, by=by):
                 self._acknowledge(tick, alarm, by)
+            case Shelve() as wanted:
+                self._shelve(tick, entry, wanted)
+            case Unshelve(alarm=alarm, by=by):
+                self._unshelve(tick, alarm, by)
             case Confirm() as confirm:
                 if confirm.trap in self.trap_names:
                     tick.state = self.taking.confirm(tick.state, confirm)
@@ -379,7 +403,8 @@ class Core:
         if drain.outcome == "partly":
             self._watch(tick)
             return
-        # whoever opens the drain has seen that it was due
+        # whoever opens the drain has seen that it was due, and need put it off no longer
+        self._unshelve(tick, f"{drain.trap}-drain-due", drain.by)
         self._acknowledge(tick, f"{drain.trap}-drain-due", drain.by)
         self._watch(tick, drained=drain.trap)
 
@@ -389,6 +414,30 @@ class Core:
         record, transition = acknowledge(
             self.definitions[alarm], tick.state.alarms[alarm], tick.state.time_us, by
         )
+        self._changed(tick, alarm, record, transition)
+
+    def _shelve(self, tick: _Tick, entry: Entry, wanted: Shelve) -> None:
+        definition = self.definitions.get(wanted.alarm)
+        if definition is None:
+            return
+        longest_us = longest_shelved_us(definition)
+        until_us = entry.at_us + min(round(wanted.for_s * 1e6), longest_us)
+        text = shelved_words(self.site, until_us, entry.at_us, wanted.by)
+        record, transition = shelve(
+            definition, tick.state.alarms[wanted.alarm], entry.at_us, until_us, wanted.by, text
+        )
+        self._changed(tick, wanted.alarm, record, transition)
+
+    def _unshelve(self, tick: _Tick, alarm: str, by: str) -> None:
+        if alarm in self.definitions:
+            standing = tick.state.alarms[alarm]
+            self._changed(
+                tick, alarm, *unshelve(self.definitions[alarm], standing, tick.state.time_us, by)
+            )
+
+    def _changed(
+        self, tick: _Tick, alarm: str, record: AlarmRecord, transition: Transition | None
+    ) -> None:
         tick.state = replace(tick.state, alarms={**tick.state.alarms, alarm: record})
         tick.transitions += [transition] if transition is not None else []
 

@@ -5,17 +5,21 @@ from __future__ import annotations
 from dataclasses import dataclass, replace
 from typing import Literal
 
-from daemon.clock import format_rfc3339
+from daemon.clock import DAY_US, HOUR_US, MINUTE_US, format_rfc3339
 
 AlarmState = Literal[
     "normal",
     "unacknowledged",
     "acknowledged",
     "returned unacknowledged",
+    "shelved",
     "suppressed by design",
     "out of service",
 ]
 Priority = Literal["low", "medium", "high"]
+# How long an alarm may be put off (common practice, no source): no longer than till the next day's
+# work, and what floods or freezes no longer than it takes to fetch a wrench.
+SHELVED_LEAST_US, SHELVED_US, SHELVED_URGENT_US = MINUTE_US, DAY_US, HOUR_US
 
 
 @dataclass(frozen=True, slots=True)
@@ -45,6 +49,7 @@ class Alarm:
     priority: Priority
     since_us: int  # when it took this state
     text: str
+    shelved_until_us: int | None = None  # None: it is not shelved
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,10 +72,18 @@ class AlarmRecord:
     since_us: int = 0
     holding_since_us: int = -1  # since when the opposite condition has held, -1: it does not
     text: str = ""
+    until_us: int = -1  # while it is shelved: for how long
+    beneath: AlarmState = "normal"  # while it is shelved: the state that it would be in
+
+    @property
+    def standing(self) -> AlarmState:
+        """The state, or what it would be if nobody had put the alarm off."""
+        return self.beneath if self.state == "shelved" else self.state
 
     @property
     def raised(self) -> bool:
-        return self.state in ("unacknowledged", "acknowledged")
+        """Whether what it watches is so, shelved or not."""
+        return self.standing in ("unacknowledged", "acknowledged")
 
 
 # What a condition says: it is so, it is not so, or it lies in the deadband and changes nothing; or
@@ -88,15 +101,25 @@ def watch(
     """Advance one alarm to `now_us`. `text` says what is so and what to do.
 
     A condition must hold without a break for the delay; in the deadband it does not hold. An
-    alarm that is suppressed or out of service changes at once, and begins anew after that.
+    alarm that is suppressed or out of service changes at once, and begins anew after that. One that
+    is shelved goes on beneath, silently.
     """
+    if record.state == "shelved":
+        return _watch_shelved(definition, record, now_us, condition, text)
     quiet = _QUIET.get(condition)
+    if quiet is not None and record.state != quiet:
+        return change(definition, record, now_us, quiet, text, "")
     if quiet is not None:
-        if record.state == quiet:
-            return record, None
-        return _change(definition, record, now_us, quiet, text, "")
+        return record, None
     if record.state in _QUIET.values():
-        return _change(definition, record, now_us, "normal", "It is watched again.", "")
+        return change(definition, record, now_us, "normal", "It is watched again.", "")
+    return _watch_open(definition, record, now_us, condition, text)
+
+
+def _watch_open(
+    definition: AlarmDefinition, record: AlarmRecord, now_us: int, condition: Condition, text: str
+) -> tuple[AlarmRecord, Transition | None]:
+    """As `watch`, of an alarm that nothing keeps quiet."""
     wanted = "not so" if record.raised else "so"
     if condition != wanted:
         keeps = text if record.raised and condition == "so" else record.text
@@ -110,7 +133,52 @@ def watch(
         after = "unacknowledged"
     else:
         after = "normal" if record.state == "acknowledged" else "returned unacknowledged"
-    return _change(definition, record, now_us, after, text, "")
+    return change(definition, record, now_us, after, text, "")
+
+
+def _watch_shelved(
+    definition: AlarmDefinition, record: AlarmRecord, now_us: int, condition: Condition, text: str
+) -> tuple[AlarmRecord, Transition | None]:
+    """What it watches goes on being watched; when the time is over that is told."""
+    seen, _ = watch(definition, replace(record, state=record.beneath), now_us, condition, text)
+    record = replace(
+        record, beneath=seen.state, holding_since_us=seen.holding_since_us, text=seen.text
+    )
+    return (record, None) if now_us < record.until_us else unshelve(definition, record, now_us, "")
+
+
+def shelve(
+    definition: AlarmDefinition, record: AlarmRecord, now_us: int, until_us: int, by: str, text: str
+) -> tuple[AlarmRecord, Transition | None]:
+    """Somebody puts the alarm off, or for longer; one that is suppressed or out of service stays
+    so. `text` says until when."""
+    if record.state in _QUIET.values():
+        return record, None
+    said = f"{text} {record.text}".strip()
+    _, transition = change(definition, record, now_us, "shelved", said, by)
+    shelved = AlarmRecord(
+        "shelved", now_us, record.holding_since_us, record.text, until_us, record.standing
+    )
+    return shelved, transition
+
+
+def unshelve(
+    definition: AlarmDefinition, record: AlarmRecord, now_us: int, by: str
+) -> tuple[AlarmRecord, Transition | None]:
+    """The time is over, or somebody ends it: what is so is told anew, also if it had been
+    acknowledged; what came and went meanwhile is over."""
+    if record.state != "shelved":
+        return record, None
+    quiet = record.beneath in _QUIET.values()
+    after: AlarmState = record.beneath if quiet else "normal"
+    after = "unacknowledged" if record.raised else after
+    text = record.text if record.raised else "No longer put off."
+    return change(definition, record, now_us, after, text, by)
+
+
+def longest_shelved_us(definition: AlarmDefinition) -> int:
+    """For how long an alarm may be put off at most."""
+    return SHELVED_URGENT_US if definition.priority == "high" else SHELVED_US
 
 
 def acknowledge(
@@ -124,10 +192,10 @@ def acknowledge(
         after = "normal"
     else:
         return record, None
-    return _change(definition, record, now_us, after, record.text, by)
+    return change(definition, record, now_us, after, record.text, by)
 
 
-def _change(
+def change(
     definition: AlarmDefinition,
     record: AlarmRecord,
     now_us: int,
@@ -135,6 +203,7 @@ def _change(
     text: str,
     by: str,
 ) -> tuple[AlarmRecord, Transition]:
+    """Take another state, and tell of it."""
     transition = Transition(
         id=f"{definition.id}/{format_rfc3339(now_us)}/{after.replace(' ', '-')}",
         at_us=now_us,
@@ -177,4 +246,5 @@ def shown(definition: AlarmDefinition, record: AlarmRecord) -> Alarm:
         priority=definition.priority,
         since_us=record.since_us,
         text=record.text,
+        shelved_until_us=record.until_us if record.state == "shelved" else None,
     )

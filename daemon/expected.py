@@ -65,3 +65,10 @@ def _local(site: Site, at_us: int) -> datetime:
 @lru_cache(maxsize=8)
 def _zone(name: str) -> ZoneInfo:
     return ZoneInfo(name)
+
+
+def shelved_words(site: Site, until_us: int, now_us: int, by: str) -> str:
+    """ "Put off until 14:37 by AM.", with the day where it is another one."""
+    until, now = _local(site, until_us), _local(site, now_us)
+    day = "" if until.date() == now.date() else f"{until:%a} "
+    return f"Put off until {day}{until:%H:%M}{f' by {by}' if by else ''}."

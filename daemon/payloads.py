@@ -73,6 +73,9 @@ def alarm_payload(alarm: Alarm) -> dict[str, Any]:
         "state": alarm.state,
         "priority": alarm.priority,
         "since": format_rfc3339(alarm.since_us),
+        "shelved_until": None
+        if alarm.shelved_until_us is None
+        else format_rfc3339(alarm.shelved_until_us),
         "text": alarm.text,
     }
 

@@ -14,10 +14,13 @@ from daemon.alarms import (
     Transition,
     acknowledge,
     correction,
+    longest_shelved_us,
+    shelve,
     shown,
+    unshelve,
     watch,
 )
-from daemon.clock import MINUTE_US, SECOND_US, parse_rfc3339
+from daemon.clock import DAY_US, HOUR_US, MINUTE_US, SECOND_US, parse_rfc3339
 
 BEGUN_US = parse_rfc3339("2026-03-02T07:00:00Z")
 SLOW = AlarmDefinition("tank-drain-due", "drain-due", "tank", "medium", 2 * MINUTE_US, MINUTE_US)
@@ -43,6 +46,15 @@ class Life:
 
     def acknowledge(self, by: str = "AM") -> AlarmState:
         self._take(acknowledge(self.definition, self.record, self.now_us, by))
+        return self.record.state
+
+    def shelve(self, minutes: int, by: str = "AM") -> AlarmState:
+        until_us = self.now_us + minutes * MINUTE_US
+        self._take(shelve(self.definition, self.record, self.now_us, until_us, by, "Put off."))
+        return self.record.state
+
+    def unshelve(self, by: str = "AM") -> AlarmState:
+        self._take(unshelve(self.definition, self.record, self.now_us, by))
         return self.record.state
 
     def _take(self, found: tuple[AlarmRecord, Transition | None]) -> None:
@@ -211,3 +223,89 @@ def test_whatever_happens_it_is_raised_only_after_its_delay_and_never_skips_a_st
     assert {(each.before, each.after) for each in life.told} <= allowed
     for earlier, later in zip(life.told, life.told[1:], strict=False):
         assert earlier.after == later.before
+
+
+# ---- shelved: silent for a while, then what it is ----
+
+
+@pytest.mark.parametrize("seen", [True, False])
+def test_a_shelved_alarm_is_silent_and_unacknowledged_again_when_its_time_is_over(
+    seen: bool,
+) -> None:
+    life = Life(QUICK)
+    life.see("so")
+    if seen:
+        life.acknowledge()
+    assert life.shelve(5) == "shelved"
+    assert shown(QUICK, life.record).shelved_until_us == life.now_us + 5 * MINUTE_US
+    told = len(life.told)
+    assert life.see("so", 30) == "shelved"  # 0 to 290 s
+    assert len(life.told) == told
+    assert life.see("so") == "unacknowledged"  # 300 s
+    assert life.told[-1].text == "it is so"
+    assert shown(QUICK, life.record).shelved_until_us is None
+
+
+def test_what_came_and_went_meanwhile_is_over() -> None:
+    life = Life(QUICK)
+    life.see("so")
+    life.shelve(5)
+    life.see("not so", 3)
+    life.see("so", 3)
+    assert life.see("not so", 25) == "normal"
+    assert [each.after for each in life.told] == ["unacknowledged", "shelved", "normal"]
+
+
+def test_what_begins_while_a_normal_alarm_is_shelved_is_told_at_the_end() -> None:
+    life = Life(SLOW)
+    assert life.shelve(5) == "shelved"
+    assert not life.record.raised
+    life.see("so", 13)  # its delay of two minutes is over
+    assert life.record.raised
+    assert life.see("so", 18) == "unacknowledged"
+
+
+def test_a_delay_that_began_before_goes_on_while_it_is_shelved() -> None:
+    life = Life(SLOW)
+    life.see("so", 6)  # of 13
+    life.shelve(5)
+    life.see("so", 6)
+    assert not life.record.raised
+    life.see("so")
+    assert life.record.raised
+
+
+def test_it_can_be_ended_early_and_only_once() -> None:
+    life = Life(QUICK)
+    life.see("so")
+    life.shelve(60)
+    assert life.acknowledge() == "shelved"  # there is nothing to be seen
+    assert life.unshelve() == "unacknowledged"
+    assert life.told[-1].by == "AM"
+    assert life.unshelve() == "unacknowledged"
+    assert len(life.told) == 3
+
+
+def test_shelving_again_counts_from_then() -> None:
+    life = Life(QUICK)
+    life.see("so")
+    life.shelve(5)
+    life.see("so", 20)
+    life.shelve(5)
+    assert life.see("so", 30) == "shelved"
+    assert life.see("so") == "unacknowledged"
+
+
+def test_what_is_suppressed_or_out_of_service_cannot_be_shelved_and_wins_beneath() -> None:
+    life = Life(QUICK)
+    life.see("by design")
+    assert life.shelve(5) == "suppressed by design"
+    life.see("so")
+    life.shelve(5)
+    life.see("by design", 30)
+    assert life.see("by design") == "suppressed by design"
+
+
+def test_urgent_alarms_are_put_off_for_an_hour_at_most_others_for_a_day() -> None:
+    assert longest_shelved_us(QUICK) == HOUR_US
+    assert longest_shelved_us(SLOW) == DAY_US

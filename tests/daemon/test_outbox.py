@@ -110,6 +110,7 @@ def test_an_alarm_is_retained_under_its_id() -> None:
         "state": "unacknowledged",
         "priority": "medium",
         "since": "2026-12-01T09:00:00Z",
+        "shelved_until": None,
         "text": "text",
     }
 
