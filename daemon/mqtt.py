@@ -16,13 +16,14 @@ import threading
 from collections.abc import Callable, Iterable
 from contextlib import suppress
 from dataclasses import dataclass
+from hashlib import blake2b
 from typing import Literal
 
-from daemon.clock import Clock, SystemClock
+from daemon.clock import Clock, SystemClock, format_rfc3339
 from daemon.errors import BrokerError, DriplegError
-from daemon.journal import Body
+from daemon.journal import Body, Drain
 from daemon.mqtt_senders import OutboxSender, StateSender
-from daemon.mqtt_session import Session, tls_context
+from daemon.mqtt_session import Arrived, Session, tls_context
 from daemon.outbox import Message, Topics, encode, service_message
 from daemon.payloads import read_drain, refusal_payload
 from daemon.site.types import Site
@@ -35,6 +36,7 @@ log = logging.getLogger("dripleg.mqtt")
 Status = Literal["connected", "not connected"]
 Record = Callable[[Body, int | None, str], Recorded]  # the body, when (None: now), its key
 
+NOT_KEPT = 0  # the quality of service of which a broker keeps nothing for who is away
 _LOOK_EVERY_S = 1.0  # into the outbox, also when nobody calls `wake`
 
 
@@ -166,7 +168,7 @@ class MqttLink:
             self._tls,
             self._timing.keepalive_s,
             will=service_message(self._topics, "gone", connected_us, None),
-            take=lambda topic, payload, retained: self._take(session, topic, payload, retained),
+            take=lambda arrived: self._take(session, arrived),
         )
         try:
             session.open()
@@ -219,7 +221,7 @@ class MqttLink:
         for topic in self._inbox.topics() if self._inbox is not None else ():
             if session.listening and topic not in self._heard_on:
                 self._heard_on.add(topic)
-                session.subscribe(topic)
+                session.subscribe(topic, NOT_KEPT)  # a value from before is worth nothing now
         while session.refused_topics:
             topic = session.refused_topics.pop()
             log.warning("the broker does not let this user listen on %s", topic)
@@ -275,16 +277,18 @@ class MqttLink:
 
     # --- what arrives
 
-    def _take(self, session: Session, topic: str, payload: bytes, retained: bool) -> None:
+    def _take(self, session: Session, arrived: Arrived) -> None:
         """What arrived: something that a sensor waits for, or a drain."""
-        if topic in self._heard_on and self._inbox is not None:
-            self._inbox.post(topic, payload, self._clock.now_us(), retained)
-        if topic == self._topics.drains:
-            self._take_drain(session, payload, retained)
+        if arrived.topic in self._heard_on and self._inbox is not None:
+            now_us = self._clock.now_us()
+            self._inbox.post(arrived.topic, arrived.payload, now_us, arrived.retained)
+        if arrived.topic == self._topics.drains:
+            self._take_drain(session, arrived)
 
-    def _take_drain(self, session: Session, payload: bytes, retained: bool) -> None:
+    def _take_drain(self, session: Session, arrived: Arrived) -> None:
         """Record a drain that arrived, or answer why not."""
-        if retained:
+        payload = arrived.payload
+        if arrived.retained:
             log.warning(
                 "a retained message on %s was ignored: it may be old, and a drain reported once "
                 "must not be taken again at each start; send drains without the retain flag",
@@ -293,7 +297,10 @@ class MqttLink:
             return
         try:
             drain, at_us, key = read_drain(payload)
-            recorded = self._record(drain, at_us, key)
+            if key:
+                recorded = self._record(drain, at_us, key)
+            else:
+                recorded = self._record_delivery(drain, at_us, arrived)
         except DriplegError as error:
             self._refuse(session, str(error), payload)
         except Exception:
@@ -302,6 +309,24 @@ class MqttLink:
         else:
             again = "was known already" if recorded.repeated else "recorded"
             log.info("drain of %s over MQTT %s (entry %d)", drain.trap, again, recorded.entry.seq)
+
+    def _record_delivery(self, drain: Drain, at_us: int | None, arrived: Arrived) -> Recorded:
+        """Record a drain that brings no key: the delivery itself gives it one.
+
+        What is delivered again after a kill is known by its number, which the broker uses anew
+        only after 65 535 others, or after it has lost its memory; only a message that is said to
+        come again can then be a repetition.
+        """
+        if not arrived.number:  # delivered at most once
+            return self._record(drain, at_us, "")
+        digest = blake2b(arrived.payload, digest_size=6).hexdigest()
+        day = format_rfc3339(self._clock.now_us())[:10]
+        key = f"mqtt-{day}-{arrived.number}-{digest}"
+        recorded, further = self._record(drain, at_us, key), 1
+        while recorded.repeated and not arrived.again:
+            further += 1
+            recorded = self._record(drain, at_us, f"{key}-{further}")
+        return recorded
 
     def _refuse(self, session: Session, reason: str, payload: bytes) -> None:
         log.warning("a drain over MQTT was refused: %s", reason)

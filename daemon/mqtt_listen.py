@@ -13,7 +13,7 @@ from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 
 from daemon.clock import Clock
-from daemon.mqtt_session import Session, tls_context
+from daemon.mqtt_session import Arrived, Session, tls_context
 from daemon.site.types import Mqtt, Site
 from sensors.inbox import Inbox
 
@@ -51,7 +51,7 @@ class _Listener:
         self._news = threading.Condition()
         self._stop = threading.Event()
         self._session = Session(
-            mqtt, name.replace("/", "-"), tls_context(mqtt), KEEPALIVE_S, None, self._take
+            mqtt, name.replace("/", "-"), tls_context(mqtt), KEEPALIVE_S, None, self._take, False
         )
         self._where = f"{mqtt.host}:{mqtt.port}"
         self._thread = threading.Thread(target=self._run, name="mqtt check", daemon=True)
@@ -94,9 +94,10 @@ class _Listener:
                 self._waiting.clear()
                 self._news.notify_all()
 
-    def _take(self, topic: str, payload: bytes, retained: bool) -> None:
-        self._inbox.post(topic, payload, self._clock.now_us(), retained)
-        if not retained:
+    def _take(self, arrived: Arrived) -> None:
+        now_us = self._clock.now_us()
+        self._inbox.post(arrived.topic, arrived.payload, now_us, arrived.retained)
+        if not arrived.retained:
             with self._news:
-                self._waiting.discard(topic)
+                self._waiting.discard(arrived.topic)
                 self._news.notify_all()

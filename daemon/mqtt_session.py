@@ -11,6 +11,7 @@ import selectors
 import socket
 import ssl
 from collections.abc import Callable
+from dataclasses import dataclass
 from typing import Any, Literal
 
 from paho.mqtt.client import Client, MQTTMessage
@@ -53,6 +54,17 @@ class _TidySocket(ssl.SSLSocket):
             raise
 
 
+@dataclass(frozen=True, slots=True)
+class Arrived:
+    """A message that somebody published. `number` is the broker's for this delivery."""
+
+    topic: str
+    payload: bytes
+    retained: bool
+    number: int  # 0 at quality of service 0
+    again: bool  # the broker does not know whether an earlier delivery came through
+
+
 class Session:
     """A connection. `accepted` once the broker let us in; `ended` says why it is over, or ""."""
 
@@ -63,9 +75,14 @@ class Session:
         tls: ssl.SSLContext | None,
         keepalive_s: int,
         will: Message | None,
-        take: Callable[[str, bytes, bool], None],
+        take: Callable[[Arrived], None],
+        kept: bool = True,
     ) -> None:
-        """`take(topic, payload, retained)` is given what arrives; it must not raise."""
+        """`take` is given what arrives; it must not raise.
+
+        While a `kept` session's owner is away, the broker keeps for it what is published at least
+        once on the topics that it had subscribed to.
+        """
         self.accepted = False
         self.ended = ""
         self.listening: Literal["", "granted", "refused"] = ""  # what the first `subscribe` got
@@ -78,7 +95,7 @@ class Session:
         self._client = client = Client(
             CallbackAPIVersion.VERSION2,
             client_id=client_id,
-            clean_session=True,
+            clean_session=not kept,
             protocol=MQTTProtocolVersion.MQTTv311,
             reconnect_on_failure=False,
         )
@@ -103,9 +120,12 @@ class Session:
         except (BrokerError, OSError, ValueError) as error:
             self.ended = _words(error)
 
-    def subscribe(self, topic: str) -> None:
-        """Ask for what is published under this topic, at least once."""
-        _, number = self._client.subscribe(topic, AT_LEAST_ONCE)
+    def subscribe(self, topic: str, quality: int = AT_LEAST_ONCE) -> None:
+        """Ask for what is published under this topic.
+
+        At least once, the broker also keeps it while we are away; with quality 0 it does not.
+        """
+        _, number = self._client.subscribe(topic, quality)
         if number is not None:
             self._asked[number] = topic
 
@@ -180,7 +200,9 @@ class Session:
             self.refused_topics.append(topic)
 
     def _on_message(self, client: Client, data: Any, message: MQTTMessage) -> None:
-        self._take(message.topic, bytes(message.payload), message.retain)
+        self._take(
+            Arrived(message.topic, bytes(message.payload), message.retain, message.mid, message.dup)
+        )
 
 
 def _words(error: Exception) -> str:

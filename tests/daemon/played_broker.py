@@ -10,7 +10,7 @@ from typing import Self
 from tests.daemon.broker import TIMEOUT_S
 
 # MQTT 3.1.1, section 2.2.1: types of control packets
-CONNECT, PUBLISH, SUBSCRIBE, PINGREQ = 1, 3, 8, 12
+CONNECT, PUBLISH, PUBACK, SUBSCRIBE, PINGREQ = 1, 3, 4, 8, 12
 
 
 @dataclass(frozen=True)
@@ -90,6 +90,19 @@ class PlayedBroker:
         head = len(topic).to_bytes(2, "big") + topic.encode()
         packets = [bytes([0x30, len(head + payload)]) + head + payload for payload in payloads]
         self._connection.sendall(b"".join(packets))
+
+    def say_once(self, topic: str, payload: bytes, number: int, again: bool = False) -> None:
+        """Send a short message, QoS 1, with that packet identifier and perhaps the DUP flag."""
+        assert self._connection is not None
+        head = len(topic).to_bytes(2, "big") + topic.encode() + number.to_bytes(2, "big")
+        first = 0x32 | (0x08 if again else 0)
+        self._connection.sendall(bytes([first, len(head + payload)]) + head + payload)
+
+    def acknowledgement(self) -> int:
+        """Of the next message that the client acknowledges: its packet identifier."""
+        while (packet := self.packet()).type != PUBACK:
+            pass
+        return int.from_bytes(packet.content[:2], "big")
 
     def answer_ping(self) -> None:
         """The next packet must be a PINGREQ, which a client sends when it has nothing to say."""

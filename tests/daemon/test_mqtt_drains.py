@@ -16,6 +16,7 @@ from tests.daemon.linking import (
     Journal,
     linked,
 )
+from tests.daemon.played_broker import PlayedBroker
 
 
 def test_a_drain_is_taken_in(broker: Broker, store: Store, journal: Journal) -> None:
@@ -102,3 +103,40 @@ def test_a_retained_drain_is_ignored_with_a_warning(
             listener.wait_for_number(1)
     assert journal.entries == []
     assert any("a retained message" in record.message for record in caplog.records)
+
+
+def test_a_drain_reported_while_the_daemon_is_away_is_taken_in_later(
+    broker: Broker, store: Store, journal: Journal
+) -> None:
+    with linked(broker.port, store, journal) as link:
+        assert link.wait_for("connected", TIMEOUT_S)
+    with Listener(broker.port, REFUSED) as listener:
+        listener.say(DRAINS, b'{"trap": "tank", "volume_ml": 380}')
+        listener.say(DRAINS, b"-")
+        with linked(broker.port, store, journal):
+            listener.wait_for_number(1)
+    assert [entry.body for entry in journal.entries] == [Drain("tank", volume_kg=0.38)]
+
+
+def test_a_delivery_repeated_after_a_kill_counts_once(store: Store, journal: Journal) -> None:
+    """MQTT 3.1.1, 4.4: what was not acknowledged comes again with its number and the DUP flag."""
+    drained = b'{"trap": "tank"}'
+    with PlayedBroker() as broker, linked(broker.port, store, journal):
+        broker.accept()
+        broker.publish()
+        broker.answer_subscribe()
+        broker.say_once(DRAINS, drained, 7)
+        assert broker.acknowledgement() == 7
+        broker.drop()  # the acknowledgement was lost, as far as this broker knows
+        broker.accept()
+        broker.publish()
+        broker.answer_subscribe()
+        broker.say_once(DRAINS, drained, 7, again=True)
+        assert broker.acknowledgement() == 7
+        assert len(journal.entries) == 1
+        broker.say_once(DRAINS, drained, 8)  # somebody drained it a second time
+        assert broker.acknowledgement() == 8
+        broker.say_once(DRAINS, drained, 8)  # and a third, the broker having begun to count anew
+        assert broker.acknowledgement() == 8
+        assert len(journal.entries) == 3
+        broker.drop()
