@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from api.models import DrainIn
 from api.problems import Point, Problem
-from api.quantities import ML_PER_KG, VolumeUnit, kg_from_volume
+from api.quantities import VolumeUnit, kg_from_volume, volume_of
 from api.validation import moment_of, shown
 from daemon.accept import MOST_OF_CAPACITY
 from daemon.journal import Drain, Outcome
@@ -40,8 +40,9 @@ def _volume_kg(body: DrainIn, name: str, trap: Trap, points: list[Point]) -> flo
         remedy = "a volume is 0 or more; send what the cup read"
     elif kg > MOST_OF_CAPACITY * trap.capacity.value:
         remedy = (
-            f'more than twice what the trap "{name}" holds ({trap.capacity.value * ML_PER_KG:g} '
-            "ml); check the figure and its unit, or correct the trap's capacity in the site file"
+            f'more than twice what the trap "{name}" holds '
+            f"({volume_of(trap.capacity.value, unit):g} {unit}); check the figure and its unit, "
+            "or correct the trap's capacity in the site file"
         )
     if remedy:
         points.append(Point(f"body.{field}", f"{volume:g} {unit}", remedy))

@@ -68,6 +68,11 @@ def kg_from_volume(volume: float, unit: VolumeUnit) -> float:
     return to_si(volume, unit, "volume") * WATER_KG_PER_M3
 
 
+def volume_of(kg: float, unit: VolumeUnit) -> float:
+    """The inverse of `kg_from_volume`."""
+    return from_si(kg / WATER_KG_PER_M3, unit, "volume")
+
+
 def volume_words(kg: float, units: Units) -> str:
     """A mass of water as a volume for people: "410 ml", "1.2 L", "14 oz"."""
     return show_volume(kg / WATER_KG_PER_M3, units)

@@ -523,6 +523,7 @@ class Core:
             due_p95_us=foreseen.p95_us,
             expected=expected_words(self.site, station, foreseen, float(kg[2]), state.time_us),
             chance_stuck=self.drains.chance_stuck(state.drains, name, state.time_us),
+            questioned_kg=self.taking.questioned_kg(record),
         )
 
     def alarms(self, state: CoreState) -> list[Alarm]:

@@ -101,6 +101,7 @@ class OutletViews:
             holding=holding,
             blotter=result,
             blotter_us=result_us,
+            inputs_us=_oldest_us(state, outlet),
         )
 
     def marks(self, state: CoreState) -> tuple[OutletMark, ...]:
@@ -279,6 +280,18 @@ class OutletViews:
         if time_us < 0:
             return ""
         return f"{to_datetime(time_us).astimezone(self._zone):%a %H:%M}"
+
+
+def _oldest_us(state: CoreState, outlet: Described) -> int | None:
+    """When the input that has been silent for longest was heard; contacts speak when they change.
+
+    None where there is no input, or one that has never spoken.
+    """
+    names = dict.fromkeys((*outlet.line_channels, *outlet.air_channels, outlet.surface_channel))
+    records = [state.channels[name] for name in names if name in state.channels]
+    times_us = [record.time_us for record in records if not record.only_edges]
+    oldest_us = min(times_us, default=-1)
+    return None if oldest_us < 0 else oldest_us
 
 
 def interval(values: Array) -> Interval:

@@ -41,7 +41,7 @@ from daemon.reminders import Reminder
 from daemon.site.types import Site
 from daemon.state import CoreState, Inputs
 from daemon.store.store import Store
-from daemon.taking import learned_words
+from daemon.taking import learned_words, look_words
 from daemon.ticks import first_at_or_after, ticks
 from daemon.unset_clock import PATIENCE_S, HeldSamples, is_set
 from daemon.views import (
@@ -99,6 +99,7 @@ class Shell:
         self._line_views = LineViews(site, self.core.model)
         self.late_after_us = LATE_AFTER_PERIODS * self.core.model.period_us
         self.link: MqttLink | None = None
+        self.signal_problem: Callable[[], str] = lambda: ""  # of the lamp or buzzer
         self.on_entry: Callable[[Entry], None] | None = None  # told of what was committed
         self._recovery = Recovery(self.core, store)
         self._lock = threading.RLock()
@@ -510,9 +511,9 @@ class Shell:
             recorded = self._store.add_entry(body, when_us, now_us, key)
             if not recorded.repeated:
                 self._pending.append(recorded.entry)
-                recorded = replace(
-                    recorded, said=self._preview(recorded.entry, max(now_us, when_us))
-                )
+                said = [self._preview(recorded.entry, max(now_us, when_us))]
+                said += [look_words(body)] if isinstance(body, Drain) else []
+                recorded = replace(recorded, said=" ".join(filter(None, said)))
         if not recorded.repeated and self.on_entry is not None:
             self.on_entry(recorded.entry)
         return recorded
@@ -613,6 +614,7 @@ class Shell:
             for bus in self._sampler.hung_buses()
         ]
         problems += [f"{c.channel}: {c.fault}" for c in channels if c.fault]
+        problems += [problem] if (problem := self.signal_problem()) else []
         problems += self._sensor_problems(state, {c.channel for c in channels if c.fault})
         return Health(
             ok=not problems,

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import replace
 
 from daemon.due import calendar_due_us, interval_words, volume_words
@@ -12,6 +13,11 @@ from daemon.moisture.model import Model, State
 from daemon.site.types import Site
 from daemon.state import CoreState, TrapRecord
 
+_LOOKED = {
+    "rusty": "Rusty water: have the vessel looked at inside, by whoever inspects it.",
+    "oily": "Oily water: look where the oil comes from, and at the coalescer's element.",
+    "milky": "Milky water is oil and water mixed: only a separator or a waste carrier parts them.",
+}
 TIGHTER = 0.95  # of the spread of what is to come: from here down a person may be told so
 
 
@@ -67,6 +73,12 @@ class Taking:
         record = replace(record, suspect=None)
         return replace(state, model=model, traps={**state.traps, confirm.trap: record})
 
+    def questioned_kg(self, record: TrapRecord) -> float | None:
+        """The measured volume that waits to be confirmed."""
+        if record.suspect is None:
+            return None
+        return max(math.exp(record.suspect.measured) - self.cup.k_kg, 0.0)
+
     # ---- parts ----
 
     def service(self, state: CoreState, service: Service) -> CoreState:
@@ -88,6 +100,11 @@ class Taking:
             own = believed.own_names(station)
             return [name for name in own if not name.startswith(("temperature", "pressure"))]
         return []
+
+
+def look_words(drain: Drain) -> str:
+    """What follows from how the water looked. Common practice, no source."""
+    return _LOOKED.get(drain.look, "")
 
 
 def learned_words(site: Site, learned: Learned) -> str:

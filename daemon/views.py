@@ -55,6 +55,8 @@ class TrapView:
     expected: str = ""  # the same in words
     # of a drain that empties itself: it is taken to work, and this is the chance that it is stuck
     chance_stuck: float | None = None
+    # a measured volume that was not believed and waits for somebody to say that it is right
+    questioned_kg: float | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -125,6 +127,8 @@ class OutletView:
     holding: Judgement | None  # whether a blasted surface may be left bare
     blotter: Blotted | None  # the last test's result
     blotter_us: int | None
+    # when the oldest of the inputs was heard last; None: there is none, or it has never spoken
+    inputs_us: int | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -130,7 +130,7 @@ REFUSED: list[tuple[dict[str, Any], str, str, str]] = [
         {"volume": 8, "unit": "gal"},
         "body.volume",
         "8 gal",
-        'more than twice what the trap "tank" holds (15000 ml); check the figure and its unit, '
+        'more than twice what the trap "tank" holds (3.96258 gal); check the figure and its unit, '
         "or correct the trap's capacity in the site file",
     ),
     (
