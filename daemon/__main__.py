@@ -57,6 +57,8 @@ def parser() -> argparse.ArgumentParser:
     replay.add_argument("--skip-bad", action="store_true", help="leave bad rows out and list them")
     replay.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="for the results")
 
+    _weekly_options(commands.add_parser("weekly", help="the moisture log of a week"))
+
     drained = commands.add_parser("drained", help="record a drain from a shell")
     drained.add_argument("site", type=Path, metavar="SITE", help="the site file")
     drained.add_argument("trap", metavar="TRAP", help="the trap's name")
@@ -80,6 +82,13 @@ def parser() -> argparse.ArgumentParser:
     key.add_argument("--svg", type=Path, metavar="FILE", help="the same as a drawing")
     key.add_argument("--store", type=Path, help="the database (beside the site file)")
     return top
+
+
+def _weekly_options(weekly: argparse.ArgumentParser) -> None:
+    weekly.add_argument("site", type=Path, metavar="SITE", help="the site file")
+    weekly.add_argument("week", nargs="?", metavar="WEEK", help="like 2026-W49 (the last full one)")
+    weekly.add_argument("--out", type=Path, metavar="FOLDER", help="write its PDF and CSV there")
+    weekly.add_argument("--store", type=Path, help="the database (beside the site file)")
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
@@ -178,6 +187,20 @@ def _replay(options: argparse.Namespace) -> int:
     return EXIT_OK
 
 
+def _weekly(options: argparse.Namespace) -> int:
+    from daemon.clock import SystemClock
+    from daemon.site.reader import read_site
+    from daemon.weekly.command import weekly
+
+    def tell(text: str) -> None:
+        print(text, file=sys.stderr, flush=True)
+
+    site = read_site(options.site)
+    path = _store_path(options, site.id)
+    print(weekly(site, options, path, SystemClock(), tell))
+    return EXIT_OK
+
+
 def _drained(options: argparse.Namespace) -> int:
     from daemon.drained import record_drain
     from daemon.site.reader import read_site
@@ -203,6 +226,7 @@ _COMMANDS = {
     "check": _check,
     "replay": _replay,
     "drained": _drained,
+    "weekly": _weekly,
     "key": _key,
 }
 

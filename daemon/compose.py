@@ -24,8 +24,11 @@ from daemon.outbox import Topics
 from daemon.retained import gone, retained_topics
 from daemon.sealing import Sealer
 from daemon.shell import Sampling, Shell
-from daemon.site.types import Site
+from daemon.signal_output import SignalOutput
+from daemon.site import hours as opening
+from daemon.site.types import Signal, Site
 from daemon.store.store import Store
+from daemon.weekly.making import WeekMaker
 from sensors.registry import Hardware
 from sensors.sampling import Sampler
 
@@ -78,6 +81,8 @@ def running(setting: Setting, stop: threading.Event) -> Iterator[Parts]:
                 link.publish_states(gone(store, used))
             link.start()
             parts.callback(link.stop)
+        if site.signal is not None:
+            parts.callback(_signal(setting, site.signal, shell).stop)
         if not is_loopback(site.api.host):
             write_key(setting.store_path, shell.keys.own("commands on this machine", SCOPES))
             parts.callback(remove_key, setting.store_path)
@@ -88,10 +93,31 @@ def running(setting: Setting, stop: threading.Event) -> Iterator[Parts]:
         sealer = Sealer(store, SystemClock())
         sealer.start()
         parts.callback(sealer.stop)
-        jobs = WallClockJobs(store, setting.store_path, site)
+        maker = WeekMaker(site, store, setting.store_path, setting.clock, topics)
+
+        def make_weeks() -> None:
+            if maker.make() and link is not None:
+                link.wake()
+
+        jobs = WallClockJobs(store, setting.store_path, site, make_weeks)
         jobs.start()
         parts.callback(jobs.stop)
         yield Parts(shell, server, link)
+
+
+def _signal(setting: Setting, signal: Signal, shell: Shell) -> SignalOutput:
+    """The lamp or buzzer, switched from now on."""
+    site, clock = setting.site, setting.clock
+
+    def is_open() -> bool:
+        return opening.is_open(site.hours, site.timezone, clock.now_us())
+
+    lines = setting.hardware.lines(signal.chip)
+    # blinking is in real time, also beside a sped-up clock
+    output = SignalOutput(signal, lines, shell.alarms, is_open, SystemClock())
+    shell.signal_problem = lambda: output.problem
+    output.start()
+    return output
 
 
 def run(setting: Setting, stop: threading.Event, greet: Callable[[Parts], None]) -> None:

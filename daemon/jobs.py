@@ -1,4 +1,4 @@
-"""What happens by the wall clock, through APScheduler: the nightly backup, and what is not kept.
+"""What happens by the wall clock, through APScheduler: backups, what is not kept, the week's log.
 
 Sampling does not: it runs on the monotonic clock, which no time server sets back.
 """
@@ -6,6 +6,7 @@ Sampling does not: it runs on the monotonic clock, which no time server sets bac
 from __future__ import annotations
 
 import logging
+from collections.abc import Callable
 from pathlib import Path
 from zoneinfo import ZoneInfo
 
@@ -22,13 +23,20 @@ log = logging.getLogger("dripleg")
 BACKUP_HOUR = 3  # local time, when no shop works
 DROP_HOUR = 4  # after the backup
 MOST_DROPPED = 31 * 24  # hours of readings a night: a clock that is wrong once costs no more
+WEEK_EVERY_MINUTES = 10  # to ask whether a week is over: cheap, and catches up after a stop
 LATE_S = 6 * 3600  # a job that was due while the machine slept is still done within this
 
 
 class WallClockJobs:
     """The scheduler and its jobs."""
 
-    def __init__(self, store: Store, store_path: Path, site: Site) -> None:
+    def __init__(
+        self,
+        store: Store,
+        store_path: Path,
+        site: Site,
+        make_weeks: Callable[[], object] = lambda: None,
+    ) -> None:
         self._store = store
         self._backup_path = store_path.with_name(store_path.name + ".backup")
         self._kept_s = site.keeping.readings_s
@@ -47,6 +55,15 @@ class WallClockJobs:
             misfire_grace_time=LATE_S,
             coalesce=True,
             id="drop-old-readings",
+        )
+        # once at the start, then again and again: a week that ended meanwhile is made up for
+        self._scheduler.add_job(make_weeks, id="week-at-start")
+        self._scheduler.add_job(
+            make_weeks,
+            CronTrigger(minute=f"*/{WEEK_EVERY_MINUTES}", timezone=zone),
+            misfire_grace_time=LATE_S,
+            coalesce=True,
+            id="week",
         )
 
     def start(self) -> None:

@@ -7,6 +7,7 @@ Topics stand under `<prefix>/<site>`, `dripleg/alder-yard` for example:
     outlets/<outlet>   retained: whether the air there, and the surface, are dry enough
     alarms/<alarm>     retained: how the alarm stands
     events             every alarm transition and reminder at least once, with its id, QoS 1
+    weekly             retained: the newest week's log in short
     drains             inbound: a button or another device reports a drain
     drains/refused     why an inbound drain was not taken
 """
@@ -64,6 +65,10 @@ class Topics:
     @property
     def events(self) -> str:
         return f"{self.base}/events"
+
+    @property
+    def weekly(self) -> str:
+        return f"{self.base}/weekly"
 
     @property
     def drains(self) -> str:

@@ -16,6 +16,7 @@ def retained_topics(topics: Topics, site: Site, alarms: Iterable[str]) -> set[st
     """The topics on which this site file's daemon leaves a state with the broker."""
     return {
         topics.service,
+        topics.weekly,
         *(topics.trap(name) for name in site.traps),
         *(topics.outlet(outlet.id) for outlet in site.outlets),
         *(topics.alarm(name) for name in alarms),

@@ -178,7 +178,8 @@ def test_what_curl_sends_is_taken() -> None:
 def test_the_table_of_topics_is_the_outbox_s() -> None:
     topics = Topics("x")
     real = [topics.service, topics.trap("<trap>"), topics.outlet("<outlet>")]
-    real += [topics.alarm("<alarm>"), topics.events, topics.drains, topics.refused_drains]
+    real += [topics.alarm("<alarm>"), topics.events, topics.weekly]
+    real += [topics.drains, topics.refused_drains]
     told = [f"x/{row[0].strip('`')}" for row in rows(section("MQTT"))]
     assert told == real
 

@@ -294,6 +294,12 @@ class Store:
         with self._database.read() as connection:
             return log_rows.scores(connection, from_us, to_us)
 
+    def announce(self, messages: Sequence[Message], name: str, value: str) -> None:
+        """Hand messages to the outbox and set a named value, in one transaction."""
+        with self._database.write() as connection:
+            announcements.add(connection, (), messages)
+            metas.put(connection, name, value)
+
     # --- the rest
 
     def get_meta(self, name: str) -> str | None:
