@@ -13,6 +13,13 @@ from api.quantities import ShownIn, shown_in
 from api.routes.running import TheDaemon
 from api.routes.spans import FROM, TO, span
 from api.site_model import reference_of
+from api.stepped import (
+    SteppedOut,
+    refuse_too_many,
+    step_us_of,
+    stepped_out,
+    usual_begin_us,
+)
 from daemon.clock import HOUR_US, format_rfc3339
 from daemon.views import Running, SeriesOfReadings
 from sensors.reading import Channel
@@ -26,7 +33,7 @@ PLACES = 10  # significant digits after a conversion: far finer than any channel
 @router.get(
     "",
     summary="The readings of one channel",
-    response_model=ReadingsOut,
+    response_model=ReadingsOut | SteppedOut,
     responses=answered_by("unknown-channel", "invalid-request", "log-unavailable"),
 )
 def get_readings(
@@ -38,10 +45,21 @@ def get_readings(
         ShownIn,
         Query(description="si, or what people read: site (as the site file says), metric, us"),
     ] = "si",
+    step: Annotated[
+        float | None,
+        Query(
+            description="seconds: what the channel comes to in steps of that length, a whole "
+            "number of sampling periods. Long spans want whole hours (3600, 86400) from a full "
+            "hour on, which are quick however long the span is",
+            allow_inf_nan=False,
+            examples=[3600],
+        ),
+    ] = None,
 ) -> Response:
     """Two arrays of one length, times and values; without from and to, the last hour.
 
-    A bad reading is null, and its reason stands in `faults`.
+    A bad reading is null, and its reason stands in `faults`. With `step`: mean, least and greatest
+    of each step instead; without from then the last 24 steps.
     """
     described = daemon.site.channels.get(channel)
     if described is None:
@@ -49,11 +67,33 @@ def get_readings(
         raise Problem(
             "unknown-channel", f'there is no channel "{channel}"; those of this site are: {known}'
         )
+    if step is not None:
+        return _json(_stepped(daemon, described, units, (from_, to), step))
     start_us, end_us = span(from_, to, daemon.clock.now_us(), HOUR_US)
     _refuse_too_long(daemon, end_us - start_us)
     series = daemon.readings(channel, start_us, end_us)
-    answer = _readings_out(series, described, daemon, units, (start_us, end_us))
+    return _json(_readings_out(series, described, daemon, units, (start_us, end_us)))
+
+
+def _json(answer: ReadingsOut | SteppedOut) -> Response:
     return Response(answer.model_dump_json(by_alias=True), media_type="application/json")
+
+
+def _stepped(
+    daemon: Running,
+    channel: Channel,
+    units: ShownIn,
+    between: tuple[str | None, str | None],
+    step_s: float,
+) -> SteppedOut:
+    from_, to = between
+    step_us = step_us_of(daemon.site, step_s)
+    start_us, end_us = span(from_, to, daemon.clock.now_us(), step_us)
+    if from_ is None:
+        start_us = usual_begin_us(end_us, step_us)
+    longest_us = MOST_PERIODS * daemon.site.sample_every_us
+    refuse_too_many(end_us - start_us, step_us, longest_us, start_us)
+    return stepped_out(daemon, channel, units, (start_us, end_us), step_us)
 
 
 def _refuse_too_long(daemon: Running, length_us: int) -> None:

@@ -161,3 +161,84 @@ def test_a_year_that_no_log_reaches_is_refused(client: Client) -> None:
     response = client.get(PRESSURE + "&from=2200-01-01T00:00:00Z&to=2200-01-01T00:30:00Z")
     problem = problem_of(response, 422, "invalid-request")
     assert "outside the years 1970 to 2199" in problem["detail"]
+
+
+# --- step by step
+
+
+def test_steps_give_mean_least_and_greatest(filled: Client) -> None:
+    answer = filled.get(PRESSURE + "&step=20&from=2026-12-01T08:59:00Z").json()
+    assert answer == {
+        "channel": "tank-gauge.pressure",
+        "quantity": "pressure",
+        "unit": "Pa",
+        "reference": "gauge",
+        "from": "2026-12-01T08:59:00Z",
+        "to": "2026-12-01T09:00:00Z",
+        "step_s": 20.0,
+        "times": ["2026-12-01T08:59:00Z", "2026-12-01T08:59:20Z", "2026-12-01T08:59:40Z"],
+        "mean": [None, 7e5, 711150.0],
+        "least": [None, 7e5, 7.1e5],
+        "greatest": [None, 7e5, 712300.0],
+        "count": [0, 1, 2],
+        "bad": [0, 1, 0],
+    }
+
+
+def test_the_mean_of_a_contact_is_its_share_of_the_time(running: FakeRunning) -> None:
+    begin = NOW_US - 60 * SECOND_US
+    offsets = np.array([0, 15, 30, 45, 45.5]) * SECOND_US
+    running.recorded["motor.contact"] = SeriesOfReadings(
+        "motor.contact",
+        begin + offsets.astype(np.int64),
+        np.array([1.0, 1.0, 1.0, 0.0, 0.0]),
+        ("",) * 5,
+    )
+    answer = client_of(running).get(
+        "/api/v1/readings?channel=motor.contact&step=60&from=2026-12-01T08:59:00Z"
+    )
+    assert answer.json()["mean"] == [0.75]  # of the samples three in five are 1
+
+
+def test_steps_are_shown_in_people_s_units_when_asked(filled: Client) -> None:
+    answer = filled.get(PRESSURE + "&step=60&units=metric&from=2026-12-01T08:59:00Z").json()
+    assert (answer["unit"], answer["greatest"]) == ("bar", [7.123])
+
+
+def test_without_from_the_last_24_steps_are_given_at_whole_multiples(filled: Client) -> None:
+    answer = filled.get(PRESSURE + "&step=3600&to=2026-12-01T08:59:50Z").json()
+    assert len(answer["times"]) == 24
+    assert (answer["from"], answer["to"]) == ("2026-11-30T09:00:00Z", "2026-12-01T09:00:00Z")
+
+
+def test_a_year_by_the_hour_fits_in_one_answer(client: Client) -> None:
+    answer = client.get(PRESSURE + "&step=3600&from=2025-12-01T09:00:00Z").json()
+    assert len(answer["times"]) == len(answer["mean"]) == 365 * 24
+
+
+@pytest.mark.parametrize("step", ["15", "0", "-3600", "3600.5", "31622410", "1e300"])
+def test_a_step_must_be_a_number_of_sampling_periods(client: Client, step: str) -> None:
+    problem = problem_of(client.get(PRESSURE + f"&step={step}"), 422, "invalid-request")
+    (error,) = problem["errors"]
+    assert error["where"] == "query.step"
+    assert "a whole number of sampling periods of 10 s" in error["remedy"]
+
+
+@pytest.mark.parametrize("step", ["nan", "inf", "hour"])
+def test_a_step_must_be_a_number(client: Client, step: str) -> None:
+    problem = problem_of(client.get(PRESSURE + f"&step={step}"), 422, "invalid-request")
+    assert problem["errors"][0]["where"] == "query.step"
+
+
+def test_too_many_steps_are_refused_with_the_limit(client: Client) -> None:
+    response = client.get(PRESSURE + "&step=3600&from=2024-12-01T09:00:00Z")
+    problem = problem_of(response, 422, "invalid-request")
+    assert "at most 10000 steps; ask for longer steps" in problem["errors"][0]["remedy"]
+
+
+@pytest.mark.parametrize(
+    "query", ["&step=1800&from=2026-11-01T00:00:00Z", "&step=3600&from=2026-11-01T00:10:00Z"]
+)
+def test_long_spans_want_whole_hours(client: Client, query: str) -> None:
+    problem = problem_of(client.get(PRESSURE + query), 422, "invalid-request")
+    assert "ask for a multiple of 3600 from a full hour on" in problem["errors"][0]["remedy"]
