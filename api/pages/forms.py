@@ -8,6 +8,7 @@ only somebody who can read our pages knows. Writing needs the same key as the AP
 
 from __future__ import annotations
 
+import math
 import secrets
 from collections.abc import Mapping
 from typing import Annotated
@@ -41,3 +42,18 @@ Fields = Annotated[dict[str, str], Depends(_fields)]
 def is_fresh(fields: Mapping[str, str]) -> bool:
     """Whether a form was made by this process."""
     return secrets.compare_digest(fields.get("token", "").encode(), TOKEN.encode())
+
+
+class NumberError(ValueError):
+    """What was typed is not a number."""
+
+
+def number(text: str) -> float:
+    """A figure as people type it, with a point or a comma; NumberError says what to write."""
+    try:
+        figure = float(text.replace(",", "."))
+    except ValueError:
+        figure = math.nan
+    if not math.isfinite(figure):
+        raise NumberError(f'"{text[:40]}" is not a number. Write it like 380 or 12.5.')
+    return figure

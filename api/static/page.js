@@ -5,6 +5,7 @@ import { flush, forget, kept, newKey, send, serverSays, whenKeptChanges } from "
 const FRESH_MS = 15000;
 const RETRY_MS = 5000;
 const BY = "dripleg.by";
+const TOLD_MS = 600000; // so long an answer stays on the page
 const net = document.getElementById("net");
 let lostSince = null;
 
@@ -40,16 +41,24 @@ function numberIn(field, said) {
   return Number(figure);
 }
 
+// A form's answer goes to its own output, or to the one that it names (`data-says`).
+function outputOf(form) {
+  return form.querySelector("output") ?? document.getElementById(form.dataset.says);
+}
+
 function say(form, text, wrong = false) {
-  const output = form.querySelector("output");
+  const output = outputOf(form);
+  if (!output) return;
   output.classList.toggle("wrong", wrong);
   output.textContent = text;
+  output.dataset.at = String(Date.now());
 }
 
 document.addEventListener("submit", async (event) => {
   const form = event.target;
   if (form.dataset.send === undefined) return;
   event.preventDefault();
+  if (form.dataset.busy !== undefined) return; // a second tap while the first is on its way
   const button = event.submitter;
   let body;
   try {
@@ -60,16 +69,17 @@ document.addEventListener("submit", async (event) => {
     return;
   }
   if (body.by) rememberBy(body.by);
-  button?.setAttribute("disabled", "");
+  form.dataset.busy = "";
   say(form, "Sending ...");
   const outcome = await send(form.dataset.send, body, labelOf(form, button));
-  button?.removeAttribute("disabled");
+  delete form.dataset.busy;
   told(form, outcome);
   if (outcome.taken) {
     form.reset();
     fillBy(document);
+    const said = outputOf(form)?.id;
     await refresh();
-    document.getElementById(form.id)?.querySelector("output")?.scrollIntoView({ block: "nearest" });
+    document.getElementById(said)?.scrollIntoView({ block: "nearest" });
   }
 });
 
@@ -134,10 +144,19 @@ async function refresh() {
   const page = new DOMParser().parseFromString(text, "text/html");
   for (const old of document.querySelectorAll("[data-fresh]")) {
     const made = page.getElementById(old.id);
-    if (made && !isTyping(old)) renew(old, made);
+    if (!made || isTyping(old) || asSent(made) === shown.get(old.id)) continue;
+    shown.set(old.id, asSent(made));
+    renew(old, made);
   }
   readClock();
   tellNet();
+}
+
+// What was shown last, so that what has not changed is not touched (nor read aloud again).
+const shown = new Map();
+
+function asSent(part) {
+  return part.outerHTML.replace(/value="form-[0-9a-f]+"/g, "");
 }
 
 function isTyping(part) {
@@ -152,8 +171,10 @@ function renew(old, made) {
     const now = made.querySelector(`#${CSS.escape(was.id)}`);
     if (!now) continue;
     if (was.matches("output") && was.textContent && !now.textContent) {
+      if (Date.now() - Number(was.dataset.at ?? 0) > TOLD_MS) continue;
       now.textContent = was.textContent;
       now.className = was.className;
+      now.dataset.at = was.dataset.at;
     } else if (was.matches("details")) now.open = was.open || now.open;
     else if (was.matches("[type=radio], [type=checkbox]")) now.checked = was.checked;
     else if (was.matches("select")) now.value = was.value;
@@ -214,6 +235,7 @@ addEventListener("online", retry);
 document.addEventListener("visibilitychange", () => document.visibilityState === "visible" && refresh());
 setInterval(retry, RETRY_MS);
 setInterval(() => document.visibilityState === "visible" && refresh(), FRESH_MS);
+for (const part of document.querySelectorAll("[data-fresh]")) shown.set(part.id, asSent(part));
 readClock();
 fillBy(document);
 tellNet();

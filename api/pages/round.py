@@ -1,0 +1,140 @@
+"""`/round`: what to drain today, in walking order, and one tap to say that it is done."""
+
+from __future__ import annotations
+
+import secrets
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+from fastapi import APIRouter
+from pydantic import ValidationError
+from starlette.responses import HTMLResponse, RedirectResponse, Response
+
+from api.models import AcknowledgeIn, DrainIn, UndoIn
+from api.pages.forms import Fields, NumberError, is_fresh, number
+from api.pages.frame import page
+from api.pages.round_cards import card_of
+from api.pages.round_plan import RoundPlan, plan
+from api.problems import Problem
+from api.routes.parts import confirm
+from api.routes.running import TheDaemon
+from api.routes.traps import post_drain, undo_drain
+from api.validation import points_of
+from daemon.errors import JournalError
+from daemon.views import Running
+
+router = APIRouter(include_in_schema=False)
+STALE = "Not recorded: this page was from before dripleg's last start. Look again, and tap again."
+UNITS = {"metric": ("ml", "L"), "us": ("oz", "gal")}
+LOOKS = ("clear", "milky", "oily", "rusty")
+
+
+@dataclass(frozen=True, slots=True)
+class Told:
+    """What a form without script is answered: on which trap's card, and what had been typed."""
+
+    trap: str = ""
+    words: str = ""
+    wrong: bool = False
+    typed: Mapping[str, str] = field(default_factory=dict)
+
+
+@router.get("/round")
+def show(daemon: TheDaemon) -> HTMLResponse:
+    """The round as it is now."""
+    return _page(daemon)
+
+
+@router.get("/round/{trap}/{rest:path}")
+def back(trap: str, rest: str) -> RedirectResponse:
+    """Where a form without script has been: a second look there is a look at the round."""
+    return RedirectResponse("/round", 303)
+
+
+@router.post("/round/{trap}/drained")
+def drained(trap: str, fields: Fields, daemon: TheDaemon) -> HTMLResponse:
+    """A drain, from a browser without script."""
+    if not is_fresh(fields):
+        return _page(daemon, Told(trap, STALE, True, fields))
+    try:
+        recorded = post_drain(trap, _drain_in(fields), daemon, Response())
+    except (Problem, JournalError, ValidationError, NumberError) as error:
+        return _page(daemon, Told(trap, f"Not recorded. {_words(error)}", True, fields), 422)
+    return _page(daemon, Told(trap, recorded.said or "Recorded."))
+
+
+@router.post("/round/{trap}/undo/{seq}")
+def undo(trap: str, seq: int, fields: Fields, daemon: TheDaemon) -> HTMLResponse:
+    """A drain is taken back, from a browser without script."""
+    if not is_fresh(fields):
+        return _page(daemon, Told(trap, STALE, True))
+    try:
+        undo_drain(trap, seq, daemon, Response(), UndoIn(by=fields.get("by") or None))
+    except (Problem, ValidationError) as error:
+        return _page(daemon, Told(trap, f"Not taken back. {_words(error)}", True), 422)
+    return _page(daemon, Told(trap, "Taken back."))
+
+
+@router.post("/round/{trap}/right")
+def right(trap: str, fields: Fields, daemon: TheDaemon) -> HTMLResponse:
+    """A surprising volume was right, from a browser without script."""
+    if not is_fresh(fields):
+        return _page(daemon, Told(trap, STALE, True))
+    try:
+        confirm(trap, daemon, AcknowledgeIn(by=fields.get("by") or None))
+    except (Problem, JournalError, ValidationError) as error:
+        return _page(daemon, Told(trap, f"Not recorded. {_words(error)}", True), 422)
+    return _page(daemon, Told(trap, "Learned from."))
+
+
+def first_line(daemon: Running) -> str:
+    """The round in one line, also for the start page."""
+    return _plan(daemon).line
+
+
+def _plan(daemon: Running) -> RoundPlan:
+    flooded = [
+        alarm.source
+        for alarm in daemon.alarms()
+        if alarm.kind == "trap-flooded" and alarm.state in ("unacknowledged", "acknowledged")
+    ]
+    return plan(daemon.site, daemon.traps(), flooded, daemon.clock.now_us())
+
+
+def _page(daemon: Running, told: Told | None = None, status: int = 200) -> HTMLResponse:
+    made, undone = _plan(daemon), daemon.undoings()
+    return page(
+        daemon,
+        "round.html",
+        here="/round",
+        title="Today's round",
+        status=status,
+        line=made.line,
+        drain=[card_of(daemon, view, undone) for view in made.drain],
+        leave=[card_of(daemon, view, undone) for view in made.leave],
+        told=told or Told(),
+        units=UNITS[daemon.site.units],
+        looks=LOOKS,
+        new_key=lambda: f"form-{secrets.token_hex(8)}",
+    )
+
+
+def _drain_in(fields: Mapping[str, str]) -> DrainIn:
+    said: dict[str, object] = {
+        name: text for name in ("outcome", "by", "look", "key") if (text := fields.get(name))
+    }
+    if volume := fields.get("volume"):
+        said |= {"volume": number(volume), "unit": fields.get("unit")}
+    return DrainIn.model_validate(said)
+
+
+def _words(error: Exception) -> str:
+    """What was wrong, for whoever typed it."""
+    if isinstance(error, ValidationError):
+        points = points_of([dict(each) for each in error.errors()])
+    elif isinstance(error, Problem):
+        points = list(error.points)
+    else:
+        points = []
+    said = [f"{point.value}: {point.remedy}" if point.value else point.remedy for point in points]
+    return " ".join(said) or (error.detail if isinstance(error, Problem) else str(error))
