@@ -23,7 +23,7 @@ from daemon.site.default_tables import defaults_table
 from daemon.site.fitting_words import drain_words, station_words
 from daemon.site.keeping import kept_words
 from daemon.site.sensor_words import sensor_words
-from daemon.site.types import DAY_NAMES, DefaultUsed, Hours, OutletSettings, Site
+from daemon.site.types import DAY_NAMES, DefaultUsed, Hours, OutletSettings, Signal, Site
 from daemon.site.words import source_words
 from daemon.units import (
     show_difference,
@@ -119,6 +119,25 @@ def _shop(site: Site) -> Iterator[str]:
     yield from _row("readings are kept", kept_words(site.keeping))
     yield from _row("pages and API", f"http://{url_host(site.api.host)}:{site.api.port}/")
     yield from _row("keys", _keys(site))
+    if site.signal is not None:
+        yield from _row(site.signal.kind, _signal(site.signal))
+
+
+def _signal(signal: Signal) -> str:
+    """What the lamp or buzzer shows, and where it is."""
+    level = "high" if signal.active_high else "low"
+    which = ", ".join(signal.priorities)
+    how = "blinks" if signal.kind == "lamp" else "calls every 10 s"
+    how = "is on" if signal.pattern == "steady" else how
+    seen = (
+        "then is on until they are over"
+        if signal.kind == "lamp"
+        else "in working hours only, then is silent"
+    )
+    return (
+        f"{signal.place}, on while {level}; {how} for alarms of priority {which} until somebody "
+        f"has seen them, {seen}"
+    )
 
 
 def _keys(site: Site) -> str:

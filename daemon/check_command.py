@@ -12,6 +12,7 @@ from daemon.asking import serves
 from daemon.check import render, sections
 from daemon.check_readings import Looker, missing_devices
 from daemon.check_sensors import elsewhere_section, now_section
+from daemon.check_signal import signal_section
 from daemon.clock import Clock, format_rfc3339
 from daemon.mqtt_listen import listening
 from daemon.site.types import Site
@@ -52,7 +53,12 @@ def check(
         looked = looker.look()
         said = sections(site)
         said.insert(SENSORS_AT, now_section(site, looked))
+        tried = signal_section(site, hardware, clock, options.store)
+        if tried is not None:
+            said.insert(SENSORS_AT + 1, tried.section)
         say(render(said))
+        if tried is not None and not tried.good:
+            return EXIT_FAILED
         return EXIT_FAILED if looked.faults() else EXIT_OK
 
 

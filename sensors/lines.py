@@ -1,4 +1,4 @@
-"""GPIO input lines with the kernel's debounce and time stamps, and the small surface drivers use.
+"""GPIO lines: inputs with the kernel's debounce and time stamps, and the small surface drivers use.
 
 Wiring: 3.3 V logic only; a contact between the line and ground with the Pi's own pull-up (about
 50 kohm) serves short wires; long wires near a motor want an optocoupler and an external 4.7 kohm.
@@ -52,11 +52,27 @@ class Line(Protocol):
         ...
 
 
+class OutputLine(Protocol):
+    """One output line that was asked for; off until it is set."""
+
+    def set(self, on: bool) -> None:
+        """Switch it. OSError when it cannot be switched."""
+        ...
+
+    def close(self) -> None:
+        """Switch it off and give it back. May be called twice."""
+        ...
+
+
 class Lines(Protocol):
     """The lines of one chip."""
 
     def request(self, number: int, settings: LineSettings) -> Line:
         """Ask for a line. OSError when there is no such line or another program has it."""
+        ...
+
+    def output(self, number: int, active_high: bool) -> OutputLine:
+        """Ask for a line to switch, off. OSError as for `request`."""
         ...
 
 
@@ -98,6 +114,40 @@ class GpiodLines:
             event_buffer_size=EVENT_BUFFER,
         )
         return _GpiodLine(request, number, self._clocks, gpiod)
+
+
+    def output(self, number: int, active_high: bool) -> OutputLine:
+        gpiod = self._gpiod
+        if gpiod is None:
+            import gpiod  # noqa: PLC0415  # a Pi has it; nothing else needs it
+        line = gpiod.line
+        wanted = gpiod.LineSettings(
+            direction=line.Direction.OUTPUT,
+            active_low=not active_high,
+            output_value=line.Value.INACTIVE,
+        )
+        request = gpiod.request_lines(self._chip, consumer="dripleg", config={number: wanted})
+        return _GpiodOutput(request, number, gpiod)
+
+
+class _GpiodOutput:
+    def __init__(self, request: Any, number: int, gpiod: Any) -> None:
+        self._request, self._number = request, number
+        self._values = (gpiod.line.Value.INACTIVE, gpiod.line.Value.ACTIVE)
+
+    def set(self, on: bool) -> None:
+        if self._request is None:
+            raise OSError(errno.EBADF, "the line was given back")
+        self._request.set_value(self._number, self._values[on])
+
+    def close(self) -> None:
+        request, self._request = self._request, None
+        if request is None:
+            return
+        try:
+            request.set_value(self._number, self._values[False])
+        finally:
+            request.release()
 
 
 class _GpiodLine:

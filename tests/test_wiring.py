@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import re
 import tomllib
 from typing import Any
@@ -10,15 +11,13 @@ import pytest
 
 import sensors.drivers  # noqa: F401  # fills the registry
 from sensors.registry import DRIVERS, REQUIRED, SensorConfig
+from tests.daemon.shops import SITE, site
 from tests.tree import ROOT
 
 TEXT = (ROOT / "deploy" / "wiring.md").read_text(encoding="utf-8")
 SECTIONS = [part.splitlines()[0] for part in TEXT.split("\n## ")[1:]]
-EXAMPLES: list[dict[str, Any]] = [
-    table
-    for block in re.findall(r"```toml\n(.*?)```", TEXT, re.DOTALL)
-    for table in tomllib.loads(block)["sensor"]
-]
+BLOCKS = [tomllib.loads(block) for block in re.findall(r"```toml\n(.*?)```", TEXT, re.DOTALL)]
+EXAMPLES: list[dict[str, Any]] = [table for block in BLOCKS for table in block.get("sensor", [])]
 
 # The 40-pin header of a Raspberry Pi, from its documentation (from memory).
 HEADER = {
@@ -47,6 +46,16 @@ def test_the_cautions_come_first() -> None:
         "speaks of water only",
     ):
         assert caution in words
+
+
+def test_every_block_is_of_sensors_or_the_signal() -> None:
+    (signal,) = (block["signal"] for block in BLOCKS if "sensor" not in block)
+    lines = "\n".join(f"{key} = {json.dumps(value)}" for key, value in signal.items())
+    read = site(f"{SITE}\n[signal]\n{lines}\n").signal
+    assert read is not None
+    # the pin in its section's table is that of the line
+    section = TEXT.split("\n## Lamp or buzzer\n")[1]
+    assert f"GPIO {read.line}, pin {HEADER[read.line]} " in section
 
 
 def test_every_driver_has_an_example() -> None:

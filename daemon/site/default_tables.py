@@ -13,7 +13,7 @@ from daemon.site.fitting_words import default_rows
 from daemon.site.keeping import BECAUSE as KEPT_BECAUSE
 from daemon.site.keeping import kept_words
 from daemon.site.notes import written
-from daemon.site.types import REMINDER_TIMES, Api, Costs, Cup, Keeping, Limits
+from daemon.site.types import REMINDER_TIMES, Api, Costs, Cup, Keeping, Limits, Signal
 from daemon.units import (
     show_barometer,
     show_difference,
@@ -112,6 +112,19 @@ def _general() -> Iterator[Row]:
     reading = f"`{str(api.open_reading).lower()}`"
     yield "", "`open_reading`", reading, "on the network, reading needs a key too"
     yield "`[mqtt]`", "", "no broker", "nothing leaves the shop unasked"
+    yield from _signal_rows()
+
+
+def _signal_rows() -> Iterator[Row]:
+    usual = Signal()
+    yield "`[signal]`", "", "no lamp, no buzzer", ""
+    yield "", "`line`", "must be said", "the line's number on the chip: GPIO 25 is 25"
+    yield "", "`kind`", f"`{usual.kind}`", "or `buzzer`: in working hours only"
+    yield "", "`chip`", f"`{usual.chip}`", "gpiochip0 on a Pi with a current kernel"
+    yield "", "`active`", "`high`", "the level that switches it on"
+    priorities = ", ".join(f"`{each}`" for each in usual.priorities)
+    yield "", "`priorities`", priorities, "what can wait makes no light"
+    yield "", "`pattern`", f"`{usual.pattern}`", "or `steady`: while nobody has seen the alarm"
 
 
 def _kinds() -> Iterator[Row]:

@@ -41,6 +41,7 @@ from daemon.site.sections import (
     read_site_table,
 )
 from daemon.site.shape import tell_circular_rules, tell_loops
+from daemon.site.signal import SIGNAL_KEYS, read_signal
 from daemon.site.stations import STATION_KEYS, Draft, open_stations, read_stations
 from daemon.site.table import Table
 from daemon.site.trap_sensors import read_trap_sensors
@@ -49,6 +50,7 @@ from sensors.registry import DRIVERS, Driver
 
 TABLES = (
     "site", "hours", "compressor", "costs", "reminders", "cup", "model", "store", "mqtt", "api",
+    "signal",
 )  # fmt: skip
 LISTS = ("sensor", "station", "outlet")
 _LINE = re.compile(r"\(at line (\d+), column (\d+)\)\Z")
@@ -95,6 +97,7 @@ def _elsewhere(drivers: Mapping[str, Driver]) -> dict[str, Sequence[str]]:
         "[store]": STORE_KEYS,
         "[api]": API_KEYS,
         "[mqtt]": MQTT_KEYS,
+        "[signal]": SIGNAL_KEYS,
         "[[station]]": STATION_KEYS,
         "[[outlet]]": OUTLET_KEYS,
         "[[sensor]]": ("id", "driver", *own),
@@ -193,6 +196,7 @@ class _Reading:
         keeping = read_store(notes, raw.get("store"))
         mqtt = read_mqtt(notes, raw.get("mqtt"), Path(self.path).parent)
         api = read_api(notes, raw.get("api", {}))
+        signal = read_signal(notes, raw.get("signal"), sensors)
         notes.settle_unknown({"sensor": names.sensors, "station": names.stations, "outlet": ()})
         compressor = self._complete(drafts, table, compressor)
         ends = finish_outlets(notes, outlets, drafts)
@@ -224,6 +228,7 @@ class _Reading:
             without_effect=tuple(notes.without_effect),
             limits=limits,
             costs=costs,
+            signal=signal,
             keeping=keeping,
             reminders=reminders,
         )

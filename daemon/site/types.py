@@ -6,6 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Literal, get_args
 
+from daemon.alarms import Priority
 from daemon.moisture.description import Fixed, Line
 from daemon.site.defaults import SPECIFIC_POWER
 from sensors.reading import Channel
@@ -97,6 +98,27 @@ class Api:
     open_reading: bool = False  # without a key, on an address that others can reach
 
 
+SignalKind = Literal["lamp", "buzzer"]
+SignalPattern = Literal["blink", "steady"]
+
+
+@dataclass(frozen=True, slots=True)
+class Signal:
+    """A lamp or a buzzer on a GPIO line, for a shop without a board."""
+
+    kind: SignalKind = "lamp"
+    chip: str = "/dev/gpiochip0"
+    line: int = 25
+    active_high: bool = True  # the line's level that switches it on
+    priorities: tuple[Priority, ...] = ("medium", "high")
+    pattern: SignalPattern = "blink"
+
+    @property
+    def place(self) -> str:
+        """The line, in the words of the sensors' lines."""
+        return f"{self.chip} line {self.line}"
+
+
 @dataclass(frozen=True, slots=True)
 class DefaultUsed:
     """One value that nobody said: where, what is used, and why that."""
@@ -130,6 +152,7 @@ class Site:
     remarks: tuple[str, ...] = ()  # what a practitioner would say about this line
     limits: Limits = Limits()
     costs: Costs = Costs()
+    signal: Signal | None = None
     keeping: Keeping = Keeping()
     reminders: tuple[ReminderTime, ...] = REMINDER_TIMES
 

@@ -117,11 +117,39 @@ class EmulatedRequest:
         return reported
 
 
+class EmulatedOutput:
+    """A line that a program switches: its level, and every level it was set to."""
+
+    def __init__(self, active_high: bool) -> None:
+        self._active_high = active_high
+        self.levels = [int(not active_high)]  # off
+        self.missing = False  # another program takes the line meanwhile
+        self.closed = False
+
+    @property
+    def level(self) -> int:
+        return self.levels[-1]
+
+    def set(self, on: bool) -> None:
+        if self.closed:
+            raise OSError(errno.EBADF, "the line was given back")
+        if self.missing:
+            raise OSError(errno.ENODEV, "No such device")
+        self.levels.append(int(on == self._active_high))
+
+    def close(self) -> None:
+        if not self.closed:
+            self.levels.append(int(not self._active_high))
+            self.closed = True
+
+
 class EmulatedLines:
     """The lines of one chip, made when they are first named."""
 
     def __init__(self) -> None:
         self.lines: dict[int, EmulatedLine] = {}
+        self.outputs: dict[int, EmulatedOutput] = {}  # the last request of each
+        self.refuse: set[int] = set()  # outputs that another program has
 
     def line(self, number: int) -> EmulatedLine:
         return self.lines.setdefault(number, EmulatedLine())
@@ -131,3 +159,9 @@ class EmulatedLines:
         if line.missing:
             raise OSError(errno.ENODEV, "No such device")
         return EmulatedRequest(line, settings)
+
+    def output(self, number: int, active_high: bool) -> EmulatedOutput:
+        if number in self.refuse:
+            raise OSError(errno.EBUSY, "Device or resource busy")
+        self.outputs[number] = EmulatedOutput(active_high)
+        return self.outputs[number]

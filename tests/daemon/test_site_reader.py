@@ -10,7 +10,7 @@ import pytest
 from daemon.moisture.description import Fixed, Like, Measured, RiseByDuty, Share, Source, Station
 from daemon.moisture.model import Model
 from daemon.site.reader import parse_site, read_site
-from daemon.site.types import Cup, Site
+from daemon.site.types import Api, Cup, Site
 
 EXAMPLE = Path(__file__).parents[2] / "deploy" / "site-example.toml"
 
@@ -133,6 +133,7 @@ prefix = "shop/dripleg"
 [api]
 host = "0.0.0.0"
 port = 8081
+open_reading = true
 """)
     assert (found.name, found.units, found.sample_every_us) == ("Birch & Sons", "us", 30_000_000)
     assert found.hours.spans[0] == ((480, 720), (780, 1050))
@@ -145,7 +146,7 @@ port = 8081
     assert (found.mqtt.host, found.mqtt.port, found.mqtt.tls) == ("broker.local", 8883, True)
     assert found.mqtt.password_file == "shop/secret.txt"
     assert (found.mqtt.ca_file, found.mqtt.prefix) == ("/etc/ca.pem", "shop/dripleg")
-    assert (found.api.host, found.api.port) == ("0.0.0.0", 8081)
+    assert found.api == Api("0.0.0.0", 8081, open_reading=True)
     assert not any(each.table in ("site", "hours", "model", "api") for each in found.defaults)
 
 
