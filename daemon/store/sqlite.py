@@ -182,9 +182,10 @@ def _refuse_damage(where: str, findings: list[str]) -> None:
 
 def _settings(raw: Any, _record: object) -> None:
     raw.isolation_level = None  # transactions are begun by `_begin`, also around CREATE TABLE
+    if raw.execute("PRAGMA page_count").fetchone() == (0,):  # it is made now: see `give_back`
+        raw.execute("PRAGMA auto_vacuum=INCREMENTAL").close()
     for setting in (
         f"busy_timeout={BUSY_MS}",
-        "auto_vacuum=INCREMENTAL",  # counts for a database that is made now: see `give_back`
         "journal_mode=WAL",
         "synchronous=FULL",
         "foreign_keys=ON",
