@@ -17,7 +17,7 @@ from starlette.routing import Match
 
 from api.guard import Guard
 from api.keys import Door
-from api.pages import assets, line, pair, round, week
+from api.pages import assets, line, pair, round, spray, week
 from api.pages.problem_page import problem_page, wants_page
 from api.problems import (
     Problem,
@@ -31,6 +31,7 @@ from api.routes import (
     dew_points,
     health,
     home,
+    metrics,
     outlets,
     pairing,
     parts,
@@ -104,7 +105,8 @@ def create_app(running: Running) -> FastAPI:
     ):
         everywhere.include_router(module.router)
     app.include_router(everywhere)
-    for shown in (home, round, week, line, assets, pair):  # the pages for people
+    app.include_router(metrics.router)
+    for shown in (home, round, spray, week, line, assets, pair):  # the pages for people
         app.include_router(shown.router)
     app.openapi = lambda: _openapi(app)  # type: ignore[method-assign]  # FastAPI's own way
     return app

@@ -43,6 +43,7 @@ def test_every_route_of_the_first_version_is_described(described: dict[str, Any]
         ("get", "/api/v1/traps/{trap}"),
         ("get", "/api/v1/traps/{trap}/drains"),
         ("get", "/api/v1/weekly/{week}"),
+        ("get", "/metrics"),
         ("post", "/api/v1/alarms/{alarm}/acknowledge"),
         ("post", "/api/v1/alarms/{alarm}/shelve"),
         ("post", "/api/v1/alarms/{alarm}/unshelve"),
