@@ -15,12 +15,15 @@ from typing import Annotated
 from urllib.parse import parse_qsl
 
 from fastapi import Depends, Request
+from pydantic import ValidationError
 
 from api.keys import writes_allowed
 from api.problems import Problem
+from api.validation import points_of
 
 TOKEN = secrets.token_urlsafe(16)  # of this process: a page from before a restart is out of date
 MOST_FIELDS = 20
+STALE = "Not recorded: this page was from before dripleg's last start. Look again, and tap again."
 
 
 async def _fields(request: Request) -> dict[str, str]:
@@ -57,3 +60,15 @@ def number(text: str) -> float:
     if not math.isfinite(figure):
         raise NumberError(f'"{text[:40]}" is not a number. Write it like 380 or 12.5.')
     return figure
+
+
+def words_of(error: Exception) -> str:
+    """What was wrong with what was typed, for whoever typed it."""
+    if isinstance(error, ValidationError):
+        points = points_of([dict(each) for each in error.errors()])
+    elif isinstance(error, Problem):
+        points = list(error.points)
+    else:
+        points = []
+    said = [f"{point.value}: {point.remedy}" if point.value else point.remedy for point in points]
+    return " ".join(said) or (error.detail if isinstance(error, Problem) else str(error))

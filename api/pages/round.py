@@ -11,7 +11,7 @@ from pydantic import ValidationError
 from starlette.responses import HTMLResponse, RedirectResponse, Response
 
 from api.models import AcknowledgeIn, DrainIn, UndoIn
-from api.pages.forms import Fields, NumberError, is_fresh, number
+from api.pages.forms import STALE, Fields, NumberError, is_fresh, number, words_of
 from api.pages.frame import page
 from api.pages.round_cards import card_of
 from api.pages.round_plan import RoundPlan, plan
@@ -19,12 +19,10 @@ from api.problems import Problem
 from api.routes.parts import confirm
 from api.routes.running import TheDaemon
 from api.routes.traps import post_drain, undo_drain
-from api.validation import points_of
 from daemon.errors import JournalError
 from daemon.views import Running
 
 router = APIRouter(include_in_schema=False)
-STALE = "Not recorded: this page was from before dripleg's last start. Look again, and tap again."
 UNITS = {"metric": ("ml", "L"), "us": ("oz", "gal")}
 LOOKS = ("clear", "milky", "oily", "rusty")
 
@@ -59,7 +57,7 @@ def drained(trap: str, fields: Fields, daemon: TheDaemon) -> HTMLResponse:
     try:
         recorded = post_drain(trap, _drain_in(fields), daemon, Response())
     except (Problem, JournalError, ValidationError, NumberError) as error:
-        return _page(daemon, Told(trap, f"Not recorded. {_words(error)}", True, fields), 422)
+        return _page(daemon, Told(trap, f"Not recorded. {words_of(error)}", True, fields), 422)
     return _page(daemon, Told(trap, recorded.said or "Recorded."))
 
 
@@ -71,7 +69,7 @@ def undo(trap: str, seq: int, fields: Fields, daemon: TheDaemon) -> HTMLResponse
     try:
         undo_drain(trap, seq, daemon, Response(), UndoIn(by=fields.get("by") or None))
     except (Problem, ValidationError) as error:
-        return _page(daemon, Told(trap, f"Not taken back. {_words(error)}", True), 422)
+        return _page(daemon, Told(trap, f"Not taken back. {words_of(error)}", True), 422)
     return _page(daemon, Told(trap, "Taken back."))
 
 
@@ -83,7 +81,7 @@ def right(trap: str, fields: Fields, daemon: TheDaemon) -> HTMLResponse:
     try:
         confirm(trap, daemon, AcknowledgeIn(by=fields.get("by") or None))
     except (Problem, JournalError, ValidationError) as error:
-        return _page(daemon, Told(trap, f"Not recorded. {_words(error)}", True), 422)
+        return _page(daemon, Told(trap, f"Not recorded. {words_of(error)}", True), 422)
     return _page(daemon, Told(trap, "Learned from."))
 
 
@@ -126,15 +124,3 @@ def _drain_in(fields: Mapping[str, str]) -> DrainIn:
     if volume := fields.get("volume"):
         said |= {"volume": number(volume), "unit": fields.get("unit")}
     return DrainIn.model_validate(said)
-
-
-def _words(error: Exception) -> str:
-    """What was wrong, for whoever typed it."""
-    if isinstance(error, ValidationError):
-        points = points_of([dict(each) for each in error.errors()])
-    elif isinstance(error, Problem):
-        points = list(error.points)
-    else:
-        points = []
-    said = [f"{point.value}: {point.remedy}" if point.value else point.remedy for point in points]
-    return " ".join(said) or (error.detail if isinstance(error, Problem) else str(error))
