@@ -307,6 +307,13 @@ class Core:
             tick.state, figures, day = closed
             tick.noted.append(Noted(hours=(figures,), days=(day,)))
 
+    def watched(self, state: CoreState) -> tuple[CoreState, list[Transition], list[Reminder]]:
+        """A state that was worked out elsewhere, with its alarms and its reminders."""
+        tick = _Tick(state)
+        self._watch(tick)
+        self._remind(tick)
+        return tick.state, tick.transitions, tick.reminders
+
     # ---- what was heard ----
 
     def _heard(self, readings: Sequence[Reading], after_us: int, until_us: int) -> Heard:

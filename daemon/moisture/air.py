@@ -168,7 +168,7 @@ def saturated_humidity_ratio(temperature_k: Values, pressure_pa: Values) -> Valu
 
 def saturated_humidity_ratio_unchecked(temperature_k: Array, pressure_pa: Array) -> Array:
     """`saturated_humidity_ratio` for arrays of one or more dimensions, without checks."""
-    return _ratio_of_fraction(hardy.saturated_mole_fraction(temperature_k, pressure_pa))
+    return ratio_of_fraction(hardy.saturated_mole_fraction(temperature_k, pressure_pa))
 
 
 @overload
@@ -221,7 +221,7 @@ def humidity_ratio(temperature_k: Values, pressure_pa: Values, relative_humidity
 def humidity_ratio_unchecked(t: Array, pressure_pa: Array, relative_humidity: Array) -> Array:
     """`humidity_ratio` for arrays of one or more dimensions, without checks."""
     x = hardy.saturated_mole_fraction(t, pressure_pa) * hardy.water_over_ice(t)
-    return _ratio_of_fraction(x * relative_humidity)
+    return ratio_of_fraction(x * relative_humidity)
 
 
 @overload
@@ -285,7 +285,8 @@ def dew_point_unchecked(
     return hardy.saturation_temperature(fraction, pressure_pa, over_water)
 
 
-def _ratio_of_fraction(x: Array) -> Array:
+def ratio_of_fraction(x: Array) -> Array:
+    """Humidity ratio of moist air with a mole fraction of vapor, kg/kg, without checks."""
     with np.errstate(divide="ignore"):
         ratio: Array = WATER_TO_DRY_AIR * x / (1.0 - x)
     return ratio

@@ -43,11 +43,12 @@ def nothing_yet(plan: Plan) -> Carried:
 
 def carry(plan: Plan, carried: Carried, air: Array, liquid: Array) -> Carried:
     """After a step in which this much dry air and liquid left, kg, (outlets, members)."""
-    keeps = np.exp(-air / _memory_kg(plan))
+    keeps = np.exp(-air / memory_kg(plan))
     return Carried(carried.liquid * keeps + liquid, carried.air * keeps + air)
 
 
-def _memory_kg(plan: Plan) -> Array:
+def memory_kg(plan: Plan) -> Array:
+    """Over how much air each outlet forgets, kg, (outlets, 1)."""
     delivered_kg_per_s = plan.line.compressor.delivered.value * REFERENCE_DRY_AIR_KG_PER_M3
     shares = np.array([outlet.share for outlet in plan.line.outlets])
     memory: Array = np.maximum(shares[:, None] * delivered_kg_per_s * MEMORY_S, _LEAST_MEMORY_KG)

@@ -12,6 +12,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
+import numpy.typing as npt
 
 from daemon.moisture.contact import STALE_AFTER_PERIODS
 from daemon.moisture.description import Fixed, Like, Measured, RiseByDuty, Source
@@ -37,6 +38,19 @@ class Held:
 
 
 @dataclass(frozen=True, slots=True)
+class HeldAlong(Held):
+    """What a channel held at each of several ticks: values are a column, (ticks, 1).
+
+    It was silent at all of these ticks, or at none.
+    """
+
+    silent: bool = False
+
+    def stale(self, now_us: int, period_us: int) -> bool:
+        return self.silent
+
+
+@dataclass(frozen=True, slots=True)
 class Lapse:
     """How a station's value stood to its rule when its channel went stale."""
 
@@ -47,7 +61,8 @@ class Lapse:
 
 @dataclass(frozen=True, slots=True)
 class Conditions:
-    """Every station's state at one time. Arrays are (stations, members)."""
+    """Every station's state at one time. Arrays are (stations, members), or at several ticks
+    (stations, ticks, members)."""
 
     temperature_k: Array
     pressure_pa: Array
@@ -75,11 +90,14 @@ class Evaluation:
     duty: Array  # filtered, (stations, members)
     now_us: int
     lapses: dict[str, Lapse] = field(default_factory=dict)
+    # at several ticks, whose values `held` then has: their times as a column, (ticks, 1)
+    along_us: npt.NDArray[np.int64] | None = None
 
     def conditions(self) -> Conditions:
         """Temperatures, pressures and the intake's humidity now."""
         plan = self.plan
-        shape = (len(plan.stations), plan.line.members)
+        ticks = () if self.along_us is None else (len(self.along_us),)
+        shape = (len(plan.stations), *ticks, plan.line.members)
         temperature, pressure = np.empty(shape), np.empty(shape)
         measured = set()
         for i in plan.temperature_order:
@@ -129,7 +147,7 @@ class Evaluation:
 
     def _by_channel(self, what: str, i: int, source: Measured, barometer: Array | None) -> Array:
         spread = self.offsets.channels[source.channel] * (source.give_or_take * HALF_WIDTH_TO_SD)
-        spread += self.held[source.channel].value + source.plus
+        spread = spread + (self.held[source.channel].value + source.plus)
         if source.plus_give_or_take > 0.0:
             spread += self._offset(what, i) * (source.plus_give_or_take * HALF_WIDTH_TO_SD)
         if source.gauge and barometer is not None:
@@ -184,9 +202,10 @@ class Evaluation:
         sd = rule.give_or_take * HALF_WIDTH_TO_SD
         if lapse.since_us < 0:
             return middle + lapse.unknown * sd
-        age_s = (self.now_us - lapse.since_us) / 1e6
-        remains = math.exp(-age_s / FORGETS_AFTER_S[what])
-        grown = sd * math.sqrt(1.0 - remains * remains)
+        now_us = self.now_us if self.along_us is None else self.along_us
+        age_s = (now_us - lapse.since_us) / 1e6
+        remains = np.exp(-age_s / FORGETS_AFTER_S[what])
+        grown = sd * np.sqrt(1.0 - remains * remains)
         return middle + lapse.deviation * remains + lapse.unknown * grown
 
     def _begin_lapse(

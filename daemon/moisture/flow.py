@@ -169,7 +169,7 @@ def move(
             part = plan.share[receiver] / max(plan.share[plan.purging[number]], 1e-300)
             wanted = wanted - part * state.purged[number]
         entered[row] = np.maximum(wanted - state.entered[row], 0.0)
-    moved = _route(plan, drawn, used, entered, purging)
+    moved = route(plan, drawn, used, entered, purging)
     if len(plan.receivers) > 1:
         moved = _within_stock(plan, state, moved)
     rows = list(plan.receivers)
@@ -206,13 +206,16 @@ def _purge(plan: Plan, used: Array, outlets: Array, purging: Array) -> tuple[Arr
     return purge, outlets
 
 
-def _route(
-    plan: Plan, drawn: Array, used: Array, entered: Array, purging: Array | None
-) -> AirMoved:
-    """Air into and out of every station, from the ends of the line back to the intake."""
-    shape = (len(plan.stations), used.size)
+def route(plan: Plan, drawn: Array, used: Array, entered: Array, purging: Array | None) -> AirMoved:
+    """Air into and out of every station, from the ends of the line back to the intake.
+
+    All arrays may be of several ticks: (ticks, members) for (members,).
+    """
+    shape = (len(plan.stations), *used.shape)
     into, through = np.zeros(shape), np.zeros(shape)
-    outlets = np.array([outlet.share for outlet in plan.line.outlets])[:, None] * used
+    outlets = np.empty((len(plan.line.outlets), *used.shape))
+    for number, outlet in enumerate(plan.line.outlets):
+        outlets[number] = outlet.share * used
     purge = None
     if purging is not None:
         purge, outlets = _purge(plan, used, outlets, purging)

@@ -233,7 +233,7 @@ class _Step:
             spill = np.where(moving, self.spilled[i], 0.0)
             self.waiting[i] -= liquid
             self.spilled[i] -= spill
-        parts = self._parts(i, safe)
+        parts = parts_of(self.plan, self.air, i, safe)
         for flow, part in zip(self.plan.outflows[i], parts, strict=True):
             if flow.station >= 0:
                 self.vapor_in[flow.station] += part * vapor
@@ -246,18 +246,19 @@ class _Step:
                 self.liquid_out += gone
                 self.liquid_at[flow.outlet] = gone
 
-    def _parts(self, i: int, through: Array) -> list[Array | float]:
-        """How the air that leaves a station divides; what the others leave goes the last way."""
-        parts: list[Array | float] = []
-        rest: Array | float = 1.0
-        for flow in self.plan.outflows[i][:-1]:
-            to_station = flow.station >= 0
-            there = self.air.into[flow.station] if to_station else self.air.outlets[flow.outlet]
-            parts.append(there / through)
-            rest = rest - parts[-1]
-        if self.plan.outflows[i]:
-            parts.append(rest)
-        return parts
+
+def parts_of(plan: Plan, moved: AirMoved, i: int, through: Array) -> list[Array | float]:
+    """How the air that leaves a station divides; what the others leave goes the last way."""
+    parts: list[Array | float] = []
+    rest: Array | float = 1.0
+    for flow in plan.outflows[i][:-1]:
+        to_station = flow.station >= 0
+        there = moved.into[flow.station] if to_station else moved.outlets[flow.outlet]
+        parts.append(there / through)
+        rest = rest - parts[-1]
+    if plan.outflows[i]:
+        parts.append(rest)
+    return parts
 
 
 def _may_spill(plan: Plan, parameters: WaterParameters, state: WaterState, water_in: Array) -> bool:

@@ -90,7 +90,7 @@ class Model:
         self.plan: Plan = plan_line(description)
         self.fittings = Fittings(self.plan)
         self.period_us = round(description.period_s * 1e6)
-        self._gauge = self._watched_receiver()
+        self.gauge = self._watched_receiver()
         # a station's own rule, or what holds while its sensor is silent: one lag, never both
         lagging = [
             s.temperature if isinstance(s.temperature, RiseByDuty) else rule
@@ -202,9 +202,9 @@ class Model:
         now = self.fittings.warmed(fitted, state.parameters.fittings, evaluation.conditions())
         saturated = self._saturated(state, now)
         intake_ratio = np.minimum(self._intake_ratio(now), saturated[0])
-        drawn = on_s * self._delivered(state.parameters, now, intake_ratio)
+        drawn = on_s * self.delivered(state.parameters, now, intake_ratio)
         if (meter := plan.line.compressor.flow_meter) is not None:
-            drawn = self._metered(meter, held, offsets, to_us, dt_s, drawn)
+            drawn = self.metered(meter, held, offsets, to_us, dt_s, drawn)
         before, water, ledger = self._sighted(state, now)
         if offsets is not state.offsets:
             as_before = replace(evaluation, offsets=state.offsets, lapses=dict(state.lapses))
@@ -410,9 +410,9 @@ class Model:
         Where the contact was known, the contact counts.
         """
         pump, booked_us = state.pump, 0
-        if self._gauge is None:
+        if self.gauge is None:
             return pump, booked_us
-        channel, span_pa = self._gauge
+        channel, span_pa = self.gauge
         for time_us, value, good in heard.channels.get(channel, ()):
             if good:
                 pump, from_us, until_us = pump.told(value, time_us, span_pa)
@@ -433,8 +433,8 @@ class Model:
         known = np.full(self.plan.line.members, times.on_us / 1e6)
         if times.unknown_us == 0:
             return known
-        if self._gauge is not None:
-            gauge = held.get(self._gauge[0])
+        if self.gauge is not None:
+            gauge = held.get(self.gauge[0])
             if gauge is not None and not gauge.stale(to_us, self.period_us):
                 return known + booked_us / 1e6
         if not is_open and self.plan.line.compressor.off_when_closed:
@@ -473,14 +473,14 @@ class Model:
         )
         return ratio
 
-    def _delivered(self, parameters: Parameters, now: Conditions, ratio: Array) -> Array:
+    def delivered(self, parameters: Parameters, now: Conditions, ratio: Array) -> Array:
         """Dry air drawn in per second of running, kg/s: free air is at intake conditions."""
         density: Array = air.dry_air_density_unchecked(
             now.temperature_k[0], now.pressure_pa[0], ratio
         )
         return parameters.delivered_m3_per_s * density
 
-    def _metered(
+    def metered(
         self,
         meter: Measured,
         held: Mapping[str, Held],

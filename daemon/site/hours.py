@@ -202,3 +202,16 @@ def _skipped(zone: ZoneInfo, near: datetime) -> int:
         else:
             high = middle
     return high * SECOND_US
+
+
+def open_around(hours: Hours, timezone: str, at_us: int) -> tuple[Span, ...] | None:
+    """The openings of a local day and of the days beside it, as [opens, closes) in microseconds;
+    None for a shop that is always open."""
+    if hours.always_open:
+        return None
+    today = local_day(timezone, at_us)
+    return tuple(
+        span
+        for day in (today - timedelta(1), today, today + timedelta(1))
+        for span in _openings(hours, timezone, day)
+    )

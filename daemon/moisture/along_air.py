@@ -1,0 +1,249 @@
+"""Conditions and dry air at several ticks at once, as `Model.step` makes them one by one.
+
+The same formulas on arrays of (ticks, members) for (members,): what does not hang on the tick
+before is worked out for all ticks together; the cumulative sums go in order, so that they are the
+same bits. A stretch of ticks is one period apart and within one hour, so that nobody's beliefs
+change in it, and every channel is silent all along or not at all.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+from typing import Any, cast
+
+import numpy as np
+import numpy.typing as npt
+
+from daemon.moisture import air, flow, hardy
+from daemon.moisture.conditions import Conditions, Evaluation, HeldAlong
+from daemon.moisture.ensemble import Array
+from daemon.moisture.model import DUTY_LOGIT_SD, DUTY_MEMORY_S, Model, State
+from daemon.moisture.plan import Plan
+
+Ints = npt.NDArray[np.int64]
+Bools = npt.NDArray[np.bool_]
+
+
+@dataclass(frozen=True, slots=True)
+class Course:
+    """What was heard at each of several ticks. Arrays are (ticks,)."""
+
+    times_us: Ints
+    values: Mapping[str, Array]  # by the line's channels: the last good value by each tick
+    told_us: Mapping[str, Ints]  # and when that was
+    silent: Mapping[str, bool]  # all along; a channel that never spoke is none of the three
+    is_open: Bools
+    on_us: Ints  # how long the contact was closed in each tick
+    unknown_us: Ints  # and how long nobody knows
+    booked_us: Ints  # what the gauge tells afterwards
+
+    def rows(self, first: int, last: int) -> Course:
+        """The ticks from `first` on, before `last`."""
+        part = slice(first, last)
+        return Course(
+            self.times_us[part],
+            {name: values[part] for name, values in self.values.items()},
+            {name: times[part] for name, times in self.told_us.items()},
+            self.silent,
+            self.is_open[part],
+            self.on_us[part],
+            self.unknown_us[part],
+            self.booked_us[part],
+        )
+
+
+def column(values: npt.NDArray[Any]) -> Array:
+    """One value a tick, to be held against members."""
+    return values.astype(np.float64)[:, None]
+
+
+def running_sum(start: Array, steps: Array) -> Array:
+    """start + steps[0], that + steps[1], ... added up in order, (ticks, members)."""
+    total = np.empty_like(steps)
+    before = start
+    for row, step in zip(total, steps, strict=True):
+        np.add(before, step, out=row)
+        before = row
+    return total
+
+
+def shifted(start: Array, after: Array) -> Array:
+    """What was before each tick, of what is after it, (ticks, members)."""
+    before = np.empty_like(after)
+    before[0] = start
+    before[1:] = after[:-1]
+    return before
+
+
+# ---- how long the compressor ran ----
+
+
+def duties_known(known: float, course: Course, dt_s: float) -> list[float]:
+    """`State.duty_known` before the first tick and after each."""
+    weight = -math.expm1(-dt_s / DUTY_MEMORY_S)
+    found = [known]
+    for on_us, unknown_us in zip(course.on_us.tolist(), course.unknown_us.tolist(), strict=True):
+        if unknown_us == 0:
+            known += (on_us / 1e6 / dt_s - known) * weight
+        found.append(known)
+    return found
+
+
+def on_time(model: Model, state: State, course: Course, known: Sequence[float]) -> Array:
+    """Seconds that the compressor made air, (ticks, 1) or (ticks, members)."""
+    on_s = column(course.on_us) / 1e6
+    unknown = course.unknown_us > 0
+    if not unknown.any():
+        return on_s
+    gauge = model.gauge
+    if gauge is not None and not course.silent.get(gauge[0], True):
+        return on_s + np.where(unknown, course.booked_us, 0)[:, None] / 1e6
+    if model.plan.line.compressor.off_when_closed:
+        unknown &= course.is_open
+    middle = np.clip(np.array(known[:-1]), 0.02, 0.98)[:, None]
+    logit = np.log(middle / (1.0 - middle)) + DUTY_LOGIT_SD * state.parameters.duty
+    unwatched = np.where(unknown, course.unknown_us, 0)[:, None] / 1e6
+    found: Array = on_s + unwatched / (1.0 + np.exp(-logit))
+    return found
+
+
+def duties(model: Model, state: State, on_s: Array, dt_s: float) -> dict[int, Array]:
+    """The filtered duty of the stations that follow it, (ticks, members)."""
+    now = np.minimum(on_s / dt_s, 1.0)
+    found = {}
+    for i, constant_s in model.lagging:
+        weight = -math.expm1(-dt_s / constant_s)
+        rows = np.empty((len(now), state.duty.shape[1]))
+        before = state.duty[i]
+        for after, share in zip(rows, now, strict=True):
+            np.subtract(share, before, out=after)
+            np.multiply(after, weight, out=after)
+            np.add(after, before, out=after)
+            before = after
+        found[i] = rows
+    return found
+
+
+# ---- conditions ----
+
+
+def conditions(
+    model: Model, state: State, course: Course, duty: Mapping[int, Array]
+) -> tuple[Conditions, dict[str, HeldAlong]] | None:
+    """Temperatures, pressures and humidity at every tick; None where something begins anew."""
+    held = {
+        name: HeldAlong(cast(Any, values[:, None]), silent=course.silent[name])
+        for name, values in course.values.items()
+    }
+    evaluation = Evaluation(
+        model.plan,
+        held,
+        state.offsets,
+        cast(Any, duty),
+        int(course.times_us[0]),
+        dict(state.lapses),
+        course.times_us[:, None],
+    )
+    now = evaluation.conditions()
+    return (now, held) if evaluation.lapses.keys() == state.lapses.keys() else None
+
+
+def saturation(now: Conditions) -> tuple[Array, Array]:
+    """Every station's humidity ratio at saturation, and that of the air drawn in, at every tick.
+
+    Station by station: what is worked on then stays near the processor.
+    """
+    saturated = np.empty(now.temperature_k.shape)
+    intake = np.empty(0)
+    for i, (kelvin, pressure) in enumerate(zip(now.temperature_k, now.pressure_pa, strict=True)):
+        fraction = hardy.saturated_mole_fraction(kelvin, pressure)
+        saturated[i] = air.ratio_of_fraction(fraction)
+        if i == 0:
+            fraction = fraction * hardy.water_over_ice(kelvin) * now.relative_humidity
+            intake = np.minimum(air.ratio_of_fraction(fraction), saturated[0])
+    return saturated, intake
+
+
+# ---- dry air ----
+
+
+@dataclass(slots=True)
+class AirAlong:
+    """Dry air at every tick. Arrays are (ticks, members), with what they are of before."""
+
+    drawn: Array  # cumulative
+    used: Array  # cumulative
+    used_before: Array  # the same before the first tick, (members,)
+    entered: Array  # (receivers, ...), cumulative
+    measured: Array  # (receivers, ...)
+    stored: Array  # (receivers, ...), after each tick
+    before: Array  # (receivers, ...), before each tick
+    moved: flow.AirMoved
+    good: int  # so many ticks from the first are as here
+
+
+def moved_along(plan: Plan, state: flow.AirState, drawn: Array, measured: Array) -> AirAlong:
+    """`flow.move` over several ticks, for a line without purging dryers."""
+    total = running_sum(state.drawn, drawn)
+    change = measured - state.first[:, None, :]
+    cumulative = total - change.sum(axis=0)
+    several = len(plan.receivers) > 1
+    shares = [outlet.share for outlet in plan.line.outlets] if several else []
+    used, used_total = _new_maxima(state.used, cumulative, shares)
+    entered = np.empty_like(measured)
+    entered_total = np.empty_like(measured)
+    for row, receiver in enumerate(plan.receivers):
+        if receiver in plan.trunk:
+            entered[row] = drawn
+            entered_total[row] = running_sum(state.entered[row], drawn)
+            continue
+        below = [plan.receivers.index(other) for other in plan.receivers_below[receiver]]
+        wanted = plan.share[receiver] * cumulative + change[below].sum(axis=0)
+        entered[row], entered_total[row] = _new_maxima(state.entered[row], wanted, [])
+    moved = flow.route(plan, drawn, used, entered, None)
+    stored, before = np.empty_like(measured), np.empty_like(measured)
+    good = len(drawn)
+    for row, receiver in enumerate(plan.receivers):
+        net = moved.into[receiver] - moved.through[receiver]
+        stored[row] = running_sum(state.stored[row], net)
+        before[row] = shifted(state.stored[row], stored[row])
+        if several:
+            stock = flow.MOST_OF_STOCK * before[row] + moved.into[receiver]
+            held_back = (stock < moved.through[receiver]).any(axis=1)
+            if held_back.any():
+                good = min(good, int(held_back.argmax()))
+    return AirAlong(
+        total, used_total, state.used, entered_total, measured, stored, before, moved, good
+    )
+
+
+def _new_maxima(start: Array, wanted: Array, shares: Sequence[float]) -> tuple[Array, Array]:
+    """By how much each tick goes beyond all before it, and the running maximum.
+
+    Where outlets share it, as the sum of their shares.
+    """
+    steps, totals = np.empty_like(wanted), np.empty_like(wanted)
+    before = start
+    for want, step, total in zip(wanted, steps, totals, strict=True):
+        np.subtract(want, before, out=step)
+        np.maximum(step, 0.0, out=step)
+        if shares:
+            np.add(before, np.array([share * step for share in shares]).sum(axis=0), out=total)
+        else:
+            np.add(before, step, out=total)
+        before = total
+    return steps, totals
+
+
+def measured_along(model: Model, state: State, now: Conditions) -> Array:
+    """`Model.measured` at every tick, (receivers, ticks, members)."""
+    parameters = replace(state.parameters, volume_m3=state.parameters.volume_m3[:, None, :])
+    shape = (len(model.plan.receivers), *now.temperature_k.shape[1:])
+    before = replace(
+        state.air,
+        ratio=state.air.ratio[:, None, :],
+        measured=np.broadcast_to(state.air.measured[:, None, :], shape),
+    )
+    return np.ascontiguousarray(model.measured(before, parameters, now))

@@ -1,0 +1,427 @@
+"""Water through the line at several ticks at once, as `line.step` moves it one by one.
+
+Along time only three things hang on the tick before: a receiver's vapor and pool, liquid that
+waits for air, and a trap that is full. The rest is worked out station by station for all ticks
+together. Arrays are (ticks, members); None stands for nothing at any tick.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field, replace
+
+import numpy as np
+
+from daemon.moisture import carried
+from daemon.moisture.along_air import AirAlong, Bools, running_sum, shifted
+from daemon.moisture.ensemble import Array
+from daemon.moisture.line import Ledger, WaterParameters, WaterState, parts_of
+from daemon.moisture.plan import Plan
+
+
+@dataclass(slots=True)
+class _Waiting:
+    """Liquid that waits for air: what there is after each tick."""
+
+    start: Array  # (members,)
+    rows: Array | None = None  # None: `start` until air first moves, then nothing
+    moving: Bools | None = None  # None: air moves at the first tick already
+
+    def at(self, row: int) -> Array:
+        """After one tick, (members,)."""
+        if self.rows is not None:
+            found: Array = self.rows[row]
+            return found
+        if self.moving is None:
+            return np.zeros_like(self.start)
+        still = ~self.moving[: row + 1].any(axis=0)
+        return self.start * still
+
+    def all(self, ticks: int) -> Array:
+        """After every tick, (ticks, members)."""
+        if self.rows is not None:
+            return self.rows
+        return np.array([self.at(row) for row in range(ticks)])
+
+
+@dataclass(slots=True)
+class _Place:
+    """What happens at one station."""
+
+    vapor_out: Array
+    caught: Array | None = None  # what its trap was given
+    back: Array | None = None  # what its pool gave back to the air
+    trap: Array | None = None  # what it held after each tick; None: the sum of the above
+    over: Array | None = None  # what ran over, of a receiver taken tick by tick
+    waiting: _Waiting = field(init=False)
+    spilled: _Waiting = field(init=False)
+
+
+@dataclass(slots=True)
+class WaterAlong:
+    """The water of several ticks, worked out from the state before them."""
+
+    plan: Plan
+    parameters: WaterParameters
+    state: WaterState
+    ledger: Ledger
+    air: AirAlong
+    saturated: Array  # (stations, ticks, members)
+    intake_ratio: Array
+    dt_s: float
+    places: list[_Place] = field(default_factory=list)
+    water_in: Array = field(init=False)
+    vapor: dict[int, Array] = field(default_factory=dict)  # by receiver's row, after each tick
+    vapor_out: Array | None = None
+    liquid_out: Array | None = None
+    liquid_at: dict[int, Array] = field(default_factory=dict)  # by outlet
+    # what comes to each station
+    _vapor_in: list[Array | None] = field(init=False)
+    _liquid_in: list[Array | None] = field(init=False)
+    _spill_in: list[Array | None] = field(init=False)
+
+    def __post_init__(self) -> None:
+        count = len(self.plan.stations)
+        self._vapor_in, self._liquid_in = [None] * count, [None] * count
+        self._spill_in = [None] * count
+        self.water_in = self.air.moved.through[0] * self.intake_ratio
+        self._vapor_in[0] = self.water_in
+        for i in range(len(self.plan.stations)):
+            self._station(i)
+
+    # ---- one station ----
+
+    def _station(self, i: int) -> None:
+        vapor_in = self._vapor_in[i]
+        if vapor_in is None:
+            vapor_in = np.zeros_like(self.water_in)
+        place = _Place(vapor_in)
+        self.places.append(place)
+        if i in self.plan.receivers:
+            liquid = self._receiver(i, vapor_in, place)
+        else:
+            liquid = self._passing(i, vapor_in, place)
+        new, spill = self._divide(i, liquid, place)
+        self._hand_on(i, new, spill, place)
+
+    def _passing(self, i: int, vapor_in: Array, place: _Place) -> Array | None:
+        """The liquid at a station after vapor has condensed, or liquid evaporated."""
+        liquid = self._liquid_in[i]
+        possible = self.saturated[i] * self.air.moved.into[i]
+        if liquid is None:
+            place.vapor_out = np.minimum(vapor_in, possible)
+            condensed: Array = vapor_in - place.vapor_out
+            return condensed if condensed.any() else None
+        wetted = vapor_in + self.parameters.evaporated[i] * liquid
+        place.vapor_out = np.minimum(wetted, possible)
+        found: Array = liquid + (vapor_in - place.vapor_out)
+        return found
+
+    def _divide(
+        self, i: int, liquid: Array | None, place: _Place
+    ) -> tuple[Array | None, Array | None]:
+        """What goes on from a station: liquid that may evaporate, and what ran over."""
+        spill = self._spill_in[i]
+        if self.plan.stations[i].trap is None:
+            return liquid, spill
+        kept = self.parameters.separation[i]
+        caught = None if liquid is None else kept * liquid
+        goes_on = None if liquid is None or caught is None else liquid - caught
+        if spill is not None:
+            of_spill = kept * spill
+            caught = of_spill if caught is None else caught + of_spill
+            spill = spill - of_spill
+        place.caught = caught
+        over = self._over(i, place)
+        if over is not None:
+            spill = over if spill is None else spill + over
+        return goes_on, spill
+
+    def _over(self, i: int, place: _Place) -> Array | None:
+        """What a trap cannot hold."""
+        start, capacity = self.state.trap[i], self.parameters.capacity_kg[i]
+        if place.trap is not None:  # a receiver that was worked out tick by tick
+            return place.over
+        given = start if place.caught is None else start + place.caught.sum(axis=0)
+        if not (given > capacity).any():
+            return None
+        caught = np.zeros_like(self.water_in) if place.caught is None else place.caught
+        rows = np.minimum(running_sum(start, caught), capacity)
+        place.trap = rows
+        over: Array = np.maximum(shifted(start, rows) + caught - capacity, 0.0)
+        return over
+
+    # ---- onwards ----
+
+    def _hand_on(self, i: int, liquid: Array | None, spill: Array | None, place: _Place) -> None:
+        through = self.air.moved.through[i]
+        moving = None if through.min() > 0.0 else through > 0.0
+        shape, state = through.shape, self.state
+        liquid, place.waiting = _released(state.waiting[i], liquid, moving, shape)
+        spill, place.spilled = _released(state.spilled[i], spill, moving, shape)
+        safe = through if moving is None else np.where(moving, through, 1.0)
+        parts = parts_of(self.plan, self.air.moved, i, safe)
+        for flow, part in zip(self.plan.outflows[i], parts, strict=True):
+            vapor, wet, ran_over = (_part(part, each) for each in (place.vapor_out, liquid, spill))
+            if flow.station >= 0:
+                self._vapor_in[flow.station] = vapor
+                self._liquid_in[flow.station] = wet
+                self._spill_in[flow.station] = ran_over
+                continue
+            self.vapor_out = _plus(self.vapor_out, vapor)
+            gone = _plus(wet, ran_over)
+            if gone is not None:
+                self.liquid_out = _plus(self.liquid_out, gone)
+                self.liquid_at[flow.outlet] = gone
+
+    # ---- a receiver ----
+
+    def _receiver(self, i: int, vapor_in: Array, place: _Place) -> Array | None:
+        """Vapor mixes, a pool gives back; gives the liquid there.
+
+        With u = vapor + what came, S what the air there can hold: v = min(u, S), and the pool
+        gives back p (1 - v / S), as long as it has that; what is left after the share r of the air
+        has gone is (1 - r) (v + that).
+        """
+        row = self.plan.receivers.index(i)
+        liquid, moved = self._liquid_in[i], self.air.moved
+        total = self.air.before[row] + moved.into[i]
+        possible = self.saturated[i] * total
+        goes = moved.through[i] / total
+        wetted = None if liquid is None else self.parameters.evaporated[i] * liquid
+        comes = vapor_in if wetted is None else vapor_in + wetted
+        pool = np.zeros(comes.shape[1])
+        if self.plan.stations[i].trap is not None:
+            pool = self.parameters.pool_kg_per_s * self.dt_s
+        course = _Receiver(comes, possible, goes, pool, self.state.vapor[row])
+        held = course.mix()
+        found = course.came - held  # what condensed, less what evaporated
+        if wetted is not None and liquid is not None:
+            found = found - wetted
+            found += liquid
+        back = pool * (1.0 - held / possible)
+        small = bool((pool > possible).any())  # hardly more than nothing: never a tank
+        if small or not self._pool_suffices(i, found, back):
+            return self._tick_by_tick(i, course, wetted, place)
+        place.back = back
+        vapor = held + back
+        place.vapor_out = vapor * goes
+        self.vapor[row] = vapor - place.vapor_out
+        return found
+
+    def _pool_suffices(self, i: int, liquid: Array, back: Array) -> bool:
+        """Whether a trap could give back all that it was asked for, and never ran over."""
+        if self.plan.stations[i].trap is None:
+            return True
+        start = self.state.trap[i]
+        asked, most = back.sum(axis=0), back.max(axis=0)
+        if (asked == 0.0).all():
+            return True
+        if not (start - asked >= most).all():
+            return False
+        given = start + (self.parameters.separation[i] * liquid).sum(axis=0)
+        spills = self._spill_in[i] is not None or (given > self.parameters.capacity_kg[i]).any()
+        return not spills
+
+    def _tick_by_tick(
+        self, i: int, course: _Receiver, wetted: Array | None, place: _Place
+    ) -> Array:
+        """The same where the pool runs empty or the trap runs over, in order."""
+        row = self.plan.receivers.index(i)
+        liquid_in, spill_in = self._liquid_in[i], self._spill_in[i]
+        kept, capacity = self.parameters.separation[i], self.parameters.capacity_kg[i]
+        comes, possible, goes, pool = course.comes, course.possible, course.goes, course.pool
+        asked_share = pool / possible
+        stays = 1.0 - goes
+        shape = comes.shape
+        liquid, back, trap, over = (np.empty(shape) for _ in range(4))
+        vapor, vapor_out = np.empty(shape), np.empty(shape)
+        came, held = np.empty(shape[1]), np.empty(shape[1])
+        before, in_trap = course.start, self.state.trap[i]
+        for n in range(shape[0]):
+            np.add(before, comes[n], out=came)
+            np.minimum(came, possible[n], out=held)
+            np.subtract(came, held, out=liquid[n])
+            if wetted is not None and liquid_in is not None:
+                liquid[n] -= wetted[n]
+                liquid[n] += liquid_in[n]
+            np.multiply(held, asked_share[n], out=back[n])
+            np.subtract(pool, back[n], out=back[n])
+            np.minimum(back[n], in_trap, out=back[n])
+            np.minimum(back[n], possible[n] - held, out=back[n])
+            np.maximum(back[n], 0.0, out=back[n])
+            held += back[n]
+            np.multiply(held, goes[n], out=vapor_out[n])
+            np.multiply(held, stays[n], out=vapor[n])
+            before = vapor[n]
+            np.subtract(in_trap, back[n], out=trap[n])
+            trap[n] += kept * liquid[n]
+            if spill_in is not None:
+                trap[n] += kept * spill_in[n]
+            np.subtract(trap[n], capacity, out=over[n])
+            np.maximum(over[n], 0.0, out=over[n])
+            trap[n] -= over[n]
+            in_trap = trap[n]
+        place.back, place.trap, place.vapor_out = back, trap, vapor_out
+        self.vapor[row] = vapor
+        place.over = over if over.any() else None
+        return liquid
+
+    # ---- what is where, after one tick ----
+
+    def trap_at(self, i: int, row: int) -> Array:
+        """What a trap holds, kg, (members,)."""
+        place, start = self.places[i], self.state.trap[i]
+        if place.trap is not None:
+            found: Array = place.trap[row]
+            return found
+        held: Array = start
+        if place.caught is not None:
+            held = held + place.caught[: row + 1].sum(axis=0)
+        if place.back is not None:
+            held = held - place.back[: row + 1].sum(axis=0)
+        return held
+
+    def trap_rows(self, i: int) -> Array:
+        """What a trap holds after every tick, kg."""
+        place = self.places[i]
+        if place.trap is None:
+            zero = np.zeros_like(self.water_in)
+            caught = zero if place.caught is None else place.caught
+            gained = caught if place.back is None else caught - place.back
+            place.trap = running_sum(self.state.trap[i], gained)
+        return place.trap
+
+    def on_its_way_rows(self, i: int) -> Array:
+        """Liquid that waits at a station after every tick, kg."""
+        place, ticks = self.places[i], len(self.water_in)
+        return place.waiting.all(ticks) + place.spilled.all(ticks)
+
+    def at(self, row: int) -> tuple[WaterState, Ledger]:
+        """The state and the ledger after one tick."""
+        plan, state, ledger, until = self.plan, self.state, self.ledger, row + 1
+        trap, waiting, spilled = state.trap.copy(), state.waiting.copy(), state.spilled.copy()
+        ratio, shed = state.leaving_ratio.copy(), ledger.shed.copy()
+        for i, place in enumerate(self.places):
+            if plan.stations[i].trap is not None:
+                trap[i] = self.trap_at(i, row)
+                if place.caught is not None:
+                    shed[i] += place.caught[:until].sum(axis=0)
+            waiting[i], spilled[i] = place.waiting.at(row), place.spilled.at(row)
+            self._leaving(i, row, ratio[i])
+        vapor = np.array([self.vapor[n][row] for n in range(len(plan.receivers))])
+        after = WaterState(
+            trap,
+            waiting,
+            spilled,
+            vapor.reshape(state.vapor.shape),
+            ratio,
+            self._carried(until),
+        )
+        booked = replace(
+            ledger,
+            water_in=ledger.water_in + self.water_in[:until].sum(axis=0),
+            vapor_out=_booked(ledger.vapor_out, self.vapor_out, until),
+            liquid_out=_booked(ledger.liquid_out, self.liquid_out, until),
+            shed=shed,
+        )
+        return after, booked
+
+    def _leaving(self, i: int, row: int, ratio: Array) -> None:
+        """The humidity ratio of the air that last left a station, in place."""
+        vapor, through = self.places[i].vapor_out, self.air.moved.through[i]
+        last = through[row]
+        if last.min() > 0.0:
+            np.divide(vapor[row], last, out=ratio)
+            return
+        moving = through[: row + 1] > 0.0
+        ever = np.flatnonzero(moving.any(axis=0))
+        when = row - moving[::-1].argmax(axis=0)[ever]
+        ratio[ever] = vapor[when, ever] / through[when, ever]
+
+    def _carried(self, until: int) -> carried.Carried:
+        """What outlets carried lately: each tick's part fades with the air that left after it."""
+        before = self.state.carried
+        liquid, air = before.liquid.copy(), before.air.copy()
+        memory, used = carried.memory_kg(self.plan), self.air.used[:until]
+        for number in range(len(air)):
+            scale = self.plan.line.outlets[number].share / memory[number]
+            fades = np.exp((self.air.used_before - used[-1]) * scale)
+            air[number] *= fades
+            liquid[number] *= fades
+            weight = np.exp((used - used[-1]) * scale)
+            air[number] += (self.air.moved.outlets[number][:until] * weight).sum(axis=0)
+            gone = self.liquid_at.get(number)
+            if gone is not None:
+                liquid[number] += (gone[:until] * weight).sum(axis=0)
+        return carried.Carried(liquid, air)
+
+
+@dataclass(slots=True)
+class _Receiver:
+    """A receiver's vapor over several ticks."""
+
+    comes: Array  # vapor, and liquid that may evaporate
+    possible: Array  # all that its air can hold
+    goes: Array  # the share of its air that leaves
+    pool: Array  # (members,): what its pool gives to perfectly dry air in a tick
+    start: Array  # (members,): its vapor before
+    came: Array = field(init=False)  # vapor and what came to it, before any condensed
+
+    def mix(self) -> Array:
+        """Its vapor after condensing, before the pool, if the pool never runs empty."""
+        stays = 1.0 - self.goes
+        factor = stays * (1.0 - self.pool / self.possible)
+        plus = stays * self.pool
+        plus[:-1] += self.comes[1:]
+        self.came = np.empty_like(self.comes)
+        held = np.empty_like(self.comes)
+        came = self.start + self.comes[0]
+        rows = zip(self.came, held, self.possible, factor, plus, strict=True)
+        for there, kept, possible, share, more in rows:
+            there[:] = came
+            np.minimum(came, possible, out=kept)
+            np.multiply(kept, share, out=came)
+            came += more
+        return held
+
+
+def _released(
+    start: Array, new: Array | None, moving: Bools | None, shape: tuple[int, ...]
+) -> tuple[Array | None, _Waiting]:
+    """Liquid that air takes along, of what waits and of what is new; and what then waits."""
+    waits = bool(start.any())
+    if moving is None or new is None or not (new * ~moving).any():
+        if not waits:
+            return new, _Waiting(start)
+        out = np.zeros(shape) if new is None else new.copy()
+        if moving is None:
+            out[0] += start
+            return out, _Waiting(start)
+        ever = np.flatnonzero(moving.any(axis=0))
+        out[moving.argmax(axis=0)[ever], ever] += start[ever]
+        return out, _Waiting(start, None, moving)
+    out, rows = np.empty(shape), np.empty(shape)
+    there = start.copy()
+    for more, flows, goes, stays in zip(new, moving, out, rows, strict=True):
+        there += more
+        np.multiply(there, flows, out=goes)
+        there -= goes
+        stays[:] = there
+    return out, _Waiting(start, rows)
+
+
+def _part(part: Array | float, whole: Array | None) -> Array | None:
+    if whole is None or (isinstance(part, float) and part == 1.0):
+        return whole
+    found: Array = part * whole
+    return found
+
+
+def _plus(one: Array | None, other: Array | None) -> Array | None:
+    if one is None or other is None:
+        return one if other is None else other
+    return one + other
+
+
+def _booked(before: Array, steps: Array | None, until: int) -> Array:
+    return before if steps is None else before + steps[:until].sum(axis=0)
