@@ -15,13 +15,10 @@ from daemon.moisture.description import (
     Station,
     VentedCell,
 )
+from daemon.moisture.kinds import BAROMETER, LIKE_PRESSURE_PA, RISE_TIME_S, ROOM, TEMPERATURES
 
-# What a station without a believable sensor is taken to be: the kind's rule, give or take.
-# Temperatures in K, pressures in Pa. Common practice, no source.
-_ROOM_K, _ROOM_GIVE_OR_TAKE_K = 293.15, 10.0
+# Instead of a rule that leans on the station itself: the room, wider. Common practice, no source.
 _ROOM_LIKE_GIVE_OR_TAKE_K = 5.0
-_BAROMETER_PA, _BAROMETER_GIVE_OR_TAKE_PA = 101_325.0, 3_000.0
-_RECEIVER_RISE = RiseByDuty("", rise=20.0, time_constant_s=1800.0, give_or_take=8.0)
 
 
 @dataclass(frozen=True, slots=True)
@@ -199,20 +196,17 @@ def _of_dew_point(station: Station) -> tuple[str, ...]:
 
 
 def _temperature_rule(line: Line, number: int, parent: tuple[int, ...]) -> Source:
+    """What a station without a believable sensor is taken to be."""
     station = line.stations[number]
+    usual = TEMPERATURES[station.kind]
+    if usual.like == "":
+        return ROOM
+    if usual.like == "before":
+        return Like(line.stations[parent[number]].id, usual.plus_k, usual.give_or_take_k)
     intake = line.stations[0].id
-    match station.kind:
-        case "intake":
-            return Fixed(_ROOM_K, _ROOM_GIVE_OR_TAKE_K)
-        case "receiver":
-            rule = _RECEIVER_RISE
-            return RiseByDuty(intake, rule.rise, rule.time_constant_s, rule.give_or_take)
-        case "cooler":
-            return Like(intake, 8.0, 5.0)
-        case "pipe":
-            return Like(intake, 0.0, 4.0)
-        case _:
-            return Like(line.stations[parent[number]].id, 0.0, 1.0)
+    if usual.like == "duty":
+        return RiseByDuty(intake, usual.plus_k, RISE_TIME_S, usual.give_or_take_k)
+    return Like(intake, usual.plus_k, usual.give_or_take_k)
 
 
 def _pressure_rule(
@@ -220,13 +214,13 @@ def _pressure_rule(
 ) -> Source:
     station = line.stations[number]
     if station.kind == "intake":
-        return Fixed(_BAROMETER_PA, _BAROMETER_GIVE_OR_TAKE_PA)
+        return BAROMETER
     above = parent[number]
     while above > 0 and above not in receivers:
         above = parent[above]
     if station.kind == "receiver" or above <= 0:
         return _switch_pressure(line)
-    return Like(line.stations[parent[number]].id, 0.0, 5_000.0)
+    return Like(line.stations[parent[number]].id, 0.0, LIKE_PRESSURE_PA)
 
 
 def _switch_pressure(line: Line) -> Fixed:

@@ -232,7 +232,7 @@ class Assumptions:
         return Fixed((low + high) / 2, abs(high - low) / 2, gauge=True)
 
 
-def temperature_text(usual: defaults.TemperatureDefault, like: str, notes: Notes) -> str:
+def temperature_text(usual: defaults.UsualTemperature, like: str, notes: Notes) -> str:
     """A default temperature in words: 'like intake + 8 K, give or take 5 K'."""
     plus = show_difference(usual.plus_k, notes.units)
     width = show_difference(usual.give_or_take_k, notes.units)

@@ -8,7 +8,7 @@ import sensors.drivers  # noqa: F401  # fills DRIVERS
 from daemon.moisture.description import Fixed, Share
 from daemon.moisture.margin import SLAB_GIVE_OR_TAKE_K, SLAB_K
 from daemon.site import defaults
-from daemon.site.defaults import KindDefault, TemperatureDefault
+from daemon.site.defaults import KindDefault, UsualTemperature
 from daemon.site.fitting_words import default_rows
 from daemon.site.keeping import BECAUSE as KEPT_BECAUSE
 from daemon.site.keeping import kept_words
@@ -139,7 +139,7 @@ def _kinds() -> Iterator[Row]:
         yield f"`{kind}`", air, _pressure(usual), _has_trap(usual)
 
 
-def _temperature(usual: TemperatureDefault) -> str:
+def _temperature(usual: UsualTemperature) -> str:
     width = show_difference(usual.give_or_take_k, "metric")
     plus = show_difference(usual.plus_k, "metric")
     if usual.like == "":

@@ -11,17 +11,32 @@ from dataclasses import dataclass
 from typing import Literal
 
 from daemon.moisture.description import Fixed, Share, StationKind
+from daemon.moisture.kinds import (
+    BAROMETER,
+    HUMIDITY,
+    LIKE_PRESSURE_PA,
+    RISE_TIME_S,
+    ROOM,
+    SAME_AIR,
+    TEMPERATURES,
+    UsualTemperature,
+)
 
-ROOM = Fixed(293.15, 10.0)  # K
-ROOM_BECAUSE = "a shop's air when nobody measures it (practice)"
-HUMIDITY = Fixed(0.50, 0.30)
+__all__ = [
+    "BAROMETER",
+    "HUMIDITY",
+    "LIKE_PRESSURE_PA",
+    "RISE_TIME_S",
+    "ROOM",
+    "SAME_AIR",
+    "UsualTemperature",
+]
+
+RISE_GIVE_OR_TAKE_K = TEMPERATURES["receiver"].give_or_take_k
+
+ROOM_BECAUSE = TEMPERATURES["intake"].because
 HUMIDITY_BECAUSE = "air when nobody measures it (practice)"
-BAROMETER = Fixed(101_300.0, 3_000.0)  # Pa
 BAROMETER_BECAUSE = "weather at sea level; higher up say the pressure there"
-
-RISE_K = 20.0
-RISE_TIME_S = 1800.0
-RISE_GIVE_OR_TAKE_K = 8.0
 
 CUT_IN_PA = 6e5
 CUT_OUT_PA = 8e5
@@ -56,22 +71,11 @@ GIVE_OR_TAKE_SHARES: Mapping[str, float] = {  # of the value
 }
 SAID_BECAUSE = "what a value that is only said is worth (practice)"
 CLOSES_AT_GIVE_OR_TAKE = 0.10  # of a float switch's level, filled with a jug (practice)
-LIKE_PRESSURE_PA = 5_000.0  # of a pressure that is said to be like another
 
 # How far a temperature or a pressure may be from plausible before it is taken for a mistake.
 TEMPERATURE_LIMITS_K = (213.15, 373.15)
 LINE_PRESSURE_LIMITS_PA = (0.0, 16e5)  # gauge
 BAROMETER_LIMITS_PA = (50_000.0, 110_000.0)
-
-
-@dataclass(frozen=True, slots=True)
-class TemperatureDefault:
-    """A temperature that nobody said: a value, or like another place plus a difference."""
-
-    like: Literal["", "intake", "before", "duty"]
-    plus_k: float
-    give_or_take_k: float
-    because: str
 
 
 @dataclass(frozen=True, slots=True)
@@ -90,33 +94,27 @@ class TrapDefault:
 class KindDefault:
     """All that a kind of station assumes."""
 
-    temperature: TemperatureDefault
+    temperature: UsualTemperature
     pressure: Literal["barometer", "switch", "before", "set"]
     trap: TrapDefault | None
 
 
-SAME_AIR = TemperatureDefault("before", 0.0, 1.0, "small, close to the station before it")
 CAPACITY_GIVE_OR_TAKE = 0.10
 
 KINDS: Mapping[StationKind, KindDefault] = {
-    "intake": KindDefault(TemperatureDefault("", 0.0, 10.0, ROOM_BECAUSE), "barometer", None),
+    "intake": KindDefault(TEMPERATURES["intake"], "barometer", None),
     "receiver": KindDefault(
-        TemperatureDefault(
-            "duty",
-            RISE_K,
-            RISE_GIVE_OR_TAKE_K,
-            "a tank warms while its compressor works (estimate)",
-        ),
+        TEMPERATURES["receiver"],
         "switch",
         TrapDefault(True, 0.0, 0.15, 0.04, Share(0.7, 0.25), "a tank lets most liquid settle"),
     ),
     "cooler": KindDefault(
-        TemperatureDefault("intake", 8.0, 5.0, "a cooler stays some kelvin above its room"),
+        TEMPERATURES["cooler"],
         "before",
         TrapDefault(False, 150e-6, 0.0, 0.5, Share(0.3, 0.3), "a coil without a separator"),
     ),
     "pipe": KindDefault(
-        TemperatureDefault("intake", 0.0, 4.0, "a pipe takes the temperature of its room"),
+        TEMPERATURES["pipe"],
         "before",
         TrapDefault(False, 300e-6, 0.0, 0.5, Share(0.6, 0.3), "take-off from the top of the main"),
     ),
@@ -132,7 +130,7 @@ KINDS: Mapping[StationKind, KindDefault] = {
     ),
     "regulator": KindDefault(SAME_AIR, "set", None),
     "refrigerated": KindDefault(
-        TemperatureDefault("before", 0.0, 3.0, "its outlet is warmed up again by its inlet"),
+        TEMPERATURES["refrigerated"],
         "before",
         TrapDefault(True, 100e-6, 0.0, 0.5, Share(0.97, 0.03), "a dryer's own separator"),
     ),
