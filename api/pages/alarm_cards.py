@@ -14,18 +14,24 @@ _WORDS = {
     "shelved": "put off",
 }
 WAITING = ("unacknowledged", "returned unacknowledged")
+STANDING = ("unacknowledged", "acknowledged")
+# what is offered; an alarm of high priority may be put off for an hour at most
+LENGTHS = ("30 min", "1 h", "4 h", "1 day")
+LENGTHS_URGENT = ("10 min", "30 min", "1 h")
 
 
 @dataclass(frozen=True, slots=True)
 class AlarmCard:
-    """One alarm, and whether it waits for somebody to see it."""
+    """One alarm, and what a person can do about it."""
 
     id: str
     text: str
     priority: str
     since_us: int
     words: str
-    waits: bool
+    waits: bool  # for somebody to see it
+    lengths: tuple[str, ...]  # that it can be put off for; none: it cannot
+    put_off_until_us: int | None
 
 
 def alarm_cards(daemon: Running) -> list[AlarmCard]:
@@ -34,6 +40,14 @@ def alarm_cards(daemon: Running) -> list[AlarmCard]:
 
 
 def _card(alarm: Alarm) -> AlarmCard:
-    words = _WORDS.get(alarm.state, alarm.state)
-    waits = alarm.state in WAITING
-    return AlarmCard(alarm.id, alarm.text, alarm.priority, alarm.since_us, words, waits)
+    lengths = LENGTHS_URGENT if alarm.priority == "high" else LENGTHS
+    return AlarmCard(
+        alarm.id,
+        alarm.text,
+        alarm.priority,
+        alarm.since_us,
+        _WORDS.get(alarm.state, alarm.state),
+        alarm.state in WAITING,
+        lengths if alarm.state in STANDING else (),
+        alarm.shelved_until_us if alarm.state == "shelved" else None,
+    )

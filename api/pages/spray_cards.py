@@ -34,6 +34,10 @@ class Margin:
     reasons: tuple[str, ...]
     note: str
 
+    def told_by_reasons(self, shown: str) -> bool:
+        """Whether the reasons beside the one that is shown above say how far it is."""
+        return any("above" in reason for reason in self.reasons if reason != shown)
+
 
 @dataclass(frozen=True, slots=True)
 class OutletCard:
