@@ -138,7 +138,10 @@ def undo_drain(
         raise Problem("cannot-be-undone", str(error)) from error
     if recorded.repeated:
         response.status_code = 200
-    drain = next(entry for entry in daemon.drains(trap, EARLIEST_US, LATEST_US) if entry.seq == seq)
+    drains = daemon.drains(trap, EARLIEST_US, LATEST_US)
+    drain = next((entry for entry in drains if entry.seq == seq), None)
+    if drain is None:  # taken back before, and of another trap
+        raise Problem("cannot-be-undone", f"entry {seq} is no drain of {trap}")
     return DrainOut.of(drain, undone=recorded.entry)
 
 
