@@ -52,6 +52,7 @@ def parser() -> argparse.ArgumentParser:
     replay.add_argument("site", type=Path, metavar="SITE", help="the site file")
     replay.add_argument("readings", type=Path, metavar="READINGS", help="CSV of readings")
     replay.add_argument("--drains", type=Path, help="CSV of drains")
+    replay.add_argument("--faults", type=Path, help="CSV of faults, as export writes them")
     replay.add_argument("--members", type=int, help="of the ensemble, instead of the site file's")
     replay.add_argument("--seed", type=int, help="of the ensemble, instead of the site file's")
     replay.add_argument("--skip-bad", action="store_true", help="leave bad rows out and list them")
@@ -81,7 +82,28 @@ def parser() -> argparse.ArgumentParser:
     key.add_argument("--png", type=Path, metavar="FILE", help="the link's code as an image")
     key.add_argument("--svg", type=Path, metavar="FILE", help="the same as a drawing")
     key.add_argument("--store", type=Path, help="the database (beside the site file)")
+    _export_options(commands.add_parser("export", help="readings, drains and alarms as CSV"))
+    _backup_options(commands.add_parser("backup", help="a checked copy of the database"))
     return top
+
+
+def _backup_options(backup: argparse.ArgumentParser) -> None:
+    backup.add_argument("site", type=Path, metavar="SITE", help="the site file")
+    backup.add_argument("path", type=Path, metavar="PATH", help="the copy's file")
+    backup.add_argument("--store", type=Path, help="the database (beside the site file)")
+
+
+def _export_options(export: argparse.ArgumentParser) -> None:
+    export.add_argument("site", type=Path, metavar="SITE", help="the site file")
+    export.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="for the files")
+    export.add_argument(
+        "--from", dest="begin", metavar="TIME", help="a date, or like 2026-03-02T07:10:00Z"
+    )
+    export.add_argument("--to", dest="end", metavar="TIME", help="up to, but not including it")
+    export.add_argument(
+        "--channel", action="append", metavar="NAME", help="only this one; may be given again"
+    )
+    export.add_argument("--store", type=Path, help="the database (beside the site file)")
 
 
 def _weekly_options(weekly: argparse.ArgumentParser) -> None:
@@ -220,12 +242,32 @@ def _key(options: argparse.Namespace) -> int:
     return EXIT_OK
 
 
+def _export(options: argparse.Namespace) -> int:
+    from daemon.export import export_files
+    from daemon.site.reader import read_site
+
+    site = read_site(options.site)
+    print(export_files(site, options, _store_path(options, site.id)))
+    return EXIT_OK
+
+
+def _backup(options: argparse.Namespace) -> int:
+    from daemon.backup_command import make_backup
+    from daemon.site.reader import read_site
+
+    site = read_site(options.site)
+    print(make_backup(site, options.path, _store_path(options, site.id)))
+    return EXIT_OK
+
+
 _COMMANDS = {
     "demo": _demo,
     "run": _run,
     "check": _check,
     "replay": _replay,
     "drained": _drained,
+    "export": _export,
+    "backup": _backup,
     "weekly": _weekly,
     "key": _key,
 }

@@ -14,6 +14,7 @@ from daemon.errors import ReplayError
 from daemon.journal import Entry
 from daemon.moisture.ensemble import percentiles
 from daemon.recorded import read_drains, read_readings
+from daemon.recorded_faults import read_faults
 from daemon.replay import Result, replay, write
 from daemon.site.reader import read_site
 from daemon.site.types import Site
@@ -26,15 +27,20 @@ def replay_files(options: argparse.Namespace) -> str:
     site = _site(options)
     recorded = read_readings(site, options.readings, options.skip_bad)
     readings = recorded.readings
+    bad = list(recorded.bad)
+    if options.faults is not None:
+        faults, bad_faults = read_faults(site, options.faults, options.skip_bad)
+        readings = sorted([*readings, *faults], key=lambda one: one.time_us)
+        bad += bad_faults
     entries: list[Entry] = []
-    bad_drains: list[BadRow] = []
     if options.drains is not None:
         first_us = readings[0].time_us
         entries, bad_drains = read_drains(site, options.drains, first_us, options.skip_bad)
+        bad += bad_drains
     core = Core(site)
     result = replay(core, readings, entries)
     write(core, result, entries, options.out)
-    return _report(core, result, [*recorded.bad, *bad_drains], options.out)
+    return _report(core, result, bad, options.out)
 
 
 def _site(options: argparse.Namespace) -> Site:

@@ -22,6 +22,7 @@ from daemon.errors import InUseError, StoreError
 from daemon.store.database import Database
 
 BUSY_MS = 5000
+COPY_MARK = "store.copy"  # in the table `meta`
 _MOST_FINDINGS = 5
 _INCREMENTAL = 2  # what `PRAGMA auto_vacuum` answers
 _RESERVE_PAGES = 256  # 1 MB: the running hour's rows come and go
@@ -103,6 +104,7 @@ def backup(database: Database, target: Path) -> None:
         with closing(sqlite3.connect(part)) as copy:
             with database.read() as connection:
                 _raw(connection).backup(copy)
+            _mark(copy)
             rows = [str(row) for (row,) in copy.execute("PRAGMA quick_check")]
         _refuse_damage(str(part), rows)
         os.replace(part, target)
@@ -112,6 +114,19 @@ def backup(database: Database, target: Path) -> None:
         raise _in_words(str(target), error) from error
     finally:
         part.unlink(missing_ok=True)
+
+
+def _mark(copy: sqlite3.Connection) -> None:
+    """Write into a copy that it is one, so that the next may take its place."""
+    copy.execute("DELETE FROM meta WHERE name = ?", (COPY_MARK,))
+    copy.execute("INSERT INTO meta VALUES (?, 'yes')", (COPY_MARK,))
+    copy.commit()
+
+
+def is_copy(connection: sqlite3.Connection) -> bool:
+    """Whether this is a copy that `backup` made, and that no daemon has taken into use since."""
+    rows = connection.execute("SELECT value FROM meta WHERE name = ?", (COPY_MARK,)).fetchall()
+    return rows == [("yes",)]
 
 
 def give_back(database: Database) -> None:

@@ -78,6 +78,8 @@ class Store:
             ticks = TickRows(database, channels, holds_us)
             with database.write() as connection:
                 metas.put(connection, _OPEN, "yes")
+                if metas.get(connection, sqlite.COPY_MARK) == "yes":  # a copy that was put back
+                    metas.put(connection, sqlite.COPY_MARK, "no")
         except BaseException:
             if database is not None:
                 database.close()

@@ -48,7 +48,7 @@ class TickReader:
             self._layouts = read_layouts(connection)
 
     @property
-    def _reach_us(self) -> int:
+    def reach_us(self) -> int:
         """The furthest that a reading's own time stands from its tick's, over all ticks."""
         with self._database.read() as connection:
             return int(metas.get(connection, _REACH) or 0)
@@ -132,10 +132,10 @@ class TickReader:
 
     def _unsealed(self, channel: str, sealed_us: int | None, from_us: int, to_us: int) -> Column:
         """A channel's readings from about a time to another in ticks after `sealed_us`."""
-        after_us = from_us - self._reach_us - 1
+        after_us = from_us - self.reach_us - 1
         if sealed_us is not None:
             after_us = max(after_us, sealed_us)
-        return self._column(channel, after_us, to_us + self._reach_us)
+        return self._column(channel, after_us, to_us + self.reach_us)
 
     def _in_order(self, channel: str, parts: list[Part]) -> list[Part]:
         """An hour's parts, reckoned again from its readings where they lie in one another."""
@@ -153,7 +153,7 @@ class TickReader:
         """A channel's readings by their own times, in order."""
         if from_us >= to_us:
             return Column.joined(())
-        reach_us = self._reach_us
+        reach_us = self.reach_us
         column = self._column(channel, from_us - reach_us - 1, to_us + reach_us)
         inside = (column.times_us >= from_us) & (column.times_us < to_us)
         if not inside.all():
@@ -236,7 +236,7 @@ class TickRows(TickReader):
         self._all_sealed_us: int | None = None  # the last tick when nothing was left to seal
 
     @property
-    def _reach_us(self) -> int:
+    def reach_us(self) -> int:
         return self._reach_now_us
 
     def last(self) -> int | None:

@@ -1,0 +1,47 @@
+"""Copies of a database that another process may be using, and which files they may replace."""
+
+from __future__ import annotations
+
+import sqlite3
+from contextlib import closing
+from pathlib import Path
+
+from daemon.errors import StoreError
+from daemon.store import migrations, sqlite
+
+
+def copy(source: Path, target: Path) -> None:
+    """Copy the database at `source` to `target`, consistent and checked.
+
+    Only a copy that dripleg made is ever replaced. StoreError, with what to do, for everything
+    else that is there, and when there is no database.
+    """
+    if not source.is_file():
+        raise StoreError(f"{source}: there is no database: name it with --store")
+    if target.is_dir():
+        raise StoreError(f"{target}: this is a directory: name the copy's file, like shop.backup")
+    if target.exists():
+        _refuse_to_replace(source, target)
+    database = sqlite.connect(source)
+    try:
+        with database.read() as connection:
+            if migrations.version_of(connection) == 0:
+                raise StoreError(f"{source}: the database is empty: let the daemon run first")
+        sqlite.backup(database, target)
+    finally:
+        database.close()
+
+
+def _refuse_to_replace(source: Path, target: Path) -> None:
+    if target.samefile(source):
+        raise StoreError(f"{target}: this is the database itself: give another path for the copy")
+    try:
+        with closing(sqlite3.connect(f"{target.absolute().as_uri()}?mode=ro", uri=True)) as found:
+            marked = sqlite.is_copy(found)
+    except sqlite3.Error:
+        marked = False
+    if not marked:
+        raise StoreError(
+            f"{target}: there is a file already that is no copy of a dripleg database: it is left "
+            "as it is; give another path"
+        )
