@@ -60,6 +60,7 @@ class HourTally:
     shed_kg: Array  # (stations, members): the same
     on_open_s: Array
     settled: Mapping[str, Array] = field(default_factory=dict)  # what is already booked, by name
+    is_open: bool = False  # at the last tick, and so until the next one
     watched_us: int = 0
     open_us: int = 0  # watched, and open
     counted_us: int = 0  # of that, what the outlets were looked at for

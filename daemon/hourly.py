@@ -60,6 +60,7 @@ class Hourly:
             water_in_kg=model.ledger.water_in,
             shed_kg=model.ledger.shed,
             on_open_s=np.zeros(self.site.line.members),
+            is_open=opening.is_open(self.site.hours, self.site.timezone, model.time_us),
             looked_us=model.time_us,
             day=day,
             day_sums=sums or {},
@@ -78,16 +79,17 @@ class Hourly:
         tally = state.hourly if state.hourly is not None else self.begun(state.model)
         dt_us = until_us - state.time_us
         if dt_us > self._stale_us or not heard:
-            return tally
+            return tally if tally.is_open == is_open else replace(tally, is_open=is_open)
         faults = tally.faults_us
         for name, record in state.channels.items():
             if record.fault or self._silent(record, state, until_us):
                 faults = {**faults, name: faults.get(name, 0) + dt_us}
         watched_us = tally.watched_us + dt_us
-        if not is_open:
-            return replace(tally, watched_us=watched_us, faults_us=faults)
+        if not tally.is_open:
+            return replace(tally, is_open=is_open, watched_us=watched_us, faults_us=faults)
         return replace(
             tally,
+            is_open=is_open,
             watched_us=watched_us,
             open_us=tally.open_us + dt_us,
             on_open_s=tally.on_open_s + moved.on_s,
