@@ -15,6 +15,7 @@ from starlette.exceptions import HTTPException
 from starlette.responses import Response
 from starlette.routing import Match
 
+from api import examples
 from api.guard import Guard
 from api.keys import Door
 from api.pages import assets, line, pair, round, spray, week
@@ -139,6 +140,7 @@ def _openapi(app: FastAPI) -> dict[str, Any]:
                 "description": "a key that `dripleg key` made; on a loopback address none is asked",
             }
         }
+        examples.put_in(described)
         described["security"] = [{}, {"key": []}]
         app.openapi_schema = described
     return app.openapi_schema
