@@ -48,17 +48,7 @@ def parser() -> argparse.ArgumentParser:
     check.add_argument("--by", default="", help="initials, with --salt")
     check.add_argument("--store", type=Path, help="the database (beside the site file)")
 
-    replay = commands.add_parser("replay", help="recompute from recorded readings")
-    replay.add_argument("site", type=Path, metavar="SITE", help="the site file")
-    replay.add_argument("readings", type=Path, metavar="READINGS", help="CSV of readings")
-    replay.add_argument("--drains", type=Path, help="CSV of drains")
-    replay.add_argument("--faults", type=Path, help="CSV of faults, as export writes them")
-    replay.add_argument("--members", type=int, help="of the ensemble, instead of the site file's")
-    replay.add_argument("--seed", type=int, help="of the ensemble, instead of the site file's")
-    replay.add_argument("--skip-bad", action="store_true", help="leave bad rows out and list them")
-    replay.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="for the results")
-
-    _weekly_options(commands.add_parser("weekly", help="the moisture log of a week"))
+    _replay_options(commands.add_parser("replay", help="recompute from recorded readings"))
 
     drained = commands.add_parser("drained", help="record a drain from a shell")
     drained.add_argument("site", type=Path, metavar="SITE", help="the site file")
@@ -85,6 +75,19 @@ def parser() -> argparse.ArgumentParser:
     _export_options(commands.add_parser("export", help="readings, drains and alarms as CSV"))
     _backup_options(commands.add_parser("backup", help="a checked copy of the database"))
     return top
+
+
+def _replay_options(replay: argparse.ArgumentParser) -> None:
+    replay.add_argument("site", type=Path, metavar="SITE", help="the site file")
+    replay.add_argument("readings", type=Path, metavar="READINGS", help="CSV of readings")
+    replay.add_argument("--drains", type=Path, help="CSV of drains")
+    replay.add_argument("--faults", type=Path, help="CSV of faults, as export writes them")
+    replay.add_argument("--members", type=int, help="of the ensemble, instead of the site file's")
+    replay.add_argument("--seed", type=int, help="of the ensemble, instead of the site file's")
+    replay.add_argument("--skip-bad", action="store_true", help="leave bad rows out and list them")
+    replay.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="for the results")
+
+    _weekly_options(commands.add_parser("weekly", help="the moisture log of a week"))
 
 
 def _backup_options(backup: argparse.ArgumentParser) -> None:
