@@ -49,6 +49,7 @@ def parser() -> argparse.ArgumentParser:
     check.add_argument("--store", type=Path, help="the database (beside the site file)")
 
     _replay_options(commands.add_parser("replay", help="recompute from recorded readings"))
+    _weekly_options(commands.add_parser("weekly", help="the moisture log of a week"))
 
     drained = commands.add_parser("drained", help="record a drain from a shell")
     drained.add_argument("site", type=Path, metavar="SITE", help="the site file")
@@ -86,8 +87,6 @@ def _replay_options(replay: argparse.ArgumentParser) -> None:
     replay.add_argument("--seed", type=int, help="of the ensemble, instead of the site file's")
     replay.add_argument("--skip-bad", action="store_true", help="leave bad rows out and list them")
     replay.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="for the results")
-
-    _weekly_options(commands.add_parser("weekly", help="the moisture log of a week"))
 
 
 def _backup_options(backup: argparse.ArgumentParser) -> None:
