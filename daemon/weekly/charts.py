@@ -17,8 +17,9 @@ from daemon.weekly.records import NOT_WATCHED, VERDICTS, OutletWeek, WeekLog
 from daemon.weekly.words import VERDICT_WORDS, Words, hours
 from daemon.work import WAIT_BELOW_K
 
-WIDTH = 640.0
-_LEFT, _RIGHT, _TOP = 64.0, 12.0, 14.0
+WIDTH = 420.0  # so narrow that its letters can be read on a phone
+_LEFT, _RIGHT, _TOP = 48.0, 8.0, 14.0
+_WORDS = 78.0  # for what stands at the end of a bar
 _BAR = 22.0  # a day's row
 _LINE = 18.0
 # How a kind is filled: its shade (0 black, 1 white) and the slant of its hatching, "" none.
@@ -118,7 +119,7 @@ def _rows_of_days(
 ) -> Chart:
     """One bar a day, in parts (kind, value), with words at its end; `axis` is a step and a unit."""
     drawing = _new()
-    room = WIDTH - _LEFT - _RIGHT - 92.0
+    room = WIDTH - _LEFT - _RIGHT - _WORDS
     scale = room / most
     y = _TOP
     for day, parts, said in days:
@@ -140,7 +141,7 @@ def _rows_of_days(
         drawing.labels.append(Label(x, y + 19.0, f"{mark:g}", "middle"))
         mark += step
     drawing.labels.append(Label(WIDTH - _RIGHT, y + 19.0, unit, "end"))
-    y += 34.0
+    y += 44.0
     y = _legend(drawing, legend, y)
     return drawing.done(name, title, words, y)
 
@@ -148,7 +149,7 @@ def _rows_of_days(
 def _legend(drawing: _Drawing, legend: Sequence[tuple[str, str]], y: float) -> float:
     x = _LEFT
     for kind, text in legend:
-        width = 28.0 + 7.6 * len(text)
+        width = 28.0 + 7.8 * len(text)
         if x + width > WIDTH - _RIGHT and x > _LEFT:
             x, y = _LEFT, y + _LINE
         drawing.bars.append(Bar(x, y - 11.0, 16.0, 12.0, kind))
@@ -181,7 +182,7 @@ def water_chart(words: Words, log: WeekLog) -> Iterator[Chart]:
         (
             day.day,
             [(kinds[trap], kg * per_kg) for trap, kg in day.shed_kg.items()],
-            words.water(total) if day.shed_kg else "nothing known",
+            words.water(total) if day.shed_kg else "not known",
         )
         for day, total in zip(log.days, totals, strict=True)
     ]

@@ -33,6 +33,7 @@ from daemon.weekly.sheet import Section, Sheet, Table
 BODY, BOLD = "dripleg-body", "dripleg-bold"
 _MARGIN = 45.0
 _HATCH = 4.0  # points between two lines
+_CHART_SCALE = 0.85  # its letters are then as large as the text's
 
 
 def pdf_of(sheet: Sheet, us_paper: bool) -> bytes:
@@ -171,7 +172,7 @@ class _Drawn(Flowable):  # type: ignore[misc]  # ReportLab has no types
 
     def __init__(self, chart: Chart, width: float) -> None:
         super().__init__()
-        self._chart, self._scale = chart, width / chart.width
+        self._chart, self._scale = chart, min(width / chart.width, _CHART_SCALE)
         self.width, self.height = width, chart.height * self._scale
 
     def wrap(self, *_: float) -> tuple[float, float]:

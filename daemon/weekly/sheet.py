@@ -299,7 +299,7 @@ def _honest(log: WeekLog) -> Section:
     held = "No drain was measured, so nothing tells how good the estimates were"
     if intervals.of:
         held = (
-            f"Measured drains: {intervals.hit} of {intervals.of} lay in their 5-95 % interval, "
+            f"Measured drains: {intervals.hit} of {intervals.of} lay in their 5 to 95 % interval, "
             "the cup's own error with it (nine in ten are meant to)"
         )
     return Section("How good the estimates were", (f"{reached}.", f"{held}."))
