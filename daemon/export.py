@@ -239,7 +239,7 @@ def _lines(site: Site, done: Exported, folder: Path) -> Iterator[str]:
             "not have any more: a replay cannot take them"
         )
     for why, number in done.drains_left_out.items():
-        yield f"{number} drains stand in journal.csv alone: {why}"
+        yield f"drains that stand in journal.csv alone: {number}, {why}"
     faults = f" --faults {folder / 'faults.csv'}" if counts.faults else ""
     yield (
         f"dripleg replay {site.path} {folder / 'readings.csv'} --drains {folder / 'drains.csv'}"
