@@ -93,7 +93,8 @@ def _fonts() -> None:
 
 
 def _fitting(text: str) -> str:
-    """The text in letters that the font has."""
+    """The text in letters that the font has, with a degree sign where a terminal needs letters."""
+    text = text.replace("degF", "°F").replace("degC", "°C")
     known = pdfmetrics.getFont(BODY).face.charToGlyph
     found = []
     for letter in text:

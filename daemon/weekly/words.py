@@ -7,8 +7,9 @@ from datetime import datetime
 from zoneinfo import ZoneInfo
 
 from daemon.clock import to_datetime
-from daemon.due import interval_words, volume_words
+from daemon.due import FINEST_KG, FINEST_US_KG, volume_words
 from daemon.moisture.air import REFERENCE_DRY_AIR_KG_PER_M3
+from daemon.moisture.description import WATER_KG_PER_M3
 from daemon.site.types import Site
 from daemon.units import from_si, show_difference, show_flow, show_percent
 from daemon.views import Interval
@@ -55,8 +56,16 @@ class Words:
         return volume_words(self.site, kg)
 
     def waters(self, interval: Interval | None) -> str:
-        """ "410 ml (300 to 560 ml)"."""
-        return NOT_KNOWN if interval is None else interval_words(self.site, *interval.values)
+        """ "410 ml (300 to 560 ml)", all in the unit of the largest."""
+        if interval is None:
+            return NOT_KNOWN
+        unit = self.water(interval.p95).rpartition(" ")[2]
+        return _interval(interval, lambda kg: f"{_three(self._volume(kg, unit))} {unit}")
+
+    def _volume(self, kg: float, unit: str) -> float:
+        """In that unit, no finer than anybody can measure."""
+        step_kg = FINEST_US_KG if self.site.units == "us" else FINEST_KG
+        return from_si(round(kg / step_kg) * step_kg / WATER_KG_PER_M3, unit, "volume")
 
     def difference(self, kelvin: float) -> str:
         """ "3 K" or "5.4 degF"."""

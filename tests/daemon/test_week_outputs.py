@@ -109,7 +109,7 @@ def test_the_text_fits_a_terminal_and_says_its_cautions(shop: Site) -> None:
         assert caution in joined
     assert "Week 10 of 2026: Mon 2 Mar to Sun 8 Mar" in text
     assert ("1.68 L (1.38 to 1.98 L)" in text) == (shop is METRIC)
-    assert ("56.8 oz" in text) == (shop is US)
+    assert ("0.444 gal (0.364 to 0.523 gal)" in text) == (shop is US)
     assert "2 h late" in text
     assert "milky, AM" in text
 
@@ -157,6 +157,7 @@ def test_the_pdf_s_fonts_are_embedded_and_its_charts_are_lines() -> None:
                 assert "/FontFile2" in described["/FontDescriptor"]
     words = pdf_words(files.pdf_bytes(US, a_log(US)))
     assert "Žuraw & Søn <finishing>" in words
+    assert "14.4 °F (10.8 to 18 °F)" in words
 
 
 def test_letters_that_the_font_lacks_do_not_stop_the_pdf() -> None:
