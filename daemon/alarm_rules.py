@@ -39,9 +39,9 @@ class AlarmRules:
     def __init__(self, site: Site, model: Model) -> None:
         self.site, self.model = site, model
         self._names = site.traps
-        self._rows = list(model.plan.traps)
+        self.trap_rows = list(model.plan.traps)
         self._traps = [t for s in model.plan.stations if (t := s.trap) is not None]
-        self._drain_at = np.array([trap.drain_at_kg for trap in self._traps])
+        self.drain_at_kg = np.array([trap.drain_at_kg for trap in self._traps])
         self._sensors: dict[str, list[str]] = {}
         for name, channel in site.channels.items():
             self._sensors.setdefault(channel.sensor, []).append(name)
@@ -91,8 +91,8 @@ class AlarmRules:
 
     def _watched(self, state: CoreState, drained: str) -> Iterator[Watched]:
         probability = self.probability_due(state)
-        contents = state.model.water.trap[self._rows]
-        capacity = state.model.parameters.water.capacity_kg[self._rows]
+        contents = state.model.water.trap[self.trap_rows]
+        capacity = state.model.parameters.water.capacity_kg[self.trap_rows]
         full = np.count_nonzero(contents >= capacity, axis=1) / contents.shape[1]
         for number, name in enumerate(self._names):
             yield self._drain_due(state, number, float(probability[number]), name == drained)
@@ -120,8 +120,8 @@ class AlarmRules:
 
     def probability_due(self, state: CoreState) -> Array:
         """The share of members at or above the drain-at level, (traps,)."""
-        contents = self.model.contents(state.model)[self._rows]
-        at_or_above = contents >= self._drain_at[:, None]
+        contents = self.model.contents(state.model)[self.trap_rows]
+        at_or_above = contents >= self.drain_at_kg[:, None]
         probability: Array = np.count_nonzero(at_or_above, axis=1) / contents.shape[1]
         return probability
 
@@ -147,7 +147,7 @@ class AlarmRules:
         name, trap = self._names[number], self._traps[number]
         if so != "so":
             return f"{name}: no longer due."
-        kg = percentiles(self.model.contents(state.model)[self._rows[number]])
+        kg = percentiles(self.model.contents(state.model)[self.trap_rows[number]])
         held = (float(kg[0]), float(kg[1]), float(kg[2]))
         return due_words(self.site, name, trap, held, "calendar" if calendar else "volume")
 

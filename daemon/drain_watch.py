@@ -47,12 +47,12 @@ class DrainWatching:
             if (channel := switch.channel) and plan.stations[i].id in self.traps
         }
         compressor = plan.line.compressor
-        self._volumes: dict[str, tuple[str, float]] = {}
+        self.volumes: dict[str, tuple[str, float]] = {}
         for i in plan.receivers:
             station = plan.stations[i]
             if isinstance(station.pressure, Measured) and station.volume is not None:
-                self._volumes[station.id] = (station.pressure.channel, station.volume.value)
-        self._most_m3_per_s = FALL_TIMES * compressor.delivered.value
+                self.volumes[station.id] = (station.pressure.channel, station.volume.value)
+        self.most_m3_per_s = FALL_TIMES * compressor.delivered.value
         self._delivered_kg_per_s = compressor.delivered.value * 1.2  # kg/m3, near enough here
 
     def begun(self, now_us: int) -> DrainsWatched:
@@ -72,7 +72,7 @@ class DrainWatching:
     def step(self, before: CoreState, after: CoreState, heard: Heard) -> DrainsWatched:
         """After a step in which this was heard."""
         watched = before.drains
-        if self._volumes:
+        if self.volumes:
             watched = self._pressures(watched, before.model, after.model, heard)
         if self.switches:
             watched = self._floats(watched, before, after)
@@ -89,7 +89,7 @@ class DrainWatching:
         )
         # of the readings before: the fall itself looks like noise to the pump's watch
         noise_pa = SWING_OF_NOISE * float(np.sqrt(before.pump.noise_pa2))
-        for tank, (channel, volume_m3) in self._volumes.items():
+        for tank, (channel, volume_m3) in self.volumes.items():
             told = [(at, value) for at, value, good in heard.get(channel, ()) if good]
             if not told:
                 continue
@@ -103,7 +103,7 @@ class DrainWatching:
             drop_pa, seconds = high_pa - last_pa, (last_us - high_us) / 1e6
             if drop_pa < max(FALL_PA, noise_pa) or seconds <= 0.0:
                 continue
-            if volume_m3 * drop_pa / 1e5 / seconds > self._most_m3_per_s:
+            if volume_m3 * drop_pa / 1e5 / seconds > self.most_m3_per_s:
                 falls = {**falls, tank: self._fallen(falls.get(tank), last_us, drop_pa, seconds)}
         return replace(watched, gauges=gauges, falls=falls)
 

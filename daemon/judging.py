@@ -28,8 +28,8 @@ class Judging:
     """Judges the readings of one site."""
 
     def __init__(self, site: Site, period_us: int) -> None:
-        self._running = site.line.compressor.running
-        self._stale_us = STALE_AFTER_PERIODS * period_us
+        self.running = site.line.compressor.running
+        self.stale_us = STALE_AFTER_PERIODS * period_us
         self.rules = rules_for(site.channels.values(), tuple(alike(site)), in_line(site.sensors))
 
     def judge(
@@ -47,14 +47,14 @@ class Judging:
         self, channels: Mapping[str, ChannelRecord], readings: Sequence[Reading], now_us: int
     ) -> bool | None:
         """Whether the compressor ran at any time of the tick; None where nobody knows."""
-        if self._running is None:
+        if self.running is None:
             return None
-        told = [one for one in readings if one.channel == self._running]
+        told = [one for one in readings if one.channel == self.running]
         if any(not one.good for one in told):
             return None
-        before = channels[self._running]
+        before = channels[self.running]
         levels = [one.value for one in told]
-        fresh = before.only_edges or now_us - before.time_us <= self._stale_us
+        fresh = before.only_edges or now_us - before.time_us <= self.stale_us
         if before.time_us >= 0 and not before.fault and fresh:
             levels.append(before.value)
         return any(level > 0.5 for level in levels) if levels else None

@@ -36,6 +36,7 @@ class MarginAlarms:
 
     def __init__(self, air: OutletAir) -> None:
         self.air = air
+        self.watches = any(watches_line(each) or watches_surface(each) for each in air.outlets)
 
     def define(self) -> Iterator[AlarmDefinition]:
         """At most two an outlet."""

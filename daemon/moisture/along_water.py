@@ -281,6 +281,11 @@ class WaterAlong:
             held = held - place.back[: row + 1].sum(axis=0)
         return held
 
+    def only_fills(self, i: int) -> bool:
+        """Whether nothing left a trap in these ticks."""
+        back = self.places[i].back
+        return back is None or not back.any()
+
     def trap_rows(self, i: int) -> Array:
         """What a trap holds after every tick, kg."""
         place = self.places[i]

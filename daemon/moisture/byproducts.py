@@ -62,9 +62,9 @@ class ByProducts:
         """`leak_limit` is a share of the delivered air."""
         self.model, self._leak_limit = model, leak_limit
         self._line = model.plan.line
-        self._contact = self._line.compressor.running
-        self._gauge = self._gauged()
-        self._turns_are_seen = self._contact is not None or self._sampled_often()
+        self.contact = self._line.compressor.running
+        self.gauge = self._gauged()
+        self._turns_are_seen = self.contact is not None or self._sampled_often()
 
     def _gauged(self) -> _Gauge | None:
         for row in self.model.plan.receivers:
@@ -93,7 +93,7 @@ class ByProducts:
             return replace(self._opened(plant, before), closed_us=-1)
         if plant.closed_us < 0:
             plant = replace(plant, closed_us=after.time_us)
-        if self._gauge is None:
+        if self.gauge is None:
             return self._by_contact_alone(plant, before, after, on_s)
         return self._by_gauge(plant, before, after, on_s)
 
@@ -113,7 +113,7 @@ class ByProducts:
         return self._resting(plant, phase, before, after)
 
     def _opened(self, plant: Plant, before: State) -> Plant:
-        if self._gauge is not None and plant.phase is not None:
+        if self.gauge is not None and plant.phase is not None:
             plant = self._ended(plant, _stock(before), before, "opened")
         return self.broken_off(plant)
 
@@ -134,16 +134,16 @@ class ByProducts:
     # ---- its parts ----
 
     def _known(self, state: State) -> bool:
-        assert self._gauge is not None
-        contact = self._contact is None or state.contact_unknown_us < 0
-        return contact and self._gauge.row in state.conditions.measured
+        assert self.gauge is not None
+        contact = self.contact is None or state.contact_unknown_us < 0
+        return contact and self.gauge.row in state.conditions.measured
 
     def _running(self, state: State) -> bool:
-        return bool(state.contact.closed) if self._contact is not None else state.pump.pumping
+        return bool(state.contact.closed) if self.contact is not None else state.pump.pumping
 
     def _low(self, state: State) -> bool:
-        assert self._gauge is not None
-        return state.held[self._gauge.channel].value < FLOOR_GAUGE_PA
+        assert self.gauge is not None
+        return state.held[self.gauge.channel].value < FLOOR_GAUGE_PA
 
     def _begun(self, plant: Plant, state: State, running: bool) -> Plant:
         if not running and self._low(state):
@@ -153,7 +153,7 @@ class ByProducts:
     def _turned(self, plant: Plant, before: State, after: State, running: bool) -> Plant:
         """The compressor started or stopped within this tick."""
         last, first = _stock(before), _stock(after)
-        if self._contact is None:
+        if self.contact is None:
             last = self._turning_point(before, after)
             if not running:  # it stopped somewhere in the period before its highest reading
                 first, last = last, Sample(last.time_us - self.model.period_us // 2, last.kg)
@@ -162,9 +162,9 @@ class ByProducts:
 
     def _turning_point(self, before: State, after: State) -> Sample:
         """Where a gauge alone tells the turn: at the extreme, which is seen only afterwards."""
-        assert self._gauge is not None
-        now = after.conditions.pressure_pa[self._gauge.row]
-        was = now + (before.pump.extreme_pa - after.held[self._gauge.channel].value)
+        assert self.gauge is not None
+        now = after.conditions.pressure_pa[self.gauge.row]
+        was = now + (before.pump.extreme_pa - after.held[self.gauge.channel].value)
         return Sample(before.pump.extreme_us, _stock(after).kg * (was / now))
 
     def _resting(self, plant: Plant, phase: Phase, before: State, after: State) -> Plant:
@@ -195,8 +195,8 @@ class ByProducts:
 
     def _decayed(self, plant: Plant, settled: Sample, last: Sample, state: State) -> Plant:
         """A tank that had cooled lost its air for hours."""
-        assert self._gauge is not None
-        width_k = MEASURED_K if self._gauge.temperature else RULED_K
+        assert self.gauge is not None
+        width_k = MEASURED_K if self.gauge.temperature else RULED_K
         return self._leaked(plant, decay(settled, self._doubted(last, width_k)), state)
 
     def _let_down(self, plant: Plant, phase: Phase, last: Sample, state: State, why: Why) -> Plant:
@@ -233,11 +233,11 @@ class ByProducts:
 
     def _leaked(self, plant: Plant, constant: Array, state: State) -> Plant:
         """A decay constant found: as a flow at the middle of the switch's span."""
-        assert self._gauge is not None
+        assert self.gauge is not None
         pressure = state.conditions.pressure_pa
         compressor = self._line.compressor
         middle = (compressor.cut_in.value + compressor.cut_out.value) / 2.0 + pressure[0]
-        stock = _stock(state).kg * (middle / pressure[self._gauge.row])
+        stock = _stock(state).kg * (middle / pressure[self.gauge.row])
         return self._leak_found(plant, np.maximum(constant * stock, 0.0), state)
 
     def _leak_found(self, plant: Plant, leak: Array, state: State) -> Plant:
@@ -248,7 +248,7 @@ class ByProducts:
 
     def _by_contact_alone(self, plant: Plant, before: State, after: State, on_s: float) -> Plant:
         """Without a gauge: the share of time that the compressor runs, from start to start."""
-        if self._contact is None:
+        if self.contact is None:
             return plant
         if after.contact_unknown_us >= 0:
             return plant if plant.turn_us < 0 else replace(plant, turn_us=-1)

@@ -1,0 +1,67 @@
+"""Whether a tank's pressure may have fallen fast in several ticks; what is remembered after."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from daemon.drain_watch import FALL_PA, FALL_WITHIN_US, DrainWatching
+from daemon.ticks_along import Ticks
+
+Gauges = dict[str, tuple[tuple[int, float], ...]]
+
+
+def may_fall(watching: DrainWatching, ticks: Ticks) -> int:
+    """The first tick that may be part of a fast fall; it may turn out to be none."""
+    good = len(ticks.times_us)
+    before = ticks.before.drains.gauges
+    for tank, (channel, volume_m3) in watching.volumes.items():
+        said = ticks.said[channel]
+        if not len(said.values):
+            continue
+        recent = before.get(tank, ())
+        times = np.concatenate((np.array([at for at, _ in recent], np.int64), said.times_us))
+        values = np.concatenate((np.array([value for _, value in recent]), said.values))
+        falls = np.zeros(len(values), bool)
+        for back in range(1, len(values)):
+            seconds = (times[back:] - times[:-back]) / 1e6
+            within = seconds * 1e6 < FALL_WITHIN_US
+            if not within.any():
+                break
+            drop = np.where(within, values[:-back] - values[back:], 0.0)
+            fast = volume_m3 * drop / 1e5 > watching.most_m3_per_s * seconds
+            falls[back:] |= (drop >= FALL_PA) & fast
+        new = falls[len(recent) :]
+        rests = np.array([_rests(ticks, row) for row in said.tick[new].tolist()], bool)
+        suspect = said.tick[new][rests]
+        good = min(good, int(suspect[0]) if len(suspect) else good)
+    return good
+
+
+def _rests(ticks: Ticks, row: int) -> bool:
+    contact = ticks.contact(row)
+    return contact.closed is False or (contact.closed is None and not ticks.pump(row).pumping)
+
+
+def gauges_after(watching: DrainWatching, ticks: Ticks, count: int) -> Gauges | None:
+    """The last readings of each tank after so many ticks; None where there are none."""
+    if not watching.volumes:
+        return None
+    found = dict(ticks.before.drains.gauges)
+    for tank, (channel, _) in watching.volumes.items():
+        said = ticks.said[channel]
+        until = said.count(count)
+        if not until:
+            continue
+        # readings of a tick that are too old in the next one play no part any more
+        enough = int(np.searchsorted(said.times_us, said.times_us[until - 1] - 2 * FALL_WITHIN_US))
+        begins = int(np.searchsorted(said.tick, said.tick[enough]))
+        recent = found.get(tank, ()) if begins == 0 else ()
+        for row in np.unique(said.tick[begins:until]).tolist():
+            of_tick = slice(*np.searchsorted(said.tick, (row, row + 1)))
+            times, values = said.times_us[of_tick].tolist(), said.values[of_tick].tolist()
+            recent = (*recent, *zip(times, values, strict=True))
+            recent = tuple(each for each in recent if each[0] > times[-1] - FALL_WITHIN_US)
+            if not _rests(ticks, row):
+                recent = recent[-1:]
+        found[tank] = recent
+    return found

@@ -1,0 +1,114 @@
+"""In which of several ticks an alarm's condition may change.
+
+Each finds the ticks in which what an alarm watches is not as in the tick before; more than that
+does no harm, less would. `AlarmRules` says what is so.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+import numpy as np
+import numpy.typing as npt
+
+from daemon.advance import Core
+from daemon.due import NO_DATE, RAISED_AT, RETURNS_BELOW
+from daemon.fitting_alarms import FREEZES_KG, FREEZES_ON_ITS_WAY_KG, FREEZING_K
+from daemon.moisture.along import Stretch
+from daemon.moisture.ensemble import Array
+from daemon.outlet_alarms import LOOK_EVERY_US
+from daemon.state import CoreState
+
+Levels = npt.NDArray[np.int64]
+
+
+def level(share: npt.ArrayLike) -> Levels:
+    """Of shares of members: 0 where an alarm returns, 2 where it is raised, 1 between.
+
+    All alarms that watch shares of members have the same two limits.
+    """
+    shares = np.asarray(share)
+    levels: Levels = (shares >= RETURNS_BELOW).astype(np.int64) + (shares >= RAISED_AT)
+    return levels
+
+
+def changes(before: int | bool, after: npt.NDArray[np.generic]) -> Iterator[int]:
+    """The rows in which something is not as in the one before."""
+    was = np.concatenate((np.array([before]), after[:-1]))
+    yield from np.flatnonzero(after != was).tolist()
+
+
+def _share(of_members: npt.NDArray[np.bool_]) -> Array:
+    shares: Array = np.count_nonzero(of_members, axis=-1) / of_members.shape[-1]
+    return shares
+
+
+class Looks:
+    """When the alarms of one site have to be looked at."""
+
+    def __init__(self, core: Core, before: CoreState, found: Stretch, ticks: int) -> None:
+        self.core, self.before, self.found, self.ticks = core, before, found, ticks
+
+    def rows(self) -> set[int]:
+        """The ticks in which a condition may change, as far as the stretch tells."""
+        rows = {self.ticks - 1}
+        for number, name in enumerate(self.core.trap_names):
+            rows.update(self._trap(number, name))
+        rows.update(self._frost())
+        if self.core.rules.margins.watches:
+            window = self.found.course.times_us[: self.ticks] // LOOK_EVERY_US
+            rows.update(changes(self.before.time_us // LOOK_EVERY_US, window))
+        return {row for row in rows if row < self.ticks}
+
+    # ---- traps ----
+
+    def _trap(self, number: int, name: str) -> Iterator[int]:
+        """Due by the calendar or by volume, or full."""
+        times_us, due_us = self.found.course.times_us, self.before.traps[name].calendar_due_us
+        if due_us != NO_DATE and self.before.time_us < due_us <= times_us[self.ticks - 1]:
+            yield int(np.searchsorted(times_us, due_us))
+        i = self.core.rules.trap_rows[number]
+        start = self._levels(i, number, self.found.water.state.trap[i])
+        if not self.found.water.only_fills(i):
+            rows = self._levels(i, number, self.found.water.trap_rows(i)[: self.ticks])
+        else:
+            end = self._levels(i, number, self.found.water.trap_at(i, self.ticks - 1))
+            if all(a == b for a, b in zip(start, end, strict=True)):
+                return  # it only fills: what is the same at both ends is so between
+            rows = self._levels(i, number, self.found.water.trap_rows(i)[: self.ticks])
+        for before, after in zip(start, rows, strict=True):
+            yield from changes(int(before), after)
+
+    def _levels(self, i: int, number: int, trap: Array) -> tuple[Levels, Levels]:
+        """How a trap stands to its drain-at level and to its capacity; trap is (..., members)."""
+        state = self.found.before
+        capacity = state.parameters.water.capacity_kg[i]
+        started = state.round_start[i]
+        held = started + (trap - started) * state.parameters.round_factor[i]
+        contents = np.minimum(np.maximum(held, 0.0), capacity)
+        due = _share(contents >= self.core.rules.drain_at_kg[number])
+        return level(due), level(_share(trap >= capacity))
+
+    # ---- frost ----
+
+    def _frost(self) -> Iterator[int]:
+        """Liquid where it is freezing."""
+        temperature = self.found.conditions.temperature_k[:, : self.ticks]
+        was = self.found.before.conditions.temperature_k
+        water = self.found.water
+        for i in range(1, len(temperature)):
+            if temperature[i].min() > FREEZING_K and was[i].min() > FREEZING_K:
+                continue
+            state, cold = water.state, temperature[i] <= FREEZING_K
+            before = self._freezes(
+                was[i] <= FREEZING_K, state.trap[i], state.waiting[i] + state.spilled[i]
+            )
+            trap = state.trap[i]
+            if self.core.model.plan.stations[i].trap is not None:
+                trap = water.trap_rows(i)[: self.ticks]
+            after = self._freezes(cold, trap, water.on_its_way_rows(i)[: self.ticks])
+            yield from changes(int(before), after)
+
+    def _freezes(self, cold: npt.NDArray[np.bool_], trap: Array, on_its_way: Array) -> Levels:
+        wet = (trap >= FREEZES_KG) | (on_its_way >= FREEZES_ON_ITS_WAY_KG)
+        return level(_share(wet & cold))
