@@ -2,9 +2,14 @@
 // fragment, which no browser sends anywhere; it is taken out of the address bar before all else.
 const ROUND_AFTER_MS = 2500;
 const said = document.getElementById("pairing");
-const key = location.hash.slice(1);
 
-if (key.includes(".")) {
+// A link that is opened while this page is there changes the fragment alone, and loads nothing.
+addEventListener("hashchange", takeKey);
+takeKey();
+
+function takeKey() {
+  const key = location.hash.slice(1);
+  if (!key.includes(".")) return;
   history.replaceState(null, "", "/pair");
   keep(key);
 }
