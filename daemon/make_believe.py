@@ -19,7 +19,16 @@ TANK_M3 = 0.2
 CUT_IN_PA, CUT_OUT_PA = 7.0e5, 9.0e5  # gauge
 BAROMETER_PA = 101_000.0
 RISE_K, RISE_S = 17.0, 1500.0
-SEPARATIONS = {"tank": 0.74, "riser": 0.55, "booth-coalescer": 0.97}
+SEPARATIONS = {
+    "tank": 0.74,
+    "riser": 0.55,
+    "booth-coalescer": 0.97,
+    "dryer": 0.98,
+    "fine-coalescer": 0.97,
+}
+TO_DRYER = 0.3  # of the air used; the rest goes to the other gun
+DRYER_K = 276.65  # what its coil cools to
+FLOAT_OPENS_KG = 0.028
 HEEL_KG = 0.004
 LEAK_M3_S = 0.012 / 60.0
 
@@ -72,6 +81,14 @@ class MakeBelieveShop:
     def _pipe_k(self) -> float:
         return self._room_k() - 2.5
 
+    def _booth_k(self) -> float:
+        """The booth is heated, and it takes its heat from the room."""
+        return self._room_k() - 1.0
+
+    def _panel_k(self) -> float:
+        """A panel is brought in cold every two hours, and warms up with half an hour's lag."""
+        return self._booth_k() - 9.0 * math.exp(-(self._hours() % 2.0) / 0.5)
+
     def _used_m3_s(self) -> float:
         """At work somebody sprays for five minutes out of eight."""
         if not self.at_work(self.now_us):
@@ -116,7 +133,12 @@ class MakeBelieveShop:
         carried = self._catch("tank", condensed)
         pipe = max(0.0, leaving - used * self._saturated("riser"))
         carried = self._catch("riser", carried + pipe)
-        self._catch("booth-coalescer", carried)
+        self._catch("booth-coalescer", carried * (1.0 - TO_DRYER))
+        dry = air.saturated_humidity_ratio(DRYER_K, self.pressure_pa + BAROMETER_PA)
+        chilled = TO_DRYER * max(0.0, leaving - pipe - used * dry)
+        self._catch("fine-coalescer", self._catch("dryer", carried * TO_DRYER + chilled))
+        if self.traps_kg["dryer"] >= FLOAT_OPENS_KG:
+            self.drain("dryer")
 
     def _catch(self, trap: str, liquid: float) -> float:
         caught = SEPARATIONS[trap] * liquid
@@ -134,3 +156,7 @@ class MakeBelieveShop:
         self._put("intake-air.pressure", BAROMETER_PA)
         self._put("tank-gauge.pressure", self.pressure_pa)
         self._put("pipe-end.temperature", self._pipe_k())
+        self._put("booth-air.temperature", self._booth_k())
+        self._put("booth-air.relative_humidity", 0.5 + 0.04 * math.sin(self._hours() * 0.9))
+        self._put("booth-air.pressure", BAROMETER_PA)
+        self._put("panel.temperature", self._panel_k())
