@@ -111,13 +111,14 @@ def learned_words(site: Site, learned: Learned) -> str:
     """What is said to whoever measured."""
     expected = interval_words(site, *learned.expected_kg)
     measured = volume_words(site, learned.measured_kg)
+    found = f"you measured {measured}" if learned.measured_kg > 0.0 else "it was empty"
     if learned.flagged:
         return (
-            f"{learned.trap}: you measured {measured}, but {expected} was expected. It is kept, "
+            f"{learned.trap}: {found}, but {expected} was expected. It is kept, "
             "and not learned from until you confirm it: look at the figure and its unit again."
         )
     after = "is tighter" if learned.narrowed < TIGHTER else "has learned from it"
     return (
-        f"{learned.trap}: you measured {measured}, expected {expected}; the next estimate of "
+        f"{learned.trap}: {found}, expected {expected}; the next estimate of "
         f"{learned.trap} {after}."
     )

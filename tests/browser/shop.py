@@ -1,0 +1,70 @@
+"""A real daemon without threads of its own, behind its real server, for a browser to look at."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+from api.app import create_app
+from api.server import ApiServer
+from daemon.journal import Entry
+from daemon.shell import Shell
+from daemon.store.store import Store
+from tests.browser.network import Wire
+from tests.daemon.shops import BEGUN_US, PERIOD_US, SITE, site, working
+from tests.daemon.test_shell import HandClock, Played
+
+METRIC = (
+    SITE.replace('name = "Birch Works"', 'name = "Birch Works"\ntimezone = "Europe/Lisbon"')
+    .replace('"08:00-12:00"', '"06:00-12:00"')
+    .replace('drain_at = "600 ml"', 'drain_at = "600 ml", holds_at_start = "650 ml"')
+    .replace(
+        'after = "booth-regulator"\n\n[model]',
+        'after = "booth-regulator"\nsurroundings = "intake-air"\nwork = "solvent-borne"\n\n[model]',
+    )
+)
+US = METRIC.replace("[site]\n", '[site]\nunits = "us"\n')
+TICKS = 60
+
+
+class Shop:
+    """Birch Works at its 60th tick: the tank is due, the spray gun's surface is not known."""
+
+    def __init__(self, folder: Path, text: str = METRIC) -> None:
+        self.site = site(text)
+        record = list(working(self.site, 400))
+        self.clock = HandClock(BEGUN_US)
+        self.store = Store.open(folder / "birch-works.db", self.site.channels)
+        self.shell = Shell(self.site, self.clock, Played(record), self.store)
+        self.number = 0
+        self.tick(TICKS)
+        self.server = ApiServer(create_app(self.shell), "127.0.0.1", 0)
+        self.server.start()
+        self.wire = Wire(self.server.port)
+
+    @property
+    def url(self) -> str:
+        return f"http://127.0.0.1:{self.wire.port}"
+
+    def tick(self, times: int = 1) -> None:
+        """Let the daemon make its next ticks."""
+        for _ in range(times):
+            self.clock.wall_us = max(self.clock.wall_us, BEGUN_US + self.number * PERIOD_US)
+            self.shell.tick(BEGUN_US + self.number * PERIOD_US)
+            self.number += 1
+
+    def stop_server(self) -> None:
+        """The server goes down, the journal stays."""
+        self.server.stop()
+
+    def start_server(self) -> None:
+        """It comes up again on the same port."""
+        self.server = ApiServer(create_app(self.shell), "127.0.0.1", self.server.port)
+        self.server.start()
+
+    def entries(self) -> list[Entry]:
+        return list(self.store.entries(every=True))
+
+    def close(self) -> None:
+        self.wire.close()
+        self.server.stop()
+        self.store.close()
