@@ -28,8 +28,9 @@ from daemon.views import Running
 
 READING = frozenset({"GET", "HEAD", "OPTIONS"})
 PAIRING = "/api/v1/pairing"
-# What anybody may see: nothing of the shop is in it.
-OPEN = frozenset({"/pair", PAIRING, "/api/v1/openapi.json"})
+# What anybody may do: say who they are. And what anybody may see: nothing of the shop is in it.
+WHO = frozenset({"/pair", PAIRING, f"{PAIRING}/forget"})
+OPEN = frozenset({"/api/v1/openapi.json"})
 OPEN_BELOW = ("/problems/", "/static/")
 OPEN_ENDINGS = (".css", ".js", ".ico")
 WRONG_AT_MOST, WITHIN_S = 10, 60.0
@@ -80,6 +81,7 @@ class Door:
         self.closed = not is_loopback(api.host)
         self.open_reading = api.open_reading
         self.cookie = f"dripleg-{running.site.id}"
+        self.no_cookie = f'{self.cookie}=""; HttpOnly; Max-Age=0; Path=/; SameSite=strict'
         self._running = running
         self._tries = Tries(running.clock)
 
@@ -87,18 +89,22 @@ class Door:
         self, method: str, path: str, headers: Headers, address: str
     ) -> tuple[ApiKey | None, Problem | None]:
         """The key that a request brings, if any, and why it may not go on, if it may not."""
-        if not self.closed:
+        reading = method in READING
+        if not self.closed or (reading and _is_open(path)):
             return None, None
         bearer, cookie = _bearer(headers), self._cookie(headers)
-        text, reading = bearer or cookie, method in READING
-        free = _is_open(path) or (reading and self.open_reading)
-        if not text:
+        free = path in WHO or (reading and self.open_reading)
+        if not bearer and not cookie:
             return None, None if free else Problem("keys-needed", headers=_challenge())
         try:
-            key = await self.identify(text, address)
+            key = await self.identify(bearer or cookie, address)
         except Problem as problem:
+            if bearer:
+                return None, problem
+            if problem.kind == "key-unknown":  # the browser need not send it again
+                problem.headers["set-cookie"] = self.no_cookie
             # a phone whose key was revoked may still see what everybody sees
-            return None, None if free and not bearer else problem
+            return None, None if free else problem
         return key, None if free else _lacking(key, reading)
 
     async def identify(self, text: str, address: str) -> ApiKey:
@@ -134,7 +140,7 @@ def _bearer(headers: Headers) -> str:
 
 
 def _is_open(path: str) -> bool:
-    if path in OPEN or path == f"{PAIRING}/forget":
+    if path in OPEN:
         return True
     asset = path.endswith(OPEN_ENDINGS) and not path.startswith("/api/")
     return asset or path.startswith(OPEN_BELOW)

@@ -172,7 +172,15 @@ class ServiceIn(BaseModel):
     sensor: str | None = Field(
         default=None, max_length=80, description="which one, when a sensor was replaced"
     )
+    at: str | None = Field(
+        default=None,
+        description="when it was done, RFC 3339 with an offset; left out: now",
+        examples=["2026-12-01T09:00:00Z"],
+    )
     by: Name | None = Field(default=None, description="who did it", examples=["AM"])
+    key: Key | None = Field(
+        default=None, description="any text of your own: the same one again records nothing twice"
+    )
 
 
 class SaltCheckIn(BaseModel):

@@ -101,6 +101,4 @@ async def pair(body: PairIn, request: Request, response: Response) -> AskingOut:
 async def forget(request: Request) -> Response:
     """The key itself stays good: `dripleg key SITE revoke` ends it."""
     door: Door = request.app.state.door
-    response = Response(status_code=204)
-    response.delete_cookie(door.cookie, path="/", httponly=True, samesite="strict")
-    return response
+    return Response(status_code=204, headers={"set-cookie": door.no_cookie})

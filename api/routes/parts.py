@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from fastapi import APIRouter, Depends
+from fastapi import APIRouter, Depends, Response
 
 from api.keys import service_allowed, writes_allowed
 from api.models import AcknowledgeIn, RecordedOut, SaltCheckIn, ServiceIn
-from api.problems import Problem, answered_by
+from api.problems import Point, Problem, answered_by
 from api.routes.running import TheDaemon
 from api.routes.traps import described
+from api.validation import moment_of
 from daemon.journal import Confirm, SaltCheck, Service
 
 router = APIRouter()
@@ -45,18 +46,33 @@ def confirm(trap: str, daemon: TheDaemon, body: AcknowledgeIn | None = None) -> 
     status_code=201,
     summary="Say that a part was changed or looked at",
     dependencies=[Depends(service_allowed)],
-    responses=answered_by("unknown-station", *ON_WRITING),
+    responses={
+        200: {"model": RecordedOut, "description": "The key was seen before: the first entry."},
+        **answered_by("unknown-station", *ON_WRITING),
+    },
 )
-def service(station: str, body: ServiceIn, daemon: TheDaemon) -> RecordedOut:
-    """What was learned of the old part is forgotten; `sensor` names the one that was replaced."""
+def service(station: str, body: ServiceIn, daemon: TheDaemon, response: Response) -> RecordedOut:
+    """What was learned of the old part is forgotten from then on.
+
+    `element changed`: a filter's, a cartridge, or a bath's new ice. `drain seen working`: of a
+    drain that empties itself. `sensor replaced`: `sensor` names it. `compressor serviced`: at any
+    station.
+    """
     stations = [each.id for each in daemon.site.line.stations]
     if station not in stations:
         known = ", ".join(stations)
         raise Problem(
             "unknown-station", f'there is no station "{station}"; those of this site are: {known}'
         )
+    points: list[Point] = []
+    at_us = moment_of(body.at, daemon.clock.now_us(), points)
+    if points:
+        raise Problem("invalid-request", points=points)
     of = (body.sensor or "") if body.what == "sensor replaced" else station
-    return RecordedOut.of(daemon.record(Service(body.what, of, body.by or "")).entry)
+    recorded = daemon.record(Service(body.what, of, body.by or ""), at_us, body.key or "")
+    if recorded.repeated:
+        response.status_code = 200
+    return RecordedOut.of(recorded.entry)
 
 
 @router.post(

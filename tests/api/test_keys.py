@@ -275,3 +275,16 @@ def test_who_asks_without_a_key_may_nothing(client: Client) -> None:
         "name": None,
         "may": [],
     }
+
+
+def test_a_phone_whose_key_was_revoked_is_told_once_and_can_be_paired_anew(
+    running: FakeRunning, client: Client
+) -> None:
+    text = a_key(running)
+    revoke(running, text)
+    for _ in range(2 * WRONG_AT_MOST):  # nobody guesses here: pages and their parts are asked for
+        answer = client.get("/round", headers=with_cookie(text))
+        problem_of(answer, 401, "key-unknown")
+        assert answer.headers["set-cookie"].startswith('dripleg-alder-yard=""')
+        assert client.get("/static/style.css", headers=with_cookie("a.b")).status_code == 200
+    assert client.post(PAIRING, json={"key": a_key(running)}).status_code == 200

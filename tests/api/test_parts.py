@@ -75,3 +75,27 @@ def test_what_cannot_be_is_refused_in_words(
     assert response.status_code == status
     assert words in response.text
     assert not running.journal
+
+
+def test_a_part_changed_yesterday_is_recorded_once_and_in_its_time(
+    running: FakeRunning, client: Client
+) -> None:
+    body = {"what": "element changed", "at": "2026-11-30T17:00:00Z", "by": "AM", "key": "v1"}
+    first = client.post("/api/v1/stations/tank/service", json=body)
+    assert (first.status_code, first.json()["at"]) == (201, "2026-11-30T17:00:00Z")
+    again = client.post("/api/v1/stations/tank/service", json=body)
+    assert (again.status_code, again.json()) == (200, first.json())
+    assert len(running.journal) == 1
+
+
+@pytest.mark.parametrize(
+    ("at", "words"), [("noon", "noon"), ("2026-12-02T09:00:00Z", "ahead of this machine's clock")]
+)
+def test_a_part_is_not_changed_at_a_time_that_cannot_be(
+    running: FakeRunning, client: Client, at: str, words: str
+) -> None:
+    body = {"what": "element changed", "at": at}
+    response = client.post("/api/v1/stations/tank/service", json=body)
+    assert response.status_code == 422
+    assert words in response.text
+    assert running.journal == []
