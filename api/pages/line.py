@@ -5,9 +5,10 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
-from fastapi import APIRouter
-from starlette.responses import HTMLResponse
+from fastapi import APIRouter, Depends
+from starlette.responses import HTMLResponse, Response
 
+from api.keys import service_allowed
 from api.models import ServiceIn
 from api.pages.forms import Fields, is_fresh
 from api.pages.frame import page
@@ -79,7 +80,7 @@ def line(daemon: TheDaemon) -> HTMLResponse:
     return _line(daemon)
 
 
-@router.post("/line/{station}/service")
+@router.post("/line/{station}/service", dependencies=[Depends(service_allowed)])
 def changed(station: str, fields: Fields, daemon: TheDaemon) -> HTMLResponse:
     """Somebody changed a part, and their browser runs no script."""
     if not is_fresh(fields):
@@ -90,7 +91,7 @@ def changed(station: str, fields: Fields, daemon: TheDaemon) -> HTMLResponse:
     if station in known and what not in _changes(known[station], daemon.site):
         raise Problem("invalid-request", f'"{what[:40]}" cannot be said of "{station}"')
     body = ServiceIn(what=what, sensor=sensor, by=fields.get("by") or None)  # type: ignore[arg-type]  # checked above
-    service(station, body, daemon)
+    service(station, body, daemon, Response())
     return _line(daemon, f"Noted: {what}. What was learned of the old part is forgotten.")
 
 

@@ -4,12 +4,15 @@ that was revoked or was made for less. Challenges after RFC 6750, section 3; coo
 
 from __future__ import annotations
 
+import re
 from dataclasses import replace
 from typing import Any
 
 import pytest
 
+from api.app import create_app
 from api.keys import MOST_ADDRESSES, WITHIN_S, WRONG_AT_MOST, Tries
+from api.pages.forms import TOKEN
 from daemon.clock import HOUR_US, MINUTE_US
 from daemon.keys import Scope, make
 from tests.api.client import Client, client_of, problem_of
@@ -288,3 +291,41 @@ def test_a_phone_whose_key_was_revoked_is_told_once_and_can_be_paired_anew(
         assert answer.headers["set-cookie"].startswith('dripleg-alder-yard=""')
         assert client.get("/static/style.css", headers=with_cookie("a.b")).status_code == 200
     assert client.post(PAIRING, json={"key": a_key(running)}).status_code == 200
+
+
+# ---- the pages' own forms ----
+
+
+def test_a_form_asks_for_the_same_as_the_api(running: FakeRunning, client: Client) -> None:
+    """Without script a browser sends forms: what a key may not do, it may not do that way."""
+    form = {
+        **with_cookie(a_key(running)),
+        "origin": f"http://{HOST}",
+        "content-type": "application/x-www-form-urlencoded",
+    }
+    fields = f"token={TOKEN}&what=element+changed&by=AM"
+    answer = client.post("/line/tank/service", content=fields, headers=form)
+    problem_of(answer, 403, "key-may-not")
+    assert running.journal == []
+
+
+def test_every_form_is_refused_without_a_key(running: FakeRunning) -> None:
+    app = create_app(running)
+    client = Client(app, HOST)
+    form = {
+        "origin": f"http://{HOST}",
+        "content-type": "application/x-www-form-urlencoded",
+        "accept": "text/html",
+    }
+    found = 0
+    for route in app.router.routes:
+        for each in getattr(getattr(route, "original_router", route), "routes", [route]):
+            path = getattr(each, "path", "/api/")
+            if "POST" not in (getattr(each, "methods", None) or ()) or path.startswith("/api/"):
+                continue
+            found += 1
+            path = re.sub(r"\{[^}]*\}", "tank", path)
+            answer = client.post(path, content=f"token={TOKEN}", headers=form)
+            assert answer.status_code == 401, path
+    assert found >= 4
+    assert running.journal == []
