@@ -85,6 +85,7 @@ def _replay_options(replay: argparse.ArgumentParser) -> None:
     replay.add_argument("--faults", type=Path, help="CSV of faults, as export writes them")
     replay.add_argument("--members", type=int, help="of the ensemble, instead of the site file's")
     replay.add_argument("--seed", type=int, help="of the ensemble, instead of the site file's")
+    replay.add_argument("--blocks", action="store_true", help="along time in blocks: much faster")
     replay.add_argument("--skip-bad", action="store_true", help="leave bad rows out and list them")
     replay.add_argument("--out", type=Path, required=True, metavar="FOLDER", help="for the results")
 

@@ -11,6 +11,7 @@ import math
 import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
+from itertools import islice
 from pathlib import Path
 
 from daemon.errors import ReplayError
@@ -44,17 +45,29 @@ class Rows:
         self.line = 1
 
     def __iter__(self) -> Iterator[list[str]]:
+        for lines in self.chunks(1024):
+            yield from self.cells(lines)
+
+    def chunks(self, most: int) -> Iterator[list[str]]:
+        """The lines under the header as they stand in the file, at most so many at once; `line`
+        is then the line before the first of them."""
         try:
             # undecodable bytes are kept as such, so that their row can be named
             with self.path.open(encoding="utf-8-sig", errors="surrogateescape", newline="") as file:
                 self._check_header(next(file, None))
-                for self.line, text in enumerate(file, 2):
-                    if row := self._cells(text.rstrip("\r\n")):
-                        yield row
+                while lines := list(islice(file, most)):
+                    yield lines
         except FileNotFoundError:
             raise ReplayError(f"{self.path}: there is no such file") from None
         except OSError as error:
             raise ReplayError(f"{self.path}: cannot be read ({error.strerror})") from None
+
+    def cells(self, lines: Sequence[str]) -> Iterator[list[str]]:
+        """The cells of each of these lines, one after the other, that is a row."""
+        for text in lines:
+            self.line += 1
+            if row := self._cells(text.rstrip("\r\n")):
+                yield row
 
     def refuse(self, column: str, problem: str) -> None:
         """Stop at a bad row, or note it and go on."""

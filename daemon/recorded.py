@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
+from typing import Protocol
 
 import numpy as np
 
@@ -20,8 +22,8 @@ from sensors.reading import Channel, Reading, reading
 READINGS_HEADER = ["time", "channel", "value", "unit"]
 DRAINS_HEADER = ["time", "trap", "volume", "unit"]
 DRAIN_UNITS = ("ml", "L", "oz", "gal")
-_EARLIEST_US = parse_rfc3339("1970-01-01T00:00:00Z")
-_LATEST_US = parse_rfc3339("2200-01-01T00:00:00Z")
+EARLIEST_US = parse_rfc3339("1970-01-01T00:00:00Z")
+LATEST_US = parse_rfc3339("2200-01-01T00:00:00Z")
 
 
 @dataclass(slots=True)
@@ -57,30 +59,65 @@ class _OtherReference:
     written: str
 
 
-class _ReadingsFile:
+class Kept(Protocol):
+    """Where a readings file's rows go."""
+
+    def add(self, channel: str, value: float, time_us: int) -> int:
+        """Keep one, NaN for a value that has to wait; gives its place."""
+        ...
+
+    def put(self, channel: str, place: int, value: float) -> None:
+        """The value of one that had to wait; those that never get one are no readings."""
+        ...
+
+    def of(self, channel: str) -> tuple[Sequence[int], Sequence[float]]:
+        """Times and values of one channel, in order of time."""
+        ...
+
+
+@dataclass(slots=True)
+class _Listed:
+    """Readings one by one."""
+
+    readings: list[Reading] = field(default_factory=list)
+
+    def add(self, channel: str, value: float, time_us: int) -> int:
+        self.readings.append(Reading(channel, value, time_us))
+        return len(self.readings) - 1
+
+    def put(self, channel: str, place: int, value: float) -> None:
+        self.readings[place] = Reading(channel, value, self.readings[place].time_us)
+
+    def of(self, channel: str) -> tuple[Sequence[int], Sequence[float]]:
+        mine = [found for found in self.whole() if found.channel == channel]
+        return [found.time_us for found in mine], [found.value for found in mine]
+
+    def whole(self) -> list[Reading]:
+        """In order of time; rows of one time stay in the file's order."""
+        kept = [found for found in self.readings if not math.isnan(found.value)]
+        kept.sort(key=lambda found: found.time_us)
+        return kept
+
+
+class ReadingsFile:
     """One pass over a readings file."""
 
-    def __init__(self, site: Site, path: Path, skip_bad: bool) -> None:
+    def __init__(self, site: Site, path: Path, skip_bad: bool, kept: Kept) -> None:
         self.site = site
         self.rows = Rows(path, READINGS_HEADER, skip_bad)
-        self.readings: list[Reading] = []
+        self.kept = kept
         self.waiting: list[_OtherReference] = []
         self.last_us: dict[str, int] = {}
         self._time: tuple[str | None, int] = (None, 0)
 
-    def read(self) -> Recorded:
-        """All readings, in order of time; rows of one time stay in the file's order."""
-        for row in self.rows:
-            self._row(*row)
-        self._refer_to_barometer()
-        kept = [found for found in self.readings if found.channel]
-        kept.sort(key=lambda found: found.time_us)
-        if not kept:
+    def finish(self, any_kept: bool) -> list[BadRow]:
+        """After the last row: the rows that were left out."""
+        if not any_kept:
             raise ReplayError(f"{self.rows.path}: no usable readings; a replay needs at least one")
         self.rows.bad.sort(key=lambda row: row.line)
-        return Recorded(kept, self.rows.bad)
+        return self.rows.bad
 
-    def _row(self, time: str, name: str, value: str, unit: str) -> None:
+    def row(self, time: str, name: str, value: str, unit: str) -> None:
         time_us = self._parse_time(time)
         if time_us is None:
             return
@@ -121,12 +158,10 @@ class _ReadingsFile:
         written = shown(f"{text} {unit}".strip())
         if self._is_other_reference(channel, unit):
             value_pa = to_si(value, unit[:3], "pressure")
+            place = self.kept.add(channel.name, math.nan, time_us)
             self.waiting.append(
-                _OtherReference(
-                    len(self.readings), self.rows.line, channel, value_pa, time_us, written
-                )
+                _OtherReference(place, self.rows.line, channel, value_pa, time_us, written)
             )
-            self.readings.append(Reading("", math.nan, time_us))
             return True
         try:
             value_si = recorded_to_si(value, unit, channel.quantity, gauge=channel.gauge)
@@ -136,7 +171,7 @@ class _ReadingsFile:
         found = self._within(channel, value_si, time_us, written)
         if found is None:
             return False
-        self.readings.append(found)
+        self.kept.add(found.channel, found.value, time_us)
         return True
 
     def _within(
@@ -163,7 +198,7 @@ class _ReadingsFile:
             and (unit[3] == "g") != channel.gauge
         )
 
-    def _refer_to_barometer(self) -> None:
+    def refer_to_barometer(self) -> None:
         """Turn gauge into absolute and back with the barometer of the record at that time."""
         if not self.waiting:
             return
@@ -181,7 +216,7 @@ class _ReadingsFile:
             value_pa = row.value_pa + sign * barometer.at(row.time_us)
             found = self._within(row.channel, value_pa, row.time_us, row.written)
             if found is not None:
-                self.readings[row.position] = found
+                self.kept.put(row.channel.name, row.position, found.value)
 
     def _barometer(self) -> _Barometer | None:
         source = self.site.line.stations[0].pressure
@@ -189,12 +224,8 @@ class _ReadingsFile:
             return _Barometer(np.array([0]), np.array([source.value]))
         if not isinstance(source, Measured):
             return None
-        mine = [found for found in self.readings if found.channel == source.channel]
-        mine.sort(key=lambda found: found.time_us)
-        if not mine:
-            return None
-        times = np.array([found.time_us for found in mine])
-        return _Barometer(times, np.array([found.value for found in mine]))
+        times, values = self.kept.of(source.channel)
+        return _Barometer(np.array(times), np.array(values)) if len(times) else None
 
 
 def read_readings(site: Site, path: Path, skip_bad: bool = False) -> Recorded:
@@ -203,7 +234,13 @@ def read_readings(site: Site, path: Path, skip_bad: bool = False) -> Recorded:
     A pressure in `bara`/`psia` on a gauge channel (or `barg`/`psig` on an absolute one) is turned
     with the intake's barometer as it stood then.
     """
-    return _ReadingsFile(site, path, skip_bad).read()
+    listed = _Listed()
+    file = ReadingsFile(site, path, skip_bad, listed)
+    for row in file.rows:
+        file.row(*row)
+    file.refer_to_barometer()
+    readings = listed.whole()
+    return Recorded(readings, file.finish(bool(readings)))
 
 
 def read_drains(
@@ -264,6 +301,6 @@ def _measured_drain(rows: Rows, trap: str, volume: str, unit: str) -> Drain | No
 
 def _time_us(text: str) -> int:
     time_us = parse_rfc3339(text)
-    if not _EARLIEST_US <= time_us < _LATEST_US:
+    if not EARLIEST_US <= time_us < LATEST_US:
         raise ValueError(f'"{text}" is outside the years 1970 to 2199; correct the year')
     return time_us

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import csv
 import json
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
@@ -77,10 +77,16 @@ class Result:
             self.marks.append(core.final_mark(self.state, emptied))
 
 
-def replay(core: Core, readings: Sequence[Reading], entries: Sequence[Entry]) -> Result:
+def replay(
+    core: Core,
+    readings: Sequence[Reading],
+    entries: Sequence[Entry],
+    progress: Callable[[int], None] = lambda reached_us: None,
+) -> Result:
     """Run the record through the core, tick by tick; both sequences in order of time.
 
     The first tick is the first reading's time, the last one the first at or after everything.
+    `progress` is told of the time that was reached.
     """
     if not readings:
         raise ReplayError("no readings: nothing to replay")
@@ -102,6 +108,7 @@ def replay(core: Core, readings: Sequence[Reading], entries: Sequence[Entry]) ->
     ):
         result.add(core.advance(result.state, tick.now_us, tick.inputs))
         result.ticks += 1
+        progress(tick.now_us)
     result.finish(core)
     return result
 

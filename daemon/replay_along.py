@@ -83,6 +83,7 @@ class _Run:
         before_us = (now_us // HOUR_US + 1) * HOUR_US
         if self.next_entry < len(self.entries):
             before_us = min(before_us, self.entries[self.next_entry].at_us)
+        before_us = min(before_us, self.record.next_fault_us(now_us))
         last_us = first_at_or_after(grid_us, period_us, self.end_us)
         return np.arange(now_us + period_us, min(before_us, last_us + 1), period_us)
 
@@ -104,8 +105,8 @@ class _Run:
         self.result.add(self.core.advance(self.result.state, until_us, inputs))
         self.result.ticks += 1
         self.result.taken["alone"] += 1
-        if readings:
-            self.heard_us = max(self.heard_us, readings[-1].time_us)
+        good_us = (reading.time_us for reading in readings if reading.good)
+        self.heard_us = max(self.heard_us, *good_us)
 
 
 def replay_in_blocks(

@@ -3,21 +3,26 @@
 from __future__ import annotations
 
 import argparse
+import sys
 from dataclasses import replace
 from pathlib import Path
 
 from daemon.advance import Core
-from daemon.clock import format_rfc3339
+from daemon.clock import SystemClock, format_rfc3339
 from daemon.csv_rows import BadRow
 from daemon.due import interval_words
 from daemon.errors import ReplayError
 from daemon.journal import Entry
 from daemon.moisture.ensemble import percentiles
+from daemon.progress import Progress
 from daemon.recorded import read_drains, read_readings
+from daemon.recorded_arrays import read_record
 from daemon.recorded_faults import read_faults
 from daemon.replay import Result, replay, write
+from daemon.replay_along import replay_in_blocks
 from daemon.site.reader import read_site
 from daemon.site.types import Site
+from sensors.reading import Reading
 
 FEWEST_MEMBERS, MOST_MEMBERS = 2, 100_000
 
@@ -25,22 +30,68 @@ FEWEST_MEMBERS, MOST_MEMBERS = 2, 100_000
 def replay_files(options: argparse.Namespace) -> str:
     """Run a replay; what to say about it."""
     site = _site(options)
-    recorded = read_readings(site, options.readings, options.skip_bad)
-    readings = recorded.readings
-    bad = list(recorded.bad)
-    if options.faults is not None:
-        faults, bad_faults = read_faults(site, options.faults, options.skip_bad)
-        readings = sorted([*readings, *faults], key=lambda one: one.time_us)
-        bad += bad_faults
-    entries: list[Entry] = []
-    if options.drains is not None:
-        first_us = readings[0].time_us
-        entries, bad_drains = read_drains(site, options.drains, first_us, options.skip_bad)
-        bad += bad_drains
-    core = Core(site)
-    result = replay(core, readings, entries)
+    core = Core(site, hourly=False)
+    run = _in_blocks if options.blocks else _tick_by_tick
+    result, entries, bad = run(core, options)
     write(core, result, entries, options.out)
     return _report(core, result, bad, options.out)
+
+
+Run = tuple[Result, list[Entry], list[BadRow]]
+
+
+def _tick_by_tick(core: Core, options: argparse.Namespace) -> Run:
+    recorded = read_readings(core.site, options.readings, options.skip_bad)
+    faults, bad_faults = _faults(core.site, options)
+    readings = sorted([*recorded.readings, *faults], key=lambda one: one.time_us)
+    entries, bad_drains = _drains(core.site, options, readings[0].time_us)
+    progress = _Progress("replaying", readings[0].time_us, readings[-1].time_us)
+    result = replay(core, readings, entries, progress.reached)
+    progress.end()
+    return result, entries, [*recorded.bad, *bad_faults, *bad_drains]
+
+
+def _in_blocks(core: Core, options: argparse.Namespace) -> Run:
+    reading = Progress(sys.stderr, SystemClock(), "reading")
+    record, bad = read_record(core.site, options.readings, options.skip_bad, reading.at)
+    reading.end()
+    faults, bad_faults = _faults(core.site, options)
+    record = replace(record, faults=faults)
+    entries, bad_drains = _drains(core.site, options, record.first_us)
+    progress = _Progress("replaying", record.first_us, record.last_us)
+    result = replay_in_blocks(core, record, entries, progress.reached)
+    progress.end()
+    return result, entries, [*bad, *bad_faults, *bad_drains]
+
+
+def _faults(site: Site, options: argparse.Namespace) -> tuple[list[Reading], list[BadRow]]:
+    if options.faults is None:
+        return [], []
+    return read_faults(site, options.faults, options.skip_bad)
+
+
+def _drains(
+    site: Site, options: argparse.Namespace, first_us: int
+) -> tuple[list[Entry], list[BadRow]]:
+    if options.drains is None:
+        return [], []
+    return read_drains(site, options.drains, first_us, options.skip_bad)
+
+
+class _Progress:
+    """How far a replay is between the first reading and the last, on a terminal only."""
+
+    def __init__(self, what: str, from_us: int, until_us: int) -> None:
+        self._line = Progress(sys.stderr, SystemClock(), what)
+        self._from_us, self._length_us = from_us, max(until_us - from_us, 1)
+
+    def reached(self, now_us: int) -> None:
+        """This time was reached."""
+        self._line.at((now_us - self._from_us) / self._length_us)
+
+    def end(self) -> None:
+        """It is done."""
+        self._line.end()
 
 
 def _site(options: argparse.Namespace) -> Site:

@@ -11,6 +11,9 @@ import re
 from dataclasses import dataclass
 from typing import Literal
 
+import numpy as np
+import numpy.typing as npt
+
 from daemon.errors import UnitError
 from daemon.unit_tables import EXAMPLES, SPELLINGS, UNITS, Kind
 
@@ -24,6 +27,7 @@ __all__ = [
     "parse_pressure",
     "parse_range",
     "recorded_from_si",
+    "recorded_many_to_si",
     "recorded_to_si",
     "recorded_units",
     "show_barometer",
@@ -41,6 +45,7 @@ __all__ = [
 ]
 
 People = Literal["metric", "us"]
+Values = npt.NDArray[np.float64]
 
 _NUMBER = r"[+-]?(?:\d+(?:\.\d*)?|\.\d+)(?:[eE][+-]?\d+)?"
 _QUANTITY = re.compile(rf"({_NUMBER})\s*(.*)\Z", re.DOTALL)
@@ -331,6 +336,17 @@ def recorded_to_si(value: float, unit: str, quantity: str, *, gauge: bool) -> fl
             raise UnitError(_other_reference(value, unit, gauge))
         unit = unit[:3]
     return to_si(value, unit, _RECORDED_KIND[quantity])
+
+
+def recorded_many_to_si(values: Values, unit: str, quantity: str) -> Values:
+    """The same for an array of values, in a unit that is the channel's own; contacts are left as
+    they are."""
+    if quantity == "contact":
+        return values
+    if quantity == "pressure" and unit[:3] in ("bar", "psi"):
+        unit = unit[:3]
+    times, over, before = UNITS[_RECORDED_KIND[quantity]][unit]
+    return (values + before) * times / over
 
 
 def recorded_from_si(value: float, quantity: str, *, gauge: bool) -> tuple[float, str]:
