@@ -23,10 +23,8 @@ _PARAMETERS: dict[str, Any] = {
     "alarm": "tank-drain-due",
     "station": "riser",
     "sensor": "intake-air",
-    "week": "2026-W49",
     "all": True,
     "units": "site",
-    "step": "1 h",
 }
 
 

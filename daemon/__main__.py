@@ -143,6 +143,7 @@ def _demo(options: argparse.Namespace) -> int:
 
 def _run(options: argparse.Namespace) -> int:
     from daemon import compose, logs
+    from daemon.addresses import is_loopback, names_for_others
     from daemon.site.reader import read_site
     from sensors.hardware import RealHardware
 
@@ -154,6 +155,11 @@ def _run(options: argparse.Namespace) -> int:
 
     def greet(parts: compose.Parts) -> None:
         compose.log.info("%s: watching; API at %s", site.name, parts.server.url)
+        if not is_loopback(site.api.host):
+            found = ", ".join(names_for_others(site.api.host)) or "no address yet"
+            compose.log.info(
+                "others reach it (%s) with a key: dripleg key %s make", found, options.site
+            )
 
     compose.run(setting, stop, greet)
     return EXIT_OK

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import argparse
 import os
+import pwd
 import sys
 from collections.abc import Iterator, Sequence
 from pathlib import Path
@@ -27,6 +28,7 @@ _QUIET = 4  # squares of white around it, as ISO/IEC 18004 asks for
 def run_command(site: Site, options: argparse.Namespace, store: Path, clock: Clock) -> str:
     """Do what was asked; what to say about it. KeyRefused says what cannot be done."""
     _refuse_odd(options)
+    _refuse_foreign(store)
     if options.action != "make" and not store.exists():
         raise StoreError(f"there is no database at {store}: name the daemon's with --store")
     with KeyStore.open(store, site.channels) as keys:
@@ -56,6 +58,21 @@ def _refuse_odd(options: argparse.Namespace) -> None:
         raise KeyRefused("say which key, by its id: `dripleg key SITE list` shows them")
     if options.action != "revoke" and options.key:
         raise KeyRefused(f'{options.action} takes no key: leave "{options.key}" out')
+
+
+def _refuse_foreign(store: Path) -> None:
+    """Files that root makes beside another user's database would keep its daemon out."""
+    found = store if store.exists() else store.parent
+    owner = found.stat().st_uid if found.exists() else 0
+    if os.geteuid() == 0 and owner != 0:
+        try:
+            name = pwd.getpwuid(owner).pw_name
+        except KeyError:
+            name = f"#{owner}"
+        raise KeyRefused(
+            f"{found} belongs to the user {name}: run this as that user, with sudo -u '{name}' "
+            "before it"
+        )
 
 
 # ---- make ----

@@ -4,6 +4,7 @@ by another program (zxing-cpp), as a phone's camera would."""
 from __future__ import annotations
 
 import json
+import os
 import re
 import struct
 import urllib.error
@@ -162,6 +163,23 @@ def test_what_cannot_be_done_is_said(
     Store.open(tmp_path / "birch-works.db", SHOP.channels).close()
     assert key(path, *options) == 2
     assert words in capsys.readouterr().err
+
+
+@pytest.mark.skipif(os.geteuid() != 0, reason="only root can give files away")
+@pytest.mark.parametrize("there", [True, False])
+def test_root_leaves_no_files_of_its_own_beside_another_user_s_database(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str], there: bool
+) -> None:
+    path, store = site_file(tmp_path, 8080), tmp_path / "birch-works.db"
+    if there:
+        Store.open(store, SHOP.channels).close()
+        os.chown(store, 65534, 65534)
+    else:
+        os.chown(tmp_path, 65534, 65534)
+    before = sorted(each.name for each in tmp_path.iterdir())
+    assert key(path, "make", "--for", "tablet", "--host", "shop-pi") == 2
+    assert "run this as that user, with sudo -u" in capsys.readouterr().err
+    assert sorted(each.name for each in tmp_path.iterdir()) == before
 
 
 # ---- commands on the daemon's own machine ----
