@@ -567,7 +567,10 @@ class Shell:
         assert estimate is not None  # the entry itself is pending
         self._shown, self._estimate = estimate.traps, estimate
         self._outlets_told_us = -1  # what was told of them may have changed
-        learned = [each for each in estimate.learned if each.at_us == entry.at_us]
+        trap = entry.body.trap if isinstance(entry.body, Drain) else ""
+        learned = [
+            each for each in estimate.learned if (each.at_us, each.trap) == (entry.at_us, trap)
+        ]
         return " ".join(learned_words(self._site, each) for each in learned)
 
     def _with_pending(self, state: CoreState, now_us: int) -> Estimate | None:
