@@ -13,7 +13,7 @@ from zoneinfo import ZoneInfo
 from apscheduler.schedulers.background import BackgroundScheduler
 from apscheduler.triggers.cron import CronTrigger
 
-from daemon.clock import format_rfc3339
+from daemon.clock import SystemClock, format_rfc3339, to_datetime
 from daemon.errors import StoreError
 from daemon.site.types import Site
 from daemon.store.store import Store
@@ -56,11 +56,12 @@ class WallClockJobs:
             coalesce=True,
             id="drop-old-readings",
         )
-        # once at the start, then again and again: a week that ended meanwhile is made up for
-        self._scheduler.add_job(make_weeks, id="week-at-start")
+        # at once, then again and again: a week that ended meanwhile is made up for. One job and
+        # not two: the scheduler trips over a job that ends for good just as it is being stopped
         self._scheduler.add_job(
             make_weeks,
             CronTrigger(minute=f"*/{WEEK_EVERY_MINUTES}", timezone=zone),
+            next_run_time=to_datetime(SystemClock().now_us()),
             misfire_grace_time=LATE_S,
             coalesce=True,
             id="week",
