@@ -105,8 +105,8 @@ class _Run:
         self.result.add(self.core.advance(self.result.state, until_us, inputs))
         self.result.ticks += 1
         self.result.taken["alone"] += 1
-        good_us = (reading.time_us for reading in readings if reading.good)
-        self.heard_us = max(self.heard_us, *good_us)
+        good_us = [reading.time_us for reading in readings if reading.good]
+        self.heard_us = max([self.heard_us, *good_us])
 
 
 def replay_in_blocks(
