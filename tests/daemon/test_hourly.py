@@ -17,8 +17,10 @@ from CoolProp.HumidAirProp import HAPropsSI
 from daemon.advance import Core
 from daemon.checkpoint import decode, encode
 from daemon.clock import HOUR_US, MINUTE_US, SECOND_US
+from daemon.foresight import Score
 from daemon.hour_figures import DRAWN, ON, ON_OPEN, WATER_IN, HourFigures, Noted, joined
-from daemon.journal import Acknowledge, Drain
+from daemon.hourly import noted_ahead
+from daemon.journal import Acknowledge, Drain, Undo
 from daemon.recovery import carried_over
 from daemon.site import hours as opening
 from daemon.site.types import Site
@@ -320,6 +322,49 @@ def test_a_late_drain_and_kills_come_to_the_same(
     tmp_path: Path, undisturbed: tuple[object, ...]
 ) -> None:
     assert lived(tmp_path / "a.db", kills=(300, 719, 721, 722), late=240) == undisturbed
+
+
+def test_a_drain_that_is_taken_back_leaves_no_check(tmp_path: Path) -> None:
+    """Nor anything else: the rows are those of a morning without it."""
+    found = []
+    for name, drains in (("with", True), ("without", False)):
+        rig = Rig(tmp_path / f"{name}.db", list(working(SHOP, 760)))
+        for tick in range(760):
+            rig.tick(BEGUN_US + tick * PERIOD_US)
+            if tick == 690 and drains:
+                rig.shell.record(Drain("riser", "emptied", 0.02, "AM"))
+            if tick == 730 and drains:
+                assert len(rig.store.drain_checks(0, 2**62)) == 1
+                (drain,) = (e for e in rig.store.entries() if isinstance(e.body, Drain))
+                rig.shell.record(Undo("riser", drain.seq, "AM"))
+        found.append(rows(rig.store))
+        rig.store.close()
+    assert found[0] == found[1]
+
+
+# ---- forecasts and their scores ----
+
+
+def test_forecasts_are_noted_as_they_are_kept() -> None:
+    state, noted = run(SHOP, list(working(SHOP, 1801)))
+    (kept,) = state.followed.foresight.kept  # at noon
+    assert [(each.trap, each.made_us) for each in noted.forecasts] == [
+        (trap, kept.at_us) for trap in SHOP.traps
+    ]
+    told = [(each.p05_us, each.p50_us, each.p95_us) for each in noted.forecasts]
+    assert told == list(kept.due_us)
+
+
+def test_every_score_is_noted_once() -> None:
+    """Also where more were made than one, and where the state's own list is full."""
+    state, _ = run(SHOP, list(working(SHOP, 2)))
+    old = Score("tank", 0, 1, 2, 3, 2)
+    full = replace(state.followed.foresight, scores=(old,) * 100, scored=250)
+    one, two = replace(old, happened_us=5), replace(old, happened_us=6)
+    after = replace(full, scores=(*full.scores, one, two)[-100:], scored=252)
+    (noted,) = noted_ahead(SHOP.traps, full, after)
+    assert noted.scores == (one, two)
+    assert list(noted_ahead(SHOP.traps, after, after)) == []
 
 
 # ---- changes of the site file, old checkpoints ----
