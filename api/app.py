@@ -43,7 +43,7 @@ from api.routes import (
     weekly,
 )
 from api.validation import points_of
-from daemon.errors import JournalError, StoreError
+from daemon.errors import JournalError, KeyReusedError, StoreError
 from daemon.views import Running
 
 PREFIX = "/api/v1"
@@ -187,7 +187,8 @@ def _possible_methods(request: Request) -> list[str]:
 
 
 async def _answer_journal(request: Request, error: Exception) -> Response:
-    return _answer(request, Problem("invalid-request", str(error)))
+    kind = "key-reused" if isinstance(error, KeyReusedError) else "invalid-request"
+    return _answer(request, Problem(kind, str(error)))
 
 
 async def _answer_store(request: Request, error: Exception) -> Response:

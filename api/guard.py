@@ -14,6 +14,7 @@ from urllib.parse import urlsplit
 from starlette.datastructures import Headers, MutableHeaders
 from starlette.requests import Request
 from starlette.responses import Response
+from starlette.routing import Match
 from starlette.types import ASGIApp, Message, Receive, Scope, Send
 
 from api.keys import READING, Door
@@ -39,6 +40,7 @@ _SECURITY_HEADERS = {
     "cache-control": "no-store",
 }
 ABOUT_KEYS = frozenset({"keys-needed", "key-unknown", "key-may-not", "too-many-tries"})
+ABOUT_BODIES = frozenset({"no-length", "too-large", "not-json", "not-a-form"})
 log = logging.getLogger(__name__)
 
 
@@ -139,6 +141,8 @@ class Guard:
     async def _refusal(self, scope: Scope) -> Problem | None:
         method, path, headers = scope["method"], scope["path"], Headers(scope=scope)
         problem = refusal(method, headers, self._bound_to, path)
+        if problem is not None and problem.kind in ABOUT_BODIES and not _takes(scope):
+            problem = None  # the router says what is wrong: 404, or 405
         if problem is not None:
             return problem
         address = scope["client"][0] if scope.get("client") else ""
@@ -149,6 +153,12 @@ class Guard:
             return Problem("log-unavailable", str(error))
         scope["dripleg.key"] = key
         return problem
+
+
+def _takes(scope: Scope) -> bool:
+    """Whether there is a route that reads such a request."""
+    routes = scope["app"].router.routes if "app" in scope else ()
+    return any(route.matches(scope)[0] is Match.FULL for route in routes)
 
 
 def _answer(scope: Scope, problem: Problem) -> Response:

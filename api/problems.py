@@ -81,6 +81,11 @@ KINDS: dict[str, Kind] = {
         "The drain cannot be taken back",
         "A drain can be taken back for ten minutes after it was recorded, with the same initials.",
     ),
+    "key-reused": Kind(
+        409,
+        "This key was used before, for something else",
+        "Give every new entry a key of its own; the same one is for sending the same entry again.",
+    ),
     "cannot-be-shelved": Kind(
         409,
         "The alarm cannot be put off",
@@ -213,6 +218,8 @@ def answered_by(*kinds: str) -> dict[int | str, dict[str, Any]]:
     answers: dict[int | str, dict[str, Any]] = {}
     if "keys-needed" in kinds:
         kinds += WITH_KEYS
+    if "not-json" in kinds:  # it writes
+        kinds += ("key-reused",)
     for name in kinds:
         kind = KINDS[name]
         answer = answers.setdefault(

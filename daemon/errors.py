@@ -64,6 +64,10 @@ class UndoError(JournalError):
     """A drain that cannot be taken back: too late, by somebody else, or not there."""
 
 
+class KeyReusedError(JournalError):
+    """An idempotency key that came before with another content."""
+
+
 class StoreError(DriplegError):
     """The database cannot be opened, read or written as it must be."""
 

@@ -52,12 +52,12 @@ def get_alarms(
     dependencies=[Depends(writes_allowed)],
     responses=answered_by("nothing-to-acknowledge", *_WRITES),
 )
-def acknowledge(alarm: str, daemon: TheDaemon, body: AcknowledgeIn | None = None) -> AcknowledgeOut:
+def acknowledge(alarm: str, daemon: TheDaemon, body: AcknowledgeIn) -> AcknowledgeOut:
     """Answers once it is committed; the alarm's state follows at the next tick."""
     standing = _find(daemon, alarm)
     if standing.state not in WAITING:
         raise Problem("nothing-to-acknowledge", f'the alarm "{alarm}" is {standing.state}')
-    seen = Acknowledge(alarm, (body.by if body else None) or "")
+    seen = Acknowledge(alarm, body.by or "")
     return AcknowledgeOut.of(daemon.record(seen).entry, seen)
 
 
@@ -99,15 +99,13 @@ def shelve(alarm: str, body: ShelveIn, daemon: TheDaemon, response: Response) ->
         **answered_by("not-shelved", *_WRITES),
     },
 )
-def unshelve(
-    alarm: str, daemon: TheDaemon, response: Response, body: UnshelveIn | None = None
-) -> UnshelveOut:
+def unshelve(alarm: str, daemon: TheDaemon, response: Response, body: UnshelveIn) -> UnshelveOut:
     """Ends before its time what `shelve` began; the alarm's state follows at the next tick."""
     standing = _find(daemon, alarm)
-    key = (body.key if body else None) or ""
+    key = body.key or ""
     if standing.state != "shelved" and not key:
         raise Problem("not-shelved", f'the alarm "{alarm}" is {standing.state}')
-    told = Unshelve(alarm, (body.by if body else None) or "")
+    told = Unshelve(alarm, body.by or "")
     recorded = daemon.record(told, key=key)
     if recorded.repeated:
         response.status_code = 200

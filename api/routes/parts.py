@@ -34,10 +34,10 @@ ON_WRITING = (
     dependencies=[Depends(writes_allowed)],
     responses=answered_by("unknown-trap", *ON_WRITING),
 )
-def confirm(trap: str, daemon: TheDaemon, body: AcknowledgeIn | None = None) -> RecordedOut:
+def confirm(trap: str, daemon: TheDaemon, body: AcknowledgeIn) -> RecordedOut:
     """The trap's last measured drain was far off what was expected: it is learned from now."""
     described(daemon, trap)
-    return RecordedOut.of(daemon.record(Confirm(trap, (body.by if body else None) or "")).entry)
+    return RecordedOut.of(daemon.record(Confirm(trap, body.by or "")).entry)
 
 
 @router.post(

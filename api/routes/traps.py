@@ -127,13 +127,13 @@ def undo_drain(
     seq: Annotated[int, Path(ge=1, le=2**53, description="the drain's number in the journal")],
     daemon: TheDaemon,
     response: Response,
-    body: UndoIn | None = None,
+    body: UndoIn,
 ) -> DrainOut:
     """For ten minutes after it was recorded, with the same initials. The estimate is then as if it
     had never been; what was announced stays, and corrections follow."""
     described(daemon, trap)
     try:
-        recorded = daemon.record(Undo(trap, seq, (body.by if body else None) or ""))
+        recorded = daemon.record(Undo(trap, seq, body.by or ""))
     except UndoError as error:
         raise Problem("cannot-be-undone", str(error)) from error
     if recorded.repeated:

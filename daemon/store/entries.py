@@ -7,7 +7,7 @@ from typing import Any
 
 from sqlalchemy import Connection, Select, func, insert, select
 
-from daemon.errors import JournalError
+from daemon.errors import KeyReusedError
 from daemon.journal import (
     Acknowledge,
     Blotter,
@@ -38,7 +38,7 @@ def add(connection: Connection, body: Body, at_us: int, written_us: int, key: st
         found = connection.execute(select(journal).where(journal.c.idempotency_key == key)).first()
         if found is not None:
             if found.body != text:
-                raise JournalError(
+                raise KeyReusedError(
                     f"key {key!r} was used before for another entry ({found.body}, now {text}): "
                     "send each new entry with a key of its own"
                 )

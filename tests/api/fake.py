@@ -11,7 +11,7 @@ import numpy as np
 from daemon import undoing
 from daemon.alarms import Alarm
 from daemon.clock import HOUR_US, MINUTE_US, SECOND_US, parse_rfc3339
-from daemon.errors import JournalError
+from daemon.errors import JournalError, KeyReusedError
 from daemon.foresight import Score
 from daemon.journal import Acknowledge, Body, Drain, Entry, Shelve, Undo, Unshelve
 from daemon.keys import ApiKey, KeyRing
@@ -372,7 +372,7 @@ class FakeRunning:
                 if key and entry.key == key:
                     if entry.body == body and at_us in (None, entry.at_us):
                         return Recorded(entry, repeated=True)
-                    raise JournalError(f'the key "{key}" was used before for something else')
+                    raise KeyReusedError(f'the key "{key}" was used before for something else')
             now_us = self.clock.now_us()
             if isinstance(body, Undo):
                 found = next((e for e in self.journal if e.seq == body.entry), None)

@@ -101,7 +101,7 @@ def test_the_same_key_again_is_answered_with_the_first_entry(
 def test_the_same_key_for_another_drain_is_refused(running: FakeRunning, client: Client) -> None:
     client.post(DRAINS, json={"volume_ml": 380, "key": "k1"})
     response = client.post(DRAINS, json={"volume_ml": 90, "key": "k1"})
-    problem = problem_of(response, 422, "invalid-request")
+    problem = problem_of(response, 409, "key-reused")
     assert 'the key "k1" was used before' in problem["detail"]
     assert len(running.journal) == 1
 
