@@ -86,6 +86,8 @@ def _part(start_us: int, column: Column, holds_us: int) -> Part:
 def overlapping(parts: Sequence[Part]) -> bool:
     """Whether parts of one step lie within one another: they do not tell then for how long each
     value held."""
+    if len(parts) < 2:
+        return False
     ordered = sorted(parts, key=lambda part: part.begins_us)
     return any(one.ends_us > two.begins_us for one, two in pairwise(ordered))
 
@@ -115,20 +117,21 @@ def steps_of(
 
 
 class _Sums:
-    """Sums by step, while parts are added."""
+    """Sums by step, while parts are added. Lists: a year is many thousand small additions."""
 
     def __init__(self, starts_us: npt.NDArray[np.int64], step_us: int) -> None:
         number = len(starts_us)
         self._starts_us, self._step_us = starts_us, step_us
-        self._good, self._bad = np.zeros(number, np.int64), np.zeros(number, np.int64)
-        self._least, self._greatest = np.full(number, math.inf), np.full(number, -math.inf)
-        self._total, self._held_total = np.zeros(number), np.zeros(number)
-        self._held_us = np.zeros(number, np.int64)
+        self._begin_us = int(starts_us[0]) if number else 0
+        self._number = number
+        self._good, self._bad, self._held_us = [0] * number, [0] * number, [0] * number
+        self._least, self._greatest = [math.inf] * number, [-math.inf] * number
+        self._total, self._held_total = [0.0] * number, [0.0] * number
 
     def add(self, part: Part) -> None:
         """Add what stands in a part itself."""
-        place = self._place(part.start_us)
-        if not 0 <= place < len(self._starts_us):
+        place = (part.start_us - self._begin_us) // self._step_us
+        if not 0 <= place < self._number:
             return
         self._good[place] += part.good
         self._bad[place] += part.bad
@@ -142,32 +145,30 @@ class _Sums:
     def hold(self, part: Part, until_us: int, holds_us: int, *, limited: bool) -> None:
         """Let a part's last value hold on, over the steps that follow."""
         end_us = min(until_us, part.ends_us + holds_us) if limited else until_us
-        if part.last_value is None or end_us <= part.ends_us:
+        if part.last_value is None:
             return
-        first = max(self._place(part.ends_us), 0)
-        after = max(self._place(end_us - 1) + 1, 0)
-        starts = self._starts_us[first:after]
-        within = np.minimum(end_us, starts + self._step_us) - np.maximum(part.ends_us, starts)
-        self._held_us[first:after] += within
-        self._held_total[first:after] += within / 1e6 * part.last_value
-
-    def _place(self, time_us: int) -> int:
-        if not len(self._starts_us):
-            return -1
-        return (time_us - int(self._starts_us[0])) // self._step_us
+        from_us = max(part.ends_us, self._begin_us)
+        place = (from_us - self._begin_us) // self._step_us
+        while from_us < end_us and place < self._number:
+            next_us = min(end_us, self._begin_us + (place + 1) * self._step_us)
+            self._held_us[place] += next_us - from_us
+            self._held_total[place] += (next_us - from_us) / 1e6 * part.last_value
+            from_us = next_us
+            place += 1
 
     def steps(self, channel: str) -> StepsOfReadings:
         """The sums as arrays; NaN where there is nothing to tell."""
-        none = self._good == 0
+        count = np.array(self._good, np.int64)
+        none = count == 0
         return StepsOfReadings(
             channel=channel,
             step_us=self._step_us,
             start_us=self._starts_us,
-            count=self._good,
-            bad=self._bad,
-            least=np.where(none, math.nan, self._least),
-            greatest=np.where(none, math.nan, self._greatest),
-            total=np.where(none, math.nan, self._total),
-            held_us=self._held_us,
-            held_total=self._held_total,
+            count=count,
+            bad=np.array(self._bad, np.int64),
+            least=np.where(none, math.nan, np.array(self._least, np.float64)),
+            greatest=np.where(none, math.nan, np.array(self._greatest, np.float64)),
+            total=np.where(none, math.nan, np.array(self._total, np.float64)),
+            held_us=np.array(self._held_us, np.int64),
+            held_total=np.array(self._held_total, np.float64),
         )
