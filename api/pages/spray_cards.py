@@ -7,7 +7,9 @@ from dataclasses import dataclass
 
 from api.pages.scales import Scale, scale_of
 from daemon.moisture.purity import class_words
+from daemon.outlet_air import TYPED_GIVE_OR_TAKE_K
 from daemon.site.types import Site
+from daemon.units import show_difference
 from daemon.verdict import grams
 from daemon.views import Interval, Judgement, OutletView, Verdict
 from daemon.work import WAIT_BELOW_K
@@ -112,7 +114,8 @@ def _surface(site: Site, view: OutletView, typed: str) -> Margin:
         scale = scale_of(surface.surface_margin_k, surface.wanted_k, surface.wanted_k)
     sensor = surface_sensor(site, view.outlet)
     if typed:
-        note = f"With the surface at {typed}, as you typed it; give or take 1 K."
+        width = show_difference(TYPED_GIVE_OR_TAKE_K, site.units)
+        note = f"With the surface at {typed}, as you typed it; give or take {width}."
     elif surface.by_gauge_until_us is not None:
         note = "By your gauge."
     elif sensor and surface.surface_k is not None:

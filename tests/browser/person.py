@@ -13,6 +13,7 @@ from selenium.common.exceptions import (
     TimeoutException,
 )
 from selenium.webdriver.common.by import By
+from selenium.webdriver.remote.command import Command
 from selenium.webdriver.remote.webelement import WebElement
 from selenium.webdriver.support.ui import WebDriverWait
 
@@ -42,7 +43,7 @@ class Person:
         self.browser.execute_cdp_cmd("Emulation.setScriptExecutionDisabled", {"value": False})
         self.browser.execute_script("try { localStorage.clear() } catch {}")
         self.browser.get("about:blank")
-        self.browser.get_log("browser")
+        self.complaints()
 
     def open(self, path: str) -> None:
         self.browser.get(self.shop.url + path)
@@ -92,14 +93,15 @@ class Person:
 
     def taps(self, selector: str) -> None:
         """Where it is hidden in a fold, unfold that first; again where it was just replaced."""
-        self.waits_for(lambda: self._taps(selector) or True)
+        self.waits_for(lambda: self._taps(selector))
 
-    def _taps(self, selector: str) -> None:
+    def _taps(self, selector: str) -> bool:
         element = self.find(selector)
         unfold = "arguments[0].closest('details')?.setAttribute('open', '')"
         self.browser.execute_script(unfold, element)
         self.browser.execute_script("arguments[0].scrollIntoView({block: 'center'})", element)
         element.click()
+        return True
 
     def taps_plainly(self, selector: str) -> None:
         """Without script there is no scrolling for it but the browser's own."""
@@ -125,7 +127,8 @@ class Person:
 
     def complaints(self) -> list[str]:
         """What the browser logged: refused scripts, failed requests, errors of our own script."""
-        return [entry["message"] for entry in self.browser.get_log("browser")]
+        logged = self.browser.execute(Command.GET_LOG, {"type": "browser"})["value"]
+        return [entry["message"] for entry in logged]
 
     def is_wider_than_the_screen(self) -> bool:
         wide = "return document.documentElement.scrollWidth > document.documentElement.clientWidth"

@@ -1,0 +1,75 @@
+"""What holds for every page in a browser: reach, contrast, weight, and no request elsewhere."""
+
+from __future__ import annotations
+
+from itertools import pairwise
+from urllib.parse import urlsplit
+
+import pytest
+from selenium.webdriver.common.keys import Keys
+
+from tests.browser.person import DESK, PHONE, Person
+from tests.browser.shop import Shop
+
+PAGES = ("/", "/round", "/spray", "/spray?outlet=spray-gun&surface=13")
+LARGEST = 60_000  # bytes of a page's HTML, style and script together
+
+
+@pytest.mark.parametrize("path", PAGES)
+@pytest.mark.parametrize(("width", "scheme"), [(PHONE, "light"), (DESK, "dark")])
+def test_axe_finds_no_serious_fault(person: Person, path: str, width: int, scheme: str) -> None:
+    person.hold(width, scheme)
+    person.open(path)
+    assert person.serious_faults() == []
+
+
+@pytest.mark.parametrize("path", PAGES)
+def test_a_page_fits_a_phone_and_asks_nobody_else(person: Person, shop: Shop, path: str) -> None:
+    person.open(path)
+    assert not person.is_wider_than_the_screen()
+    loaded = person.browser.execute_script(
+        "return performance.getEntriesByType('resource').map(e => [e.name, e.decodedBodySize])"
+        ".concat(performance.getEntriesByType('navigation').map(e => [e.name, e.decodedBodySize]))"
+    )
+    assert {urlsplit(name).netloc for name, _ in loaded} == {f"127.0.0.1:{shop.wire.port}"}
+    assert len(loaded) >= 4
+    assert sum(size for _, size in loaded) < LARGEST
+    assert person.complaints() == []
+
+
+def test_the_keyboard_alone_drains_a_trap(person: Person, shop: Shop) -> None:
+    person.hold(DESK)
+    person.open("/round")
+    person.browser.switch_to.active_element.send_keys(Keys.TAB)
+    assert person.browser.switch_to.active_element.text == "To the content"
+    visited = []
+    for _ in range(40):
+        here = person.browser.switch_to.active_element
+        here.send_keys(Keys.TAB)
+        visited.append(person.browser.switch_to.active_element.get_attribute("id"))
+        if visited[-1] == "drained-tank":
+            break
+    wanted = ["volume-tank", "unit-tank", "by-tank", "look-clear-tank", "drained-tank"]
+    assert [each for each in visited if each in wanted] == wanted
+    outline = person.browser.execute_script(
+        "return getComputedStyle(document.activeElement).outlineWidth"
+    )
+    assert outline == "3px"
+    person.browser.switch_to.active_element.send_keys(Keys.ENTER)
+    person.waits_for(lambda: len(shop.entries()) == 1)
+
+
+@pytest.mark.parametrize("path", PAGES)
+def test_a_screen_reader_finds_its_way(person: Person, path: str) -> None:
+    person.open(path)
+    found = person.browser.execute_script(
+        "return [document.documentElement.lang, document.querySelectorAll('h1').length,"
+        "document.querySelectorAll('main').length, document.querySelectorAll('nav').length,"
+        "document.querySelectorAll('[role=status], output').length,"
+        "[...document.querySelectorAll('h1,h2,h3')].map(h => +h.tagName[1])]"
+    )
+    lang, titles, mains, navigations, told, levels = found
+    assert (lang, titles, mains, navigations) == ("en", 1, 1, 1)
+    assert told >= 1
+    assert levels[0] == 1
+    assert all(after - before <= 1 for before, after in pairwise(levels))
