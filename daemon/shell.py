@@ -596,8 +596,8 @@ class Shell:
         return self._store.steps(channel, from_us, to_us, step_us)
 
     def week(self, week: Week) -> WeekLog:
-        timezone = self._site.timezone
-        return week_log(self._site, read_rows(self._store, week, timezone, self._clock.now_us()))
+        rows = read_rows(self._store, week, self._site, self._clock.now_us())
+        return week_log(self._site, rows)
 
     def health(self) -> Health:
         now_us = self._clock.now_us()

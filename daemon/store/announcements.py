@@ -41,12 +41,16 @@ def add(connection: Connection, changes: Sequence[Transition], messages: Sequenc
         connection.execute(insert(outbox), new_messages)
 
 
-def find(connection: Connection, from_us: int, to_us: int) -> Sequence[Transition]:
-    """The transitions at or after one time and before another, in order."""
+def find(
+    connection: Connection, from_us: int, to_us: int, alarms: Sequence[str] | None = None
+) -> Sequence[Transition]:
+    """The transitions at or after one time and before another, in order; all, or of some alarms."""
     at = transitions.c.at_us
     statement = (
         select(*transitions.c).where(at >= from_us, at < to_us).order_by(at, transitions.c.number)
     )
+    if alarms is not None:
+        statement = statement.where(transitions.c.alarm.in_(alarms))
     return [Transition(*row[1:]) for row in connection.execute(statement)]
 
 

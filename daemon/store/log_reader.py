@@ -60,9 +60,11 @@ class LogReader:
         with self._database.read() as connection:
             return log_rows.scores(connection, from_us, to_us)
 
-    def transitions(self, from_us: int, to_us: int) -> Sequence[Transition]:
+    def transitions(
+        self, from_us: int, to_us: int, alarms: Sequence[str] | None = None
+    ) -> Sequence[Transition]:
         with self._database.read() as connection:
-            return announcements.find(connection, from_us, to_us)
+            return announcements.find(connection, from_us, to_us, alarms)
 
     def entries(
         self, after_seq: int = 0, from_us: int | None = None, to_us: int | None = None

@@ -237,10 +237,13 @@ class Store:
 
     # --- transitions and outbox
 
-    def transitions(self, from_us: int, to_us: int) -> Sequence[Transition]:
-        """The transitions at or after one time and before another, in order."""
+    def transitions(
+        self, from_us: int, to_us: int, alarms: Sequence[str] | None = None
+    ) -> Sequence[Transition]:
+        """The transitions at or after one time and before another, in order; of all alarms, or of
+        some."""
         with self._database.read() as connection:
-            return announcements.find(connection, from_us, to_us)
+            return announcements.find(connection, from_us, to_us, alarms)
 
     def pending(self, limit: int, after_number: int = 0) -> Sequence[Waiting]:
         """The oldest messages of the outbox, at most `limit`, in order."""

@@ -43,7 +43,7 @@ def weekly(
             "with --store"
         )
     with _patience(say, f"reading {store_path}"), _rows(site, store_path) as store:
-        told = week_log(site, read_rows(store, week, site.timezone, now_us))
+        told = week_log(site, read_rows(store, week, site, now_us))
     shown = text_of(sheet(site, told))
     if options.out is None:
         return shown

@@ -66,7 +66,7 @@ class WeekMaker:
             week = week.after()
 
     def _make(self, week: Week) -> bool:
-        rows = read_rows(self._store, week, self._site.timezone, self._clock.now_us())
+        rows = read_rows(self._store, week, self._site, self._clock.now_us())
         told = week_log(self._site, rows)
         messages = []
         if not told.empty:

@@ -12,7 +12,7 @@ from daemon.clock import MINUTE_US, SECOND_US
 from daemon.journal import Drain, Undo
 from daemon.site.types import Site
 from daemon.weekly.records import AlarmWeek, DrainLine
-from daemon.weekly.rows import WeekRows
+from daemon.weekly.rows import WeekRows, due_alarm
 
 # A drain within so long of falling due is on time: nobody stands beside it. Practice, no source.
 ON_TIME_US = 30 * MINUTE_US
@@ -26,6 +26,7 @@ def drain_lines(site: Site, rows: WeekRows) -> list[DrainLine]:
     """Every drain in order of time, without those that were taken back."""
     undone = {body.entry for entry in rows.entries if isinstance(body := entry.body, Undo)}
     checks = {check.seq: check for check in rows.checks}
+    changes = due_changes(site, rows)
     found = []
     for entry in sorted(rows.entries, key=lambda each: (each.at_us, each.seq)):
         drain = entry.body
@@ -41,7 +42,7 @@ def drain_lines(site: Site, rows: WeekRows) -> list[DrainLine]:
                 outcome=drain.outcome,
                 measured_kg=0.0 if drain.outcome == "empty" else drain.volume_kg,
                 expected_kg=None if check is None else check.expected_kg,
-                late_s=_late_s(rows, drain, entry.at_us),
+                late_s=_late_s(changes[drain.trap], drain, entry.at_us),
                 by=drain.by,
                 look=drain.look,
             )
@@ -49,22 +50,31 @@ def drain_lines(site: Site, rows: WeekRows) -> list[DrainLine]:
     return found
 
 
-def _late_s(rows: WeekRows, drain: Drain, at_us: int) -> float | None:
+def _late_s(changes: Sequence[Transition], drain: Drain, at_us: int) -> float | None:
     """How long after falling due; None: on time, or it was not emptied."""
     if drain.outcome == "partly":
         return None
-    since_us = due_since_us(rows.transitions, drain.trap, at_us)
+    since_us = due_since_us(changes, at_us)
     if since_us is None or at_us - since_us <= ON_TIME_US:
         return None
     return (at_us - since_us) / SECOND_US
 
 
-def due_since_us(transitions: Sequence[Transition], trap: str, before_us: int) -> int | None:
-    """Since when a trap's drain had been due, as it was announced; None: it was not."""
+def due_changes(site: Site, rows: WeekRows) -> dict[str, list[Transition]]:
+    """By trap: how the alarm that its drain is due changed, in the week and before it."""
+    found: dict[str, list[Transition]] = {due_alarm(trap): [] for trap in site.traps}
+    for each in (*rows.due_before, *rows.transitions):
+        if each.alarm in found:
+            found[each.alarm].append(each)
+    return {trap: found[due_alarm(trap)] for trap in site.traps}
+
+
+def due_since_us(changes: Sequence[Transition], before_us: int) -> int | None:
+    """Since when a drain had been due, as it was announced; None: it was not."""
     since_us: int | None = None
-    for each in transitions:
-        if each.alarm != f"{trap}-drain-due" or each.at_us >= before_us:
-            continue
+    for each in changes:
+        if each.at_us >= before_us:
+            break
         if each.after not in _RAISED:
             since_us = None
         elif since_us is None:
@@ -86,7 +96,7 @@ def counted(site: Site, rows: WeekRows, trap: str, lines: Sequence[DrainLine]) -
         "on_time": len(whole) - len(late),
         "late": len(late),
         "longest_late_s": max(late, default=0.0),
-        "due_since_us": due_since_us(rows.transitions, trap, until_us),
+        "due_since_us": due_since_us(due_changes(site, rows)[trap], until_us),
     }
 
 
@@ -105,7 +115,7 @@ def alarm_lines(rows: WeekRows) -> Iterator[AlarmWeek]:
     found: list[_Raised] = []
     waiting: dict[str, _Raised] = {}  # by alarm: what nobody has seen yet
     for each in rows.transitions:
-        if each.id.endswith("/corrected") or each.at_us < rows.from_us:
+        if each.id.endswith("/corrected"):
             continue
         if each.after == "unacknowledged" and each.before not in _RAISED:
             waiting[each.alarm] = _Raised(each.kind, each.at_us)

@@ -11,6 +11,7 @@ from daemon.clock import DAY_US, HOUR_US
 from daemon.foresight import Score
 from daemon.hour_figures import DayMembers, DrainCheck, HourFigures
 from daemon.journal import Entry
+from daemon.site.types import Site
 from daemon.weekly.weeks import Week, first_hour_us
 
 STANDING_US = 60 * DAY_US  # how far back an alarm is looked for that stood as the week began
@@ -27,7 +28,9 @@ class LogRows(Protocol):
 
     def forecast_scores(self, from_us: int, to_us: int) -> Sequence[Score]: ...
 
-    def transitions(self, from_us: int, to_us: int) -> Sequence[Transition]: ...
+    def transitions(
+        self, from_us: int, to_us: int, alarms: Sequence[str] | None = None
+    ) -> Sequence[Transition]: ...
 
     def entries(
         self, after_seq: int = 0, from_us: int | None = None, to_us: int | None = None
@@ -49,7 +52,8 @@ class WeekRows:
     days: Sequence[DayMembers]
     checks: Sequence[DrainCheck]
     scores: Sequence[Score]
-    transitions: Sequence[Transition]  # also some from before the week
+    due_before: Sequence[Transition]  # of drains that are due, before the week
+    transitions: Sequence[Transition]
     entries: Sequence[Entry]
 
     @property
@@ -63,9 +67,14 @@ class WeekRows:
         return min(first_hour_us(self.to_us), self.now_us // HOUR_US * HOUR_US)
 
 
-def read_rows(store: LogRows, week: Week, timezone: str, now_us: int) -> WeekRows:
+def due_alarm(trap: str) -> str:
+    """The alarm that a trap's drain is due."""
+    return f"{trap}-drain-due"
+
+
+def read_rows(store: LogRows, week: Week, site: Site, now_us: int) -> WeekRows:
     """The rows of a week, as of now."""
-    from_us, to_us = week.bounds_us(timezone)
+    from_us, to_us = week.bounds_us(site.timezone)
     days = week.days()
     begun = store.get_meta("grid_us")
     return WeekRows(
@@ -78,6 +87,9 @@ def read_rows(store: LogRows, week: Week, timezone: str, now_us: int) -> WeekRow
         days=store.day_members(days[0].isoformat(), days[-1].isoformat()),
         checks=store.drain_checks(from_us, to_us),
         scores=store.forecast_scores(from_us, to_us),
-        transitions=store.transitions(from_us - STANDING_US, to_us),
+        due_before=store.transitions(
+            from_us - STANDING_US, from_us, [due_alarm(trap) for trap in site.traps]
+        ),
+        transitions=store.transitions(from_us, to_us),
         entries=store.entries(from_us=from_us, to_us=to_us),
     )

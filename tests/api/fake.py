@@ -418,7 +418,7 @@ class FakeRunning:
         ]
 
     def week(self, week: Week) -> WeekLog:
-        rows = read_rows(self.log_rows, week, self.site.timezone, self.clock.now_us())
+        rows = read_rows(self.log_rows, week, self.site, self.clock.now_us())
         return week_log(self.site, rows)
 
     def readings(self, channel: str, from_us: int, to_us: int) -> SeriesOfReadings:

@@ -28,7 +28,7 @@ AFTER_US = TO_US + 3 * HOUR_US
 
 
 def log_of(rows: HeldRows, now_us: int = AFTER_US, week: Week = WEEK) -> WeekLog:
-    return week_log(SHOP, read_rows(rows, week, SHOP.timezone, now_us))
+    return week_log(SHOP, read_rows(rows, week, SHOP, now_us))
 
 
 def at(text: str) -> int:
@@ -161,7 +161,7 @@ def test_days_follow_the_shop_s_own_clock() -> None:
     berlin = replace(SHOP, timezone="Europe/Berlin")
     week = Week(2026, 43)
     from_us, to_us = week.bounds_us("Europe/Berlin")
-    log = week_log(berlin, read_rows(rows_of(berlin, from_us, to_us), week, "Europe/Berlin", to_us))
+    log = week_log(berlin, read_rows(rows_of(berlin, from_us, to_us), week, berlin, to_us))
     assert log.watched.of_s == log.watched.watched_s == 169 * 3600.0
     assert [day.watched_s / 3600.0 for day in log.days] == [24.0] * 6 + [25.0]
     assert [day.day for day in log.days] == [str(day) for day in week.days()]

@@ -42,7 +42,7 @@ def a_log(shop: Site) -> WeekLog:
     ]
     rows.journal = [Entry(1, at_us, at_us, Drain("tank", "emptied", 0.5, "AM", "milky"))]
     rows.checks = [DrainCheck(1, at_us, "tank", 0.5, Interval(0.3, 0.4, 0.6), True)]
-    return week_log(shop, read_rows(rows, WEEK, shop.timezone, TO_US))
+    return week_log(shop, read_rows(rows, WEEK, shop, TO_US))
 
 
 def figures(shop: Site, log: WeekLog) -> dict[tuple[str, str, str], list[str]]:
@@ -91,7 +91,7 @@ def test_the_csv_of_a_shop_with_us_units_has_them() -> None:
 
 
 def test_an_empty_week_s_csv_has_no_made_up_figures() -> None:
-    log = week_log(METRIC, read_rows(HeldRows(), WEEK, "UTC", TO_US))
+    log = week_log(METRIC, read_rows(HeldRows(), WEEK, METRIC, TO_US))
     found = figures(METRIC, log)
     assert found["week", "2026-W10", "watched"] == ["", "0", "", "h"]
     assert not any(section in ("water", "compressor", "leakage") for section, _, _ in found)

@@ -49,8 +49,11 @@ class HeldRows:
     def forecast_scores(self, from_us: int, to_us: int) -> Sequence[Score]:
         return [each for each in self.scores if from_us <= each.happened_us < to_us]
 
-    def transitions(self, from_us: int, to_us: int) -> Sequence[Transition]:
-        return [each for each in self.changes if from_us <= each.at_us < to_us]
+    def transitions(
+        self, from_us: int, to_us: int, alarms: Sequence[str] | None = None
+    ) -> Sequence[Transition]:
+        found = [each for each in self.changes if from_us <= each.at_us < to_us]
+        return [each for each in found if alarms is None or each.alarm in alarms]
 
     def entries(
         self, after_seq: int = 0, from_us: int | None = None, to_us: int | None = None
