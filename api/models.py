@@ -20,6 +20,8 @@ from daemon.views import Because, ChannelHealth, Health, TrapView
 Time = Annotated[
     str, Field(json_schema_extra={"format": "date-time"}, examples=["2026-12-01T09:00:00Z"])
 ]
+# as it comes in: read, and refused in words, by `api/validation.py`
+TimeIn = Annotated[str, Field(json_schema_extra={"format": "date-time"})]
 Look = Literal["clear", "milky", "oily", "rusty"]
 _NO_CONTROLS = r"^[^\x00-\x1f\x7f-\x9f]*$"  # control characters would spoil logs and messages
 Name = Annotated[
@@ -99,7 +101,7 @@ class DrainIn(BaseModel):
     unit: VolumeUnit | None = Field(
         default=None, description="of volume; oz and gal are US fluid ounces and gallons"
     )
-    at: str | None = Field(
+    at: TimeIn | None = Field(
         default=None,
         description="when it happened, RFC 3339 with an offset; left out: now",
         examples=["2026-12-01T09:00:00Z"],
@@ -172,7 +174,7 @@ class ServiceIn(BaseModel):
     sensor: str | None = Field(
         default=None, max_length=80, description="which one, when a sensor was replaced"
     )
-    at: str | None = Field(
+    at: TimeIn | None = Field(
         default=None,
         description="when it was done, RFC 3339 with an offset; left out: now",
         examples=["2026-12-01T09:00:00Z"],

@@ -9,7 +9,7 @@ from typing import Literal
 
 from pydantic import BaseModel, ConfigDict, Field
 
-from api.models import Key, Name, Time
+from api.models import Key, Name, Time, TimeIn
 from daemon.clock import format_rfc3339
 from daemon.journal import Blotted, Blotter, Entry, Gauge
 from daemon.outlet_payloads import outlet_payload
@@ -119,7 +119,7 @@ class BlotterIn(BaseModel):
     )
 
     result: Blotted = Field(description="any stain of oil or water rejects the air")
-    at: str | None = Field(
+    at: TimeIn | None = Field(
         default=None,
         description="when it was, RFC 3339 with an offset; left out: now",
         examples=["2026-12-01T09:00:00Z"],
@@ -174,7 +174,7 @@ class GaugeIn(BaseModel):
     valid_min: float = Field(
         default=30.0, allow_inf_nan=False, description="how long it speaks for, minutes"
     )
-    at: str | None = Field(
+    at: TimeIn | None = Field(
         default=None,
         description="when it was read, RFC 3339 with an offset; left out: now",
         examples=["2026-12-01T09:00:00Z"],

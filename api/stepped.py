@@ -45,7 +45,8 @@ class SteppedOut(BaseModel):
 def step_us_of(site: Site, step_s: float) -> int:
     """A step in microseconds; Problem unless it is a whole number of sampling periods."""
     every_us = site.sample_every_us
-    step_us = round(step_s * 1e6)
+    # clipped first: beyond the largest number there is nothing to round
+    step_us = round(min(max(step_s, 0.0), 1e12) * 1e6)
     if 0 < step_us <= LONGEST_STEP_US and step_us % every_us == 0:
         return step_us
     every_s = every_us / 1e6

@@ -38,6 +38,12 @@ class PairIn(BaseModel):
     key: Annotated[str, StringConstraints(min_length=1, max_length=LONGEST_KEY)]
 
 
+class ForgetIn(BaseModel):
+    """An empty object: `{}`."""
+
+    model_config = ConfigDict(extra="forbid", json_schema_extra={"examples": [{}]})
+
+
 class AskingOut(BaseModel):
     """Who is asking, and what they may do here."""
 
@@ -98,7 +104,7 @@ async def pair(body: PairIn, request: Request, response: Response) -> AskingOut:
     summary="Let this browser forget its key",
     responses=answered_by(*_ON_PAIRING),
 )
-async def forget(request: Request) -> Response:
+async def forget(body: ForgetIn, request: Request) -> Response:
     """The key itself stays good: `dripleg key SITE revoke` ends it."""
     door: Door = request.app.state.door
     return Response(status_code=204, headers={"set-cookie": door.no_cookie})

@@ -11,10 +11,12 @@ from daemon.clock import format_rfc3339
 
 FROM = Query(
     alias="from",
+    json_schema_extra={"format": "date-time"},
     description="RFC 3339 with an offset, from this time on",
     examples=["2026-12-01T09:00:00Z"],
 )
 TO = Query(
+    json_schema_extra={"format": "date-time"},
     description="RFC 3339 with an offset, up to but not including this time; left out: now",
     examples=["2026-12-01T10:00:00Z"],
 )

@@ -242,3 +242,9 @@ def test_too_many_steps_are_refused_with_the_limit(client: Client) -> None:
 def test_long_spans_want_whole_hours(client: Client, query: str) -> None:
     problem = problem_of(client.get(PRESSURE + query), 422, "invalid-request")
     assert "ask for a multiple of 3600 from a full hour on" in problem["errors"][0]["remedy"]
+
+
+@pytest.mark.parametrize("step", ["1e308", "-1e308", "1e300", "0", "-10"])
+def test_a_step_beyond_all_reason_is_refused(client: Client, step: str) -> None:
+    response = client.get(f"/api/v1/readings?channel=tank-gauge.pressure&step={step}")
+    problem_of(response, 422, "invalid-request")
