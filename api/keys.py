@@ -15,6 +15,7 @@ import logging
 from collections import OrderedDict, deque
 from collections.abc import Awaitable, Callable
 from http.cookies import CookieError, SimpleCookie
+from ipaddress import IPv6Address
 
 from anyio import to_thread
 from fastapi import Request
@@ -66,11 +67,13 @@ class Tries:
 
 
 def _net(address: str) -> str:
-    """An IPv6 host has a whole /64 of addresses to send from."""
-    found = address_of(address)
-    if found is None or found.version == 4:
+    """An IPv6 host has a whole /64 of addresses to send from; an IPv4 one may come in its dress."""
+    found = address_of(address.partition("%")[0])
+    if not isinstance(found, IPv6Address):
         return address
-    return str(int(found) >> 64)
+    if found.ipv4_mapped is not None:
+        return str(found.ipv4_mapped)
+    return f"{int(found) >> 64:x}::/64"
 
 
 class Door:

@@ -9,6 +9,7 @@ from pathlib import Path
 from typing import cast
 from zoneinfo import ZoneInfo, ZoneInfoNotFoundError, available_timezones
 
+from daemon.addresses import is_loopback
 from daemon.site.notes import Notes, suggestion
 from daemon.site.table import Table
 from daemon.site.types import Api, Cup, Mqtt, Units
@@ -169,10 +170,16 @@ PORT = whole(1, 65535, 8080)
 def read_api(notes: Notes, raw: object) -> Api:
     """The `[api]` table."""
     table = Table(notes, "api", raw, API_KEYS)
-    return Api(
+    api = Api(
         host=table.value("host", host, "127.0.0.1", '"127.0.0.1"', "this machine only"),
         port=table.value("port", PORT, 8080, "8080", "a port for pages"),
         open_reading=table.value(
             "open_reading", flag, False, "false", "on the network, reading needs a key too"
         ),
     )
+    if api.open_reading and is_loopback(api.host):
+        notes.no_effect(
+            f'[api] open_reading = true: host = "{api.host}" is for this machine alone, which is '
+            "asked for no key anyway"
+        )
+    return api

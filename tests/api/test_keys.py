@@ -196,6 +196,8 @@ def test_another_address_need_not_wait_and_a_whole_ipv6_net_is_one() -> None:
     assert tries.wait_s("192.168.1.67") == 0.0
     assert tries.wait_s("2001:db8::ffff") == WITHIN_S
     assert tries.wait_s("2001:db8:0:1::1") == 0.0
+    assert tries.wait_s("::ffff:192.168.1.66") == WITHIN_S  # RFC 4291: the same host
+    assert tries.wait_s("::ffff:192.168.1.67") == 0.0
     clock.time_us += round(WITHIN_S * 1e6)
     assert tries.wait_s("192.168.1.66") == 0.0
 

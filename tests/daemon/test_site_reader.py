@@ -473,3 +473,10 @@ def test_what_changes_nothing_yet_is_listed() -> None:
     assert "outlet" not in words  # all its keys count
     assert found.outlets[0].line_margin_k == pytest.approx(10.0)
     assert found.outlets[0].work == "powder"
+
+
+def test_open_reading_has_no_effect_where_nobody_else_can_come() -> None:
+    near = site("[api]\nopen_reading = true\n")
+    (said,) = near.without_effect
+    assert said.startswith('[api] open_reading = true: host = "127.0.0.1" is for this machine alone')
+    assert site('[api]\nhost = "::"\nopen_reading = true\n').without_effect == ()
