@@ -22,6 +22,7 @@ from daemon.site.types import Site
 ACTIONS = ("make", "list", "revoke")
 USUAL = "read,record"
 _PIXELS = 8  # of an image file, to one square of the code
+_WHITE_ON_BLACK, _AS_BEFORE = "\033[97;40m", "\033[0m"  # ECMA-48, SGR
 _QUIET = 4  # squares of white around it, as ISO/IEC 18004 asks for
 
 
@@ -130,8 +131,8 @@ def _write(code: segno.QRCode, options: argparse.Namespace) -> None:
 
 
 def _drawn(code: segno.QRCode) -> Iterator[str]:
-    """Two rows of squares to a line of text: light ones are drawn, for a dark terminal and a light
-    one alike, since cameras read both."""
+    """Two rows of squares to a line of text, the light ones drawn: white on black, whatever the
+    terminal's own colours are, since not every camera reads a code with the two exchanged."""
     encoding = getattr(sys.stdout, "encoding", None) or "ascii"
     try:
         "\N{FULL BLOCK}\N{UPPER HALF BLOCK}\N{LOWER HALF BLOCK}".encode(encoding)
@@ -143,8 +144,10 @@ def _drawn(code: segno.QRCode) -> Iterator[str]:
     rows += [[0] * len(rows[0])] * (len(rows) % 2)
     signs = {(0, 0): "\N{FULL BLOCK}", (0, 1): "\N{UPPER HALF BLOCK}"}
     signs |= {(1, 0): "\N{LOWER HALF BLOCK}", (1, 1): " "}
+    begin, end = (_WHITE_ON_BLACK, _AS_BEFORE) if sys.stdout.isatty() else ("", "")
     for upper, lower in zip(rows[::2], rows[1::2], strict=True):
-        yield "".join(signs[bool(a), bool(b)] for a, b in zip(upper, lower, strict=True))
+        drawn = "".join(signs[bool(a), bool(b)] for a, b in zip(upper, lower, strict=True))
+        yield f"{begin}{drawn}{end}"
     yield ""
 
 

@@ -103,6 +103,21 @@ def test_a_phone_reads_the_link_from_the_image_and_from_the_terminal(
     assert svg.read_text().startswith("<?xml")
 
 
+def test_a_terminal_is_told_the_colours(
+    tmp_path: Path, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    path = site_file(tmp_path, 8080)
+    monkeypatch.setattr("sys.stdout.isatty", lambda: True)
+    assert key(path, "make", "--for", "tablet", "--host", "shop-pi") == 0
+    out = capsys.readouterr().out
+    code = [line for line in out.splitlines() if "█" in line]
+    assert all(line.startswith("\033[97;40m") and line.endswith("\033[0m") for line in code)
+    plain = re.sub(r"\033\[[\d;]*m", "", out)
+    found = LINK.search(plain)
+    assert found is not None
+    assert [each.text for each in zxingcpp.read_barcodes(drawn(plain))] == [found[1]]
+
+
 def drawn(out: str) -> Any:
     """The terminal's half blocks as a picture, light on dark, 8 dots to a square."""
     lines = [line for line in out.splitlines() if set(line) & set("█▀▄")]
