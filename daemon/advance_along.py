@@ -27,6 +27,7 @@ from daemon.moisture.drains import EMPTY_PA
 from daemon.moisture.flow import PumpWatch
 from daemon.moisture.model import Moved, State
 from daemon.moisture.outlook import SAMPLED_EVERY_US
+from daemon.moisture.plant import Plant
 from daemon.plant_along import PlantAlong
 from daemon.record_arrays import NEVER_US, Record
 from daemon.reminders import NEVER, WATCHED_US, Reminder
@@ -169,22 +170,31 @@ class _Watch:
         before_us = done.state.time_us // SAMPLED_EVERY_US
         samples = found.course.times_us[:count] // SAMPLED_EVERY_US
         self.samples = list(changes(before_us, samples))
-        self.looks = sorted(Looks(core, self.state, found, count).rows())
+        self.end = found.state(count - 1)
+        looks = Looks(core, self.state, found, count, self.end)
+        self.looks, self.margins = sorted(looks.rows()), looks.margins()
 
     def run(self) -> None:
-        """Go through the ticks in which something may happen; the last one is always looked at."""
+        """Go through the ticks in which something may happen."""
         row = 0
         while row < self.count:
             happens = self.plant.next(self.state.followed.plant, row)
-            full = min(_next(self.looks, row, self.count), happens, self._runs_out(row))
-            sample = _next(self.samples, row, self.count)
-            row = min(full, sample, self._reminds(row))
-            follows = row in (happens, sample)
+            full = min(_next(self.looks, row, self.count), self._runs_out(row))
+            sample, margins = (
+                _next(rows, row, self.count) for rows in (self.samples, self.margins)
+            )
+            row = min(full, happens, sample, margins, self._reminds(row))
+            if row == self.count:
+                break
+            full = min(full, self._happened(row)) if row in (happens, sample) else full
+            if row == margins:
+                full = min(full, self._margins(row))
             if row == full:
-                self._look(row, follows)
+                self._look(row)
             else:
-                self._glance(row, follows)
+                self._glance(row)
             row += 1
+        self.state = replace(self.state, model=self.end)
         on_s, drawn_kg, used_kg = self.found.moved(0, self.count)
         hour = self.state.hour
         hour = HourTotals(
@@ -218,24 +228,43 @@ class _Watch:
 
     # ---- what ----
 
-    def _look(self, row: int, follows: bool) -> None:
+    def _after(self, row: int) -> State:
+        return self.end if row == self.count - 1 else self.found.state(row)
+
+    def _look(self, row: int) -> None:
         """All that a tick looks at."""
-        after = self.found.state(row)
-        followed = self._followed(row, after) if follows else self.state.followed
-        state = replace(self.state, model=after, followed=followed)
+        state = replace(self.state, model=self._after(row))
         self.state, transitions, reminders = self.core.watched(state)
         self.done.transitions += transitions
         self.done.reminders += reminders
 
-    def _glance(self, row: int, follows: bool) -> None:
-        """A tick in which nothing can happen that hangs on the water, but for a reminder."""
+    def _happened(self, row: int) -> int:
+        """What is followed beside the water; this tick, if an alarm hangs on it, else the end."""
+        before, after = self.state.followed.plant, self.found.dry_state(row)
+        followed = self._followed(row, after)
+        self.state = replace(self.state, followed=followed)
+        return row if _alarming(followed.plant) != _alarming(before) else self.count
+
+    def _margins(self, row: int) -> int:
+        """Look at the margins; this tick, if they are not as they were, else the end."""
+        before = self.state.outlets
+        state = replace(self.state, model=self._after(row))
+        self.state = self.core.rules.margins.look(state)
+        same = all(
+            (each.line, each.surface) == (before[name].line, before[name].surface)
+            for name, each in self.state.outlets.items()
+        )
+        return self.count if same else row
+
+    def _glance(self, row: int) -> None:
+        """A tick in which no alarm can change: is it time for a reminder?"""
+        if self._reminds(row) != row:
+            return
         after = self.found.dry_state(row)
-        if follows:
-            self.state = replace(self.state, followed=self._followed(row, after))
         waited_for = self.state.followed.reminders.turn
         followed, reminder = self.core.following.remind(replace(self.state, model=after))
         if followed.reminders.turn is not waited_for:  # it is made, or there is nothing to do
-            after = self.found.state(row)
+            after = self._after(row)
             followed, reminder = self.core.following.remind(replace(self.state, model=after))
         self.state = replace(self.state, followed=followed)
         self.done.reminders += [reminder] if reminder is not None else []
@@ -249,6 +278,13 @@ class _Watch:
             Moved(on_s, on_s, on_s),
             self.plant.is_open[row],
         )
+
+
+def _alarming(plant: Plant) -> tuple[object, ...]:
+    """What the plant's alarms look at."""
+    turns = None if plant.delivered_kg_per_s is None else plant.delivered_kg_per_s.count
+    leaks = plant.leak_kg_per_s is None
+    return leaks, plant.leak_high, plant.weak, plant.busy, plant.busy_h, turns
 
 
 def _next(rows: list[int], row: int, end: int) -> int:

@@ -123,6 +123,8 @@ def _watch_open(
     wanted = "not so" if record.raised else "so"
     if condition != wanted:
         keeps = text if record.raised and condition == "so" else record.text
+        if record.holding_since_us == -1 and keeps == record.text:
+            return record, None  # nearly always, and quicker than a copy
         return replace(record, holding_since_us=-1, text=keeps), None
     since_us = record.holding_since_us if record.holding_since_us >= 0 else now_us
     delay_us = definition.off_delay_us if record.raised else definition.on_delay_us

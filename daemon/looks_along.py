@@ -16,6 +16,7 @@ from daemon.due import NO_DATE, RAISED_AT, RETURNS_BELOW
 from daemon.fitting_alarms import FREEZES_KG, FREEZES_ON_ITS_WAY_KG, FREEZING_K
 from daemon.moisture.along import Stretch
 from daemon.moisture.ensemble import Array
+from daemon.moisture.model import State
 from daemon.outlet_alarms import LOOK_EVERY_US
 from daemon.state import CoreState
 
@@ -46,48 +47,60 @@ def _share(of_members: npt.NDArray[np.bool_]) -> Array:
 class Looks:
     """When the alarms of one site have to be looked at."""
 
-    def __init__(self, core: Core, before: CoreState, found: Stretch, ticks: int) -> None:
+    def __init__(
+        self, core: Core, before: CoreState, found: Stretch, ticks: int, end: State
+    ) -> None:
+        """`end` is the model's state after the last of the ticks."""
         self.core, self.before, self.found, self.ticks = core, before, found, ticks
+        self.end = end
 
     def rows(self) -> set[int]:
         """The ticks in which a condition may change, as far as the stretch tells."""
-        rows = {self.ticks - 1}
-        for number, name in enumerate(self.core.trap_names):
-            rows.update(self._trap(number, name))
-        rows.update(self._frost())
-        if self.core.rules.margins.watches:
-            window = self.found.course.times_us[: self.ticks] // LOOK_EVERY_US
-            rows.update(changes(self.before.time_us // LOOK_EVERY_US, window))
+        rows = {*self._traps(), *self._frost()}
         return {row for row in rows if row < self.ticks}
+
+    def margins(self) -> list[int]:
+        """The ticks in which the margins are looked at."""
+        window = self.found.course.times_us[: self.ticks] // LOOK_EVERY_US
+        return list(changes(self.before.time_us // LOOK_EVERY_US, window))
 
     # ---- traps ----
 
-    def _trap(self, number: int, name: str) -> Iterator[int]:
+    def _traps(self) -> Iterator[int]:
         """Due by the calendar or by volume, or full."""
-        times_us, due_us = self.found.course.times_us, self.before.traps[name].calendar_due_us
-        if due_us != NO_DATE and self.before.time_us < due_us <= times_us[self.ticks - 1]:
-            yield int(np.searchsorted(times_us, due_us))
-        i = self.core.rules.trap_rows[number]
-        start = self._levels(i, number, self.found.water.state.trap[i])
-        if not self.found.water.only_fills(i):
-            rows = self._levels(i, number, self.found.water.trap_rows(i)[: self.ticks])
-        else:
-            end = self._levels(i, number, self.found.water.trap_at(i, self.ticks - 1))
-            if all(a == b for a, b in zip(start, end, strict=True)):
-                return  # it only fills: what is the same at both ends is so between
-            rows = self._levels(i, number, self.found.water.trap_rows(i)[: self.ticks])
-        for before, after in zip(start, rows, strict=True):
-            yield from changes(int(before), after)
+        times_us, rows = self.found.course.times_us, self.core.rules.trap_rows
+        if not rows:
+            return
+        start = self._levels(rows, self.found.before.water.trap[rows])
+        end = self._levels(rows, self.end.water.trap[rows])
+        for number, (i, name) in enumerate(zip(rows, self.core.trap_names, strict=True)):
+            due_us = self.before.traps[name].calendar_due_us
+            if due_us != NO_DATE and self.before.time_us < due_us <= times_us[self.ticks - 1]:
+                yield int(np.searchsorted(times_us, due_us))
+            # what is the same at both ends of a trap that only fills is so between
+            if self.found.water.only_fills(i) and (start[:, number] == end[:, number]).all():
+                continue
+            between = self._levels([i], self.found.water.trap_rows(i)[None, : self.ticks])
+            for before, after in zip(start[:, number], between[:, 0], strict=True):
+                yield from changes(int(before), after)
 
-    def _levels(self, i: int, number: int, trap: Array) -> tuple[Levels, Levels]:
-        """How a trap stands to its drain-at level and to its capacity; trap is (..., members)."""
-        state = self.found.before
-        capacity = state.parameters.water.capacity_kg[i]
-        started = state.round_start[i]
-        held = started + (trap - started) * state.parameters.round_factor[i]
+    def _levels(self, rows: list[int], trap: Array) -> Levels:
+        """How traps stand to their drain-at levels and to their capacities, (2, traps, ...);
+        `trap` is (traps, ..., members)."""
+        state, numbers = self.found.before, [self.core.rules.trap_rows.index(i) for i in rows]
+        several = (len(rows), *(1,) * (trap.ndim - 2), -1)
+        capacity, started, factor = (
+            each[rows].reshape(several)
+            for each in (
+                state.parameters.water.capacity_kg,
+                state.round_start,
+                state.parameters.round_factor,
+            )
+        )
+        held = started + (trap - started) * factor
         contents = np.minimum(np.maximum(held, 0.0), capacity)
-        due = _share(contents >= self.core.rules.drain_at_kg[number])
-        return level(due), level(_share(trap >= capacity))
+        limits = self.core.rules.drain_at_kg[numbers].reshape(several)
+        return np.array([level(_share(contents >= limits)), level(_share(trap >= capacity))])
 
     # ---- frost ----
 

@@ -12,7 +12,7 @@ from daemon.judged_along import JudgedAlong, Readings, first, judge_along
 from daemon.moisture.along_air import Bools, Course, Ints
 from daemon.moisture.contact import STALE_AFTER_PERIODS, ContactState, integrate
 from daemon.moisture.ensemble import Array
-from daemon.moisture.flow import PumpWatch
+from daemon.moisture.flow import PumpWatch, told_all
 from daemon.moisture.model import State
 from daemon.record_arrays import Record
 from daemon.site import hours as opening
@@ -156,6 +156,10 @@ def _contact(
     if name is None:
         return [], np.zeros(ticks, np.int64), np.full(ticks, period_us)
     contact, states = model.contact, []
+    if said[name].regular and contact.known_until(
+        model.time_us, int(times_us[0]), period_us
+    ) == int(times_us[0]):
+        return _sampled(contact, said[name], period_us)
     on_us, unknown_us = np.zeros(ticks, np.int64), np.zeros(ticks, np.int64)
     told = _by_tick(said[name], ticks)
     from_us = model.time_us
@@ -165,6 +169,21 @@ def _contact(
         on_us[row], unknown_us[row] = times.on_us, times.unknown_us
         from_us = to_us
     return states, on_us, unknown_us
+
+
+def _sampled(
+    contact: ContactState, said: Readings, period_us: int
+) -> tuple[list[ContactState], Ints, Ints]:
+    """The same where the contact is known, and tells its level at every tick."""
+    closed = said.values > 0.5
+    was = np.concatenate(([bool(contact.closed)], closed[:-1]))
+    repeats = closed == was
+    gap_us = int(said.times_us[0]) - contact.last_us
+    repeats[0] &= contact.closed is not None and 0 < gap_us <= STALE_AFTER_PERIODS * period_us
+    sampled = np.logical_or.accumulate(repeats) | contact.sampled
+    rows = zip(closed.tolist(), said.times_us.tolist(), sampled.tolist(), strict=True)
+    states = [ContactState(*row) for row in rows]
+    return states, np.where(was, period_us, 0), np.zeros(len(was), np.int64)
 
 
 def _by_tick(said: Readings, ticks: int) -> list[list[tuple[int, float, bool]]]:
@@ -198,6 +217,13 @@ def _pump(
     if core.model.gauge is None:
         return [], booked_us
     name, span_pa = core.model.gauge
+    if said[name].regular:
+        pumps, runs_since_us = told_all(
+            model.pump, said[name].values.tolist(), said[name].times_us.tolist(), span_pa
+        )
+        since_us = np.array(unknown_since_us[:-1])
+        booked_us = np.maximum(said[name].times_us - np.maximum(runs_since_us, since_us), 0)
+        return pumps, np.where(since_us >= 0, booked_us, 0)
     pump, pumps = model.pump, []
     for row, told in enumerate(_by_tick(said[name], ticks)):
         for time_us, value, _ in told:

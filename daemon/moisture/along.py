@@ -81,7 +81,7 @@ class Stretch:
                 stored=air.stored[:, row].copy(),
                 drawn=air.drawn[row].copy(),
                 used=air.used[row].copy(),
-                entered=air.entered[:, row].copy(),
+                entered=self._entered(row),
                 seen=before.air.seen,
                 purged=before.air.purged,
                 ratio=before.air.ratio,
@@ -94,6 +94,14 @@ class Stretch:
             ),
             saturated=self.saturated[:, row].copy(),
         )
+
+    def _entered(self, row: int) -> Array:
+        before, drawn = self.before.air, self.air.drawn[row]
+        entered = np.empty_like(before.entered)
+        for number, rows in enumerate(self.air.entered):
+            so_far = before.entered[number] + (drawn - before.drawn) if rows is None else rows[row]
+            entered[number] = so_far
+        return entered
 
     def _held(self, row: int) -> dict[str, Held]:
         held = dict(self.before.held)

@@ -115,6 +115,14 @@ def duties(model: Model, state: State, on_s: Array, dt_s: float) -> dict[int, Ar
     found = {}
     for i, constant_s in model.lagging:
         weight = -math.expm1(-dt_s / constant_s)
+        if now.shape[1] == 1:  # every member goes the same way from where it is
+            filtered, way = 0.0, np.empty(len(now))
+            for n, share in enumerate(now[:, 0].tolist()):
+                filtered += (share - filtered) * weight
+                way[n] = filtered
+            keeps = (1.0 - weight) ** np.arange(1, len(now) + 1)
+            found[i] = way[:, None] + keeps[:, None] * state.duty[i]
+            continue
         rows = np.empty((len(now), state.duty.shape[1]))
         before = state.duty[i]
         for after, share in zip(rows, now, strict=True):
@@ -176,7 +184,7 @@ class AirAlong:
     drawn: Array  # cumulative
     used: Array  # cumulative
     used_before: Array  # the same before the first tick, (members,)
-    entered: Array  # (receivers, ...), cumulative
+    entered: list[Array | None]  # by receiver, cumulative; None: what was drawn
     measured: Array  # (receivers, ...)
     stored: Array  # (receivers, ...), after each tick
     before: Array  # (receivers, ...), before each tick
@@ -193,15 +201,16 @@ def moved_along(plan: Plan, state: flow.AirState, drawn: Array, measured: Array)
     shares = [outlet.share for outlet in plan.line.outlets] if several else []
     used, used_total = _new_maxima(state.used, cumulative, shares)
     entered = np.empty_like(measured)
-    entered_total = np.empty_like(measured)
+    entered_total: list[Array | None] = []
     for row, receiver in enumerate(plan.receivers):
         if receiver in plan.trunk:
             entered[row] = drawn
-            entered_total[row] = running_sum(state.entered[row], drawn)
+            entered_total.append(None)
             continue
         below = [plan.receivers.index(other) for other in plan.receivers_below[receiver]]
         wanted = plan.share[receiver] * cumulative + change[below].sum(axis=0)
-        entered[row], entered_total[row] = _new_maxima(state.entered[row], wanted, [])
+        entered[row], so_far = _new_maxima(state.entered[row], wanted, [])
+        entered_total.append(so_far)
     moved = flow.route(plan, drawn, used, entered, None)
     stored, before = np.empty_like(measured), np.empty_like(measured)
     good = len(drawn)

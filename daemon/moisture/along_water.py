@@ -49,6 +49,7 @@ class _Place:
 
     vapor_out: Array
     caught: Array | None = None  # what its trap was given
+    caught_sum: Array | None = None  # (members,): the same in all
     back: Array | None = None  # what its pool gave back to the air
     trap: Array | None = None  # what it held after each tick; None: the sum of the above
     over: Array | None = None  # what ran over, of a receiver taken tick by tick
@@ -78,11 +79,14 @@ class WaterAlong:
     _vapor_in: list[Array | None] = field(init=False)
     _liquid_in: list[Array | None] = field(init=False)
     _spill_in: list[Array | None] = field(init=False)
+    _waits: tuple[bool, bool] = field(init=False)  # whether liquid does, or what ran over
+    _known: dict[int, Bools | None] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         count = len(self.plan.stations)
         self._vapor_in, self._liquid_in = [None] * count, [None] * count
         self._spill_in = [None] * count
+        self._waits = bool(self.state.waiting.any()), bool(self.state.spilled.any())
         self.water_in = self.air.moved.through[0] * self.intake_ratio
         self._vapor_in[0] = self.water_in
         for i in range(len(self.plan.stations)):
@@ -141,7 +145,10 @@ class WaterAlong:
         start, capacity = self.state.trap[i], self.parameters.capacity_kg[i]
         if place.trap is not None:  # a receiver that was worked out tick by tick
             return place.over
-        given = start if place.caught is None else start + place.caught.sum(axis=0)
+        given = start
+        if place.caught is not None:
+            place.caught_sum = place.caught.sum(axis=0)
+            given = start + place.caught_sum
         if not (given > capacity).any():
             return None
         caught = np.zeros_like(self.water_in) if place.caught is None else place.caught
@@ -153,11 +160,11 @@ class WaterAlong:
     # ---- onwards ----
 
     def _hand_on(self, i: int, liquid: Array | None, spill: Array | None, place: _Place) -> None:
-        through = self.air.moved.through[i]
-        moving = None if through.min() > 0.0 else through > 0.0
+        through, moving = self.air.moved.through[i], self._moving(i)
         shape, state = through.shape, self.state
-        liquid, place.waiting = _released(state.waiting[i], liquid, moving, shape)
-        spill, place.spilled = _released(state.spilled[i], spill, moving, shape)
+        waits, spilt = self._waits
+        liquid, place.waiting = _released(state.waiting[i], liquid, moving, shape, waits)
+        spill, place.spilled = _released(state.spilled[i], spill, moving, shape, spilt)
         safe = through if moving is None else np.where(moving, through, 1.0)
         parts = parts_of(self.plan, self.air.moved, i, safe)
         for flow, part in zip(self.plan.outflows[i], parts, strict=True):
@@ -172,6 +179,16 @@ class WaterAlong:
             if gone is not None:
                 self.liquid_out = _plus(self.liquid_out, gone)
                 self.liquid_at[flow.outlet] = gone
+
+    def _moving(self, i: int) -> Bools | None:
+        """Whether air leaves a station; None: it does at every tick."""
+        plan, alike = self.plan, i  # air that leaves stations alike leaves all of them or none
+        if len(plan.receivers) == 1 and plan.share[i] > 0.0:
+            alike = -1 if i in plan.trunk and i not in plan.receivers else -2
+        if alike not in self._known:
+            through = self.air.moved.through[i]
+            self._known[alike] = None if through.min() > 0.0 else through > 0.0
+        return self._known[alike]
 
     # ---- a receiver ----
 
@@ -226,60 +243,73 @@ class WaterAlong:
         self, i: int, course: _Receiver, wetted: Array | None, place: _Place
     ) -> Array:
         """The same where the pool runs empty or the trap runs over, in order."""
-        row = self.plan.receivers.index(i)
         liquid_in, spill_in = self._liquid_in[i], self._spill_in[i]
         kept, capacity = self.parameters.separation[i], self.parameters.capacity_kg[i]
-        comes, possible, goes, pool = course.comes, course.possible, course.goes, course.pool
-        asked_share = pool / possible
-        stays = 1.0 - goes
-        shape = comes.shape
-        liquid, back, trap, over = (np.empty(shape) for _ in range(4))
-        vapor, vapor_out = np.empty(shape), np.empty(shape)
-        came, held = np.empty(shape[1]), np.empty(shape[1])
-        before, in_trap = course.start, self.state.trap[i]
-        for n in range(shape[0]):
-            np.add(before, comes[n], out=came)
-            np.minimum(came, possible[n], out=held)
-            np.subtract(came, held, out=liquid[n])
-            if wetted is not None and liquid_in is not None:
-                liquid[n] -= wetted[n]
-                liquid[n] += liquid_in[n]
-            np.multiply(held, asked_share[n], out=back[n])
-            np.subtract(pool, back[n], out=back[n])
-            np.minimum(back[n], in_trap, out=back[n])
-            np.minimum(back[n], possible[n] - held, out=back[n])
-            np.maximum(back[n], 0.0, out=back[n])
-            held += back[n]
-            np.multiply(held, goes[n], out=vapor_out[n])
-            np.multiply(held, stays[n], out=vapor[n])
-            before = vapor[n]
-            np.subtract(in_trap, back[n], out=trap[n])
-            trap[n] += kept * liquid[n]
-            if spill_in is not None:
-                trap[n] += kept * spill_in[n]
-            np.subtract(trap[n], capacity, out=over[n])
-            np.maximum(over[n], 0.0, out=over[n])
-            trap[n] -= over[n]
-            in_trap = trap[n]
-        place.back, place.trap, place.vapor_out = back, trap, vapor_out
-        self.vapor[row] = vapor
+        comes, possible, pool = course.comes, course.possible, course.pool
+        besides = np.zeros_like(comes)  # liquid that did not evaporate
+        if wetted is not None and liquid_in is not None:
+            besides = liquid_in - wetted
+        spilt = None if spill_in is None else kept * spill_in
+        stays = 1.0 - course.goes
+        small = bool((pool > possible).any())
+        liquid, back, held, trap, over = (np.empty_like(comes) for _ in range(5))
+        vapor, in_trap = course.start, self.state.trap[i]
+        came, in_trap_now = np.empty_like(vapor), np.empty_like(vapor)
+        given = zip(comes, besides, possible, pool / possible, stays, strict=True)
+        made = zip(liquid, back, held, trap, over, strict=True)
+        for n, (now, made_now) in enumerate(zip(given, made, strict=True)):
+            comes_now, besides_now, possible_now, share, stays_now = now
+            liquid_now, back_now, held_now, trap_now, over_now = made_now
+            np.add(vapor, comes_now, out=came)
+            np.minimum(came, possible_now, out=held_now)
+            np.subtract(came, held_now, out=liquid_now)
+            np.add(liquid_now, besides_now, out=liquid_now)
+            np.multiply(held_now, share, out=back_now)
+            np.subtract(pool, back_now, out=back_now)
+            np.minimum(back_now, in_trap, out=back_now)
+            if small:
+                np.minimum(back_now, possible_now - held_now, out=back_now)
+                np.maximum(back_now, 0.0, out=back_now)
+            np.add(held_now, back_now, out=held_now)
+            vapor = held_now * stays_now
+            np.multiply(kept, liquid_now, out=trap_now)
+            if spilt is not None:
+                np.add(trap_now, spilt[n], out=trap_now)
+            np.subtract(in_trap, back_now, out=in_trap_now)
+            np.add(trap_now, in_trap_now, out=trap_now)
+            np.subtract(trap_now, capacity, out=over_now)
+            np.maximum(over_now, 0.0, out=over_now)
+            np.subtract(trap_now, over_now, out=trap_now)
+            in_trap = trap_now
+        place.back, place.trap = back, trap
+        place.vapor_out = held * course.goes
+        self.vapor[self.plan.receivers.index(i)] = held * stays
         place.over = over if over.any() else None
         return liquid
 
     # ---- what is where, after one tick ----
 
-    def trap_at(self, i: int, row: int) -> Array:
-        """What a trap holds, kg, (members,)."""
-        place, start = self.places[i], self.state.trap[i]
+    def _caught(self, place: _Place, until: int) -> Array | None:
+        """What a trap was given in the first ticks, (members,)."""
+        if place.caught is None:
+            return None
+        if until == len(place.caught) and place.caught_sum is not None:
+            return place.caught_sum
+        caught: Array = place.caught[:until].sum(axis=0)
+        return caught
+
+    def _trap_at(self, i: int, row: int, caught: Array | None) -> Array:
+        """What a trap holds after one tick, kg, (members,)."""
+        place, held = self.places[i], self.state.trap[i]
         if place.trap is not None:
-            found: Array = place.trap[row]
-            return found
-        held: Array = start
-        if place.caught is not None:
-            held = held + place.caught[: row + 1].sum(axis=0)
+            there: Array = place.trap[row]
+            return there
+        if caught is not None:
+            held = held + caught
         if place.back is not None:
             held = held - place.back[: row + 1].sum(axis=0)
-        return held
+        kept: Array = held
+        return kept
 
     def only_fills(self, i: int) -> bool:
         """Whether nothing left a trap in these ticks."""
@@ -308,9 +338,10 @@ class WaterAlong:
         ratio, shed = state.leaving_ratio.copy(), ledger.shed.copy()
         for i, place in enumerate(self.places):
             if plan.stations[i].trap is not None:
-                trap[i] = self.trap_at(i, row)
-                if place.caught is not None:
-                    shed[i] += place.caught[:until].sum(axis=0)
+                caught = self._caught(place, until)
+                trap[i] = self._trap_at(i, row, caught)
+                if caught is not None:
+                    shed[i] += caught
             waiting[i], spilled[i] = place.waiting.at(row), place.spilled.at(row)
             self._leaving(i, row, ratio[i])
         vapor = np.array([self.vapor[n][row] for n in range(len(plan.receivers))])
@@ -391,10 +422,10 @@ class _Receiver:
 
 
 def _released(
-    start: Array, new: Array | None, moving: Bools | None, shape: tuple[int, ...]
+    start: Array, new: Array | None, moving: Bools | None, shape: tuple[int, ...], waits: bool
 ) -> tuple[Array | None, _Waiting]:
     """Liquid that air takes along, of what waits and of what is new; and what then waits."""
-    waits = bool(start.any())
+    waits = waits and bool(start.any())
     if moving is None or new is None or not (new * ~moving).any():
         if not waits:
             return new, _Waiting(start)

@@ -10,6 +10,7 @@ air, and so into water, that never was.
 from __future__ import annotations
 
 import math
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -40,43 +41,47 @@ class PumpWatch:
     noise_pa2: float = 0.0  # variance of one reading, from second differences
     readings: int = 0
 
-    def _heard(self, pressure_pa: float) -> PumpWatch:
-        bend = pressure_pa - 2.0 * self.before_pa[1] + self.before_pa[0]
-        if not math.isfinite(bend):
-            return replace(self, before_pa=(self.before_pa[1], pressure_pa))
-        readings = self.readings + 1
-        weight = 1.0 / min(readings, NOISE_READINGS)
-        noise = self.noise_pa2 + weight * (bend * bend / 6.0 - self.noise_pa2)
-        return replace(
-            self,
-            before_pa=(self.before_pa[1], pressure_pa),
-            noise_pa2=noise,
-            readings=readings,
-        )
-
-    def _swing(self, span_pa: float) -> float:
-        if self.readings < NOISE_READINGS:
-            return math.inf
-        return max(SWING_OF_SPAN * span_pa, SWING_OF_NOISE * math.sqrt(self.noise_pa2))
-
     def told(self, pressure_pa: float, time_us: int, span_pa: float) -> tuple[PumpWatch, int, int]:
         """After a reading: the watch, and the span (from_us, to_us] in which it now knows that
         the compressor ran; empty when both are equal."""
-        watch = self._heard(pressure_pa)
-        if watch.extreme_us < 0:
-            return replace(watch, extreme_pa=pressure_pa, extreme_us=time_us), time_us, time_us
-        swing = watch._swing(span_pa)
-        at = replace(watch, extreme_pa=pressure_pa, extreme_us=time_us)
-        if watch.pumping:
-            if pressure_pa > watch.extreme_pa:
-                return at, watch.extreme_us, time_us
-            if pressure_pa < watch.extreme_pa - swing:
-                return replace(at, pumping=False), time_us, time_us
-        elif pressure_pa <= watch.extreme_pa:
-            return at, time_us, time_us
-        elif pressure_pa > watch.extreme_pa + swing:
-            return replace(at, pumping=True), watch.extreme_us, time_us
-        return watch, time_us, time_us
+        (watch,), from_us = told_all(self, [pressure_pa], [time_us], span_pa)
+        return watch, from_us[0], time_us
+
+
+def told_all(
+    watch: PumpWatch, pressures_pa: Sequence[float], times_us: Sequence[int], span_pa: float
+) -> tuple[list[PumpWatch], list[int]]:
+    """After each of several readings: the watch, and since when it then knows that the compressor
+    ran; the reading's own time where it does not."""
+    pumping, extreme_pa, extreme_us = watch.pumping, watch.extreme_pa, watch.extreme_us
+    (older_pa, last_pa), noise_pa2, readings = watch.before_pa, watch.noise_pa2, watch.readings
+    found: list[PumpWatch] = []
+    since_us: list[int] = []
+    for now_pa, now_us in zip(pressures_pa, times_us, strict=True):
+        bend = now_pa - 2.0 * last_pa + older_pa
+        older_pa, last_pa = last_pa, now_pa
+        if math.isfinite(bend):
+            readings += 1
+            noise_pa2 += 1.0 / min(readings, NOISE_READINGS) * (bend * bend / 6.0 - noise_pa2)
+        swing_pa = math.inf
+        if readings >= NOISE_READINGS:
+            swing_pa = max(SWING_OF_SPAN * span_pa, SWING_OF_NOISE * math.sqrt(noise_pa2))
+        runs_since_us = now_us
+        if extreme_us < 0:
+            extreme_pa, extreme_us = now_pa, now_us
+        elif pumping:
+            if now_pa > extreme_pa:
+                runs_since_us, extreme_pa, extreme_us = extreme_us, now_pa, now_us
+            elif now_pa < extreme_pa - swing_pa:
+                pumping, extreme_pa, extreme_us = False, now_pa, now_us
+        elif now_pa <= extreme_pa:
+            extreme_pa, extreme_us = now_pa, now_us
+        elif now_pa > extreme_pa + swing_pa:
+            runs_since_us, pumping, extreme_pa, extreme_us = extreme_us, True, now_pa, now_us
+        before_pa = (older_pa, last_pa)
+        found.append(PumpWatch(pumping, extreme_pa, extreme_us, before_pa, noise_pa2, readings))
+        since_us.append(runs_since_us)
+    return found, since_us
 
 
 @dataclass(frozen=True, slots=True)
