@@ -42,12 +42,12 @@ def weekly(
             f"there is no database at {store_path}: start the daemon first, or name its database "
             "with --store"
         )
-    with _patience(say, f"reading {store_path}"), _rows(site, store_path) as store:
+    with patience(say, f"reading {store_path}"), _rows(site, store_path) as store:
         told = week_log(site, read_rows(store, week, site, now_us))
     shown = text_of(sheet(site, told))
     if options.out is None:
         return shown
-    with _patience(say, f"writing to {options.out}"):
+    with patience(say, f"writing to {options.out}"):
         pdf, table = files.write(site, told, options.out)
     return f"{shown}\nWritten: {pdf} and {table}"
 
@@ -65,7 +65,7 @@ def _rows(site: Site, path: Path) -> Iterator[LogRows]:
 
 
 @contextmanager
-def _patience(say: Callable[[str], None], doing: str) -> Iterator[None]:
+def patience(say: Callable[[str], None], doing: str) -> Iterator[None]:
     """Say what is being done, if it takes long."""
     timer = threading.Timer(PATIENCE_S, say, [f"dripleg: {doing} ..."])
     timer.daemon = True

@@ -5,6 +5,7 @@ from __future__ import annotations
 import csv
 import io
 import json
+import threading
 from collections.abc import Iterator
 from dataclasses import replace
 from pathlib import Path
@@ -20,6 +21,7 @@ from daemon.outbox import Topics
 from daemon.shell import GRID_KEY
 from daemon.site.types import Site
 from daemon.store.store import Store
+from daemon.weekly import command
 from daemon.weekly.making import MADE_KEY, WeekMaker
 from daemon.weekly.weeks import Week
 from tests.daemon.shops import SITE, site
@@ -262,3 +264,21 @@ def test_a_shop_far_east_gets_its_week_by_its_own_clock(tmp_path: Path) -> None:
     (told,) = made.told()
     assert told["watched_h"] == 168.0
     made.store.close()
+
+
+def test_what_takes_long_is_said(monkeypatch: pytest.MonkeyPatch) -> None:
+    said: list[str] = []
+    heard = threading.Event()
+
+    def say(text: str) -> None:
+        said.append(text)
+        heard.set()
+
+    monkeypatch.setattr(command, "PATIENCE_S", 0.0)
+    with command.patience(say, "reading birch-works.db"):
+        assert heard.wait(10.0)
+    assert said == ["dripleg: reading birch-works.db ..."]
+    monkeypatch.setattr(command, "PATIENCE_S", 60.0)
+    with command.patience(say, "reading it again"):
+        pass
+    assert len(said) == 1
