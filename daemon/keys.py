@@ -10,6 +10,7 @@ from __future__ import annotations
 
 import hashlib
 import hmac
+import logging
 import secrets
 import threading
 from collections.abc import Iterable
@@ -17,7 +18,9 @@ from dataclasses import dataclass, replace
 from typing import Literal, Protocol, get_args
 
 from daemon.clock import HOUR_US, Clock
-from daemon.errors import DriplegError
+from daemon.errors import DriplegError, StoreError
+
+log = logging.getLogger("dripleg")
 
 Scope = Literal["read", "record", "service"]
 SCOPES: tuple[Scope, ...] = get_args(Scope)
@@ -132,5 +135,9 @@ class KeyRing:
         with self._lock:
             if key.used_us is not None and key.used_us >= hour_us:
                 return key
-            self._rows.key_used(key.id, hour_us)
+            try:
+                self._rows.key_used(key.id, hour_us)
+            except StoreError as error:  # a full disk must not keep people from reading
+                log.warning("the use of key %s could not be noted: %s", key.id, error)
+                return key
         return replace(key, used_us=hour_us)

@@ -126,6 +126,18 @@ def test_a_key_of_this_process_is_nowhere_in_the_database() -> None:
     assert KeyRing(rows, StillClock()).find(text) is None
 
 
+def test_a_disk_that_is_full_keeps_nobody_out(caplog: pytest.LogCaptureFixture) -> None:
+    class Full(MemoryKeys):
+        def key_used(self, key_id: str, at_us: int) -> None:
+            raise StoreError("no space left for the database")
+
+    rows = Full()
+    key, digest, text = make("tablet", ["read"], NOW_US)
+    rows.keys[key.id] = (key, digest)
+    assert KeyRing(rows, StillClock()).find(text) == key
+    assert "could not be noted: no space left" in caplog.text
+
+
 # ---- the machine's own ----
 
 
