@@ -138,3 +138,17 @@ def test_an_urgent_alarm_is_never_put_off_for_longer_than_an_hour() -> None:
 def test_a_time_that_cannot_be_is_not_taken(rig: Rig, seconds: float) -> None:
     with pytest.raises(JournalError, match="from 1 min to 1 day"):
         rig.shell.record(Shelve(DUE, seconds))
+
+
+def test_a_late_entry_leaves_it_put_off_for_the_same_time(rig: Rig) -> None:
+    """The model goes back before the shelving, and takes it in once more."""
+    run(rig, 3)
+    rig.shell.record(Shelve("riser-drain-due", 1200.0, "AM"))
+    run(rig, 2)
+    before = rig.state.alarms["riser-drain-due"]
+    rig.shell.record(Drain("tank", volume_kg=0.1, by="AM"), BEGUN_US + MINUTE_US)
+    run(rig, 1)
+    after = rig.state.alarms["riser-drain-due"]
+    assert rig.state.traps["tank"].last_drain_us == BEGUN_US + MINUTE_US
+    assert (after.state, after.until_us) == ("shelved", before.until_us)
+    assert told(rig, "riser-drain-due") == [("normal", "shelved")]
