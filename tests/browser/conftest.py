@@ -52,6 +52,22 @@ def us_shop(tmp_path: Path) -> Iterator[Shop]:
     made.close()
 
 
+@pytest.fixture(scope="session")
+def lasting_shop(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Shop]:
+    """For those who only look."""
+    made = Shop(tmp_path_factory.mktemp("lasting"))
+    yield made
+    made.close()
+
+
+@pytest.fixture
+def visitor(browser: webdriver.Chrome, lasting_shop: Shop) -> Iterator[Person]:
+    made = Person(browser, lasting_shop)
+    made.hold(PHONE)
+    yield made
+    made.leave()
+
+
 @pytest.fixture(params=WIDTHS)
 def width(request: pytest.FixtureRequest) -> int:
     return int(request.param)

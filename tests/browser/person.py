@@ -103,6 +103,10 @@ class Person:
         element.click()
         return True
 
+    def is_back_online(self) -> None:
+        """What a browser tells a page when the network is there again."""
+        self.browser.execute_script("dispatchEvent(new Event('online'))")
+
     def taps_plainly(self, selector: str) -> None:
         """Without script there is no scrolling for it but the browser's own."""
         was = self.find("html")

@@ -17,24 +17,24 @@ LARGEST = 60_000  # bytes of a page's HTML, style and script together
 
 @pytest.mark.parametrize("path", PAGES)
 @pytest.mark.parametrize(("width", "scheme"), [(PHONE, "light"), (DESK, "dark")])
-def test_axe_finds_no_serious_fault(person: Person, path: str, width: int, scheme: str) -> None:
-    person.hold(width, scheme)
-    person.open(path)
-    assert person.serious_faults() == []
+def test_axe_finds_no_serious_fault(visitor: Person, path: str, width: int, scheme: str) -> None:
+    visitor.hold(width, scheme)
+    visitor.open(path)
+    assert visitor.serious_faults() == []
 
 
 @pytest.mark.parametrize("path", PAGES)
-def test_a_page_fits_a_phone_and_asks_nobody_else(person: Person, shop: Shop, path: str) -> None:
-    person.open(path)
-    assert not person.is_wider_than_the_screen()
-    loaded = person.browser.execute_script(
+def test_a_page_fits_a_phone_and_asks_nobody_else(visitor: Person, path: str) -> None:
+    visitor.open(path)
+    assert not visitor.is_wider_than_the_screen()
+    loaded = visitor.browser.execute_script(
         "return performance.getEntriesByType('resource').map(e => [e.name, e.decodedBodySize])"
         ".concat(performance.getEntriesByType('navigation').map(e => [e.name, e.decodedBodySize]))"
     )
-    assert {urlsplit(name).netloc for name, _ in loaded} == {f"127.0.0.1:{shop.wire.port}"}
+    assert {urlsplit(name).netloc for name, _ in loaded} == {f"127.0.0.1:{visitor.shop.wire.port}"}
     assert len(loaded) >= 4
     assert sum(size for _, size in loaded) < LARGEST
-    assert person.complaints() == []
+    assert visitor.complaints() == []
 
 
 def test_the_keyboard_alone_drains_a_trap(person: Person, shop: Shop) -> None:
@@ -60,9 +60,9 @@ def test_the_keyboard_alone_drains_a_trap(person: Person, shop: Shop) -> None:
 
 
 @pytest.mark.parametrize("path", PAGES)
-def test_a_screen_reader_finds_its_way(person: Person, path: str) -> None:
-    person.open(path)
-    found = person.browser.execute_script(
+def test_a_screen_reader_finds_its_way(visitor: Person, path: str) -> None:
+    visitor.open(path)
+    found = visitor.browser.execute_script(
         "return [document.documentElement.lang, document.querySelectorAll('h1').length,"
         "document.querySelectorAll('main').length, document.querySelectorAll('nav').length,"
         "document.querySelectorAll('[role=status], output').length,"

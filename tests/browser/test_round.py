@@ -125,6 +125,7 @@ def test_a_tap_while_the_server_is_down_is_kept_and_sent_once(
     assert shop.entries() == []
     shop.start_server()
     shop.wire.fate = "carries"
+    person.is_back_online()
     person.waits_for(lambda: len(shop.entries()) == 1)
     person.waits_for(lambda: person.read("#net") == "")
     person.waits_to_read("#said-tank", "you measured 630 ml")

@@ -14,8 +14,8 @@ from tests.browser.shop import TICKS, Shop
 
 # The air around at the last tick, as `tests.daemon.shops.working` has it; its dew point by another
 # program (ASHRAE's formulas), good to 0.1 K. The median over the sensors' errors is near it.
-AIR_C = 20.0 + 2.0 * math.sin((TICKS - 1) / 300.0)
-HUMIDITY = 0.6 + 0.05 * math.sin((TICKS - 1) / 170.0)
+AIR_C = 20.0 + 2.0 * math.sin(TICKS / 300.0)
+HUMIDITY = 0.6 + 0.05 * math.sin(TICKS / 170.0)
 psychrolib.SetUnitSystem(psychrolib.SI)
 DEW_POINT_C = psychrolib.GetTDewPointFromRelHum(AIR_C, HUMIDITY)
 
