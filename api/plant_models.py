@@ -125,6 +125,14 @@ class UsedUpOut(BaseModel):
         return cls(p05=_whole(due.p05_us), p50=_whole(due.p50_us), p95=_whole(due.p95_us))
 
 
+class HoursLeftOut(BaseModel):
+    """How long desiccant or ice lasts, as it was used of late; null: more than a year."""
+
+    p05: float | None = Field(examples=[310.5])
+    p50: float | None
+    p95: float | None
+
+
 class ScoreOut(BaseModel):
     """A drain-at level that was reached, and what had been foreseen at least a day ahead."""
 

@@ -21,6 +21,7 @@ from daemon.dew_points import dew_point_views
 from daemon.errors import JournalError, StoreError, UndoError
 from daemon.foresight import Score
 from daemon.hour_figures import NOTHING, Noted, joined
+from daemon.hours_left import hours_left
 from daemon.journal import Body, Drain, Entry, Undo
 from daemon.keys import KeyRing
 from daemon.line_views import LineViews
@@ -486,6 +487,11 @@ class Shell:
             if self._state is None:
                 return {}
             return self.core.following.foreseen(self._state).supplies
+
+    def hours_left(self) -> Mapping[str, Mapping[str, float | None]]:
+        """By station: how long its desiccant or ice lasts as it is used now."""
+        with self._lock:
+            return {} if self._state is None else hours_left(self.core.model, self._state.model)
 
     def forecast_scores(self) -> Sequence[Score]:
         """What was reached of late, and what had been foreseen at least a day ahead."""

@@ -311,6 +311,11 @@ class Running(Protocol):
         """By station: when its desiccant or ice is expected to be used up."""
         ...
 
+    def hours_left(self) -> Mapping[str, Mapping[str, float | None]]:
+        """By station: hours that its desiccant or ice lasts as it is used now, p05, p50, p95; None
+        beyond a year."""
+        ...
+
     def forecast_scores(self) -> Sequence[Score]:
         """What was reached of late, and what had been foreseen at least a day ahead."""
         ...

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+
 from fastapi import APIRouter
 from pydantic import BaseModel, Field
 
 from api.outlet_models import IntervalOut
-from api.plant_models import UsedUpOut
+from api.plant_models import HoursLeftOut, UsedUpOut
 from api.problems import answered_by
 from api.routes.running import TheDaemon
 from daemon.clock import format_rfc3339
@@ -57,8 +59,14 @@ class StationNowOut(BaseModel):
         description="when its desiccant or ice is expected to be used up; null: it has none"
     )
 
+    hours_left: HoursLeftOut | None = Field(
+        description="how many hours of air like that of late are left in it; null: it has none"
+    )
+
     @classmethod
-    def of(cls, view: StationView, used_up: Due | None) -> StationNowOut:
+    def of(
+        cls, view: StationView, used_up: Due | None, hours: Mapping[str, float | None] | None
+    ) -> StationNowOut:
         humidity = view.relative_humidity
         return cls(
             station=view.station,
@@ -77,6 +85,7 @@ class StationNowOut(BaseModel):
             saturated=round(view.saturated, 3),
             trap=view.trap,
             used_up=None if used_up is None else UsedUpOut.of(used_up),
+            hours_left=None if hours is None else HoursLeftOut.model_validate(hours),
         )
 
 
@@ -96,5 +105,8 @@ def _scaled(interval: Interval, times: float, plus: float, digits: int) -> Inter
 )
 def get_stations(daemon: TheDaemon) -> list[StationNowOut]:
     """In the order in which the air meets them; an empty list until the first tick."""
-    supplies = daemon.supplies()
-    return [StationNowOut.of(view, supplies.get(view.station)) for view in daemon.stations()]
+    supplies, hours = daemon.supplies(), daemon.hours_left()
+    return [
+        StationNowOut.of(view, supplies.get(view.station), hours.get(view.station))
+        for view in daemon.stations()
+    ]

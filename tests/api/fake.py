@@ -307,6 +307,7 @@ class FakeRunning:
     shown_plant: PlantView | None = field(default_factory=some_plant)
     shown_reminders: list[Reminder] = field(default_factory=lambda: [some_reminder()])
     shown_supplies: dict[str, Due] = field(default_factory=dict)
+    shown_hours: dict[str, dict[str, float | None]] = field(default_factory=dict)
     shown_scores: list[Score] = field(default_factory=list)
     problems: tuple[str, ...] = ()
     recorded: dict[str, SeriesOfReadings] = field(default_factory=_no_readings)
@@ -356,6 +357,9 @@ class FakeRunning:
 
     def supplies(self) -> Mapping[str, Due]:
         return self.shown_supplies
+
+    def hours_left(self) -> Mapping[str, Mapping[str, float | None]]:
+        return self.shown_hours
 
     def forecast_scores(self) -> Sequence[Score]:
         return tuple(self.shown_scores)

@@ -78,7 +78,8 @@ def test_forecasts_stand_beside_what_happened(running: FakeRunning, client: Clie
 
 def test_a_station_says_when_its_supply_is_used_up(running: FakeRunning, client: Client) -> None:
     running.shown_stations = [replace(INTAKE, station="cartridge")]
-    assert client.get("/api/v1/stations").json()[0]["used_up"] is None
+    before = client.get("/api/v1/stations").json()[0]
+    assert (before["used_up"], before["hours_left"]) == (None, None)
     running.shown_supplies = {
         "cartridge": Due(NOW_US + HOUR_US, NOW_US + 30 * HOUR_US + 7, None, None)
     }
@@ -87,3 +88,6 @@ def test_a_station_says_when_its_supply_is_used_up(running: FakeRunning, client:
         "p50": "2026-12-02T15:00:00Z",
         "p95": None,
     }
+    running.shown_hours = {"cartridge": {"p05": 310.5, "p50": 420.0, "p95": None}}
+    hours = client.get("/api/v1/stations").json()[0]["hours_left"]
+    assert hours == {"p05": 310.5, "p50": 420.0, "p95": None}
