@@ -64,6 +64,9 @@ class WeekDrainOut(BaseModel):
     expected_ml: IntervalOut | None = Field(
         description="what the cup should have shown, with the cup's own error"
     )
+    learned_from: bool = Field(
+        description="false: so far from what was expected that it was kept and not believed at once"
+    )
     late_h: float | None = Field(description="since it was due; null: it was on time")
     by: str
     look: str
@@ -267,6 +270,7 @@ def _drain(line: DrainLine) -> WeekDrainOut:
         outcome=line.outcome,
         measured_ml=None if line.measured_kg is None else _kg_in_ml(line.measured_kg),
         expected_ml=_ml(line.expected_kg),
+        learned_from=line.believed and line.expected_kg is not None,
         late_h=None if line.late_s is None else _h(line.late_s),
         by=line.by,
         look=line.look,

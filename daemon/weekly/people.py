@@ -42,6 +42,7 @@ def drain_lines(site: Site, rows: WeekRows) -> list[DrainLine]:
                 outcome=drain.outcome,
                 measured_kg=0.0 if drain.outcome == "empty" else drain.volume_kg,
                 expected_kg=None if check is None else check.expected_kg,
+                believed=check is None or check.learned,
                 late_s=_late_s(changes[drain.trap], drain, entry.at_us),
                 by=drain.by,
                 look=drain.look,

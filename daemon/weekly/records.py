@@ -39,6 +39,7 @@ class DrainLine:
     outcome: Outcome
     measured_kg: float | None
     expected_kg: Interval | None  # what the cup should have shown, with its own error
+    believed: bool  # False: too far off to be learned from at once
     late_s: float | None  # since when it was due; None: it was on time
     by: str
     look: str

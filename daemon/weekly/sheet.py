@@ -10,7 +10,7 @@ from daemon.site.types import Site
 from daemon.weekly import charts
 from daemon.weekly.charts import Chart
 from daemon.weekly.people import ON_TIME_US
-from daemon.weekly.records import VERDICTS, OutletWeek, WeekLog
+from daemon.weekly.records import VERDICTS, DrainLine, OutletWeek, WeekLog
 from daemon.weekly.words import (
     NOT_KNOWN,
     VERDICT_WORDS,
@@ -179,8 +179,8 @@ def _drains(words: Words, log: WeekLog) -> Section:
                 words.when(line.at_us),
                 line.trap,
                 _came_out(words, line.outcome, line.measured_kg),
-                words.waters(line.expected_kg) if line.expected_kg is not None else "-",
-                f"{hours(line.late_s)} late" if line.late_s is not None else "-",
+                _expected(words, line),
+                hours(line.late_s) if line.late_s is not None else "-",
                 ", ".join(each for each in (line.look, line.by) if each) or "-",
             )
             for line in log.drains
@@ -195,6 +195,13 @@ def _came_out(words: Words, outcome: str, measured_kg: float | None) -> str:
         return "was empty"
     amount = "not measured" if measured_kg is None else words.water(measured_kg)
     return f"{amount}, some was left" if outcome == "partly" else amount
+
+
+def _expected(words: Words, line: DrainLine) -> str:
+    if line.expected_kg is None:
+        return "-"
+    shown = words.waters(line.expected_kg)
+    return shown if line.believed else f"{shown}; kept, not learned from"
 
 
 # ---- outlets ----

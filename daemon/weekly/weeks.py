@@ -13,6 +13,7 @@ from daemon.site import hours as opening
 
 _WRITTEN = re.compile(r"(\d{4})-?[Ww](\d{2})", re.ASCII)
 _DAYS = 7
+_YEARS = (1970, 9998)  # that every time zone can count
 
 
 @dataclass(frozen=True, slots=True, order=True)
@@ -29,6 +30,11 @@ class Week:
         if match is None:
             raise WeekError(f'"{text[:40]}" is not a week: write it like 2026-W49')
         week = cls(int(match[1]), int(match[2]))
+        if not _YEARS[0] <= week.year <= _YEARS[1]:
+            raise WeekError(
+                f'"{text[:40]}": no log can be of {week.year}; years go from {_YEARS[0]} to '
+                f"{_YEARS[1]}"
+            )
         try:
             week.days()
         except ValueError:

@@ -17,7 +17,7 @@ from daemon.weekly.records import WeekLog
 from daemon.weekly.rows import read_rows
 from daemon.weekly.sheet import sheet
 from daemon.weekly.text import text_of
-from daemon.weekly.weeks import Week
+from daemon.weekly.weeks import Week, first_hour_us
 from tests.daemon.shops import site
 from tests.daemon.week_rows import HeldRows, a_day, an_hour, rows_of, transition
 
@@ -167,6 +167,19 @@ def test_days_follow_the_shop_s_own_clock() -> None:
     assert [day.day for day in log.days] == [str(day) for day in week.days()]
 
 
+def test_a_zone_off_by_half_an_hour_counts_from_half_past() -> None:
+    """Kolkata's Monday begins at 18:30 UTC: hours that are full there are none of ours."""
+    kolkata = replace(SHOP, timezone="Asia/Kolkata")
+    from_us, to_us = (first_hour_us(each) for each in WEEK.bounds_us("Asia/Kolkata"))
+    rows = rows_of(kolkata, from_us, to_us)
+    log = week_log(kolkata, read_rows(rows, WEEK, kolkata, to_us))
+    assert log.watched.of_s == log.watched.watched_s == 168 * 3600.0
+    assert log.watched.open_s == 17 * 3600.0
+    assert log.watched.complete
+    assert [day.watched_s for day in log.days] == [24 * 3600.0] * 7
+    assert "Hours are counted from 00:30" in text_of(sheet(kolkata, log))
+
+
 # ---- outlets ----
 
 
@@ -214,7 +227,10 @@ def test_drains_are_on_time_or_late_against_the_alarm() -> None:
         entry(7, at("04T10:42"), Drain("gone", "emptied", 0.2)),
         entry(8, at("05T10:00"), Blotter("spray-gun", "water", "JK")),
     ]
-    rows.checks = [DrainCheck(1, at("02T12:00"), "tank", 0.5, Interval(0.3, 0.4, 0.6), True)]
+    rows.checks = [
+        DrainCheck(1, at("02T12:00"), "tank", 0.5, Interval(0.3, 0.4, 0.6), True),
+        DrainCheck(3, at("04T10:00"), "tank", 0.0, Interval(0.1, 0.2, 0.3), False),
+    ]
     log = log_of(rows)
     tank, riser, _ = log.traps
     assert (tank.drains, tank.on_time, tank.late) == (4, 2, 1)
@@ -225,11 +241,17 @@ def test_drains_are_on_time_or_late_against_the_alarm() -> None:
     assert (riser.drains, riser.measured) == (0, 0)
     assert [line.late_s for line in log.drains] == [7200.0, None, None, None]
     assert log.drains[0].expected_kg == Interval(0.3, 0.4, 0.6)
-    assert (log.intervals.hit, log.intervals.of) == (1, 1)
+    assert (log.intervals.hit, log.intervals.of) == (1, 2)
+    assert [line.believed for line in log.drains] == [True, True, False, True]
     text = " ".join(text_of(sheet(SHOP, log)).split())
     assert "4 drains, 1 of them late; still due: tank" in text
-    assert "Mon 2 Mar, 12:00 tank 500 ml 400 ml (300 to 600 ml) 2 h late clear, AM" in text
+    assert (
+        "- Mon 2 Mar, 12:00: trap tank; came out 500 ml; the cup should have shown 400 ml (300 to "
+        "600 ml); late 2 h; look, by clear, AM"
+    ) in text
     assert "Blotter tests: Thu 5 Mar, 10:00 water (JK)." in text
+    assert "was empty" in text
+    assert "200 ml (100 to 300 ml); kept, not learned from" in text
 
 
 def test_a_drain_that_was_due_before_the_week_is_late() -> None:

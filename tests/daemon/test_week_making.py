@@ -229,7 +229,7 @@ def test_without_a_week_the_command_shows_the_last_full_one(
     [
         ("2026-10", '"2026-10" is not a week: write it like 2026-W49'),
         ("2025-W53", "there is no week 53 in 2025"),
-        ("9999-W01", "9999-W01 has not begun: this is "),
+        ("9998-W01", "9998-W01 has not begun: this is "),
     ],
 )
 def test_a_week_that_cannot_be_is_refused(

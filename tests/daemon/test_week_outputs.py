@@ -110,7 +110,7 @@ def test_the_text_fits_a_terminal_and_says_its_cautions(shop: Site) -> None:
     assert "Week 10 of 2026: Mon 2 Mar to Sun 8 Mar" in text
     assert ("1.68 L (1.38 to 1.98 L)" in text) == (shop is METRIC)
     assert ("0.444 gal (0.364 to 0.523 gal)" in text) == (shop is US)
-    assert "2 h late" in text
+    assert "1 (longest 2 h)" in text
     assert "milky, AM" in text
 
 

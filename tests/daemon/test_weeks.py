@@ -31,7 +31,8 @@ def test_a_week_is_read_as_people_write_it(text: str) -> None:
         ("2025-W53", "there is no week 53 in 2025"),
         ("2026-W54", "there is no week 54 in 2026"),
         ("2026-W00", "there is no week 0 in 2026"),
-        ("0000-W10", "there is no week 10 in 0"),
+        ("0001-W01", "no log can be of 1; years go from 1970 to 9998"),
+        ("9999-W52", "no log can be of 9999"),
     ],
 )
 def test_what_is_no_week_is_refused_in_words(text: str, said: str) -> None:
