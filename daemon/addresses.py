@@ -1,4 +1,4 @@
-"""Addresses to listen on: whether others can reach one, and under which others find this machine."""
+"""Addresses to listen on: whether others can reach one, and under what they find this machine."""
 
 from __future__ import annotations
 

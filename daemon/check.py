@@ -9,7 +9,8 @@ import textwrap
 from collections.abc import Iterable, Iterator, Sequence
 from dataclasses import dataclass
 
-from daemon.addresses import is_loopback, url_host
+from daemon.addresses import url_host
+from daemon.check_reach import keys_words, signal_words
 from daemon.moisture.description import (
     WATER_KG_PER_M3,
     Fixed,
@@ -23,7 +24,7 @@ from daemon.site.default_tables import defaults_table
 from daemon.site.fitting_words import drain_words, station_words
 from daemon.site.keeping import kept_words
 from daemon.site.sensor_words import sensor_words
-from daemon.site.types import DAY_NAMES, DefaultUsed, Hours, OutletSettings, Signal, Site
+from daemon.site.types import DAY_NAMES, DefaultUsed, Hours, OutletSettings, Site
 from daemon.site.words import source_words
 from daemon.units import (
     show_difference,
@@ -118,33 +119,9 @@ def _shop(site: Site) -> Iterator[str]:
         yield from _row("broker", "none: nothing is told over MQTT")
     yield from _row("readings are kept", kept_words(site.keeping))
     yield from _row("pages and API", f"http://{url_host(site.api.host)}:{site.api.port}/")
-    yield from _row("keys", _keys(site))
+    yield from _row("keys", keys_words(site))
     if site.signal is not None:
-        yield from _row(site.signal.kind, _signal(site.signal))
-
-
-def _signal(signal: Signal) -> str:
-    """What the lamp or buzzer shows, and where it is."""
-    level = "high" if signal.active_high else "low"
-    which = ", ".join(signal.priorities)
-    how = "blinks" if signal.kind == "lamp" else "calls every 10 s"
-    how = "is on" if signal.pattern == "steady" else how
-    seen = (
-        "then is on until they are over"
-        if signal.kind == "lamp"
-        else "in working hours only, then is silent"
-    )
-    return (
-        f"{signal.place}, on while {level}; {how} for alarms of priority {which} until somebody "
-        f"has seen them, {seen}"
-    )
-
-
-def _keys(site: Site) -> str:
-    if is_loopback(site.api.host):
-        return "none asked: only this machine can reach it"
-    reading = "reading is open to all" if site.api.open_reading else "reading needs one"
-    return f"{reading}, writing needs one: `dripleg key` makes them, and pairs a phone"
+        yield from _row(site.signal.kind, signal_words(site.signal))
 
 
 def _hours(hours: Hours) -> Iterator[str]:

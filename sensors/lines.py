@@ -115,7 +115,6 @@ class GpiodLines:
         )
         return _GpiodLine(request, number, self._clocks, gpiod)
 
-
     def output(self, number: int, active_high: bool) -> OutputLine:
         gpiod = self._gpiod
         if gpiod is None:
