@@ -35,7 +35,7 @@ from daemon.state import CoreState, HourTotals
 from daemon.ticks_along import Ticks, ticks_along
 from daemon.unset_clock import SET_FROM_US
 
-ELEMENTS = 8192  # ticks times members that are worked on together: they stay near the processor
+ELEMENTS = 15_872  # ticks times members that are worked on together: they stay near the processor
 HIGHEST_BAROMETER_PA = 110_000.0
 LEAST_TICKS = 6  # fewer are as quick one by one
 
@@ -186,7 +186,10 @@ class _Watch:
             row = min(full, happens, sample, margins, self._reminds(row))
             if row == self.count:
                 break
-            full = min(full, self._happened(row)) if row in (happens, sample) else full
+            if row == happens:
+                full = min(full, self._happened(row))
+            elif row == sample:
+                self._sampled(row)
             if row == margins:
                 full = min(full, self._margins(row))
             if row == full:
@@ -244,6 +247,15 @@ class _Watch:
         followed = self._followed(row, after)
         self.state = replace(self.state, followed=followed)
         return row if _alarming(followed.plant) != _alarming(before) else self.count
+
+    def _sampled(self, row: int) -> None:
+        """A sample for the days ahead."""
+        followed = self.state.followed
+        before_us = self.times_us[row - 1] if row else self.found.before.time_us
+        foresight = self.core.following.foreseer.tick(
+            followed.foresight, before_us, self.found.dry_state(row)
+        )
+        self.state = replace(self.state, followed=replace(followed, foresight=foresight))
 
     def _margins(self, row: int) -> int:
         """Look at the margins; this tick, if they are not as they were, else the end."""

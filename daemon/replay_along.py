@@ -25,6 +25,7 @@ from daemon.state import Inputs
 from daemon.ticks import SILENCE_US, first_at_or_after, next_tick
 
 MOST_ALONE = 32  # ticks that are taken one by one before it is tried again with several
+LARGEST_PIECE = 16 << 20
 Progress = Callable[[int], None]  # told of the time that was reached
 
 
@@ -128,6 +129,9 @@ def replay_in_blocks(
     at_once = [entry for entry in entries if entry.at_us == begun_us]
     result.add(core.take(state, at_once))
     end_us = max(record.last_us, entries[-1].at_us if entries else begun_us)
+    # memory of this size once given back, the C library keeps smaller pieces at hand from then on:
+    # pages that are taken and returned for each array cost as much as the arithmetic
+    np.empty(LARGEST_PIECE, np.uint8)
     run = _Run(core, record, entries[len(at_once) :], result, begun_us, end_us)
     run.run(progress)
     result.finish(core)

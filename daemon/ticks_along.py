@@ -12,11 +12,13 @@ from daemon.judged_along import JudgedAlong, Readings, first, judge_along
 from daemon.moisture.along_air import Bools, Course, Ints
 from daemon.moisture.contact import STALE_AFTER_PERIODS, ContactState, integrate
 from daemon.moisture.ensemble import Array
-from daemon.moisture.flow import PumpWatch, told_all
+from daemon.moisture.flow import PumpWatch, Watched, told_all
 from daemon.moisture.model import State
 from daemon.record_arrays import Record
 from daemon.site import hours as opening
 from daemon.state import ChannelRecord, CoreState
+
+Contact = tuple[bool | None, int, bool]  # a `ContactState`'s fields
 
 
 @dataclass(slots=True)
@@ -30,19 +32,19 @@ class Ticks:
     judged: JudgedAlong
     course: Course
     good: int
-    _contacts: list[ContactState] = field(default_factory=list)
-    _pumps: list[PumpWatch] = field(default_factory=list)
+    _contacts: Sequence[Contact] = ()
+    _pumps: Sequence[Watched] = ()
     _unknown_since_us: list[int] = field(default_factory=list)
 
     # ---- what the model asks for ----
 
     def contact(self, row: int) -> ContactState:
         """The compressor's contact after a tick."""
-        return self._contacts[row] if self._contacts else self.before.model.contact
+        return ContactState(*self._contacts[row]) if self._contacts else self.before.model.contact
 
     def pump(self, row: int) -> PumpWatch:
         """The watch of its pressure after a tick."""
-        return self._pumps[row] if self._pumps else self.before.model.pump
+        return PumpWatch(*self._pumps[row]) if self._pumps else self.before.model.pump
 
     def contact_unknown_us(self, row: int) -> int:
         """Since when the contact is not known, after a tick."""
@@ -146,7 +148,7 @@ def _repeats(core: Core, record: ChannelRecord, name: str, said: Readings) -> bo
 
 def _contact(
     core: Core, model: State, said: Mapping[str, Readings], times_us: Ints
-) -> tuple[list[ContactState], Ints, Ints]:
+) -> tuple[list[Contact], Ints, Ints]:
     """The compressor's contact after each tick, and how long it was closed or not known."""
     name, period_us, ticks = (
         core.model.plan.line.compressor.running,
@@ -155,7 +157,8 @@ def _contact(
     )
     if name is None:
         return [], np.zeros(ticks, np.int64), np.full(ticks, period_us)
-    contact, states = model.contact, []
+    contact = model.contact
+    states: list[Contact] = []
     if said[name].regular and contact.known_until(
         model.time_us, int(times_us[0]), period_us
     ) == int(times_us[0]):
@@ -165,7 +168,7 @@ def _contact(
     from_us = model.time_us
     for row, to_us in enumerate(times_us.tolist()):
         contact, times = integrate(contact, told[row], from_us, to_us, period_us)
-        states.append(contact)
+        states.append((contact.closed, contact.last_us, contact.sampled))
         on_us[row], unknown_us[row] = times.on_us, times.unknown_us
         from_us = to_us
     return states, on_us, unknown_us
@@ -173,7 +176,7 @@ def _contact(
 
 def _sampled(
     contact: ContactState, said: Readings, period_us: int
-) -> tuple[list[ContactState], Ints, Ints]:
+) -> tuple[list[Contact], Ints, Ints]:
     """The same where the contact is known, and tells its level at every tick."""
     closed = said.values > 0.5
     was = np.concatenate(([bool(contact.closed)], closed[:-1]))
@@ -181,8 +184,7 @@ def _sampled(
     gap_us = int(said.times_us[0]) - contact.last_us
     repeats[0] &= contact.closed is not None and 0 < gap_us <= STALE_AFTER_PERIODS * period_us
     sampled = np.logical_or.accumulate(repeats) | contact.sampled
-    rows = zip(closed.tolist(), said.times_us.tolist(), sampled.tolist(), strict=True)
-    states = [ContactState(*row) for row in rows]
+    states = list(zip(closed.tolist(), said.times_us.tolist(), sampled.tolist(), strict=True))
     return states, np.where(was, period_us, 0), np.zeros(len(was), np.int64)
 
 
@@ -210,7 +212,7 @@ def _unknown_since(model: State, unknown_us: Ints, times_us: Ints) -> list[int]:
 
 def _pump(
     core: Core, model: State, said: Mapping[str, Readings], unknown_since_us: Sequence[int]
-) -> tuple[list[PumpWatch], Ints]:
+) -> tuple[list[Watched], Ints]:
     """The watch of the pressure after each tick, and what it then books as run."""
     ticks = len(unknown_since_us) - 1
     booked_us = np.zeros(ticks, np.int64)
@@ -218,20 +220,26 @@ def _pump(
         return [], booked_us
     name, span_pa = core.model.gauge
     if said[name].regular:
-        pumps, runs_since_us = told_all(
+        found, runs_since_us = told_all(
             model.pump, said[name].values.tolist(), said[name].times_us.tolist(), span_pa
         )
         since_us = np.array(unknown_since_us[:-1])
         booked_us = np.maximum(said[name].times_us - np.maximum(runs_since_us, since_us), 0)
-        return pumps, np.where(since_us >= 0, booked_us, 0)
-    pump, pumps = model.pump, []
+        return found, np.where(since_us >= 0, booked_us, 0)
+    pump = model.pump
+    pumps: list[Watched] = []
     for row, told in enumerate(_by_tick(said[name], ticks)):
         for time_us, value, _ in told:
             pump, from_us, until_us = pump.told(value, time_us, span_pa)
             if unknown_since_us[row] >= 0:
                 booked_us[row] += max(0, until_us - max(from_us, unknown_since_us[row]))
-        pumps.append(pump)
+        pumps.append(_fields(pump))
     return pumps, booked_us
+
+
+def _fields(pump: PumpWatch) -> Watched:
+    swing = pump.pumping, pump.extreme_pa, pump.extreme_us
+    return (*swing, pump.before_pa, pump.noise_pa2, pump.readings)
 
 
 def _is_open(core: Core, times_us: Ints) -> Bools:

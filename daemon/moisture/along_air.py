@@ -17,6 +17,7 @@ import numpy as np
 import numpy.typing as npt
 
 from daemon.moisture import air, flow, hardy
+from daemon.moisture.along_saturation import saturated_mole_fraction
 from daemon.moisture.conditions import Conditions, Evaluation, HeldAlong
 from daemon.moisture.ensemble import Array
 from daemon.moisture.model import DUTY_LOGIT_SD, DUTY_MEMORY_S, Model, State
@@ -166,7 +167,7 @@ def saturation(now: Conditions) -> tuple[Array, Array]:
     saturated = np.empty(now.temperature_k.shape)
     intake = np.empty(0)
     for i, (kelvin, pressure) in enumerate(zip(now.temperature_k, now.pressure_pa, strict=True)):
-        fraction = hardy.saturated_mole_fraction(kelvin, pressure)
+        fraction = saturated_mole_fraction(kelvin, pressure)
         saturated[i] = air.ratio_of_fraction(fraction)
         if i == 0:
             fraction = fraction * hardy.water_over_ice(kelvin) * now.relative_humidity
@@ -211,7 +212,7 @@ def moved_along(plan: Plan, state: flow.AirState, drawn: Array, measured: Array)
         wanted = plan.share[receiver] * cumulative + change[below].sum(axis=0)
         entered[row], so_far = _new_maxima(state.entered[row], wanted, [])
         entered_total.append(so_far)
-    moved = flow.route(plan, drawn, used, entered, None)
+    moved = _routed(plan, drawn, used, entered)
     stored, before = np.empty_like(measured), np.empty_like(measured)
     good = len(drawn)
     for row, receiver in enumerate(plan.receivers):
@@ -226,6 +227,36 @@ def moved_along(plan: Plan, state: flow.AirState, drawn: Array, measured: Array)
     return AirAlong(
         total, used_total, state.used, entered_total, measured, stored, before, moved, good
     )
+
+
+def _routed(plan: Plan, drawn: Array, used: Array, entered: Array) -> flow.AirMoved:
+    """`flow.route`, where most stations pass on what another one does: nothing is copied."""
+    count = len(plan.stations)
+    into: list[Array] = [used] * count
+    through: list[Array] = [used] * count
+    outlets = [_share(outlet.share, used) for outlet in plan.line.outlets]
+    for station in range(count - 1, -1, -1):
+        leaves = [
+            outlets[f.outlet] if f.outlet >= 0 else into[f.station] for f in plan.outflows[station]
+        ]
+        if len(leaves) == 1:
+            through[station] = leaves[0]
+        else:
+            through[station] = np.zeros_like(used)
+            for part in leaves:
+                through[station] += part
+        if station in plan.receivers:
+            into[station] = entered[plan.receivers.index(station)]
+        elif station in plan.trunk and plan.receivers:
+            into[station] = through[station] = drawn
+        else:
+            into[station] = through[station]
+    several = cast(Any, (outlets, into, through))  # by outlet or station, one after the other
+    return flow.AirMoved(drawn, used, *several)
+
+
+def _share(share: float, used: Array) -> Array:
+    return used if share == 1.0 else share * used
 
 
 def _new_maxima(start: Array, wanted: Array, shares: Sequence[float]) -> tuple[Array, Array]:

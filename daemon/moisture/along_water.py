@@ -182,13 +182,10 @@ class WaterAlong:
 
     def _moving(self, i: int) -> Bools | None:
         """Whether air leaves a station; None: it does at every tick."""
-        plan, alike = self.plan, i  # air that leaves stations alike leaves all of them or none
-        if len(plan.receivers) == 1 and plan.share[i] > 0.0:
-            alike = -1 if i in plan.trunk and i not in plan.receivers else -2
-        if alike not in self._known:
-            through = self.air.moved.through[i]
-            self._known[alike] = None if through.min() > 0.0 else through > 0.0
-        return self._known[alike]
+        through = self.air.moved.through[i]
+        if id(through) not in self._known:  # many stations pass on the very same air
+            self._known[id(through)] = None if through.min() > 0.0 else through > 0.0
+        return self._known[id(through)]
 
     # ---- a receiver ----
 

@@ -27,6 +27,9 @@ MOST_OF_STOCK = 0.5  # of what a receiver holds, what may leave it in one step
 NOISE_READINGS = 30  # that the noise is averaged over; nothing is taken for a swing before
 
 
+Watched = tuple[bool, float, int, tuple[float, float], float, int]  # a `PumpWatch`'s fields
+
+
 @dataclass(frozen=True, slots=True)
 class PumpWatch:
     """Tells from a receiver's pressure when the compressor ran, for a line without a contact.
@@ -44,18 +47,18 @@ class PumpWatch:
     def told(self, pressure_pa: float, time_us: int, span_pa: float) -> tuple[PumpWatch, int, int]:
         """After a reading: the watch, and the span (from_us, to_us] in which it now knows that
         the compressor ran; empty when both are equal."""
-        (watch,), from_us = told_all(self, [pressure_pa], [time_us], span_pa)
-        return watch, from_us[0], time_us
+        (after,), (from_us,) = told_all(self, [pressure_pa], [time_us], span_pa)
+        return PumpWatch(*after), from_us, time_us
 
 
 def told_all(
     watch: PumpWatch, pressures_pa: Sequence[float], times_us: Sequence[int], span_pa: float
-) -> tuple[list[PumpWatch], list[int]]:
-    """After each of several readings: the watch, and since when it then knows that the compressor
-    ran; the reading's own time where it does not."""
+) -> tuple[list[Watched], list[int]]:
+    """After each of several readings: the watch's fields, and since when it then knows that the
+    compressor ran; the reading's own time where it does not."""
     pumping, extreme_pa, extreme_us = watch.pumping, watch.extreme_pa, watch.extreme_us
     (older_pa, last_pa), noise_pa2, readings = watch.before_pa, watch.noise_pa2, watch.readings
-    found: list[PumpWatch] = []
+    found: list[Watched] = []
     since_us: list[int] = []
     for now_pa, now_us in zip(pressures_pa, times_us, strict=True):
         bend = now_pa - 2.0 * last_pa + older_pa
@@ -79,7 +82,7 @@ def told_all(
         elif now_pa > extreme_pa + swing_pa:
             runs_since_us, pumping, extreme_pa, extreme_us = extreme_us, True, now_pa, now_us
         before_pa = (older_pa, last_pa)
-        found.append(PumpWatch(pumping, extreme_pa, extreme_us, before_pa, noise_pa2, readings))
+        found.append((pumping, extreme_pa, extreme_us, before_pa, noise_pa2, readings))
         since_us.append(runs_since_us)
     return found, since_us
 
