@@ -97,7 +97,7 @@ def _due(site: Site, view: TrapView, now_us: int) -> list[str]:
     if tank and little:
         said.append(f"{AGAINST_RUST[0].upper()}{AGAINST_RUST[1:]}.")
     elif view.because != "calendar" and view.expected:
-        more = "; drain it daily against rust all the same" if tank else ""
+        more = "; drain daily against rust all the same" if tank else ""
         said.append(f"By volume {view.expected}{more}.")
     if view.due_at_us is not None:
         coming = words.coming(view.due_at_us, now_us)
