@@ -13,7 +13,7 @@ from starlette.responses import HTMLResponse, RedirectResponse, Response
 from api.models import AcknowledgeIn, DrainIn, UndoIn
 from api.pages.forms import STALE, Fields, NumberError, is_fresh, number, words_of
 from api.pages.frame import page
-from api.pages.round_cards import card_of
+from api.pages.round_cards import cards_of
 from api.pages.round_plan import RoundPlan, plan
 from api.problems import Problem
 from api.routes.parts import confirm
@@ -100,7 +100,8 @@ def _plan(daemon: Running) -> RoundPlan:
 
 
 def _page(daemon: Running, told: Told | None = None, status: int = 200) -> HTMLResponse:
-    made, undone = _plan(daemon), daemon.undoings()
+    made = _plan(daemon)
+    cards = cards_of(daemon, [*made.drain, *made.leave])
     return page(
         daemon,
         "round.html",
@@ -108,8 +109,8 @@ def _page(daemon: Running, told: Told | None = None, status: int = 200) -> HTMLR
         title="Today's round",
         status=status,
         line=made.line,
-        drain=[card_of(daemon, view, undone) for view in made.drain],
-        leave=[card_of(daemon, view, undone) for view in made.leave],
+        drain=[cards[view.trap] for view in made.drain],
+        leave=[cards[view.trap] for view in made.leave],
         told=told or Told(),
         units=UNITS[daemon.site.units],
         looks=LOOKS,

@@ -42,26 +42,34 @@ class TrapCard:
     last: LastDrain | None
 
 
-def card_of(daemon: Running, view: TrapView, undone: Mapping[int, Entry]) -> TrapCard:
-    """Everything that is said of a trap."""
+def cards_of(daemon: Running, views: Sequence[TrapView]) -> dict[str, TrapCard]:
+    """Everything that is said of the traps, by name."""
     site, now_us = daemon.site, daemon.clock.now_us()
-    entries = daemon.drains(view.trap, now_us - LOOKED_BACK_US, now_us + AHEAD_US + 1)
-    return TrapCard(
-        name=view.trap,
-        view=view,
-        level=level_of(view),
-        due=tuple(_due(site, view, now_us)),
-        last=_last(Words(site), entries, undone, now_us),
-    )
+    recent = {view.trap: _recent(daemon, view.trap, now_us) for view in views}
+    # what was undone is looked up only where something could have been
+    undone = daemon.undoings() if any(recent.values()) else {}
+    return {
+        view.trap: TrapCard(
+            name=view.trap,
+            view=view,
+            level=level_of(view),
+            due=tuple(_due(site, view, now_us)),
+            last=_last(Words(site), recent[view.trap], undone),
+        )
+        for view in views
+    }
 
 
-def _last(
-    words: Words, entries: Sequence[Entry], undone: Mapping[int, Entry], now_us: int
-) -> LastDrain | None:
-    recent = [entry for entry in entries if may_be_undone(entry, now_us)]
-    if not recent:
+def _recent(daemon: Running, trap: str, now_us: int) -> Entry | None:
+    """The last drain of a trap that was recorded so lately that it may be taken back."""
+    entries = daemon.drains(trap, now_us - LOOKED_BACK_US, now_us + AHEAD_US + 1)
+    recent = (entry for entry in entries if may_be_undone(entry, now_us))
+    return max(recent, key=lambda each: each.seq, default=None)
+
+
+def _last(words: Words, entry: Entry | None, undone: Mapping[int, Entry]) -> LastDrain | None:
+    if entry is None:
         return None
-    entry = max(recent, key=lambda each: each.seq)
     drain = entry.body
     assert isinstance(drain, Drain)
     said = [_outcome(words, drain)]
