@@ -123,7 +123,7 @@ def _known(words: Words, log: WeekLog) -> Iterator[str]:
     if log.begun_us is not None:
         begun = words.when(log.begun_us)
         yield f"The record begins on {begun}; nothing is known of what was before."
-    if watched.of_s <= 0.0:
+    if watched.watched_s <= 0.0:
         yield "No hour of it was watched."
         return
     if watched.complete:

@@ -133,15 +133,16 @@ def test_the_first_week_begins_where_the_record_does() -> None:
     assert "The record begins on Tue 3 Mar, 06:40" in text_of(sheet(SHOP, log))
 
 
-@pytest.mark.parametrize("begun_us", [None, AFTER_US])
+@pytest.mark.parametrize("begun_us", [None, AFTER_US, FROM_US - HOUR_US])
 def test_an_empty_week_says_that_nothing_is_known(begun_us: int | None) -> None:
     log = log_of(HeldRows(begun_us=begun_us))
     assert log.empty
     assert log.water_in_kg is None
-    assert log.watched.of_s == 0.0
+    assert log.watched.watched_s == 0.0
     text = text_of(sheet(SHOP, log))
     assert "Nothing is known of this week." in text
     assert "No hour of it was watched." in text
+    assert "model goes on" not in text
     assert "Duty in open hours: not known." in text
 
 
