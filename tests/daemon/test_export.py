@@ -16,11 +16,13 @@ from hypothesis import strategies as st
 from daemon.__main__ import main
 from daemon.alarms import Transition
 from daemon.clock import DAY_US, HOUR_US, SECOND_US, format_rfc3339
+from daemon.errors import ReplayError
 from daemon.export_rows import ChannelText, _ml, by_time
 from daemon.journal import Acknowledge, Drain
 from daemon.moisture.description import WATER_KG_PER_M3
 from daemon.progress import Progress
 from daemon.recorded import read_readings
+from daemon.recorded_faults import read_faults
 from daemon.store.store import Store
 from daemon.units import to_si
 from sensors.reading import Channel, Reading, in_steps
@@ -401,3 +403,45 @@ def test_nothing_of_the_site_s_own_is_changed(folder: Path) -> None:
         assert run(folder) == 0
         assert (folder / "birch-works.db-wal").read_bytes() == before
         store.commit_tick(BEGUN_US + DAY_US, [])
+
+
+# --- faults as a replay reads them
+
+
+def faults(folder: Path, *rows: str) -> Path:
+    path = folder / "faults.csv"
+    path.write_text("\n".join(["time,channel,reason,value,unit", *rows, ""]), encoding="utf-8")
+    return path
+
+
+def test_faults_with_a_value_are_left_to_be_judged_again(folder: Path) -> None:
+    path = faults(
+        folder,
+        '2026-03-02T07:00:10Z,tank-gauge.pressure,"no answer, at all",,',
+        "2026-03-02T07:00:05Z,tank-gauge.pressure,frozen,7.1,barg",
+        "2026-03-02T07:00:00Z,motor.contact,off,,",
+    )
+    found, bad = read_faults(SHOP, path)
+    assert [(one.channel, one.time_us - BEGUN_US, one.fault) for one in found] == [
+        ("motor.contact", 0, "off"),
+        ("tank-gauge.pressure", 10 * SECOND_US, "no answer, at all"),
+    ]
+    assert all(math.isnan(one.value) for one in found)
+    assert bad == []
+
+
+@pytest.mark.parametrize(
+    ("row", "words"),
+    [
+        ("monday,motor.contact,off,,", "line 2, column time"),
+        ("2026-03-02T07:00:00Z,attic.contact,off,,", 'column channel: "attic.contact" is not a'),
+        ("2026-03-02T07:00:00Z,motor.contact,,,", "column reason: is empty; say why"),
+        ("2026-03-02T07:00:00Z,motor.contact,off", "has 3 columns; expected 5"),
+    ],
+)
+def test_a_bad_row_of_faults_is_named(folder: Path, row: str, words: str) -> None:
+    with pytest.raises(ReplayError) as error:
+        read_faults(SHOP, faults(folder, row))
+    assert words in str(error.value)
+    found, bad = read_faults(SHOP, faults(folder, row), skip_bad=True)
+    assert (found, len(bad)) == ([], 1)
