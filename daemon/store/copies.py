@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import os
+import pwd
 import sqlite3
 from contextlib import closing
 from pathlib import Path
@@ -10,14 +12,35 @@ from daemon.errors import StoreError
 from daemon.store import migrations, sqlite
 
 
+def refuse_unreadable(path: Path) -> None:
+    """StoreError where there is no database, or this user may not read it.
+
+    A database that nobody has open is read by writing two small files beside it, which its owner
+    may; beside a daemon they are there already.
+    """
+    if not path.is_file():
+        raise StoreError(f"{path}: there is no database: name it with --store")
+    beside = path.with_name(path.name + "-shm")
+    may_write = all(os.access(each, os.W_OK, effective_ids=True) for each in (path, path.parent))
+    if not os.access(path, os.R_OK, effective_ids=True) or not (may_write or beside.exists()):
+        owner = path.stat().st_uid
+        try:
+            name = pwd.getpwuid(owner).pw_name
+        except KeyError:
+            name = f"#{owner}"
+        raise StoreError(
+            f"{path}: it belongs to the user {name}, and this one cannot read it while no daemon "
+            f"has it: put sudo -u '{name}' before the command"
+        )
+
+
 def copy(source: Path, target: Path) -> None:
     """Copy the database at `source` to `target`, consistent and checked.
 
     Only a copy that dripleg made is ever replaced. StoreError, with what to do, for everything
     else that is there, and when there is no database.
     """
-    if not source.is_file():
-        raise StoreError(f"{source}: there is no database: name it with --store")
+    refuse_unreadable(source)
     if target.is_dir():
         raise StoreError(f"{target}: this is a directory: name the copy's file, like shop.backup")
     if target.exists():

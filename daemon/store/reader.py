@@ -9,7 +9,7 @@ from typing import Self
 from daemon.alarms import Transition
 from daemon.errors import StoreError
 from daemon.journal import Entry
-from daemon.store import announcements, entries, migrations, sqlite
+from daemon.store import announcements, copies, entries, migrations, sqlite
 from daemon.store.database import Database
 from daemon.store.ticks import TickReader
 from sensors.reading import Reading
@@ -25,8 +25,7 @@ class StoreReader:
     @classmethod
     def open(cls, path: Path) -> Self:
         """Open the database at this path; StoreError when there is none, or of another version."""
-        if not path.is_file():
-            raise StoreError(f"{path}: there is no database: name it with --store")
+        copies.refuse_unreadable(path)
         database = sqlite.connect(path)
         try:
             with database.read() as connection:

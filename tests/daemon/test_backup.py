@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import shutil
 import sqlite3
+import tempfile
 import threading
 from collections.abc import Iterator
 from contextlib import closing
@@ -15,6 +16,7 @@ import pytest
 from daemon.__main__ import main
 from daemon.store.store import Store
 from tests.daemon.sealed import CHANNELS, T0, TICK, fill, ordinary, record, seal_all, shown
+from tests.daemon.test_store_opening import unprivileged
 
 EVER = (0, 2**61)
 
@@ -134,6 +136,26 @@ def test_what_cannot_be_copied_is_told(
     store.commit_tick(T0, ordinary(T0))
     assert backup(folder, target, *arguments) == 1
     assert words in capsys.readouterr().err
+
+
+def test_who_may_not_read_a_database_is_told_how(capsys: pytest.CaptureFixture[str]) -> None:
+    """Beside a daemon its files can be read; without one only by their owner."""
+    with tempfile.TemporaryDirectory() as name:
+        folder = Path(name)
+        (folder / "shop.toml").write_text("", encoding="utf-8")
+        with Store.open(folder / "shop.db", CHANNELS) as store:
+            store.commit_tick(T0, ordinary(T0))
+            for each in folder.iterdir():
+                each.chmod(0o444)
+            (folder / "for-all").mkdir()
+            (folder / "for-all").chmod(0o777)
+            folder.chmod(0o555)
+            with unprivileged():
+                assert backup(folder, "for-all/copy.db") == 0
+        with unprivileged():
+            assert backup(folder, "for-all/copy.db") == 1
+        assert "while no daemon has it: put sudo -u '" in capsys.readouterr().err
+        folder.chmod(0o755)
 
 
 def test_a_damaged_database_is_told_and_the_last_copy_kept(
