@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from daemon.alarms import Alarm
+from daemon.alarms import Alarm, Priority
 from daemon.views import Running
 
 _WORDS = {
@@ -13,6 +13,7 @@ _WORDS = {
     "returned unacknowledged": "over, but not seen by anybody yet",
     "shelved": "put off",
 }
+_URGENT_FIRST: tuple[Priority, ...] = ("high", "medium", "low")
 WAITING = ("unacknowledged", "returned unacknowledged")
 STANDING = ("unacknowledged", "acknowledged")
 # what is offered; an alarm of high priority may be put off for an hour at most
@@ -35,8 +36,10 @@ class AlarmCard:
 
 
 def alarm_cards(daemon: Running) -> list[AlarmCard]:
-    """The alarms that are not normal."""
-    return [_card(alarm) for alarm in daemon.alarms() if alarm.state != "normal"]
+    """The alarms that are not normal: those that wait for somebody first, the urgent before."""
+    shown = [alarm for alarm in daemon.alarms() if alarm.state != "normal"]
+    shown.sort(key=lambda alarm: (alarm.state not in WAITING, _URGENT_FIRST.index(alarm.priority)))
+    return [_card(alarm) for alarm in shown]
 
 
 def _card(alarm: Alarm) -> AlarmCard:

@@ -8,7 +8,7 @@ from daemon.views import Interval
 
 LEFT, RIGHT = 12.0, 308.0  # of the scale in a drawing 320 wide
 LEAST_K, MOST_K = -2.0, 16.0
-WIDE_PX = 34.0  # a zone narrower than this has no room for its word
+WIDE_PX = 31.0  # a zone narrower than this has no room for its word
 
 
 @dataclass(frozen=True, slots=True)

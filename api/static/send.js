@@ -4,7 +4,7 @@
 const KEPT = "dripleg.kept";
 const PATIENCE_MS = 8000;
 const LATE_MS = 5000; // a tap that arrives later says when it was
-let memory = []; // where the browser lets nothing be stored
+let memory = null; // the list, where the browser lets nothing be stored
 let clockOffsetMs = 0;
 const listeners = [];
 
@@ -20,10 +20,11 @@ export function serverSays(nowMs) {
 }
 
 export function kept() {
+  if (memory) return memory;
   try {
     return JSON.parse(localStorage.getItem(KEPT) || "[]");
   } catch {
-    return memory;
+    return [];
   }
 }
 
@@ -32,11 +33,11 @@ export function whenKeptChanges(listener) {
 }
 
 function keep(list) {
-  memory = list;
   try {
     localStorage.setItem(KEPT, JSON.stringify(list));
+    memory = null;
   } catch {
-    // private browsing: kept for as long as the page is open
+    memory = list; // private browsing: kept for as long as the page is open
   }
   listeners.forEach((listener) => listener(list));
 }

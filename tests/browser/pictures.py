@@ -15,13 +15,22 @@ import threading
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from pathlib import Path
+from zoneinfo import ZoneInfo
 
 from PIL import Image
 from selenium import webdriver
 from selenium.webdriver.chrome.service import Service
 
 from daemon import compose
-from daemon.clock import DAY_US, HOUR_US, MINUTE_US, SECOND_US, format_rfc3339, parse_rfc3339
+from daemon.clock import (
+    DAY_US,
+    HOUR_US,
+    MINUTE_US,
+    SECOND_US,
+    format_rfc3339,
+    parse_rfc3339,
+    to_datetime,
+)
 from daemon.demo import demo_site
 from daemon.errors import JournalError
 from daemon.journal import Acknowledge, Blotter, Body, Drain
@@ -36,7 +45,7 @@ from tests.tree import ROOT
 
 FOLDER = ROOT / "deploy" / "pictures"
 MONDAY_US = parse_rfc3339("2026-06-01T07:00:00Z")
-LOOK_US = parse_rfc3339("2026-06-05T16:40:00Z")
+LOOK_US = parse_rfc3339("2026-06-05T13:40:00Z")
 PAGES = {"round": 1250, "spray": 1500, "week": 1500, "line": 1500}  # heights, CSS pixels
 COLORS = 48
 
@@ -77,19 +86,21 @@ class _People:
 
     shop: MakeBelieveShop
     record: Callable[[Body], object]
+    ahead_us: int  # of UTC, the shop's clock
     done: set[str] = field(default_factory=set)
 
     def at(self, now_us: int, alarms: list[tuple[str, int]]) -> None:
         """Do what it is time for."""
-        day, of_day_us = divmod(now_us, DAY_US)
+        day, of_day_us = divmod(now_us + self.ahead_us, DAY_US)
         for alarm, since_us in alarms:
             if now_us - since_us > 12 * MINUTE_US:
                 self._once(f"{alarm} {since_us}", Acknowledge(alarm, "JR"))
         if of_day_us >= 17 * HOUR_US + 20 * MINUTE_US:
             self._drain(f"{day}", "tank", 0.05 * math.sin(day), "clear")
-        if of_day_us >= 17 * HOUR_US + 10 * MINUTE_US and day % 2:
-            for trap in ("booth-coalescer", "riser"):
-                self._drain(f"{day}", trap, 0.04 * math.cos(day), "milky")
+        for hours in (11.95, 14.6, 17.1):
+            if of_day_us >= hours * HOUR_US:
+                for trap in ("booth-coalescer", "riser"):
+                    self._drain(f"{day} {hours}", trap, 0.04 * math.cos(day + hours), "milky")
         if of_day_us >= 8 * HOUR_US and day % 3 == 0:
             self._once(f"{day} blotter", Blotter("clear-coat", "clean", "TK"))
 
@@ -114,6 +125,8 @@ class _People:
 def main() -> None:
     """Live through the week, then look."""
     site, clock = demo_site(MONDAY_US, None), _Clock()
+    zone = to_datetime(MONDAY_US).astimezone(ZoneInfo(site.timezone)).utcoffset()
+    ahead_us = 0 if zone is None else round(zone.total_seconds()) * SECOND_US
     with tempfile.TemporaryDirectory() as folder, EmulatedHardware() as parts:
         setters = parts.fit(site.sensors)
         parts.make_noisy()
@@ -129,7 +142,7 @@ def main() -> None:
         )
         with compose.running(setting, threading.Event()) as running:
             shell = running.shell
-            people = _People(shop, shell.record)
+            people = _People(shop, shell.record, ahead_us)
             while clock.now < LOOK_US:
                 clock.now += site.sample_every_us
                 shell.tick(clock.now)

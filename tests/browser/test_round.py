@@ -145,6 +145,21 @@ def test_a_kept_tap_survives_that_the_page_is_closed(person: Person, shop: Shop)
     person.waits_for(lambda: len(shop.entries()) == 1)
 
 
+def test_a_browser_that_stores_nothing_keeps_a_tap_while_the_page_is_open(
+    person: Person, shop: Shop
+) -> None:
+    person.open("/round")
+    refuse = "Storage.prototype.setItem = () => { throw new DOMException('full') }"
+    person.browser.execute_script(refuse)
+    shop.wire.cut()
+    person.taps("#drained-tank")
+    person.waits_to_read("#net", "Kept on this phone, to be sent once: tank: Drained")
+    shop.wire.fate = "carries"
+    person.is_back_online()
+    person.waits_for(lambda: len(shop.entries()) == 1)
+    person.waits_for(lambda: person.read("#net") == "")
+
+
 def test_an_answer_that_was_lost_makes_no_second_drain(person: Person, shop: Shop) -> None:
     person.open("/round")
     shop.wire.fate = "loses answers"
