@@ -54,6 +54,8 @@ def test_a_state_is_come_back_to_from_packed_hours_alone(tmp_path: Path) -> None
     rig.store.drop_checkpoints_after(BEGUN_US)
     rig.kill()
     assert bits(rig.state) == live
+    steps = rig.shell.reading_steps("motor.contact", BEGUN_US, BEGUN_US + 2 * HOUR_US, HOUR_US)
+    assert steps.count.tolist() == [360, 360]
     rig.store.close()
 
 
