@@ -17,7 +17,7 @@ from daemon.judging import Judging
 from daemon.moisture.along_air import Bools, Ints
 from daemon.moisture.ensemble import Array
 from daemon.state import ChannelRecord
-from sensors.quality import ChannelState, QualityState
+from sensors.quality import DISAGREES, ChannelState, QualityState
 from sensors.quality_rules import (
     DRY_AGAIN,
     LIVELY_MOVES,
@@ -179,7 +179,8 @@ def judge_along(
         for name, rule in rules.channels.items()
         if len(said[name].values)
     }
-    good = 0 if any(each.said for each in before.channels.values()) else len(times_us)
+    doubted = _doubted(before)
+    good = 0 if doubted is None else len(times_us)
     for one in channels.values():
         bad = one.first_bad()
         if bad < len(one.said.values):
@@ -188,8 +189,7 @@ def judge_along(
         good = min(good, _first_frozen(part, channels, at_us))
     settled = np.array([since is not None for since in off_since])
     settled &= at_us - np.array([since or 0 for since in off_since]) >= OFF_LONG_S * 1e6
-    for agreement in rules.agreements:
-        good = min(good, _first_disagreeing(agreement, said, settled))
+    good = min(good, _first_doubted_else(rules.agreements, said, settled, doubted or set()))
     return JudgedAlong(good, before, channels, at_us.tolist(), off_since)
 
 
@@ -257,18 +257,60 @@ def _first_frozen(part: Part, channels: Mapping[str, _Channel], at_us: Ints) -> 
     return first(still & (at_us - since_us >= part.frozen_s * 1e6), len(at_us))
 
 
-def _first_disagreeing(agreement: Agreement, said: Mapping[str, Readings], settled: Bools) -> int:
-    """The first tick in which channels that should show the same do not."""
+def _doubted(before: QualityState) -> set[str] | None:
+    """The channels that are in doubt; None where more than that is said of one."""
+    found = set()
+    for name, one in before.channels.items():
+        if any(each != (DISAGREES, "doubt") for each in one.said.items()):
+            return None
+        found |= {name} if one.said else set()
+    return found
+
+
+def _first_doubted_else(
+    agreements: Sequence[Agreement],
+    said: Mapping[str, Readings],
+    settled: Bools,
+    doubted: set[str],
+) -> int:
+    """The first tick in which other channels are in doubt than before, or one is odd."""
     ticks = len(settled)
-    if not (agreement.always or settled.any()):
-        return ticks
-    rows = np.full((len(agreement.channels), ticks), np.nan)
+    good, doubts = ticks, {name: np.zeros(ticks, bool) for name in said}
+    for agreement in agreements:
+        active = np.full(ticks, True) if agreement.always else settled
+        names = agreement.channels
+        for name in doubted.intersection(names):
+            doubts[name] |= ~active
+        if not active.any():
+            continue
+        odd = _odd(agreement, said, active)
+        if odd is None:
+            continue
+        if len(names) > 2 and not agreement.doubt_only:
+            good = min(good, first(np.logical_or.reduce(odd), ticks))
+        for name, rows in zip(names, odd, strict=True):
+            doubts[name] |= rows
+    for name, rows in doubts.items():
+        if rows.any() or name in doubted:
+            told = said[name].tick
+            changed = rows[told] != (name in doubted)
+            good = min(good, int(told[changed.argmax()]) if changed.any() else ticks)
+    return good
+
+
+def _odd(agreement: Agreement, said: Mapping[str, Readings], active: Bools) -> Bools | None:
+    """Which channels are odd in which ticks, of two both; None for none, (channels, ticks)."""
+    rows = np.full((len(agreement.channels), len(active)), np.nan)
     for row, name in zip(rows, agreement.channels, strict=True):
         row[said[name].tick] = said[name].values  # the last one of each tick
-    alone = np.isnan(rows)
-    if alone.all(axis=0).all():
-        return ticks
-    highest = np.where(alone, -np.inf, rows).max(axis=0)
-    lowest = np.where(alone, np.inf, rows).min(axis=0)
-    apart = highest - lowest > agreement.within  # else none is so far from the middle
-    return first(apart if agreement.always else apart & settled, ticks)
+    silent = np.isnan(rows)
+    highest = np.where(silent, -np.inf, rows).max(axis=0)
+    lowest = np.where(silent, np.inf, rows).min(axis=0)
+    apart = active & (highest - lowest > agreement.within)  # else none is so far from the middle
+    if not apart.any():
+        return None
+    odd = np.zeros(rows.shape, bool)
+    far = np.abs(rows[:, apart] - np.nanmedian(rows[:, apart], axis=0)) > agreement.within
+    both = (~silent[:, apart]).sum(axis=0) == 2
+    odd[:, apart] = np.where(both, ~silent[:, apart], far)
+    return odd

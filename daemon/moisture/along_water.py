@@ -252,17 +252,18 @@ class WaterAlong:
         liquid, back, held, trap, over = (np.empty_like(comes) for _ in range(5))
         vapor, in_trap = course.start, self.state.trap[i]
         came, in_trap_now = np.empty_like(vapor), np.empty_like(vapor)
-        given = zip(comes, besides, possible, pool / possible, stays, strict=True)
+        given = zip(comes, besides, possible, stays, strict=True)
         made = zip(liquid, back, held, trap, over, strict=True)
         for n, (now, made_now) in enumerate(zip(given, made, strict=True)):
-            comes_now, besides_now, possible_now, share, stays_now = now
+            comes_now, besides_now, possible_now, stays_now = now
             liquid_now, back_now, held_now, trap_now, over_now = made_now
             np.add(vapor, comes_now, out=came)
             np.minimum(came, possible_now, out=held_now)
             np.subtract(came, held_now, out=liquid_now)
             np.add(liquid_now, besides_now, out=liquid_now)
-            np.multiply(held_now, share, out=back_now)
-            np.subtract(pool, back_now, out=back_now)
+            np.divide(held_now, possible_now, out=back_now)
+            np.subtract(1.0, back_now, out=back_now)
+            np.multiply(pool, back_now, out=back_now)
             np.minimum(back_now, in_trap, out=back_now)
             if small:
                 np.minimum(back_now, possible_now - held_now, out=back_now)
