@@ -24,6 +24,8 @@ class LineFacts:
     relieved: bool  # a dryer or a regulator stands before the outlet
     flooded: Sequence[str] = ()  # traps on the way that are full
     unusable: Sequence[str] = ()  # inputs that cannot be believed, in words
+    warm: str = ""  # the last trap on the way, where it stands clearly warmer than the hose
+    warmer_k: float = 0.0  # by so much
     oil_at: str = ""  # when a blotter showed oil, and no clean one since
     water_at: str = ""
 
@@ -80,6 +82,12 @@ def _line_margin(found: Findings, units: Units, facts: LineFacts, margin: Interv
         found.add("care", f"{where}; dry enough begins at {wanted}.", _drier(facts, wide))
     else:
         found.add("dry enough", f"{where}; {wanted} are asked for.")
+        return
+    if facts.warm:
+        found.would_change.append(
+            f"Let the line cool: {facts.warm} is {show_difference(facts.warmer_k, units)} warmer "
+            "than the hose, so water goes past it as vapor and drops out later."
+        )
 
 
 def _drier(facts: LineFacts, wide: bool) -> str:

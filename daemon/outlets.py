@@ -23,6 +23,8 @@ from daemon.surface_verdict import SurfaceFacts, judge_holding, judge_surface
 from daemon.verdict import worst
 from daemon.views import Interval, Judgement, LineAirView, OutletView, SurfaceView, Verdict
 
+CLEARLY_WARMER_K = 3.0  # a trap than the hose: letting it cool is worth saying
+
 
 @dataclass(frozen=True, slots=True)
 class _Line:
@@ -181,6 +183,7 @@ class OutletViews:
 
     def _judged(self, state: CoreState, outlet: Described, line: _Line) -> Judgement:
         record = state.outlets[outlet.id]
+        warm, warmer_k = self._warm_trap(state, outlet, line)
         facts = LineFacts(
             margin_k=line.margin_k,
             dew_point_k=line.dew_point_k,
@@ -190,10 +193,22 @@ class OutletViews:
             relieved=outlet.relieved,
             flooded=self.air.flooded(state, outlet),
             unusable=line.faults,
+            warm=warm,
+            warmer_k=warmer_k,
             oil_at=self._clock_words(record.oil_us),
             water_at=self._clock_words(record.water_us),
         )
         return judge_line(self.site.units, outlet.profile, facts)
+
+    def _warm_trap(self, state: CoreState, outlet: Described, line: _Line) -> tuple[str, float]:
+        """The last trap before the outlet, and how much warmer than the hose, where it is clearly."""
+        along = outlet.way
+        row = along.path[len(along.path) - len(along.touched) - 1]
+        station = self.model.plan.stations[row]
+        if station.trap is None or station.dryer is not None:
+            return "", 0.0
+        warmer_k = float(np.median(state.model.conditions.temperature_k[row] - line.hose_k))
+        return (station.id, warmer_k) if warmer_k > CLEARLY_WARMER_K else ("", 0.0)
 
     # ---- the surface ----
 

@@ -235,6 +235,16 @@ def test_a_dead_sensor_costs_the_dew_point_only_certainty() -> None:
     assert other.p95 - other.p05 > 1.5 * (one.p95 - one.p05)
 
 
+def test_a_line_that_is_warmer_than_the_hose_is_to_cool() -> None:
+    """The last trap follows the pipe's end, 35 degC; hose and floor are at 18 to 21 degC."""
+    warm = gun_of(SHOP, pipe_end_temperature=308.15)
+    (said,) = [each for each in warm.air.judgement.would_change if "Let the line cool" in each]
+    assert said.startswith("Let the line cool: bowl is 1")
+    assert warm.verdict == "wait"
+    cool = gun_of(SHOP)
+    assert not any("Let the line cool" in each for each in cool.air.judgement.would_change)
+
+
 # ---- the surface ----
 
 

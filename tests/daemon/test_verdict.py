@@ -148,6 +148,17 @@ def test_people_with_us_gauges_read_their_own_units() -> None:
     )
 
 
+def test_a_warm_last_trap_asks_to_let_the_line_cool() -> None:
+    low = replace(LINE, margin_k=around(2.0), warm="bowl", warmer_k=9.0)
+    words = "so water goes past it as vapor and drops out later."
+    metric = judge_line("metric", SOLVENT, low).would_change
+    assert f"Let the line cool: bowl is 9 K warmer than the hose, {words}" in metric
+    us = judge_line("us", SOLVENT, low).would_change  # 9 K are 16.2 degF
+    assert f"Let the line cool: bowl is 16.2 degF warmer than the hose, {words}" in us
+    assert judge_line("metric", SOLVENT, replace(low, margin_k=around(12.0))).would_change == ()
+    assert not any("cool" in each for each in judge_line("us", SOLVENT, LINE).would_change)
+
+
 # ---- the surface ----
 
 
