@@ -14,7 +14,7 @@ from daemon import compose, logs
 from daemon.clock import MINUTE_US, SECOND_US, ScaledClock, SystemClock, to_datetime
 from daemon.due import interval_words, volume_words
 from daemon.errors import DriplegError
-from daemon.journal import Drain, Entry
+from daemon.journal import Drain, Entry, Undo
 from daemon.make_believe import MakeBelieveShop
 from daemon.site import hours as opening
 from daemon.site.reader import parse_site
@@ -38,6 +38,7 @@ class _ShopSampler:
 
     def __init__(self, sampler: Sampler, shop: MakeBelieveShop) -> None:
         self._sampler, self._shop = sampler, shop
+        self._let_out_kg: dict[int, float] = {}  # by a drain's number in the journal
         self._lock = threading.Lock()
 
     def sample(self, now_us: int, deadline_s: float) -> list[Reading]:
@@ -49,10 +50,15 @@ class _ShopSampler:
         return self._sampler.hung_buses()
 
     def drain(self, entry: Entry) -> None:
-        """What is recorded has really been done there."""
-        if isinstance(entry.body, Drain) and entry.body.outcome != "partly":
-            with self._lock:
-                self._shop.drain(entry.body.trap)
+        """What is recorded has really been done there, and what is undone never was."""
+        with self._lock:
+            match entry.body:
+                case Drain(trap=trap, outcome="emptied" | "empty"):
+                    held_kg = self._shop.traps_kg[trap]
+                    self._shop.drain(trap)
+                    self._let_out_kg[entry.seq] = held_kg - self._shop.traps_kg[trap]
+                case Undo(trap=trap, entry=seq):
+                    self._shop.traps_kg[trap] += self._let_out_kg.pop(seq, 0.0)
 
 
 def seconds(text: str) -> float:

@@ -201,7 +201,7 @@ class OutletViews:
         return judge_line(self.site.units, outlet.profile, facts)
 
     def _warm_trap(self, state: CoreState, outlet: Described, line: _Line) -> tuple[str, float]:
-        """The last trap before the outlet, and how much warmer than the hose, where it is clearly."""
+        """The last trap before the outlet, and how much warmer it is than the hose, if clearly."""
         along = outlet.way
         row = along.path[len(along.path) - len(along.touched) - 1]
         station = self.model.plan.stations[row]

@@ -543,6 +543,8 @@ class Shell:
             at_us = now_us if state is None else max(now_us, state.time_us + 1)
             recorded = self._store.add_entry(undo, at_us, now_us)
             self._without(drain, now_us)
+        if self.on_entry is not None:
+            self.on_entry(recorded.entry)
         return recorded
 
     def _without(self, drain: Entry, now_us: int) -> None:

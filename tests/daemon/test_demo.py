@@ -8,15 +8,20 @@ import signal
 import subprocess
 import sys
 from pathlib import Path
+from types import SimpleNamespace
+from typing import cast
 from zoneinfo import ZoneInfo
 
 import pytest
 
 from daemon.__main__ import main
 from daemon.clock import HOUR_US, to_datetime
-from daemon.demo import DemoError, broker, demo_site, seconds
+from daemon.demo import DemoError, _ShopSampler, broker, demo_site, seconds
+from daemon.journal import Drain, Entry, Undo
+from daemon.make_believe import MakeBelieveShop
 from daemon.site import hours as opening
 from daemon.site.types import Mqtt
+from sensors.sampling import Sampler
 from tests.daemon.broker import TIMEOUT_S, free_port
 from tests.daemon.shops import BEGUN_US
 from tests.tree import ROOT
@@ -167,3 +172,13 @@ def test_a_port_that_is_taken_is_told_and_nothing_runs_on(tmp_path: Path) -> Non
     assert err.count("\n") == 1
     assert first.returncode == 0
     assert list(tmp_path.iterdir()) == []
+
+
+def test_what_is_undone_was_never_drained_in_the_make_believe_shop() -> None:
+    held = {"tank": 0.6}
+    shop = SimpleNamespace(traps_kg=held, drain=lambda trap: held.update({trap: 0.02}))
+    sampler = _ShopSampler(cast(Sampler, None), cast(MakeBelieveShop, shop))
+    sampler.drain(Entry(1, 0, 0, Drain("tank", by="AM")))
+    assert held == {"tank": 0.02}
+    sampler.drain(Entry(2, 0, 0, Undo("tank", 1, "AM")))
+    assert held["tank"] == pytest.approx(0.6)
