@@ -33,6 +33,7 @@ from daemon.views import Interval
 from sensors.reading import Reading
 
 ML_PER_KG = 1e6 / WATER_KG_PER_M3
+RESIDUAL_DIGITS = 12  # of a share of all water: it is off at 1e-9
 REFERENCE_L_PER_KG = 1e3 / REFERENCE_DRY_AIR_KG_PER_M3
 TRAPS_HEADER = "time,trap,p05_ml,p50_ml,p95_ml,probability_due"
 OUTLETS_HEADER = (
@@ -251,7 +252,8 @@ def summarise(core: Core, result: Result, entries: Sequence[Entry]) -> dict[str,
             if each.flagged
         ],
         "parameters": parameters_table(core, result.state),
-        "balance_residual": float(ledger.residual(state.water).max()),
+        # below this it is the rounding of sums, another one in each order of adding
+        "balance_residual": round(float(ledger.residual(state.water).max()), RESIDUAL_DIGITS),
     }
 
 
