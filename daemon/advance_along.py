@@ -260,7 +260,8 @@ class _Watch:
     def _margins(self, row: int) -> int:
         """Look at the margins; this tick, if they are not as they were, else the end."""
         before = self.state.outlets
-        state = replace(self.state, model=self._after(row))
+        after = self.end if row == self.count - 1 else self.found.leaving_state(row)
+        state = replace(self.state, model=after)
         self.state = self.core.rules.margins.look(state)
         same = all(
             (each.line, each.surface) == (before[name].line, before[name].surface)

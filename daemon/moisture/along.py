@@ -57,6 +57,12 @@ class Stretch:
         water, ledger = self.water.at(row)
         return replace(self.dry_state(row), water=water, ledger=ledger)
 
+    def leaving_state(self, row: int) -> State:
+        """The same, but for traps, for what waits, and for the ledger, which are as before all."""
+        ratio, lately = self.water.leaving(row)
+        water = replace(self.before.water, leaving_ratio=ratio, carried=lately)
+        return replace(self.dry_state(row), water=water)
+
     def dry_state(self, row: int) -> State:
         """The same, but for the water and its ledger, which are as before all."""
         before, now, air = self.before, self.conditions, self.air
@@ -136,7 +142,8 @@ def stretch(model: Model, state: State, course: Course, switches: Switches) -> S
     rows = zip(plan.receivers, state.air.seen, strict=True)
     if any(receiver in now.measured and not seen for receiver, seen in rows):
         return None  # the first sight of a gauge
-    saturated, intake_ratio = along_air.saturation(now)
+    same = along_air.alike(plan, course.silent)
+    saturated, intake_ratio = along_air.saturation(now, same)
     drawn = on_s * model.delivered(parameters, now, intake_ratio)
     if (meter := plan.line.compressor.flow_meter) is not None:
         to_us = int(course.times_us[-1])

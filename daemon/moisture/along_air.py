@@ -19,6 +19,7 @@ import numpy.typing as npt
 from daemon.moisture import air, flow, hardy
 from daemon.moisture.along_saturation import saturated_mole_fraction
 from daemon.moisture.conditions import Conditions, Evaluation, HeldAlong
+from daemon.moisture.description import Fixed, Like, Measured
 from daemon.moisture.ensemble import Array
 from daemon.moisture.model import DUTY_LOGIT_SD, DUTY_MEMORY_S, Model, State
 from daemon.moisture.plan import Plan
@@ -159,15 +160,30 @@ def conditions(
     return (now, held) if evaluation.lapses.keys() == state.lapses.keys() else None
 
 
-def saturation(now: Conditions) -> tuple[Array, Array]:
+def alike(plan: Plan, silent: Mapping[str, bool]) -> list[bool]:
+    """Which stations' temperatures differ between members by a constant, as far as is said."""
+    found = [False] * len(plan.stations)
+    for i in plan.temperature_order:
+        match plan.stations[i].temperature:
+            case Measured(channel=channel):
+                found[i] = not silent.get(channel, True)
+            case Like(station=station):
+                found[i] = found[plan.index[station]]
+            case Fixed():
+                found[i] = True
+    return found
+
+
+def saturation(now: Conditions, wander_alike: Sequence[bool]) -> tuple[Array, Array]:
     """Every station's humidity ratio at saturation, and that of the air drawn in, at every tick.
 
     Station by station: what is worked on then stays near the processor.
     """
     saturated = np.empty(now.temperature_k.shape)
     intake = np.empty(0)
-    for i, (kelvin, pressure) in enumerate(zip(now.temperature_k, now.pressure_pa, strict=True)):
-        fraction = saturated_mole_fraction(kelvin, pressure)
+    stations = zip(now.temperature_k, now.pressure_pa, wander_alike, strict=True)
+    for i, (kelvin, pressure, same) in enumerate(stations):
+        fraction = saturated_mole_fraction(kelvin, pressure, same)
         saturated[i] = air.ratio_of_fraction(fraction)
         if i == 0:
             fraction = fraction * hardy.water_over_ice(kelvin) * now.relative_humidity

@@ -15,6 +15,7 @@ from math import factorial
 import numpy as np
 
 from daemon.moisture import hardy
+from daemon.moisture.conditions import COLDEST_K, HOTTEST_K
 from daemon.moisture.ensemble import Array
 
 ALIKE_K = 2e-11  # 1e-12 of a humidity ratio, and a hundred times what rounding makes of 300 K
@@ -24,14 +25,22 @@ STEEPEST_PER_K = 0.16
 SMALLEST = 1e-14  # of the interpolation's error, relative
 
 
-def saturated_mole_fraction(kelvin: Array, pressure_pa: Array) -> Array:
-    """`hardy.saturated_mole_fraction` of (ticks, members)."""
+def saturated_mole_fraction(kelvin: Array, pressure_pa: Array, alike: bool = False) -> Array:
+    """`hardy.saturated_mole_fraction` of (ticks, members).
+
+    `alike`: every member's temperature is the same but for its own constant, as long as none
+    stands at an end of the range.
+    """
     way = kelvin[:, 0] - kelvin[0, 0]
-    apart = kelvin - kelvin[0]
-    apart -= way[:, None]
-    if not (apart.max() <= ALIKE_K and apart.min() >= -ALIKE_K):
-        return hardy.saturated_mole_fraction(kelvin, pressure_pa)
     lowest, highest = float(way.min()), float(way.max())
+    if alike:
+        within = kelvin[way.argmin()].min() > COLDEST_K and kelvin[way.argmax()].max() < HOTTEST_K
+    else:
+        apart = kelvin - kelvin[0]
+        apart -= way[:, None]
+        within = bool(apart.max() <= ALIKE_K and apart.min() >= -ALIKE_K)
+    if not within:
+        return hardy.saturated_mole_fraction(kelvin, pressure_pa)
     half = (highest - lowest) / 2.0
     nodes = _nodes(half)
     if kelvin[0].min() + lowest > hardy.TRIPLE_POINT_K:

@@ -333,7 +333,7 @@ class WaterAlong:
         """The state and the ledger after one tick."""
         plan, state, ledger, until = self.plan, self.state, self.ledger, row + 1
         trap, waiting, spilled = state.trap.copy(), state.waiting.copy(), state.spilled.copy()
-        ratio, shed = state.leaving_ratio.copy(), ledger.shed.copy()
+        shed = ledger.shed.copy()
         for i, place in enumerate(self.places):
             if plan.stations[i].trap is not None:
                 caught = self._caught(place, until)
@@ -341,7 +341,7 @@ class WaterAlong:
                 if caught is not None:
                     shed[i] += caught
             waiting[i], spilled[i] = place.waiting.at(row), place.spilled.at(row)
-            self._leaving(i, row, ratio[i])
+        ratio, lately = self.leaving(row)
         vapor = np.array([self.vapor[n][row] for n in range(len(plan.receivers))])
         after = WaterState(
             trap,
@@ -349,7 +349,7 @@ class WaterAlong:
             spilled,
             vapor.reshape(state.vapor.shape),
             ratio,
-            self._carried(until),
+            lately,
         )
         booked = replace(
             ledger,
@@ -359,6 +359,14 @@ class WaterAlong:
             shed=shed,
         )
         return after, booked
+
+    def leaving(self, row: int) -> tuple[Array, carried.Carried]:
+        """The humidity ratios of the air that last left every station after one tick, and what
+        outlets carried lately."""
+        ratio = self.state.leaving_ratio.copy()
+        for i in range(len(self.places)):
+            self._leaving(i, row, ratio[i])
+        return ratio, self._carried(row + 1)
 
     def _leaving(self, i: int, row: int, ratio: Array) -> None:
         """The humidity ratio of the air that last left a station, in place."""

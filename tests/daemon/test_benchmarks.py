@@ -3,7 +3,8 @@
     python -m pytest -m bench -s tests/daemon/test_benchmarks.py
 
 Goals: a tick of 12 channels, 128 members and 10 stations, commit included, under 10 ms (median);
-the model's step alone under 0.5 ms; the daemon's process under 110 MB. Figures are printed; the
+the model's step alone under 0.5 ms; the daemon's process under 110 MB; a year replayed in blocks,
+read and without forecasts, in 150 s. Figures are printed; the
 tests fail only far beyond the goals, since machines differ and are shared.
 """
 
@@ -17,26 +18,38 @@ from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
 from time import perf_counter, thread_time
+from typing import Any
 
 import numpy as np
 import pytest
 
 from daemon.advance import Core
-from daemon.clock import HOUR_US
+from daemon.clock import DAY_US, HOUR_US, format_rfc3339
+from daemon.foreseer import Foreseen, Foreseer
 from daemon.moisture.model import Heard
+from daemon.recorded_arrays import read_record
 from daemon.recovery import Recovery
+from daemon.replay import replay
+from daemon.replay_along import replay_in_blocks
 from daemon.shell import Shell
 from daemon.state import Inputs
 from daemon.store.store import Store
 from tests.daemon.shops import BEGUN_US
 from tests.daemon.test_shell import HandClock, Played
-from tests.daemon.willow_yard import a_day, willow_yard
+from tests.daemon.willow_yard import (
+    a_day,
+    a_record,
+    daily_drains,
+    willow_yard,
+    working_willow_yard,
+)
 from tests.tree import ROOT
 
 pytestmark = pytest.mark.bench
 
 TICKS = 720  # two hours
 TICK_GOAL_S, STEP_GOAL_S, MEMORY_GOAL_MB = 0.010, 0.0005, 110.0
+MONTH_DAYS, WEEK_DAYS, YEAR_TICKS, YEAR_GOAL_S = 30, 7, 3_153_600, 150.0
 
 
 @dataclass
@@ -116,6 +129,62 @@ def test_the_parts_of_a_tick(tmp_path: Path) -> None:
     for each in (step, advance, commit):
         each.tell()
     assert step.median_s < 10 * STEP_GOAL_S
+
+
+def test_a_year_in_blocks(monkeypatch: pytest.MonkeyPatch) -> None:
+    """A month in blocks, from arrays, beside a week tick by tick: each told for a whole year."""
+    site = working_willow_yard()
+    record, entries = a_record(site, MONTH_DAYS), daily_drains(site, MONTH_DAYS)
+    forecasts = Times("a forecast")
+    forecast = Foreseer.forecast
+
+    def timed(self: Foreseer, *arguments: Any) -> Foreseen:
+        with forecasts.one():
+            return forecast(self, *arguments)
+
+    monkeypatch.setattr(Foreseer, "forecast", timed)
+    blocks = Times("in blocks")
+    with blocks.one():
+        found = replay_in_blocks(Core(site, hourly=False), record, entries)
+    foresight_s = sum(forecasts.clock_s)
+    until_us = BEGUN_US + WEEK_DAYS * DAY_US - 1
+    week = record.readings(BEGUN_US - 1, until_us)
+    plain = Times("tick by tick")
+    with plain.one():
+        ticks = replay(Core(site, hourly=False), week, [e for e in entries if e.at_us < until_us])
+    years = YEAR_TICKS / found.ticks, YEAR_TICKS / ticks.ticks
+    in_blocks_s = (blocks.clock_s[0] - foresight_s) * years[0]
+    print(
+        f"\na year in blocks: {in_blocks_s:.0f} s, and {foresight_s * years[0]:.0f} s of forecasts"
+    )
+    print(f"of the processor: {blocks.processor_s[0] * years[0]:.0f} s, forecasts included")
+    print(f"ticks taken: {dict(found.taken)}")
+    print(f"a year tick by tick, by a week of it: {plain.clock_s[0] * years[1]:.0f} s")
+    print(f"as often as quick: {plain.clock_s[0] * years[1] / (blocks.clock_s[0] * years[0]):.1f}")
+    assert in_blocks_s < 5 * YEAR_GOAL_S
+
+
+def test_reading_a_file_into_arrays(tmp_path: Path) -> None:
+    """A day of twelve channels as CSV."""
+    site = working_willow_yard()
+    record = a_record(site, 1)
+    path = tmp_path / "readings.csv"
+    units = {"temperature": "K", "relative_humidity": "%", "pressure": "Pa", "contact": ""}
+    with path.open("w") as file:
+        file.write("time,channel,value,unit\n")
+        for each in record.readings(BEGUN_US - 1, record.last_us):
+            unit = units[site.channels[each.channel].quantity]
+            value = each.value * 100.0 if unit == "%" else each.value
+            file.write(f"{format_rfc3339(each.time_us)},{each.channel},{value:.6g},{unit}\n")
+    reading = Times("a day of a file into arrays")
+    for _ in range(3):
+        with reading.one():
+            found, _ = read_record(site, path)
+    rows = sum(len(told.values) for told in found.channels.values())
+    print()
+    reading.tell()
+    print(f"a year of it: {reading.median_s / rows * 12 * YEAR_TICKS:.0f} s")
+    assert rows == 12 * 8640
 
 
 def test_what_the_daemon_weighs(tmp_path: Path) -> None:

@@ -12,12 +12,18 @@ import math
 import sys
 import threading
 import urllib.request
+from itertools import product
 from pathlib import Path
 
 import numpy as np
 
 from daemon import compose
-from daemon.clock import ScaledClock
+from daemon.clock import DAY_US, HOUR_US, MINUTE_US, ScaledClock
+from daemon.journal import Drain, Entry
+from daemon.moisture.along_air import Ints
+from daemon.moisture.ensemble import Array
+from daemon.record_arrays import Record, Told
+from daemon.site import hours as opening
 from daemon.site.reader import parse_site
 from daemon.site.types import Site
 from sensors.emulated.hardware import EmulatedHardware
@@ -197,6 +203,88 @@ def a_day(site: Site, ticks: int) -> list[tuple[int, list[Reading]]]:
         if not 7e5 <= gauge_pa <= 9e5:
             on = gauge_pa < 7e5
     return record
+
+
+WORKING_WEEK = "".join(f'{day} = ["07:00-17:00"]\n' for day in ("mon", "tue", "wed", "thu", "fri"))
+
+
+def working_willow_yard() -> Site:
+    """The same shop, working from Monday to Friday."""
+    return parse_site(SITE.replace('mon = ["06:00-18:00"]\n', WORKING_WEEK), "willow-yard.toml")
+
+
+def a_record(site: Site, days: int) -> Record:
+    """Days of work, evenings and nights with a leak, as arrays. Drawn from one seed."""
+    generator = np.random.default_rng(3)
+    ticks = days * DAY_US // PERIOD_US
+    times_us = BEGUN_US + np.arange(ticks) * PERIOD_US
+    hours = np.arange(ticks) / 360.0
+    week, day = hours / 168.0 * 2.0 * np.pi, (hours - 3.0) / 24.0 * 2.0 * np.pi
+    warm = 8.0 * np.sin(week / 26.0) + 3.0 * np.sin(day)
+    gauge_pa, running = _plant(site, times_us, generator)
+
+    def noise(sd: float) -> Array:
+        return generator.normal(0.0, sd, ticks)
+
+    values = {
+        "intake-air.temperature": 289.0 + warm + noise(0.02),
+        "intake-air.relative_humidity": 0.6 - 0.1 * np.sin(day) + 0.1 * np.sin(week) + noise(1e-3),
+        "intake-air.pressure": 101_000.0 + 900.0 * np.sin(week * 1.7) + noise(4.0),
+        "booth-air.temperature": 293.0 + 0.3 * warm + noise(0.02),
+        "booth-air.relative_humidity": 0.5 + noise(1e-3),
+        "booth-air.pressure": 101_000.0 + 900.0 * np.sin(week * 1.7) + noise(4.0),
+        "tank-gauge.pressure": gauge_pa + noise(300.0),
+        "far-gauge.pressure": gauge_pa - 2e4 + noise(300.0),
+        "skin.temperature": 291.0 + warm + 8.0 * _smoothed(running) + noise(0.05),
+        "riser-end.temperature": 290.0 + 0.9 * warm + noise(0.05),
+        "main-end.temperature": 289.5 + 0.9 * warm + noise(0.05),
+        "motor.contact": running,
+    }
+    return Record(
+        {
+            name: Told(
+                times_us, np.rint(each / site.channels[name].step) * site.channels[name].step
+            )
+            for name, each in values.items()
+        }
+    )
+
+
+def _plant(site: Site, times_us: Ints, generator: np.random.Generator) -> tuple[Array, Array]:
+    """Gauge pressure, Pa, and whether the compressor runs, at every tick."""
+    gauge_pa, running = np.empty(len(times_us)), np.empty(len(times_us))
+    pressure_pa, on = 8e5, 1.0
+    bursts = generator.random(len(times_us) // 30 + 1) < 0.6  # of five minutes each
+    for number, at_us in enumerate(times_us.tolist()):
+        gauge_pa[number], running[number] = pressure_pa, on
+        uses = 0.04
+        if number % 6 == 0:
+            is_open = opening.is_open(site.hours, site.timezone, at_us)
+        if is_open and bursts[number // 30]:
+            uses = 0.7
+        pressure_pa += (on - uses) * 600.0 / 60.0 * 10.0 / 500.0 * 1e5
+        if not 7e5 <= pressure_pa <= 9e5:
+            on = float(pressure_pa < 7e5)
+    return gauge_pa, running
+
+
+def _smoothed(running: Array) -> Array:
+    """The duty with a lag of half an hour."""
+    found, so_far = np.empty_like(running), 0.0
+    for number, on in enumerate(running.tolist()):
+        so_far += (on - so_far) / 180.0
+        found[number] = so_far
+    return found
+
+
+def daily_drains(site: Site, days: int) -> list[Entry]:
+    """Every trap, each working day at half past four."""
+    first_us = BEGUN_US - BEGUN_US % DAY_US + 16 * HOUR_US + 30 * MINUTE_US
+    at_us = [first_us + day * DAY_US for day in range(days) if day % 7 < 5]
+    return [
+        Entry(number, when_us, when_us, Drain(trap))
+        for number, (when_us, trap) in enumerate(product(at_us, site.traps), 1)
+    ]
 
 
 def resident_mb() -> dict[str, float]:
