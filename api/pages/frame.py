@@ -17,8 +17,11 @@ the forms are ordinary ones:
 
 - an element with `data-fresh` and an `id` is replaced by the same element of the page as it is
   now, every 15 s and after each write, unless somebody is typing in it;
-- a `<form data-send="/api/v1/..." data-body="drain">` is sent as JSON by `send(path, body)`, kept
-  when there is no network and sent once; the answer goes to the `<output>` in it.
+- a `<form data-send="/api/v1/...">` is sent as JSON by `send(path, body)`, kept when there is no
+  network and sent once; its fields' names are the body's. `data-number` on a field makes a number
+  of it, `data-with="volume"` leaves it out where that one is empty; `data-keyed` on the form adds
+  an idempotency `key`, `data-dated` an `at` where it comes late. The answer goes to the `<output>`
+  in it or to the one that `data-says` names: `said` of the answer, else `data-done`.
 
 Policy: no inline script, no `style=""`, no other host; drawings are inline SVG with attributes.
 """

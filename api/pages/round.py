@@ -5,8 +5,9 @@ from __future__ import annotations
 import secrets
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import Annotated
 
-from fastapi import APIRouter
+from fastapi import APIRouter, Path
 from pydantic import ValidationError
 from starlette.responses import HTMLResponse, RedirectResponse, Response
 
@@ -62,7 +63,9 @@ def drained(trap: str, fields: Fields, daemon: TheDaemon) -> HTMLResponse:
 
 
 @router.post("/round/{trap}/undo/{seq}")
-def undo(trap: str, seq: int, fields: Fields, daemon: TheDaemon) -> HTMLResponse:
+def undo(
+    trap: str, seq: Annotated[int, Path(ge=1, le=2**53)], fields: Fields, daemon: TheDaemon
+) -> HTMLResponse:
     """A drain is taken back, from a browser without script."""
     if not is_fresh(fields):
         return _page(daemon, Told(trap, STALE, True))

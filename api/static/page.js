@@ -7,7 +7,7 @@ const RETRY_MS = 5000;
 const BY = "dripleg.by";
 const TOLD_MS = 600000; // so long an answer stays on the page
 const net = document.getElementById("net");
-let lostSince = null;
+let isLost = false;
 
 // ---- forms ----
 
@@ -71,7 +71,9 @@ document.addEventListener("submit", async (event) => {
   if (body.by) rememberBy(body.by);
   form.dataset.busy = "";
   say(form, "Sending ...");
-  const outcome = await send(form.dataset.send, body, labelOf(form, button));
+  const outcome = await send(
+    form.dataset.send, body, labelOf(form, button), form.dataset.dated !== undefined,
+  );
   delete form.dataset.busy;
   told(form, outcome);
   if (outcome.taken) {
@@ -136,11 +138,11 @@ async function refresh() {
     if (!response.ok) throw new Error(String(response.status));
     text = await response.text();
   } catch {
-    lostSince ??= Date.now();
+    isLost = true;
     tellNet();
     return;
   }
-  lostSince = null;
+  isLost = false;
   const page = new DOMParser().parseFromString(text, "text/html");
   for (const old of document.querySelectorAll("[data-fresh]")) {
     const made = page.getElementById(old.id);
@@ -197,9 +199,9 @@ function readClock() {
 function tellNet() {
   const waiting = kept().filter((tap) => tap.tries > 0);
   const parts = [];
-  if (lostSince !== null) {
-    const since = new Date(lostSince).toTimeString().slice(0, 5);
-    parts.push(paragraph(`No connection since ${since}: the page shows what was so then.`));
+  if (isLost) {
+    const then = document.getElementById("made").dataset.time;
+    parts.push(paragraph(`No connection. The page shows what was so at ${then}.`));
   }
   for (const tap of waiting) {
     const line = paragraph(`Kept on this phone, to be sent once: ${tap.label || tap.path}. ${tap.why || ""} `);

@@ -51,9 +51,10 @@ export function forget(id) {
   change(id, null);
 }
 
-// Send a body as JSON. Gives {taken, answer}, or {refused: words}, or {kept: why}.
-export async function send(path, body, label = "") {
-  const tap = { id: newKey(), path, body, label, at: Date.now(), tries: 0 };
+// Send a body as JSON. Gives {taken, answer}, or {refused: words}, or {kept: why}. One that is
+// `dated` says when it was, in `at`, where it comes late.
+export async function send(path, body, label = "", dated = false) {
+  const tap = { id: newKey(), path, body, label, dated, at: Date.now(), tries: 0 };
   keep([...kept(), tap]);
   return attempt(tap);
 }
@@ -92,7 +93,7 @@ async function attempt(tap) {
 
 async function post(tap, again) {
   const body = { ...tap.body };
-  if (body.key && Date.now() - tap.at > LATE_MS) {
+  if (tap.dated && Date.now() - tap.at > LATE_MS) {
     body.at = new Date(tap.at + (tap.offset ?? clockOffsetMs)).toISOString();
   }
   let response;
@@ -108,7 +109,8 @@ async function post(tap, again) {
     return { kept: "there is no connection" };
   }
   const answer = await response.json().catch(() => ({}));
-  if (response.ok || (again && response.status === 409)) {
+  const done = again && answer.type === "/problems/nothing-to-acknowledge"; // by the first try
+  if (response.ok || done) {
     forget(tap.id);
     return { taken: true, answer };
   }

@@ -7,7 +7,7 @@ import re
 
 import pytest
 
-from daemon.journal import Confirm, Drain, Undo
+from daemon.journal import Confirm, Drain, Shelve, Undo
 from tests.browser.person import PHONE, Person
 from tests.browser.shop import Shop
 
@@ -171,6 +171,45 @@ def test_an_answer_that_was_lost_makes_no_second_drain(person: Person, shop: Sho
     person.waits_for(lambda: person.read("#net") == "")
     assert shop.wire.lost >= 1
     assert len(shop.entries()) == 1
+
+
+def test_a_tap_that_comes_late_says_when_it_was(person: Person, shop: Shop) -> None:
+    """A minute without network: the drain is dated by the daemon's clock, not by the phone's."""
+    tapped_us = shop.clock.wall_us
+    person.open("/round")
+    shop.wire.cut()
+    person.taps("#drained-tank")
+    person.waits_to_read("#said-tank", "Kept on this phone")
+    age = "const list = JSON.parse(localStorage.getItem('dripleg.kept')); list[0].at -= 60000;"
+    person.browser.execute_script(
+        age + "localStorage.setItem('dripleg.kept', JSON.stringify(list))"
+    )
+    shop.clock.wall_us += 60_000_000
+    shop.tick(6)
+    shop.wire.fate = "carries"
+    person.is_back_online()
+    person.waits_for(lambda: len(shop.entries()) == 1)
+    (entry,) = shop.entries()
+    # the page learned the daemon's time when it was opened, a minute after that tap of a minute ago
+    assert entry.at_us == pytest.approx(tapped_us - 60_000_000, abs=20_000_000)
+
+
+def test_an_alarm_is_put_off_also_when_the_network_comes_back_late(
+    person: Person, shop: Shop
+) -> None:
+    person.open("/")
+    shop.wire.cut()
+    person.taps("#off-button-tank-drain-due")
+    person.waits_to_read("#said-tank-drain-due", "Kept on this phone")
+    age = "const list = JSON.parse(localStorage.getItem('dripleg.kept')); list[0].at -= 60000;"
+    person.browser.execute_script(
+        age + "localStorage.setItem('dripleg.kept', JSON.stringify(list))"
+    )
+    shop.wire.fate = "carries"
+    person.is_back_online()
+    person.waits_to_read("#said-tank-drain-due", "Put off.")
+    (entry,) = shop.entries()
+    assert entry.body == Shelve("tank-drain-due", 1800.0)
 
 
 def test_two_taps_in_a_hurry_are_one(person: Person, shop: Shop) -> None:
