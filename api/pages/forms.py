@@ -9,6 +9,7 @@ only somebody who can read our pages knows. Writing needs the same key as the AP
 from __future__ import annotations
 
 import math
+import re
 import secrets
 from collections.abc import Mapping
 from typing import Annotated
@@ -23,6 +24,7 @@ from api.validation import points_of
 
 TOKEN = secrets.token_urlsafe(16)  # of this process: a page from before a restart is out of date
 MOST_FIELDS = 20
+_FIGURE = re.compile(r"[+-]?([0-9]+\.?[0-9]*|\.[0-9]+)")  # as the script has it
 STALE = "Not recorded: this page was from before dripleg's last start. Look again, and tap again."
 
 
@@ -53,13 +55,10 @@ class NumberError(ValueError):
 
 def number(text: str) -> float:
     """A figure as people type it, with a point or a comma; NumberError says what to write."""
-    try:
-        figure = float(text.replace(",", "."))
-    except ValueError:
-        figure = math.nan
-    if not math.isfinite(figure):
+    figure = text.replace(",", ".")
+    if not _FIGURE.fullmatch(figure) or not math.isfinite(float(figure)):
         raise NumberError(f'"{text[:40]}" is not a number. Write it like 380 or 12.5.')
-    return figure
+    return float(figure)
 
 
 def words_of(error: Exception) -> str:

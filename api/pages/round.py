@@ -115,6 +115,7 @@ def _page(daemon: Running, told: Told | None = None, status: int = 200) -> HTMLR
         drain=[cards[view.trap] for view in made.drain],
         leave=[cards[view.trap] for view in made.leave],
         told=told or Told(),
+        names=list(cards),
         units=UNITS[daemon.site.units],
         looks=LOOKS,
         new_key=lambda: f"form-{secrets.token_hex(8)}",

@@ -112,6 +112,7 @@ def _page(
     surface_k: float | None = None,
 ) -> HTMLResponse:
     told = told or Told()
+    cards = _cards(daemon, told, surface_k)
     name, unit = SPREAD[daemon.site.units]
     return page(
         daemon,
@@ -119,7 +120,8 @@ def _page(
         here="/spray",
         title="Dry enough to spray?",
         status=status,
-        cards=_cards(daemon, told, surface_k),
+        cards=cards,
+        names=[card.view.outlet for card in cards],
         told=told,
         spread_name=name,
         spread_unit=unit,

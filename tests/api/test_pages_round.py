@@ -237,6 +237,8 @@ def test_the_same_form_twice_records_one_drain(running: FakeRunning, client: Cli
         ({"volume": "a mug", "unit": "ml"}, '"a mug" is not a number. Write it like 380 or 12.5.'),
         ({"volume": "-3", "unit": "ml"}, "a volume is 0 or more"),
         ({"volume": "nan", "unit": "ml"}, '"nan" is not a number'),
+        ({"volume": "1_0", "unit": "ml"}, '"1_0" is not a number'),
+        ({"volume": "9" * 400, "unit": "ml"}, "is not a number"),
         ({"by": "A" * 41}, "at most 40 characters are kept here"),
         ({"look": "purple"}, "it must be one of 'clear', 'milky', 'oily' or 'rusty'"),
     ],
@@ -254,6 +256,23 @@ def test_what_cannot_be_is_refused_with_a_helpful_word(
     assert running.journal == []
     if "volume" in typed:  # what was typed is there to be corrected
         assert f'value="{typed["volume"]}"' in answer.text
+
+
+def test_a_trap_that_is_not_there_is_said_on_the_page(client: Client) -> None:
+    fields = fields_of(client.get("/round").text, "drain-tank")
+    answer = client.post("/round/barrel/drained", data=fields, headers=OURS)
+    assert answer.status_code == 422
+    assert 'there is no trap "barrel"; those of this site are: tank, riser' in words_of(answer.text)
+
+
+@pytest.mark.parametrize("seq", ["99999999999999999999", "-1", "x"])
+def test_an_undo_of_no_number_is_a_page_too(client: Client, seq: str) -> None:
+    fields = fields_of(client.get("/round").text, "drain-tank")
+    answer = client.post(
+        f"/round/tank/undo/{seq}", data=fields, headers={**OURS, "accept": "text/html"}
+    )
+    assert answer.status_code == 422
+    assert "The request cannot be taken" in answer.text
 
 
 def test_a_drain_is_taken_back_with_a_form(running: FakeRunning, client: Client) -> None:

@@ -192,6 +192,7 @@ def test_an_unknown_outlet_is_said_on_a_page(client: Client) -> None:
     fields = fields_of(client.get("/spray").text, "blotter-spray-gun")
     answer = client.post("/spray/barrel/blotter", data={**fields, "result": "clean"}, headers=OURS)
     assert answer.status_code == 422
+    assert 'there is no outlet "barrel"; those of this site are: spray-gun' in words_of(answer.text)
 
 
 # ---- the drawing ----
