@@ -87,7 +87,7 @@ class MakeBelieveShop:
 
     def _panel_k(self) -> float:
         """A panel is brought in cold every two hours, and warms up with half an hour's lag."""
-        return self._booth_k() - 9.0 * math.exp(-(self._hours() % 2.0) / 0.5)
+        return self._booth_k() - 9.0 * math.exp(-((self._hours() + 1.2) % 2.0) / 0.5)
 
     def _used_m3_s(self) -> float:
         """At work somebody sprays for five minutes out of eight."""

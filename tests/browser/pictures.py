@@ -47,7 +47,7 @@ FOLDER = ROOT / "deploy" / "pictures"
 MONDAY_US = parse_rfc3339("2026-06-01T07:00:00Z")
 LOOK_US = parse_rfc3339("2026-06-05T13:40:00Z")
 PAGES = {"round": 1250, "spray": 1500, "week": 1500, "line": 1500}  # heights, CSS pixels
-COLORS = 48
+COLORS = 96
 
 
 class _Clock:
