@@ -10,9 +10,10 @@ from api.pages.assets import ASSETS
 from tests.api.client import Client
 
 FILES = sorted(ASSETS)
+PAGES = ("/", "/round", "/spray", "/spray?outlet=spray-gun&surface=18.5")
 
 
-@pytest.mark.parametrize("path", ["/", *(f"/static/{name}" for name in FILES)])
+@pytest.mark.parametrize("path", [*PAGES, *(f"/static/{name}" for name in FILES)])
 def test_nothing_is_fetched_from_another_host(client: Client, path: str) -> None:
     text = client.get(path).text.replace("http://www.w3.org/2000/svg", "")  # a name, not an address
     assert not re.search(r"https?:|url\(|@import|[\"']//", text)
@@ -25,8 +26,11 @@ def test_a_page_may_load_only_its_own_files(client: Client) -> None:
     assert set(kinds.values()) == {"'self'", "'none'"}
 
 
-def test_no_page_has_script_or_style_in_it_that_the_policy_refuses(client: Client) -> None:
-    page = client.get("/").text
+@pytest.mark.parametrize("path", PAGES)
+def test_no_page_has_script_or_style_in_it_that_the_policy_refuses(
+    client: Client, path: str
+) -> None:
+    page = client.get(path).text
     assert re.findall(r"<script[^>]*>", page) == ['<script type="module" src="/static/page.js">']
     assert "style=" not in page
     assert not re.search(r"\son\w+=", page)
@@ -59,3 +63,25 @@ def test_a_program_is_told_of_a_problem_in_json(client: Client) -> None:
     assert client.get("/nowhere").headers["content-type"] == "application/problem+json"
     answer = client.get("/api/v1/nowhere", headers={"accept": "text/html"})
     assert answer.headers["content-type"] == "application/problem+json"
+
+
+@pytest.mark.parametrize("path", PAGES)
+def test_a_page_has_no_id_twice_and_a_label_for_every_field(client: Client, path: str) -> None:
+    page = client.get(path).text
+    ids = re.findall(r'\sid="([^"]+)"', page)
+    assert len(ids) == len(set(ids))
+    labelled = set(re.findall(r'<label for="([^"]+)"', page))
+    fields = re.findall(r"<(?:input|select)\b[^>]*>", page)
+    shown = [field for field in fields if 'type="hidden"' not in field]
+    for field in shown:
+        found = re.search(r'\sid="([^"]+)"', field)
+        assert found is not None, field
+        assert found[1] in labelled
+
+
+@pytest.mark.parametrize("path", PAGES)
+def test_a_page_with_its_style_and_script_is_small(client: Client, path: str) -> None:
+    files = ("style.css", "page.js", "send.js")
+    size = len(client.get(path).content)
+    size += sum(len(client.get(f"/static/{name}").content) for name in files)
+    assert size < 60_000
