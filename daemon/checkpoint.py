@@ -33,6 +33,7 @@ from daemon.moisture.outlook import Pattern, Typical
 from daemon.moisture.plant import Figure, Phase, Plant, Sample
 from daemon.moisture.power import Powered
 from daemon.moisture.week import Errors, Week
+from daemon.older_states import completed
 from daemon.outlet_record import GaugeHeld, OutletRecord
 from daemon.reminders import Reminder, Reminders, Turn
 from daemon.state import ChannelRecord, CoreState, HourTotals, Sensed, TrapRecord
@@ -152,7 +153,7 @@ def _rebuild(value: Any, raw: memoryview) -> Any:
         return found.reshape(shape).copy()
     if "class" in value:
         inner = {name: _rebuild(each, raw) for name, each in value["fields"].items()}
-        return _CLASSES[value["class"]](**inner)
+        return _CLASSES[value["class"]](**completed(value["class"], inner))
     if "set" in value:
         return frozenset(value["set"])
     if "tuple" in value:
