@@ -1,13 +1,13 @@
 // What every page does: send forms in the background, keep what cannot be sent, stay fresh without
 // losing what is typed. Without this script the forms are ordinary ones and the page stands still.
-import { flush, forget, kept, newKey, send, serverSays, whenKeptChanges } from "./send.js";
+import { flush, forget, isKept, kept, newKey, send, serverSays, whenKeptChanges } from "./send.js";
 
 const FRESH_MS = 15000;
 const RETRY_MS = 5000;
 const BY = "dripleg.by";
 const TOLD_MS = 600000; // so long an answer stays on the page
 const net = document.getElementById("net");
-let isLost = false;
+let trouble = ""; // why the page is not fresh
 
 // ---- forms ----
 
@@ -69,6 +69,10 @@ document.addEventListener("submit", async (event) => {
     return;
   }
   if (body.by) rememberBy(body.by);
+  if (isKept(form.dataset.send, body)) {
+    say(form, "It is kept on this phone already. It is sent by itself, once.", true);
+    return;
+  }
   form.dataset.busy = "";
   say(form, "Sending ...");
   const outcome = await send(
@@ -80,7 +84,7 @@ document.addEventListener("submit", async (event) => {
     form.reset();
     fillBy(document);
     const said = outputOf(form)?.id;
-    await refresh();
+    await refresh(form);
     document.getElementById(said)?.scrollIntoView({ block: "nearest" });
   }
 });
@@ -131,22 +135,26 @@ document.addEventListener("input", (event) => event.target.removeAttribute?.("ar
 
 // ---- staying fresh ----
 
-async function refresh() {
+// `sent` was just sent: that somebody is still in one of its fields keeps nothing from being renewed.
+async function refresh(sent = null) {
   let text;
   try {
     const response = await fetch(location.href, { signal: AbortSignal.timeout?.(8000) });
-    if (!response.ok) throw new Error(String(response.status));
+    if (response.status >= 500) throw new Error(String(response.status));
+    if (response.status === 401 || response.status === 403) trouble = "This phone may no longer read.";
+    if (!response.ok) return; // what was asked for cannot be: the page says so already
     text = await response.text();
   } catch {
-    isLost = true;
-    tellNet();
+    trouble = "No connection.";
     return;
+  } finally {
+    tellNet();
   }
-  isLost = false;
+  trouble = "";
   const page = new DOMParser().parseFromString(text, "text/html");
   for (const old of document.querySelectorAll("[data-fresh]")) {
     const made = page.getElementById(old.id);
-    if (!made || isTyping(old) || asSent(made) === shown.get(old.id)) continue;
+    if (!made || isTyping(old, sent) || asSent(made) === shown.get(old.id)) continue;
     shown.set(old.id, asSent(made));
     renew(old, made);
   }
@@ -161,9 +169,10 @@ function asSent(part) {
   return part.outerHTML.replace(/value="form-[0-9a-f]+"/g, "");
 }
 
-function isTyping(part) {
+function isTyping(part, sent) {
   const field = document.activeElement;
-  return part.contains(field) && field.matches("input:not([type=radio]), select, textarea");
+  if (!part.contains(field) || (sent && field.form === sent)) return false;
+  return field.matches("input:not([type=radio]), select, textarea");
 }
 
 // What somebody typed, chose, opened or is told stays, by the ids of the elements.
@@ -199,9 +208,9 @@ function readClock() {
 function tellNet() {
   const waiting = kept().filter((tap) => tap.tries > 0);
   const parts = [];
-  if (isLost) {
+  if (trouble) {
     const then = document.getElementById("made").dataset.time;
-    parts.push(paragraph(`No connection. The page shows what was so at ${then}.`));
+    parts.push(paragraph(`${trouble} The page shows what was so at ${then}.`));
   }
   for (const tap of waiting) {
     const line = paragraph(`Kept on this phone, to be sent once: ${tap.label || tap.path}. ${tap.why || ""} `);

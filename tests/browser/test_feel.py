@@ -73,3 +73,16 @@ def test_a_screen_reader_finds_its_way(visitor: Person, path: str) -> None:
     assert told >= 1
     assert levels[0] == 1
     assert all(after - before <= 1 for before, after in pairwise(levels))
+
+
+def test_a_page_that_has_lost_its_connection_says_so_until_it_is_back(
+    person: Person, shop: Shop
+) -> None:
+    look = "document.dispatchEvent(new Event('visibilitychange'))"
+    person.open("/spray")
+    shop.wire.cut()
+    person.browser.execute_script(look)
+    person.waits_to_read("#net", "No connection. The page shows what was so at 07:10.")
+    shop.wire.fate = "carries"
+    person.browser.execute_script(look)
+    person.waits_for(lambda: person.read("#net") == "")

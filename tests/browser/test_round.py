@@ -220,6 +220,32 @@ def test_two_taps_in_a_hurry_are_one(person: Person, shop: Shop) -> None:
     assert len(shop.entries()) == 1
 
 
+def test_the_enter_key_sends_and_the_undo_is_there_at_once(person: Person, shop: Shop) -> None:
+    """A phone's keyboard has a key that sends; the field keeps the focus."""
+    person.open("/round")
+    person.types("#volume-tank", "630\n")
+    person.waits_to_read("#said-tank", "you measured 630 ml")
+    person.waits_for(lambda: person.sees("#undo-button-tank"))
+    assert "Nothing to drain" in person.read("#line")
+
+
+def test_the_same_tap_again_without_a_network_is_one_tap(person: Person, shop: Shop) -> None:
+    person.open("/round")
+    shop.wire.cut()
+    person.types("#volume-tank", "630")
+    person.taps("#drained-tank")
+    person.waits_to_read("#said-tank", "Kept on this phone")
+    person.taps("#drained-tank")
+    person.waits_to_read("#said-tank", "kept on this phone already")
+    person.taps("#volume-riser")  # another trap is another tap
+    person.taps("#drained-riser")
+    person.waits_to_read("#said-riser", "Kept on this phone")
+    shop.wire.fate = "carries"
+    person.is_back_online()
+    person.waits_for(lambda: person.read("#net") == "")
+    assert [each.body.trap for each in shop.entries()] == ["tank", "riser"]  # type: ignore[union-attr]
+
+
 def test_it_works_without_script(person: Person, shop: Shop) -> None:
     person.without_script()
     person.open("/round")

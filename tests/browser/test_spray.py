@@ -68,7 +68,9 @@ def test_what_is_no_surface_is_refused_with_a_helpful_word(
     person.taps("#surface-button-spray-gun")
     person.waits_to_read("#surface-said-spray-gun", words)
     assert person.find("#surface-c-spray-gun").get_attribute("value") == typed
-    person.complaints()  # the browser notes the status; that is all
+    person.browser.execute_script("document.dispatchEvent(new Event('visibilitychange'))")
+    person.waits_for(lambda: person.browser.execute_script("return performance.now() > 1500"))
+    assert person.read("#net") == ""  # a refused question is no lost connection
 
 
 def test_a_gauge_s_reading_is_recorded_and_counts(person: Person, shop: Shop, width: int) -> None:
