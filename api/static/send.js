@@ -51,6 +51,13 @@ export function forget(id) {
   change(id, null);
 }
 
+// Whether the same is waiting already, but for its key: whoever taps again while the network is gone
+// means the same tap.
+export function isKept(path, body) {
+  const said = ({ key, ...rest }) => JSON.stringify(rest);
+  return kept().some((tap) => tap.path === path && said(tap.body) === said(body));
+}
+
 // Send a body as JSON. Gives {taken, answer}, or {refused: words}, or {kept: why}. One that is
 // `dated` says when it was, in `at`, where it comes late.
 export async function send(path, body, label = "", dated = false) {
@@ -114,7 +121,7 @@ async function post(tap, again) {
     forget(tap.id);
     return { taken: true, answer };
   }
-  if (response.status >= 500 || response.status === 401 || response.status === 403) {
+  if (response.status >= 500 || [401, 403, 429].includes(response.status)) {
     change(tap.id, { why: words(answer), offset: tap.offset ?? clockOffsetMs });
     return { kept: words(answer) };
   }
