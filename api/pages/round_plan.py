@@ -104,11 +104,12 @@ def _line(
 
 
 def _next(site: Site, leave: Sequence[TrapView], now_us: int) -> str:
-    """What comes next, never as leave to wait for a tank."""
+    """What comes next. Of a tank its calendar alone: a volume would read as leave to wait."""
+    tanks = receivers(site)
     coming = [
         (time_us, view.trap)
         for view in leave
-        for time_us in (view.due_at_us, view.due_p50_us)
+        for time_us in (view.due_at_us, None if view.trap in tanks else view.due_p50_us)
         if time_us is not None
     ]
     if not coming:

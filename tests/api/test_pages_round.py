@@ -84,6 +84,13 @@ def test_what_falls_due_before_the_shift_ends_belongs_to_the_round() -> None:
     assert line(later) == "Nothing to drain before you leave. Next: riser, 18:00."
 
 
+def test_the_first_line_gives_no_leave_to_wait_for_a_tank() -> None:
+    thursday_us = NOW_US + 2 * DAY_US
+    assert line(idle(tank_view(), thursday_us)) == "Nothing to drain before you leave."
+    by_calendar = replace(idle(tank_view(), thursday_us), due_at_us=NOW_US + DAY_US)
+    assert line(by_calendar).endswith("Next: tank, tomorrow 09:00.")
+
+
 def test_a_full_trap_does_not_wait_for_the_shift_s_end() -> None:
     said = line(due(riser_view()), flooded=("riser",))
     assert said.startswith("1 to drain, riser, now (riser is full): about 0.2 L")
