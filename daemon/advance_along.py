@@ -14,6 +14,7 @@ import numpy as np
 
 from daemon.advance import Core
 from daemon.alarms import Transition
+from daemon.drain_alarms import STUCK_LIMIT
 from daemon.falls_along import gauges_after, may_fall
 from daemon.followed import Followed
 from daemon.judged_along import first
@@ -21,9 +22,10 @@ from daemon.looks_along import Looks, changes
 from daemon.moisture import dew_sensors, floats
 from daemon.moisture.along import Stretch, fits, stretch
 from daemon.moisture.along_air import Ints
+from daemon.moisture.along_drains import let_down_from
 from daemon.moisture.contact import ContactState
 from daemon.moisture.description import Measured, Source
-from daemon.moisture.drains import EMPTY_PA
+from daemon.moisture.drains import EMPTY_PA, chance_stuck
 from daemon.moisture.flow import PumpWatch
 from daemon.moisture.model import Moved, State
 from daemon.moisture.outlook import SAMPLED_EVERY_US
@@ -71,7 +73,7 @@ class AdvanceAlong:
         without journal entries.
         """
         done = Along(state)
-        if not self.fits or len(times_us) < LEAST_TICKS or self._let_down(state):
+        if not self.fits or len(times_us) < LEAST_TICKS:
             return done
         if state.time_us < SET_FROM_US <= times_us[-1]:
             return done
@@ -88,15 +90,16 @@ class AdvanceAlong:
             done.state = self._remembered(done.state, ticks, done.ticks)
         return done
 
-    def _let_down(self, state: CoreState) -> bool:
-        """Whether a tank with a petcock stands without pressure: that has a course of its own."""
-        return any(since >= 0 for since in state.model.fittings.empty_since_us)
-
     def _usual(self, ticks: Ticks) -> int:
         """How many of the ticks are as usual, as far as readings tell."""
-        good = ticks.good
-        for i in self.core.model.fittings.tanks:
-            good = min(good, _first_low(ticks, self.core.model.plan.stations[i].pressure))
+        fittings, fitted = self.core.model.fittings, ticks.before.model.fittings
+        good = min(ticks.good, let_down_from(fitted, ticks.times_us))
+        for i, since_us in zip(fittings.tanks, fitted.empty_since_us, strict=True):
+            pressure = self.core.model.plan.stations[i].pressure
+            good = min(good, _first_other(ticks, pressure, since_us >= 0))
+        for record in ticks.before.drains.drains.values():
+            stuck = [chance_stuck(record.seen_us, at_us) >= STUCK_LIMIT for at_us in ticks.ends_us]
+            good = 0 if stuck[0] != stuck[1] else good  # perhaps once in a year
         return min(good, may_fall(self.core.drains, ticks))
 
     def _count(self, times_us: Ints) -> int:
@@ -131,12 +134,17 @@ class AdvanceAlong:
         )
 
 
-def _first_low(ticks: Ticks, pressure: Source) -> int:
-    """The first tick in which a tank may stand without pressure, by its gauge."""
-    if not isinstance(pressure, Measured) or pressure.channel not in ticks.course.values:
-        return ticks.good
-    least = EMPTY_PA if pressure.gauge else EMPTY_PA + HIGHEST_BAROMETER_PA
-    return first(ticks.course.values[pressure.channel] < least, ticks.good)
+def _first_other(ticks: Ticks, pressure: Source, was_empty: bool) -> int:
+    """The first tick in which a tank may not stand with or without pressure as before."""
+    silent = not isinstance(pressure, Measured) or ticks.course.silent.get(pressure.channel, True)
+    if silent or not isinstance(pressure, Measured):
+        return 0 if was_empty else ticks.good
+    values = ticks.course.values[pressure.channel]
+    if pressure.gauge:
+        return first((values < EMPTY_PA) != was_empty, ticks.good)
+    if was_empty:
+        return 0  # not by the gauge alone
+    return first(values < EMPTY_PA + HIGHEST_BAROMETER_PA, ticks.good)
 
 
 @dataclass(frozen=True, slots=True)
@@ -243,10 +251,13 @@ class _Watch:
 
     def _happened(self, row: int) -> int:
         """What is followed beside the water; this tick, if an alarm hangs on it, else the end."""
-        before, after = self.state.followed.plant, self.found.dry_state(row)
-        followed = self._followed(row, after)
-        self.state = replace(self.state, followed=followed)
-        return row if _alarming(followed.plant) != _alarming(before) else self.count
+        before, after = self.state, self.found.dry_state(row)
+        followed, drains = self._followed(row, after), before.drains
+        if self.core.drains.traps:
+            drains = self.core.drains.leaked(drains, followed.plant)
+        self.state = replace(before, followed=followed, drains=drains)
+        alike = _alarming(followed.plant) == _alarming(before.followed.plant)
+        return self.count if alike and drains.leak.blows == before.drains.leak.blows else row
 
     def _sampled(self, row: int) -> None:
         """A sample for the days ahead."""

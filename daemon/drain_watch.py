@@ -77,7 +77,7 @@ class DrainWatching:
         if self.switches:
             watched = self._floats(watched, before, after)
         if self.traps:
-            watched = self._leak(watched, after.followed.plant)
+            watched = self.leaked(watched, after.followed.plant)
         return watched
 
     def _pressures(
@@ -123,7 +123,8 @@ class DrainWatching:
                 watched = self.seen(watched, after.model, trap)
         return watched
 
-    def _leak(self, watched: DrainsWatched, plant: Plant) -> DrainsWatched:
+    def leaked(self, watched: DrainsWatched, plant: Plant) -> DrainsWatched:
+        """With the line's leak, where it was measured anew."""
         figure, leak = plant.leak_kg_per_s, watched.leak
         if figure is None or figure.at_us <= leak.measured_us:
             return watched

@@ -12,6 +12,7 @@ import numpy as np
 import numpy.typing as npt
 
 from daemon.advance import Core
+from daemon.drain_alarms import LIMITED_AT
 from daemon.due import NO_DATE, RAISED_AT, RETURNS_BELOW
 from daemon.fitting_alarms import FREEZES_KG, FREEZES_ON_ITS_WAY_KG, FREEZING_K
 from daemon.moisture.along import Stretch
@@ -56,7 +57,7 @@ class Looks:
 
     def rows(self) -> set[int]:
         """The ticks in which a condition may change, as far as the stretch tells."""
-        rows = {*self._traps(), *self._frost()}
+        rows = {*self._traps(), *self._frost(), *self._drains()}
         return {row for row in rows if row < self.ticks}
 
     def margins(self) -> list[int]:
@@ -101,6 +102,15 @@ class Looks:
         contents = np.minimum(np.maximum(held, 0.0), capacity)
         limits = self.core.rules.drain_at_kg[numbers].reshape(several)
         return np.array([level(_share(contents >= limits)), level(_share(trap >= capacity))])
+
+    def _drains(self) -> Iterator[int]:
+        """A drain that cannot pass all that comes, or can again."""
+        fittings, state = self.core.model.fittings, self.found.before
+        for i, was in zip(fittings.drains, state.fittings.limited, strict=True):
+            told = np.array(self.found.water.drains[i].limited[: self.ticks])
+            last = np.maximum.accumulate(np.where(told >= 0.0, np.arange(len(told)), -1))
+            limited = np.where(last >= 0, told[last], was)
+            yield from changes(was >= LIMITED_AT, limited >= LIMITED_AT)
 
     # ---- frost ----
 

@@ -36,6 +36,11 @@ class Ticks:
     _pumps: Sequence[Watched] = ()
     _unknown_since_us: list[int] = field(default_factory=list)
 
+    @property
+    def ends_us(self) -> tuple[int, int]:
+        """The time of the state before, and of the last tick."""
+        return self.before.time_us, int(self.times_us[-1])
+
     # ---- what the model asks for ----
 
     def contact(self, row: int) -> ContactState:

@@ -12,6 +12,7 @@ import numpy as np
 
 from daemon.moisture import along_air
 from daemon.moisture.along_air import AirAlong, Course
+from daemon.moisture.along_drains import drains_along, fitted_after
 from daemon.moisture.along_water import WaterAlong
 from daemon.moisture.conditions import Conditions, Held
 from daemon.moisture.contact import ContactState
@@ -55,7 +56,14 @@ class Stretch:
     def state(self, row: int) -> State:
         """The state after one tick."""
         water, ledger = self.water.at(row)
-        return replace(self.dry_state(row), water=water, ledger=ledger)
+        fitted, fittings = self.before.fittings, self.model.fittings
+        draining, limited = fitted_after(fittings, fitted, self.water.drains, row)
+        return replace(
+            self.dry_state(row),
+            water=water,
+            ledger=ledger,
+            fittings=replace(fitted, draining=draining, limited=limited),
+        )
 
     def leaving_state(self, row: int) -> State:
         """The same, but for traps, for what waits, and for the ledger, which are as before all."""
@@ -125,7 +133,9 @@ class Stretch:
 
 def fits(model: Model) -> bool:
     """Whether a line has nothing that acts tick by tick."""
-    return not model.fittings.present and not model.plan.purging
+    fittings = model.fittings
+    acting = (fittings.drying.dryers, fittings.drying.rated, fittings.baths, model.plan.purging)
+    return not any(acting)
 
 
 def stretch(model: Model, state: State, course: Course, switches: Switches) -> Stretch | None:
@@ -159,6 +169,7 @@ def stretch(model: Model, state: State, course: Course, switches: Switches) -> S
         saturated,
         intake_ratio,
         dt_s,
+        drains_along(model, state, now, course.times_us),
     )
     return Stretch(
         model, state, course, switches, on_s, known, duty, now, saturated, drawn, air, water

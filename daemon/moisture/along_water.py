@@ -7,12 +7,14 @@ together. Arrays are (ticks, members); None stands for nothing at any tick.
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
 import numpy as np
 
 from daemon.moisture import carried
 from daemon.moisture.along_air import AirAlong, Bools, running_sum, shifted
+from daemon.moisture.along_drains import DrainAlong
 from daemon.moisture.ensemble import Array
 from daemon.moisture.line import Ledger, WaterParameters, WaterState, parts_of
 from daemon.moisture.plan import Plan
@@ -69,6 +71,7 @@ class WaterAlong:
     saturated: Array  # (stations, ticks, members)
     intake_ratio: Array
     dt_s: float
+    drains: Mapping[int, DrainAlong]  # by station
     places: list[_Place] = field(default_factory=list)
     water_in: Array = field(init=False)
     vapor: dict[int, Array] = field(default_factory=dict)  # by receiver's row, after each tick
@@ -143,6 +146,8 @@ class WaterAlong:
     def _over(self, i: int, place: _Place) -> Array | None:
         """What a trap cannot hold."""
         start, capacity = self.state.trap[i], self.parameters.capacity_kg[i]
+        if i in self.drains and place.trap is None:
+            return self._drained(i, place)
         if place.trap is not None:  # a receiver that was worked out tick by tick
             return place.over
         given = start
@@ -156,6 +161,18 @@ class WaterAlong:
         place.trap = rows
         over: Array = np.maximum(shifted(start, rows) + caught - capacity, 0.0)
         return over
+
+    def _drained(self, i: int, place: _Place) -> Array | None:
+        """The same of a trap that empties itself: in order."""
+        capacity, drain = self.parameters.capacity_kg[i], self.drains[i]
+        caught = np.zeros_like(self.water_in) if place.caught is None else place.caught
+        trap, over, in_trap = np.empty_like(caught), np.empty_like(caught), self.state.trap[i]
+        for n, more in enumerate(caught):
+            left = drain.left(n, in_trap + more)
+            over[n] = np.maximum(left - capacity, 0.0)
+            in_trap = trap[n] = left - over[n]
+        place.trap = trap
+        return over if over.any() else None
 
     # ---- onwards ----
 
@@ -226,6 +243,8 @@ class WaterAlong:
         """Whether a trap could give back all that it was asked for, and never ran over."""
         if self.plan.stations[i].trap is None:
             return True
+        if i in self.drains:
+            return False
         start = self.state.trap[i]
         asked, most = back.sum(axis=0), back.max(axis=0)
         if (asked == 0.0).all():
@@ -247,7 +266,7 @@ class WaterAlong:
         if wetted is not None and liquid_in is not None:
             besides = liquid_in - wetted
         spilt = None if spill_in is None else kept * spill_in
-        stays = 1.0 - course.goes
+        stays, drain = 1.0 - course.goes, self.drains.get(i)
         small = bool((pool > possible).any())
         liquid, back, held, trap, over = (np.empty_like(comes) for _ in range(5))
         vapor, in_trap = course.start, self.state.trap[i]
@@ -275,6 +294,8 @@ class WaterAlong:
                 np.add(trap_now, spilt[n], out=trap_now)
             np.subtract(in_trap, back_now, out=in_trap_now)
             np.add(trap_now, in_trap_now, out=trap_now)
+            if drain is not None:
+                trap_now[:] = drain.left(n, trap_now)
             np.subtract(trap_now, capacity, out=over_now)
             np.maximum(over_now, 0.0, out=over_now)
             np.subtract(trap_now, over_now, out=trap_now)
@@ -312,7 +333,7 @@ class WaterAlong:
     def only_fills(self, i: int) -> bool:
         """Whether nothing left a trap in these ticks."""
         back = self.places[i].back
-        return back is None or not back.any()
+        return i not in self.drains and (back is None or not back.any())
 
     def trap_rows(self, i: int) -> Array:
         """What a trap holds after every tick, kg."""
@@ -357,8 +378,17 @@ class WaterAlong:
             vapor_out=_booked(ledger.vapor_out, self.vapor_out, until),
             liquid_out=_booked(ledger.liquid_out, self.liquid_out, until),
             shed=shed,
+            passed=self._passed(until),
         )
         return after, booked
+
+    def _passed(self, until: int) -> Array:
+        if not self.drains:
+            return self.ledger.passed
+        passed = self.ledger.passed.copy()
+        for i, drain in self.drains.items():
+            passed[i] += drain.passed[:until].sum(axis=0)
+        return passed
 
     def leaving(self, row: int) -> tuple[Array, carried.Carried]:
         """The humidity ratios of the air that last left every station after one tick, and what

@@ -10,9 +10,12 @@ from dataclasses import dataclass
 from statistics import NormalDist
 
 import numpy as np
+import numpy.typing as npt
 
 from daemon.moisture.description import DrainKind, Emptying, Fixed, Trap
 from daemon.moisture.ensemble import Array
+
+Times = int | npt.NDArray[np.int64]
 
 SELF_EMPTYING: tuple[DrainKind, ...] = ("float", "timer", "level", "pressure-off")
 LEFT_ALONE: tuple[DrainKind, ...] = ("petcock", "none")
@@ -65,7 +68,7 @@ def chance_stuck(seen_working_us: int, now_us: int) -> float:
     return float(1.0 - (1.0 - STUCK_A_YEAR) ** years)
 
 
-def blows(phase: Array, period_s: float, from_us: int, to_us: int) -> Array:
+def blows(phase: Array, period_s: float, from_us: Times, to_us: Times) -> Array:
     """How often a timer blows in (from, to], per member: nobody knows when its clock began.
 
     `phase` is standard normal; its place in the distribution is the place in the period.

@@ -12,6 +12,7 @@ from collections.abc import Mapping
 from dataclasses import replace
 
 import numpy as np
+import numpy.typing as npt
 
 from daemon.moisture import drains, dryers
 from daemon.moisture.conditions import Conditions, Held
@@ -24,6 +25,8 @@ from daemon.moisture.fitting_beliefs import FittingParameters, drains_itself, ma
 from daemon.moisture.fitting_state import FittingState, Moment, Prepared
 from daemon.moisture.plan import Plan
 from daemon.moisture.power import Powered
+
+Times = int | npt.NDArray[np.int64]
 
 RECENT_S = 8 * 3600.0  # over how long "the recent load" of a cartridge or a bath is taken
 
@@ -117,8 +120,11 @@ class Fittings:
         step = Prepared(moment, fitted, moment.saturated, separation, state.load, ())
         self.drying.prepare(step, state, parameters)
         for row, i in enumerate(self.drains):
-            fitted.drains[i] = self._opening(row, i, state, parameters, moment)
-        self._let_down(fitted, state, parameters, moment.to_us)
+            span_us = moment.from_us, moment.to_us
+            fitted.drains[i] = self.opening(
+                row, i, state, parameters, moment.now.pressure_pa, span_us, moment.dt_s
+            )
+        fitted.drains |= self.let_down(state, parameters, moment.to_us)
         return step
 
     def after(
@@ -164,19 +170,28 @@ class Fittings:
 
     # ---- drains ----
 
-    def _opening(
-        self, row: int, i: int, state: FittingState, parameters: FittingParameters, moment: Moment
+    def opening(
+        self,
+        row: int,
+        i: int,
+        state: FittingState,
+        parameters: FittingParameters,
+        pressure_pa: Array,
+        span_us: tuple[Times, Times],
+        dt_s: float,
     ) -> Opening:
+        """What the drain in a row, at station `i`, can do in a step; or in several, where times are
+        columns and pressures (stations, steps, members)."""
         trap = self.plan.stations[i].trap
         assert trap is not None
         how = drains.emptying_of(trap)
-        most = parameters.passes_kg_per_s[row] * moment.dt_s
+        most = parameters.passes_kg_per_s[row] * dt_s
         opened, closes_at_kg = state.draining[row], how.closes_at_kg
         if trap.drain == "timer":
-            count = drains.blows(parameters.phase[row], how.period_s, moment.from_us, moment.to_us)
+            count = drains.blows(parameters.phase[row], how.period_s, *span_us)
             most = parameters.passes_kg_per_s[row] * how.open_s * count
         elif trap.drain == "pressure-off":
-            gauge = moment.now.pressure_pa[i] - moment.now.pressure_pa[0]
+            gauge = pressure_pa[i] - pressure_pa[0]
             opened, closes_at_kg = (gauge < drains.LET_DOWN_PA).astype(np.float64), trap.heel_kg
         return Opening(trap.drain, parameters.opens_at_kg[row], closes_at_kg, most, opened)
 
@@ -206,16 +221,19 @@ class Fittings:
             if since >= 0 and to_us - since >= drains.EMPTY_AFTER_US
         ]
 
-    def _let_down(
-        self, fitted: Fitted, state: FittingState, parameters: FittingParameters, to_us: int
-    ) -> None:
+    def let_down(
+        self, state: FittingState, parameters: FittingParameters, to_us: int
+    ) -> dict[int, Opening]:
+        """The drains, by station, of tanks that were let down."""
+        found = {}
         for row in self.let_down_now(state, to_us):
             i = self.tanks[row]
             trap = self.plan.stations[i].trap
             assert trap is not None
             zero = np.zeros(self.plan.line.members)
             opened = drains.lets_down(parameters.let_down[row])
-            fitted.drains[i] = Opening("petcock", zero, trap.heel_kg, zero, opened)
+            found[i] = Opening("petcock", zero, trap.heel_kg, zero, opened)
+        return found
 
     # ---- baths ----
 
