@@ -19,7 +19,8 @@ from daemon.work import WAIT_BELOW_K
 
 WIDTH = 420.0  # so narrow that its letters can be read on a phone
 _LEFT, _RIGHT, _TOP = 48.0, 8.0, 14.0
-_WORDS = 78.0  # for what stands at the end of a bar
+_WORDS = 78.0  # for what stands at the end of a bar, at the least
+_LETTER = 7.8  # the width of a letter, with room to spare
 _BAR = 22.0  # a day's row
 _LINE = 18.0
 # How a kind is filled: its shade (0 black, 1 white) and the slant of its hatching, "" none.
@@ -119,8 +120,7 @@ def _rows_of_days(
 ) -> Chart:
     """One bar a day, in parts (kind, value), with words at its end; `axis` is a step and a unit."""
     drawing = _new()
-    room = WIDTH - _LEFT - _RIGHT - _WORDS
-    scale = room / most
+    scale = _scale(most, [(sum(value for _, value in parts), said) for _, parts, said in days])
     y = _TOP
     for day, parts, said in days:
         x = _LEFT
@@ -146,10 +146,24 @@ def _rows_of_days(
     return drawing.done(name, title, words, y)
 
 
+def _scale(most: float, bars: Sequence[tuple[float, str]]) -> float:
+    """Points for a unit of the value, so that the words at each bar's end have room."""
+    room = WIDTH - _LEFT - _RIGHT
+    least = [(room - 6.0 - _LETTER * len(said)) / value for value, said in bars if value > 0.0]
+    return min([(room - _WORDS) / most, *least])
+
+
+def _shortened(text: str) -> str:
+    """A name that has room in one line of a legend; how it begins and ends tells it apart."""
+    most = int((WIDTH - _LEFT - _RIGHT - 28.0) / _LETTER)
+    return text if len(text) <= most else f"{text[: most // 2 - 2]} .. {text[2 - most // 2 :]}"
+
+
 def _legend(drawing: _Drawing, legend: Sequence[tuple[str, str]], y: float) -> float:
     x = _LEFT
-    for kind, text in legend:
-        width = 28.0 + 7.8 * len(text)
+    for kind, name in legend:
+        text = _shortened(name)
+        width = 28.0 + _LETTER * len(text)
         if x + width > WIDTH - _RIGHT and x > _LEFT:
             x, y = _LEFT, y + _LINE
         drawing.bars.append(Bar(x, y - 11.0, 16.0, 12.0, kind))
@@ -177,11 +191,14 @@ def water_chart(words: Words, log: WeekLog) -> Iterator[Chart]:
         return
     unit = "oz" if words.site.units == "us" else "ml"
     per_kg = from_si(1.0 / WATER_KG_PER_M3, unit, "volume")
-    kinds = {trap: f"t{n % PATTERNS}" for n, trap in enumerate(words.site.traps)}
+    kinds = _trap_kinds(log, words.site.traps)
     days = [
         (
             day.day,
-            [(kinds[trap], kg * per_kg) for trap, kg in day.shed_kg.items()],
+            [
+                (kind, sum(day.shed_kg.get(trap, 0.0) for trap in traps) * per_kg)
+                for kind, (_, traps) in kinds.items()
+            ],
             words.water(total) if day.shed_kg else "not known",
         )
         for day, total in zip(log.days, totals, strict=True)
@@ -195,9 +212,21 @@ def water_chart(words: Words, log: WeekLog) -> Iterator[Chart]:
         days,
         most,
         (step, unit),
-        [(kind, trap) for trap, kind in kinds.items()],
+        [(kind, name) for kind, (name, _) in kinds.items()],
         f"{said}.",
     )
+
+
+def _trap_kinds(log: WeekLog, traps: Sequence[str]) -> dict[str, tuple[str, Sequence[str]]]:
+    """What each filling stands for: a trap; of many, the last for all that had least."""
+    if len(traps) <= PATTERNS:
+        return {f"t{n}": (trap, (trap,)) for n, trap in enumerate(traps)}
+    shed = {trap: sum(day.shed_kg.get(trap, 0.0) for day in log.days) for trap in traps}
+    most = sorted(traps, key=lambda trap: -shed[trap])[: PATTERNS - 1]
+    alone = [trap for trap in traps if trap in most]
+    rest = [trap for trap in traps if trap not in most]
+    named = {f"t{n}": (trap, (trap,)) for n, trap in enumerate(alone)}
+    return {**named, f"t{PATTERNS - 1}": (f"the other {len(rest)}", rest)}
 
 
 def verdict_chart(log: WeekLog, outlet: OutletWeek) -> Iterator[Chart]:

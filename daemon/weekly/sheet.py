@@ -103,12 +103,17 @@ def _lead(words: Words, log: WeekLog) -> str:
         return "Nothing is known of this week."
     late = sum(trap.late for trap in log.traps)
     drains = counted(len(log.drains), "drain")
-    parts = [f"{words.waters(log.water_in_kg)} of water came in with the air"]
+    came = "How much water came in is not known"
+    if log.water_in_kg is not None:
+        came = f"{words.waters(log.water_in_kg)} of water came in with the air"
+    parts = [came]
     parts.append(f"{drains}, {late} of them late" if late else f"{drains}, none late")
     due = [trap.trap for trap in log.traps if trap.due_since_us is not None]
     if due:
         parts.append(f"still due: {', '.join(due)}")
-    if log.outlets:
+    if log.outlets and log.watched.open_watched_s <= 0.0:
+        parts.append("no open hour was watched")
+    elif log.outlets:
         unfit = max(outlet.unfit_s for outlet in log.outlets)
         worst = next(outlet.outlet for outlet in log.outlets if outlet.unfit_s == unfit)
         where = f" ({worst})" if len(log.outlets) > 1 and unfit > 0.0 else ""
@@ -222,7 +227,10 @@ def _outlet(words: Words, log: WeekLog, outlet: OutletWeek) -> Section:
         tuple(CANNOT_TELL if name == CANNOT_TELL else f"class {name}" for name in ranks),
         (tuple(hours(known[name]) for name in ranks),),
     )
-    lines = [f"Unfit to spray (wait): {hours(outlet.unfit_s)} of {hours(log.watched.open_s)} open."]
+    unfit = f"{hours(outlet.unfit_s)} of {hours(log.watched.open_s)} open"
+    if log.watched.open_watched_s <= 0.0:
+        unfit = f"{NOT_KNOWN}: no open hour was watched"
+    lines = [f"Unfit to spray (wait): {unfit}."]
     lines += _least("Least line margin", words, outlet.line)
     lines += _least("Least surface margin", words, outlet.surface)
     tests = [each for each in log.blotters if each.outlet == outlet.outlet]
@@ -270,7 +278,8 @@ def _plant(words: Words, log: WeekLog) -> Section:
     lines = [
         f"Running: {hours_between(plant.on_s)}.",
         f"Duty in open hours: {percents(plant.duty(open_s))}.",
-        f"Air drawn in: {words.airs(plant.drawn_kg)} of reference air.",
+        f"Air drawn in: {words.airs(plant.drawn_kg)}"
+        f"{'' if plant.drawn_kg is None else ' of reference air'}.",
     ]
     leak = plant.leak
     if leak is None:

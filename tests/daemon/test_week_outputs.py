@@ -24,7 +24,7 @@ from daemon.weekly.rows import read_rows
 from daemon.weekly.sheet import CAUTIONS, sheet
 from daemon.weekly.text import WIDTH, text_of
 from daemon.weekly.weeks import Week
-from tests.daemon.shops import site
+from tests.daemon.shops import SITE, site
 from tests.daemon.week_rows import HeldRows, rows_of, transition
 
 METRIC = replace(site(), costs=Costs(0.3, "EUR"))
@@ -189,3 +189,55 @@ def test_every_chart_says_in_words_what_it_draws() -> None:
     first_day = [bar for bar in water.bars if bar.y == water.bars[0].y]
     assert [round(bar.width / first_day[0].width, 6) for bar in first_day] == [1.0, 1.0, 1.0]
     assert "Mon 720 ml" in water.words
+
+
+def test_words_at_the_end_of_a_bar_stay_within_the_chart() -> None:
+    """7.2 points a letter of the page's bold sans, as drawn by the tests' browser."""
+    log = a_log(METRIC)
+    short = [replace(day, verdict_s={"spray-gun": {"wait": 960.0}}) for day in log.days]
+    for shop, days in ((METRIC, log.days), (METRIC, short), (US, log.days)):
+        told = sheet(shop, replace(log, days=tuple(days)))
+        drawn = [c for section in told.sections for c in section.charts if c.bars]
+        assert drawn
+        for chart in drawn:
+            for label in chart.labels:
+                if label.anchor == "start":
+                    assert label.x + 7.2 * len(label.text) <= chart.width, label
+
+
+def test_a_chart_of_many_traps_tells_them_apart_and_leaves_none_out() -> None:
+    long_name = "the-drip-leg-behind-the-second-spray-booth-of-hall-number"
+    names = [f"{long_name}-{number:02}" for number in range(11)]
+    legs = "".join(
+        f'\n[[station]]\nid = "{name}"\nkind = "pipe"\nafter = "riser"\ntrap = {{}}\n'
+        for name in names
+    )
+    shop = site(SITE.replace("\n[[outlet]]", f"{legs}\n[[outlet]]", 1))
+    assert len(shop.traps) > 12
+    told = sheet(shop, a_log(shop))
+    (water,) = (c for section in told.sections for c in section.charts if c.name == "water")
+    total_px = sum(bar.width for bar in water.bars if bar.y == water.bars[0].y)
+    one_px = water.bars[0].width
+    assert total_px == pytest.approx(len(shop.traps) * one_px)  # each sheds as much, here
+    legend = [bar.kind for bar in water.bars if bar.width == 16.0 and bar.height == 12.0]
+    assert len(legend) == len(set(legend)) == 6
+    named = [label.text for label in water.labels if label.text.startswith("the ")]
+    assert named == [f"the other {len(shop.traps) - 5}"]
+    for label in water.labels:
+        if label.anchor == "start":
+            assert label.x + 7.2 * len(label.text) <= water.width, label
+
+
+def test_a_week_of_which_only_an_alarm_is_known_makes_up_no_figures() -> None:
+    rows = HeldRows(begun_us=FROM_US)
+    rows.changes = [
+        transition(FROM_US + 1, "tank-drain-due", "drain-due", "normal", "unacknowledged")
+    ]
+    told = sheet(METRIC, week_log(METRIC, read_rows(rows, WEEK, METRIC, FROM_US + HOUR_US)))
+    assert told.lead == (
+        "How much water came in is not known; 0 drains, none late; still due: tank; "
+        "no open hour was watched."
+    )
+    words = text_of(told)
+    assert "Unfit to spray (wait): not known: no open hour was watched." in words
+    assert "Air drawn in: not known." in words
