@@ -20,7 +20,7 @@ from daemon.work import WAIT_BELOW_K
 WIDTH = 420.0  # so narrow that its letters can be read on a phone
 _LEFT, _RIGHT, _TOP = 48.0, 8.0, 14.0
 _WORDS = 78.0  # for what stands at the end of a bar, at the least
-_LETTER = 7.8  # the width of a letter, with room to spare
+_LETTER = 8.2  # the width of a letter, with room to spare
 _BAR = 22.0  # a day's row
 _LINE = 18.0
 # How a kind is filled: its shade (0 black, 1 white) and the slant of its hatching, "" none.

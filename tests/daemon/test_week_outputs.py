@@ -192,7 +192,7 @@ def test_every_chart_says_in_words_what_it_draws() -> None:
 
 
 def test_words_at_the_end_of_a_bar_stay_within_the_chart() -> None:
-    """7.2 points a letter of the page's bold sans, as drawn by the tests' browser."""
+    """8.0 points a letter of the page's bold sans, as the tests' browser draws it."""
     log = a_log(METRIC)
     short = [replace(day, verdict_s={"spray-gun": {"wait": 960.0}}) for day in log.days]
     for shop, days in ((METRIC, log.days), (METRIC, short), (US, log.days)):
@@ -202,7 +202,7 @@ def test_words_at_the_end_of_a_bar_stay_within_the_chart() -> None:
         for chart in drawn:
             for label in chart.labels:
                 if label.anchor == "start":
-                    assert label.x + 7.2 * len(label.text) <= chart.width, label
+                    assert label.x + 8.0 * len(label.text) <= chart.width, label
 
 
 def test_a_chart_of_many_traps_tells_them_apart_and_leaves_none_out() -> None:
@@ -225,7 +225,7 @@ def test_a_chart_of_many_traps_tells_them_apart_and_leaves_none_out() -> None:
     assert named == [f"the other {len(shop.traps) - 5}"]
     for label in water.labels:
         if label.anchor == "start":
-            assert label.x + 7.2 * len(label.text) <= water.width, label
+            assert label.x + 8.0 * len(label.text) <= water.width, label
 
 
 def test_a_week_of_which_only_an_alarm_is_known_makes_up_no_figures() -> None:
