@@ -70,4 +70,5 @@ def words_of(error: Exception) -> str:
     else:
         points = []
     said = [f"{point.value}: {point.remedy}" if point.value else point.remedy for point in points]
-    return " ".join(said) or (error.detail if isinstance(error, Problem) else str(error))
+    words = " ".join(said) or (error.detail if isinstance(error, Problem) else str(error))
+    return words[:1].upper() + words[1:]

@@ -42,8 +42,9 @@ class Words:
         return tied(due.volume_words(self.site, kg))
 
     def between(self, p05_kg: float, p95_kg: float) -> str:
-        """The ends of an interval of water: "300 to 560 ml"."""
-        return self._ends(due.volume_words(self.site, p05_kg), due.volume_words(self.site, p95_kg))
+        """The ends of an interval of water: "300 to 560 ml"; one figure where both read alike."""
+        low, high = (due.volume_words(self.site, each) for each in (p05_kg, p95_kg))
+        return tied(low) if low == high else self._ends(low, high)
 
     def temperature(self, kelvin: float) -> str:
         """ "20 degC" or "68 degF"."""

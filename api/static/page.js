@@ -92,7 +92,7 @@ document.addEventListener("submit", async (event) => {
 function told(form, outcome) {
   if (outcome.taken) say(form, outcome.answer.said || form.dataset.done || "Recorded.");
   else if (outcome.refused) {
-    say(form, `Not recorded. ${outcome.refused}`, true);
+    say(form, `Not recorded. ${outcome.refused[0].toUpperCase()}${outcome.refused.slice(1)}`, true);
     form.querySelector("[data-number]")?.setAttribute("aria-invalid", "true");
   } else say(form, `Kept on this phone, as ${outcome.kept}. It is sent by itself, once.`, true);
 }

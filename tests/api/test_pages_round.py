@@ -140,8 +140,18 @@ def test_a_trap_shows_its_interval_its_mark_and_its_last_drain(client: Client) -
     assert "By the calendar 17:00: it is drained every working day, at the shift's end." in text
 
 
+def test_an_interval_whose_ends_read_alike_is_one_figure() -> None:
+    running = FakeRunning(standing={})
+    empty = replace(riser_view(), p05_kg=0.0, p50_kg=0.0001, p95_kg=0.0003)
+    running.traps = lambda: [tank_view(), empty]  # type: ignore[method-assign]
+    text = words_of(client_of(running).get("/round").text)
+    assert "about 0 ml likely 0 ml: as good as empty" in text
+
+
 def test_a_us_shop_reads_us_units() -> None:
     text = words_of(client_of(FakeRunning(site=a_site(units="us"), standing={})).get("/round").text)
+    assert "let the line down to about 15 psi" in text
+    assert not re.search(r"\d (bar|ml|L|degC|K|mm|kg)\b", text)
     # NIST Handbook 44: 410 ml / 29.57353 = 13.9 oz, 15 L / 3.785412 = 3.96 gal
     assert "about 13.9 oz" in text
     assert "It holds 3.96 gal" in text
@@ -269,7 +279,7 @@ def test_a_trap_that_is_not_there_is_said_on_the_page(client: Client) -> None:
     fields = fields_of(client.get("/round").text, "drain-tank")
     answer = client.post("/round/barrel/drained", data=fields, headers=OURS)
     assert answer.status_code == 422
-    assert 'there is no trap "barrel"; those of this site are: tank, riser' in words_of(answer.text)
+    assert 'There is no trap "barrel"; those of this site are: tank, riser' in words_of(answer.text)
 
 
 @pytest.mark.parametrize("seq", ["99999999999999999999", "-1", "x"])
@@ -288,7 +298,7 @@ def test_a_drain_is_taken_back_with_a_form(running: FakeRunning, client: Client)
     assert "Recorded 09:00 by AM: drained." in words_of(page)
     fields = fields_of(page, "undo-tank")
     refused = post(client, "/round/tank/undo/1", {**fields, "by": "BK"})
-    assert 'Not taken back. it was recorded with "AM"' in refused
+    assert 'Not taken back. It was recorded with "AM"' in refused
     text = post(client, "/round/tank/undo/1", {**fields, "by": "AM"})
     assert running.journal[-1].body == Undo("tank", 1, "AM")
     assert "Recorded 09:00 by AM: drained. Taken back 09:00." in text

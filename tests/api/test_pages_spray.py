@@ -175,7 +175,7 @@ def test_a_gauge_and_a_blotter_are_recorded_with_forms(
         ("gauge", {"spread_k": "400"}, "a spread is the surface's temperature less"),
         ("gauge", {"spread_k": ""}, '"" is not a number'),
         ("blotter", {"result": "mud"}, "it must be one of 'clean', 'water' or 'oil'"),
-        ("blotter", {}, "it is missing; it must be sent"),
+        ("blotter", {}, "It is missing; it must be sent"),
     ],
 )
 def test_what_cannot_be_is_refused(
@@ -192,7 +192,7 @@ def test_an_unknown_outlet_is_said_on_a_page(client: Client) -> None:
     fields = fields_of(client.get("/spray").text, "blotter-spray-gun")
     answer = client.post("/spray/barrel/blotter", data={**fields, "result": "clean"}, headers=OURS)
     assert answer.status_code == 422
-    assert 'there is no outlet "barrel"; those of this site are: spray-gun' in words_of(answer.text)
+    assert 'There is no outlet "barrel"; those of this site are: spray-gun' in words_of(answer.text)
 
 
 # ---- the drawing ----

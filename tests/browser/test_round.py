@@ -72,7 +72,7 @@ def test_a_slip_is_taken_back_with_the_same_initials(
     assert person.read("#trap-tank .big") == "about 0 ml"
     person.types("#by-undo-tank", "BK")
     person.taps("#undo-button-tank")
-    person.waits_to_read("#said-tank", 'it was recorded with "AM", and the undo came with "BK"')
+    person.waits_to_read("#said-tank", 'It was recorded with "AM", and the undo came with "BK"')
     person.types("#by-undo-tank", "AM")
     person.taps("#undo-button-tank")
     person.waits_to_read("#trap-tank .note", "Taken back")
