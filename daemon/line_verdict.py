@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 from daemon.site.types import Units
 from daemon.units import show_difference, show_temperature
-from daemon.verdict import Findings, differences, grams, temperatures
+from daemon.verdict import Findings, differences, liquid, temperatures
 from daemon.views import Interval, Judgement
 from daemon.work import LIQUID_KG_PER_M3, WAIT_BELOW_K, Profile
 
@@ -50,19 +50,19 @@ def judge_line(units: Units, profile: Profile, facts: LineFacts) -> Judgement:
         if not facts.unusable:
             found.add("unknown", "The air in the line is not known yet.")
         return found.judgement()
-    _liquid(found, facts, facts.carried_kg_per_m3)
+    _liquid(found, units, facts, facts.carried_kg_per_m3)
     _line_margin(found, units, facts, facts.margin_k)
     _pressure_dew_point(found, units, profile, facts.dew_point_k)
     return found.judgement()
 
 
-def _liquid(found: Findings, facts: LineFacts, carried: Interval) -> None:
+def _liquid(found: Findings, units: Units, facts: LineFacts, carried: Interval) -> None:
     if carried.p95 <= LIQUID_KG_PER_M3:
         return
-    limit = grams(LIQUID_KG_PER_M3)
     about = "about" if carried.p50 > LIQUID_KG_PER_M3 else "perhaps none, but up to"
     amount = carried.p50 if carried.p50 > LIQUID_KG_PER_M3 else carried.p95
-    reason = f"Liquid water comes along: {about} {grams(amount)} g per m3 (limit {limit})."
+    (shown, unit), (limit, _) = liquid(amount, units), liquid(LIQUID_KG_PER_M3, units)
+    reason = f"Liquid water comes along: {about} {shown} {unit} (limit {limit})."
     if facts.flooded:
         names = ", ".join(facts.flooded)
         change = f"Drain {names}, which is full and lets water go on; then blow the hose out."

@@ -20,7 +20,7 @@ from daemon.outlet_record import OutletRecord
 from daemon.site import hours as opening
 from daemon.state import CoreState
 from daemon.units import show_difference
-from daemon.verdict import differences, grams
+from daemon.verdict import differences, liquid
 from daemon.views import Interval
 from daemon.work import LIQUID_KG_PER_M3, WAIT_BELOW_K
 
@@ -168,7 +168,8 @@ class MarginAlarms:
         )
         if self._wet_share(state, outlet) >= LIQUID_RAISED_AT:
             carried = state.model.water.carried.kg_per_m3[outlet.way.outlet]
-            text += f" It carries about {grams(float(np.median(carried)))} g of liquid per m3."
+            shown, unit = liquid(float(np.median(carried)), units)
+            text += f" Liquid water comes along: about {shown} {unit}."
         flooded = ", ".join(self.air.flooded(state, outlet))
         if flooded:
             return f"{text} Drain {flooded}, then blow the hose out."

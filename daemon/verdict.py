@@ -14,6 +14,9 @@ from daemon.site.types import Units
 from daemon.units import show_difference, show_percent, show_temperature
 from daemon.views import Interval, Judgement, Verdict
 
+# NIST Handbook 44, appendix C
+KG_PER_GRAIN, M3_PER_FT3 = 64.798_91e-6, 0.028_316_846_592
+_GRAMS = ("g per m3", 1e-3, 1.0)
 _WORST_FIRST: tuple[Verdict, ...] = ("wait", "unknown", "care", "dry enough")
 
 
@@ -68,9 +71,10 @@ def percents(interval: Interval) -> str:
     return _interval([show_percent(round(each, 2)) for each in interval.values])
 
 
-def grams(kg: float) -> str:
-    """Two figures of a mass in g."""
-    return f"{float(f'{kg * 1e3:.2g}'):g}"
+def liquid(kg_per_m3: float, units: Units) -> tuple[str, str]:
+    """Liquid carried along, two figures and the unit: ("0.42", "g per m3") or grains per ft3."""
+    unit, kg, m3 = ("grains per ft3", KG_PER_GRAIN, M3_PER_FT3) if units == "us" else _GRAMS
+    return f"{float(f'{kg_per_m3 * m3 / kg:.2g}'):g}", unit
 
 
 def _interval(shown: Sequence[str]) -> str:

@@ -10,7 +10,7 @@ from daemon.moisture.purity import class_words
 from daemon.outlet_air import TYPED_GIVE_OR_TAKE_K
 from daemon.site.types import Site
 from daemon.units import show_difference
-from daemon.verdict import grams
+from daemon.verdict import liquid
 from daemon.views import Interval, Judgement, OutletView, Verdict
 from daemon.work import WAIT_BELOW_K
 
@@ -51,7 +51,7 @@ class OutletCard:
     changes: tuple[str, ...]  # what would turn it into dry enough
     sensed: str  # the surface's infrared sensor, "" without one
     humidity_class: str
-    carried_g_m3: str  # of liquid, at most; "" not known
+    carried: str  # of liquid, at most, with its unit; "" not known
 
 
 def card_of(site: Site, view: OutletView, typed: str) -> OutletCard:
@@ -64,8 +64,12 @@ def card_of(site: Site, view: OutletView, typed: str) -> OutletCard:
         changes=tuple(dict.fromkeys(c for judged in counts for c in judged.would_change)),
         sensed=surface_sensor(site, view.outlet),
         humidity_class=class_words(view.air.humidity_class),
-        carried_g_m3="" if (c := view.air.carried_kg_per_m3) is None else grams(c.p95),
+        carried="" if (c := view.air.carried_kg_per_m3) is None else _liquid(c.p95, site),
     )
+
+
+def _liquid(kg_per_m3: float, site: Site) -> str:
+    return " ".join(liquid(kg_per_m3, site.units))
 
 
 def surface_sensor(site: Site, outlet: str) -> str:

@@ -94,6 +94,10 @@ def test_liquid_that_may_be_is_told_apart_from_liquid_that_is() -> None:
     found = judge_line("metric", PLAIN, surely)
     assert found.reasons[0] == "Liquid water comes along: about 0.42 g per m3 (limit 0.05)."
     assert found.would_change[0].startswith("Drain riser, which is full")
+    # 1 gr = 64.79891 mg, 1 ft3 = 0.028316847 m3 (NIST Handbook 44): 0.42 g/m3 is 0.1835 gr/ft3
+    assert judge_line("us", PLAIN, surely).reasons[0] == (
+        "Liquid water comes along: about 0.18 grains per ft3 (limit 0.022)."
+    )
 
 
 @pytest.mark.parametrize(("dew_point_c", "verdict"), [(2.4, "dry enough"), (2.6, "care")])
