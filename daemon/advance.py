@@ -364,8 +364,13 @@ class Core:
     # ---- journal entries ----
 
     def _take(self, tick: _Tick, entry: Entry) -> None:
-        if self.hourly is not None:
-            tick.state = self.hourly.settled(tick.state)
+        before = tick.state
+        self._apply(tick, entry)
+        if self.hourly is not None and tick.state.model is not before.model:
+            # the weekly log books what was shed until now as it was believed until now
+            tick.state = replace(tick.state, hourly=self.hourly.settled(before).hourly)
+
+    def _apply(self, tick: _Tick, entry: Entry) -> None:
         match entry.body:
             case Drain() as drain:
                 self._drain(tick, entry, drain)

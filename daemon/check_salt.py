@@ -81,9 +81,7 @@ def salt_check(
     say(HOW.format(sensor=wanted.sensor, length=show_duration(wanted.length_s)))
     # the sensor alone: the others have nothing to do with the jar
     mine = tuple(one for one in site.sensors if one.id == wanted.sensor)
-    looker = Looker(
-        replace(site, sensors=mine), hardware, clock, store_path=wanted.store_path
-    )
+    looker = Looker(replace(site, sensors=mine), hardware, clock, store_path=wanted.store_path)
     try:
         read = _read(looker, wanted, clock, stop)
     finally:

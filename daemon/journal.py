@@ -114,16 +114,7 @@ class SaltCheck:
 
 
 Body = (
-    Drain
-    | Undo
-    | Acknowledge
-    | Shelve
-    | Unshelve
-    | Confirm
-    | Service
-    | Gauge
-    | Blotter
-    | SaltCheck
+    Drain | Undo | Acknowledge | Shelve | Unshelve | Confirm | Service | Gauge | Blotter | SaltCheck
 )
 _KINDS: dict[str, type[Body]] = {
     "drain": Drain,

@@ -336,9 +336,7 @@ def test_a_broken_site_file_starts_nothing(tmp_path: Path) -> None:
 
 
 @contextmanager
-def serving(
-    folder: Path, text: str, port: int, host: str = "127.0.0.1"
-) -> Iterator[compose.Parts]:
+def serving(folder: Path, text: str, port: int, host: str = "127.0.0.1") -> Iterator[compose.Parts]:
     """A daemon of this process, on emulated parts, that does not tick."""
     with EmulatedHardware() as hardware:
         shop = site(f'{text}\n[api]\nport = {port}\nhost = "{host}"\n')

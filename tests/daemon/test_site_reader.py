@@ -478,5 +478,6 @@ def test_what_changes_nothing_yet_is_listed() -> None:
 def test_open_reading_has_no_effect_where_nobody_else_can_come() -> None:
     near = site("[api]\nopen_reading = true\n")
     (said,) = near.without_effect
-    assert said.startswith('[api] open_reading = true: host = "127.0.0.1" is for this machine alone')
+    says = '[api] open_reading = true: host = "127.0.0.1" is for this machine alone'
+    assert said.startswith(says)
     assert site('[api]\nhost = "::"\nopen_reading = true\n').without_effect == ()
