@@ -7,7 +7,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Annotated
 
-from fastapi import APIRouter, Path
+from fastapi import APIRouter, Path, Query
 from pydantic import ValidationError
 from starlette.responses import HTMLResponse, RedirectResponse, Response
 
@@ -25,6 +25,7 @@ from daemon.views import Running
 
 router = APIRouter(include_in_schema=False)
 UNITS = {"metric": ("ml", "L"), "us": ("oz", "gal")}
+MANY = 8  # traps: with more, those that may stay get their form when somebody asks for it
 LOOKS = ("clear", "milky", "oily", "rusty")
 
 
@@ -39,9 +40,9 @@ class Told:
 
 
 @router.get("/round")
-def show(daemon: TheDaemon) -> HTMLResponse:
-    """The round as it is now."""
-    return _page(daemon)
+def show(daemon: TheDaemon, trap: Annotated[str, Query(max_length=80)] = "") -> HTMLResponse:
+    """The round as it is now, with the form of a trap that may stay if one is named."""
+    return _page(daemon, asked=trap)
 
 
 @router.get("/round/{trap}/{rest:path}")
@@ -102,7 +103,9 @@ def _plan(daemon: Running) -> RoundPlan:
     return plan(daemon.site, daemon.traps(), flooded, daemon.clock.now_us())
 
 
-def _page(daemon: Running, told: Told | None = None, status: int = 200) -> HTMLResponse:
+def _page(
+    daemon: Running, told: Told | None = None, status: int = 200, asked: str = ""
+) -> HTMLResponse:
     made = _plan(daemon)
     cards = cards_of(daemon, [*made.drain, *made.leave])
     return page(
@@ -115,6 +118,8 @@ def _page(daemon: Running, told: Told | None = None, status: int = 200) -> HTMLR
         drain=[cards[view.trap] for view in made.drain],
         leave=[cards[view.trap] for view in made.leave],
         told=told or Told(),
+        asked=asked,
+        many=len(cards) > MANY,
         names=list(cards),
         units=UNITS[daemon.site.units],
         looks=LOOKS,
