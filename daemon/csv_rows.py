@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import csv
 import math
+import os
 import re
 from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
@@ -43,6 +44,7 @@ class Rows:
         self.path, self.header, self.skip_bad = path, header, skip_bad
         self.bad: list[BadRow] = []
         self.line = 1
+        self.share = 0.0  # of the file, read so far
 
     def __iter__(self) -> Iterator[list[str]]:
         for lines in self.chunks(1024):
@@ -55,7 +57,9 @@ class Rows:
             # undecodable bytes are kept as such, so that their row can be named
             with self.path.open(encoding="utf-8-sig", errors="surrogateescape", newline="") as file:
                 self._check_header(next(file, None))
+                size = max(os.fstat(file.fileno()).st_size, 1)
                 while lines := list(islice(file, most)):
+                    self.share += sum(map(len, lines)) / size
                     yield lines
         except FileNotFoundError:
             raise ReplayError(f"{self.path}: there is no such file") from None

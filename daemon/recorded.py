@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Protocol
@@ -21,6 +21,7 @@ from sensors.reading import Channel, Reading, reading
 
 READINGS_HEADER = ["time", "channel", "value", "unit"]
 DRAINS_HEADER = ["time", "trap", "volume", "unit"]
+ROWS_A_WORD = 4096  # that are read between two words about it
 DRAIN_UNITS = ("ml", "L", "oz", "gal")
 EARLIEST_US = parse_rfc3339("1970-01-01T00:00:00Z")
 LATEST_US = parse_rfc3339("2200-01-01T00:00:00Z")
@@ -228,16 +229,23 @@ class ReadingsFile:
         return _Barometer(np.array(times), np.array(values)) if len(times) else None
 
 
-def read_readings(site: Site, path: Path, skip_bad: bool = False) -> Recorded:
+def read_readings(
+    site: Site,
+    path: Path,
+    skip_bad: bool = False,
+    progress: Callable[[float], None] = lambda share: None,
+) -> Recorded:
     """Readings from a CSV of `time,channel,value,unit`; ReplayError at the first bad row.
 
     A pressure in `bara`/`psia` on a gauge channel (or `barg`/`psig` on an absolute one) is turned
-    with the intake's barometer as it stood then.
+    with the intake's barometer as it stood then. `progress` is told of the share that is read.
     """
     listed = _Listed()
     file = ReadingsFile(site, path, skip_bad, listed)
-    for row in file.rows:
+    for count, row in enumerate(file.rows):
         file.row(*row)
+        if count % ROWS_A_WORD == 0:
+            progress(file.rows.share)
     file.refer_to_barometer()
     readings = listed.whole()
     return Recorded(readings, file.finish(bool(readings)))

@@ -92,13 +92,11 @@ def read_record(
     """
     columns = _Columns()
     file = ReadingsFile(site, path, skip_bad, columns)
-    taken, size = 0, max(path.stat().st_size if path.is_file() else 0, 1)
     for lines in file.rows.chunks(ROWS_AT_ONCE):
         if not _take_plain(site, file, columns, lines):
             for row in file.rows.cells(lines):
                 file.row(*row)
-        taken += sum(map(len, lines))
-        progress(taken / size)
+        progress(file.rows.share)
     file.refer_to_barometer()
     record = columns.record()
     return record, file.finish(bool(record.channels))

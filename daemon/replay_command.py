@@ -41,7 +41,9 @@ Run = tuple[Result, list[Entry], list[BadRow]]
 
 
 def _tick_by_tick(core: Core, options: argparse.Namespace) -> Run:
-    recorded = read_readings(core.site, options.readings, options.skip_bad)
+    reading = Progress(sys.stderr, SystemClock(), "reading")
+    recorded = read_readings(core.site, options.readings, options.skip_bad, reading.at)
+    reading.end()
     faults, bad_faults = _faults(core.site, options)
     readings = sorted([*recorded.readings, *faults], key=lambda one: one.time_us)
     entries, bad_drains = _drains(core.site, options, readings[0].time_us)
