@@ -19,12 +19,14 @@ from api.pages.spray_cards import OutletCard, card_of
 from api.problems import Problem
 from api.routes.outlets import post_blotter, post_gauge
 from api.routes.running import TheDaemon
+from daemon.clock import MINUTE_US
 from daemon.errors import JournalError
 from daemon.units import show_temperature, to_si
 from daemon.views import Running
 
 router = APIRouter(include_in_schema=False)
 SPREAD = {"metric": ("spread_k", "K"), "us": ("spread_f", "degF")}
+SURFACE_SPEAKS_US = 30 * MINUTE_US  # as long as a gauge's reading
 TEMPERATURE = {"metric": "degC", "us": "degF"}
 
 
@@ -44,10 +46,17 @@ def show(
     daemon: TheDaemon,
     outlet: Annotated[str, Query(max_length=80)] = "",
     surface: Annotated[str, Query(max_length=40)] = "",
+    at: Annotated[int, Query(ge=0, le=2**53, description="when it was typed, Unix time, ms")] = 0,
 ) -> HTMLResponse:
-    """The verdicts as they are now, for a surface of a typed temperature if one was sent."""
+    """The verdicts as they are now, for a surface of a typed temperature if one was sent.
+
+    The page's script adds `at` to the address, which a phone opens again days later.
+    """
     if not surface.strip():
         return _page(daemon)
+    if at and daemon.clock.now_us() - at * 1000 > SURFACE_SPEAKS_US:
+        words = "The surface was measured more than 30 minutes ago: measure it again."
+        return _page(daemon, Told(outlet, "surface", words))
     try:
         surface_k = _surface_k(daemon, surface.strip())
     except NumberError as error:

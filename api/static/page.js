@@ -203,6 +203,14 @@ function readClock() {
   if (made) serverSays(Number(made.dataset.now));
 }
 
+// A figure that was typed into the address grows old: a phone opens the same address days later.
+function dateTyped() {
+  const said = new URLSearchParams(location.search);
+  if (!said.get("surface") || said.has("at")) return;
+  said.set("at", document.getElementById("made").dataset.now);
+  history.replaceState(null, "", `?${said}${location.hash}`);
+}
+
 // ---- the network ----
 
 function tellNet() {
@@ -248,6 +256,7 @@ setInterval(retry, RETRY_MS);
 setInterval(() => document.visibilityState === "visible" && refresh(), FRESH_MS);
 for (const part of document.querySelectorAll("[data-fresh]")) shown.set(part.id, asSent(part));
 readClock();
+dateTyped();
 fillBy(document);
 tellNet();
 retry();

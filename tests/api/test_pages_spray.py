@@ -122,6 +122,20 @@ def test_a_typed_surface_is_asked_of_that_outlet_alone(running: FakeRunning) -> 
     assert 'value="18,5"' in page
 
 
+@pytest.mark.parametrize(("minutes", "counts"), [(29, True), (31, False)])
+def test_a_surface_that_was_typed_long_ago_counts_no_more(
+    running: FakeRunning, minutes: int, counts: bool
+) -> None:
+    """A phone opens the same address again days later; the panel has another temperature then."""
+    running.margin = lambda outlet, surface_k: gun_view(surface_k)  # type: ignore[method-assign]
+    typed_ms = (NOW_US - minutes * MINUTE_US) // 1000
+    page = client_of(running).get(f"/spray?outlet=spray-gun&surface=18.5&at={typed_ms}")
+    assert page.status_code == 200
+    assert ("as you typed it" in page.text) is counts
+    old = "The surface was measured more than 30 minutes ago: measure it again."
+    assert (old in words_of(page.text)) is not counts
+
+
 def test_a_us_shop_types_fahrenheit(running: FakeRunning) -> None:
     running.site = a_site(units="us")
     known = judged(gun_view(291.65), "care", "care", "care")

@@ -41,6 +41,9 @@ def test_a_surface_that_is_typed_in_gives_its_margin(
     assert spread_in(card, "K") == pytest.approx(18.5 - DEW_POINT_C, abs=0.25)
     assert person.read("#out-spray-gun .verdict") == "Care"  # the line's, whose width is large
     assert person.find("#surface-c-spray-gun").get_attribute("value") == "18,5"
+    assert (
+        f"&at={shop.clock.wall_us // 1000}" in person.browser.current_url
+    )  # for how long it counts
     assert person.complaints() == []
 
 
