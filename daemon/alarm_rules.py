@@ -167,11 +167,27 @@ class AlarmRules:
     ) -> Watched:
         definition = self.definitions[f"{sensor}-sensor-fault"]
         fault = self._fault(state, channels) or contradiction
+        if fault and self._nobody_spoke(state):
+            return definition, "between", state.alarms[definition.id].text
         if fault:
             look = "" if fault == contradiction else ". Look at its wiring and run `dripleg check`."
             text = f"{sensor}: {fault}{look}"
             return definition, "so", text
         return definition, "not so", f"{sensor}: answers again."
+
+    def _nobody_spoke(self, state: CoreState) -> bool:
+        """Whether every part has been silent at once: dripleg did not run, and no part is to blame.
+
+        While it runs, a part that fails says so. Nothing can be told of one part alone, nor of a
+        record whose contacts tell changes only.
+        """
+        if len(self._sensors) < 2:
+            return False
+        since_us = state.time_us - STALE_AFTER_PERIODS * self.model.period_us
+        return all(
+            record.heard_us < since_us and not record.only_edges
+            for record in state.channels.values()
+        )
 
     def _salt_check(self, state: CoreState, sensor: str) -> Watched:
         """Once a humidity sensor was checked, it is checked again: elements drift."""
