@@ -75,8 +75,8 @@ export function flush() {
       for (const tap of kept()) {
         if (underway.has(tap.id) || !kept().some((still) => still.id === tap.id)) continue;
         const outcome = await attempt(tap);
-        if (outcome.kept) break;
-        through.push({ tap, outcome });
+        if (outcome.lost) break; // none of the others would arrive either
+        if (!outcome.kept) through.push({ tap, outcome });
       }
     } finally {
       flushing = null;
@@ -113,7 +113,7 @@ async function post(tap, again) {
     });
   } catch {
     change(tap.id, { offset: tap.offset ?? clockOffsetMs });
-    return { kept: "there is no connection" };
+    return { kept: "there is no connection", lost: true };
   }
   const answer = await response.json().catch(() => ({}));
   const done = again && answer.type === "/problems/nothing-to-acknowledge"; // by the first try
@@ -121,7 +121,9 @@ async function post(tap, again) {
     forget(tap.id);
     return { taken: true, answer };
   }
-  if (response.status >= 500 || [401, 403, 429].includes(response.status)) {
+  // what this phone's key may not do is refused at once; a tap that waited for a key waits on
+  const waits = [401, 429].includes(response.status) || (again && response.status === 403);
+  if (response.status >= 500 || waits) {
     change(tap.id, { why: words(answer), offset: tap.offset ?? clockOffsetMs });
     return { kept: words(answer) };
   }

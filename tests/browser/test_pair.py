@@ -3,6 +3,7 @@ daemon that asks for keys."""
 
 from __future__ import annotations
 
+import json
 from collections.abc import Iterator
 from dataclasses import dataclass, replace
 
@@ -12,6 +13,7 @@ from selenium import webdriver
 from api.app import create_app
 from api.server import ApiServer
 from daemon.clock import HOUR_US
+from daemon.journal import Drain
 from daemon.keys import Scope, make
 from tests.api.fake import NOW_US, FakeRunning, a_site
 from tests.browser.person import Person
@@ -89,6 +91,35 @@ def test_a_phone_forgets_its_key_when_it_is_told_to(person: Person, shop: Locked
     person.taps("#forget button")
     person.waits_to_read("main", "This phone is not paired yet.")
     assert person.browser.get_cookies() == []
+
+
+def test_what_a_key_may_not_do_is_refused_and_holds_up_nothing(
+    person: Person, shop: LockedShop
+) -> None:
+    person.open(shop.link("read"))
+    person.waits_to_read("#line", "to drain")
+    person.taps("#drained-riser")
+    person.waits_to_read("#said-riser", "Not recorded. The key ")
+    assert person.read("#net") == ""
+    person.open(shop.link("read", "record"))
+    person.waits_to_read("#line", "to drain")
+    # and where one tap waits for a key, those behind it are sent all the same
+    stuck = {
+        "id": "a",
+        "path": "/api/v1/stations/tank/service",
+        "label": "old",
+        "at": 0,
+        "tries": 1,
+    }
+    stuck["body"] = {"what": "sensor replaced", "sensor": "tank-gauge"}
+    drain = {"id": "b", "path": "/api/v1/traps/tank/drains", "label": "tank", "at": 0, "tries": 1}
+    drain["body"] = {"key": "k"}
+    kept = f"localStorage.setItem('dripleg.kept', '{json.dumps([stuck, drain])}')"
+    person.browser.execute_script(kept)
+    person.is_back_online()
+    person.waits_for(lambda: len(shop.running.journal) == 1)
+    assert isinstance(shop.running.journal[0].body, Drain)
+    assert "old" in person.read("#net")
 
 
 def test_a_revoked_link_says_so_and_pairs_nothing(person: Person, shop: LockedShop) -> None:
