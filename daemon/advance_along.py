@@ -19,7 +19,7 @@ from daemon.falls_along import gauges_after, may_fall
 from daemon.followed import Followed
 from daemon.judged_along import first
 from daemon.looks_along import Looks, changes
-from daemon.moisture import dew_sensors, floats
+from daemon.moisture import dew_sensors
 from daemon.moisture.along import Stretch, fits, stretch
 from daemon.moisture.along_air import Ints
 from daemon.moisture.along_drains import let_down_from
@@ -58,12 +58,7 @@ class AdvanceAlong:
     def __init__(self, core: Core) -> None:
         self.core = core
         plan = core.model.plan
-        self.fits = (
-            fits(core.model)
-            and core.hourly is None
-            and not list(floats.switches(plan))
-            and not dew_sensors.stations(plan)
-        )
+        self.fits = fits(core.model) and core.hourly is None and not dew_sensors.stations(plan)
         self.most = max(ELEMENTS // plan.line.members, 2 * LEAST_TICKS)
 
     def advance(self, state: CoreState, record: Record, times_us: Ints) -> Along:

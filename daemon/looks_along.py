@@ -12,9 +12,11 @@ import numpy as np
 import numpy.typing as npt
 
 from daemon.advance import Core
-from daemon.drain_alarms import LIMITED_AT
+from daemon.contradictions import RUNS_OUT_US
+from daemon.drain_alarms import LIMITED_AT, NOT_PASSING_US
 from daemon.due import NO_DATE, RAISED_AT, RETURNS_BELOW
 from daemon.fitting_alarms import FREEZES_KG, FREEZES_ON_ITS_WAY_KG, FREEZING_K
+from daemon.moisture import floats
 from daemon.moisture.along import Stretch
 from daemon.moisture.ensemble import Array
 from daemon.moisture.model import State
@@ -57,7 +59,7 @@ class Looks:
 
     def rows(self) -> set[int]:
         """The ticks in which a condition may change, as far as the stretch tells."""
-        rows = {*self._traps(), *self._frost(), *self._drains()}
+        rows = {*self._traps(), *self._frost(), *self._drains(), *self._switches()}
         return {row for row in rows if row < self.ticks}
 
     def margins(self) -> list[int]:
@@ -88,19 +90,9 @@ class Looks:
     def _levels(self, rows: list[int], trap: Array) -> Levels:
         """How traps stand to their drain-at levels and to their capacities, (2, traps, ...);
         `trap` is (traps, ..., members)."""
-        state, numbers = self.found.before, [self.core.rules.trap_rows.index(i) for i in rows]
-        several = (len(rows), *(1,) * (trap.ndim - 2), -1)
-        capacity, started, factor = (
-            each[rows].reshape(several)
-            for each in (
-                state.parameters.water.capacity_kg,
-                state.round_start,
-                state.parameters.round_factor,
-            )
-        )
-        held = started + (trap - started) * factor
-        contents = np.minimum(np.maximum(held, 0.0), capacity)
-        limits = self.core.rules.drain_at_kg[numbers].reshape(several)
+        numbers = [self.core.rules.trap_rows.index(i) for i in rows]
+        contents, capacity = self._contents(rows, trap)
+        limits = self.core.rules.drain_at_kg[numbers].reshape(len(rows), *(1,) * (trap.ndim - 1))
         return np.array([level(_share(contents >= limits)), level(_share(trap >= capacity))])
 
     def _drains(self) -> Iterator[int]:
@@ -111,6 +103,49 @@ class Looks:
             last = np.maximum.accumulate(np.where(told >= 0.0, np.arange(len(told)), -1))
             limited = np.where(last >= 0, told[last], was)
             yield from changes(was >= LIMITED_AT, limited >= LIMITED_AT)
+
+    def _contents(self, rows: list[int], trap: Array) -> tuple[Array, Array]:
+        """`Model.contents` of traps that hold this much, (traps, ..., members), and capacities."""
+        state, several = self.found.before, (len(rows), *(1,) * (trap.ndim - 2), -1)
+        capacity, started, factor = (
+            each[rows].reshape(several)
+            for each in (
+                state.parameters.water.capacity_kg,
+                state.round_start,
+                state.parameters.round_factor,
+            )
+        )
+        held = started + (trap - started) * factor
+        return np.minimum(np.maximum(held, 0.0), capacity), capacity
+
+    # ---- float switches ----
+
+    def _switches(self) -> Iterator[int]:
+        """A switch that contradicts what is believed, or that water has stood at for long."""
+        times_us = self.found.course.times_us[: self.ticks]
+        all_us = np.concatenate(([self.before.time_us], times_us))
+        for i, switch in floats.switches(self.core.model.plan):
+            seen = self.before.sensed.floats.get(switch.channel)
+            if seen is None or seen.closed is None:
+                continue
+            stands = all_us - seen.since_us >= NOT_PASSING_US
+            yield from changes(bool(stands[0]), stands[1:])
+            drained_us = self.before.traps[self.core.model.plan.stations[i].id].last_drain_us
+            ready = all_us - max(drained_us, seen.since_us) >= RUNS_OUT_US
+            if not ready.any():
+                continue
+            trap = np.concatenate(
+                (self.found.water.state.trap[i][None], self.found.water.trap_rows(i))
+            )
+            contents = self._contents([i], trap[None, : self.ticks + 1])[0][0]
+            level = switch.level
+            if seen.closed:
+                against = contents < level.value - level.give_or_take
+            else:
+                against = contents > level.value + level.give_or_take
+            sure = np.count_nonzero(against, axis=1) >= floats.SURE * contents.shape[1]
+            wrong = ready & sure
+            yield from changes(bool(wrong[0]), wrong[1:])
 
     # ---- frost ----
 

@@ -9,6 +9,7 @@ import numpy as np
 
 from daemon.advance import Core
 from daemon.judged_along import JudgedAlong, Readings, first, judge_along
+from daemon.moisture import floats
 from daemon.moisture.along_air import Bools, Course, Ints
 from daemon.moisture.contact import STALE_AFTER_PERIODS, ContactState, integrate
 from daemon.moisture.ensemble import Array
@@ -74,7 +75,11 @@ def ticks_along(core: Core, before: CoreState, record: Record, times_us: Ints) -
     period after the state, all but the last within one hour."""
     said = {name: _readings(record, name, before.time_us, times_us) for name in core.site.channels}
     judged = judge_along(core.judging, before.quality, before.channels, said, times_us)
-    good = min(judged.good, _as_before(core, before, said, times_us))
+    good = min(
+        judged.good,
+        _as_before(core, before, said, times_us),
+        _float(core, before, said, len(times_us)),
+    )
     model, period_us = before.model, core.model.period_us
     values, told_us, silent = {}, {}, {}
     for name in core.model.plan.channels:
@@ -139,6 +144,17 @@ def _as_before(core: Core, before: CoreState, said: Mapping[str, Readings], time
         _, heard_us = _along(one, 0.0, since_us, len(times_us))
         silent = times_us - np.maximum(heard_us, before.begun_us) > stale_us
         good = min(good, first(silent != (before.time_us - since_us > stale_us), len(times_us)))
+    return good
+
+
+def _float(core: Core, before: CoreState, said: Mapping[str, Readings], ticks: int) -> int:
+    """The first tick in which a float switch closes or opens."""
+    good = ticks
+    for _, switch in floats.switches(core.model.plan):
+        seen, one = before.sensed.floats.get(switch.channel), said[switch.channel]
+        closed = None if seen is None else seen.closed
+        moves = np.full(len(one.values), True) if closed is None else (one.values > 0.5) != closed
+        good = min(good, int(one.tick[moves.argmax()]) if moves.any() else ticks)
     return good
 
 
