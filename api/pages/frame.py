@@ -33,7 +33,7 @@ from collections.abc import Callable
 from pathlib import Path
 from typing import Any
 
-from jinja2 import Environment, FileSystemLoader, StrictUndefined, pass_context
+from jinja2 import DictLoader, Environment, StrictUndefined, pass_context
 from jinja2.runtime import Context
 from starlette.responses import HTMLResponse
 
@@ -71,8 +71,10 @@ def _with_degree_signs(value: object) -> object:
 
 
 def _environment() -> Environment:
+    # read once: an update beside a running daemon must not mix its templates with this program
+    texts = {path.name: path.read_text("utf-8") for path in sorted(TEMPLATES.glob("*.html"))}
     made = Environment(
-        loader=FileSystemLoader(TEMPLATES),
+        loader=DictLoader(texts),
         autoescape=True,
         undefined=StrictUndefined,
         finalize=_with_degree_signs,

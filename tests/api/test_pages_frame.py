@@ -6,6 +6,7 @@ import re
 
 import pytest
 
+from api.pages import frame
 from api.pages.assets import ASSETS
 from tests.api.client import Client
 
@@ -42,6 +43,20 @@ def test_a_file_that_has_not_changed_is_not_sent_again(client: Client, name: str
     again = client.get(f"/static/{name}", headers={"if-none-match": first.headers["etag"]})
     assert (first.status_code, again.status_code, again.content) == (200, 304, b"")
     assert first.headers["cache-control"] == again.headers["cache-control"] == "no-cache"
+
+
+def test_an_update_beside_a_running_daemon_does_not_reach_its_pages(
+    monkeypatch: pytest.MonkeyPatch,
+) -> None:
+    """New templates with the old program are a page that fails: they are read once, at its start."""
+    made = frame._environment()
+
+    def refuse(*arguments: object, **more: object) -> object:
+        raise AssertionError(f"{arguments[0]!r} was opened")
+
+    monkeypatch.setattr("builtins.open", refuse)
+    for path in frame.TEMPLATES.iterdir():
+        assert made.get_template(path.name).name == path.name
 
 
 def test_the_style_is_for_light_and_dark_and_for_paper(client: Client) -> None:
