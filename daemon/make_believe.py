@@ -137,8 +137,8 @@ class MakeBelieveShop:
         dry = air.saturated_humidity_ratio(DRYER_K, self.pressure_pa + BAROMETER_PA)
         chilled = TO_DRYER * max(0.0, leaving - pipe - used * dry)
         self._catch("fine-coalescer", self._catch("dryer", carried * TO_DRYER + chilled))
-        if self.traps_kg["dryer"] >= FLOAT_OPENS_KG:
-            self.drain("dryer")
+        # a ball float keeps its seat under water: it passes what is above its level, and no air
+        self.traps_kg["dryer"] = min(self.traps_kg["dryer"], FLOAT_OPENS_KG)
 
     def _catch(self, trap: str, liquid: float) -> float:
         caught = SEPARATIONS[trap] * liquid
