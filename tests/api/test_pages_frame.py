@@ -48,7 +48,7 @@ def test_a_file_that_has_not_changed_is_not_sent_again(client: Client, name: str
 def test_an_update_beside_a_running_daemon_does_not_reach_its_pages(
     monkeypatch: pytest.MonkeyPatch,
 ) -> None:
-    """New templates with the old program are a page that fails: they are read once, at its start."""
+    """New templates with the old program would be a page that fails."""
     made = frame._environment()
 
     def refuse(*arguments: object, **more: object) -> object:
