@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from hashlib import blake2b
 from pathlib import Path
 
@@ -16,9 +17,15 @@ _TYPES = {".css": "text/css", ".js": "text/javascript", ".svg": "image/svg+xml"}
 router = APIRouter(include_in_schema=False)
 
 
+def slim(text: str) -> str:
+    """Without what is for the maintainer alone: indents, empty lines, lines that are a comment."""
+    lines = (line.strip() for line in re.sub(r"/\*.*?\*/", "", text, flags=re.DOTALL).splitlines())
+    return "\n".join(line for line in lines if line and not line.startswith("//")) + "\n"
+
+
 class _Asset:
     def __init__(self, path: Path) -> None:
-        self.content = path.read_bytes()
+        self.content = slim(path.read_text("utf-8")).encode()
         self.media_type = _TYPES[path.suffix]
         tag = blake2b(self.content, digest_size=8).hexdigest()
         # kept, and asked for each time: after an update no page meets an old script

@@ -70,6 +70,11 @@ def _with_degree_signs(value: object) -> object:
     return value.replace("degC", "\N{DEGREE SIGN}C").replace("degF", "\N{DEGREE SIGN}F")
 
 
+def _place(points: float) -> str:
+    """A place in a drawing, as short as can be: a page has hundreds."""
+    return f"{points:.1f}".removesuffix(".0")
+
+
 def _environment() -> Environment:
     # read once: an update beside a running daemon must not mix its templates with this program
     texts = {path.name: path.read_text("utf-8") for path in sorted(TEMPLATES.glob("*.html"))}
@@ -83,6 +88,7 @@ def _environment() -> Environment:
     )
     names = (name for name, _ in inspect.getmembers(Words, inspect.isfunction))
     made.filters.update({name: _filter(name) for name in names if not name.startswith("_")})
+    made.filters["place"] = _place
     made.globals.update(pages=PAGES, token=TOKEN)
     return made
 
