@@ -133,6 +133,8 @@ def counted(number: int, one: str, many: str = "") -> str:
 
 def _interval(interval: Interval, show: Callable[[float], str]) -> str:
     low, middle, high = (show(each) for each in interval.values)
+    if low == high:
+        return middle
     number, _, unit = low.partition(" ")
     return f"{middle} ({number if high.endswith(f' {unit}') else low} to {high})"
 

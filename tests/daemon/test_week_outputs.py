@@ -24,6 +24,7 @@ from daemon.weekly.rows import read_rows
 from daemon.weekly.sheet import CAUTIONS, sheet
 from daemon.weekly.text import WIDTH, text_of
 from daemon.weekly.weeks import Week
+from daemon.weekly.words import Words
 from tests.daemon.shops import SITE, site
 from tests.daemon.week_rows import HeldRows, rows_of, transition
 
@@ -189,6 +190,12 @@ def test_every_chart_says_in_words_what_it_draws() -> None:
     first_day = [bar for bar in water.bars if bar.y == water.bars[0].y]
     assert [round(bar.width / first_day[0].width, 6) for bar in first_day] == [1.0, 1.0, 1.0]
     assert "Mon 720 ml" in water.words
+
+
+def test_an_interval_whose_ends_read_alike_is_one_figure() -> None:
+    assert Words(METRIC).waters(Interval(0.0, 0.0001, 0.0002)) == "0 ml"
+    assert Words(METRIC).waters(Interval(0.3, 0.41, 0.56)) == "410 ml (300 to 560 ml)"
+    assert Words(US).differences(3.0, 3.01, 3.02) == "5.4 degF"
 
 
 def test_words_at_the_end_of_a_bar_stay_within_the_chart() -> None:
