@@ -37,6 +37,7 @@ _KINDS = {
     "desiccant": "desiccant dryer",
 }
 _OUT_OF_DATE = "This page was out of date, and nothing was recorded: tap again."
+WITH_ELEMENT = ("separator", "coalescer", "refrigerated", "desiccant")
 LEFT, RIGHT = 10.0, 310.0  # of the drawing, in its own units
 
 
@@ -61,6 +62,7 @@ class StationCard:
     wet: str  # what the air that leaves is like, in words
     fittings: tuple[tuple[str, str], ...]
     changes: tuple[Serviced, ...]  # what can be said of its parts
+    iced: bool  # cooled by ice that is renewed
     sensors: tuple[str, ...]  # those that speak of this place
     outlets: tuple[str, ...]  # that hang on it
 
@@ -115,6 +117,7 @@ def _cards(daemon: Running, views: Sequence[StationView]) -> list[StationCard]:
             wet=_wet(view),
             fittings=tuple(station_words(stations[view.station], site.units)),
             changes=_changes(stations[view.station], site),
+            iced=stations[view.station].ice is not None,
             sensors=_sensors(stations[view.station]),
             outlets=tuple(each.id for each in site.line.outlets if each.after == view.station),
         )
@@ -153,7 +156,7 @@ def _wet(view: StationView) -> str:
 def _changes(station: Station, site: Site) -> tuple[Serviced, ...]:
     """What can be said of a station's parts, the likeliest first."""
     found: list[Serviced] = []
-    if station.kind in ("separator", "coalescer", "refrigerated", "desiccant"):
+    if station.kind in WITH_ELEMENT or station.ice is not None:
         found.append("element changed")
     if station.trap is not None and station.trap.drain in SELF_EMPTYING:
         found.append("drain seen working")

@@ -66,3 +66,11 @@ def test_the_start_leads_to_every_page(client: Client) -> None:
 @pytest.mark.parametrize("path", ["/docs", "/redoc", "/docs/oauth2-redirect"])
 def test_documentation_pages_that_load_from_elsewhere_are_off(client: Client, path: str) -> None:
     assert client.get(path).status_code == 404
+
+
+def test_a_shop_without_sensors_is_not_told_that_they_answer(running: FakeRunning) -> None:
+    assert "every sensor answers" in client_of(running).get("/").text
+    running.site = replace(running.site, channels={})
+    text = client_of(running).get("/").text
+    assert "every sensor answers" not in text
+    assert "the site file names no sensor, so all of this rests on defaults" in text

@@ -9,6 +9,7 @@ import pytest
 
 from api.pages.forms import TOKEN
 from daemon.journal import Service
+from daemon.moisture.description import Fixed
 from daemon.views import Interval, StationValue
 from tests.api.client import Client
 from tests.api.fake import FakeRunning, a_site
@@ -119,3 +120,14 @@ def test_only_parts_that_are_there_are_offered(client: Client) -> None:
     assert "element changed" not in tank  # a tank has none
     assert '<option value="tank-gauge">' in tank
     assert "compressor serviced" in page[: page.index('id="at-tank"')]
+
+
+def test_a_bath_s_new_ice_can_be_noted(running: FakeRunning, client: Client) -> None:
+    line = running.site.line
+    iced = [replace(s, ice=Fixed(5.0, 0.5)) if s.id == "tank" else s for s in line.stations]
+    running.site = replace(running.site, line=replace(line, stations=tuple(iced)))
+    page = shown(client)
+    tank = page[page.index('id="at-tank"') :]
+    assert re.search(
+        r'name="what" value="element changed"[^>]*> element changed: new ice</label>', tank
+    )
