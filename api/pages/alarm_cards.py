@@ -46,7 +46,8 @@ def _card(alarm: Alarm) -> AlarmCard:
     lengths = LENGTHS_URGENT if alarm.priority == "high" else LENGTHS
     return AlarmCard(
         alarm.id,
-        alarm.text,
+        # put off before it was ever raised, it has nothing to say yet
+        alarm.text or f"{alarm.source}: {alarm.kind.replace('-', ' ')}",
         alarm.priority,
         alarm.since_us,
         _WORDS.get(alarm.state, alarm.state),

@@ -7,8 +7,9 @@ from dataclasses import replace
 
 import pytest
 
+from daemon.clock import HOUR_US
 from tests.api.client import Client, client_of
-from tests.api.fake import FakeRunning
+from tests.api.fake import NOW_US, FakeRunning
 
 
 def text_of(client: Client) -> str:
@@ -74,3 +75,14 @@ def test_a_shop_without_sensors_is_not_told_that_they_answer(running: FakeRunnin
     text = client_of(running).get("/").text
     assert "every sensor answers" not in text
     assert "the site file names no sensor, so all of this rests on defaults" in text
+
+
+def test_an_alarm_that_is_put_off_before_it_was_raised_has_a_name(running: FakeRunning) -> None:
+    normal = running.standing["tank-drain-due"]
+    until_us = NOW_US + HOUR_US
+    running.standing[normal.id] = replace(
+        normal, state="shelved", text="", shelved_until_us=until_us
+    )
+    text = text_of(client_of(running))
+    assert "tank: drain due Medium priority" in text
+    assert "put off until Tue 1 Dec, 10:00" in text
