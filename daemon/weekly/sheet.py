@@ -123,7 +123,9 @@ def _lead(words: Words, log: WeekLog) -> str:
 
 def _known(words: Words, log: WeekLog) -> Iterator[str]:
     watched = log.watched
-    if not log.over:
+    if not log.over and log.begun_us is not None and log.until_us <= log.begun_us:
+        yield "This week is not over, nor is the first full hour of the record."
+    elif not log.over:
         yield f"This week is not over: it is told as far as {words.when(log.until_us)}."
     if log.begun_us is not None:
         begun = words.when(log.begun_us)

@@ -10,7 +10,7 @@ from typing import Any
 import pytest
 from pypdf import PdfReader
 
-from daemon.clock import HOUR_US
+from daemon.clock import HOUR_US, MINUTE_US
 from daemon.hour_figures import DrainCheck
 from daemon.journal import Drain, Entry
 from daemon.site.types import Costs, Site
@@ -196,6 +196,13 @@ def test_an_interval_whose_ends_read_alike_is_one_figure() -> None:
     assert Words(METRIC).waters(Interval(0.0, 0.0001, 0.0002)) == "0 ml"
     assert Words(METRIC).waters(Interval(0.3, 0.41, 0.56)) == "410 ml (300 to 560 ml)"
     assert Words(US).differences(3.0, 3.01, 3.02) == "5.4 degF"
+
+
+def test_in_its_first_hour_a_record_is_not_told_as_far_as_before_it_began() -> None:
+    rows = HeldRows(begun_us=FROM_US + 100 * MINUTE_US)
+    at_us = FROM_US + 110 * MINUTE_US
+    known = sheet(METRIC, week_log(METRIC, read_rows(rows, WEEK, METRIC, at_us))).known
+    assert known[0] == "This week is not over, nor is the first full hour of the record."
 
 
 def test_words_at_the_end_of_a_bar_stay_within_the_chart() -> None:
