@@ -115,12 +115,12 @@ def demo(folder: Path, *options: str) -> subprocess.Popen[str]:
 
 def test_a_run_says_where_to_look_and_stops_by_itself(tmp_path: Path) -> None:
     port = free_port()
-    process = demo(tmp_path, "--for", "6s", "--speed", "600", "--port", str(port))
+    process = demo(tmp_path, "--for", "12s", "--speed", "600", "--port", str(port))
     out, err = process.communicate(timeout=TIMEOUT_S)
     assert (process.returncode, err) == (0, "")
     assert "make-believe shop" in out
     assert f"http://127.0.0.1:{port}/api/v1/traps\n" in out
-    assert "An hour there passes in 6 s here, for 6 s." in out
+    assert "An hour there passes in 6 s here, for 12 s." in out
     assert "Without MQTT" in out
     assert re.search(r"tank +\d+ ml \(\d+ to \d+ ml\)", out)
     assert "tank-drain-due: unacknowledged" in out

@@ -51,6 +51,7 @@ def test_every_state_of_a_site_is_remembered() -> None:
         f"{BASE}/{rest}"
         for rest in (
             "service",
+            "weekly",
             "traps/tank",
             "traps/riser",
             "traps/bowl",
