@@ -15,8 +15,6 @@ from sensors.reading import Quantity
 VolumeUnit = Literal["ml", "L", "oz", "gal"]
 ShownIn = Literal["si", "site", "metric", "us"]
 
-ML_PER_KG = 1e6 / WATER_KG_PER_M3
-
 # A log outside these years is a typing error or a clock that was never set.
 EARLIEST_US = parse_rfc3339("1970-01-01T00:00:00Z")
 LATEST_US = parse_rfc3339("2200-01-01T00:00:00Z")

@@ -6,8 +6,9 @@ from typing import Annotated, Literal
 
 from pydantic import BaseModel, Field
 
-from api.quantities import ML_PER_KG, si_unit
+from api.quantities import si_unit
 from daemon.moisture.description import (
+    ML_PER_KG,
     Compressor,
     Fixed,
     Like,

@@ -15,7 +15,7 @@ from daemon.clock import format_rfc3339
 from daemon.hour_figures import Least
 from daemon.journal import Blotted, Outcome
 from daemon.moisture.air import REFERENCE_DRY_AIR_KG_PER_M3
-from daemon.moisture.description import WATER_KG_PER_M3
+from daemon.moisture.description import ML_PER_KG
 from daemon.site.types import Site
 from daemon.units import from_si
 from daemon.views import Interval
@@ -226,14 +226,11 @@ def _scaled(found: Interval | None, times: float, digits: int) -> IntervalOut | 
 
 
 def _kg_in_ml(kg: float) -> float:
-    return round(from_si(kg / WATER_KG_PER_M3, "ml", "volume"), 1)
+    return round(kg * ML_PER_KG, 1)
 
 
 def _ml(found: Interval | None) -> IntervalOut | None:
-    return _scaled(found, _ML_PER_KG, 1)
-
-
-_ML_PER_KG = from_si(1.0 / WATER_KG_PER_M3, "ml", "volume")
+    return _scaled(found, ML_PER_KG, 1)
 
 
 def _watched(watched: Watched) -> WatchedOut:

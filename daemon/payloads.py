@@ -14,14 +14,13 @@ from daemon.alarms import Alarm, Transition
 from daemon.clock import SECOND_US, format_rfc3339, parse_rfc3339
 from daemon.errors import JournalError
 from daemon.journal import Drain, Entry, Outcome
-from daemon.moisture.description import WATER_KG_PER_M3
+from daemon.moisture.description import ML_PER_KG, WATER_KG_PER_M3
 from daemon.reminders import Reminder
 from daemon.units import to_si
 from daemon.views import TrapView
 
 Service = Literal["running", "stopped", "gone"]
 
-ML_PER_KG = 1000.0
 _MOST_BYTES = 4096
 _LARGEST = sys.float_info.max
 _TEXTS = ("by", "look", "key")

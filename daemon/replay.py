@@ -19,7 +19,7 @@ from daemon.errors import BalanceError, ReplayError
 from daemon.hours_left import hours_left
 from daemon.journal import Drain, Entry
 from daemon.moisture.air import REFERENCE_DRY_AIR_KG_PER_M3
-from daemon.moisture.description import WATER_KG_PER_M3
+from daemon.moisture.description import ML_PER_KG
 from daemon.moisture.ensemble import Array, percentiles
 from daemon.moisture.learning import Learned
 from daemon.parameters import parameters_table
@@ -32,7 +32,6 @@ from daemon.unit_tables import ZERO_CELSIUS_K
 from daemon.views import Interval
 from sensors.reading import Reading
 
-ML_PER_KG = 1e6 / WATER_KG_PER_M3
 RESIDUAL_DIGITS = 12  # of a share of all water: it is off at 1e-9
 REFERENCE_L_PER_KG = 1e3 / REFERENCE_DRY_AIR_KG_PER_M3
 TRAPS_HEADER = "time,trap,p05_ml,p50_ml,p95_ml,probability_due"

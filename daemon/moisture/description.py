@@ -11,6 +11,7 @@ from dataclasses import dataclass
 from typing import Literal
 
 WATER_KG_PER_M3 = 1000.0  # liquid water; 0.2 % at 20 degC, far below any cup's error
+ML_PER_KG = 1e6 / WATER_KG_PER_M3
 
 StationKind = Literal[
     "intake",
