@@ -8,9 +8,9 @@ from dataclasses import dataclass
 
 from daemon.alarms import Transition
 from daemon.clock import format_rfc3339
+from daemon.going_back import TOO_OLD_US
 from daemon.journal import Drain, Entry, body_to_json
 from daemon.moisture.description import WATER_KG_PER_M3
-from daemon.recovery import TOO_OLD_US
 from daemon.units import from_si, recorded_from_si, to_si
 from sensors.reading import Channel, Reading, in_steps, reading
 

@@ -4,14 +4,14 @@ from __future__ import annotations
 
 import logging
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 from daemon.advance import Core, Estimate
 from daemon.alarms import Transition
 from daemon.checkpoint import decode, encode
-from daemon.clock import DAY_US, format_rfc3339
+from daemon.clock import format_rfc3339
 from daemon.errors import StoreError
-from daemon.hour_figures import Noted, joined
+from daemon.going_back import TOO_OLD_US, Back, GoingBack
 from daemon.journal import Entry
 from daemon.moisture.ensemble import spread
 from daemon.moisture.line import new_ledger
@@ -19,24 +19,9 @@ from daemon.outlet_record import OutletRecord
 from daemon.site_parts import fingerprint, same_line, untouched
 from daemon.state import CoreState, Inputs
 from daemon.store.store import Store
-from daemon.ticks import ticks
-from sensors.quality import as_given
 from sensors.reading import Reading
 
 log = logging.getLogger("dripleg")
-
-TOO_OLD_US = 7 * DAY_US  # an entry dated before this is kept, but the model does not go back
-
-
-@dataclass(frozen=True, slots=True)
-class Back:
-    """A state that was come back to."""
-
-    state: CoreState
-    pending: list[Entry]  # committed, dated after it
-    rewritten: bool  # checkpoints after the one it was made from are gone: they were wrong
-    from_us: int  # the time of that one
-    noted: Noted  # for the weekly log, since then
 
 
 class Recovery:
@@ -53,38 +38,18 @@ class Recovery:
     def come_back(self, grid_us: int, until_us: int, before_us: int | None = None) -> Back | None:
         """The state at the last stored tick up to `until_us`, from the latest checkpoint that is
         earlier than `before_us`, or from the latest of all; None without one of this line."""
+        going = self.going_back(grid_us, until_us, before_us)
+        return None if going is None else going.go_on(until_us)
+
+    def going_back(
+        self, grid_us: int, until_us: int, before_us: int | None = None
+    ) -> GoingBack | None:
+        """The same, to be gone on with a little at a time."""
         latest_us = until_us if before_us is None else before_us - 1
         state, rewritten = self._latest_complete(grid_us, latest_us)
         if state is None:
             return None
-        entries = [
-            entry
-            for entry in self._store.entries(from_us=state.time_us + 1)
-            if entry.at_us >= entry.written_us - TOO_OLD_US
-        ]
-        entries.sort(key=lambda entry: (entry.at_us, entry.seq))
-        from_us, noted, taken = state.time_us, [], 0
-        for tick_us, readings in self._store.ticks(state.time_us, until_us):
-            first = taken
-            while taken < len(entries) and entries[taken].at_us <= tick_us:
-                taken += 1
-            for each in ticks(
-                grid_us,
-                self._core.model.period_us,
-                state.time_us,
-                self._core.heard_us(state),
-                sorted(as_given(readings), key=lambda reading: reading.time_us),
-                entries[first:taken],
-                tick_us,
-            ):
-                state, estimate, _ = self._core.advance(state, each.now_us, each.inputs)
-                noted += [estimate.noted] if estimate.noted else []
-        if before_us is not None:
-            self._store.drop_checkpoints_after(before_us - 1)
-        # an undoing that no tick has followed: what was announced has not been corrected yet
-        untold = any(undo.at_us > state.time_us for undo in self._store.undoings().values())
-        rewritten = rewritten or before_us is not None or untold
-        return Back(state, entries[taken:], rewritten, from_us, joined(noted))
+        return GoingBack(self._core, self._store, grid_us, before_us, state, rewritten)
 
     def _latest_complete(self, grid_us: int, until_us: int) -> tuple[CoreState | None, bool]:
         """The latest checkpoint that knows of every entry dated before it.

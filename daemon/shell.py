@@ -20,6 +20,7 @@ from daemon.clock import HOUR_US, MINUTE_US, Clock, format_rfc3339
 from daemon.dew_points import dew_point_views
 from daemon.errors import JournalError, StoreError, UndoError
 from daemon.foresight import Score
+from daemon.going_back import TOO_OLD_US, Back, GoingBack
 from daemon.hour_figures import NOTHING, Noted, joined
 from daemon.hours_left import hours_left
 from daemon.journal import Body, Drain, Entry, Undo
@@ -37,7 +38,7 @@ from daemon.outbox import (
     trap_message,
 )
 from daemon.plant_figures import plant_view
-from daemon.recovery import TOO_OLD_US, Back, Recovery
+from daemon.recovery import Recovery
 from daemon.reminders import Reminder
 from daemon.site.types import Site
 from daemon.state import CoreState, Inputs
@@ -71,6 +72,7 @@ GRID_KEY = "grid_us"  # the time of the first tick ever
 LATE_AFTER_PERIODS = 3  # without a tick for so long, health says so
 MOST_WAITING = 100_000  # readings kept in memory while the store cannot take them
 SAMPLE_SHARE = 0.4  # of a period that sampling may take
+GO_BACK_SHARE = 0.05  # of a period that advancing again for a late entry may take
 
 
 class Sampling(Protocol):
@@ -112,6 +114,8 @@ class Shell:
         self._pending: list[Entry] = []  # committed, not yet taken in
         self._waiting: list[Reading] = []  # sampled while no tick was due
         self._started_us = clock.now_us()
+        self._going: GoingBack | None = None  # for late entries that are not reckoned with yet
+        self._going_for: set[int] = set()  # their numbers
         self._went_back = False  # since the last commit: checkpoints after it are wrong
         self._noted_back: list[Noted] = []  # for the weekly log, gathered anew and not committed
         self._renewed_us: int | None = None  # what was noted after that time is replaced
@@ -204,7 +208,7 @@ class Shell:
     def checkpoint(self) -> None:
         """Keep the state as it is now."""
         with self._lock:
-            if self._state is not None:
+            if self._state is not None and self._going is None:
                 blob = self._recovery.blob(self._state)
                 self._store.save_checkpoint(self._state.time_us, blob)
 
@@ -245,10 +249,10 @@ class Shell:
         readings = sorted(readings, key=lambda each: each.time_us)[-MOST_WAITING:]
         self._waiting = readings  # until they are committed
         self._record_presses(self._state, readings)
-        self._go_back_for_late_entries(now_us)
+        self._go_back_for_late_entries()
         state = self._state
         transitions = self._corrections(state, now_us)
-        entries = [entry for entry in self._pending if entry.at_us <= now_us]
+        entries = [e for e in self._pending if state.time_us < e.at_us <= now_us]
         entries.sort(key=lambda entry: (entry.at_us, entry.seq))
         estimate: Estimate | None = None
         judged: list[Reading] = []
@@ -305,6 +309,7 @@ class Shell:
 
     def _begin(self, now_us: int, readings: list[Reading]) -> None:
         at_now = [each for each in readings if each.time_us == now_us]
+        self._going = None
         state, first, transitions = self._recovery.begin(now_us, at_now)
         # what was recorded before the first tick: nothing of that time is known, so it counts now
         entries = [entry for entry in self._pending if entry.at_us <= now_us]
@@ -335,7 +340,7 @@ class Shell:
         drained = any(isinstance(entry.body, Drain) for entry in entries)
         full_hour = state.time_us // HOUR_US != before_us // HOUR_US
         blob = None
-        if checkpoint or drained or full_hour:
+        if self._going is None and (checkpoint or drained or full_hour):
             blob = self._recovery.blob(state)
         messages = self._messages(transitions, reminders)
         self._store.commit_tick(
@@ -387,28 +392,48 @@ class Shell:
 
     # ---- going back ----
 
-    def _go_back_for_late_entries(self, now_us: int) -> None:
-        """Entries dated before the last tick: advance again from the checkpoint before them."""
+    def _go_back_for_late_entries(self) -> None:
+        """Entries dated before the last tick: advance again from the checkpoint before them.
+
+        As long as that takes, ticks go on as if they had not been recorded.
+        """
         state = self._state
         assert state is not None
         late = [entry for entry in self._pending if entry.at_us <= state.time_us]
         if not late:
+            self._going = None
             return
-        usable = [entry for entry in late if entry.at_us >= now_us - TOO_OLD_US]
+        usable = [entry for entry in late if entry.at_us >= entry.written_us - TOO_OLD_US]
         for entry in late:
             if entry not in usable:
                 log.warning("entry %d is more than 7 days old: kept, not reckoned with", entry.seq)
+        going = self._on_the_way(usable, state.time_us)
         back = None
-        if usable:
-            earliest_us = min(entry.at_us for entry in usable)
-            back = self._recovery.come_back(self._grid_us, state.time_us, before_us=earliest_us)
-            if back is None:
-                log.warning("nothing to go back to before %s", format_rfc3339(earliest_us))
+        if going is not None:
+            end_s = self._clock.monotonic() + GO_BACK_SHARE * self.core.model.period_us / 1e6
+            back = going.go_on(state.time_us, lambda: self._clock.monotonic() < end_s)
         if back is None:
-            self._pending = [entry for entry in self._pending if entry.at_us > state.time_us]
+            waiting = usable if going is not None else []
+            later = [entry for entry in self._pending if entry.at_us > state.time_us]
+            self._pending = waiting + later
             return
         self._take_back(back)
         self._announced = {**state.alarms, **self._announced}
+
+    def _on_the_way(self, late: Sequence[Entry], time_us: int) -> GoingBack | None:
+        """Back to before these entries, or on from where the tick before had come to."""
+        if not late:
+            self._going = None
+            return None
+        new = [entry for entry in late if entry.seq not in self._going_for]
+        going = self._going
+        if going is None or any(entry.at_us <= going.reached_us for entry in new):
+            earliest_us = min(entry.at_us for entry in late)
+            going = self._recovery.going_back(self._grid_us, time_us, earliest_us)
+            if going is None:
+                log.warning("nothing to go back to before %s", format_rfc3339(earliest_us))
+        self._going, self._going_for = going, {entry.seq for entry in late}
+        return going
 
     def _corrections(self, state: CoreState, now_us: int) -> list[Transition]:
         """What was announced stays; where it no longer holds, a correction follows."""
@@ -419,7 +444,7 @@ class Shell:
         ]
 
     def _take_back(self, back: Back) -> None:
-        self._state, self._pending = back.state, back.pending
+        self._state, self._pending, self._going = back.state, back.pending, None
         self._went_back = self._went_back or back.rewritten
         self._noted_back.append(back.noted)
         renewed_us = back.from_us if self._renewed_us is None else self._renewed_us
@@ -552,7 +577,7 @@ class Shell:
         waiting = [entry for entry in self._pending if entry.seq != drain.seq]
         state = self._state
         if len(waiting) < len(self._pending) or state is None:
-            self._pending = waiting  # no tick had taken it in
+            self._pending, self._going = waiting, None  # no tick had taken it in
         elif drain.at_us >= drain.written_us - TOO_OLD_US:
             back = self._recovery.come_back(self._grid_us, state.time_us, before_us=drain.at_us)
             if back is not None:

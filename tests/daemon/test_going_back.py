@@ -1,0 +1,89 @@
+"""A late entry is reckoned with beside the ticks, which go on meanwhile; then nothing tells it."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from pathlib import Path
+
+import pytest
+
+from daemon.clock import MINUTE_US
+from daemon.journal import Drain, Entry, Undo
+from tests.daemon.shops import BEGUN_US, PERIOD_US
+from tests.daemon.test_recovery import Daemon, replayed
+from tests.daemon.test_shell import HandClock, bits
+
+TICKS = 800
+AT_US = BEGUN_US + 60 * PERIOD_US + 5
+
+
+class Slow(HandClock):
+    """Every look at it takes a second: of advancing again, ten minutes fit into a tick."""
+
+    def monotonic(self) -> float:
+        self.seconds += 1.0
+        return self.seconds
+
+
+@pytest.fixture
+def daemon(tmp_path: Path) -> Iterator[Daemon]:
+    made = Daemon(tmp_path / "birch-works.db", TICKS)
+    made.shell._clock = made.clock = Slow(BEGUN_US)
+    made.tick(*range(700))
+    made.clock.wall_us += 1
+    yield made
+    made.store.close()
+
+
+def late(daemon: Daemon, at_us: int = AT_US, trap: str = "tank") -> Entry:
+    return daemon.shell.record(Drain(trap, volume_kg=0.03, by="AM"), at_us).entry
+
+
+def test_ticks_go_on_while_it_goes_back_and_then_it_counts(daemon: Daemon) -> None:
+    entry = late(daemon)
+    daemon.tick(700)
+    assert bits(daemon.state) == replayed(daemon, 701)  # not yet, and nothing else is lost
+    daemon.tick(*range(701, 730))
+    assert bits(daemon.state) == replayed(daemon, 730, entry)
+    assert daemon.shell._pending == []
+
+
+def test_what_is_recorded_meanwhile_counts_too(daemon: Daemon) -> None:
+    first = late(daemon)
+    daemon.tick(700, 701)
+    daemon.clock.wall_us += 3
+    then = daemon.shell.record(Drain("riser", by="AM")).entry
+    daemon.tick(702, 703)
+    behind = late(daemon, AT_US + 2 * MINUTE_US, "bowl")  # where it has been already
+    ahead = late(daemon, BEGUN_US + 600 * PERIOD_US + 5, "bowl")
+    daemon.tick(*range(704, 740))
+    entries = sorted((first, then, behind, ahead), key=lambda entry: entry.at_us)
+    assert bits(daemon.state) == replayed(daemon, 740, *entries)
+
+
+@pytest.mark.parametrize("clean", [True, False])
+def test_a_stop_on_the_way_forgets_nothing(daemon: Daemon, clean: bool) -> None:
+    """Another drain lies on the way: at other times it leaves a checkpoint."""
+    entry = late(daemon)
+    daemon.tick(*range(700, 704))
+    daemon.clock.wall_us += 3
+    then = daemon.shell.record(Drain("riser", by="AM")).entry
+    daemon.tick(704, 705)
+    if clean:
+        daemon.stop()
+    else:
+        daemon.kill()
+    daemon.start()
+    assert bits(daemon.state) == replayed(daemon, 706, entry, then)
+
+
+def test_one_that_is_taken_back_on_the_way_never_was(daemon: Daemon) -> None:
+    entry = late(daemon)
+    daemon.tick(700, 701)
+    daemon.shell.record(Undo("tank", entry.seq, "AM"))
+    daemon.tick(*range(702, 720))
+    assert bits(daemon.state) == replayed(daemon, 720)
+    daemon.tick(720)  # a full hour: checkpoints are kept again
+    found = daemon.store.checkpoint_before(daemon.state.time_us)
+    assert found is not None
+    assert found[0] == daemon.state.time_us
