@@ -14,15 +14,7 @@ from typing import Self
 from daemon.alarms import Transition
 from daemon.clock import HOUR_US
 from daemon.errors import StoreError
-from daemon.foresight import Score
-from daemon.hour_figures import (
-    NOTHING,
-    DayMembers,
-    DrainCheck,
-    Forecast,
-    HourFigures,
-    Noted,
-)
+from daemon.hour_figures import NOTHING, Noted
 from daemon.journal import Body, Entry
 from daemon.keys import ApiKey
 from daemon.outbox import Message, Waiting
@@ -37,6 +29,7 @@ from daemon.store import (
     sqlite,
 )
 from daemon.store.database import Database
+from daemon.store.log_reader import LogRows
 from daemon.store.ticks import HOLDS_US, TickRows
 from daemon.views import Recorded, SeriesOfReadings, StepsOfReadings
 from sensors.reading import Channel, Reading
@@ -44,13 +37,13 @@ from sensors.reading import Channel, Reading
 _OPEN = "store.open"  # "yes" while a process has the database: what it says after a crash
 
 
-class Store:
+class Store(LogRows):
     """Readings, journal, checkpoints, transitions and outbox of one site."""
 
     def __init__(
         self, database: Database, lock: sqlite.Lock, ticks: TickRows, last_stop_clean: bool
     ) -> None:
-        self._database = database
+        super().__init__(database)
         self._lock = lock
         self._ticks = ticks
         self.last_stop_clean = last_stop_clean
@@ -192,22 +185,6 @@ class Store:
         with self._database.write() as connection:
             return entries.add(connection, body, at_us, written_us, key)
 
-    def entries(
-        self,
-        after_seq: int = 0,
-        from_us: int | None = None,
-        to_us: int | None = None,
-        trap: str | None = None,
-        every: bool = False,
-    ) -> Sequence[Entry]:
-        """Entries with a greater number, by when they happened (from, up to but not including).
-
-        In the order they were written. `trap` picks the drains of one trap. Those that count,
-        without drains that were undone and the undoing itself, unless `every`.
-        """
-        with self._database.read() as connection:
-            return entries.find(connection, after_seq, from_us, to_us, trap, every)
-
     def entry(self, seq: int) -> Entry | None:
         """The entry with that number."""
         with self._database.read() as connection:
@@ -237,14 +214,6 @@ class Store:
 
     # --- transitions and outbox
 
-    def transitions(
-        self, from_us: int, to_us: int, alarms: Sequence[str] | None = None
-    ) -> Sequence[Transition]:
-        """The transitions at or after one time and before another, in order; of all alarms, or of
-        some."""
-        with self._database.read() as connection:
-            return announcements.find(connection, from_us, to_us, alarms)
-
     def pending(self, limit: int, after_number: int = 0) -> Sequence[Waiting]:
         """The oldest messages of the outbox, at most `limit`, in order."""
         with self._database.read() as connection:
@@ -272,32 +241,7 @@ class Store:
         with self._database.write() as connection:
             key_rows.used(connection, key_id, at_us)
 
-    # --- the weekly log's rows
-
-    def hour_figures(self, from_us: int, to_us: int) -> Sequence[HourFigures]:
-        """The hours that begin at or after one time and before another, in order."""
-        with self._database.read() as connection:
-            return log_rows.hours(connection, from_us, to_us)
-
-    def day_members(self, first: str, last: str) -> Sequence[DayMembers]:
-        """The sums of the local days from one to another ("2026-12-01"), both included."""
-        with self._database.read() as connection:
-            return log_rows.days(connection, first, last)
-
-    def drain_checks(self, from_us: int, to_us: int) -> Sequence[DrainCheck]:
-        """Measured drains beside what was expected, at or after one time and before another."""
-        with self._database.read() as connection:
-            return log_rows.measured(connection, from_us, to_us)
-
-    def forecasts(self, from_us: int, to_us: int) -> Sequence[Forecast]:
-        """Forecasts made at or after one time and before another, in order."""
-        with self._database.read() as connection:
-            return log_rows.made(connection, from_us, to_us)
-
-    def forecast_scores(self, from_us: int, to_us: int) -> Sequence[Score]:
-        """Levels that were reached in that time, with what had been foreseen, in order."""
-        with self._database.read() as connection:
-            return log_rows.scores(connection, from_us, to_us)
+    # --- the weekly log
 
     def announce(self, messages: Sequence[Message], name: str, value: str) -> None:
         """Hand messages to the outbox and set a named value, in one transaction."""
@@ -306,11 +250,6 @@ class Store:
             metas.put(connection, name, value)
 
     # --- the rest
-
-    def get_meta(self, name: str) -> str | None:
-        """A named value, None when it was never set."""
-        with self._database.read() as connection:
-            return metas.get(connection, name)
 
     def set_meta(self, name: str, value: str) -> None:
         """Set a named value. Names that begin with `store.` or `readings.` are the store's own."""
