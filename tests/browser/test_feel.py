@@ -11,7 +11,7 @@ from selenium.webdriver.common.keys import Keys
 from tests.browser.person import DESK, PHONE, Person
 from tests.browser.shop import Shop
 
-PAGES = ("/", "/round", "/spray", "/spray?outlet=spray-gun&surface=13")
+PAGES = ("/", "/round", "/spray", "/spray?outlet=spray-gun&surface=13", "/line")
 LARGEST = 60_000  # bytes of a page's HTML, style and script together
 
 
