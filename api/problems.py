@@ -213,6 +213,19 @@ def problem_of_status(status: int, detail: str, headers: Mapping[str, str] | Non
     return Problem(kind or "unreadable-request", detail, headers=headers)
 
 
+# What whoever writes may be answered, whatever they write.
+ON_WRITING = (
+    "unreadable-request",
+    "cross-site-write",
+    "keys-needed",
+    "no-length",
+    "too-large",
+    "not-json",
+    "invalid-request",
+    "log-unavailable",
+)
+
+
 def answered_by(*kinds: str) -> dict[int | str, dict[str, Any]]:
     """The `responses` of a route that may answer with these kinds of problem, for OpenAPI."""
     answers: dict[int | str, dict[str, Any]] = {}

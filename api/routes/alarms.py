@@ -9,7 +9,7 @@ from fastapi import APIRouter, Depends, Query, Response
 from api.alarm_models import ShelveIn, ShelveOut, UnshelveIn, UnshelveOut, seconds_of
 from api.keys import writes_allowed
 from api.models import AcknowledgeIn, AcknowledgeOut, AlarmOut
-from api.problems import Problem, answered_by
+from api.problems import ON_WRITING, Problem, answered_by
 from api.routes.running import TheDaemon
 from daemon.alarms import SHELVED_LEAST_US, SHELVED_URGENT_US, SHELVED_US, Alarm
 from daemon.clock import SECOND_US
@@ -18,17 +18,7 @@ from daemon.views import Running
 
 router = APIRouter(prefix="/alarms", tags=["alarms"])
 
-_WRITES = (
-    "unreadable-request",
-    "cross-site-write",
-    "keys-needed",
-    "unknown-alarm",
-    "no-length",
-    "too-large",
-    "not-json",
-    "invalid-request",
-    "log-unavailable",
-)
+_WRITES = ("unknown-alarm", *ON_WRITING)
 WAITING = ("unacknowledged", "returned unacknowledged")
 
 

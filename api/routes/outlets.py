@@ -15,7 +15,7 @@ from api.outlet_models import (
     OutletStateOut,
 )
 from api.outlet_reports import gauge_of, surface_of
-from api.problems import Point, Problem, answered_by
+from api.problems import ON_WRITING, Point, Problem, answered_by
 from api.routes.running import TheDaemon
 from api.validation import moment_of
 from daemon.journal import Blotter
@@ -23,17 +23,7 @@ from daemon.views import OutletView, Running
 
 router = APIRouter(prefix="/outlets", tags=["outlets"])
 
-_WRITES = answered_by(
-    "unreadable-request",
-    "cross-site-write",
-    "keys-needed",
-    "unknown-outlet",
-    "no-length",
-    "too-large",
-    "not-json",
-    "invalid-request",
-    "log-unavailable",
-)
+_WRITES = answered_by("unknown-outlet", *ON_WRITING)
 
 
 @router.get("", summary="Whether it is dry enough", responses=answered_by("log-unavailable"))

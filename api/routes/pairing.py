@@ -8,22 +8,12 @@ from fastapi import APIRouter, Request, Response
 from pydantic import BaseModel, ConfigDict, Field, StringConstraints
 
 from api.keys import Door
-from api.problems import answered_by
+from api.problems import ON_WRITING, answered_by
 from daemon.keys import LONGEST_KEY, SCOPES, ApiKey, Scope
 
 router = APIRouter(prefix="/pairing", tags=["keys"])
 
 KEPT_S = 400 * 24 * 3600  # browsers keep no cookie for longer
-_ON_PAIRING = (
-    "unreadable-request",
-    "cross-site-write",
-    "keys-needed",
-    "no-length",
-    "too-large",
-    "not-json",
-    "invalid-request",
-    "log-unavailable",
-)
 
 
 class PairIn(BaseModel):
@@ -85,7 +75,7 @@ async def get_pairing(request: Request) -> AskingOut:
 @router.post(
     "",
     summary="Let this browser keep a key",
-    responses=answered_by(*_ON_PAIRING),
+    responses=answered_by(*ON_WRITING),
 )
 async def pair(body: PairIn, request: Request, response: Response) -> AskingOut:
     """For the page at /pair: the key goes into a cookie that no script can read."""
@@ -102,7 +92,7 @@ async def pair(body: PairIn, request: Request, response: Response) -> AskingOut:
     "/forget",
     status_code=204,
     summary="Let this browser forget its key",
-    responses=answered_by(*_ON_PAIRING),
+    responses=answered_by(*ON_WRITING),
 )
 async def forget(body: ForgetIn, request: Request) -> Response:
     """The key itself stays good: `dripleg key SITE revoke` ends it."""

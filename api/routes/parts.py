@@ -6,24 +6,13 @@ from fastapi import APIRouter, Depends, Response
 
 from api.keys import service_allowed, writes_allowed
 from api.models import AcknowledgeIn, RecordedOut, SaltCheckIn, ServiceIn
-from api.problems import Point, Problem, answered_by
+from api.problems import ON_WRITING, Point, Problem, answered_by
 from api.routes.running import TheDaemon
 from api.routes.traps import described
 from api.validation import moment_of
 from daemon.journal import Confirm, SaltCheck, Service
 
 router = APIRouter()
-
-ON_WRITING = (
-    "unreadable-request",
-    "cross-site-write",
-    "keys-needed",
-    "no-length",
-    "too-large",
-    "not-json",
-    "invalid-request",
-    "log-unavailable",
-)
 
 
 @router.post(

@@ -9,7 +9,7 @@ from fastapi import APIRouter, Depends, Path, Response
 from api.drains import drain_of
 from api.keys import writes_allowed
 from api.models import DrainIn, DrainOut, TrapOut, UndoIn
-from api.problems import Problem, answered_by
+from api.problems import ON_WRITING, Problem, answered_by
 from api.quantities import EARLIEST_US, LATEST_US
 from api.routes.running import TheDaemon
 from api.routes.spans import FROM, TO, span
@@ -56,17 +56,7 @@ def get_trap(trap: str, daemon: TheDaemon) -> TrapOut:
     dependencies=[Depends(writes_allowed)],
     responses={
         200: {"model": DrainOut, "description": "The key was seen before: the first entry."},
-        **answered_by(
-            "unreadable-request",
-            "cross-site-write",
-            "keys-needed",
-            "unknown-trap",
-            "no-length",
-            "too-large",
-            "not-json",
-            "invalid-request",
-            "log-unavailable",
-        ),
+        **answered_by("unknown-trap", *ON_WRITING),
     },
 )
 def post_drain(trap: str, body: DrainIn, daemon: TheDaemon, response: Response) -> DrainOut:
@@ -108,18 +98,7 @@ def get_drains(
     dependencies=[Depends(writes_allowed)],
     responses={
         200: {"model": DrainOut, "description": "It had been taken back before."},
-        **answered_by(
-            "unreadable-request",
-            "cross-site-write",
-            "keys-needed",
-            "unknown-trap",
-            "cannot-be-undone",
-            "no-length",
-            "too-large",
-            "not-json",
-            "invalid-request",
-            "log-unavailable",
-        ),
+        **answered_by("unknown-trap", "cannot-be-undone", *ON_WRITING),
     },
 )
 def undo_drain(
