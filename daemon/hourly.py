@@ -166,14 +166,7 @@ class Hourly:
         return fresh, figures, DayMembers(day, sums)
 
     def _totals(self, tally: HourTally, state: CoreState) -> dict[str, Array]:
-        ledger, hour = state.model.ledger, state.hour
-        moved = {
-            WATER_IN: ledger.water_in - tally.water_in_kg,
-            DRAWN: hour.drawn_kg,
-            USED: hour.used_kg,
-            ON: hour.on_s,
-            ON_OPEN: tally.on_open_s,
-        }
+        moved = _moved(tally, state)
         totals = {name: _plus(tally.settled.get(name), each) for name, each in moved.items()}
         return {**totals, **self._shed(tally, state.model)}
 
@@ -217,16 +210,21 @@ class Hourly:
         )
 
 
-def _totals_before(old: CoreState, was: HourTally) -> dict[str, Array]:
-    """The unfinished hour of a state whose line was described otherwise, by name."""
-    ledger, hour = old.model.ledger, old.hour
-    moved = {
-        WATER_IN: ledger.water_in - was.water_in_kg,
+def _moved(tally: HourTally, state: CoreState) -> dict[str, Array]:
+    """What has moved since the hour began, traps apart, by name."""
+    hour = state.hour
+    return {
+        WATER_IN: state.model.ledger.water_in - tally.water_in_kg,
         DRAWN: hour.drawn_kg,
         USED: hour.used_kg,
         ON: hour.on_s,
-        ON_OPEN: was.on_open_s,
+        ON_OPEN: tally.on_open_s,
     }
+
+
+def _totals_before(old: CoreState, was: HourTally) -> dict[str, Array]:
+    """The unfinished hour of a state whose line was described otherwise, by name."""
+    moved, ledger = _moved(was, old), old.model.ledger
     factor = old.model.parameters.round_factor
     for row, station in enumerate(old.stations):
         moved[shed_of(station)] = (ledger.shed[row] - was.shed_kg[row]) * factor[row]

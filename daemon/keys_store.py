@@ -11,9 +11,9 @@ from contextlib import suppress
 from pathlib import Path
 from typing import Self
 
-from daemon.errors import InUseError, StoreError
+from daemon.errors import InUseError
 from daemon.keys import ApiKey, KeyRefused
-from daemon.store import key_rows, migrations, sqlite
+from daemon.store import copies, key_rows
 from daemon.store.database import Database
 from daemon.store.store import Store
 from sensors.reading import Channel
@@ -31,19 +31,7 @@ class KeyStore:
         has it. StoreError when that cannot be."""
         with suppress(InUseError):  # a daemon that has it has brought it up to date
             Store.open(path, channels).close()
-        database = sqlite.connect(path)
-        try:
-            with database.read() as connection:
-                found, known = migrations.version_of(connection), migrations.MIGRATIONS[-1].version
-            if found != known:
-                raise StoreError(
-                    f"{path}: the running daemon's database has version {found}, this dripleg "
-                    f"wants {known}: start the daemon anew, with this same dripleg"
-                )
-        except BaseException:
-            database.close()
-            raise
-        return cls(database)
+        return cls(copies.beside_daemon(path))
 
     def add(self, key: ApiKey, digest: bytes) -> None:
         """Keep a new key."""

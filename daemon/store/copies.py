@@ -5,11 +5,13 @@ from __future__ import annotations
 import os
 import pwd
 import sqlite3
+from collections.abc import Callable
 from contextlib import closing
 from pathlib import Path
 
 from daemon.errors import StoreError
 from daemon.store import migrations, sqlite
+from daemon.store.database import Database
 
 
 def refuse_unreadable(path: Path) -> None:
@@ -32,6 +34,35 @@ def refuse_unreadable(path: Path) -> None:
             f"{path}: it belongs to the user {name}, and this one cannot read it while no daemon "
             f"has it: put sudo -u '{name}' before the command"
         )
+
+
+def beside_daemon(path: Path) -> Database:
+    """Connect to a database that a daemon has; StoreError where it is of another version."""
+    return connected(
+        path,
+        lambda found, known: (
+            f"the running daemon's database has version {found}, this dripleg wants {known}: start "
+            "the daemon anew, with this same dripleg"
+        ),
+    )
+
+
+def connected(path: Path, otherwise: Callable[[int, int], str]) -> Database:
+    """Connect to a database of this dripleg's version, which stays as it is.
+
+    StoreError for one of another version, in the words that `otherwise` has for the version found
+    and the one that is known.
+    """
+    database = sqlite.connect(path)
+    try:
+        with database.read() as connection:
+            found, known = migrations.version_of(connection), migrations.MIGRATIONS[-1].version
+        if found != known:
+            raise StoreError(f"{path}: {otherwise(found, known)}")
+    except BaseException:
+        database.close()
+        raise
+    return database
 
 
 def copy(source: Path, target: Path) -> None:

@@ -10,11 +10,10 @@ from pathlib import Path
 from typing import Self
 
 from daemon.alarms import Transition
-from daemon.errors import StoreError
 from daemon.foresight import Score
 from daemon.hour_figures import DayMembers, DrainCheck, Forecast, HourFigures
 from daemon.journal import Entry
-from daemon.store import announcements, entries, log_rows, metas, migrations, sqlite
+from daemon.store import announcements, copies, entries, log_rows, metas
 from daemon.store.database import Database
 
 
@@ -85,16 +84,7 @@ class LogReader(LogRows):
     @classmethod
     def open(cls, path: Path) -> Self:
         """Open the database that a daemon has; StoreError when it is another dripleg's."""
-        database = sqlite.connect(path)
-        with database.read() as connection:
-            found, known = migrations.version_of(connection), migrations.MIGRATIONS[-1].version
-        if found != known:
-            database.close()
-            raise StoreError(
-                f"{path}: the running daemon's database has version {found}, this dripleg wants "
-                f"{known}: start the daemon anew, with this same dripleg"
-            )
-        return cls(database)
+        return cls(copies.beside_daemon(path))
 
     def __enter__(self) -> Self:
         return self

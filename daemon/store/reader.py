@@ -7,9 +7,8 @@ from pathlib import Path
 from typing import Self
 
 from daemon.alarms import Transition
-from daemon.errors import StoreError
 from daemon.journal import Entry
-from daemon.store import announcements, copies, entries, migrations, sqlite
+from daemon.store import announcements, copies, entries
 from daemon.store.database import Database
 from daemon.store.ticks import TickReader
 from sensors.reading import Reading
@@ -26,17 +25,14 @@ class StoreReader:
     def open(cls, path: Path) -> Self:
         """Open the database at this path; StoreError when there is none, or of another version."""
         copies.refuse_unreadable(path)
-        database = sqlite.connect(path)
+        database = copies.connected(
+            path,
+            lambda found, known: (
+                f"the database has version {found}, and this dripleg reads version {known}: start "
+                "the daemon once with this same dripleg, which brings an older one up to date"
+            ),
+        )
         try:
-            with database.read() as connection:
-                found = migrations.version_of(connection)
-            known = migrations.MIGRATIONS[-1].version
-            if found != known:
-                raise StoreError(
-                    f"{path}: the database has version {found}, and this dripleg reads version "
-                    f"{known}: start the daemon once with this same dripleg, which brings an older "
-                    "one up to date"
-                )
             return cls(database)
         except BaseException:
             database.close()
