@@ -36,17 +36,9 @@ def ask(
 
     StoreError when something listens that does not answer as dripleg does.
     """
-    host = {"0.0.0.0": "127.0.0.1", "::": "::1"}.get(site.api.host, site.api.host)
-    where = f"[{host}]:{site.api.port}" if ":" in host else f"{host}:{site.api.port}"
     data = None if body is None else json.dumps(body).encode()
-    request = urllib.request.Request(
-        f"http://{where}/api/v1/{path}",
-        data,
-        {"Content-Type": "application/json", **key_header(site, store_path)},
-    )
-    opener = urllib.request.build_opener(urllib.request.ProxyHandler({}))
     try:
-        with opener.open(request, timeout=TIMEOUT_S) as response:
+        with send(site, path, data, store_path) as response:
             return response.status, json.load(response)
     except urllib.error.HTTPError as error:
         with error:
@@ -54,7 +46,30 @@ def ask(
     except urllib.error.URLError:
         return None
     except (OSError, http.client.HTTPException, ValueError) as error:
-        raise StoreError(f"{where} does not answer as dripleg does ({error})") from error
+        raise StoreError(f"{where(site)} does not answer as dripleg does ({error})") from error
+
+
+def where(site: Site) -> str:
+    """Host and port at which a program on this machine finds the site's API."""
+    host = {"0.0.0.0": "127.0.0.1", "::": "::1"}.get(site.api.host, site.api.host)
+    return f"[{host}]:{site.api.port}" if ":" in host else f"{host}:{site.api.port}"
+
+
+def send(
+    site: Site, path: str, data: bytes | None, store_path: Path | None
+) -> http.client.HTTPResponse:
+    """The answer to a GET under /api/v1/, or to a POST of data, with this machine's key.
+
+    urllib's errors when there is none, or when it says that something is wrong.
+    """
+    request = urllib.request.Request(
+        f"http://{where(site)}/api/v1/{path}",
+        data,
+        {"Content-Type": "application/json", **key_header(site, store_path)},
+    )
+    opener = urllib.request.build_opener(urllib.request.ProxyHandler({}))
+    response: http.client.HTTPResponse = opener.open(request, timeout=TIMEOUT_S)
+    return response
 
 
 def serves(site: Site, store_path: Path | None = None) -> bool:

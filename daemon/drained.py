@@ -7,12 +7,11 @@ import http.client
 import json
 import urllib.error
 import urllib.parse
-import urllib.request
 from pathlib import Path
 from typing import Any
 
 from daemon import accept
-from daemon.asking import key_header, wants_key
+from daemon.asking import send, wants_key, where
 from daemon.clock import SystemClock, format_rfc3339, parse_rfc3339
 from daemon.errors import JournalError, StoreError, UnitError
 from daemon.journal import Drain
@@ -22,8 +21,6 @@ from daemon.shell import GRID_KEY
 from daemon.site.types import Site
 from daemon.store.store import Store
 from daemon.units import parse
-
-TIMEOUT_S = 10.0
 
 
 def record_drain(site: Site, options: argparse.Namespace, store_path: Path) -> str:
@@ -89,17 +86,8 @@ def _asked(
     site: Site, store_path: Path, path: str, data: bytes | None = None
 ) -> dict[str, Any] | None:
     """The daemon's answer to a GET, or to a POST of data; None when nothing listens there."""
-    host = {"0.0.0.0": "127.0.0.1", "::": "::1"}.get(site.api.host, site.api.host)
-    address = f"[{host}]" if ":" in host else host
-    where = f"{address}:{site.api.port}"
-    request = urllib.request.Request(
-        f"http://{where}/api/v1/{path}",
-        data,
-        {"Content-Type": "application/json", **key_header(site, store_path)},
-    )
-    opener = urllib.request.build_opener(urllib.request.ProxyHandler({}))
     try:
-        with opener.open(request, timeout=TIMEOUT_S) as response:
+        with send(site, path, data, store_path) as response:
             answer = json.load(response)
     except urllib.error.HTTPError as error:
         if error.code == 401:
@@ -110,13 +98,15 @@ def _asked(
         return None
     except (OSError, http.client.HTTPException) as error:
         raise StoreError(
-            f"{where} does not answer as it should ({error}): look at the daemon's log, and "
+            f"{where(site)} does not answer as it should ({error}): look at the daemon's log, and "
             "whether the drain is recorded, before you repeat it"
         ) from error
     except ValueError:
         answer = None
     if not isinstance(answer, dict):
-        raise StoreError(f"what answers at {where} is not dripleg: give another port in [api]")
+        raise StoreError(
+            f"what answers at {where(site)} is not dripleg: give another port in [api]"
+        )
     return answer
 
 
