@@ -180,7 +180,7 @@ class _Watch:
         self.samples = list(changes(before_us, samples))
         self.end = found.state(count - 1)
         looks = Looks(core, self.state, found, count, self.end)
-        rows = looks.rows().union(fitting_rows(core, found, count))
+        rows = looks.rows().union(fitting_rows(core, done.state, found, count))
         self.looks, self.margins = sorted(rows), looks.margins()
 
     def run(self) -> None:
