@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 
 from daemon.clock import HOUR_US, SECOND_US
-from daemon.journal import Entry, Service
+from daemon.journal import Drain, Entry, Service
 from daemon.moisture.ensemble import Array
 from daemon.record_arrays import Record, Told
 from daemon.replay import Result
@@ -84,6 +84,19 @@ def test_a_dryer_is_switched_at_its_tick() -> None:
     assert found.state.model.fittings.power[0].since_us == BEGUN_US + 2.25 * HOUR_US
 
 
+def test_a_dryer_off_at_night_is_switched_at_its_tick() -> None:
+    """The shop closes at half past five; a drain is recorded just before, and just before that."""
+    shop = a_shop("a dryer off at night")
+    begun_us = BEGUN_US + 10 * HOUR_US
+    record = a_record(shop, Weather(begun_us, 1.2), 1)
+    for seconds in (1785, 1782):
+        at_us = begun_us + seconds * SECOND_US
+        found = compare(shop, record, [Entry(1, at_us, at_us, Drain("riser"))])
+        assert found.state.model.fittings.power[0].off
+        assert told_of(found, "dryer-dryer-overloaded") == ["suppressed by design"]
+        assert together(found) > 0.95
+
+
 def test_a_dryer_whose_contact_is_silent_dries_in_half_of_the_members() -> None:
     shop = a_shop("a dryer that is switched")
     silent = lambda at: np.where((at > 1.1) & (at < 1.8), np.nan, 1.0)  # noqa: E731
@@ -102,6 +115,16 @@ def test_an_overload_comes_and_goes() -> None:
     after = told_of(found, "dryer-dryer-overloaded")
     assert after == ["unacknowledged", "returned unacknowledged", "unacknowledged"]
     assert found.state.model.fittings.overloaded[0] > 0.9
+    assert together(found) > 0.95
+
+
+def test_a_cellar_is_too_cold_for_a_dryer_and_is_not_any_more() -> None:
+    """Cold for an hour, and warm again for more than the alarm's delay of one."""
+    shop = a_shop("a dryer in a cellar")
+    said: Says = {"cellar.temperature": lambda at: 278.0 - 3.0 * np.sin(2.0 * at) + 0.02 * at}
+    found = compare(shop, working(shop, 3.0, said))
+    after = told_of(found, "dryer-freeze-risk")
+    assert after == ["unacknowledged", "returned unacknowledged"]
     assert together(found) > 0.95
 
 
@@ -159,14 +182,16 @@ def test_ice_runs_out_and_is_renewed(hours: float, least_k: float, most_k: float
     assert together(found) > 0.9
 
 
-def test_a_transmitter_contradicts_the_line() -> None:
-    """And what the alarm says is the last that it read."""
+@pytest.mark.parametrize("until", [2.7, 2.6945])
+def test_a_transmitter_contradicts_the_line(until: float) -> None:
+    """And what the alarm says is the last that it read: it still does so at the end, or ended to
+    two ticks before."""
     shop = a_shop("a transmitter")
     noise = np.random.default_rng(3)
 
     def reads(at: Array) -> Array:
-        wet = (at > 1.2) & (at < 1.7) | (at > 2.4)
-        return 276.0 + 30.0 * wet + noise.normal(0.0, 0.3, len(at))
+        wet = ((at > 1.2) & (at < 1.7)) | ((at > 2.4) & (at < until))
+        return 276.0 + 24.0 * wet + noise.normal(0.0, 1.0, len(at))
 
     found = compare(shop, working(shop, 2.7, {"hygrometer.dew_point": reads}))
     after = told_of(found, "hygrometer-sensor-fault")
