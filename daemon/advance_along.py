@@ -21,6 +21,7 @@ from daemon.fittings_along import fitting_rows
 from daemon.followed import Followed
 from daemon.judged_along import first
 from daemon.looks_along import Looks, changes
+from daemon.moisture import floats
 from daemon.moisture.along import Stretch, stretch
 from daemon.moisture.along_air import Ints
 from daemon.moisture.along_drains import let_down_from
@@ -177,6 +178,7 @@ class _Watch:
         self.plant = PlantAlong(core.following.byproducts, ticks, found, first_row, count)
         before_us = done.state.time_us // SAMPLED_EVERY_US
         samples = found.course.times_us[:count] // SAMPLED_EVERY_US
+        self.switches = any(floats.switches(core.model.plan))
         self.samples = list(changes(before_us, samples))
         self.end = found.state(count - 1)
         looks = Looks(core, self.state, found, count, self.end)
@@ -274,7 +276,10 @@ class _Watch:
     def _margins(self, row: int) -> int:
         """Look at the margins; this tick, if they are not as they were, else the end."""
         before = self.state.outlets
-        after = self.end if row == self.count - 1 else self.found.leaving_state(row)
+        if row == self.count - 1 or self.switches:  # what is in traps says who is to be believed
+            after = self._after(row)
+        else:
+            after = self.found.leaving_state(row)
         state = replace(self.state, model=after)
         self.state = self.core.rules.margins.look(state)
         same = all(

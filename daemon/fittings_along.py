@@ -8,7 +8,7 @@ import numpy as np
 
 from daemon.advance import Core
 from daemon.dew_points_along import contradicting
-from daemon.looks_along import changes, level
+from daemon.looks_along import changes, level, told
 from daemon.moisture import dew_sensors, dryers
 from daemon.moisture.along import Stretch
 from daemon.moisture.description import Refrigerated
@@ -77,13 +77,9 @@ def _cold(around_k: Array) -> np.ndarray:
 
 
 def _dew_points(core: Core, found: Stretch, ticks: int) -> Iterator[int]:
-    """A measured dew point that cannot be: its words hang on every reading, and the last of them
-    stay."""
+    """A measured dew point that cannot be."""
     plan = core.model.plan
     for i in dew_sensors.stations(plan):
         was = dew_sensors.contradicts(plan, found.before, i)
         rows = contradicting(plan, found, i)[:ticks]
-        for row in changes(was, rows):
-            yield from (row, row - 1) if row else (row,)
-        if rows[-1]:
-            yield ticks - 1
+        yield from told(was, rows)

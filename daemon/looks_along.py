@@ -42,6 +42,15 @@ def changes(before: int | bool, after: npt.NDArray[np.generic]) -> Iterator[int]
     yield from np.flatnonzero(after != was).tolist()
 
 
+def told(before: bool, after: npt.NDArray[np.bool_]) -> Iterator[int]:
+    """The same of what an alarm tells in words that change from tick to tick while it is so: also
+    the last rows in which it is, since those words stay."""
+    for row in changes(before, after):
+        yield from (row, row - 1) if row else (row,)
+    if after[-1]:
+        yield len(after) - 1
+
+
 def _share(of_members: npt.NDArray[np.bool_]) -> Array:
     shares: Array = np.count_nonzero(of_members, axis=-1) / of_members.shape[-1]
     return shares
@@ -145,7 +154,7 @@ class Looks:
                 against = contents > level.value + level.give_or_take
             sure = np.count_nonzero(against, axis=1) >= floats.SURE * contents.shape[1]
             wrong = ready & sure
-            yield from changes(bool(wrong[0]), wrong[1:])
+            yield from told(bool(wrong[0]), wrong[1 : self.ticks + 1])
 
     # ---- frost ----
 

@@ -97,8 +97,11 @@ def test_a_dryer_off_at_night_is_switched_at_its_tick() -> None:
         assert together(found) > 0.95
 
 
-def test_a_dryer_whose_contact_is_silent_dries_in_half_of_the_members() -> None:
-    shop = a_shop("a dryer that is switched")
+@pytest.mark.parametrize(
+    "name", ["a dryer that is switched", "a switched cartridge", "small twin beds"]
+)
+def test_a_dryer_whose_contact_is_silent_dries_in_half_of_the_members(name: str) -> None:
+    shop = a_shop(name)
     silent = lambda at: np.where((at > 1.1) & (at < 1.8), np.nan, 1.0)  # noqa: E731
     until = compare(shop, working(shop, 1.7, {"dryer-on.contact": silent}))
     assert not until.state.model.fittings.power[0].known
@@ -212,6 +215,18 @@ def test_a_transmitter_falls_silent() -> None:
     hour = found.state.sensed.observed["dryer"].hour
     assert hour is not None
     assert hour.seconds == pytest.approx(0.6 * 3600.0)
+    assert together(found) > 0.95
+
+
+@pytest.mark.parametrize("hours", [0.8, 1.3, 2.4])
+def test_a_float_switch_contradicts_what_is_believed(hours: float) -> None:
+    """Closed from early on, until it may be so: an outlet after it cannot be judged meanwhile."""
+    shop = a_shop("a float switch")
+    closed: Says = {"riser-float.contact": between((0.15, 9.0))}
+    found = compare(shop, working(shop, hours, closed, humid=True))
+    after = told_of(found, "riser-float-sensor-fault")
+    assert after == ["unacknowledged", "returned unacknowledged"][: 1 + (hours > 1.0)]
+    assert bool(told_of(found, "spray-gun-line-margin-low")) == (hours > 2.0)
     assert together(found) > 0.95
 
 
