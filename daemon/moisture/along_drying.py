@@ -124,11 +124,10 @@ class DryingAlong:
         now = self.moment.now
         gauge = now.pressure_pa[i].min(axis=0) - now.pressure_pa[0].max(axis=0)
         inlet = now.temperature_k[self.drying.plan.parent[i]].max(axis=0)
-        around = np.max(self.drying.around_of(number, self.moment), axis=0)
-        asked = self.drying.asked_of(dryer)
-        full = np.broadcast_to(around, inlet.shape)
+        around = self.drying.around_of(number, self.moment).max(axis=0)
+        asked = np.full(inlet.shape, self.drying.asked_of(dryer))
         least: Array = self.figures.rated_kg_per_s[row] * dryers.correction(
-            gauge, inlet, full, np.full(inlet.shape, asked)
+            gauge, inlet, around, asked
         )
         return least
 

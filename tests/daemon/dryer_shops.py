@@ -109,6 +109,9 @@ DRYER_SHOPS: dict[str, str] = {
     "a dryer in a cellar": _before_regulator(
         REFRIGERATED.format(rated="6 m3/h", more='around = "cellar.temperature"\n'), "dryer"
     ).replace(INTAKE, ROOM + INTAKE, 1),
+    "a dryer in a warm cellar": _before_regulator(
+        REFRIGERATED.format(rated="10 m3/h", more='around = "cellar.temperature"\n'), "dryer"
+    ).replace(INTAKE, ROOM + INTAKE, 1),
     "a dryer off at night": _before_regulator(
         REFRIGERATED.format(rated="10 m3/h", more="off_when_closed = true\n"), "dryer"
     ),

@@ -27,6 +27,7 @@ from daemon.advance import Core
 from daemon.clock import DAY_US, HOUR_US, format_rfc3339
 from daemon.foreseer import Foreseen, Foreseer
 from daemon.moisture.model import Heard
+from daemon.record_arrays import Record, Told
 from daemon.recorded_arrays import read_record
 from daemon.recovery import Recovery
 from daemon.replay import replay
@@ -34,6 +35,8 @@ from daemon.replay_along import replay_in_blocks
 from daemon.shell import Shell
 from daemon.state import Inputs
 from daemon.store.store import Store
+from tests.daemon.block_shops import Weather, a_shop
+from tests.daemon.block_shops import a_record as shop_record
 from tests.daemon.shops import BEGUN_US
 from tests.daemon.test_shell import HandClock, Played
 from tests.daemon.willow_yard import (
@@ -162,6 +165,26 @@ def test_a_year_in_blocks(monkeypatch: pytest.MonkeyPatch) -> None:
     print(f"a year tick by tick, by a week of it: {plain.clock_s[0] * years[1]:.0f} s")
     print(f"as often as quick: {plain.clock_s[0] * years[1] / (blocks.clock_s[0] * years[0]):.1f}")
     assert in_blocks_s < 5 * YEAR_GOAL_S
+
+
+def test_the_demos_line_in_blocks() -> None:
+    """A line with a dryer: two days in blocks, beside an hour tick by tick, each for a week."""
+    site = a_shop("the demo's line", members=128)
+    record = shop_record(site, Weather(BEGUN_US, 48.0), 1)
+    told = record.channels["intake-air.pressure"]  # two barometers of one shop agree
+    channels = {**record.channels, "booth-air.pressure": Told(told.times_us, told.values + 10.0)}
+    record = Record(channels)
+    blocks, plain = Times("in blocks"), Times("tick by tick")
+    with blocks.one():
+        found = replay_in_blocks(Core(site, hourly=False), record, [])
+    hour = record.readings(BEGUN_US - 1, BEGUN_US + HOUR_US)
+    with plain.one():
+        ticks = replay(Core(site, hourly=False), hour, [])
+    weeks = [WEEK_DAYS * 8640 / each.ticks for each in (found, ticks)]
+    print(f"\nticks taken: {dict(found.taken)}")
+    print(f"a week in blocks: {blocks.processor_s[0] * weeks[0]:.1f} s of the processor")
+    print(f"a week tick by tick: {plain.processor_s[0] * weeks[1]:.1f} s")
+    assert blocks.processor_s[0] * weeks[0] < 0.5 * plain.processor_s[0] * weeks[1]
 
 
 def test_reading_a_file_into_arrays(tmp_path: Path) -> None:

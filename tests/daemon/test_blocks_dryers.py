@@ -121,6 +121,28 @@ def test_an_overload_comes_and_goes() -> None:
     assert together(found) > 0.95
 
 
+def step(before: float, after: float) -> Callable[[Array], Array]:
+    """One value for 1.2 hours, then the other."""
+    return lambda at: np.where(at < 1.2, before, after) + 0.01 * np.sin(50.0 * at)
+
+
+# what makes 9 m3/h too much for a dryer whose plate says 10: by its table 6.5 to 7.5 are left
+TOO_MUCH = [
+    ("a dryer", "pipe-end.temperature", step(290.0, 320.0)),
+    ("a dryer", "tank-gauge.pressure", step(7e5, 2e5)),
+    ("a dryer in a warm cellar", "cellar.temperature", step(290.0, 323.0)),
+]
+
+
+@pytest.mark.parametrize(("name", "channel", "says"), TOO_MUCH)
+def test_a_dryer_can_take_less(name: str, channel: str, says: Callable[[Array], Array]) -> None:
+    shop = a_shop(name)
+    before, found = (compare(shop, working(shop, hours, {channel: says})) for hours in (1.1, 2.2))
+    assert before.state.model.fittings.overloaded[0] < 0.3
+    assert found.state.model.fittings.overloaded[0] > 0.5
+    assert told_of(found, "dryer-dryer-overloaded") == ["unacknowledged"]
+
+
 def test_a_cellar_is_too_cold_for_a_dryer_and_is_not_any_more() -> None:
     """Cold for an hour, and warm again for more than the alarm's delay of one."""
     shop = a_shop("a dryer in a cellar")
