@@ -13,7 +13,7 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from daemon.moisture import carried
-from daemon.moisture.along_air import AirAlong, Bools, running_sum, shifted
+from daemon.moisture.along_air import AirAlong, Bools, running_sum
 from daemon.moisture.along_drains import DrainAlong
 from daemon.moisture.ensemble import Array
 from daemon.moisture.line import Ledger, WaterParameters, WaterState, parts_of
@@ -115,12 +115,14 @@ class WaterAlong:
         liquid = self._liquid_in[i]
         possible = self.saturated[i] * self.air.moved.into[i]
         if liquid is None:
-            place.vapor_out = np.minimum(vapor_in, possible)
+            place.vapor_out = np.minimum(vapor_in, possible, out=possible)
             condensed: Array = vapor_in - place.vapor_out
-            return condensed if condensed.any() else None
-        wetted = vapor_in + self.parameters.evaporated[i] * liquid
-        place.vapor_out = np.minimum(wetted, possible)
-        found: Array = liquid + (vapor_in - place.vapor_out)
+            return condensed if condensed.max() > 0.0 else None
+        wetted = self.parameters.evaporated[i] * liquid
+        wetted += vapor_in
+        place.vapor_out = np.minimum(wetted, possible, out=possible)
+        found: Array = np.subtract(vapor_in, place.vapor_out, out=wetted)
+        found += liquid
         return found
 
     def _divide(
@@ -158,8 +160,8 @@ class WaterAlong:
             return None
         caught = np.zeros_like(self.water_in) if place.caught is None else place.caught
         rows = np.minimum(running_sum(start, caught), capacity)
-        place.trap = rows
-        over: Array = np.maximum(shifted(start, rows) + caught - capacity, 0.0)
+        place.trap = rows[1:]
+        over: Array = np.maximum(rows[:-1] + caught - capacity, 0.0)
         return over
 
     def _drained(self, i: int, place: _Place) -> Array | None:
@@ -180,9 +182,13 @@ class WaterAlong:
         through, moving = self.air.moved.through[i], self._moving(i)
         shape, state = through.shape, self.state
         waits, spilt = self._waits
-        liquid, place.waiting = _released(state.waiting[i], liquid, moving, shape, waits)
+        if moving is None or waits or not self._moves_on(i):
+            liquid, place.waiting = _released(state.waiting[i], liquid, moving, shape, waits)
+        else:
+            place.waiting = _Waiting(state.waiting[i])
         spill, place.spilled = _released(state.spilled[i], spill, moving, shape, spilt)
-        safe = through if moving is None else np.where(moving, through, 1.0)
+        several = len(self.plan.outflows[i]) > 1
+        safe = np.where(moving, through, 1.0) if several and moving is not None else through
         parts = parts_of(self.plan, self.air.moved, i, safe)
         for flow, part in zip(self.plan.outflows[i], parts, strict=True):
             vapor, wet, ran_over = (_part(part, each) for each in (place.vapor_out, liquid, spill))
@@ -196,6 +202,16 @@ class WaterAlong:
             if gone is not None:
                 self.liquid_out = _plus(self.liquid_out, gone)
                 self.liquid_at[flow.outlet] = gone
+
+    def _moves_on(self, i: int) -> bool:
+        """Whether liquid comes to a station, or condenses there, only while air leaves it: what
+        comes leaves at once, and it comes with a share of what left the one before."""
+        air = self.air.moved
+        return (
+            i not in self.plan.receivers
+            and self.plan.parent[i] >= 0
+            and air.into[i] is air.through[i]
+        )
 
     def _moving(self, i: int) -> Bools | None:
         """Whether air leaves a station; None: it does at every tick."""
@@ -269,36 +285,43 @@ class WaterAlong:
         stays, drain = 1.0 - course.goes, self.drains.get(i)
         small = bool((pool > possible).any())
         liquid, back, held, trap, over = (np.empty_like(comes) for _ in range(5))
-        vapor, in_trap = course.start, self.state.trap[i]
+        vapor, in_trap = course.start.copy(), self.state.trap[i]
         came, in_trap_now = np.empty_like(vapor), np.empty_like(vapor)
-        given = zip(comes, besides, possible, stays, strict=True)
-        made = zip(liquid, back, held, trap, over, strict=True)
+        given = zip(*map(list, (comes, besides, possible, stays)), strict=True)
+        made = zip(*map(list, (liquid, back, held, trap, over)), strict=True)
+        add, subtract, multiply, least, most = (
+            np.add,
+            np.subtract,
+            np.multiply,
+            np.minimum,
+            np.maximum,
+        )
         for n, (now, made_now) in enumerate(zip(given, made, strict=True)):
             comes_now, besides_now, possible_now, stays_now = now
             liquid_now, back_now, held_now, trap_now, over_now = made_now
-            np.add(vapor, comes_now, out=came)
-            np.minimum(came, possible_now, out=held_now)
-            np.subtract(came, held_now, out=liquid_now)
-            np.add(liquid_now, besides_now, out=liquid_now)
-            np.divide(held_now, possible_now, out=back_now)
-            np.subtract(1.0, back_now, out=back_now)
-            np.multiply(pool, back_now, out=back_now)
-            np.minimum(back_now, in_trap, out=back_now)
+            add(vapor, comes_now, came)
+            least(came, possible_now, out=held_now)
+            subtract(came, held_now, liquid_now)
+            add(liquid_now, besides_now, liquid_now)
+            np.divide(held_now, possible_now, back_now)
+            subtract(1.0, back_now, back_now)
+            multiply(pool, back_now, back_now)
+            least(back_now, in_trap, out=back_now)
             if small:
-                np.minimum(back_now, possible_now - held_now, out=back_now)
-                np.maximum(back_now, 0.0, out=back_now)
-            np.add(held_now, back_now, out=held_now)
-            vapor = held_now * stays_now
-            np.multiply(kept, liquid_now, out=trap_now)
+                least(back_now, possible_now - held_now, out=back_now)
+                most(back_now, 0.0, out=back_now)
+            add(held_now, back_now, held_now)
+            multiply(held_now, stays_now, vapor)
+            multiply(kept, liquid_now, trap_now)
             if spilt is not None:
-                np.add(trap_now, spilt[n], out=trap_now)
-            np.subtract(in_trap, back_now, out=in_trap_now)
-            np.add(trap_now, in_trap_now, out=trap_now)
+                add(trap_now, spilt[n], trap_now)
+            subtract(in_trap, back_now, in_trap_now)
+            add(trap_now, in_trap_now, trap_now)
             if drain is not None:
                 trap_now[:] = drain.left(n, trap_now)
-            np.subtract(trap_now, capacity, out=over_now)
-            np.maximum(over_now, 0.0, out=over_now)
-            np.subtract(trap_now, over_now, out=trap_now)
+            subtract(trap_now, capacity, over_now)
+            most(over_now, 0.0, out=over_now)
+            subtract(trap_now, over_now, trap_now)
             in_trap = trap_now
         place.back, place.trap = back, trap
         place.vapor_out = held * course.goes
@@ -342,7 +365,7 @@ class WaterAlong:
             zero = np.zeros_like(self.water_in)
             caught = zero if place.caught is None else place.caught
             gained = caught if place.back is None else caught - place.back
-            place.trap = running_sum(self.state.trap[i], gained)
+            place.trap = running_sum(self.state.trap[i], gained)[1:]
         return place.trap
 
     def on_its_way_rows(self, i: int) -> Array:
@@ -443,17 +466,19 @@ class _Receiver:
         """Its vapor after condensing, before the pool, if the pool never runs empty."""
         stays = 1.0 - self.goes
         factor = stays * (1.0 - self.pool / self.possible)
-        plus = stays * self.pool
-        plus[:-1] += self.comes[1:]
-        self.came = np.empty_like(self.comes)
-        held = np.empty_like(self.comes)
-        came = self.start + self.comes[0]
-        rows = zip(self.came, held, self.possible, factor, plus, strict=True)
-        for there, kept, possible, share, more in rows:
-            there[:] = came
-            np.minimum(came, possible, out=kept)
-            np.multiply(kept, share, out=came)
-            came += more
+        stays *= self.pool
+        stays[:-1] += self.comes[1:]
+        came = np.empty((len(factor) + 1, factor.shape[1]))
+        np.add(self.start, self.comes[0], out=came[0])
+        rows, kept = list(came), np.empty_like(self.start)
+        minimum, multiply, add = np.minimum, np.multiply, np.add
+        each = zip(rows, rows[1:], *map(list, (self.possible, factor, stays)), strict=False)
+        for there, then, possible, share, more in each:
+            minimum(there, possible, out=kept)
+            multiply(kept, share, kept)
+            add(kept, more, then)
+        self.came = came[:-1]
+        held: Array = np.minimum(self.came, self.possible)
         return held
 
 
@@ -473,12 +498,13 @@ def _released(
         out[moving.argmax(axis=0)[ever], ever] += start[ever]
         return out, _Waiting(start, None, moving)
     out, rows = np.empty(shape), np.empty(shape)
-    there = start.copy()
-    for more, flows, goes, stays in zip(new, moving, out, rows, strict=True):
-        there += more
-        np.multiply(there, flows, out=goes)
-        there -= goes
-        stays[:] = there
+    before, add, multiply, subtract = start, np.add, np.multiply, np.subtract
+    each = zip(*map(list, (new, moving.astype(np.float64), out, rows)), strict=True)
+    for more, flows, goes, stays in each:
+        add(before, more, stays)
+        multiply(stays, flows, goes)
+        subtract(stays, goes, stays)
+        before = stays
     return out, _Waiting(start, rows)
 
 
