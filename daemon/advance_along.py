@@ -48,6 +48,7 @@ class Along:
 
     state: CoreState
     ticks: int = 0  # so many were taken; the next one is to be taken by itself
+    heard_us: int = -1  # the last reading in them; -1: none
     transitions: list[Transition] = field(default_factory=list)
     reminders: list[Reminder] = field(default_factory=list)
 
@@ -83,6 +84,7 @@ class AdvanceAlong:
                 break
         if done.ticks > 0:
             done.state = self._remembered(done.state, ticks, done.ticks)
+            done.heard_us = ticks.heard_us(done.ticks)
         return done
 
     def _usual(self, ticks: Ticks) -> int:
@@ -174,7 +176,7 @@ class _Watch:
         samples = found.course.times_us[:count] // SAMPLED_EVERY_US
         self.samples = list(changes(before_us, samples))
         self.end = found.state(count - 1)
-        looks = Looks(core, self.state, found, count, self.end)
+        looks = Looks(core, self.state, found, count)
         self.looks, self.margins = sorted(looks.rows()), looks.margins()
 
     def run(self) -> None:
@@ -258,8 +260,8 @@ class _Watch:
         """A sample for the days ahead."""
         followed = self.state.followed
         before_us = self.times_us[row - 1] if row else self.found.before.time_us
-        foresight = self.core.following.foreseer.tick(
-            followed.foresight, before_us, self.found.dry_state(row)
+        foresight = self.core.following.foreseer.sampled(
+            followed.foresight, before_us, self.found.sight(row)
         )
         self.state = replace(self.state, followed=replace(followed, foresight=foresight))
 

@@ -67,7 +67,7 @@ class _Run:
             if taken:
                 self.result.ticks += taken
                 self.result.taken["together"] += taken
-                self.heard_us = max(self.heard_us, self.record.last_by(self.now_us))
+                self.heard_us = max(self.heard_us, found.heard_us)
             self.alone = 1 if taken or not len(times_us) else min(2 * self.alone, MOST_ALONE)
             for _ in range(self.alone):
                 if self.now_us < self.end_us:

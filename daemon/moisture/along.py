@@ -19,6 +19,7 @@ from daemon.moisture.contact import ContactState
 from daemon.moisture.ensemble import Array
 from daemon.moisture.flow import AirState, PumpWatch
 from daemon.moisture.model import Model, State
+from daemon.moisture.outlook import Sight
 
 
 class Switches(Protocol):
@@ -44,6 +45,7 @@ class Stretch:
     duty: dict[int, Array]
     conditions: Conditions
     saturated: Array
+    intake_ratio: Array
     drawn: Array
     air: AirAlong
     water: WaterAlong
@@ -123,6 +125,16 @@ class Stretch:
             held[name] = Held(float(values[row]), int(self.course.told_us[name][row]))
         return held
 
+    def sight(self, row: int) -> Sight:
+        """What is seen at the intake after one tick."""
+        return Sight(
+            int(self.course.times_us[row]),
+            self.conditions.temperature_k[0, row],
+            self.intake_ratio[row],
+            self.air.drawn[row],
+            self._held(row),
+        )
+
     def moved(self, first: int, last: int) -> tuple[Array, Array, Array]:
         """Seconds run, air drawn in and used in the rows from `first` on, before `last`:
         (members,) each."""
@@ -172,5 +184,17 @@ def stretch(model: Model, state: State, course: Course, switches: Switches) -> S
         drains_along(model, state, now, course.times_us),
     )
     return Stretch(
-        model, state, course, switches, on_s, known, duty, now, saturated, drawn, air, water
+        model,
+        state,
+        course,
+        switches,
+        on_s,
+        known,
+        duty,
+        now,
+        saturated,
+        intake_ratio,
+        drawn,
+        air,
+        water,
     )

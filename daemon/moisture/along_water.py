@@ -7,13 +7,14 @@ together. Arrays are (ticks, members); None stands for nothing at any tick.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
 import numpy as np
 
 from daemon.moisture import carried
-from daemon.moisture.along_air import AirAlong, Bools, running_sum
+from daemon.moisture.along_air import AirAlong, Bools, Ints, running_sum
 from daemon.moisture.along_drains import DrainAlong
 from daemon.moisture.ensemble import Array
 from daemon.moisture.line import Ledger, WaterParameters, WaterState, parts_of
@@ -53,6 +54,7 @@ class _Place:
     caught: Array | None = None  # what its trap was given
     caught_sum: Array | None = None  # (members,): the same in all
     back: Array | None = None  # what its pool gave back to the air
+    back_sum: Array | None = None  # (members,): the same in all
     trap: Array | None = None  # what it held after each tick; None: the sum of the above
     over: Array | None = None  # what ran over, of a receiver taken tick by tick
     waiting: _Waiting = field(init=False)
@@ -84,6 +86,7 @@ class WaterAlong:
     _spill_in: list[Array | None] = field(init=False)
     _waits: tuple[bool, bool] = field(init=False)  # whether liquid does, or what ran over
     _known: dict[int, Bools | None] = field(default_factory=dict)
+    _left: dict[tuple[int, int], _LastMoving] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         count = len(self.plan.stations)
@@ -247,7 +250,7 @@ class WaterAlong:
             found += liquid
         back = pool * (1.0 - held / possible)
         small = bool((pool > possible).any())  # hardly more than nothing: never a tank
-        if small or not self._pool_suffices(i, found, back):
+        if small or not self._pool_suffices(i, found, back, place):
             return self._tick_by_tick(i, course, wetted, place)
         place.back = back
         vapor = held + back
@@ -255,7 +258,7 @@ class WaterAlong:
         self.vapor[row] = vapor - place.vapor_out
         return found
 
-    def _pool_suffices(self, i: int, liquid: Array, back: Array) -> bool:
+    def _pool_suffices(self, i: int, liquid: Array, back: Array, place: _Place) -> bool:
         """Whether a trap could give back all that it was asked for, and never ran over."""
         if self.plan.stations[i].trap is None:
             return True
@@ -263,6 +266,7 @@ class WaterAlong:
             return False
         start = self.state.trap[i]
         asked, most = back.sum(axis=0), back.max(axis=0)
+        place.back_sum = asked
         if (asked == 0.0).all():
             return True
         if not (start - asked >= most).all():
@@ -349,14 +353,22 @@ class WaterAlong:
         if caught is not None:
             held = held + caught
         if place.back is not None:
-            held = held - place.back[: row + 1].sum(axis=0)
+            whole = row + 1 == len(place.back) and place.back_sum is not None
+            held = held - (place.back_sum if whole else place.back[: row + 1].sum(axis=0))
         kept: Array = held
         return kept
 
-    def only_fills(self, i: int) -> bool:
-        """Whether nothing left a trap in these ticks."""
-        back = self.places[i].back
-        return i not in self.drains and (back is None or not back.any())
+    def trap_between(self, i: int) -> tuple[Array, Array]:
+        """What a trap held at least and at most from before the first tick on, kg, (members,)."""
+        place, start = self.places[i], self.state.trap[i]
+        if place.trap is not None:
+            least, most = place.trap.min(axis=0), place.trap.max(axis=0)
+            return np.minimum(start, least), np.maximum(start, most)
+        given = self._caught(place, len(self.water_in))
+        back = place.back_sum
+        if back is None and place.back is not None:
+            back = place.back.sum(axis=0)
+        return start if back is None else start - back, start if given is None else start + given
 
     def trap_rows(self, i: int) -> Array:
         """What a trap holds after every tick, kg."""
@@ -378,13 +390,17 @@ class WaterAlong:
         plan, state, ledger, until = self.plan, self.state, self.ledger, row + 1
         trap, waiting, spilled = state.trap.copy(), state.waiting.copy(), state.spilled.copy()
         shed = ledger.shed.copy()
+        waits, spilt = self._waits
         for i, place in enumerate(self.places):
             if plan.stations[i].trap is not None:
                 caught = self._caught(place, until)
                 trap[i] = self._trap_at(i, row, caught)
                 if caught is not None:
                     shed[i] += caught
-            waiting[i], spilled[i] = place.waiting.at(row), place.spilled.at(row)
+            if waits or place.waiting.rows is not None:
+                waiting[i] = place.waiting.at(row)
+            if spilt or place.spilled.rows is not None:
+                spilled[i] = place.spilled.at(row)
         ratio, lately = self.leaving(row)
         vapor = np.array([self.vapor[n][row] for n in range(len(plan.receivers))])
         after = WaterState(
@@ -424,31 +440,45 @@ class WaterAlong:
     def _leaving(self, i: int, row: int, ratio: Array) -> None:
         """The humidity ratio of the air that last left a station, in place."""
         vapor, through = self.places[i].vapor_out, self.air.moved.through[i]
-        last = through[row]
-        if last.min() > 0.0:
-            np.divide(vapor[row], last, out=ratio)
-            return
-        moving = through[: row + 1] > 0.0
-        ever = np.flatnonzero(moving.any(axis=0))
-        when = row - moving[::-1].argmax(axis=0)[ever]
-        ratio[ever] = vapor[when, ever] / through[when, ever]
+        key = id(through), row
+        if key not in self._left:  # many stations pass on the very same air
+            self._left[key] = _last_moving(through, row)
+        ever, when = self._left[key]
+        if ever is None:
+            np.divide(vapor[row], through[row], out=ratio)
+        else:
+            ratio[ever] = vapor[when, ever] / through[when, ever]
 
     def _carried(self, until: int) -> carried.Carried:
         """What outlets carried lately: each tick's part fades with the air that left after it."""
         before = self.state.carried
         liquid, air = before.liquid.copy(), before.air.copy()
-        memory, used = carried.memory_kg(self.plan), self.air.used[:until]
+        memory, used = carried.memory_kg(self.plan)[:, 0], self.air.used[:until]
+        last = math.nan
         for number in range(len(air)):
             scale = self.plan.line.outlets[number].share / memory[number]
-            fades = np.exp((self.air.used_before - used[-1]) * scale)
+            if not math.isclose(scale, last, rel_tol=1e-14):  # else as of the outlet before
+                last, fades = scale, np.exp((self.air.used_before - used[-1]) * scale)
+                weight = np.exp((used - used[-1]) * scale)
             air[number] *= fades
             liquid[number] *= fades
-            weight = np.exp((used - used[-1]) * scale)
             air[number] += (self.air.moved.outlets[number][:until] * weight).sum(axis=0)
             gone = self.liquid_at.get(number)
             if gone is not None:
                 liquid[number] += (gone[:until] * weight).sum(axis=0)
         return carried.Carried(liquid, air)
+
+
+# Which members' air ever left, and in which tick it last did; None, None: all's did in the last.
+_LastMoving = tuple[Ints | None, Ints | None]
+
+
+def _last_moving(through: Array, row: int) -> _LastMoving:
+    if through[row].min() > 0.0:
+        return None, None
+    moving = through[: row + 1] > 0.0
+    ever = np.flatnonzero(moving.any(axis=0))
+    return ever, row - moving[::-1].argmax(axis=0)[ever]
 
 
 @dataclass(slots=True)
