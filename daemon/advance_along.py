@@ -37,7 +37,7 @@ from daemon.state import CoreState, HourTotals
 from daemon.ticks_along import Ticks, ticks_along
 from daemon.unset_clock import SET_FROM_US
 
-ELEMENTS = 15_872  # ticks times members that are worked on together: they stay near the processor
+ELEMENTS = 23_552  # ticks times members that are worked on together: they stay near the processor
 HIGHEST_BAROMETER_PA = 110_000.0
 LEAST_TICKS = 6  # fewer are as quick one by one
 

@@ -20,7 +20,7 @@ from functools import lru_cache
 import numpy as np
 
 from daemon.moisture import air, hardy
-from daemon.moisture.conditions import COLDEST_K, HOTTEST_K
+from daemon.moisture.conditions import COLDEST_K, HOTTEST_K, LOWEST_PA
 from daemon.moisture.ensemble import Array
 
 ALIKE_K = 2e-11  # 1e-12 of a humidity ratio, and a hundred times what rounding makes of 300 K
@@ -162,7 +162,8 @@ def _interpolated(
 ) -> bool:
     """The humidity ratio, in place, and the mole fraction, where that is asked for; whether it
     could be done."""
-    if series.e_pa.max() > MOST_SHARE * pressure_pa.min():
+    highest = MOST_SHARE * LOWEST_PA
+    if series.e_pa.max() > highest and series.e_pa.max() > MOST_SHARE * pressure_pa.min():
         return False
     weights = course.weights(series.nodes)
     vapor, part = weights @ series.level, weights @ series.slope_per_pa
