@@ -14,13 +14,14 @@ import numpy as np
 
 from daemon.advance import Core
 from daemon.alarms import Transition
+from daemon.dew_points_along import gathered
 from daemon.drain_alarms import STUCK_LIMIT
 from daemon.falls_along import gauges_after, may_fall
+from daemon.fittings_along import fitting_rows
 from daemon.followed import Followed
 from daemon.judged_along import first
 from daemon.looks_along import Looks, changes
-from daemon.moisture import dew_sensors
-from daemon.moisture.along import Stretch, fits, stretch
+from daemon.moisture.along import Stretch, stretch
 from daemon.moisture.along_air import Ints
 from daemon.moisture.along_drains import let_down_from
 from daemon.moisture.contact import ContactState
@@ -30,6 +31,7 @@ from daemon.moisture.flow import PumpWatch
 from daemon.moisture.model import Moved, State
 from daemon.moisture.outlook import SAMPLED_EVERY_US
 from daemon.moisture.plant import Plant
+from daemon.moisture.power import Powered
 from daemon.plant_along import PlantAlong
 from daemon.record_arrays import NEVER_US, Record
 from daemon.reminders import NEVER, WATCHED_US, Reminder
@@ -59,7 +61,7 @@ class AdvanceAlong:
     def __init__(self, core: Core) -> None:
         self.core = core
         plan = core.model.plan
-        self.fits = fits(core.model) and core.hourly is None and not dew_sensors.stations(plan)
+        self.fits = core.hourly is None
         self.most = max(ELEMENTS // plan.line.members, 2 * LEAST_TICKS)
 
     def advance(self, state: CoreState, record: Record, times_us: Ints) -> Along:
@@ -160,6 +162,9 @@ class _From:
     def contact_unknown_us(self, row: int) -> int:
         return self.ticks.contact_unknown_us(self.first + row)
 
+    def power(self, row: int) -> tuple[Powered, ...]:
+        return self.ticks.power(self.first + row)
+
 
 class _Watch:
     """Alarms, reminders and what is followed, over the ticks of one stretch."""
@@ -177,7 +182,8 @@ class _Watch:
         self.samples = list(changes(before_us, samples))
         self.end = found.state(count - 1)
         looks = Looks(core, self.state, found, count)
-        self.looks, self.margins = sorted(looks.rows()), looks.margins()
+        rows = looks.rows().union(fitting_rows(core, done.state, found, count))
+        self.looks, self.margins = sorted(rows), looks.margins()
 
     def run(self) -> None:
         """Go through the ticks in which something may happen."""
@@ -202,7 +208,9 @@ class _Watch:
             else:
                 self._glance(row)
             row += 1
-        self.state = replace(self.state, model=self.end)
+        sensed = self.state.sensed
+        observed = gathered(self.core.model.plan, sensed.observed, self.found, self.count)
+        self.state = replace(self.state, model=self.end, sensed=replace(sensed, observed=observed))
         on_s, drawn_kg, used_kg = self.found.moved(0, self.count)
         hour = self.state.hour
         hour = HourTotals(

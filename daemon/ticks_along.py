@@ -15,6 +15,8 @@ from daemon.moisture.contact import STALE_AFTER_PERIODS, ContactState, integrate
 from daemon.moisture.ensemble import Array
 from daemon.moisture.flow import PumpWatch, Watched, told_all
 from daemon.moisture.model import State
+from daemon.moisture.power import Powered
+from daemon.powers_along import PowersAlong, powers_along
 from daemon.record_arrays import Record
 from daemon.site import hours as opening
 from daemon.state import ChannelRecord, CoreState
@@ -33,6 +35,7 @@ class Ticks:
     judged: JudgedAlong
     course: Course
     good: int
+    powers: PowersAlong
     _contacts: Sequence[Contact] = ()
     _pumps: Sequence[Watched] = ()
     _unknown_since_us: list[int] = field(default_factory=list)
@@ -71,6 +74,10 @@ class Ticks:
     def contact_unknown_us(self, row: int) -> int:
         """Since when the contact is not known, after a tick."""
         return self._unknown_since_us[row]
+
+    def power(self, row: int) -> tuple[Powered, ...]:
+        """Whether dryers run, after a tick."""
+        return self.powers.at(row)
 
     # ---- what is remembered of the channels ----
 
@@ -127,7 +134,20 @@ def ticks_along(core: Core, before: CoreState, record: Record, times_us: Ints) -
         unknown_us,
         booked_us,
     )
-    return Ticks(core, before, times_us, said, judged, course, good, contacts, pumps, since_us[1:])
+    powers = powers_along(core.model.fittings.drying, model.fittings, said, course)
+    return Ticks(
+        core,
+        before,
+        times_us,
+        said,
+        judged,
+        course,
+        min(good, powers.good),
+        powers,
+        contacts,
+        pumps,
+        since_us[1:],
+    )
 
 
 def _readings(record: Record, name: str, after_us: int, times_us: Ints) -> Readings:

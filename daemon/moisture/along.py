@@ -13,23 +13,29 @@ import numpy as np
 from daemon.moisture import along_air
 from daemon.moisture.along_air import AirAlong, Course
 from daemon.moisture.along_drains import drains_along, fitted_after
+from daemon.moisture.along_fittings import FittingsAlong
+from daemon.moisture.along_purging import purging_along
 from daemon.moisture.along_water import WaterAlong
 from daemon.moisture.conditions import Conditions, Held
 from daemon.moisture.contact import ContactState
 from daemon.moisture.ensemble import Array
+from daemon.moisture.fitting_state import FittingState, Moment
 from daemon.moisture.flow import AirState, PumpWatch
 from daemon.moisture.model import Model, State
 from daemon.moisture.outlook import Sight
+from daemon.moisture.power import Powered
 
 
 class Switches(Protocol):
-    """What a contact and a gauge tell of the compressor, by tick."""
+    """What contacts and a gauge tell of the compressor and of dryers, by tick."""
 
     def contact(self, row: int) -> ContactState: ...
 
     def pump(self, row: int) -> PumpWatch: ...
 
     def contact_unknown_us(self, row: int) -> int: ...
+
+    def power(self, row: int) -> tuple[Powered, ...]: ...
 
 
 @dataclass(slots=True)
@@ -49,23 +55,28 @@ class Stretch:
     drawn: Array
     air: AirAlong
     water: WaterAlong
+    purged: Array | None  # cumulative, (purging, ticks, members); None: nothing purges
 
     @property
     def good(self) -> int:
         """So many ticks from the first are as worked out here."""
-        return self.air.good
+        fitted = self.water.fitted
+        return self.air.good if fitted is None else min(self.air.good, fitted.good)
 
     def state(self, row: int) -> State:
         """The state after one tick."""
         water, ledger = self.water.at(row)
-        fitted, fittings = self.before.fittings, self.model.fittings
-        draining, limited = fitted_after(fittings, fitted, self.water.drains, row)
         return replace(
-            self.dry_state(row),
-            water=water,
-            ledger=ledger,
-            fittings=replace(fitted, draining=draining, limited=limited),
+            self.dry_state(row), water=water, ledger=ledger, fittings=self._fittings(row)
         )
+
+    def _fittings(self, row: int) -> FittingState:
+        state = self.before.fittings
+        if self.water.fitted is not None:
+            state = self.water.fitted.after(row, state)
+        draining, limited = fitted_after(self.model.fittings, state, self.water.drains, row)
+        power = self.switches.power(row)
+        return replace(state, power=power, draining=draining, limited=limited)
 
     def leaving_state(self, row: int) -> State:
         """The same, but for traps, for what waits, and for the ledger, which are as before all."""
@@ -99,7 +110,7 @@ class Stretch:
                 used=air.used[row].copy(),
                 entered=self._entered(row),
                 seen=before.air.seen,
-                purged=before.air.purged,
+                purged=before.air.purged if self.purged is None else self.purged[:, row].copy(),
                 ratio=before.air.ratio,
             ),
             conditions=Conditions(
@@ -143,13 +154,6 @@ class Stretch:
         return on_s, self.drawn[part].sum(axis=0), self.air.moved.used[part].sum(axis=0)
 
 
-def fits(model: Model) -> bool:
-    """Whether a line has nothing that acts tick by tick."""
-    fittings = model.fittings
-    acting = (fittings.drying.dryers, fittings.drying.rated, fittings.baths, model.plan.purging)
-    return not any(acting)
-
-
 def stretch(model: Model, state: State, course: Course, switches: Switches) -> Stretch | None:
     """Several ticks after a state; None where they must be taken one by one."""
     plan, parameters = model.plan, state.parameters
@@ -171,7 +175,24 @@ def stretch(model: Model, state: State, course: Course, switches: Switches) -> S
         to_us = int(course.times_us[-1])
         drawn = model.metered(meter, held, state.offsets, to_us, dt_s, drawn)
     measured = along_air.measured_along(model, state, now)
-    air = along_air.moved_along(plan, state.air, drawn, measured)
+    purged = loads = None
+    if plan.purging:
+        air, purged, loads = purging_along(model, state, drawn, measured, dt_s)
+    else:
+        air = along_air.moved_along(plan, state.air, drawn, measured)
+    fitted = None
+    if model.fittings.drying.dryers or model.fittings.drying.rated or model.fittings.baths:
+        to_us = state.time_us + model.period_us
+        moment = Moment(now, saturated, air.moved, held, state.offsets, state.time_us, to_us)
+        fitted = FittingsAlong(
+            model.fittings,
+            state.fittings,
+            parameters.fittings,
+            parameters.water,
+            moment,
+            course.times_us,
+            loads,
+        )
     water = WaterAlong(
         plan,
         parameters.water,
@@ -182,6 +203,7 @@ def stretch(model: Model, state: State, course: Course, switches: Switches) -> S
         intake_ratio,
         dt_s,
         drains_along(model, state, now, course.times_us),
+        fitted,
     )
     return Stretch(
         model,
@@ -197,4 +219,5 @@ def stretch(model: Model, state: State, course: Course, switches: Switches) -> S
         drawn,
         air,
         water,
+        purged,
     )

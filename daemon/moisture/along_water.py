@@ -16,6 +16,8 @@ import numpy as np
 from daemon.moisture import carried
 from daemon.moisture.along_air import AirAlong, Bools, Ints, running_sum
 from daemon.moisture.along_drains import DrainAlong
+from daemon.moisture.along_drying import Wet
+from daemon.moisture.along_fittings import FittingsAlong
 from daemon.moisture.ensemble import Array
 from daemon.moisture.line import Ledger, WaterParameters, WaterState, parts_of
 from daemon.moisture.plan import Plan
@@ -74,6 +76,7 @@ class WaterAlong:
     intake_ratio: Array
     dt_s: float
     drains: Mapping[int, DrainAlong]  # by station
+    fitted: FittingsAlong | None = None  # None: nothing dries, and nothing is rated
     places: list[_Place] = field(default_factory=list)
     water_in: Array = field(init=False)
     vapor: dict[int, Array] = field(default_factory=dict)  # by receiver's row, after each tick
@@ -84,6 +87,8 @@ class WaterAlong:
     _vapor_in: list[Array | None] = field(init=False)
     _liquid_in: list[Array | None] = field(init=False)
     _spill_in: list[Array | None] = field(init=False)
+    _holds: list[Array] = field(init=False)  # humidity ratio at saturation after its dryer
+    _kept: list[Array] = field(init=False)  # the share of liquid that each trap keeps
     _waits: tuple[bool, bool] = field(init=False)  # whether liquid does, or what ran over
     _known: dict[int, Bools | None] = field(default_factory=dict)
     _left: dict[tuple[int, int], _LastMoving] = field(default_factory=dict)
@@ -92,6 +97,10 @@ class WaterAlong:
         count = len(self.plan.stations)
         self._vapor_in, self._liquid_in = [None] * count, [None] * count
         self._spill_in = [None] * count
+        self._holds, self._kept = list(self.saturated), list(self.parameters.separation)
+        if self.fitted is not None:
+            for i, falls in self.fitted.drying.separation.items():
+                self._kept[i] = falls
         self._waits = bool(self.state.waiting.any()), bool(self.state.spilled.any())
         self.water_in = self.air.moved.through[0] * self.intake_ratio
         self._vapor_in[0] = self.water_in
@@ -104,19 +113,30 @@ class WaterAlong:
         vapor_in = self._vapor_in[i]
         if vapor_in is None:
             vapor_in = np.zeros_like(self.water_in)
+        if self.fitted is not None:
+            vapor_in = self._fitted(self.fitted, i, vapor_in)
         place = _Place(vapor_in)
         self.places.append(place)
         if i in self.plan.receivers:
             liquid = self._receiver(i, vapor_in, place)
         else:
             liquid = self._passing(i, vapor_in, place)
+            if self.fitted is not None:
+                place.vapor_out = self.fitted.leaves(i, vapor_in, place.vapor_out)
         new, spill = self._divide(i, liquid, place)
         self._hand_on(i, new, spill, place)
+
+    def _fitted(self, fitted: FittingsAlong, i: int, vapor_in: Array) -> Array:
+        """The vapor that comes to a station, after what dries there."""
+        wet = fitted.arrives(i, Wet(vapor_in, self._liquid_in[i], self._spill_in[i]))
+        self._liquid_in[i], self._spill_in[i] = wet.liquid, wet.spill
+        self._holds[i] = fitted.drying.dried.get(i, self._holds[i])
+        return wet.vapor
 
     def _passing(self, i: int, vapor_in: Array, place: _Place) -> Array | None:
         """The liquid at a station after vapor has condensed, or liquid evaporated."""
         liquid = self._liquid_in[i]
-        possible = self.saturated[i] * self.air.moved.into[i]
+        possible = self._holds[i] * self.air.moved.into[i]
         if liquid is None:
             place.vapor_out = np.minimum(vapor_in, possible, out=possible)
             condensed: Array = vapor_in - place.vapor_out
@@ -135,7 +155,7 @@ class WaterAlong:
         spill = self._spill_in[i]
         if self.plan.stations[i].trap is None:
             return liquid, spill
-        kept = self.parameters.separation[i]
+        kept = self._kept[i]
         caught = None if liquid is None else kept * liquid
         goes_on = None if liquid is None or caught is None else liquid - caught
         if spill is not None:
@@ -417,6 +437,7 @@ class WaterAlong:
             vapor_out=_booked(ledger.vapor_out, self.vapor_out, until),
             liquid_out=_booked(ledger.liquid_out, self.liquid_out, until),
             shed=shed,
+            beds=ledger.beds if self.fitted is None else ledger.beds + self.fitted.beds(until),
             passed=self._passed(until),
         )
         return after, booked
@@ -453,13 +474,16 @@ class WaterAlong:
         """What outlets carried lately: each tick's part fades with the air that left after it."""
         before = self.state.carried
         liquid, air = before.liquid.copy(), before.air.copy()
-        memory, used = carried.memory_kg(self.plan)[:, 0], self.air.used[:until]
-        last = math.nan
+        memory, last = carried.memory_kg(self.plan)[:, 0], math.nan
         for number in range(len(air)):
+            used, used_before = self.air.used[:until], self.air.used_before
             scale = self.plan.line.outlets[number].share / memory[number]
-            if not math.isclose(scale, last, rel_tol=1e-14):  # else as of the outlet before
-                last, fades = scale, np.exp((self.air.used_before - used[-1]) * scale)
-                weight = np.exp((used - used[-1]) * scale)
+            if self.plan.purging:  # a part of what is used never comes to an outlet
+                used = self.air.moved.outlets[number][:until].cumsum(axis=0)
+                used_before, scale = np.zeros_like(used_before), 1.0 / memory[number]
+            if self.plan.purging or not math.isclose(scale, last, rel_tol=1e-14):
+                last, fades = scale, np.exp((used_before - used[-1]) * scale)
+                weight = np.exp((used - used[-1]) * scale)  # else as of the outlet before
             air[number] *= fades
             liquid[number] *= fades
             air[number] += (self.air.moved.outlets[number][:until] * weight).sum(axis=0)

@@ -14,7 +14,7 @@ from daemon.moisture.description import Desiccant, Fixed, Measured, Refrigerated
 from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array
 from daemon.moisture.fitted import Bed
 from daemon.moisture.fitting_beliefs import FittingParameters, rated_flow
-from daemon.moisture.fitting_state import FittingState, Prepared
+from daemon.moisture.fitting_state import FittingState, Moment, Prepared
 from daemon.moisture.plan import Plan
 from daemon.moisture.power import Mask, Told, foreseen, switched, works
 
@@ -151,22 +151,34 @@ class Drying:
 
         Twin beds are taken to feel pressure and inlet temperature as refrigerated dryers do.
         """
-        i, dryer = self.dryers[number]
-        moment, now = step.moment, step.moment.now
+        i, _ = self.dryers[number]
         if i not in self.rated:
-            return np.zeros(now.temperature_k[i].shape)
+            return np.zeros(step.moment.now.temperature_k[i].shape)
         row = self.rated.index(i)
-        gauge = now.pressure_pa[i] - now.pressure_pa[0]
-        inlet = now.temperature_k[self.plan.parent[i]]
-        if isinstance(dryer, Refrigerated):
-            around = self.around(i, now, moment.held, moment.offsets, moment.to_us)
-            asked = dryer.dew_point.value
-        else:
-            around = np.full(inlet.shape, dryers.RATED_AROUND_K)
-            asked = dryers.RATED_DEW_POINT_K
-        takes = dryers.correction(gauge, inlet, around, np.full(inlet.shape, asked))
+        takes = self.takes(number, step.moment)
         load: Array = step.load[row] / (parameters.rated_kg_per_s[row] * takes)
         return load
+
+    def takes(self, number: int, moment: Moment) -> Array:
+        """What a dryer can take, as a share of its rated flow, (members,)."""
+        i, dryer = self.dryers[number]
+        now = moment.now
+        gauge = now.pressure_pa[i] - now.pressure_pa[0]
+        inlet = now.temperature_k[self.plan.parent[i]]
+        asked = np.full(inlet.shape, self.asked_of(dryer))
+        return dryers.correction(gauge, inlet, self.around_of(number, moment), asked)
+
+    def asked_of(self, dryer: Refrigerated | Desiccant) -> float:
+        """The pressure dew point at which a dryer's rating is taken, K."""
+        refrigerated = isinstance(dryer, Refrigerated)
+        return dryer.dew_point.value if refrigerated else dryers.RATED_DEW_POINT_K
+
+    def around_of(self, number: int, moment: Moment) -> Array:
+        """The temperature around a dryer; around twin beds, which do not feel it, the rated one."""
+        i, dryer = self.dryers[number]
+        if isinstance(dryer, Refrigerated):
+            return self.around(i, moment.now, moment.held, moment.offsets, moment.to_us)
+        return np.full(moment.now.temperature_k[0].shape, dryers.RATED_AROUND_K)
 
     def _bed(
         self,

@@ -16,6 +16,7 @@ from daemon.record_arrays import Record, Told
 from daemon.site import hours as opening
 from daemon.site.types import Site
 from sensors.reading import Channel, Reading, reading
+from tests.daemon.dryer_shops import DRYER_SHOPS
 from tests.daemon.outlet_shops import site_text
 from tests.daemon.shops import SITE, site
 from tests.daemon.willow_yard import SITE as WILLOW_YARD
@@ -100,32 +101,6 @@ closes_at = "60 ml"
 [[station]]
 id = "intake"
 """
-DRYER = """
-[[station]]
-id = "dryer"
-kind = "refrigerated"
-after = "bowl"
-rated_flow = "10 m3/h"
-trap = { drain = "float", capacity = "100 ml" }
-
-[[station]]
-id = "booth-regulator"
-kind = "regulator"
-after = "dryer"
-"""
-CARTRIDGE = """
-[[station]]
-id = "beads"
-kind = "desiccant"
-after = "bowl"
-mass = "0.2 kg"
-
-[[station]]
-id = "booth-regulator"
-kind = "regulator"
-after = "beads"
-"""
-REGULATOR = '[[station]]\nid = "booth-regulator"\nkind = "regulator"\nafter = "bowl"\n'
 
 
 def _without(text: str, *sensors: str) -> str:
@@ -159,8 +134,7 @@ SHOPS: dict[str, str] = {
     "a minute apart": SITE.replace('name = "Birch Works"', 'name = "B"\nsample_every = "60 s"'),
     "two seconds apart": SITE.replace('name = "Birch Works"', 'name = "B"\nsample_every = "2 s"'),
     "a float switch": SITE.replace('\n[[station]]\nid = "intake"\n', SWITCH, 1),
-    "a dryer": SITE.replace(REGULATOR, DRYER.lstrip()),
-    "a cartridge": SITE.replace(REGULATOR, CARTRIDGE.lstrip()),
+    **DRYER_SHOPS,
     "an open drain": SITE.replace(TANK, 'trap = { capacity = "15 L", drain = "float" }\n'),
     "a timer": SITE.replace(TANK, 'trap = { capacity = "15 L", drain = "timer" }\n'),
     "a drain for a line let down": SITE.replace(
@@ -266,6 +240,8 @@ def _values(
             values = 300.0 + 5.0 * wave + 0.05 * noise
         case "temperature":
             values = (273.5 if weather.cold else 293.0) + 3.0 * wave + 0.03 * noise
+        case "relative_humidity" if channel.sensor == "cell":
+            values = np.clip(0.05 + 0.05 * wave + 0.001 * noise, 0.0, 1.0)
         case "relative_humidity":
             values = (0.88 if weather.humid else 0.55) + 0.1 * wave + 0.002 * noise
         case "pressure" if channel.gauge:
@@ -275,6 +251,8 @@ def _values(
             values = 101_000.0 + 300.0 * wave + 4.0 * noise
         case "contact" if "motor" in channel.name:
             values = running
+        case "contact" if channel.sensor == "dryer-on":
+            values = (np.sin(3.0 * hours) > -0.6).astype(np.float64)
         case "contact":
             values = (np.sin(hours) > 0.9).astype(np.float64)
         case _:
