@@ -22,7 +22,7 @@ from daemon.followed import Followed
 from daemon.judged_along import first
 from daemon.looks_along import Looks, changes
 from daemon.moisture.along import Stretch, stretch
-from daemon.moisture.along_air import Ints
+from daemon.moisture.along_course import Ints
 from daemon.moisture.along_drains import let_down_from
 from daemon.moisture.contact import ContactState
 from daemon.moisture.description import Measured, Source
@@ -275,10 +275,13 @@ class _Watch:
 
     def _margins(self, row: int) -> int:
         """Look at the margins; this tick, if they are not as they were, else the end."""
-        before = self.state.outlets
-        after = self.end if row == self.count - 1 else self.found.leaving_state(row)
-        state = replace(self.state, model=after)
-        self.state = self.core.rules.margins.look(state)
+        before, look = self.state.outlets, self.core.rules.margins
+        after = self.end
+        if row < self.count - 1:
+            after = replace(self.found.before, time_us=self.times_us[row])
+            if look.asks(self.state, self.plant.is_open[row]):
+                after = self.found.leaving_state(row)
+        self.state = look.look(replace(self.state, model=after))
         same = all(
             (each.line, each.surface) == (before[name].line, before[name].surface)
             for name, each in self.state.outlets.items()

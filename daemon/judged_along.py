@@ -14,7 +14,7 @@ import numpy as np
 import numpy.typing as npt
 
 from daemon.judging import Judging
-from daemon.moisture.along_air import Bools, Ints
+from daemon.moisture.along_course import Bools, Ints
 from daemon.moisture.ensemble import Array
 from daemon.state import ChannelRecord
 from sensors.quality import DISAGREES, ChannelState, QualityState

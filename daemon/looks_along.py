@@ -18,6 +18,7 @@ from daemon.due import NO_DATE, RAISED_AT, RETURNS_BELOW
 from daemon.fitting_alarms import FREEZES_KG, FREEZES_ON_ITS_WAY_KG, FREEZING_K
 from daemon.moisture import floats
 from daemon.moisture.along import Stretch
+from daemon.moisture.along_conditions import least_of
 from daemon.moisture.ensemble import Array
 from daemon.outlet_alarms import LOOK_EVERY_US
 from daemon.state import CoreState
@@ -148,13 +149,13 @@ class Looks:
 
     def _frost(self) -> Iterator[int]:
         """Liquid where it is freezing."""
-        temperature = self.found.conditions.temperature_k[:, : self.ticks]
+        kelvin = self.found.conditions.temperature_k
         was = self.found.before.conditions.temperature_k
         water = self.found.water
-        for i in range(1, len(temperature)):
-            if temperature[i].min() > FREEZING_K and was[i].min() > FREEZING_K:
+        for i in range(1, len(was)):
+            if least_of(kelvin, i) > FREEZING_K and was[i].min() > FREEZING_K:
                 continue
-            state, cold = water.state, temperature[i] <= FREEZING_K
+            state, cold = water.state, kelvin[i][: self.ticks] <= FREEZING_K
             before = self._freezes(
                 was[i] <= FREEZING_K, state.trap[i], state.waiting[i] + state.spilled[i]
             )

@@ -18,7 +18,7 @@ from daemon.advance_along import AdvanceAlong
 from daemon.clock import HOUR_US
 from daemon.errors import ReplayError
 from daemon.journal import Entry
-from daemon.moisture.along_air import Ints
+from daemon.moisture.along_course import Ints
 from daemon.record_arrays import NEVER_US, Record
 from daemon.replay import Result
 from daemon.state import Inputs

@@ -10,7 +10,7 @@ import numpy as np
 from daemon.advance import Core
 from daemon.judged_along import JudgedAlong, Readings, first, judge_along
 from daemon.moisture import floats
-from daemon.moisture.along_air import Bools, Course, Ints
+from daemon.moisture.along_course import Bools, Course, Ints
 from daemon.moisture.contact import STALE_AFTER_PERIODS, ContactState, integrate
 from daemon.moisture.ensemble import Array
 from daemon.moisture.flow import PumpWatch, Watched, told_all

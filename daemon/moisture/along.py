@@ -11,7 +11,9 @@ from typing import Protocol
 import numpy as np
 
 from daemon.moisture import along_air
-from daemon.moisture.along_air import AirAlong, Course
+from daemon.moisture.along_air import AirAlong
+from daemon.moisture.along_conditions import conditions
+from daemon.moisture.along_course import Course
 from daemon.moisture.along_drains import drains_along, fitted_after
 from daemon.moisture.along_fittings import FittingsAlong
 from daemon.moisture.along_purging import purging_along
@@ -161,7 +163,7 @@ def stretch(model: Model, state: State, course: Course, switches: Switches) -> S
     known = along_air.duties_known(state.duty_known, course, dt_s)
     on_s = along_air.on_time(model, state, course, known)
     duty = along_air.duties(model, state, on_s, dt_s)
-    found = along_air.conditions(model, state, course, duty)
+    found = conditions(model, state, course, duty)
     if found is None:
         return None
     now, held = found

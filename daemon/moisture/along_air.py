@@ -18,43 +18,14 @@ import numpy as np
 import numpy.typing as npt
 
 from daemon.moisture import air, flow, hardy
+from daemon.moisture.along_conditions import least_of
+from daemon.moisture.along_course import Course
 from daemon.moisture.along_saturation import saturated_ratios
-from daemon.moisture.conditions import Conditions, Evaluation, HeldAlong
+from daemon.moisture.conditions import Conditions
 from daemon.moisture.description import Fixed, Like, Measured
 from daemon.moisture.ensemble import Array
 from daemon.moisture.model import DUTY_LOGIT_SD, DUTY_MEMORY_S, Model, State
 from daemon.moisture.plan import Plan
-
-Ints = npt.NDArray[np.int64]
-Bools = npt.NDArray[np.bool_]
-
-
-@dataclass(frozen=True, slots=True)
-class Course:
-    """What was heard at each of several ticks. Arrays are (ticks,)."""
-
-    times_us: Ints
-    values: Mapping[str, Array]  # by the line's channels: the last good value by each tick
-    told_us: Mapping[str, Ints]  # and when that was
-    silent: Mapping[str, bool]  # all along; a channel that never spoke is none of the three
-    is_open: Bools
-    on_us: Ints  # how long the contact was closed in each tick
-    unknown_us: Ints  # and how long nobody knows
-    booked_us: Ints  # what the gauge tells afterwards
-
-    def rows(self, first: int, last: int) -> Course:
-        """The ticks from `first` on, before `last`."""
-        part = slice(first, last)
-        return Course(
-            self.times_us[part],
-            {name: values[part] for name, values in self.values.items()},
-            {name: times[part] for name, times in self.told_us.items()},
-            self.silent,
-            self.is_open[part],
-            self.on_us[part],
-            self.unknown_us[part],
-            self.booked_us[part],
-        )
 
 
 def column(values: npt.NDArray[Any]) -> Array:
@@ -143,28 +114,7 @@ def duties(model: Model, state: State, on_s: Array, dt_s: float) -> dict[int, Ar
     return found
 
 
-# ---- conditions ----
-
-
-def conditions(
-    model: Model, state: State, course: Course, duty: Mapping[int, Array]
-) -> tuple[Conditions, dict[str, HeldAlong]] | None:
-    """Temperatures, pressures and humidity at every tick; None where something begins anew."""
-    held = {
-        name: HeldAlong(cast(Any, values[:, None]), silent=course.silent[name])
-        for name, values in course.values.items()
-    }
-    evaluation = Evaluation(
-        model.plan,
-        held,
-        state.offsets,
-        cast(Any, duty),
-        int(course.times_us[0]),
-        dict(state.lapses),
-        course.times_us[:, None],
-    )
-    now = evaluation.conditions()
-    return (now, held) if evaluation.lapses.keys() == state.lapses.keys() else None
+# ---- saturation ----
 
 
 def alike(plan: Plan, silent: Mapping[str, bool]) -> list[bool]:
@@ -184,7 +134,7 @@ def alike(plan: Plan, silent: Mapping[str, bool]) -> list[bool]:
 def saturation(now: Conditions, wander_alike: Sequence[bool]) -> tuple[Array, Array]:
     """Every station's humidity ratio at saturation, and that of the air drawn in, at every tick."""
     saturated, fraction = saturated_ratios(now.temperature_k, now.pressure_pa, wander_alike)
-    if now.temperature_k[0].min() <= hardy.TRIPLE_POINT_K:
+    if least_of(now.temperature_k, 0) <= hardy.TRIPLE_POINT_K:
         fraction *= hardy.water_over_ice(now.temperature_k[0])
     fraction *= now.relative_humidity
     return saturated, np.minimum(air.ratio_of_fraction(fraction), saturated[0])

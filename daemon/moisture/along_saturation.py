@@ -13,13 +13,14 @@ temperatures do not wander alike, pass the triple point or come near boiling, al
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from functools import lru_cache
 
 import numpy as np
 
 from daemon.moisture import air, hardy
+from daemon.moisture.along_conditions import Wandering
 from daemon.moisture.conditions import COLDEST_K, HOTTEST_K, LOWEST_PA
 from daemon.moisture.ensemble import Array
 
@@ -34,7 +35,7 @@ MOST_SHARE = 0.9  # of vapor in air: beyond it it all but boils
 
 
 def saturated_ratios(
-    kelvin: Array, pressure_pa: Array, alike: Sequence[bool]
+    kelvin: Array | Wandering, pressure_pa: Array | Wandering, alike: Sequence[bool]
 ) -> tuple[Array, Array]:
     """Humidity ratios at saturation of every station, and the first one's mole fraction.
 
@@ -51,7 +52,7 @@ def saturated_ratios(
     """
     ratios = np.empty(kelvin.shape)
     fraction = np.empty(kelvin.shape[1:])
-    courses = [_Course(i, kelvin[i], same) for i, same in enumerate(alike)]
+    courses = list(_courses(kelvin, alike))
     for phase in (hardy.WATER, hardy.ICE):
         few = [course for course in courses if course.phase is phase and course.nodes]
         for course, series in zip(few, _series(phase, few), strict=True):
@@ -68,40 +69,49 @@ def saturated_ratios(
     return ratios, fraction
 
 
+def _courses(kelvin: Array | Wandering, alike: Sequence[bool]) -> Iterator[_Course]:
+    if isinstance(kelvin, Wandering):
+        for i, (start, way) in enumerate(zip(kelvin.start, kelvin.way, strict=True)):
+            yield _Course(i, start, way)
+        return
+    for i, (rows, said) in enumerate(zip(kelvin, alike, strict=True)):
+        way = rows[:, 0] - rows[0, 0]
+        yield _Course(i, rows[0], way if _are_alike(rows, way, said) else None)
+
+
+def _are_alike(rows: Array, way: Array, said: bool) -> bool:
+    """Whether all members go the same way: as it is said, or as it is seen."""
+    if said:
+        least, most = float(rows[0].min() + way.min()), float(rows[0].max() + way.max())
+        return least > COLDEST_K + CLEAR_K and most < HOTTEST_K - CLEAR_K
+    apart = rows - rows[0]
+    apart -= way[:, None]
+    return bool(apart.max() <= ALIKE_K and apart.min() >= -ALIKE_K)
+
+
 @dataclass(slots=True)
 class _Course:
     """How the temperatures of one station go."""
 
     station: int
-    kelvin: Array  # (ticks, members)
-    same: bool  # whether it is known that they wander alike
+    start: Array  # (members,), at the first tick
+    way: Array | None  # (ticks,), the same for all; None: each goes its own
     lowest: float = 0.0  # how far they go from the first tick, K
     highest: float = 0.0
-    way: Array | None = None  # (ticks,), the same for all
     phase: hardy.Phase | None = None
     nodes: int = 0  # how many it takes; 0: no gain
     exact: bool = True
 
     def __post_init__(self) -> None:
-        kelvin = self.kelvin
-        way = kelvin[:, 0] - kelvin[0, 0]
-        self.lowest, self.highest = float(way.min()), float(way.max())
-        least, most = (float(end) for end in (kelvin[0].min(), kelvin[0].max()))
-        coldest, hottest = least + self.lowest, most + self.highest
-        if not self.same:
-            apart = kelvin - kelvin[0]
-            apart -= way[:, None]
-            self.same = bool(apart.max() <= ALIKE_K and apart.min() >= -ALIKE_K)
-        elif coldest < COLDEST_K + CLEAR_K or hottest > HOTTEST_K - CLEAR_K:
+        if self.way is None:
             return
-        if not self.same:
-            return
-        if coldest > hardy.TRIPLE_POINT_K:
+        self.lowest, self.highest = float(self.way.min()), float(self.way.max())
+        if float(self.start.min()) + self.lowest > hardy.TRIPLE_POINT_K:
             self.phase = hardy.WATER
-        elif hottest <= hardy.TRIPLE_POINT_K:
+        elif float(self.start.max()) + self.highest <= hardy.TRIPLE_POINT_K:
             self.phase = hardy.ICE
         nodes = _nodes(self.half)
-        self.way, self.nodes = way, nodes if nodes < len(kelvin) else 0
+        self.nodes = nodes if nodes < len(self.way) else 0
 
     @property
     def half(self) -> float:
@@ -110,7 +120,7 @@ class _Course:
     @property
     def middle(self) -> Array:
         """Of each member's temperatures, (members,)."""
-        middle: Array = self.kelvin[0] + (self.lowest + self.highest) / 2.0
+        middle: Array = self.start + (self.lowest + self.highest) / 2.0
         return middle
 
     def weights(self, nodes: int) -> Array:

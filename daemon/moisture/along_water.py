@@ -14,7 +14,8 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from daemon.moisture import carried
-from daemon.moisture.along_air import AirAlong, Bools, Ints, running_sum
+from daemon.moisture.along_air import AirAlong, running_sum
+from daemon.moisture.along_course import Bools, Ints
 from daemon.moisture.along_drains import DrainAlong
 from daemon.moisture.along_drying import Wet
 from daemon.moisture.along_fittings import FittingsAlong
