@@ -25,7 +25,7 @@ from daemon.state import Inputs
 from daemon.ticks import SILENCE_US, first_at_or_after, next_tick
 
 MOST_ALONE = 32  # ticks that are taken one by one before it is tried again with several
-LARGEST_PIECE = 16 << 20
+LARGEST_PIECE = 31 << 20
 Progress = Callable[[int], None]  # told of the time that was reached
 
 
