@@ -23,7 +23,7 @@ from daemon.judged_along import first
 from daemon.looks_along import Looks, changes
 from daemon.moisture import floats
 from daemon.moisture.along import Stretch, stretch
-from daemon.moisture.along_air import Ints
+from daemon.moisture.along_course import Ints
 from daemon.moisture.along_drains import let_down_from
 from daemon.moisture.contact import ContactState
 from daemon.moisture.description import Measured, Source
@@ -40,7 +40,7 @@ from daemon.state import CoreState, HourTotals
 from daemon.ticks_along import Ticks, ticks_along
 from daemon.unset_clock import SET_FROM_US
 
-ELEMENTS = 15_872  # ticks times members that are worked on together: they stay near the processor
+ELEMENTS = 23_552  # ticks times members that are worked on together: they stay near the processor
 HIGHEST_BAROMETER_PA = 110_000.0
 LEAST_TICKS = 6  # fewer are as quick one by one
 
@@ -51,6 +51,7 @@ class Along:
 
     state: CoreState
     ticks: int = 0  # so many were taken; the next one is to be taken by itself
+    heard_us: int = -1  # the last reading in them; -1: none
     transitions: list[Transition] = field(default_factory=list)
     reminders: list[Reminder] = field(default_factory=list)
 
@@ -86,6 +87,7 @@ class AdvanceAlong:
                 break
         if done.ticks > 0:
             done.state = self._remembered(done.state, ticks, done.ticks)
+            done.heard_us = ticks.heard_us(done.ticks)
         return done
 
     def _usual(self, ticks: Ticks) -> int:
@@ -181,7 +183,7 @@ class _Watch:
         self.switches = any(floats.switches(core.model.plan))
         self.samples = list(changes(before_us, samples))
         self.end = found.state(count - 1)
-        looks = Looks(core, self.state, found, count, self.end)
+        looks = Looks(core, self.state, found, count)
         rows = looks.rows().union(fitting_rows(core, done.state, found, count))
         self.looks, self.margins = sorted(rows), looks.margins()
 
@@ -268,20 +270,21 @@ class _Watch:
         """A sample for the days ahead."""
         followed = self.state.followed
         before_us = self.times_us[row - 1] if row else self.found.before.time_us
-        foresight = self.core.following.foreseer.tick(
-            followed.foresight, before_us, self.found.dry_state(row)
+        foresight = self.core.following.foreseer.sampled(
+            followed.foresight, before_us, self.found.sight(row)
         )
         self.state = replace(self.state, followed=replace(followed, foresight=foresight))
 
     def _margins(self, row: int) -> int:
         """Look at the margins; this tick, if they are not as they were, else the end."""
-        before = self.state.outlets
-        if row == self.count - 1 or self.switches:  # what is in traps says who is to be believed
-            after = self._after(row)
-        else:
-            after = self.found.leaving_state(row)
-        state = replace(self.state, model=after)
-        self.state = self.core.rules.margins.look(state)
+        before, look = self.state.outlets, self.core.rules.margins
+        after = self.end
+        if row < self.count - 1:
+            after = replace(self.found.before, time_us=self.times_us[row])
+            if look.asks(self.state, self.plant.is_open[row]):
+                # what is in traps says whether a float switch is to be believed
+                after = self._after(row) if self.switches else self.found.leaving_state(row)
+        self.state = look.look(replace(self.state, model=after))
         same = all(
             (each.line, each.surface) == (before[name].line, before[name].surface)
             for name, each in self.state.outlets.items()

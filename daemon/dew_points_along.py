@@ -9,7 +9,7 @@ import numpy as np
 
 from daemon.moisture import air, dew_sensors
 from daemon.moisture.along import Stretch
-from daemon.moisture.along_air import Bools, Course
+from daemon.moisture.along_course import Bools, Course
 from daemon.moisture.along_water import WaterAlong
 from daemon.moisture.description import Measured, VentedCell
 from daemon.moisture.ensemble import Array

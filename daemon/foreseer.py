@@ -89,8 +89,14 @@ class Foreseer:
 
     def tick(self, foresight: Foresight, before_us: int, state: State) -> Foresight:
         """After a step of the model from `before_us`."""
-        pattern = outlook.told(foresight.pattern, self._model.plan, before_us, state)
-        return foresight if pattern is foresight.pattern else replace(foresight, pattern=pattern)
+        if not outlook.is_sampled(before_us, state.time_us):
+            return foresight
+        return self.sampled(foresight, before_us, outlook.sight(state))
+
+    def sampled(self, foresight: Foresight, before_us: int, sight: outlook.Sight) -> Foresight:
+        """After a step of the model from `before_us` that is sampled."""
+        pattern = outlook.told(foresight.pattern, self._model.plan, before_us, sight)
+        return replace(foresight, pattern=pattern)
 
     def hour(
         self, foresight: Foresight, state: State, dates: Dates, from_us: int, on_s: Array

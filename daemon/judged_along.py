@@ -14,7 +14,7 @@ import numpy as np
 import numpy.typing as npt
 
 from daemon.judging import Judging
-from daemon.moisture.along_air import Bools, Ints
+from daemon.moisture.along_course import Bools, Ints
 from daemon.moisture.ensemble import Array
 from daemon.state import ChannelRecord
 from sensors.quality import DISAGREES, ChannelState, QualityState
@@ -123,17 +123,18 @@ class _Channel:
         """What is remembered after so many readings, all of them good."""
         if count == 0:
             return self.before
-        at, said = count - 1, self.said
-        before = self.before
+        at, said, before = count - 1, self.said, self.before
+        changed = int(self.last_change[at])  # -1: what was remembered goes on
+        ran_us = int(self.ran_us[said.tick[changed + 1 : count]].sum())
         if self.rule.saturates:
             before = replace(before, wet_since_us=None, wet=False)
         return replace(
             before,
             value=float(said.values[at]),
             time_us=int(said.times_us[at]),
-            same_since_us=int(self.since_us()[at]),
+            same_since_us=before.same_since_us if changed < 0 else int(said.times_us[changed]),
             repeated=int(self.repeated[at]),
-            ran_us=int(self._ran()[at]),
+            ran_us=before.ran_us + ran_us if changed < 0 else ran_us,
             moves=self._moves(count),
             jumped=0,
             jump_value=math.nan,

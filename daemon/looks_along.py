@@ -18,8 +18,8 @@ from daemon.due import NO_DATE, RAISED_AT, RETURNS_BELOW
 from daemon.fitting_alarms import FREEZES_KG, FREEZES_ON_ITS_WAY_KG, FREEZING_K
 from daemon.moisture import floats
 from daemon.moisture.along import Stretch
+from daemon.moisture.along_conditions import least_of
 from daemon.moisture.ensemble import Array
-from daemon.moisture.model import State
 from daemon.outlet_alarms import LOOK_EVERY_US
 from daemon.state import CoreState
 
@@ -59,12 +59,8 @@ def _share(of_members: npt.NDArray[np.bool_]) -> Array:
 class Looks:
     """When the alarms of one site have to be looked at."""
 
-    def __init__(
-        self, core: Core, before: CoreState, found: Stretch, ticks: int, end: State
-    ) -> None:
-        """`end` is the model's state after the last of the ticks."""
+    def __init__(self, core: Core, before: CoreState, found: Stretch, ticks: int) -> None:
         self.core, self.before, self.found, self.ticks = core, before, found, ticks
-        self.end = end
 
     def rows(self) -> set[int]:
         """The ticks in which a condition may change, as far as the stretch tells."""
@@ -83,17 +79,19 @@ class Looks:
         times_us, rows = self.found.course.times_us, self.core.rules.trap_rows
         if not rows:
             return
-        start = self._levels(rows, self.found.before.water.trap[rows])
-        end = self._levels(rows, self.end.water.trap[rows])
+        water = self.found.water
+        most = np.array([water.trap_between(i) for i in rows])
+        lowest, highest = self._levels(rows, most).swapaxes(0, -1)
         for number, (i, name) in enumerate(zip(rows, self.core.trap_names, strict=True)):
             due_us = self.before.traps[name].calendar_due_us
             if due_us != NO_DATE and self.before.time_us < due_us <= times_us[self.ticks - 1]:
                 yield int(np.searchsorted(times_us, due_us))
-            # what is the same at both ends of a trap that only fills is so between
-            if self.found.water.only_fills(i) and (start[:, number] == end[:, number]).all():
+            # each member's place is the same at the least and the most that its trap can have held
+            if (lowest[number] == highest[number]).all():
                 continue
-            between = self._levels([i], self.found.water.trap_rows(i)[None, : self.ticks])
-            for before, after in zip(start[:, number], between[:, 0], strict=True):
+            start = self._levels([i], self.found.before.water.trap[i][None])
+            between = self._levels([i], water.trap_rows(i)[None, : self.ticks])
+            for before, after in zip(start[:, 0], between[:, 0], strict=True):
                 yield from changes(int(before), after)
 
     def _levels(self, rows: list[int], trap: Array) -> Levels:
@@ -160,13 +158,13 @@ class Looks:
 
     def _frost(self) -> Iterator[int]:
         """Liquid where it is freezing."""
-        temperature = self.found.conditions.temperature_k[:, : self.ticks]
+        kelvin = self.found.conditions.temperature_k
         was = self.found.before.conditions.temperature_k
         water = self.found.water
-        for i in range(1, len(temperature)):
-            if temperature[i].min() > FREEZING_K and was[i].min() > FREEZING_K:
+        for i in range(1, len(was)):
+            if least_of(kelvin, i) > FREEZING_K and was[i].min() > FREEZING_K:
                 continue
-            state, cold = water.state, temperature[i] <= FREEZING_K
+            state, cold = water.state, kelvin[i][: self.ticks] <= FREEZING_K
             before = self._freezes(
                 was[i] <= FREEZING_K, state.trap[i], state.waiting[i] + state.spilled[i]
             )

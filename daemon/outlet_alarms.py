@@ -80,16 +80,21 @@ class MarginAlarms:
             outlets[outlet.id] = self._looked(state, outlet, outlets[outlet.id], is_open)
         return replace(state, outlets=outlets)
 
+    def asks(self, state: CoreState, is_open: bool) -> bool:
+        """Whether a look would ask the model about any outlet's air."""
+        return any(
+            _asks_line(state, outlet, is_open) or _asks_surface(state, outlet, is_open)
+            for outlet in self.air.outlets
+        )
+
     def _looked(
         self, state: CoreState, outlet: Described, record: OutletRecord, is_open: bool
     ) -> OutletRecord:
         line: Condition = "between"
         surface: Condition = "between"
-        if watches_line(outlet) and (is_open or _raised(state, f"{outlet.id}-line-margin-low")):
+        if _asks_line(state, outlet, is_open):
             line = self._line(state, outlet)
-        if watches_surface(outlet) and (
-            is_open or _raised(state, f"{outlet.id}-surface-margin-low")
-        ):
+        if _asks_surface(state, outlet, is_open):
             surface = self._surface(state, outlet)
         return replace(record, looked_us=state.time_us, line=line, surface=surface)
 
@@ -206,6 +211,15 @@ def watches_surface(outlet: Described) -> bool:
 def place_words(place: str) -> str:
     """A place that the air touches, for people."""
     return {margin.HOSE: "the hose", margin.SLAB: "the slab under the hose"}.get(place, place)
+
+
+def _asks_line(state: CoreState, outlet: Described, is_open: bool) -> bool:
+    return watches_line(outlet) and (is_open or _raised(state, f"{outlet.id}-line-margin-low"))
+
+
+def _asks_surface(state: CoreState, outlet: Described, is_open: bool) -> bool:
+    name = f"{outlet.id}-surface-margin-low"
+    return watches_surface(outlet) and (is_open or _raised(state, name))
 
 
 def _raised(state: CoreState, alarm: str) -> bool:

@@ -30,12 +30,12 @@ class PlantAlong:
         self.on_s: list[float] = found.on_s[:count, 0].tolist()
         if not self._closed_at_all:
             return
-        rows = range(first, first + count)
-        self._unknown_us = [ticks.contact_unknown_us(row) for row in rows]
-        self._closed = [bool(ticks.contact(row).closed) for row in rows]
+        last = first + count
+        self._unknown_us = ticks.unknown_us(first, last)
+        self._closed = ticks.closed(first, last)
         self._running: Sequence[bool] = self._closed
         if not self._contact:
-            self._running = [ticks.pump(row).pumping for row in rows]
+            self._running = ticks.pumping(first, last)
         if self._gauge is not None:
             self._measured = self._gauge.row in found.conditions.measured
             values = found.course.values.get(self._gauge.channel)

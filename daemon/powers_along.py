@@ -9,7 +9,7 @@ import numpy as np
 
 from daemon.judged_along import Readings, first
 from daemon.moisture import dryers
-from daemon.moisture.along_air import Course, Ints
+from daemon.moisture.along_course import Course, Ints
 from daemon.moisture.description import Power, Refrigerated
 from daemon.moisture.drying import Drying
 from daemon.moisture.fitting_state import FittingState

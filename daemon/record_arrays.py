@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from daemon.moisture.along_air import Ints
+from daemon.moisture.along_course import Ints
 from daemon.moisture.ensemble import Array
 from sensors.reading import Reading
 

@@ -17,7 +17,7 @@ import numpy as np
 
 from daemon.clock import parse_rfc3339
 from daemon.csv_rows import BadRow
-from daemon.moisture.along_air import Ints
+from daemon.moisture.along_course import Ints
 from daemon.moisture.ensemble import Array
 from daemon.record_arrays import Record, Told
 from daemon.recorded import EARLIEST_US, LATEST_US, ReadingsFile

@@ -18,14 +18,14 @@ from daemon.advance_along import AdvanceAlong
 from daemon.clock import HOUR_US
 from daemon.errors import ReplayError
 from daemon.journal import Entry
-from daemon.moisture.along_air import Ints
+from daemon.moisture.along_course import Ints
 from daemon.record_arrays import NEVER_US, Record
 from daemon.replay import Result
 from daemon.state import Inputs
 from daemon.ticks import SILENCE_US, first_at_or_after, next_tick
 
 MOST_ALONE = 32  # ticks that are taken one by one before it is tried again with several
-LARGEST_PIECE = 16 << 20
+LARGEST_PIECE = 31 << 20
 Progress = Callable[[int], None]  # told of the time that was reached
 
 
@@ -67,7 +67,7 @@ class _Run:
             if taken:
                 self.result.ticks += taken
                 self.result.taken["together"] += taken
-                self.heard_us = max(self.heard_us, self.record.last_by(self.now_us))
+                self.heard_us = max(self.heard_us, found.heard_us)
             self.alone = 1 if taken or not len(times_us) else min(2 * self.alone, MOST_ALONE)
             for _ in range(self.alone):
                 if self.now_us < self.end_us:

@@ -10,7 +10,7 @@ import numpy as np
 from daemon.advance import Core
 from daemon.judged_along import JudgedAlong, Readings, first, judge_along
 from daemon.moisture import floats
-from daemon.moisture.along_air import Bools, Course, Ints
+from daemon.moisture.along_course import Bools, Course, Ints
 from daemon.moisture.contact import STALE_AFTER_PERIODS, ContactState, integrate
 from daemon.moisture.ensemble import Array
 from daemon.moisture.flow import PumpWatch, Watched, told_all
@@ -51,6 +51,22 @@ class Ticks:
         """The compressor's contact after a tick."""
         return ContactState(*self._contacts[row]) if self._contacts else self.before.model.contact
 
+    def closed(self, first: int, last: int) -> list[bool]:
+        """Whether that contact was closed after the ticks from `first` on, before `last`."""
+        if not self._contacts:
+            return [bool(self.before.model.contact.closed)] * (last - first)
+        return [bool(closed) for closed, _, _ in self._contacts[first:last]]
+
+    def unknown_us(self, first: int, last: int) -> list[int]:
+        """`contact_unknown_us` of the ticks from `first` on, before `last`."""
+        return self._unknown_since_us[first:last]
+
+    def pumping(self, first: int, last: int) -> list[bool]:
+        """Whether the pressure rose after the ticks from `first` on, before `last`."""
+        if not self._pumps:
+            return [self.before.model.pump.pumping] * (last - first)
+        return [pumping for pumping, *_ in self._pumps[first:last]]
+
     def pump(self, row: int) -> PumpWatch:
         """The watch of its pressure after a tick."""
         return PumpWatch(*self._pumps[row]) if self._pumps else self.before.model.pump
@@ -64,6 +80,11 @@ class Ticks:
         return self.powers.at(row)
 
     # ---- what is remembered of the channels ----
+
+    def heard_us(self, ticks: int) -> int:
+        """The last reading of the first ticks; -1: there is none."""
+        counts = [(said, said.count(ticks)) for said in self.said.values()]
+        return max((int(said.times_us[n - 1]) for said, n in counts if n), default=-1)
 
     def channels(self, ticks: int) -> dict[str, ChannelRecord]:
         """The records after the first ticks."""

@@ -11,7 +11,9 @@ from typing import Protocol
 import numpy as np
 
 from daemon.moisture import along_air
-from daemon.moisture.along_air import AirAlong, Course
+from daemon.moisture.along_air import AirAlong
+from daemon.moisture.along_conditions import conditions
+from daemon.moisture.along_course import Course
 from daemon.moisture.along_drains import drains_along, fitted_after
 from daemon.moisture.along_fittings import FittingsAlong
 from daemon.moisture.along_purging import purging_along
@@ -22,6 +24,7 @@ from daemon.moisture.ensemble import Array
 from daemon.moisture.fitting_state import FittingState, Moment
 from daemon.moisture.flow import AirState, PumpWatch
 from daemon.moisture.model import Model, State
+from daemon.moisture.outlook import Sight
 from daemon.moisture.power import Powered
 
 
@@ -50,6 +53,7 @@ class Stretch:
     duty: dict[int, Array]
     conditions: Conditions
     saturated: Array
+    intake_ratio: Array
     drawn: Array
     air: AirAlong
     water: WaterAlong
@@ -134,6 +138,16 @@ class Stretch:
             held[name] = Held(float(values[row]), int(self.course.told_us[name][row]))
         return held
 
+    def sight(self, row: int) -> Sight:
+        """What is seen at the intake after one tick."""
+        return Sight(
+            int(self.course.times_us[row]),
+            self.conditions.temperature_k[0, row],
+            self.intake_ratio[row],
+            self.air.drawn[row],
+            self._held(row),
+        )
+
     def moved(self, first: int, last: int) -> tuple[Array, Array, Array]:
         """Seconds run, air drawn in and used in the rows from `first` on, before `last`:
         (members,) each."""
@@ -149,7 +163,7 @@ def stretch(model: Model, state: State, course: Course, switches: Switches) -> S
     known = along_air.duties_known(state.duty_known, course, dt_s)
     on_s = along_air.on_time(model, state, course, known)
     duty = along_air.duties(model, state, on_s, dt_s)
-    found = along_air.conditions(model, state, course, duty)
+    found = conditions(model, state, course, duty)
     if found is None:
         return None
     now, held = found
@@ -194,5 +208,18 @@ def stretch(model: Model, state: State, course: Course, switches: Switches) -> S
         fitted,
     )
     return Stretch(
-        model, state, course, switches, on_s, known, duty, now, saturated, drawn, air, water, purged
+        model,
+        state,
+        course,
+        switches,
+        on_s,
+        known,
+        duty,
+        now,
+        saturated,
+        intake_ratio,
+        drawn,
+        air,
+        water,
+        purged,
     )

@@ -11,49 +11,21 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
+from itertools import pairwise
 from typing import Any, cast
 
 import numpy as np
 import numpy.typing as npt
 
 from daemon.moisture import air, flow, hardy
-from daemon.moisture.along_saturation import saturated_mole_fraction
-from daemon.moisture.conditions import Conditions, Evaluation, HeldAlong
+from daemon.moisture.along_conditions import least_of
+from daemon.moisture.along_course import Course
+from daemon.moisture.along_saturation import saturated_ratios
+from daemon.moisture.conditions import Conditions
 from daemon.moisture.description import Fixed, Like, Measured
 from daemon.moisture.ensemble import Array
 from daemon.moisture.model import DUTY_LOGIT_SD, DUTY_MEMORY_S, Model, State
 from daemon.moisture.plan import Plan
-
-Ints = npt.NDArray[np.int64]
-Bools = npt.NDArray[np.bool_]
-
-
-@dataclass(frozen=True, slots=True)
-class Course:
-    """What was heard at each of several ticks. Arrays are (ticks,)."""
-
-    times_us: Ints
-    values: Mapping[str, Array]  # by the line's channels: the last good value by each tick
-    told_us: Mapping[str, Ints]  # and when that was
-    silent: Mapping[str, bool]  # all along; a channel that never spoke is none of the three
-    is_open: Bools
-    on_us: Ints  # how long the contact was closed in each tick
-    unknown_us: Ints  # and how long nobody knows
-    booked_us: Ints  # what the gauge tells afterwards
-
-    def rows(self, first: int, last: int) -> Course:
-        """The ticks from `first` on, before `last`."""
-        part = slice(first, last)
-        return Course(
-            self.times_us[part],
-            {name: values[part] for name, values in self.values.items()},
-            {name: times[part] for name, times in self.told_us.items()},
-            self.silent,
-            self.is_open[part],
-            self.on_us[part],
-            self.unknown_us[part],
-            self.booked_us[part],
-        )
 
 
 def column(values: npt.NDArray[Any]) -> Array:
@@ -62,21 +34,27 @@ def column(values: npt.NDArray[Any]) -> Array:
 
 
 def running_sum(start: Array, steps: Array) -> Array:
-    """start + steps[0], that + steps[1], ... added up in order, (ticks, members)."""
-    total = np.empty_like(steps)
-    before = start
-    for row, step in zip(total, steps, strict=True):
-        np.add(before, step, out=row)
-        before = row
+    """`start`, start + steps[0], that + steps[1], ... added up in order: (ticks + 1, members)."""
+    total = np.empty((len(steps) + 1, steps.shape[1]))
+    total[0] = start
+    total[1:] = steps
+    rows, add = list(total), np.add
+    for before, row in pairwise(rows):
+        add(before, row, row)
     return total
 
 
-def shifted(start: Array, after: Array) -> Array:
-    """What was before each tick, of what is after it, (ticks, members)."""
-    before = np.empty_like(after)
-    before[0] = start
-    before[1:] = after[:-1]
-    return before
+def running_maximum(start: Array, values: Array) -> Array:
+    """`start`, then the greatest so far: (ticks + 1, members)."""
+    greatest = np.empty((len(values) + 1, values.shape[1]))
+    greatest[0] = start
+    greatest[1:] = values
+    spare, reach = np.empty_like(greatest), 1
+    while reach < len(greatest):  # each row then knows of twice as many rows before it
+        spare[:reach] = greatest[:reach]
+        np.maximum(greatest[reach:], greatest[:-reach], out=spare[reach:])
+        greatest, spare, reach = spare, greatest, 2 * reach
+    return greatest
 
 
 # ---- how long the compressor ran ----
@@ -136,28 +114,7 @@ def duties(model: Model, state: State, on_s: Array, dt_s: float) -> dict[int, Ar
     return found
 
 
-# ---- conditions ----
-
-
-def conditions(
-    model: Model, state: State, course: Course, duty: Mapping[int, Array]
-) -> tuple[Conditions, dict[str, HeldAlong]] | None:
-    """Temperatures, pressures and humidity at every tick; None where something begins anew."""
-    held = {
-        name: HeldAlong(cast(Any, values[:, None]), silent=course.silent[name])
-        for name, values in course.values.items()
-    }
-    evaluation = Evaluation(
-        model.plan,
-        held,
-        state.offsets,
-        cast(Any, duty),
-        int(course.times_us[0]),
-        dict(state.lapses),
-        course.times_us[:, None],
-    )
-    now = evaluation.conditions()
-    return (now, held) if evaluation.lapses.keys() == state.lapses.keys() else None
+# ---- saturation ----
 
 
 def alike(plan: Plan, silent: Mapping[str, bool]) -> list[bool]:
@@ -175,20 +132,12 @@ def alike(plan: Plan, silent: Mapping[str, bool]) -> list[bool]:
 
 
 def saturation(now: Conditions, wander_alike: Sequence[bool]) -> tuple[Array, Array]:
-    """Every station's humidity ratio at saturation, and that of the air drawn in, at every tick.
-
-    Station by station: what is worked on then stays near the processor.
-    """
-    saturated = np.empty(now.temperature_k.shape)
-    intake = np.empty(0)
-    stations = zip(now.temperature_k, now.pressure_pa, wander_alike, strict=True)
-    for i, (kelvin, pressure, same) in enumerate(stations):
-        fraction = saturated_mole_fraction(kelvin, pressure, same)
-        saturated[i] = air.ratio_of_fraction(fraction)
-        if i == 0:
-            fraction = fraction * hardy.water_over_ice(kelvin) * now.relative_humidity
-            intake = np.minimum(air.ratio_of_fraction(fraction), saturated[0])
-    return saturated, intake
+    """Every station's humidity ratio at saturation, and that of the air drawn in, at every tick."""
+    saturated, fraction = saturated_ratios(now.temperature_k, now.pressure_pa, wander_alike)
+    if least_of(now.temperature_k, 0) <= hardy.TRIPLE_POINT_K:
+        fraction *= hardy.water_over_ice(now.temperature_k[0])
+    fraction *= now.relative_humidity
+    return saturated, np.minimum(air.ratio_of_fraction(fraction), saturated[0])
 
 
 # ---- dry air ----
@@ -211,7 +160,7 @@ class AirAlong:
 
 def moved_along(plan: Plan, state: flow.AirState, drawn: Array, measured: Array) -> AirAlong:
     """`flow.move` over several ticks, for a line without purging dryers."""
-    total = running_sum(state.drawn, drawn)
+    total = running_sum(state.drawn, drawn)[1:]
     change = measured - state.first[:, None, :]
     cumulative = total - change.sum(axis=0)
     several = len(plan.receivers) > 1
@@ -226,15 +175,15 @@ def moved_along(plan: Plan, state: flow.AirState, drawn: Array, measured: Array)
             continue
         below = [plan.receivers.index(other) for other in plan.receivers_below[receiver]]
         wanted = plan.share[receiver] * cumulative + change[below].sum(axis=0)
-        entered[row], so_far = _new_maxima(state.entered[row], wanted, [])
+        entered[row], so_far = _new_maxima(state.entered[row], wanted, [1.0])
         entered_total.append(so_far)
     moved = _routed(plan, drawn, used, entered)
     stored, before = np.empty_like(measured), np.empty_like(measured)
     good = len(drawn)
     for row, receiver in enumerate(plan.receivers):
         net = moved.into[receiver] - moved.through[receiver]
-        stored[row] = running_sum(state.stored[row], net)
-        before[row] = shifted(state.stored[row], stored[row])
+        after_all = running_sum(state.stored[row], net)
+        stored[row], before[row] = after_all[1:], after_all[:-1]
         if several:
             stock = flow.MOST_OF_STOCK * before[row] + moved.into[receiver]
             held_back = (stock < moved.through[receiver]).any(axis=1)
@@ -278,17 +227,20 @@ def _share(share: float, used: Array) -> Array:
 def _new_maxima(start: Array, wanted: Array, shares: Sequence[float]) -> tuple[Array, Array]:
     """By how much each tick goes beyond all before it, and the running maximum.
 
-    Where outlets share it, as the sum of their shares.
+    Where the steps are added up, it is as the sum of these shares of them.
     """
+    if not shares:
+        greatest = running_maximum(start, wanted)
+        return np.diff(greatest, axis=0), greatest[1:]
     steps, totals = np.empty_like(wanted), np.empty_like(wanted)
     before = start
     for want, step, total in zip(wanted, steps, totals, strict=True):
         np.subtract(want, before, out=step)
         np.maximum(step, 0.0, out=step)
-        if shares:
-            np.add(before, np.array([share * step for share in shares]).sum(axis=0), out=total)
-        else:
+        if shares == [1.0]:
             np.add(before, step, out=total)
+        else:
+            np.add(before, np.array([share * step for share in shares]).sum(axis=0), out=total)
         before = total
     return steps, totals
 

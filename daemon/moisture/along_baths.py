@@ -60,7 +60,7 @@ class BathAlong:
     def passed(self, vapor_in: Array, vapor: Array) -> None:
         """What passed it, and the heat that it takes in."""
         self.gained = self._gained(slice(None), vapor_in, vapor)
-        self.heat = running_sum(self.start, self.gained)
+        self.heat = running_sum(self.start, self.gained)[1:]
         if self._icy:
             warms = dryers.bath_warmth(self.ice_kg, self.heat).any(axis=1)
             if warms.any():

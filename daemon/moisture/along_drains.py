@@ -8,7 +8,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from daemon.moisture import drains
-from daemon.moisture.along_air import Ints
+from daemon.moisture.along_course import Ints
 from daemon.moisture.conditions import Conditions
 from daemon.moisture.drains import Opening
 from daemon.moisture.ensemble import Array

@@ -198,7 +198,7 @@ class DryingAlong:
         """What a cartridge takes up, as long as it has charge."""
         row = self.drying.cartridges.index(i)
         charge, holds = self.before.charge[row], self.figures.holds_kg[row]
-        self.charge[i] = running_sum(charge, offered)
+        self.charge[i] = running_sum(charge, offered)[1:]
         if (self.charge[i][-1] <= holds).all():
             return offered
         taken = np.empty_like(offered)

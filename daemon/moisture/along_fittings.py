@@ -10,8 +10,8 @@ from dataclasses import dataclass, field, replace
 
 import numpy as np
 
-from daemon.moisture.along_air import Ints
 from daemon.moisture.along_baths import BathAlong
+from daemon.moisture.along_course import Ints
 from daemon.moisture.along_drying import DryingAlong, Wet
 from daemon.moisture.along_fading import Fading
 from daemon.moisture.ensemble import Array

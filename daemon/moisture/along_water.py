@@ -7,13 +7,15 @@ together. Arrays are (ticks, members); None stands for nothing at any tick.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 
 import numpy as np
 
 from daemon.moisture import carried
-from daemon.moisture.along_air import AirAlong, Bools, running_sum, shifted
+from daemon.moisture.along_air import AirAlong, running_sum
+from daemon.moisture.along_course import Bools, Ints
 from daemon.moisture.along_drains import DrainAlong
 from daemon.moisture.along_drying import Wet
 from daemon.moisture.along_fittings import FittingsAlong
@@ -55,6 +57,7 @@ class _Place:
     caught: Array | None = None  # what its trap was given
     caught_sum: Array | None = None  # (members,): the same in all
     back: Array | None = None  # what its pool gave back to the air
+    back_sum: Array | None = None  # (members,): the same in all
     trap: Array | None = None  # what it held after each tick; None: the sum of the above
     over: Array | None = None  # what ran over, of a receiver taken tick by tick
     waiting: _Waiting = field(init=False)
@@ -89,6 +92,7 @@ class WaterAlong:
     _kept: list[Array] = field(init=False)  # the share of liquid that each trap keeps
     _waits: tuple[bool, bool] = field(init=False)  # whether liquid does, or what ran over
     _known: dict[int, Bools | None] = field(default_factory=dict)
+    _left: dict[tuple[int, int], _LastMoving] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         count = len(self.plan.stations)
@@ -135,12 +139,14 @@ class WaterAlong:
         liquid = self._liquid_in[i]
         possible = self._holds[i] * self.air.moved.into[i]
         if liquid is None:
-            place.vapor_out = np.minimum(vapor_in, possible)
+            place.vapor_out = np.minimum(vapor_in, possible, out=possible)
             condensed: Array = vapor_in - place.vapor_out
-            return condensed if condensed.any() else None
-        wetted = vapor_in + self.parameters.evaporated[i] * liquid
-        place.vapor_out = np.minimum(wetted, possible)
-        found: Array = liquid + (vapor_in - place.vapor_out)
+            return condensed if condensed.max() > 0.0 else None
+        wetted = self.parameters.evaporated[i] * liquid
+        wetted += vapor_in
+        place.vapor_out = np.minimum(wetted, possible, out=possible)
+        found: Array = np.subtract(vapor_in, place.vapor_out, out=wetted)
+        found += liquid
         return found
 
     def _divide(
@@ -178,8 +184,8 @@ class WaterAlong:
             return None
         caught = np.zeros_like(self.water_in) if place.caught is None else place.caught
         rows = np.minimum(running_sum(start, caught), capacity)
-        place.trap = rows
-        over: Array = np.maximum(shifted(start, rows) + caught - capacity, 0.0)
+        place.trap = rows[1:]
+        over: Array = np.maximum(rows[:-1] + caught - capacity, 0.0)
         return over
 
     def _drained(self, i: int, place: _Place) -> Array | None:
@@ -200,9 +206,13 @@ class WaterAlong:
         through, moving = self.air.moved.through[i], self._moving(i)
         shape, state = through.shape, self.state
         waits, spilt = self._waits
-        liquid, place.waiting = _released(state.waiting[i], liquid, moving, shape, waits)
+        if moving is None or waits or not self._moves_on(i):
+            liquid, place.waiting = _released(state.waiting[i], liquid, moving, shape, waits)
+        else:
+            place.waiting = _Waiting(state.waiting[i])
         spill, place.spilled = _released(state.spilled[i], spill, moving, shape, spilt)
-        safe = through if moving is None else np.where(moving, through, 1.0)
+        several = len(self.plan.outflows[i]) > 1
+        safe = np.where(moving, through, 1.0) if several and moving is not None else through
         parts = parts_of(self.plan, self.air.moved, i, safe)
         for flow, part in zip(self.plan.outflows[i], parts, strict=True):
             vapor, wet, ran_over = (_part(part, each) for each in (place.vapor_out, liquid, spill))
@@ -216,6 +226,16 @@ class WaterAlong:
             if gone is not None:
                 self.liquid_out = _plus(self.liquid_out, gone)
                 self.liquid_at[flow.outlet] = gone
+
+    def _moves_on(self, i: int) -> bool:
+        """Whether liquid comes to a station, or condenses there, only while air leaves it: what
+        comes leaves at once, and it comes with a share of what left the one before."""
+        air = self.air.moved
+        return (
+            i not in self.plan.receivers
+            and self.plan.parent[i] >= 0
+            and air.into[i] is air.through[i]
+        )
 
     def _moving(self, i: int) -> Bools | None:
         """Whether air leaves a station; None: it does at every tick."""
@@ -251,7 +271,7 @@ class WaterAlong:
             found += liquid
         back = pool * (1.0 - held / possible)
         small = bool((pool > possible).any())  # hardly more than nothing: never a tank
-        if small or not self._pool_suffices(i, found, back):
+        if small or not self._pool_suffices(i, found, back, place):
             return self._tick_by_tick(i, course, wetted, place)
         place.back = back
         vapor = held + back
@@ -259,7 +279,7 @@ class WaterAlong:
         self.vapor[row] = vapor - place.vapor_out
         return found
 
-    def _pool_suffices(self, i: int, liquid: Array, back: Array) -> bool:
+    def _pool_suffices(self, i: int, liquid: Array, back: Array, place: _Place) -> bool:
         """Whether a trap could give back all that it was asked for, and never ran over."""
         if self.plan.stations[i].trap is None:
             return True
@@ -267,6 +287,7 @@ class WaterAlong:
             return False
         start = self.state.trap[i]
         asked, most = back.sum(axis=0), back.max(axis=0)
+        place.back_sum = asked
         if (asked == 0.0).all():
             return True
         if not (start - asked >= most).all():
@@ -289,36 +310,43 @@ class WaterAlong:
         stays, drain = 1.0 - course.goes, self.drains.get(i)
         small = bool((pool > possible).any())
         liquid, back, held, trap, over = (np.empty_like(comes) for _ in range(5))
-        vapor, in_trap = course.start, self.state.trap[i]
+        vapor, in_trap = course.start.copy(), self.state.trap[i]
         came, in_trap_now = np.empty_like(vapor), np.empty_like(vapor)
-        given = zip(comes, besides, possible, stays, strict=True)
-        made = zip(liquid, back, held, trap, over, strict=True)
+        given = zip(*map(list, (comes, besides, possible, stays)), strict=True)
+        made = zip(*map(list, (liquid, back, held, trap, over)), strict=True)
+        add, subtract, multiply, least, most = (
+            np.add,
+            np.subtract,
+            np.multiply,
+            np.minimum,
+            np.maximum,
+        )
         for n, (now, made_now) in enumerate(zip(given, made, strict=True)):
             comes_now, besides_now, possible_now, stays_now = now
             liquid_now, back_now, held_now, trap_now, over_now = made_now
-            np.add(vapor, comes_now, out=came)
-            np.minimum(came, possible_now, out=held_now)
-            np.subtract(came, held_now, out=liquid_now)
-            np.add(liquid_now, besides_now, out=liquid_now)
-            np.divide(held_now, possible_now, out=back_now)
-            np.subtract(1.0, back_now, out=back_now)
-            np.multiply(pool, back_now, out=back_now)
-            np.minimum(back_now, in_trap, out=back_now)
+            add(vapor, comes_now, came)
+            least(came, possible_now, out=held_now)
+            subtract(came, held_now, liquid_now)
+            add(liquid_now, besides_now, liquid_now)
+            np.divide(held_now, possible_now, back_now)
+            subtract(1.0, back_now, back_now)
+            multiply(pool, back_now, back_now)
+            least(back_now, in_trap, out=back_now)
             if small:
-                np.minimum(back_now, possible_now - held_now, out=back_now)
-                np.maximum(back_now, 0.0, out=back_now)
-            np.add(held_now, back_now, out=held_now)
-            vapor = held_now * stays_now
-            np.multiply(kept, liquid_now, out=trap_now)
+                least(back_now, possible_now - held_now, out=back_now)
+                most(back_now, 0.0, out=back_now)
+            add(held_now, back_now, held_now)
+            multiply(held_now, stays_now, vapor)
+            multiply(kept, liquid_now, trap_now)
             if spilt is not None:
-                np.add(trap_now, spilt[n], out=trap_now)
-            np.subtract(in_trap, back_now, out=in_trap_now)
-            np.add(trap_now, in_trap_now, out=trap_now)
+                add(trap_now, spilt[n], trap_now)
+            subtract(in_trap, back_now, in_trap_now)
+            add(trap_now, in_trap_now, trap_now)
             if drain is not None:
                 trap_now[:] = drain.left(n, trap_now)
-            np.subtract(trap_now, capacity, out=over_now)
-            np.maximum(over_now, 0.0, out=over_now)
-            np.subtract(trap_now, over_now, out=trap_now)
+            subtract(trap_now, capacity, over_now)
+            most(over_now, 0.0, out=over_now)
+            subtract(trap_now, over_now, trap_now)
             in_trap = trap_now
         place.back, place.trap = back, trap
         place.vapor_out = held * course.goes
@@ -346,14 +374,22 @@ class WaterAlong:
         if caught is not None:
             held = held + caught
         if place.back is not None:
-            held = held - place.back[: row + 1].sum(axis=0)
+            whole = row + 1 == len(place.back) and place.back_sum is not None
+            held = held - (place.back_sum if whole else place.back[: row + 1].sum(axis=0))
         kept: Array = held
         return kept
 
-    def only_fills(self, i: int) -> bool:
-        """Whether nothing left a trap in these ticks."""
-        back = self.places[i].back
-        return i not in self.drains and (back is None or not back.any())
+    def trap_between(self, i: int) -> tuple[Array, Array]:
+        """What a trap held at least and at most from before the first tick on, kg, (members,)."""
+        place, start = self.places[i], self.state.trap[i]
+        if place.trap is not None:
+            least, most = place.trap.min(axis=0), place.trap.max(axis=0)
+            return np.minimum(start, least), np.maximum(start, most)
+        given = self._caught(place, len(self.water_in))
+        back = place.back_sum
+        if back is None and place.back is not None:
+            back = place.back.sum(axis=0)
+        return start if back is None else start - back, start if given is None else start + given
 
     def trap_rows(self, i: int) -> Array:
         """What a trap holds after every tick, kg."""
@@ -362,7 +398,7 @@ class WaterAlong:
             zero = np.zeros_like(self.water_in)
             caught = zero if place.caught is None else place.caught
             gained = caught if place.back is None else caught - place.back
-            place.trap = running_sum(self.state.trap[i], gained)
+            place.trap = running_sum(self.state.trap[i], gained)[1:]
         return place.trap
 
     def on_its_way_rows(self, i: int) -> Array:
@@ -375,13 +411,17 @@ class WaterAlong:
         plan, state, ledger, until = self.plan, self.state, self.ledger, row + 1
         trap, waiting, spilled = state.trap.copy(), state.waiting.copy(), state.spilled.copy()
         shed = ledger.shed.copy()
+        waits, spilt = self._waits
         for i, place in enumerate(self.places):
             if plan.stations[i].trap is not None:
                 caught = self._caught(place, until)
                 trap[i] = self._trap_at(i, row, caught)
                 if caught is not None:
                     shed[i] += caught
-            waiting[i], spilled[i] = place.waiting.at(row), place.spilled.at(row)
+            if waits or place.waiting.rows is not None:
+                waiting[i] = place.waiting.at(row)
+            if spilt or place.spilled.rows is not None:
+                spilled[i] = place.spilled.at(row)
         ratio, lately = self.leaving(row)
         vapor = np.array([self.vapor[n][row] for n in range(len(plan.receivers))])
         after = WaterState(
@@ -422,35 +462,48 @@ class WaterAlong:
     def _leaving(self, i: int, row: int, ratio: Array) -> None:
         """The humidity ratio of the air that last left a station, in place."""
         vapor, through = self.places[i].vapor_out, self.air.moved.through[i]
-        last = through[row]
-        if last.min() > 0.0:
-            np.divide(vapor[row], last, out=ratio)
-            return
-        moving = through[: row + 1] > 0.0
-        ever = np.flatnonzero(moving.any(axis=0))
-        when = row - moving[::-1].argmax(axis=0)[ever]
-        ratio[ever] = vapor[when, ever] / through[when, ever]
+        key = id(through), row
+        if key not in self._left:  # many stations pass on the very same air
+            self._left[key] = _last_moving(through, row)
+        ever, when = self._left[key]
+        if ever is None:
+            np.divide(vapor[row], through[row], out=ratio)
+        else:
+            ratio[ever] = vapor[when, ever] / through[when, ever]
 
     def _carried(self, until: int) -> carried.Carried:
         """What outlets carried lately: each tick's part fades with the air that left after it."""
         before = self.state.carried
         liquid, air = before.liquid.copy(), before.air.copy()
-        memory = carried.memory_kg(self.plan)
+        memory, last = carried.memory_kg(self.plan)[:, 0], math.nan
         for number in range(len(air)):
             used, used_before = self.air.used[:until], self.air.used_before
             scale = self.plan.line.outlets[number].share / memory[number]
             if self.plan.purging:  # a part of what is used never comes to an outlet
                 used = self.air.moved.outlets[number][:until].cumsum(axis=0)
                 used_before, scale = np.zeros_like(used_before), 1.0 / memory[number]
-            fades = np.exp((used_before - used[-1]) * scale)
+            if self.plan.purging or not math.isclose(scale, last, rel_tol=1e-14):
+                last, fades = scale, np.exp((used_before - used[-1]) * scale)
+                weight = np.exp((used - used[-1]) * scale)  # else as of the outlet before
             air[number] *= fades
             liquid[number] *= fades
-            weight = np.exp((used - used[-1]) * scale)
             air[number] += (self.air.moved.outlets[number][:until] * weight).sum(axis=0)
             gone = self.liquid_at.get(number)
             if gone is not None:
                 liquid[number] += (gone[:until] * weight).sum(axis=0)
         return carried.Carried(liquid, air)
+
+
+# Which members' air ever left, and in which tick it last did; None, None: all's did in the last.
+_LastMoving = tuple[Ints | None, Ints | None]
+
+
+def _last_moving(through: Array, row: int) -> _LastMoving:
+    if through[row].min() > 0.0:
+        return None, None
+    moving = through[: row + 1] > 0.0
+    ever = np.flatnonzero(moving.any(axis=0))
+    return ever, row - moving[::-1].argmax(axis=0)[ever]
 
 
 @dataclass(slots=True)
@@ -468,17 +521,19 @@ class _Receiver:
         """Its vapor after condensing, before the pool, if the pool never runs empty."""
         stays = 1.0 - self.goes
         factor = stays * (1.0 - self.pool / self.possible)
-        plus = stays * self.pool
-        plus[:-1] += self.comes[1:]
-        self.came = np.empty_like(self.comes)
-        held = np.empty_like(self.comes)
-        came = self.start + self.comes[0]
-        rows = zip(self.came, held, self.possible, factor, plus, strict=True)
-        for there, kept, possible, share, more in rows:
-            there[:] = came
-            np.minimum(came, possible, out=kept)
-            np.multiply(kept, share, out=came)
-            came += more
+        stays *= self.pool
+        stays[:-1] += self.comes[1:]
+        came = np.empty((len(factor) + 1, factor.shape[1]))
+        np.add(self.start, self.comes[0], out=came[0])
+        rows, kept = list(came), np.empty_like(self.start)
+        minimum, multiply, add = np.minimum, np.multiply, np.add
+        each = zip(rows, rows[1:], *map(list, (self.possible, factor, stays)), strict=False)
+        for there, then, possible, share, more in each:
+            minimum(there, possible, out=kept)
+            multiply(kept, share, kept)
+            add(kept, more, then)
+        self.came = came[:-1]
+        held: Array = np.minimum(self.came, self.possible)
         return held
 
 
@@ -498,12 +553,13 @@ def _released(
         out[moving.argmax(axis=0)[ever], ever] += start[ever]
         return out, _Waiting(start, None, moving)
     out, rows = np.empty(shape), np.empty(shape)
-    there = start.copy()
-    for more, flows, goes, stays in zip(new, moving, out, rows, strict=True):
-        there += more
-        np.multiply(there, flows, out=goes)
-        there -= goes
-        stays[:] = there
+    before, add, multiply, subtract = start, np.add, np.multiply, np.subtract
+    each = zip(*map(list, (new, moving.astype(np.float64), out, rows)), strict=True)
+    for more, flows, goes, stays in each:
+        add(before, more, stays)
+        multiply(stays, flows, goes)
+        subtract(stays, goes, stays)
+        before = stays
     return out, _Waiting(start, rows)
 
 

@@ -17,6 +17,7 @@ from __future__ import annotations
 
 import math
 from dataclasses import dataclass, replace
+from functools import lru_cache
 from typing import Literal
 
 import numpy as np
@@ -227,7 +228,7 @@ class ByProducts:
     def _rated(self, state: State) -> Array:
         """What the type plate promises, kg/s of the air at the intake now, (members,)."""
         described = self._line.compressor.delivered
-        base = standard_normal(self._line.seed, "rated air", self._line.members)
+        base = _always(self._line.seed, "rated air", self._line.members)
         rated: Array = positive(base, described.value, described.give_or_take) * _density(state)
         return rated
 
@@ -272,10 +273,18 @@ class ByProducts:
         Half of the variance is the same each time: an average over many turns keeps it.
         """
         line = self._line
-        always = standard_normal(line.seed, "air in the tank", line.members)
+        always = _always(line.seed, "air in the tank", line.members)
         now = standard_normal(line.seed, "air in the tank", line.members, sample.time_us)
         shift = (always + now) * (math.sqrt(0.5) * width_k * _PER_K)
         return Sample(sample.time_us, sample.kg * (1.0 + shift))
+
+
+@lru_cache(maxsize=8)
+def _always(seed: int, name: str, members: int) -> Array:
+    """A draw that is the same at all times, and is asked for at many."""
+    drawn = standard_normal(seed, name, members)
+    drawn.flags.writeable = False
+    return drawn
 
 
 def _stock(state: State) -> Sample:

@@ -116,13 +116,14 @@ class Evaluation:
             if station.kind == "regulator":  # it can only lower a pressure
                 np.minimum(pressure[i], pressure[plan.parent[i]], out=pressure[i])
         np.clip(pressure, LOWEST_PA, HIGHEST_PA, out=pressure)
-        return Conditions(temperature, pressure, self._humidity(), frozenset(measured))
+        return Conditions(temperature, pressure, self.humidity(), frozenset(measured))
 
     def _stale(self, channel: str) -> bool:
         held = self.held.get(channel)
         return held is None or held.stale(self.now_us, round(self.plan.line.period_s * 1e6))
 
-    def _humidity(self) -> Array:
+    def humidity(self) -> Array:
+        """The intake's relative humidity over liquid water."""
         source = self.plan.stations[0].relative_humidity or HUMIDITY_RULE
         empty = np.empty((0, 0))
         value = self._value("relative_humidity", 0, source, HUMIDITY_RULE, empty, None)

@@ -165,7 +165,8 @@ def move(
     total_drawn = state.drawn + drawn
     change = measured - state.first
     cumulative_use = total_drawn - change.sum(axis=0)
-    used = np.maximum(cumulative_use - state.used, 0.0)
+    used_by_now = np.maximum(cumulative_use, state.used)
+    used = used_by_now - state.used
     entered = np.empty_like(state.entered)
     for row, receiver in enumerate(plan.receivers):
         if receiver in plan.trunk:
@@ -180,13 +181,14 @@ def move(
     moved = route(plan, drawn, used, entered, purging)
     if len(plan.receivers) > 1:
         moved = _within_stock(plan, state, moved)
+        used_by_now = state.used + moved.used
     rows = list(plan.receivers)
     after = replace(
         state,
         measured=measured,
         stored=state.stored + (moved.into[rows] - moved.through[rows]),
         drawn=total_drawn,
-        used=state.used + moved.used,
+        used=used_by_now,
         entered=state.entered + moved.into[rows],
         purged=state.purged if moved.purge is None else state.purged + moved.purge,
     )

@@ -12,6 +12,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
@@ -22,9 +23,9 @@ TRIPLE_POINT_K = 273.16  # water's, ITS-90: ice at and below, liquid above
 LOWEST_K = 173.15
 HIGHEST_K = 373.15
 
-# Four steps reach rounding from any start in the range; a fixed number keeps every element's
-# result independent of the other elements.
-_NEWTON_STEPS = 4
+# Three steps reach rounding from any start in the range (two leave 2e-10 K); a fixed number keeps
+# every element's result independent of the other elements.
+_NEWTON_STEPS = 3
 
 # A mole fraction of saturation at the triple point itself, rounded on its way, is still frost's.
 _ROUNDING = 1e-14
@@ -104,21 +105,34 @@ ICE = Phase(
 )
 
 
-def log_enhancement(phase: Phase, t: Array, share: Array) -> Array:
+def _coefficients(phase: Phase, t: Array) -> tuple[Array, Array]:
+    """The two coefficients a and b of the enhancement factor."""
+    b = polynomial(phase.b, t)
+    np.exp(b, out=b)
+    return polynomial(phase.a, t), b
+
+
+def _log_enhancement_of(a: Array, b: Array, share: Array) -> Array:
     """ln f = a (1 - e/P) + b (P/e - 1), with `share` = e/P."""
-    y = polynomial(phase.b, t)
-    np.exp(y, out=y)
-    y = y * (1.0 / share - 1.0)
-    y += polynomial(phase.a, t) * (1.0 - share)
+    y = b * (1.0 / share - 1.0)
+    y += a * (1.0 - share)
     return y
 
 
-def _log_enhancement_slope(phase: Phase, t: Array, share: Array) -> Array:
-    """d ln f / dT at constant pressure."""
-    e_slope = phase.log_pressure_slope(t)
-    b = np.exp(polynomial(phase.b, t))
-    over_a = _slope(phase.a, t) * (1.0 - share) - polynomial(phase.a, t) * share * e_slope
-    return over_a + b * (_slope(phase.b, t) * (1.0 / share - 1.0) - e_slope / share)
+def log_enhancement(phase: Phase, t: Array, share: Array) -> Array:
+    """ln f of the enhancement factor f, with `share` = e/P."""
+    return _log_enhancement_of(*_coefficients(phase, t), share)
+
+
+def _log_fraction(phase: Phase, t: Array, p: Array) -> tuple[Array, Array]:
+    """ln(f e) of air saturated over one phase, and its derivative at constant pressure, 1/K."""
+    log_e, e_slope = phase.log_pressure(t), phase.log_pressure_slope(t)
+    share = np.exp(log_e) / p
+    a, b = _coefficients(phase, t)
+    over_a = _slope(phase.a, t) * (1.0 - share) - a * share * e_slope
+    over_b = b * (_slope(phase.b, t) * (1.0 / share - 1.0) - e_slope / share)
+    log_e += _log_enhancement_of(a, b, share)
+    return log_e, e_slope + (over_a + over_b)
 
 
 def pressure(phase: Phase, t: Array) -> Array:
@@ -130,12 +144,23 @@ def pressure(phase: Phase, t: Array) -> Array:
 
 def mole_fraction_of(phase: Phase, t: Array, p: Array) -> Array:
     """Mole fraction of vapor in air saturated over one phase, x = f e / P; 1 where e >= P."""
-    share = pressure(phase, t) / p
+    return _fraction(pressure(phase, t), *_coefficients(phase, t), p)
+
+
+def _fraction(e: Array, a: Array, b: Array, p: Array) -> Array:
+    share = e / p
     np.minimum(share, 1.0, out=share)
-    enhancement = log_enhancement(phase, t, share)
+    enhancement = _log_enhancement_of(a, b, share)
     np.exp(enhancement, out=enhancement)
     enhancement *= share
     return enhancement
+
+
+@lru_cache(maxsize=4)
+def _saturated_at(phase: Phase, kelvin: float) -> tuple[Array, Array, Array]:
+    """e, a and b at one of the ends of the range, shape (1,) each."""
+    t = np.full(1, kelvin)
+    return pressure(phase, t), *_coefficients(phase, t)
 
 
 def by_phase(function: Callable[[Phase, Array, Array], Array], t: Array, p: Array) -> Array:
@@ -176,10 +201,7 @@ def _inverted(phase: Phase, x: Array, p: Array, over_water: bool) -> Array:
     inverse = 1.0 / (273.15 + offset * start / (slope - start))
     for _ in range(_NEWTON_STEPS):
         t = 1.0 / inverse
-        value = phase.log_pressure(t)
-        share = np.exp(value) / p
-        value += log_enhancement(phase, t, share)
-        gradient = phase.log_pressure_slope(t) + _log_enhancement_slope(phase, t, share)
+        value, gradient = _log_fraction(phase, t, p)
         if over_water and phase is ICE:
             value += _log_e_water(t) - _log_e_ice(t)
             gradient += _log_e_water_slope(t) - _log_e_ice_slope(t)
@@ -196,14 +218,12 @@ def saturation_temperature(x: Array, p: Array, over_water: bool = False) -> Arra
     down by 0.1 % there at 8 bar) the colder is taken, so that the result rises with `x`.
     """
     x, p = np.broadcast_arrays(x, p)
-    lowest, triple, highest = (np.full(1, t) for t in (LOWEST_K, TRIPLE_POINT_K, HIGHEST_K))
-    dry_end = mole_fraction_of(ICE, lowest, p)
+    dry_end = _fraction(*_saturated_at(ICE, LOWEST_K), p)
+    frozen_end = _fraction(*_saturated_at(ICE, TRIPLE_POINT_K), p)
     if over_water:
-        dry_end *= water_over_ice(lowest)
-    held = np.clip(x, dry_end, mole_fraction_of(WATER, highest, p))
-    frozen_end = mole_fraction_of(ICE, triple, p)
-    if over_water:
-        frozen_end *= water_over_ice(triple)
+        dry_end *= water_over_ice(np.full(1, LOWEST_K))
+        frozen_end *= water_over_ice(np.full(1, TRIPLE_POINT_K))
+    held = np.clip(x, dry_end, _fraction(*_saturated_at(WATER, HIGHEST_K), p))
     cold = held <= frozen_end * (1.0 + _ROUNDING)
     result = np.empty(held.shape)
     for phase, chosen in ((ICE, cold), (WATER, ~cold)):

@@ -57,19 +57,38 @@ def new_pattern() -> Pattern:
     return Pattern(np.full(24, np.nan), np.full(24, np.nan))
 
 
-def told(pattern: Pattern, plan: Plan, before_us: int, state: State) -> Pattern:
-    """After a step of the model from `before_us`; all but one step in five minutes cost nothing."""
-    if state.time_us // SAMPLED_EVERY_US == before_us // SAMPLED_EVERY_US:
-        return pattern
-    now = state.conditions
-    warm_k, drawn = float(now.temperature_k[0].mean()), float(state.air.drawn.mean())
-    ratio = float(intake_ratio(state).mean())
+@dataclass(frozen=True, slots=True)
+class Sight:
+    """What the pattern is told of one time. Arrays are (members,)."""
+
+    time_us: int
+    intake_k: Array
+    intake_ratio: Array  # kg/kg, of what is drawn in
+    drawn_kg: Array  # of all time
+    held: Mapping[str, Held]
+
+
+def is_sampled(before_us: int, now_us: int) -> bool:
+    """Whether a step from one time to another is one that the pattern is told of."""
+    return now_us // SAMPLED_EVERY_US != before_us // SAMPLED_EVERY_US
+
+
+def sight(state: State) -> Sight:
+    """What is seen after a step of the model."""
+    intake_k = state.conditions.temperature_k[0]
+    return Sight(state.time_us, intake_k, intake_ratio(state), state.air.drawn, state.held)
+
+
+def told(pattern: Pattern, plan: Plan, before_us: int, sight: Sight) -> Pattern:
+    """After a step of the model from `before_us`, one that `is_sampled`."""
+    warm_k, drawn = float(sight.intake_k.mean()), float(sight.drawn_kg.mean())
+    ratio = float(sight.intake_ratio.mean())
     typical = pattern.typical
     weight = drawn - pattern.drawn_kg
     if weight > 0.0:
         typical = {
             name: _weighed(typical.get(name, Typical()), value, weight)
-            for name, value in _standing(plan, state, warm_k)
+            for name, value in _standing(plan, sight, warm_k)
         }
     pattern = replace(
         pattern,
@@ -80,7 +99,7 @@ def told(pattern: Pattern, plan: Plan, before_us: int, state: State) -> Pattern:
         sum_ratio=pattern.sum_ratio + ratio,
     )
     # a sample at the full hour closes the hour before it
-    return _hour_over(pattern, before_us) if _new_hour(before_us, state.time_us) else pattern
+    return _hour_over(pattern, before_us) if _new_hour(before_us, sight.time_us) else pattern
 
 
 def _new_hour(before_us: int, now_us: int) -> bool:
@@ -99,14 +118,14 @@ def _weighed(before: Typical, value: float, weight: float) -> Typical:
     return Typical(KEEPS * before.total + weight * value, KEEPS * before.weight + weight)
 
 
-def _standing(plan: Plan, state: State, warm_k: float) -> list[tuple[str, float]]:
+def _standing(plan: Plan, sight: Sight, warm_k: float) -> list[tuple[str, float]]:
     """Every channel but the intake's that speaks: temperatures less the intake's, pressures."""
     found = []
     for station in plan.stations[1:]:
         for source, less in ((station.temperature, warm_k), (station.pressure, 0.0)):
-            if isinstance(source, Measured) and source.channel in state.held:
-                held = state.held[source.channel]
-                if not held.stale(state.time_us, round(plan.line.period_s * 1e6)):
+            if isinstance(source, Measured) and source.channel in sight.held:
+                held = sight.held[source.channel]
+                if not held.stale(sight.time_us, round(plan.line.period_s * 1e6)):
                     found.append((source.channel, held.value - less))
     return found
 

@@ -59,6 +59,7 @@ def is_working_day(hours: Hours, day: date) -> bool:
     return hours.always_open or bool(_own_spans(hours, day))
 
 
+@lru_cache(maxsize=256)
 def working_day(hours: Hours, timezone: str, day: date) -> tuple[int, int] | None:
     """The first opening and the last closing of a calendar day's work; None on a day off."""
     if hours.always_open:
@@ -156,10 +157,14 @@ def _own_spans(hours: Hours, day: date) -> tuple[Span, ...]:
     return spans[1:] if _runs_on(hours, day - timedelta(1)) else spans
 
 
-def _openings(hours: Hours, timezone: str, day: date) -> Iterator[tuple[int, int]]:
+@lru_cache(maxsize=256)
+def _openings(hours: Hours, timezone: str, day: date) -> tuple[Span, ...]:
+    """When the spans of a calendar day begin and end."""
+    found = []
     for opens, closes in _spans(hours, day):
         opens_us = _instant(timezone, day, opens, closing=False)
-        yield opens_us, max(opens_us, _instant(timezone, day, closes, closing=True))
+        found.append((opens_us, max(opens_us, _instant(timezone, day, closes, closing=True))))
+    return tuple(found)
 
 
 def local_day(timezone: str, at_us: int) -> date:

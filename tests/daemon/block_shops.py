@@ -10,7 +10,7 @@ import numpy as np
 
 from daemon.clock import HOUR_US, MINUTE_US, SECOND_US
 from daemon.journal import Drain, Entry
-from daemon.moisture.along_air import Ints
+from daemon.moisture.along_course import Ints
 from daemon.moisture.ensemble import Array
 from daemon.record_arrays import Record, Told
 from daemon.site import hours as opening

@@ -20,7 +20,7 @@ import numpy as np
 from daemon import compose
 from daemon.clock import DAY_US, HOUR_US, MINUTE_US, ScaledClock
 from daemon.journal import Drain, Entry
-from daemon.moisture.along_air import Ints
+from daemon.moisture.along_course import Ints
 from daemon.moisture.ensemble import Array
 from daemon.record_arrays import Record, Told
 from daemon.site import hours as opening

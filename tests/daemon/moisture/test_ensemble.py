@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import random
 from itertools import combinations
 from statistics import NormalDist
@@ -12,6 +13,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from daemon.moisture.ensemble import (
+    PERCENTILES,
     WIDEST_LOGIT_SD,
     normal,
     percentiles,
@@ -128,3 +130,14 @@ def test_percentiles_are_numpy_s_linear_ones(values: list[float]) -> None:
         above = min(below + 1, len(ordered) - 1)
         expected = ordered[below] + (ordered[above] - ordered[below]) * (place - below)
         assert found[row] == pytest.approx([expected, expected], rel=1e-9, abs=1e-9)
+
+
+@pytest.mark.parametrize("shape", [(128,), (3, 128), (4, 5, 100), (129,), (7,), (2,), (1,)])
+@pytest.mark.parametrize("unknown", [False, True])
+def test_percentiles_are_numpys_to_the_bit(shape: tuple[int, ...], unknown: bool) -> None:
+    """Against numpy's own, whose linear percentiles they are."""
+    values = np.random.default_rng(math.prod(shape)).normal(290.0, 3.0, shape)
+    if unknown:
+        values[..., -1] = np.nan
+    expected = np.percentile(values, PERCENTILES, axis=-1)
+    assert np.array_equal(percentiles(values), expected, equal_nan=True)
