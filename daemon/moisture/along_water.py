@@ -183,6 +183,9 @@ class WaterAlong:
         if not (given > capacity).any():
             return None
         caught = np.zeros_like(self.water_in) if place.caught is None else place.caught
+        if place.back is not None and place.back.any():
+            place.trap, over_of_tank = _filled(start, caught - place.back, capacity)
+            return over_of_tank
         rows = np.minimum(running_sum(start, caught), capacity)
         place.trap = rows[1:]
         over: Array = np.maximum(rows[:-1] + caught - capacity, 0.0)
@@ -271,7 +274,7 @@ class WaterAlong:
             found += liquid
         back = pool * (1.0 - held / possible)
         small = bool((pool > possible).any())  # hardly more than nothing: never a tank
-        if small or not self._pool_suffices(i, found, back, place):
+        if small or not self._pool_suffices(i, back, place):
             return self._tick_by_tick(i, course, wetted, place)
         place.back = back
         vapor = held + back
@@ -279,22 +282,17 @@ class WaterAlong:
         self.vapor[row] = vapor - place.vapor_out
         return found
 
-    def _pool_suffices(self, i: int, liquid: Array, back: Array, place: _Place) -> bool:
-        """Whether a trap could give back all that it was asked for, and never ran over."""
+    def _pool_suffices(self, i: int, back: Array, place: _Place) -> bool:
+        """Whether a trap could give back all that it was asked for: then what it holds, and
+        whether it runs over, is no matter to the air."""
         if self.plan.stations[i].trap is None:
             return True
         if i in self.drains:
             return False
-        start = self.state.trap[i]
         asked, most = back.sum(axis=0), back.max(axis=0)
         place.back_sum = asked
-        if (asked == 0.0).all():
-            return True
-        if not (start - asked >= most).all():
-            return False
-        given = start + (self.parameters.separation[i] * liquid).sum(axis=0)
-        spills = self._spill_in[i] is not None or (given > self.parameters.capacity_kg[i]).any()
-        return not spills
+        least = np.minimum(self.state.trap[i], self.parameters.capacity_kg[i]) - asked
+        return bool((asked == 0.0).all() or (least >= most).all())
 
     def _tick_by_tick(
         self, i: int, course: _Receiver, wetted: Array | None, place: _Place
@@ -504,6 +502,19 @@ def _last_moving(through: Array, row: int) -> _LastMoving:
     moving = through[: row + 1] > 0.0
     ever = np.flatnonzero(moving.any(axis=0))
     return ever, row - moving[::-1].argmax(axis=0)[ever]
+
+
+def _filled(start: Array, net: Array, capacity: Array) -> tuple[Array, Array]:
+    """What a trap holds after each tick, and what ran over in it, where it gains and loses."""
+    holds, over = np.empty_like(net), np.empty_like(net)
+    before, add, subtract, most = start, np.add, np.subtract, np.maximum
+    for gains, after, runs_over in zip(*map(list, (net, holds, over)), strict=True):
+        add(before, gains, after)
+        subtract(after, capacity, runs_over)
+        most(runs_over, 0.0, out=runs_over)
+        subtract(after, runs_over, after)
+        before = after
+    return holds, over
 
 
 @dataclass(slots=True)
