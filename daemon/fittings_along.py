@@ -13,13 +13,13 @@ from daemon.moisture import dew_sensors, dryers
 from daemon.moisture.along import Stretch
 from daemon.moisture.description import Refrigerated
 from daemon.moisture.ensemble import Array
-from daemon.state import CoreState
 
 
-def fitting_rows(core: Core, before: CoreState, found: Stretch, ticks: int) -> Iterator[int]:
-    """The ticks in which a condition may change, or is first looked at after an alarm took
-    another state: one that is not suppressed any more begins to hold in the next tick."""
-    if any(record.since_us >= before.time_us for record in before.alarms.values()):
+def fitting_rows(core: Core, found: Stretch, ticks: int, alone_before: bool) -> Iterator[int]:
+    """The ticks in which a condition may change. After one that was taken alone the first is
+    looked at: what a service changed was not, and an alarm that is not suppressed any more begins
+    to hold."""
+    if alone_before:
         yield 0
     yield from _overloaded(core, found, ticks)
     yield from _spent(core, found, ticks)

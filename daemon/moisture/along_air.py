@@ -165,7 +165,8 @@ def moved_along(plan: Plan, state: flow.AirState, drawn: Array, measured: Array)
     cumulative = total - change.sum(axis=0)
     several = len(plan.receivers) > 1
     shares = [outlet.share for outlet in plan.line.outlets] if several else []
-    used, used_total = _new_maxima(state.used, cumulative, shares)
+    least = flow.least_step(state, total)
+    used, used_total = _new_maxima(state.used, cumulative, shares, least)
     entered = np.empty_like(measured)
     entered_total: list[Array | None] = []
     for row, receiver in enumerate(plan.receivers):
@@ -175,7 +176,7 @@ def moved_along(plan: Plan, state: flow.AirState, drawn: Array, measured: Array)
             continue
         below = [plan.receivers.index(other) for other in plan.receivers_below[receiver]]
         wanted = plan.share[receiver] * cumulative + change[below].sum(axis=0)
-        entered[row], so_far = _new_maxima(state.entered[row], wanted, [1.0])
+        entered[row], so_far = _new_maxima(state.entered[row], wanted, [1.0], least)
         entered_total.append(so_far)
     moved = _routed(plan, drawn, used, entered)
     stored, before = np.empty_like(measured), np.empty_like(measured)
@@ -224,19 +225,28 @@ def _share(share: float, used: Array) -> Array:
     return used if share == 1.0 else share * used
 
 
-def _new_maxima(start: Array, wanted: Array, shares: Sequence[float]) -> tuple[Array, Array]:
+def _new_maxima(
+    start: Array, wanted: Array, shares: Sequence[float], least: Array
+) -> tuple[Array, Array]:
     """By how much each tick goes beyond all before it, and the running maximum.
 
-    Where the steps are added up, it is as the sum of these shares of them.
+    Where the steps are added up, it is as the sum of these shares of them. `least` is what a step
+    must be more than, (ticks, members).
     """
     if not shares:
         greatest = running_maximum(start, wanted)
-        return np.diff(greatest, axis=0), greatest[1:]
+        steps = np.diff(greatest, axis=0)
+        if ((steps > 0.0) & (steps <= least)).any():
+            greatest[1:] = wanted
+            for low, before, total in zip(least, greatest[:-1], greatest[1:], strict=True):
+                np.copyto(total, before, where=total - before <= low)
+            steps = np.diff(greatest, axis=0)
+        return steps, greatest[1:]
     steps, totals = np.empty_like(wanted), np.empty_like(wanted)
     before = start
-    for want, step, total in zip(wanted, steps, totals, strict=True):
+    for want, low, step, total in zip(wanted, least, steps, totals, strict=True):
         np.subtract(want, before, out=step)
-        np.maximum(step, 0.0, out=step)
+        step[step <= low] = 0.0
         if shares == [1.0]:
             np.add(before, step, out=total)
         else:

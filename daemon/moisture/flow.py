@@ -23,6 +23,9 @@ from daemon.moisture.plan import Plan
 # than ten of its standard deviations in a million readings.
 SWING_OF_SPAN = 0.05
 SWING_OF_NOISE = 12.0
+# What goes beyond all before it by no more than this, of all air drawn in and stored, is rounding:
+# readings that are the same again would else move air in some members, and none in others.
+ROUNDING = 2.0**-46
 MOST_OF_STOCK = 0.5  # of what a receiver holds, what may leave it in one step
 NOISE_READINGS = 30  # that the noise is averaged over; nothing is taken for a swing before
 
@@ -165,7 +168,8 @@ def move(
     total_drawn = state.drawn + drawn
     change = measured - state.first
     cumulative_use = total_drawn - change.sum(axis=0)
-    used_by_now = np.maximum(cumulative_use, state.used)
+    least = least_step(state, total_drawn)
+    used_by_now = np.where(cumulative_use - state.used > least, cumulative_use, state.used)
     used = used_by_now - state.used
     entered = np.empty_like(state.entered)
     for row, receiver in enumerate(plan.receivers):
@@ -177,7 +181,8 @@ def move(
         for number in plan.purged_above[receiver]:
             part = plan.share[receiver] / max(plan.share[plan.purging[number]], 1e-300)
             wanted = wanted - part * state.purged[number]
-        entered[row] = np.maximum(wanted - state.entered[row], 0.0)
+        step = wanted - state.entered[row]
+        entered[row] = np.where(step > least, step, 0.0)
     moved = route(plan, drawn, used, entered, purging)
     if len(plan.receivers) > 1:
         moved = _within_stock(plan, state, moved)
@@ -193,6 +198,12 @@ def move(
         purged=state.purged if moved.purge is None else state.purged + moved.purge,
     )
     return after, moved
+
+
+def least_step(state: AirState, total_drawn: Array) -> Array:
+    """What is not more than rounding of the air drawn in and stored, kg."""
+    least: Array = ROUNDING * (total_drawn + state.first.sum(axis=0))
+    return least
 
 
 def _purge(plan: Plan, used: Array, outlets: Array, purging: Array) -> tuple[Array, Array]:

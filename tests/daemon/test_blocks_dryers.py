@@ -164,10 +164,11 @@ def test_a_bowl_beyond_its_rated_flow_keeps_less() -> None:
     assert 0.0 < caught[1] < 0.9 * caught[0]
 
 
-@pytest.mark.parametrize("changed", [False, True])
-def test_a_cartridge_is_spent_and_changed(changed: bool) -> None:
+@pytest.mark.parametrize(("changed", "seconds"), [(False, 0), (True, 7), (True, 100)])
+def test_a_cartridge_is_spent_and_changed(changed: bool, seconds: int) -> None:
+    """Between two ticks, or at one."""
     shop = a_shop("a small cartridge")
-    at_us = BEGUN_US + 2 * HOUR_US + 7 * SECOND_US
+    at_us = BEGUN_US + 2 * HOUR_US + seconds * SECOND_US
     entries = [Entry(1, at_us, at_us, Service("element changed", "beads"))] if changed else []
     found = compare(shop, working(shop, 2.1, {}), entries)
     after = told_of(found, "beads-desiccant-spent")
@@ -223,6 +224,24 @@ def test_a_transmitter_contradicts_the_line(until: float) -> None:
     assert after == ["unacknowledged", "returned unacknowledged", "unacknowledged"]
     assert "cannot be where dryer" in found.state.alarms["hygrometer-sensor-fault"].text
     assert together(found) > 0.95
+
+
+def test_a_pressure_that_stays_moves_no_air() -> None:
+    """Gauge and barometer change and their sum does not, but for rounding, while the riser's
+    temperature wanders: how moist the air was that last left it is the same in both ways."""
+    shop = a_shop("a transmitter")
+
+    def flickers(at: Array) -> Array:
+        return 3.3 * np.round(2.0 + 2.0 * np.sin(3000.0 * at))
+
+    said: Says = {
+        "motor.contact": np.zeros_like,
+        "intake-air.temperature": lambda at: np.full_like(at, 293.0),
+        "tank-gauge.pressure": lambda at: np.where(at < 1.1, 7e5, 6.5e5) + flickers(at),
+        "intake-air.pressure": lambda at: 101_000.0 - flickers(at),
+    }
+    found = compare(shop, working(shop, 1.9, said))
+    assert (found.state.model.air.used > 0.01).all()  # what left the tank as its pressure fell
 
 
 def test_a_transmitter_falls_silent() -> None:
