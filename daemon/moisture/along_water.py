@@ -19,34 +19,11 @@ from daemon.moisture.along_course import Bools, Ints
 from daemon.moisture.along_drains import DrainAlong
 from daemon.moisture.along_drying import Wet
 from daemon.moisture.along_fittings import FittingsAlong
+from daemon.moisture.along_receiver import Pool, Receiver, filled
+from daemon.moisture.along_waiting import Waiting, released
 from daemon.moisture.ensemble import Array
 from daemon.moisture.line import Ledger, WaterParameters, WaterState, parts_of
 from daemon.moisture.plan import Plan
-
-
-@dataclass(slots=True)
-class _Waiting:
-    """Liquid that waits for air: what there is after each tick."""
-
-    start: Array  # (members,)
-    rows: Array | None = None  # None: `start` until air first moves, then nothing
-    moving: Bools | None = None  # None: air moves at the first tick already
-
-    def at(self, row: int) -> Array:
-        """After one tick, (members,)."""
-        if self.rows is not None:
-            found: Array = self.rows[row]
-            return found
-        if self.moving is None:
-            return np.zeros_like(self.start)
-        still = ~self.moving[: row + 1].any(axis=0)
-        return self.start * still
-
-    def all(self, ticks: int) -> Array:
-        """After every tick, (ticks, members)."""
-        if self.rows is not None:
-            return self.rows
-        return np.array([self.at(row) for row in range(ticks)])
 
 
 @dataclass(slots=True)
@@ -60,8 +37,8 @@ class _Place:
     back_sum: Array | None = None  # (members,): the same in all
     trap: Array | None = None  # what it held after each tick; None: the sum of the above
     over: Array | None = None  # what ran over, of a receiver taken tick by tick
-    waiting: _Waiting = field(init=False)
-    spilled: _Waiting = field(init=False)
+    waiting: Waiting = field(init=False)
+    spilled: Waiting = field(init=False)
 
 
 @dataclass(slots=True)
@@ -184,7 +161,7 @@ class WaterAlong:
             return None
         caught = np.zeros_like(self.water_in) if place.caught is None else place.caught
         if place.back is not None and place.back.any():
-            place.trap, over_of_tank = _filled(start, caught - place.back, capacity)
+            place.trap, over_of_tank = filled(start, caught - place.back, capacity)
             return over_of_tank
         rows = np.minimum(running_sum(start, caught), capacity)
         place.trap = rows[1:]
@@ -209,11 +186,11 @@ class WaterAlong:
         through, moving = self.air.moved.through[i], self._moving(i)
         shape, state = through.shape, self.state
         waits, spilt = self._waits
-        if moving is None or waits or not self._moves_on(i):
-            liquid, place.waiting = _released(state.waiting[i], liquid, moving, shape, waits)
+        if moving is not None and self._moves_on(i) and not (waits and state.waiting[i].any()):
+            place.waiting = Waiting(state.waiting[i])
         else:
-            place.waiting = _Waiting(state.waiting[i])
-        spill, place.spilled = _released(state.spilled[i], spill, moving, shape, spilt)
+            liquid, place.waiting = released(state.waiting[i], liquid, moving, shape, waits)
+        spill, place.spilled = released(state.spilled[i], spill, moving, shape, spilt)
         several = len(self.plan.outflows[i]) > 1
         safe = np.where(moving, through, 1.0) if several and moving is not None else through
         parts = parts_of(self.plan, self.air.moved, i, safe)
@@ -266,7 +243,7 @@ class WaterAlong:
         pool = np.zeros(comes.shape[1])
         if self.plan.stations[i].trap is not None:
             pool = self.parameters.pool_kg_per_s * self.dt_s
-        course = _Receiver(comes, possible, goes, pool, self.state.vapor[row])
+        course = Receiver(comes, possible, goes, pool, self.state.vapor[row])
         held = course.mix()
         found = course.came - held  # what condensed, less what evaporated
         if wetted is not None and liquid is not None:
@@ -275,7 +252,7 @@ class WaterAlong:
         back = pool * (1.0 - held / possible)
         small = bool((pool > possible).any())  # hardly more than nothing: never a tank
         if small or not self._pool_suffices(i, back, place):
-            return self._tick_by_tick(i, course, wetted, place)
+            return self._in_order(i, course, wetted, place)
         place.back = back
         vapor = held + back
         place.vapor_out = vapor * goes
@@ -294,63 +271,24 @@ class WaterAlong:
         least = np.minimum(self.state.trap[i], self.parameters.capacity_kg[i]) - asked
         return bool((asked == 0.0).all() or (least >= most).all())
 
-    def _tick_by_tick(
-        self, i: int, course: _Receiver, wetted: Array | None, place: _Place
-    ) -> Array:
-        """The same where the pool runs empty or the trap runs over, in order."""
-        liquid_in, spill_in = self._liquid_in[i], self._spill_in[i]
-        kept, capacity = self.parameters.separation[i], self.parameters.capacity_kg[i]
-        comes, possible, pool = course.comes, course.possible, course.pool
-        besides = np.zeros_like(comes)  # liquid that did not evaporate
-        if wetted is not None and liquid_in is not None:
-            besides = liquid_in - wetted
-        spilt = None if spill_in is None else kept * spill_in
-        stays, drain = 1.0 - course.goes, self.drains.get(i)
-        small = bool((pool > possible).any())
-        liquid, back, held, trap, over = (np.empty_like(comes) for _ in range(5))
-        vapor, in_trap = course.start.copy(), self.state.trap[i]
-        came, in_trap_now = np.empty_like(vapor), np.empty_like(vapor)
-        given = zip(*map(list, (comes, besides, possible, stays)), strict=True)
-        made = zip(*map(list, (liquid, back, held, trap, over)), strict=True)
-        add, subtract, multiply, least, most = (
-            np.add,
-            np.subtract,
-            np.multiply,
-            np.minimum,
-            np.maximum,
+    def _in_order(self, i: int, course: Receiver, wetted: Array | None, place: _Place) -> Array:
+        """The same where the pool may run empty, or a drain empties it."""
+        liquid, spill = self._liquid_in[i], self._spill_in[i]
+        kept = self.parameters.separation[i]
+        pool = Pool(
+            self.state.trap[i],
+            self.parameters.capacity_kg[i],
+            kept,
+            None if wetted is None or liquid is None else liquid - wetted,
+            None if spill is None else kept * spill,
+            self.drains.get(i),
         )
-        for n, (now, made_now) in enumerate(zip(given, made, strict=True)):
-            comes_now, besides_now, possible_now, stays_now = now
-            liquid_now, back_now, held_now, trap_now, over_now = made_now
-            add(vapor, comes_now, came)
-            least(came, possible_now, out=held_now)
-            subtract(came, held_now, liquid_now)
-            add(liquid_now, besides_now, liquid_now)
-            np.divide(held_now, possible_now, back_now)
-            subtract(1.0, back_now, back_now)
-            multiply(pool, back_now, back_now)
-            least(back_now, in_trap, out=back_now)
-            if small:
-                least(back_now, possible_now - held_now, out=back_now)
-                most(back_now, 0.0, out=back_now)
-            add(held_now, back_now, held_now)
-            multiply(held_now, stays_now, vapor)
-            multiply(kept, liquid_now, trap_now)
-            if spilt is not None:
-                add(trap_now, spilt[n], trap_now)
-            subtract(in_trap, back_now, in_trap_now)
-            add(trap_now, in_trap_now, trap_now)
-            if drain is not None:
-                trap_now[:] = drain.left(n, trap_now)
-            subtract(trap_now, capacity, over_now)
-            most(over_now, 0.0, out=over_now)
-            subtract(trap_now, over_now, trap_now)
-            in_trap = trap_now
-        place.back, place.trap = back, trap
-        place.vapor_out = held * course.goes
-        self.vapor[self.plan.receivers.index(i)] = held * stays
-        place.over = over if over.any() else None
-        return liquid
+        found = course.in_order(pool)
+        place.back, place.trap = found.back, found.trap
+        place.vapor_out = found.held * course.goes
+        self.vapor[self.plan.receivers.index(i)] = found.held * (1.0 - course.goes)
+        place.over = found.over if found.over.any() else None
+        return found.liquid
 
     # ---- what is where, after one tick ----
 
@@ -502,76 +440,6 @@ def _last_moving(through: Array, row: int) -> _LastMoving:
     moving = through[: row + 1] > 0.0
     ever = np.flatnonzero(moving.any(axis=0))
     return ever, row - moving[::-1].argmax(axis=0)[ever]
-
-
-def _filled(start: Array, net: Array, capacity: Array) -> tuple[Array, Array]:
-    """What a trap holds after each tick, and what ran over in it, where it gains and loses."""
-    holds, over = np.empty_like(net), np.empty_like(net)
-    before, add, subtract, most = start, np.add, np.subtract, np.maximum
-    for gains, after, runs_over in zip(*map(list, (net, holds, over)), strict=True):
-        add(before, gains, after)
-        subtract(after, capacity, runs_over)
-        most(runs_over, 0.0, out=runs_over)
-        subtract(after, runs_over, after)
-        before = after
-    return holds, over
-
-
-@dataclass(slots=True)
-class _Receiver:
-    """A receiver's vapor over several ticks."""
-
-    comes: Array  # vapor, and liquid that may evaporate
-    possible: Array  # all that its air can hold
-    goes: Array  # the share of its air that leaves
-    pool: Array  # (members,): what its pool gives to perfectly dry air in a tick
-    start: Array  # (members,): its vapor before
-    came: Array = field(init=False)  # vapor and what came to it, before any condensed
-
-    def mix(self) -> Array:
-        """Its vapor after condensing, before the pool, if the pool never runs empty."""
-        stays = 1.0 - self.goes
-        factor = stays * (1.0 - self.pool / self.possible)
-        stays *= self.pool
-        stays[:-1] += self.comes[1:]
-        came = np.empty((len(factor) + 1, factor.shape[1]))
-        np.add(self.start, self.comes[0], out=came[0])
-        rows, kept = list(came), np.empty_like(self.start)
-        minimum, multiply, add = np.minimum, np.multiply, np.add
-        each = zip(rows, rows[1:], *map(list, (self.possible, factor, stays)), strict=False)
-        for there, then, possible, share, more in each:
-            minimum(there, possible, out=kept)
-            multiply(kept, share, kept)
-            add(kept, more, then)
-        self.came = came[:-1]
-        held: Array = np.minimum(self.came, self.possible)
-        return held
-
-
-def _released(
-    start: Array, new: Array | None, moving: Bools | None, shape: tuple[int, ...], waits: bool
-) -> tuple[Array | None, _Waiting]:
-    """Liquid that air takes along, of what waits and of what is new; and what then waits."""
-    waits = waits and bool(start.any())
-    if moving is None or new is None or not (new * ~moving).any():
-        if not waits:
-            return new, _Waiting(start)
-        out = np.zeros(shape) if new is None else new.copy()
-        if moving is None:
-            out[0] += start
-            return out, _Waiting(start)
-        ever = np.flatnonzero(moving.any(axis=0))
-        out[moving.argmax(axis=0)[ever], ever] += start[ever]
-        return out, _Waiting(start, None, moving)
-    out, rows = np.empty(shape), np.empty(shape)
-    before, add, multiply, subtract = start, np.add, np.multiply, np.subtract
-    each = zip(*map(list, (new, moving.astype(np.float64), out, rows)), strict=True)
-    for more, flows, goes, stays in each:
-        add(before, more, stays)
-        multiply(stays, flows, goes)
-        subtract(stays, goes, stays)
-        before = stays
-    return out, _Waiting(start, rows)
 
 
 def _part(part: Array | float, whole: Array | None) -> Array | None:
