@@ -102,6 +102,21 @@ def test_a_floor_that_nobody_measures_is_taken_for_colder_and_less_certain() -> 
     assert other.p95 - other.p05 > 1.8 * (one.p95 - one.p05)
 
 
+def test_a_hose_behind_a_warm_tank_lies_in_the_room_and_not_in_the_tank() -> None:
+    """A tank of 45 degC at 7 bar gauge sheds nothing of 20 degC, 50 % (7.29 g/kg by psychrolib),
+    whose dew point at 3 bar absolute is 26.5 degC by CoolProp: a floor 4 K below 20 degC drips."""
+    text, gauge = site_text('surface = "panel.temperature"\n'), 'pressure = "tank-gauge.pressure"\n'
+    hot = 'temperature = { like = "intake", plus = "25 K", give_or_take = "1 K" }\n'
+    text = text.replace(gauge, hot + gauge)
+    as_hot = 'temperature = { like = "tank", plus = "0 K", give_or_take = "1 K" }\n'
+    text = text.replace('temperature = "pipe-end.temperature"\n', as_hot)
+    view = gun_of(site(text), intake_air_relative_humidity=0.5)
+    dew_point, margin = known(view.air.pressure_dew_point_k), known(view.air.line_margin_k)
+    assert dew_point.p05 < 273.15 + 26.5 < dew_point.p95
+    assert margin.p50 == pytest.approx(16.0 - 26.5, abs=1.5)
+    assert view.verdict == "wait"
+
+
 def test_a_flooded_trap_lets_water_through_and_means_wait() -> None:
     """A bowl that runs over: everything that comes to it is carried on."""
     shop = a_shop()
