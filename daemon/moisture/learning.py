@@ -208,7 +208,14 @@ def _kept_honest(moved: Array, prior_sd: float, stir: Array) -> Array:
     if sd > 0.0:
         moved = middle + (moved - middle) * (wanted / sd)
     honest = KEEPS * moved + math.sqrt(1.0 - KEEPS * KEEPS) * stir
-    return np.clip(honest, -FARTHEST, FARTHEST)
+    kept: Array = np.clip(honest, -FARTHEST, FARTHEST)
+    if kept.std(ddof=1) >= LEAST_SD or honest.std(ddof=1) <= 0.0:
+        return kept
+    # the bound took the spread away, and all members at the bound would be certainty
+    place = (honest - honest.mean()) * (LEAST_SD / honest.std(ddof=1))
+    middle = math.copysign(FARTHEST - 3.0 * LEAST_SD, honest.mean())
+    spread: Array = np.clip(middle + place, -FARTHEST, FARTHEST)
+    return spread
 
 
 def update_contents(contents_kg: Array, update: Update, k_kg: float, most_kg: Array) -> Array:
