@@ -25,7 +25,7 @@ from daemon.moisture.plan import Plan
 # Hoses on a slab run 5-8 K colder than booth air on a Monday: 4 K +- 4 K. Common practice.
 SLAB_K, SLAB_GIVE_OR_TAKE_K = -4.0, 4.0
 # Air around a hose that nobody measures, against the station that it hangs on, or against the
-# intake where that station is as warm as a tank and the intake is colder; an estimate.
+# intake where that station is as warm as a tank or as cold as a bath; an estimate.
 ROOM_GIVE_OR_TAKE_K = 4.0
 HOSE, SLAB = "hose", "slab"
 
@@ -127,9 +127,9 @@ def places(plan: Plan, state: State, along: Way) -> Places:
         room = believed(state, described.air_temperature)
     else:
         sd = ROOM_GIVE_OR_TAKE_K * HALF_WIDTH_TO_SD
-        room = temperature[along.station] + sd * state.beliefs[room_of(described.id)]
-        if as_a_tank(plan, along.station):  # its warmth stays at the tank: the hose lies in a room
-            room = room + np.minimum(temperature[0] - temperature[along.station], 0.0)
+        # a tank's warmth and a bath's cold stay there: the hose lies in a room
+        near = 0 if as_a_tank(plan, along.station) else along.station
+        room = temperature[near] + sd * state.beliefs[room_of(described.id)]
     if described.slab is not None:
         slab = believed(state, described.slab)
     else:

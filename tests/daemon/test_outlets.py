@@ -117,6 +117,17 @@ def test_a_hose_behind_a_warm_tank_lies_in_the_room_and_not_in_the_tank() -> Non
     assert view.verdict == "wait"
 
 
+def test_a_hose_behind_an_ice_bath_lies_in_the_room_and_not_in_the_bath() -> None:
+    bath = '[[station]]\nid = "bath"\nkind = "cooler"\nafter = "bowl"\nice = "20 kg"\n'
+    separator = 'trap = { capacity = "2 L", separation = 0.999 }\n\n'
+    text = site_text("", "").replace('after = "booth-regulator"', 'after = "bath"')
+    regulator = '[[station]]\nid = "booth-regulator"'
+    view = gun_of(site(text.replace(regulator, bath + separator + regulator)))
+    # air saturated at 3 degC, in a hose on a floor 4 K below the intake's 20 degC
+    assert known(view.air.pressure_dew_point_k).p50 == pytest.approx(273.15 + 3.0, abs=0.3)
+    assert known(view.air.line_margin_k).p50 == pytest.approx(16.0 - 3.0, abs=1.5)
+
+
 def test_a_flooded_trap_lets_water_through_and_means_wait() -> None:
     """A bowl that runs over: everything that comes to it is carried on."""
     shop = a_shop()
