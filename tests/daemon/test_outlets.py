@@ -253,6 +253,40 @@ def test_a_dew_point_that_cannot_be_gives_a_reason_rather_than_a_number(tmp_path
     assert last[-1] == "unknown"
 
 
+@pytest.mark.parametrize(("says_k", "verdict"), [(277.15, "dry enough"), (290.15, "unknown")])
+def test_a_dryer_that_does_not_dry_by_its_transmitter_is_never_dry_enough(
+    says_k: float, verdict: str
+) -> None:
+    """Set to 3 degC: 4 degC is within what any of them does, 17 degC is a dryer that has failed."""
+    dryer = (
+        '[[station]]\nid = "dryer"\nkind = "refrigerated"\nafter = "bowl"\n'
+        'trap = { capacity = "1 L", separation = 0.999 }\n'
+        'temperature = "20 degC"\nmeasured_dew_point = "probe.dew_point"\n'
+        'rated_flow = "900 L/min"\n\n'
+    )
+    probe = (
+        '[[sensor]]\nid = "probe"\ndriver = "dew-point-loop"\ninput = 1\n'
+        'range = "-60 to 60 degC"\n\n'
+    )
+    regulator, intake = '[[station]]\nid = "booth-regulator"', '[[station]]\nid = "intake"\n'
+    text = site_text().replace(regulator, dryer + regulator).replace(intake, probe + intake, 1)
+    shop = site(text.replace('after = "bowl"\nset', 'after = "dryer"\nset'))
+    core, readings = Core(shop), []
+    for told in still(shop, 2.2):
+        readings.append(told)
+        if told.channel == "motor.contact":
+            readings.append(reading(shop.channels["probe.dew_point"], says_k, told.time_us))
+    result = run(core, readings)
+    view = gun(core, result)
+    assert view.verdict == verdict
+    if verdict == "unknown":
+        assert view.air.pressure_dew_point_k is None
+        assert "dryer: a dew point of at least 14.5 degC" in view.air.judgement.reasons[0]
+        assert "does the dryer before it dry?" in view.air.judgement.reasons[0]
+        # and what stands before the dryer is not blamed for it
+        assert float(np.abs(result.state.model.ledger.corrected).max()) == 0.0
+
+
 def test_a_dead_sensor_costs_the_dew_point_only_certainty() -> None:
     whole = run(CORE, list(still(SHOP, 3.0)))
     lost = silent_after(list(still(SHOP, 3.0)), "pipe-end.temperature", BEGUN_US + HOUR_US)
