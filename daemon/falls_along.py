@@ -5,14 +5,19 @@ from __future__ import annotations
 import numpy as np
 
 from daemon.drain_watch import FALL_PA, FALL_WITHIN_US, DrainWatching
+from daemon.judged_along import first
+from daemon.moisture.conditions import LOWEST_PA
+from daemon.moisture.description import Measured
+from daemon.moisture.drains import LOW_PA
 from daemon.ticks_along import Ticks
 
+HIGHEST_BAROMETER_PA = 110_000.0
 Gauges = dict[str, tuple[tuple[int, float], ...]]
 
 
 def may_fall(watching: DrainWatching, ticks: Ticks) -> int:
     """The first tick that may be part of a fast fall; it may turn out to be none."""
-    good = len(ticks.times_us)
+    good = _as_low(watching, ticks)
     before = ticks.before.drains.gauges
     for tank, (channel, volume_m3) in watching.volumes.items():
         said = ticks.said[channel]
@@ -34,6 +39,25 @@ def may_fall(watching: DrainWatching, ticks: Ticks) -> int:
         rests = np.array([_rests(ticks, row) for row in said.tick[new].tolist()], bool)
         suspect = said.tick[new][rests]
         good = min(good, int(suspect[0]) if len(suspect) else good)
+    return good
+
+
+def _as_low(watching: DrainWatching, ticks: Ticks) -> int:
+    """The first tick in which a tank may hold less than a bar, or may again, unlike before."""
+    model, good = watching.model, len(ticks.times_us)
+    fitted = ticks.before.model.fittings
+    for i, since_us in zip(model.fittings.tanks, fitted.low_since_us, strict=True):
+        source = model.plan.stations[i].pressure
+        if not isinstance(source, Measured) or ticks.course.silent.get(source.channel, True):
+            good = good if since_us >= 0 else 0
+            continue
+        values = ticks.course.values[source.channel]
+        if source.gauge:
+            good = min(good, first((values < LOW_PA) != (since_us >= 0), good))
+        elif since_us >= 0:
+            good = min(good, first(values >= LOW_PA + LOWEST_PA, good))
+        else:
+            good = min(good, first(values < LOW_PA + HIGHEST_BAROMETER_PA, good))
     return good
 
 

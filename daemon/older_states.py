@@ -23,4 +23,7 @@ def completed(name: str, values: dict[str, Any]) -> dict[str, Any]:
     if name == "State" and np.isnan(values["air"].ratio).any():
         air = values["air"]
         return {**values, "air": replace(air, ratio=values["water"].vapor / air.stored)}
+    if name == "FittingState" and "low_since_us" not in values:
+        # how slowly its pressure fell was not looked at then
+        return {**values, "low_since_us": values["empty_since_us"]}
     return values

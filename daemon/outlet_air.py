@@ -14,13 +14,14 @@ from daemon.channel_faults import unusable
 from daemon.contradictions import Contradictions
 from daemon.moisture import margin
 from daemon.moisture.description import Like, Measured, RiseByDuty, Source
-from daemon.moisture.dew_sensors import channels_of, contradicts
+from daemon.moisture.dew_sensors import behind_dryer, channels_of, contradicts, wetter
 from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, standard_normal
 from daemon.moisture.floats import switches
 from daemon.moisture.model import Model
 from daemon.outlet_record import GaugeHeld
 from daemon.site.types import OutletSettings, Site
 from daemon.state import CoreState
+from daemon.units import show_temperature
 from daemon.work import PROFILES, Profile
 
 TYPED_GIVE_OR_TAKE_K = 1.0  # of a surface thermometer in somebody's hand; common practice
@@ -127,12 +128,30 @@ class OutletAir:
         return [
             *self.faults(state, outlet.line_channels),
             *(f"{sensor}: {against[sensor]}" for sensor in outlet.watching if sensor in against),
+            *self._wetter(state, outlet),
         ]
 
+    def _wetter(self, state: CoreState, outlet: Described) -> Iterator[str]:
+        """Dew points that are measured above what is believed behind a dryer."""
+        plan, units = self.model.plan, self.site.units
+        for row in outlet.way.path:
+            if plan.stations[row].measured_dew_point is None or not behind_dryer(plan, row):
+                continue
+            if contradicts(plan, state.model, row):
+                continue  # told already
+            if (found := wetter(plan, state.model, row)) is not None:
+                least, most = (show_temperature(each, units) for each in found)
+                yield (
+                    f"{plan.stations[row].id}: a dew point of at least {least} is measured there, "
+                    f"and at most {most} is believed: does the dryer before it dry?"
+                )
+
     def beyond_belief(self, state: CoreState, outlet: Described) -> bool:
-        """Whether a measured dew point is above what the line can have: then there is no number."""
+        """Whether a measured dew point is above what the line can have, or what its dryer is
+        believed to give: then there is no number."""
         plan = self.model.plan
-        return any(contradicts(plan, state.model, row) for row in outlet.way.path)
+        impossible = any(contradicts(plan, state.model, row) for row in outlet.way.path)
+        return impossible or any(self._wetter(state, outlet))
 
     def faults(self, state: CoreState, names: Iterable[str]) -> Iterator[str]:
         """Which of these channels cannot be believed, in words."""

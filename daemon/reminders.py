@@ -129,7 +129,7 @@ def tick(
     if turn is None or scene.now_us < turn.at_us - WATCHED_US:
         return reminders, None
     if scene.now_us >= turn.until_us:
-        return _onward(site, reminders, scene.now_us), None
+        return _missed(site, reminders, scene.now_us), None
     drawing = True
     if reminders.watched_us == NEVER:
         reminders = replace(reminders, watched_us=scene.now_us, watched_kg=scene.used_kg)
@@ -158,6 +158,14 @@ def _onward(site: Site, reminders: Reminders, now_us: int) -> Reminders:
     assert reminders.turn is not None
     after_us = max(now_us, reminders.turn.at_us)
     return replace(reminders, turn=next_turn(site, after_us), watched_us=NEVER, watched_kg=0.0)
+
+
+def _missed(site: Site, reminders: Reminders, now_us: int) -> Reminders:
+    """Onward from a turn that went by: the next one may begin just as this one ends."""
+    turn = reminders.turn
+    while turn is not None and turn.until_us <= now_us:
+        turn = next_turn(site, max(turn.until_us - 1, now_us - DAY_US))
+    return replace(reminders, turn=turn, watched_us=NEVER, watched_kg=0.0)
 
 
 def _made(turn: Turn, scene: Scene, round_of: Round) -> Reminder | None:

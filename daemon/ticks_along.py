@@ -301,7 +301,8 @@ def _pump(
 
 def _fields(pump: PumpWatch) -> Watched:
     swing = pump.pumping, pump.extreme_pa, pump.extreme_us
-    return (*swing, pump.before_pa, pump.noise_pa2, pump.readings)
+    noise = pump.before_pa, pump.noise_pa2, pump.readings
+    return (*swing, *noise, pump.anchor_pa, pump.anchor_us)
 
 
 def _is_open(core: Core, times_us: Ints) -> Bools:

@@ -8,7 +8,7 @@ not measured any more is known less and less. When the channel speaks again, tha
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -67,7 +67,7 @@ class Conditions:
     temperature_k: Array
     pressure_pa: Array
     relative_humidity: Array  # (members,), the intake's, over liquid water
-    measured: frozenset[int]  # stations whose pressure comes from a fresh channel
+    measured: frozenset[int]  # stations whose pressure follows a fresh gauge, theirs or another's
 
 
 @dataclass(frozen=True, slots=True)
@@ -99,7 +99,7 @@ class Evaluation:
         ticks = () if self.along_us is None else (len(self.along_us),)
         shape = (len(plan.stations), *ticks, plan.line.members)
         temperature, pressure = np.empty(shape), np.empty(shape)
-        measured = set()
+        measured: set[int] = set()
         for i in plan.temperature_order:
             source = plan.stations[i].temperature
             rule = plan.temperature_rules[i]
@@ -110,13 +110,21 @@ class Evaluation:
             barometer = pressure[0] if i else None
             rule = plan.pressure_rules[i]
             pressure[i] = self._value("pressure", i, source, rule, pressure, barometer)
-            if isinstance(source, Measured) and not self._stale(source.channel):
+            if self._follows_gauge(i, source, measured):
                 measured.add(i)
         for i, station in enumerate(plan.stations):
             if station.kind == "regulator":  # it can only lower a pressure
                 np.minimum(pressure[i], pressure[plan.parent[i]], out=pressure[i])
         np.clip(pressure, LOWEST_PA, HIGHEST_PA, out=pressure)
         return Conditions(temperature, pressure, self.humidity(), frozenset(measured))
+
+    def _follows_gauge(self, i: int, source: Source, measured: Collection[int]) -> bool:
+        """Whether a fresh gauge tells of a station's pressure: its own, or that of its like."""
+        if isinstance(source, Measured):
+            return not self._stale(source.channel)
+        regulated = self.plan.stations[i].kind == "regulator"
+        like = isinstance(source, Like) and self.plan.index[source.station] in measured
+        return like and not regulated
 
     def _stale(self, channel: str) -> bool:
         held = self.held.get(channel)

@@ -22,6 +22,9 @@ from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array
 from daemon.moisture.model import State
 from daemon.moisture.plan import Plan
 
+# A measured dew point contradicts what is believed where its least is above this percentile by so
+# much: more than rounding and a moment's lag.
+MOST_BELIEVED, WETTER_K = 95.0, 1.0
 DRIEST = 1e-8  # kg/kg, below every dryer's air and within the formulas' range
 
 
@@ -146,6 +149,31 @@ def contradicts(plan: Plan, state: State, station: int) -> bool:
     )
     ratio = air.humidity_ratio_unchecked(*(np.array(each) for each in cell))
     return float(ratio[0]) > float(state.saturated[station].max())
+
+
+def wetter(plan: Plan, state: State, station: int) -> tuple[float, float] | None:
+    """The least that a sensor says of a dew point, and the most that is believed there, K, where
+    the first is above the second: then a dryer does not do what it is said to."""
+    source = plan.stations[station].measured_dew_point
+    if source is None or not fresh(plan, state, source):
+        return None
+    said = measured(plan, state.beliefs, state.held, state.conditions, station)
+    if said is None or said.low_k is None:
+        return None
+    most = float(np.percentile(state.water.leaving_ratio[station], MOST_BELIEVED))
+    pressure_pa = np.median(state.conditions.pressure_pa[station], keepdims=True)
+    most_k = float(air.dew_point_unchecked(np.array([max(most, DRIEST)]), pressure_pa)[0])
+    return (said.low_k, most_k) if said.low_k > most_k + WETTER_K else None
+
+
+def behind_dryer(plan: Plan, station: int) -> bool:
+    """Whether a dryer in service stands there or before it."""
+    while station >= 0:
+        dryer = plan.stations[station].dryer
+        if dryer is not None and dryer.power.in_service:
+            return True
+        station = plan.parent[station]
+    return False
 
 
 def fresh(plan: Plan, state: State, source: Measured | VentedCell) -> bool:

@@ -29,6 +29,7 @@ class FittingState:
     cartridges: tuple[str, ...]  # the stations of the rows of charge
     baths: tuple[str, ...]  # ... and of heat
     empty_since_us: tuple[int, ...]  # per receiver with a petcock: without pressure since; -1: no
+    low_since_us: tuple[int, ...]  # ... and not known to hold a bar or more since; -1: it does
 
 
 @dataclass(frozen=True, slots=True)

@@ -64,6 +64,7 @@ class Fittings:
             cartridges=tuple(self.plan.stations[i].id for i in self.drying.cartridges),
             baths=tuple(self.plan.stations[i].id for i in self.baths),
             empty_since_us=tuple(-1 for _ in self.tanks),
+            low_since_us=tuple(0 for _ in self.tanks),  # nobody has seen them hold any
         )
 
     def renewed(self, state: FittingState, station: str) -> FittingState:
@@ -198,27 +199,41 @@ class Fittings:
     def without_pressure(
         self, state: FittingState, now: Conditions, held: Mapping[str, Held], to_us: int
     ) -> FittingState:
-        """Since when each tank with a petcock has stood without pressure, by its gauge."""
-        since = tuple(
-            (before if before >= 0 else to_us) if self._empty(i, now, held) else -1
-            for i, before in zip(self.tanks, state.empty_since_us, strict=True)
-        )
-        return state if since == state.empty_since_us else replace(state, empty_since_us=since)
+        """Since when each tank with a petcock has stood without pressure, by its gauge, and since
+        when it has not been known to hold a bar."""
+        empty, low = [], []
+        for i, empty_us, low_us in zip(
+            self.tanks, state.empty_since_us, state.low_since_us, strict=True
+        ):
+            gauge_pa = self._gauge_pa(i, now, held)
+            without = gauge_pa is not None and gauge_pa < drains.EMPTY_PA
+            pressed = gauge_pa is not None and gauge_pa >= drains.LOW_PA
+            empty.append(_since(empty_us, without, to_us))
+            low.append(_since(low_us, not pressed, to_us))
+        if tuple(empty) == state.empty_since_us and tuple(low) == state.low_since_us:
+            return state
+        return replace(state, empty_since_us=tuple(empty), low_since_us=tuple(low))
 
-    def _empty(self, i: int, now: Conditions, held: Mapping[str, Held]) -> bool:
+    def _gauge_pa(self, i: int, now: Conditions, held: Mapping[str, Held]) -> float | None:
+        """What a tank's gauge shows, Pa; None where none speaks."""
         source = self.plan.stations[i].pressure
         if i not in now.measured or not isinstance(source, Measured):
-            return False
+            return None
         if source.gauge:
-            return held[source.channel].value < drains.EMPTY_PA
-        return float((now.pressure_pa[i] - now.pressure_pa[0]).mean()) < drains.EMPTY_PA
+            return held[source.channel].value
+        return float((now.pressure_pa[i] - now.pressure_pa[0]).mean())
 
     def let_down_now(self, state: FittingState, to_us: int) -> list[int]:
-        """The tanks, by their rows, that have stood without pressure for an hour."""
+        """The tanks, by their rows, that have stood without pressure for an hour, and lost it
+        faster than through a leak."""
         return [
             row
-            for row, since in enumerate(state.empty_since_us)
-            if since >= 0 and to_us - since >= drains.EMPTY_AFTER_US
+            for row, (since, low) in enumerate(
+                zip(state.empty_since_us, state.low_since_us, strict=True)
+            )
+            if since >= 0
+            and to_us - since >= drains.EMPTY_AFTER_US
+            and since - low <= drains.LETS_DOWN_WITHIN_US
         ]
 
     def let_down(
@@ -260,3 +275,10 @@ class Fittings:
         row = self.baths.index(i)
         left = dryers.ice_left(parameters.ice_kg[row], state.heat[row])
         return lasts_s(left * dryers.MELTING_J_PER_KG, state.melting[row])
+
+
+def _since(before_us: int, is_so: bool, now_us: int) -> int:
+    """Since when something has been so; -1 where it is not."""
+    if not is_so:
+        return -1
+    return before_us if before_us >= 0 else now_us

@@ -28,6 +28,7 @@ from daemon.moisture.model import Model, State
 from daemon.moisture.observing import take
 from daemon.moisture.plan import Plan
 
+NOTHING_NEW = 0.1  # of a switch's own error: a closing that says no more has said it before
 SURE = 0.95  # of the members, before a switch is said to contradict what is believed
 
 
@@ -84,9 +85,12 @@ def _closed(
             return state, True
         needed = ((seen - middle) / WIDENED_TO_SIGMAS) ** 2 - sd * sd
         factor = min(max(math.sqrt(max(needed, 0.0) / variance), 1.0), MOST_WIDENED)
-    noise = standard_normal(model.plan.line.seed, switch.channel, members, state.time_us)
+    # where it closes is off by the same each time: else one that flutters would be many witnesses,
+    # and every member would end above the highest that any of them said
+    noise = standard_normal(model.plan.line.seed, switch.channel, members)
     wide = middle + factor * (expected - middle)
     miss = np.maximum(seen + sd * noise - wide, 0.0)
+    miss[miss < NOTHING_NEW * sd] = 0.0
     if not miss.any():
         return state, False
     update = Update(wide, miss, factor * factor * variance + sd * sd)

@@ -28,9 +28,13 @@ SWING_OF_NOISE = 12.0
 ROUNDING = 2.0**-46
 MOST_OF_STOCK = 0.5  # of what a receiver holds, what may leave it in one step
 NOISE_READINGS = 30  # that the noise is averaged over; nothing is taken for a swing before
+# No compressor takes longer over the pressure switch's whole span: what rises more slowly is a
+# tank that warms, 0.2 bar on a morning after a cold night. An estimate.
+LONGEST_PUMP_UP_US = 2 * 3_600_000_000
 
 
-Watched = tuple[bool, float, int, tuple[float, float], float, int]  # a `PumpWatch`'s fields
+# A `PumpWatch`'s fields
+Watched = tuple[bool, float, int, tuple[float, float], float, int, float, int]
 
 
 @dataclass(frozen=True, slots=True)
@@ -46,6 +50,8 @@ class PumpWatch:
     before_pa: tuple[float, float] = (math.nan, math.nan)  # the two readings before
     noise_pa2: float = 0.0  # variance of one reading, from second differences
     readings: int = 0
+    anchor_pa: float = math.nan  # while pumping: from where on the rise is judged
+    anchor_us: int = -1
 
     def told(self, pressure_pa: float, time_us: int, span_pa: float) -> tuple[PumpWatch, int, int]:
         """After a reading: the watch, and the span (from_us, to_us] in which it now knows that
@@ -61,6 +67,8 @@ def told_all(
     compressor ran; the reading's own time where it does not."""
     pumping, extreme_pa, extreme_us = watch.pumping, watch.extreme_pa, watch.extreme_us
     (older_pa, last_pa), noise_pa2, readings = watch.before_pa, watch.noise_pa2, watch.readings
+    anchor_pa, anchor_us = watch.anchor_pa, watch.anchor_us
+    slowest = span_pa / LONGEST_PUMP_UP_US  # Pa per microsecond
     found: list[Watched] = []
     since_us: list[int] = []
     for now_pa, now_us in zip(pressures_pa, times_us, strict=True):
@@ -77,15 +85,25 @@ def told_all(
             extreme_pa, extreme_us = now_pa, now_us
         elif pumping:
             if now_pa > extreme_pa:
-                runs_since_us, extreme_pa, extreme_us = extreme_us, now_pa, now_us
+                rise_pa = now_pa - anchor_pa
+                # else it stopped long ago, and its tank warms
+                pumping = not rise_pa + swing_pa < slowest * (now_us - anchor_us)
+                runs_since_us = extreme_us if pumping else now_us
+                if rise_pa > swing_pa:
+                    anchor_pa, anchor_us = now_pa, now_us
+                extreme_pa, extreme_us = now_pa, now_us
             elif now_pa < extreme_pa - swing_pa:
                 pumping, extreme_pa, extreme_us = False, now_pa, now_us
         elif now_pa <= extreme_pa:
             extreme_pa, extreme_us = now_pa, now_us
         elif now_pa > extreme_pa + swing_pa:
-            runs_since_us, pumping, extreme_pa, extreme_us = extreme_us, True, now_pa, now_us
+            pumping = now_pa - extreme_pa >= slowest * (now_us - extreme_us)
+            runs_since_us = extreme_us if pumping else now_us
+            anchor_pa, anchor_us = extreme_pa, extreme_us
+            extreme_pa, extreme_us = now_pa, now_us
         before_pa = (older_pa, last_pa)
-        found.append((pumping, extreme_pa, extreme_us, before_pa, noise_pa2, readings))
+        judged = anchor_pa, anchor_us
+        found.append((pumping, extreme_pa, extreme_us, before_pa, noise_pa2, readings, *judged))
         since_us.append(runs_since_us)
     return found, since_us
 

@@ -207,8 +207,20 @@ def _kept_honest(moved: Array, prior_sd: float, stir: Array) -> Array:
     wanted = max(sd + GIVEN_BACK * max(prior_sd - sd, 0.0), LEAST_SD)
     if sd > 0.0:
         moved = middle + (moved - middle) * (wanted / sd)
-    honest = KEEPS * moved + math.sqrt(1.0 - KEEPS * KEEPS) * stir
-    return np.clip(honest, -FARTHEST, FARTHEST)
+    return within_reach(KEEPS * moved + math.sqrt(1.0 - KEEPS * KEEPS) * stir)
+
+
+def within_reach(belief: Array) -> Array:
+    """A belief no farther from its prior's middle than any is taken, and still with a spread."""
+    kept: Array = np.clip(belief, -FARTHEST, FARTHEST)
+    sd = float(belief.std(ddof=1))
+    if kept.std(ddof=1) >= LEAST_SD or sd <= 0.0:
+        return kept
+    # the bound took the spread away, and all members at the bound would be certainty
+    place = (belief - belief.mean()) * (LEAST_SD / sd)
+    middle = math.copysign(FARTHEST - 3.0 * LEAST_SD, float(belief.mean()))
+    spread: Array = np.clip(middle + place, -FARTHEST, FARTHEST)
+    return spread
 
 
 def update_contents(contents_kg: Array, update: Update, k_kg: float, most_kg: Array) -> Array:

@@ -17,14 +17,15 @@ import numpy as np
 
 from daemon.moisture import air
 from daemon.moisture.beliefs import room_of, slab_of
-from daemon.moisture.description import Measured, Station
+from daemon.moisture.description import Like, Measured, RiseByDuty, Station
 from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array
 from daemon.moisture.model import State
 from daemon.moisture.plan import Plan
 
 # Hoses on a slab run 5-8 K colder than booth air on a Monday: 4 K +- 4 K. Common practice.
 SLAB_K, SLAB_GIVE_OR_TAKE_K = -4.0, 4.0
-# Air around a hose that nobody measures, against the station that it hangs on; an estimate.
+# Air around a hose that nobody measures, against the station that it hangs on, or against the
+# intake where that station is as warm as a tank or as cold as a bath; an estimate.
 ROOM_GIVE_OR_TAKE_K = 4.0
 HOSE, SLAB = "hose", "slab"
 
@@ -108,6 +109,15 @@ def outlet_ratio(state: State, along: Way) -> Array:
     return ratio
 
 
+def as_a_tank(plan: Plan, row: int) -> bool:
+    """Whether a station's temperature is a tank's or a cooler's, and tells little of the room."""
+    station = plan.stations[row]
+    source = station.temperature
+    if station.kind in ("receiver", "cooler"):
+        return True
+    return isinstance(source, Like | RiseByDuty) and as_a_tank(plan, plan.index[source.station])
+
+
 def places(plan: Plan, state: State, along: Way) -> Places:
     """Temperatures and pressures of all that the air touches."""
     described = plan.line.outlets[along.outlet]
@@ -117,7 +127,9 @@ def places(plan: Plan, state: State, along: Way) -> Places:
         room = believed(state, described.air_temperature)
     else:
         sd = ROOM_GIVE_OR_TAKE_K * HALF_WIDTH_TO_SD
-        room = temperature[along.station] + sd * state.beliefs[room_of(described.id)]
+        # a tank's warmth and a bath's cold stay there: the hose lies in a room
+        near = 0 if as_a_tank(plan, along.station) else along.station
+        room = temperature[near] + sd * state.beliefs[room_of(described.id)]
     if described.slab is not None:
         slab = believed(state, described.slab)
     else:

@@ -19,6 +19,7 @@ from daemon.moisture.beliefs import Beliefs, bias_of
 from daemon.moisture.description import Measured, Source, VentedCell
 from daemon.moisture.dew_sensors import (
     DRIEST,
+    behind_dryer,
     bias_and_width,
     channels_of,
     contradicts,
@@ -28,7 +29,6 @@ from daemon.moisture.dew_sensors import (
 )
 from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, standard_normal
 from daemon.moisture.learning import (
-    FARTHEST,
     GIVEN_BACK,
     LEAST_K_KG,
     LEAST_SD,
@@ -37,6 +37,7 @@ from daemon.moisture.learning import (
     WIDENED_TO_SIGMAS,
     Update,
     update_contents,
+    within_reach,
 )
 from daemon.moisture.model import Model, State
 from daemon.moisture.plan import Plan
@@ -170,7 +171,9 @@ def _learn_hour(
     factor = 1.0
     if abs(off) > SUSPECT_SIGMAS * math.sqrt(variance + hour.sd**2):
         sign = 1 if off > 0.0 else -1
-        if surprise != sign or variance <= 0.0:
+        # a dryer that does not dry is likelier than all before it being other than believed
+        broken = sign > 0 and behind_dryer(model.plan, station)
+        if surprise != sign or variance <= 0.0 or broken:
             return state, sign
         needed = (off / WIDENED_TO_SIGMAS) ** 2 - hour.sd**2
         factor = min(max(math.sqrt(max(needed, 0.0) / variance), 1.0), MOST_WIDENED)
@@ -212,8 +215,7 @@ def _updated(before: Array, update: Update, factor: float) -> Array:
         return before
     wanted = max(sd + GIVEN_BACK * max(prior_sd - sd, 0.0), LEAST_SD)
     middle = float(moved.mean())
-    kept: Array = np.clip(middle + (moved - middle) * (wanted / sd), -FARTHEST, FARTHEST)
-    return kept
+    return within_reach(middle + (moved - middle) * (wanted / sd))
 
 
 def local_names(plan: Plan, station: int) -> list[str]:

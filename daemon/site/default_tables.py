@@ -6,7 +6,7 @@ from collections.abc import Iterator, Mapping, Sequence
 
 import sensors.drivers  # noqa: F401  # fills DRIVERS
 from daemon.moisture.description import Fixed, Share
-from daemon.moisture.margin import SLAB_GIVE_OR_TAKE_K, SLAB_K
+from daemon.moisture.margin import ROOM_GIVE_OR_TAKE_K, SLAB_GIVE_OR_TAKE_K, SLAB_K
 from daemon.site import defaults
 from daemon.site.defaults import KindDefault, UsualTemperature
 from daemon.site.fitting_words import default_rows
@@ -60,6 +60,9 @@ def _outlet_rows() -> Iterator[Row]:
         names = ", ".join(name for name in works if name != "``")
         because = f"for {names}" + (", and where no `work` is said" if "``" in works else "")
         yield "", "`line_margin`", show_difference(margin_k, "metric"), because
+    around = show_difference(ROOM_GIVE_OR_TAKE_K, "metric")
+    room = f"as at its station, behind a tank or a cooler as at the intake, +- {around}"
+    yield "", "`surroundings`", room, "the air around a hose; no surface margin without it"
     below, width = (show_difference(each, "metric") for each in (-SLAB_K, SLAB_GIVE_OR_TAKE_K))
     yield "", "`slab`", f"{below} colder than the air around +- {width}", "practice"
 

@@ -102,6 +102,32 @@ def test_a_floor_that_nobody_measures_is_taken_for_colder_and_less_certain() -> 
     assert other.p95 - other.p05 > 1.8 * (one.p95 - one.p05)
 
 
+def test_a_hose_behind_a_warm_tank_lies_in_the_room_and_not_in_the_tank() -> None:
+    """A tank of 45 degC at 7 bar gauge sheds nothing of 20 degC, 50 % (7.29 g/kg by psychrolib),
+    whose dew point at 3 bar absolute is 26.5 degC by CoolProp: a floor 4 K below 20 degC drips."""
+    text, gauge = site_text('surface = "panel.temperature"\n'), 'pressure = "tank-gauge.pressure"\n'
+    hot = 'temperature = { like = "intake", plus = "25 K", give_or_take = "1 K" }\n'
+    text = text.replace(gauge, hot + gauge)
+    as_hot = 'temperature = { like = "tank", plus = "0 K", give_or_take = "1 K" }\n'
+    text = text.replace('temperature = "pipe-end.temperature"\n', as_hot)
+    view = gun_of(site(text), intake_air_relative_humidity=0.5)
+    dew_point, margin = known(view.air.pressure_dew_point_k), known(view.air.line_margin_k)
+    assert dew_point.p05 < 273.15 + 26.5 < dew_point.p95
+    assert margin.p50 == pytest.approx(16.0 - 26.5, abs=1.5)
+    assert view.verdict == "wait"
+
+
+def test_a_hose_behind_an_ice_bath_lies_in_the_room_and_not_in_the_bath() -> None:
+    bath = '[[station]]\nid = "bath"\nkind = "cooler"\nafter = "bowl"\nice = "20 kg"\n'
+    separator = 'trap = { capacity = "2 L", separation = 0.999 }\n\n'
+    text = site_text("", "").replace('after = "booth-regulator"', 'after = "bath"')
+    regulator = '[[station]]\nid = "booth-regulator"'
+    view = gun_of(site(text.replace(regulator, bath + separator + regulator)))
+    # air saturated at 3 degC, in a hose on a floor 4 K below the intake's 20 degC
+    assert known(view.air.pressure_dew_point_k).p50 == pytest.approx(273.15 + 3.0, abs=0.3)
+    assert known(view.air.line_margin_k).p50 == pytest.approx(16.0 - 3.0, abs=1.5)
+
+
 def test_a_flooded_trap_lets_water_through_and_means_wait() -> None:
     """A bowl that runs over: everything that comes to it is carried on."""
     shop = a_shop()
@@ -225,6 +251,40 @@ def test_a_dew_point_that_cannot_be_gives_a_reason_rather_than_a_number(tmp_path
     last = (tmp_path / "outlets.csv").read_text().splitlines()[-1].split(",")
     assert last[2:8] == [""] * 6
     assert last[-1] == "unknown"
+
+
+@pytest.mark.parametrize(("says_k", "verdict"), [(277.15, "dry enough"), (290.15, "unknown")])
+def test_a_dryer_that_does_not_dry_by_its_transmitter_is_never_dry_enough(
+    says_k: float, verdict: str
+) -> None:
+    """Set to 3 degC: 4 degC is within what any of them does, 17 degC is a dryer that has failed."""
+    dryer = (
+        '[[station]]\nid = "dryer"\nkind = "refrigerated"\nafter = "bowl"\n'
+        'trap = { capacity = "1 L", separation = 0.999 }\n'
+        'temperature = "20 degC"\nmeasured_dew_point = "probe.dew_point"\n'
+        'rated_flow = "900 L/min"\n\n'
+    )
+    probe = (
+        '[[sensor]]\nid = "probe"\ndriver = "dew-point-loop"\ninput = 1\n'
+        'range = "-60 to 60 degC"\n\n'
+    )
+    regulator, intake = '[[station]]\nid = "booth-regulator"', '[[station]]\nid = "intake"\n'
+    text = site_text().replace(regulator, dryer + regulator).replace(intake, probe + intake, 1)
+    shop = site(text.replace('after = "bowl"\nset', 'after = "dryer"\nset'))
+    core, readings = Core(shop), []
+    for told in still(shop, 2.2):
+        readings.append(told)
+        if told.channel == "motor.contact":
+            readings.append(reading(shop.channels["probe.dew_point"], says_k, told.time_us))
+    result = run(core, readings)
+    view = gun(core, result)
+    assert view.verdict == verdict
+    if verdict == "unknown":
+        assert view.air.pressure_dew_point_k is None
+        assert "dryer: a dew point of at least 14.5 degC" in view.air.judgement.reasons[0]
+        assert "does the dryer before it dry?" in view.air.judgement.reasons[0]
+        # and what stands before the dryer is not blamed for it
+        assert float(np.abs(result.state.model.ledger.corrected).max()) == 0.0
 
 
 def test_a_dead_sensor_costs_the_dew_point_only_certainty() -> None:

@@ -193,6 +193,27 @@ def test_turns_of_the_switch_tell_what_the_compressor_delivers(
         assert "The compressor delivers 7" in raised(result, OVERWORKED)[0].text
 
 
+def test_a_second_tank_without_a_gauge_of_its_own_holds_air_as_well() -> None:
+    riser = '[[station]]\nid = "riser"\nkind = "pipe"\nafter = "tank"\n'
+    second = '[[station]]\nid = "second"\nkind = "receiver"\nafter = "tank"\nvolume = "60 L"\n\n'
+    left_on = ('cut_out = "8 bar"', 'cut_out = "8 bar"\noff_when_closed = false')
+    joined = shop(
+        left_on,
+        ('volume = "100 L"', 'volume = "40 L"'),
+        (riser, second + riser.replace('"tank"', '"second"')),
+        period_s=20,
+    )
+    view, result = night(Plant(joined, leak_l_min=10.0, on_when_closed=True))
+    leak, delivered = (
+        litres_a_minute(each) for each in (view.leak_m3_per_s, view.delivered_m3_per_s)
+    )
+    assert leak.p05 < 10.0 < leak.p95
+    # litres at the intake's air, which is some 291 K at night, as reference litres
+    true = 150.0 * BAROMETER_PA / (GAS * 291.0) / REFERENCE_KG_PER_M3
+    assert delivered.p05 < true < delivered.p95
+    assert not raised(result, OVERWORKED)
+
+
 def test_a_gauge_alone_tells_the_same() -> None:
     gauge_only = shop(
         ('running = "motor.contact"\n', 'running = "none"\noff_when_closed = false\n'),

@@ -112,6 +112,26 @@ def test_a_flooded_trap_does_not_wait_for_the_gun() -> None:
     assert told(found) == [("break", f"{MONDAY}12:00")]
 
 
+@pytest.mark.parametrize("every_us", [10 * SECOND_US, HOUR_US])
+def test_a_gun_that_draws_all_morning_leaves_the_break_its_turn(every_us: int) -> None:
+    def morning(now_us: int) -> float:
+        return 0.003 if now_us <= at(f"{MONDAY}12:00:00") else 0.0
+
+    from_us, until_us = at(f"{MONDAY}07:00:00"), at(f"{MONDAY}16:00:00")
+    found = day(SHOP, from_us, until_us, morning, every_us=every_us)
+    assert [each.turn for each in found] == ["break"]
+
+
+def test_after_days_without_a_tick_it_goes_on_with_the_turn_that_is_on() -> None:
+    state = reminders.begun(SHOP, at(f"{MONDAY}07:00:00"))
+    back = at("2026-03-10T08:30:00")
+    for now_us in range(back, back + 5 * MINUTE_US, 10 * SECOND_US):
+        state, reminder = reminders.tick(SHOP, state, Scene(now_us, 0.0, False), LEAK, whole_round)
+        if reminder is not None:
+            break
+    assert told([reminder] if reminder else []) == [("shift start", "2026-03-10T08:31")]
+
+
 def test_a_gun_that_never_rests_leaves_it_at_the_alarms() -> None:
     found = day(SHOP, at(f"{MONDAY}10:00:00"), at(f"{MONDAY}23:00:00"), lambda now_us: 0.003)
     assert found == []

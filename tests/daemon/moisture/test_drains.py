@@ -194,6 +194,18 @@ def test_a_tank_without_pressure_for_an_hour_is_taken_to_be_empty_by_most() -> N
     later.ledger.check(later.water)
 
 
+def test_a_tank_whose_air_leaks_away_keeps_its_water() -> None:
+    """A leak loses its last bar in hours, not in minutes; so does a tank that nobody heard fall."""
+    _, leaking = still(0.8e5, 30, still(5e5, 30)[1])
+    _, later = still(500.0, 300, leaking)
+    assert later.water.trap[1].min() > 0.4
+    assert later.ledger.passed.max() == 0.0
+    _, again = still(500.0, 120, still(5e5, 30, later)[1])  # pumped up, and let down in one go
+    assert np.count_nonzero(again.water.trap[1] <= 0.0021) == pytest.approx(0.8 * 128, abs=1)
+    _, from_the_start = still(500.0, 300)
+    assert from_the_start.water.trap[1].min() > 0.4
+
+
 def test_a_tank_under_pressure_keeps_its_water() -> None:
     _, state = still(0.3e5, 300)
     assert state.water.trap[1].min() > 0.4

@@ -74,6 +74,20 @@ def test_a_float_that_closes_late_teaches_nothing() -> None:
     assert np.array_equal(held(closed), held(open_all_along))
 
 
+def test_a_float_that_flutters_says_no_more_than_once() -> None:
+    """Where it closes is off by the same each time: forty closings are one witness."""
+    shop = floated()
+    once = run(shop, 721, {0: 0.0, 600: 1.0})
+    edges = {0: 0.0} | {number: float(number % 2 == 0) for number in range(600, 681)}
+    many = run(shop, 721, edges)
+    assert percentiles(held(many)) == pytest.approx(percentiles(held(once)), rel=0.02)
+    names = [name for name in once.state.model.beliefs if name.startswith("separation")]
+    for name in names:
+        first, last = (each.state.model.beliefs[name] for each in (once, many))
+        assert last.mean() == pytest.approx(first.mean(), abs=0.1)
+        assert last.std() == pytest.approx(first.std(), rel=0.05)
+
+
 def test_a_closing_that_nobody_can_believe_is_learned_from_the_second_time() -> None:
     shop = floated(level="5 L")
     never = run(shop, 400, {0: 0.0})

@@ -95,8 +95,8 @@ def test_no_belief_ever_falls_below_the_floor_or_leaves_its_range() -> None:
         update, _ = prepare(seen, 1, "tank", number, False)
         figure = update_beliefs({"f": figure}, ["f"], update, 1.0, 1, number)["f"]
         assert figure.max() <= learning.FARTHEST
-        if figure.max() < learning.FARTHEST:
-            assert figure.std(ddof=1) >= 0.95 * learning.LEAST_SD
+        assert figure.std(ddof=1) >= 0.95 * learning.LEAST_SD
+    assert figure.max() > 0.95 * learning.FARTHEST
 
 
 def test_what_was_learned_is_slowly_forgotten_where_nothing_confirms_it() -> None:

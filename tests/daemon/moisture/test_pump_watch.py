@@ -126,6 +126,40 @@ def test_a_compressor_that_runs_unloaded_makes_no_air() -> None:
     assert booked(still) == booked(falling) == []
 
 
+@pytest.mark.parametrize("noise_pa", [0.0, 400.0, 2000.0])
+@pytest.mark.parametrize("begins", ["cut out", "resting"])
+def test_a_tight_tank_that_warms_and_cools_makes_no_air(noise_pa: float, begins: str) -> None:
+    """A weekend of 20 degC +- 8 K: pressure follows the temperature at constant mass (Gay-Lussac),
+    0.25 bar up and down each day. After the last pump-up, noise may hide for a while that it is
+    one no more: a swing of at least 0.1 bar, twelve times the noise, at a bar an hour."""
+    generator = np.random.default_rng(3)
+    told = []
+    pump_up = cycling(70.0, 1.0, 10.0, noise_pa) if begins == "cut out" else Tank()
+    if begins == "cut out":
+        _, stopped_us = pump_up.ran[-1]
+        told = [each for each in pump_up.told if each[0] <= stopped_us]
+    from_us = told[-1][0] if told else 0
+    for number in range(1, 60 * 360):
+        warmer = 8.0 * np.sin(number / 360.0 / 24.0 * 2.0 * np.pi) / 293.15
+        pressure = 9.0e5 * (1.0 + warmer) - 1.0e5 + generator.normal(0.0, 1.0) * noise_pa
+        told.append((from_us + number * 10 * SECOND_US, pressure))
+    hidden_us = round((2.0 * max(0.1e5, 12.0 * noise_pa) + 4.0 * noise_pa) / 1e5 * HOUR_US)
+    assert overlap(booked(told), from_us) <= (hidden_us if begins == "cut out" else 0)
+
+
+def test_a_pump_up_on_a_tank_that_has_been_warming_is_found() -> None:
+    generator = np.random.default_rng(4)
+    warming = [
+        (n * 10 * SECOND_US, 6.2e5 + 1.5 * n + generator.normal(0.0, 200.0)) for n in range(720)
+    ]
+    tank = cycling(70.0, 2.0, 10.0, 200.0)
+    from_us = warming[-1][0] + 10 * SECOND_US
+    told = warming + [(at_us + from_us, pressure) for at_us, pressure in tank.told]
+    until_us = from_us + tank.ran[-1][1]
+    found = overlap(booked([each for each in told if each[0] <= until_us]), from_us)
+    assert found == pytest.approx(overlap(tank.ran, 0), rel=0.04)
+
+
 def test_a_rise_after_a_long_silence_is_booked_as_far_as_readings_tell() -> None:
     told = cycling(70.0, 1.0, 10.0, 0.0).told
     silent_us = told[-1][0] + HOUR_US
