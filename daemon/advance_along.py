@@ -184,7 +184,9 @@ class _Watch:
         self.samples = list(changes(before_us, samples))
         self.end = found.state(count - 1)
         looks = Looks(core, self.state, found, count)
-        rows = looks.rows().union(fitting_rows(core, found, count, alone_before=first_row == 0))
+        rows = {*looks.rows(), *fitting_rows(core, found, count)}
+        if first_row == 0:  # full hours and entries change what alarms look at after they looked
+            rows.add(0)
         self.looks, self.margins = sorted(rows), looks.margins()
 
     def run(self) -> None:

@@ -15,14 +15,8 @@ from daemon.moisture.description import Refrigerated
 from daemon.moisture.ensemble import Array
 
 
-def fitting_rows(core: Core, found: Stretch, ticks: int, alone_before: bool) -> Iterator[int]:
-    """The ticks in which a condition may change. After one that was taken alone the first is
-    looked at: what a service changed was not, and an alarm that is not suppressed any more begins
-    to hold."""
-    if not core.model.fittings.present and not dew_sensors.stations(core.model.plan):
-        return
-    if alone_before:
-        yield 0
+def fitting_rows(core: Core, found: Stretch, ticks: int) -> Iterator[int]:
+    """The ticks in which a condition may change."""
     yield from _overloaded(core, found, ticks)
     yield from _spent(core, found, ticks)
     yield from _cold_rooms(core, found, ticks)

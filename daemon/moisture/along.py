@@ -160,7 +160,7 @@ def stretch(model: Model, state: State, course: Course, switches: Switches) -> S
     """Several ticks after a state; None where they must be taken one by one."""
     plan, parameters = model.plan, state.parameters
     dt_s = model.period_us / 1e6
-    known = along_air.duties_known(state.duty_known, course, dt_s)
+    known = along_air.duties_known(model, state.duty_known, course, dt_s)
     on_s = along_air.on_time(model, state, course, known)
     duty = along_air.duties(model, state, on_s, dt_s)
     found = conditions(model, state, course, duty)

@@ -60,12 +60,15 @@ def running_maximum(start: Array, values: Array) -> Array:
 # ---- how long the compressor ran ----
 
 
-def duties_known(known: float, course: Course, dt_s: float) -> list[float]:
+def duties_known(model: Model, known: float, course: Course, dt_s: float) -> list[float]:
     """`State.duty_known` before the first tick and after each."""
     weight = -math.expm1(-dt_s / DUTY_MEMORY_S)
     found = [known]
-    for on_us, unknown_us in zip(course.on_us.tolist(), course.unknown_us.tolist(), strict=True):
-        if unknown_us == 0:
+    ticks = zip(
+        course.on_us.tolist(), course.unknown_us.tolist(), course.is_open.tolist(), strict=True
+    )
+    for on_us, unknown_us, is_open in ticks:
+        if unknown_us == 0 and model.may_run(is_open):
             known += (on_us / 1e6 / dt_s - known) * weight
         found.append(known)
     return found

@@ -196,7 +196,7 @@ class Model:
         contact, times = self._contact(state.contact, heard, state.time_us, to_us)
         pump, booked_us = self._watch(state, heard)
         on_s = self._on_time(state, held, to_us, times, booked_us, heard.is_open)
-        duty, duty_known = self._follow(state, on_s, times, dt_s)
+        duty, duty_known = self._follow(state, on_s, times, dt_s, heard.is_open)
         evaluation = Evaluation(plan, held, offsets, duty, to_us, dict(state.lapses))
         fitted = self.fittings.drying.switched(state.fittings, heard.channels, heard.is_open, to_us)
         now = self.fittings.warmed(fitted, state.parameters.fittings, evaluation.conditions())
@@ -437,16 +437,21 @@ class Model:
             gauge = held.get(self.gauge[0])
             if gauge is not None and not gauge.stale(to_us, self.period_us):
                 return known + booked_us / 1e6
-        if not is_open and self.plan.line.compressor.off_when_closed:
+        if not self.may_run(is_open):
             return known
         middle = min(max(state.duty_known, 0.02), 0.98)
         logit = math.log(middle / (1.0 - middle)) + DUTY_LOGIT_SD * state.parameters.duty
         return known + times.unknown_us / 1e6 / (1.0 + np.exp(-logit))
 
+    def may_run(self, is_open: bool) -> bool:
+        """Whether the compressor is not switched off for the night."""
+        return is_open or not self.plan.line.compressor.off_when_closed
+
     def _follow(
-        self, state: State, on_s: Array, times: ContactTime, dt_s: float
+        self, state: State, on_s: Array, times: ContactTime, dt_s: float, is_open: bool
     ) -> tuple[Array, float]:
-        """The filtered duty behind every temperature that follows it, and the duty remembered."""
+        """The filtered duty behind every temperature that follows it, and the duty remembered:
+        of the hours in which it may run at all."""
         if dt_s <= 0.0:
             return state.duty, state.duty_known
         now = np.minimum(on_s / dt_s, 1.0)
@@ -454,7 +459,7 @@ class Model:
         for i, constant_s in self.lagging:
             duty[i] += (now - duty[i]) * -math.expm1(-dt_s / constant_s)
         known = state.duty_known
-        if times.unknown_us == 0:
+        if times.unknown_us == 0 and self.may_run(is_open):
             known += (times.on_us / 1e6 / dt_s - known) * -math.expm1(-dt_s / DUTY_MEMORY_S)
         return duty, known
 

@@ -161,6 +161,19 @@ def test_measured_drains_are_learned_from_alike() -> None:
     assert {each.flagged for each in found.learned} == {False, True}
 
 
+def test_a_compressor_that_never_rests_is_overworked_at_the_same_time() -> None:
+    """What a full hour changes, alarms see in the tick after it."""
+    shop = a_shop("always open")
+    record = a_record(shop, Weather(BEGUN_US, 7.2), 8)
+    motor = record.channels["motor.contact"]
+    runs = (motor.times_us < BEGUN_US + 5 * HOUR_US).astype(np.float64)
+    record = Record({**record.channels, "motor.contact": replace(motor, values=runs)})
+    found = compare(shop, record)
+    told = [each for each in found.transitions if each.alarm == "compressor-overworked"]
+    hours = [(each.at_us - shop.sample_every_us - BEGUN_US) / HOUR_US for each in told]
+    assert hours == [4.0, 7.0]
+
+
 def test_nothing_to_replay_is_refused() -> None:
     with pytest.raises(ReplayError, match="no readings"):
         replay_in_blocks(Core(a_shop("a timer"), hourly=False), Record({}), [])
