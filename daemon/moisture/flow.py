@@ -23,9 +23,6 @@ from daemon.moisture.plan import Plan
 # than ten of its standard deviations in a million readings.
 SWING_OF_SPAN = 0.05
 SWING_OF_NOISE = 12.0
-# But no more than this of the span: readings so far apart that the pressure turns between nearly
-# any two of them are no noise, and what waited for a swing was booked hours later, all at once.
-MOST_SWING_OF_SPAN = 0.4
 # What goes beyond all before it by no more than this, of all air drawn in and stored, is rounding:
 # readings that are the same again would else move air in some members, and none in others.
 ROUNDING = 2.0**-46
@@ -83,7 +80,6 @@ def told_all(
         swing_pa = math.inf
         if readings >= NOISE_READINGS:
             swing_pa = max(SWING_OF_SPAN * span_pa, SWING_OF_NOISE * math.sqrt(noise_pa2))
-            swing_pa = min(swing_pa, MOST_SWING_OF_SPAN * span_pa)
         runs_since_us = now_us
         if extreme_us < 0:
             extreme_pa, extreme_us = now_pa, now_us

@@ -107,20 +107,6 @@ def test_every_pump_up_is_found_and_right_to_a_reading_at_each_end(
         assert abs(until - ended) <= period_s * SECOND_US
 
 
-@pytest.mark.parametrize("turns_every", [1, 2, 3])
-def test_a_pressure_that_turns_between_readings_is_no_noise(turns_every: int) -> None:
-    """A small tank read once a minute: up and down between the switch's settings, by the minute.
-    Half of the time it runs, and what is booked lies a turn in the past at most."""
-    there_and_back = [*range(turns_every), *range(turns_every, 0, -1)]
-    told = [
-        (n * 60 * SECOND_US, 6.2e5 + 1.6e5 * there_and_back[n % len(there_and_back)] / turns_every)
-        for n in range(600)
-    ]
-    spans = [span for span in booked(told) if span[0] > HOUR_US]
-    assert overlap(spans, HOUR_US) / (9 * HOUR_US) == pytest.approx(0.5, abs=0.02)
-    assert max(until - start for start, until in spans) <= turns_every * 60 * SECOND_US
-
-
 def test_spans_do_not_overlap_and_lie_in_the_past() -> None:
     told = cycling(70.0, 2.0, 10.0, 500.0).told
     spans = booked(told)
