@@ -43,8 +43,8 @@ def test_an_address_with_odd_characters_keeps_its_form(client: Client) -> None:
 @pytest.mark.parametrize(
     ("method", "path", "allowed"),
     [
-        ("DELETE", "/api/v1/traps/tank/drains", "GET, POST"),
-        ("PUT", "/api/v1/traps", "GET"),
+        ("DELETE", "/api/v1/traps/tank/drains", "GET, HEAD, POST"),
+        ("PUT", "/api/v1/traps", "GET, HEAD"),
         ("GET", "/api/v1/alarms/tank-drain-due/acknowledge", "POST"),
     ],
 )
