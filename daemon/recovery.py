@@ -10,6 +10,7 @@ from daemon.advance import Core, Estimate
 from daemon.alarms import Transition
 from daemon.checkpoint import decode, encode
 from daemon.clock import format_rfc3339
+from daemon.counted import COUNTED_KEY
 from daemon.errors import StoreError
 from daemon.going_back import TOO_OLD_US, Back, GoingBack
 from daemon.journal import Entry
@@ -117,10 +118,12 @@ class Recovery:
 
         After a change of the site file traps of the same name keep what they hold, and what was
         learned of untouched parts stays. What was recorded while the daemon stood still is taken
-        in.
+        in. Where nothing of a record's state can be read, that is kept (see `counted`).
         """
         found = next(self._readable(now_us), None)
         if found is None:
+            if self._store.last_tick_us is not None:
+                self._store.set_meta(COUNTED_KEY, str(now_us))
             return self._core.initial(now_us, Inputs(readings))
         old, before = found
         log.info("the line's description has changed: traps go on with what they held")

@@ -17,6 +17,7 @@ from daemon.advance import Core, Estimate
 from daemon.alarms import Alarm, AlarmRecord, Transition, correction
 from daemon.buttons import Buttons
 from daemon.clock import HOUR_US, MINUTE_US, Clock, format_rfc3339
+from daemon.counted import COUNTED_KEY, marked, notice_of
 from daemon.dew_points import dew_point_views
 from daemon.errors import JournalError, StoreError, UndoError
 from daemon.foresight import Score
@@ -109,6 +110,7 @@ class Shell:
         self._state: CoreState | None = None
         self._grid_us = 0
         self._shown: tuple[TrapView, ...] = ()
+        self._counted_from_us: int | None = None  # nothing could be read of what was before
         self._estimate: Estimate | None = None  # what was shown last, for whoever asks more
         self._outlets_told_us = -1
         self._pending: list[Entry] = []  # committed, not yet taken in
@@ -134,6 +136,7 @@ class Shell:
         grid = self._store.get_meta(GRID_KEY)
         if grid is None:
             return
+        self._look_up_counted()
         self._grid_us = int(grid)
         back = self._recovery.come_back(self._grid_us, self._ticked_us)
         if back is None:
@@ -143,7 +146,17 @@ class Shell:
             self._announced = self._as_announced(back.state)
         with self._lock:
             self._show(Estimate(self.core, back.state))
+            self._tell_counted()
         log.info("came back to %s", format_rfc3339(back.state.time_us))
+
+    def _look_up_counted(self) -> None:
+        """Since when contents are counted, where that is not since the record began."""
+        found = self._store.get_meta(COUNTED_KEY)
+        self._counted_from_us = None if found is None else int(found)
+
+    def _tell_counted(self) -> None:
+        if told := notice_of(self._site, self._shown):
+            log.warning("%s", told)
 
     def run(self, stop: threading.Event) -> None:
         """Tick until told to stop; then leave a checkpoint.
@@ -311,6 +324,7 @@ class Shell:
         at_now = [each for each in readings if each.time_us == now_us]
         self._going = None
         state, first, transitions = self._recovery.begin(now_us, at_now)
+        self._look_up_counted()
         # what was recorded before the first tick: nothing of that time is known, so it counts now
         entries = [entry for entry in self._pending if entry.at_us <= now_us]
         state, estimate, changed = self.core.take(state, entries)
@@ -325,6 +339,7 @@ class Shell:
             noted=[first.noted, estimate.noted],
         )
         self._show(estimate)
+        self._tell_counted()
 
     def _commit(
         self,
@@ -376,7 +391,7 @@ class Shell:
         ]
 
     def _show(self, estimate: Estimate) -> None:
-        self._shown, self._estimate = estimate.traps, estimate
+        self._shown, self._estimate = marked(estimate.traps, self._counted_from_us), estimate
         if self.link is None or self._topics is None:
             return
         messages = [trap_message(self._topics, view) for view in self._shown]
@@ -598,7 +613,7 @@ class Shell:
             return ""
         estimate = self._with_pending(state, now_us)
         assert estimate is not None  # the entry itself is pending
-        self._shown, self._estimate = estimate.traps, estimate
+        self._shown, self._estimate = marked(estimate.traps, self._counted_from_us), estimate
         self._outlets_told_us = -1  # what was told of them may have changed
         trap = entry.body.trap if isinstance(entry.body, Drain) else ""
         learned = [
