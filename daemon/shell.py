@@ -139,10 +139,13 @@ class Shell:
             return
         self._look_up_counted()
         self._grid_us = int(grid)
-        back = self._recovery.come_back(self._grid_us, self._ticked_us)
+        started = self._recovery.start(self._grid_us, self._ticked_us)
+        back = started.back
         if back is None:
             return
         self._take_back(back)
+        self._pending += started.late
+        self._undone_us = started.undone_us
         if back.rewritten:
             self._announced = self._as_announced(back.state)
         with self._lock:
@@ -220,11 +223,14 @@ class Shell:
         return due_us
 
     def checkpoint(self) -> None:
-        """Keep the state as it is now."""
+        """Keep the state as it is now, if it knows of all that was recorded before it: a start
+        takes that for granted."""
         with self._lock:
-            if self._state is not None and self._knows_all:
-                blob = self._recovery.blob(self._state)
-                self._store.save_checkpoint(self._state.time_us, blob)
+            state = self._state
+            if state is None or not self._knows_all:
+                return
+            if not any(entry.at_us <= state.time_us for entry in self._pending):
+                self._store.save_checkpoint(state.time_us, self._recovery.blob(state))
 
     # ---- one tick ----
 

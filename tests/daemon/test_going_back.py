@@ -7,6 +7,7 @@ from pathlib import Path
 
 import pytest
 
+from daemon import recovery
 from daemon.clock import MINUTE_US
 from daemon.journal import Drain, Entry, Undo
 from tests.daemon.shops import BEGUN_US, PERIOD_US
@@ -140,6 +141,44 @@ def test_a_stop_on_the_way_back_for_an_undo_forgets_nothing(undone: Daemon, clea
     undone.start()
     undone.tick(*range(729, 760))
     assert bits(undone.state) == replayed(undone, 760, then)
+
+
+@pytest.mark.parametrize("stops", [1, 2])
+@pytest.mark.parametrize("clean", [True, False])
+def test_a_start_does_not_wait_for_what_it_was_long_on_the_way_to(
+    daemon: Daemon, monkeypatch: pytest.MonkeyPatch, clean: bool, stops: int
+) -> None:
+    monkeypatch.setattr(recovery, "LONGEST_AT_START_US", 10 * MINUTE_US)
+    entry = late(daemon)
+    daemon.tick(*range(700, 704))
+    daemon.clock.wall_us += 3
+    then = daemon.shell.record(Drain("riser", by="AM")).entry
+    daemon.tick(704, 705)
+    for _ in range(stops):
+        (daemon.stop if clean else daemon.kill)()
+        daemon.start()
+        assert bits(daemon.state) == replayed(daemon, 706, then)  # as it was before the stop
+    daemon.tick(706)
+    assert daemon.shell._going is not None
+    daemon.tick(*range(707, 740))
+    assert bits(daemon.state) == replayed(daemon, 740, entry, then)
+
+
+@pytest.mark.parametrize("clean", [True, False])
+def test_a_start_does_not_wait_for_an_undo_that_it_was_long_on_the_way_to(
+    undone: Daemon, monkeypatch: pytest.MonkeyPatch, clean: bool
+) -> None:
+    monkeypatch.setattr(recovery, "LONGEST_AT_START_US", 10 * MINUTE_US)
+    undone.tick(725, 726)
+    held = bits(undone.state)
+    for _ in range(2):
+        (undone.stop if clean else undone.kill)()
+        undone.start()
+        assert bits(undone.state) == held
+    undone.tick(727)
+    assert undone.shell._going is not None
+    undone.tick(*range(728, 760))
+    assert bits(undone.state) == replayed(undone, 760)
 
 
 def test_one_that_is_taken_back_on_the_way_never_was(daemon: Daemon) -> None:
