@@ -17,6 +17,7 @@ from starlette.routing import Match
 
 from api import examples
 from api.guard import Guard
+from api.heads import Heads
 from api.keys import Door
 from api.pages import assets, line, pair, round, spray, week
 from api.pages.problem_page import problem_page, wants_page
@@ -83,6 +84,7 @@ def create_app(running: Running) -> FastAPI:
     app.state.running = running
     app.state.door = Door(running)
     app.add_middleware(Guard, bound_to=running.site.api.host, door=app.state.door)
+    app.add_middleware(Heads)  # the last that is added is the outermost
     app.add_exception_handler(Problem, _answer_problem)
     app.add_exception_handler(RequestValidationError, _answer_invalid)
     app.add_exception_handler(HTTPException, _answer_status)
@@ -176,14 +178,15 @@ async def _answer_status(request: Request, error: Exception) -> Response:
 
 def _possible_methods(request: Request) -> list[str]:
     """What the address can do over all its routes; the router names the first route's only."""
-    return [
+    found = [
         method
-        for method in ("GET", "HEAD", "POST")
+        for method in ("GET", "POST")
         if any(
             route.matches({**request.scope, "method": method})[0] is Match.FULL
             for route in request.app.router.routes
         )
     ]
+    return ["GET", "HEAD", *found[1:]] if "GET" in found else found
 
 
 async def _answer_journal(request: Request, error: Exception) -> Response:

@@ -18,7 +18,7 @@ from starlette.routing import Match
 from starlette.types import ASGIApp, Message, Receive, Scope, Send
 
 from api.keys import READING, Door
-from api.pages.problem_page import problem_page, wants_page
+from api.pages.problem_page import failure_page, problem_page, wants_page
 from api.problems import Problem, problem_response
 from daemon.addresses import address_of, is_loopback
 from daemon.errors import StoreError
@@ -135,8 +135,7 @@ class Guard:
             log.exception("%s %r failed", scope["method"], scope["path"])
             if started:
                 raise
-            answer = problem_response(Problem("unexpected"), scope["path"])
-            await answer(scope, receive, send_with_headers)
+            await _failure(scope)(scope, receive, send_with_headers)
 
     async def _refusal(self, scope: Scope) -> Problem | None:
         method, path, headers = scope["method"], scope["path"], Headers(scope=scope)
@@ -159,6 +158,17 @@ def _takes(scope: Scope) -> bool:
     """Whether there is a route that reads such a request."""
     routes = scope["app"].router.routes if "app" in scope else ()
     return any(route.matches(scope)[0] is Match.FULL for route in routes)
+
+
+def _failure(scope: Scope) -> Response:
+    """What is answered after an error that nobody foresaw, which may lie in the pages too."""
+    problem = Problem("unexpected")
+    try:
+        if wants_page(request := Request(scope)):
+            return failure_page(request)
+    except Exception:
+        log.exception("the page that says so failed too")
+    return problem_response(problem, scope["path"])
 
 
 def _answer(scope: Scope, problem: Problem) -> Response:

@@ -66,6 +66,11 @@ class TrapOut(BaseModel):
         "works, and this is the chance, 0 to 1, that it is stuck",
         examples=[0.02],
     )
+    counted_from: Time | None = Field(
+        default=None,
+        description="only while the trap's contents are counted from then, because the state "
+        "before could not be read: it may hold more than is said, until it is drained once",
+    )
 
     @classmethod
     def of(cls, view: TrapView) -> TrapOut:

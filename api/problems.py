@@ -110,7 +110,8 @@ KINDS: dict[str, Kind] = {
     "unexpected": Kind(
         500,
         "Something went wrong inside dripleg",
-        "The daemon's log has the details; nothing was recorded by this request.",
+        "The daemon's log has the details. If you were recording something, look whether it "
+        "stands there before you send it again.",
     ),
     "log-unavailable": Kind(
         503,

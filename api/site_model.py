@@ -7,6 +7,7 @@ from typing import Annotated, Literal
 from pydantic import BaseModel, Field
 
 from api.quantities import si_unit
+from daemon.alarms import Priority
 from daemon.moisture.description import (
     ML_PER_KG,
     Compressor,
@@ -21,7 +22,15 @@ from daemon.moisture.description import (
 )
 from daemon.moisture.dew_sensors import channels_of
 from daemon.site.fitting_words import drain_words, station_words
-from daemon.site.types import DAY_NAMES, OutletSettings, Site, Units
+from daemon.site.types import (
+    DAY_NAMES,
+    OutletSettings,
+    Signal,
+    SignalKind,
+    SignalPattern,
+    Site,
+    Units,
+)
 from sensors.reading import Channel
 from sensors.registry import SensorConfig
 
@@ -308,6 +317,28 @@ def _clock(minutes: int) -> str:
     return f"{minutes // 60:02d}:{minutes % 60:02d}"
 
 
+class SignalOut(BaseModel):
+    """A lamp or buzzer that shows the alarms."""
+
+    kind: SignalKind
+    chip: str = Field(examples=["/dev/gpiochip0"])
+    line: int = Field(examples=[25])
+    active: Literal["high", "low"] = Field(description="the line's level that switches it on")
+    priorities: list[Priority] = Field(description="of the alarms that it shows")
+    pattern: SignalPattern
+
+    @classmethod
+    def of(cls, signal: Signal) -> SignalOut:
+        return cls(
+            kind=signal.kind,
+            chip=signal.chip,
+            line=signal.line,
+            active="high" if signal.active_high else "low",
+            priorities=list(signal.priorities),
+            pattern=signal.pattern,
+        )
+
+
 class DefaultOut(BaseModel):
     """A value that nobody said."""
 
@@ -332,6 +363,7 @@ class SiteOut(BaseModel):
     stations: list[StationOut] = Field(description="in the order the air meets them")
     traps: list[str] = Field(description="the stations that have a trap, in the same order")
     outlets: list[OutletOut]
+    signal: SignalOut | None = Field(description="null: no lamp and no buzzer")
     defaults: list[DefaultOut] = Field(description="values that nobody said")
     without_effect: list[str] = Field(description="keys that are checked but change nothing yet")
     remarks: list[str]
@@ -352,6 +384,7 @@ class SiteOut(BaseModel):
             stations=[StationOut.of(station, site.units) for station in site.line.stations],
             traps=list(site.traps),
             outlets=[OutletOut.of(place, settings[place.id]) for place in site.line.outlets],
+            signal=None if site.signal is None else SignalOut.of(site.signal),
             defaults=[
                 DefaultOut(table=each.table, key=each.key, value=each.value, because=each.because)
                 for each in site.defaults

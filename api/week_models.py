@@ -65,7 +65,8 @@ class WeekDrainOut(BaseModel):
         description="what the cup should have shown, with the cup's own error"
     )
     learned_from: bool = Field(
-        description="false: so far from what was expected that it was kept and not believed at once"
+        description="false: so far from what was expected that it was kept, and that nobody has "
+        "confirmed it yet"
     )
     late_h: float | None = Field(description="since it was due; null: it was on time")
     by: str

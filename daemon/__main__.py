@@ -262,10 +262,12 @@ def _export(options: argparse.Namespace) -> int:
 
 def _backup(options: argparse.Namespace) -> int:
     from daemon.backup_command import make_backup
+    from daemon.clock import SystemClock
     from daemon.site.reader import read_site
 
     site = read_site(options.site)
-    print(make_backup(site, options.path, _store_path(options, site.id)))
+    store_path = _store_path(options, site.id)
+    print(make_backup(site, options.path, store_path, sys.stderr, SystemClock()))
     return EXIT_OK
 
 

@@ -25,6 +25,7 @@ from daemon.journal import (
     Unshelve,
 )
 from daemon.moisture.description import Trap
+from daemon.service_entries import why_not
 from daemon.site.types import Site
 from daemon.units import show_difference, show_duration
 
@@ -111,16 +112,21 @@ def _check_service(site: Site, service: Service) -> None:
     if service.what not in get_args(Serviced):
         known = ", ".join(get_args(Serviced))
         raise JournalError(f'"{service.what}" is not something that is recorded (known: {known})')
-    if service.what == "compressor serviced":
+    stations = {station.id: station for station in site.line.stations}
+    if service.what == "compressor serviced" and not service.of:
         return
-    if service.what == "sensor replaced":
+    if service.what == "sensor replaced":  # the entry names the sensor, wherever it was noted
         known_ids = [sensor.id for sensor in site.sensors]
     else:
-        known_ids = [station.id for station in site.line.stations]
+        known_ids = list(stations)
     if service.of not in known_ids:
         raise JournalError(
             f'{service.what}: "{service.of}" is not one of {", ".join(known_ids) or "none"}'
         )
+    if service.what == "sensor replaced":
+        return
+    if reason := why_not(site, service.what, stations[service.of]):
+        raise JournalError(f'"{service.what}" cannot be said of {service.of}: {reason}')
 
 
 def _check_shelve(shelve: Shelve) -> None:

@@ -10,6 +10,7 @@ from pathlib import Path
 
 from daemon.asking import serves
 from daemon.check import render, sections
+from daemon.check_counted import counted_section
 from daemon.check_readings import Looker, missing_devices
 from daemon.check_sensors import elsewhere_section, now_section
 from daemon.check_signal import signal_section
@@ -52,10 +53,13 @@ def check(
             return _watch(site, looker, clock, stop, say)
         looked = looker.look()
         said = sections(site)
-        said.insert(SENSORS_AT, now_section(site, looked))
+        now = now_section(site, looked)
+        said.insert(SENSORS_AT, now)
+        if (counted := counted_section(site, options.store)) is not None:
+            said.insert(SENSORS_AT, counted)
         tried = signal_section(site, hardware, clock, options.store)
         if tried is not None:
-            said.insert(SENSORS_AT + 1, tried.section)
+            said.insert(said.index(now) + 1, tried.section)
         say(render(said))
         if tried is not None and not tried.good:
             return EXIT_FAILED

@@ -13,9 +13,9 @@ from zoneinfo import ZoneInfo
 import segno
 
 from daemon.addresses import is_loopback, names_for_others, url_host
-from daemon.clock import Clock, to_datetime
+from daemon.clock import DAY_US, HOUR_US, MINUTE_US, Clock, to_datetime
 from daemon.errors import StoreError
-from daemon.keys import MEANING, SCOPES, ApiKey, KeyRefused, make, name_of, scopes_of
+from daemon.keys import MEANING, SCOPES, USED_EVERY_US, ApiKey, KeyRefused, make, name_of, scopes_of
 from daemon.keys_store import KeyStore
 from daemon.site.types import Site
 
@@ -38,7 +38,7 @@ def run_command(site: Site, options: argparse.Namespace, store: Path, clock: Clo
         if options.action == "revoke":
             ended = keys.revoke(options.key, clock.now_us())
             return f'{ended.id}, for "{ended.name}", opens nothing any more.'
-        return "\n".join(_list(site, keys.every()))
+        return "\n".join(_list(site, keys.every(), clock.now_us()))
 
 
 def _refuse_odd(options: argparse.Namespace) -> None:
@@ -164,24 +164,42 @@ def _warnings(site: Site, options: argparse.Namespace) -> Iterator[str]:
 # ---- list ----
 
 
-def _list(site: Site, keys: Sequence[ApiKey]) -> Iterator[str]:
+def _list(site: Site, keys: Sequence[ApiKey], now_us: int) -> Iterator[str]:
     if not keys:
         yield "There are no keys. `dripleg key SITE make` makes one."
         return
-    rows = [("id", "for", "may", "made", "used last"), *(_row(site, key) for key in keys)]
+    rows = [("id", "for", "may", "when"), *(_row(site, key, now_us) for key in keys)]
     widths = [max(len(row[column]) for row in rows) for column in range(len(rows[0]))]
     for row in rows:
         yield "  ".join(cell.ljust(width) for cell, width in zip(row, widths, strict=True)).rstrip()
 
 
-def _row(site: Site, key: ApiKey) -> tuple[str, ...]:
+def _row(site: Site, key: ApiKey, now_us: int) -> tuple[str, ...]:
     may = ",".join(scope for scope in SCOPES if scope in key.may)
-    used = "never" if key.used_us is None else _when(site, key.used_us, "%Y-%m-%d %H h")
+    when = f"made {ago(site, key.made_us, now_us)}, {_used(site, key, now_us)}"
     if key.revoked_us is not None:
-        used += f"; revoked {_when(site, key.revoked_us)}"
-    return key.id, key.name, may, _when(site, key.made_us), used
+        when += f"; revoked {ago(site, key.revoked_us, now_us)}, opens nothing"
+    return key.id, key.name, may, when
 
 
-def _when(site: Site, time_us: int, shape: str = "%Y-%m-%d %H:%M") -> str:
-    """A time on the shop's wall."""
-    return to_datetime(time_us).astimezone(ZoneInfo(site.timezone)).strftime(shape)
+def _used(site: Site, key: ApiKey, now_us: int) -> str:
+    """Its last use, of which the hour is noted."""
+    if key.used_us is None:
+        return "never used"
+    if key.used_us <= now_us < key.used_us + USED_EVERY_US:
+        return "last used within the hour"
+    return f"last used {ago(site, key.used_us + USED_EVERY_US // 2, now_us)}"
+
+
+def ago(site: Site, at_us: int, now_us: int) -> str:
+    """How long ago, as one says it; from a fortnight on, and ahead of now, the shop's date."""
+    gone_us = now_us - at_us
+    if 0 <= gone_us < MINUTE_US:
+        return "just now"
+    if MINUTE_US <= gone_us < 14 * DAY_US:
+        sizes = (("day", DAY_US), ("hour", HOUR_US), ("minute", MINUTE_US))
+        name, size_us = next(each for each in sizes if gone_us >= each[1])
+        count = gone_us // size_us
+        return f"{count} {name}{'s' if count > 1 else ''} ago"
+    local = to_datetime(at_us).astimezone(ZoneInfo(site.timezone))
+    return f"on {local.day} {local:%b %Y}"

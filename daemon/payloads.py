@@ -35,9 +35,10 @@ def trap_payload(view: TrapView) -> dict[str, Any]:
     calendar, whichever comes first; null where that lies beyond the forecast's ten days. `because`
     says what makes it due, or what will make it due next; null when neither will. Of a drain that
     empties itself the volumes are those of one that works, and `chance_stuck` is the chance that it
-    does not; a drain that is worked by hand has no such key.
+    does not; a drain that is worked by hand has no such key. `counted_from` is there alone
+    while a trap's contents are counted from then because the state before could not be read.
     """
-    stuck = view.chance_stuck
+    stuck, counted_us = view.chance_stuck, view.counted_from_us
     return {
         "trap": view.trap,
         "at": format_rfc3339(view.at_us),
@@ -55,6 +56,7 @@ def trap_payload(view: TrapView) -> dict[str, Any]:
         },
         "since": view.since,
         **({} if stuck is None else {"chance_stuck": round(stuck, 3)}),
+        **({} if counted_us is None else {"counted_from": format_rfc3339(counted_us)}),
     }
 
 

@@ -19,15 +19,16 @@ class Progress:
         self._shown = False
         self._on = stream.isatty()
 
-    def at(self, share: float) -> None:
-        """So much is done, 0 to 1."""
+    def at(self, share: float | None = None) -> None:
+        """So much is done, 0 to 1; None: nobody can say how much."""
         if not self._on:
             return
         now_s = self._clock.monotonic()
         if now_s >= self._next_s:
             self._next_s = now_s + AGAIN_AFTER_S
             self._shown = True
-            self._stream.write(f"\r{self._what}: {min(max(share, 0.0), 1.0):4.0%}")
+            done = " ..." if share is None else f": {min(max(share, 0.0), 1.0):4.0%}"
+            self._stream.write(f"\r{self._what}{done}")
             self._stream.flush()
 
     def end(self) -> None:

@@ -4,12 +4,13 @@ from __future__ import annotations
 
 import logging
 from collections.abc import Iterator, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 from daemon.advance import Core, Estimate
 from daemon.alarms import Transition
 from daemon.checkpoint import decode, encode
-from daemon.clock import format_rfc3339
+from daemon.clock import HOUR_US, format_rfc3339
+from daemon.counted import COUNTED_KEY
 from daemon.errors import StoreError
 from daemon.going_back import TOO_OLD_US, Back, GoingBack
 from daemon.journal import Entry
@@ -22,6 +23,18 @@ from daemon.store.store import Store
 from sensors.reading import Reading
 
 log = logging.getLogger("dripleg")
+
+# of the record: what a start goes back to in one go, before it samples; a few seconds on a Pi
+LONGEST_AT_START_US = 6 * HOUR_US
+
+
+@dataclass(frozen=True, slots=True)
+class Start:
+    """What a start came back to, and what is left to be reckoned with beside the ticks."""
+
+    back: Back | None
+    late: Sequence[Entry] = ()  # dated before it, and not known to it
+    undone_us: int | None = None  # of the earliest drain that it knows and that was undone
 
 
 class Recovery:
@@ -41,6 +54,23 @@ class Recovery:
         going = self.going_back(grid_us, until_us, before_us)
         return None if going is None else going.go_on(until_us)
 
+    def start(self, grid_us: int, until_us: int) -> Start:
+        """Come back at a start of the daemon, which has to sample soon.
+
+        Where entries that the latest checkpoint does not know of are dated long before it, going
+        back to them is left to the ticks: the state is the one that the ticks had come to while the
+        daemon was still on its way.
+        """
+        found = next(self._readable(until_us), None)
+        if found is not None and same_line(found[1], self._fingerprint):
+            late, undone_us = self._unknown(found[0].time_us, grid_us)
+            times_us = [*(entry.at_us for entry in late), *undone_us]
+            if times_us and until_us - min(times_us) > LONGEST_AT_START_US:
+                state = self._core.fitted(found[0])
+                going = GoingBack(self._core, self._store, grid_us, None, state, rewritten=False)
+                return Start(going.go_on(until_us), late, min(undone_us, default=None))
+        return Start(self.come_back(grid_us, until_us))
+
     def going_back(
         self, grid_us: int, until_us: int, before_us: int | None = None
     ) -> GoingBack | None:
@@ -59,27 +89,33 @@ class Recovery:
         record began cannot.
         """
         rewritten = False
-        undone = self._undone()
         while True:
             found = next(self._readable(until_us), None)
             if found is None or not same_line(found[1], self._fingerprint):
                 return None, rewritten
-            at_us = found[0].time_us
-            unknown = [
-                entry.at_us
-                for entry in self._store.entries(
-                    from_us=max(at_us - TOO_OLD_US, grid_us + 1), to_us=at_us + 1
-                )
-                if entry.written_us > at_us and entry.at_us >= entry.written_us - TOO_OLD_US
-            ]
-            unknown += [
-                drain.at_us for drain, undo in undone if grid_us < drain.at_us <= at_us < undo.at_us
-            ]
+            late, undone_us = self._unknown(found[0].time_us, grid_us)
+            unknown = [*(entry.at_us for entry in late), *undone_us]
             if not unknown:
                 return self._core.fitted(found[0]), rewritten
             until_us = min(unknown) - 1
             self._store.drop_checkpoints_after(until_us)
             rewritten = True
+
+    def _unknown(self, at_us: int, grid_us: int) -> tuple[list[Entry], list[int]]:
+        """What a checkpoint made at a time does not know, and should: entries dated before it, and
+        the times of drains that it reckons with and that were undone."""
+        dated = self._store.entries(from_us=max(at_us - TOO_OLD_US, grid_us + 1), to_us=at_us + 1)
+        late = [
+            entry
+            for entry in dated
+            if entry.written_us > at_us and entry.at_us >= entry.written_us - TOO_OLD_US
+        ]
+        undone_us = [
+            drain.at_us
+            for drain, undo in self._undone()
+            if grid_us < drain.at_us <= at_us < undo.at_us
+        ]
+        return late, undone_us
 
     def _undone(self) -> list[tuple[Entry, Entry]]:
         """Drains that were reckoned with until they were undone, with what undid them."""
@@ -117,10 +153,12 @@ class Recovery:
 
         After a change of the site file traps of the same name keep what they hold, and what was
         learned of untouched parts stays. What was recorded while the daemon stood still is taken
-        in.
+        in. Where nothing of a record's state can be read, that is kept (see `counted`).
         """
         found = next(self._readable(now_us), None)
         if found is None:
+            if self._store.last_tick_us is not None:
+                self._store.set_meta(COUNTED_KEY, str(now_us))
             return self._core.initial(now_us, Inputs(readings))
         old, before = found
         log.info("the line's description has changed: traps go on with what they held")

@@ -17,6 +17,7 @@ from daemon.advance import Core, Estimate
 from daemon.alarms import Alarm, AlarmRecord, Transition, correction
 from daemon.buttons import Buttons
 from daemon.clock import HOUR_US, MINUTE_US, Clock, format_rfc3339
+from daemon.counted import COUNTED_KEY, marked, notice_of
 from daemon.dew_points import dew_point_views
 from daemon.errors import JournalError, StoreError, UndoError
 from daemon.foresight import Score
@@ -109,6 +110,7 @@ class Shell:
         self._state: CoreState | None = None
         self._grid_us = 0
         self._shown: tuple[TrapView, ...] = ()
+        self._counted_from_us: int | None = None  # nothing could be read of what was before
         self._estimate: Estimate | None = None  # what was shown last, for whoever asks more
         self._outlets_told_us = -1
         self._pending: list[Entry] = []  # committed, not yet taken in
@@ -116,6 +118,7 @@ class Shell:
         self._started_us = clock.now_us()
         self._going: GoingBack | None = None  # for late entries that are not reckoned with yet
         self._going_for: set[int] = set()  # their numbers
+        self._undone_us: int | None = None  # of the earliest drain that the state should not know
         self._went_back = False  # since the last commit: checkpoints after it are wrong
         self._noted_back: list[Noted] = []  # for the weekly log, gathered anew and not committed
         self._renewed_us: int | None = None  # what was noted after that time is replaced
@@ -134,16 +137,30 @@ class Shell:
         grid = self._store.get_meta(GRID_KEY)
         if grid is None:
             return
+        self._look_up_counted()
         self._grid_us = int(grid)
-        back = self._recovery.come_back(self._grid_us, self._ticked_us)
+        started = self._recovery.start(self._grid_us, self._ticked_us)
+        back = started.back
         if back is None:
             return
         self._take_back(back)
+        self._pending += started.late
+        self._undone_us = started.undone_us
         if back.rewritten:
             self._announced = self._as_announced(back.state)
         with self._lock:
             self._show(Estimate(self.core, back.state))
+            self._tell_counted()
         log.info("came back to %s", format_rfc3339(back.state.time_us))
+
+    def _look_up_counted(self) -> None:
+        """Since when contents are counted, where that is not since the record began."""
+        found = self._store.get_meta(COUNTED_KEY)
+        self._counted_from_us = None if found is None else int(found)
+
+    def _tell_counted(self) -> None:
+        if told := notice_of(self._site, self._shown):
+            log.warning("%s", told)
 
     def run(self, stop: threading.Event) -> None:
         """Tick until told to stop; then leave a checkpoint.
@@ -206,11 +223,14 @@ class Shell:
         return due_us
 
     def checkpoint(self) -> None:
-        """Keep the state as it is now."""
+        """Keep the state as it is now, if it knows of all that was recorded before it: a start
+        takes that for granted."""
         with self._lock:
-            if self._state is not None and self._going is None:
-                blob = self._recovery.blob(self._state)
-                self._store.save_checkpoint(self._state.time_us, blob)
+            state = self._state
+            if state is None or not self._knows_all:
+                return
+            if not any(entry.at_us <= state.time_us for entry in self._pending):
+                self._store.save_checkpoint(state.time_us, self._recovery.blob(state))
 
     # ---- one tick ----
 
@@ -309,8 +329,9 @@ class Shell:
 
     def _begin(self, now_us: int, readings: list[Reading]) -> None:
         at_now = [each for each in readings if each.time_us == now_us]
-        self._going = None
+        self._going = self._undone_us = None
         state, first, transitions = self._recovery.begin(now_us, at_now)
+        self._look_up_counted()
         # what was recorded before the first tick: nothing of that time is known, so it counts now
         entries = [entry for entry in self._pending if entry.at_us <= now_us]
         state, estimate, changed = self.core.take(state, entries)
@@ -325,6 +346,7 @@ class Shell:
             noted=[first.noted, estimate.noted],
         )
         self._show(estimate)
+        self._tell_counted()
 
     def _commit(
         self,
@@ -340,7 +362,7 @@ class Shell:
         drained = any(isinstance(entry.body, Drain) for entry in entries)
         full_hour = state.time_us // HOUR_US != before_us // HOUR_US
         blob = None
-        if self._going is None and (checkpoint or drained or full_hour):
+        if self._knows_all and (checkpoint or drained or full_hour):
             blob = self._recovery.blob(state)
         messages = self._messages(transitions, reminders)
         self._store.commit_tick(
@@ -376,7 +398,7 @@ class Shell:
         ]
 
     def _show(self, estimate: Estimate) -> None:
-        self._shown, self._estimate = estimate.traps, estimate
+        self._shown, self._estimate = marked(estimate.traps, self._counted_from_us), estimate
         if self.link is None or self._topics is None:
             return
         messages = [trap_message(self._topics, view) for view in self._shown]
@@ -392,15 +414,21 @@ class Shell:
 
     # ---- going back ----
 
-    def _go_back_for_late_entries(self) -> None:
-        """Entries dated before the last tick: advance again from the checkpoint before them.
+    @property
+    def _knows_all(self) -> bool:
+        """Whether the state knows of every late entry, and of no drain that was undone."""
+        return self._going is None and self._undone_us is None
 
-        As long as that takes, ticks go on as if they had not been recorded.
+    def _go_back_for_late_entries(self) -> None:
+        """Entries dated before the last tick, or drains from before it that were undone: advance
+        again from the checkpoint before them.
+
+        As long as that takes, ticks go on as if they had not been recorded, or not undone.
         """
         state = self._state
         assert state is not None
         late = [entry for entry in self._pending if entry.at_us <= state.time_us]
-        if not late:
+        if not late and self._undone_us is None:
             self._going = None
             return
         usable = [entry for entry in late if entry.at_us >= entry.written_us - TOO_OLD_US]
@@ -416,19 +444,24 @@ class Shell:
             waiting = usable if going is not None else []
             later = [entry for entry in self._pending if entry.at_us > state.time_us]
             self._pending = waiting + later
+            if going is None:
+                self._undone_us = None  # nothing can be done about it
             return
+        self._undone_us = None
         self._take_back(back)
         self._announced = {**state.alarms, **self._announced}
 
     def _on_the_way(self, late: Sequence[Entry], time_us: int) -> GoingBack | None:
         """Back to before these entries, or on from where the tick before had come to."""
-        if not late:
+        times_us = [entry.at_us for entry in late]
+        times_us += [] if self._undone_us is None else [self._undone_us]
+        if not times_us:
             self._going = None
             return None
         new = [entry for entry in late if entry.seq not in self._going_for]
         going = self._going
         if going is None or any(entry.at_us <= going.reached_us for entry in new):
-            earliest_us = min(entry.at_us for entry in late)
+            earliest_us = min(times_us)
             going = self._recovery.going_back(self._grid_us, time_us, earliest_us)
             if going is None:
                 log.warning("nothing to go back to before %s", format_rfc3339(earliest_us))
@@ -550,7 +583,10 @@ class Shell:
         return recorded
 
     def _undo(self, undo: Undo) -> Recorded:
-        """Take back a drain: go back to before it, and advance again without it."""
+        """Take back a drain: go back to before it, and advance again without it.
+
+        At once where that is quick; what takes longer goes on beside the ticks.
+        """
         with self._lock:
             state, now_us = self._state, max(self._clock.now_us(), self._ticked_us)
             accept.check(self._site, undo, now_us, now_us, now_us)
@@ -579,10 +615,11 @@ class Shell:
         if len(waiting) < len(self._pending) or state is None:
             self._pending, self._going = waiting, None  # no tick had taken it in
         elif drain.at_us >= drain.written_us - TOO_OLD_US:
-            back = self._recovery.come_back(self._grid_us, state.time_us, before_us=drain.at_us)
-            if back is not None:
-                self._take_back(back)
-                self._announced = {**state.alarms, **self._announced}
+            undone_us = drain.at_us if self._undone_us is None else self._undone_us
+            self._undone_us = min(undone_us, drain.at_us)
+            if self._going is not None and drain.at_us <= self._going.reached_us:
+                self._going = None
+            self._go_back_for_late_entries()
         if self._state is not None:
             shown = self._with_pending(self._state, now_us) or Estimate(self.core, self._state)
             self._outlets_told_us = -1
@@ -598,7 +635,7 @@ class Shell:
             return ""
         estimate = self._with_pending(state, now_us)
         assert estimate is not None  # the entry itself is pending
-        self._shown, self._estimate = estimate.traps, estimate
+        self._shown, self._estimate = marked(estimate.traps, self._counted_from_us), estimate
         self._outlets_told_us = -1  # what was told of them may have changed
         trap = entry.body.trap if isinstance(entry.body, Drain) else ""
         learned = [

@@ -57,6 +57,9 @@ class TrapView:
     chance_stuck: float | None = None
     # a measured volume that was not believed and waits for somebody to say that it is right
     questioned_kg: float | None = None
+    # its contents are counted from then only: the state before could not be read, and it has not
+    # been drained since
+    counted_from_us: int | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -198,7 +198,13 @@ def made() -> dict[str, list[Message]]:
     """Messages of every topic that the daemon sends, everything and nothing known."""
     refused = payloads.refusal_payload("trap is missing", b"{}", AT_US)
     unknown = replace(
-        VIEW, due_p05_us=None, due_p50_us=None, due_p95_us=None, because=None, chance_stuck=0.1
+        VIEW,
+        due_p05_us=None,
+        due_p50_us=None,
+        due_p95_us=None,
+        because=None,
+        chance_stuck=0.1,
+        counted_from_us=AT_US,
     )
     return {
         "service": [

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 from fastapi import APIRouter, Depends
@@ -16,28 +16,13 @@ from api.problems import Problem
 from api.routes.parts import service
 from api.routes.running import TheDaemon
 from daemon.journal import Serviced
-from daemon.moisture.description import Measured, Station
-from daemon.moisture.dew_sensors import channels_of
-from daemon.moisture.drains import SELF_EMPTYING
+from daemon.service_entries import KIND_WORDS, entries_of, sensors_of
 from daemon.site.fitting_words import station_words
-from daemon.site.types import Site
 from daemon.views import Interval, Running, StationView, TrapView
 
 router = APIRouter(include_in_schema=False)
 
-_KINDS = {
-    "intake": "where the compressor breathes",
-    "receiver": "tank",
-    "cooler": "cooler",
-    "pipe": "pipe with a drip leg",
-    "separator": "water separator",
-    "coalescer": "coalescing filter",
-    "regulator": "regulator",
-    "refrigerated": "refrigerated dryer",
-    "desiccant": "desiccant dryer",
-}
 _OUT_OF_DATE = "This page was out of date, and nothing was recorded: tap again."
-WITH_ELEMENT = ("separator", "coalescer", "refrigerated", "desiccant")
 LEFT, RIGHT = 10.0, 310.0  # of the drawing, in its own units
 
 
@@ -90,7 +75,7 @@ def changed(station: str, fields: Fields, daemon: TheDaemon) -> HTMLResponse:
     what = fields.get("what", "")
     sensor = fields.get("sensor") or None
     known = {each.id: each for each in daemon.site.line.stations}
-    if station in known and what not in _changes(known[station], daemon.site):
+    if station in known and what not in entries_of(daemon.site, known[station]):
         raise Problem("invalid-request", f'"{what[:40]}" cannot be said of "{station}"')
     body = ServiceIn(what=what, sensor=sensor, by=fields.get("by") or None)  # type: ignore[arg-type]  # checked above
     service(station, body, daemon, Response())
@@ -111,14 +96,14 @@ def _cards(daemon: Running, views: Sequence[StationView]) -> list[StationCard]:
     return [
         StationCard(
             view=view,
-            kind=_KINDS[view.kind],
+            kind=KIND_WORDS[view.kind],
             trap=traps.get(view.station),
             drawn=_drawn(view, *scale),
             wet=_wet(view),
             fittings=tuple(station_words(stations[view.station], site.units)),
-            changes=_changes(stations[view.station], site),
+            changes=entries_of(site, stations[view.station]),
             iced=stations[view.station].ice is not None,
-            sensors=_sensors(stations[view.station]),
+            sensors=sensors_of(stations[view.station]),
             outlets=tuple(each.id for each in site.line.outlets if each.after == view.station),
         )
         for view in views
@@ -151,29 +136,3 @@ def _wet(view: StationView) -> str:
     if view.saturated > 0.1:
         return "The air may be holding all that it can."
     return "The air has room for more."
-
-
-def _changes(station: Station, site: Site) -> tuple[Serviced, ...]:
-    """What can be said of a station's parts, the likeliest first."""
-    found: list[Serviced] = []
-    if station.kind in WITH_ELEMENT or station.ice is not None:
-        found.append("element changed")
-    if station.trap is not None and station.trap.drain in SELF_EMPTYING:
-        found.append("drain seen working")
-    if station.id == site.line.stations[0].id:
-        found.append("compressor serviced")
-    if _sensors(station):
-        found.append("sensor replaced")
-    return tuple(found)
-
-
-def _sensors(station: Station) -> tuple[str, ...]:
-    """The sensors that speak of a station."""
-    sources = (station.temperature, station.pressure, station.relative_humidity, station.around)
-    channels = [each.channel for each in sources if isinstance(each, Measured)]
-    if station.measured_dew_point is not None:
-        channels += channels_of(station.measured_dew_point)
-    if station.trap is not None:
-        channels += [each.channel for each in station.trap.floats]
-    names: Mapping[str, None] = dict.fromkeys(name.rpartition(".")[0] for name in channels)
-    return tuple(names)

@@ -20,6 +20,7 @@ from api.problems import Problem
 from api.routes.parts import confirm
 from api.routes.running import TheDaemon
 from api.routes.traps import post_drain, undo_drain
+from daemon.counted import notice_of
 from daemon.errors import JournalError
 from daemon.views import Running
 
@@ -115,6 +116,7 @@ def _page(
         title="Today's round",
         status=status,
         line=made.line,
+        counted=notice_of(daemon.site, [*made.drain, *made.leave]),
         drain=[cards[view.trap] for view in made.drain],
         leave=[cards[view.trap] for view in made.leave],
         told=told or Told(),

@@ -78,7 +78,7 @@ def occasion_of(site: Site, any_due: bool, flooded: Sequence[str], now_us: int) 
 
 
 def _belongs(view: TrapView, until_us: int) -> bool:
-    if view.due:
+    if view.due or view.counted_from_us is not None:
         return True
     times_us = (view.due_at_us, view.due_p50_us)
     return any(time_us is not None and time_us <= until_us for time_us in times_us)
@@ -95,12 +95,16 @@ def _line(
         if not leave:
             return "No estimate yet: it comes with the first readings."
         return f"Nothing to drain {occasion.words}.{_next(site, leave, now_us)}"
-    total_kg = sum(view.p50_kg for view in drain)
+    if any(view.counted_from_us is not None for view in drain):
+        amount = "how much is not known"
+    else:
+        total_kg = sum(view.p50_kg for view in drain)
+        amount = f"about {rough(total_kg, site)}, {vessel(total_kg)}"
     tanks = receivers(site)
     last = drain[-1].trap
     named = f"the {last}" if last in tanks else last
     which = f"1 to drain, {named}" if len(drain) == 1 else f"{len(drain)} to drain, {named} last"
-    return f"{which}, {occasion.words}: about {rough(total_kg, site)}, {vessel(total_kg)}"
+    return f"{which}, {occasion.words}: {amount}"
 
 
 def _next(site: Site, leave: Sequence[TrapView], now_us: int) -> str:

@@ -17,6 +17,7 @@ from api.pages.round import first_line
 from api.problems import KINDS, Problem
 from api.routes.alarms import acknowledge, shelve, unshelve
 from api.routes.running import TheDaemon
+from daemon.counted import notice_of
 from daemon.errors import JournalError
 from daemon.views import Running
 
@@ -81,5 +82,6 @@ def _home(daemon: Running, told: str = "", status: int = 200) -> HTMLResponse:
         told=told,
         ok=health.ok,
         problems=health.problems,
+        counted=notice_of(daemon.site, daemon.traps()),
         alarms=alarm_cards(daemon),
     )

@@ -11,6 +11,7 @@ from api.routes.running import TheDaemon
 from api.routes.traps import described
 from api.validation import moment_of
 from daemon.journal import Confirm, SaltCheck, Service
+from daemon.service_entries import why_not
 
 router = APIRouter()
 
@@ -44,10 +45,11 @@ def service(station: str, body: ServiceIn, daemon: TheDaemon, response: Response
     """What was learned of the old part is forgotten from then on.
 
     `element changed`: a filter's, a cartridge, or a bath's new ice. `drain seen working`: of a
-    drain that empties itself. `sensor replaced`: `sensor` names it. `compressor serviced`: at any
-    station.
+    drain that empties itself. `sensor replaced`: `sensor` names it, one that speaks of this station
+    or of none. `compressor serviced`: at the first station, where it breathes. What a station
+    cannot have is refused, with what it takes.
     """
-    stations = [each.id for each in daemon.site.line.stations]
+    stations = {each.id: each for each in daemon.site.line.stations}
     if station not in stations:
         known = ", ".join(stations)
         raise Problem(
@@ -55,6 +57,8 @@ def service(station: str, body: ServiceIn, daemon: TheDaemon, response: Response
         )
     points: list[Point] = []
     at_us = moment_of(body.at, daemon.clock.now_us(), points)
+    if reason := why_not(daemon.site, body.what, stations[station], body.sensor or ""):
+        points.append(Point("body.what", body.what, reason))
     if points:
         raise Problem("invalid-request", points=points)
     of = (body.sensor or "") if body.what == "sensor replaced" else station

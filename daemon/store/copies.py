@@ -65,8 +65,15 @@ def connected(path: Path, otherwise: Callable[[int, int], str]) -> Database:
     return database
 
 
-def copy(source: Path, target: Path) -> None:
+def copy(
+    source: Path,
+    target: Path,
+    copied: Callable[[float], None] = lambda share: None,
+    checking: Callable[[], None] = lambda: None,
+) -> None:
     """Copy the database at `source` to `target`, consistent and checked.
+
+    `copied` and `checking` hear how far it is, as in `sqlite.backup`.
 
     Only a copy that dripleg made is ever replaced. StoreError, with what to do, for everything
     else that is there, and when there is no database.
@@ -81,7 +88,7 @@ def copy(source: Path, target: Path) -> None:
         with database.read() as connection:
             if migrations.version_of(connection) == 0:
                 raise StoreError(f"{source}: the database is empty: let the daemon run first")
-        sqlite.backup(database, target)
+        sqlite.backup(database, target, copied, checking)
     finally:
         database.close()
 

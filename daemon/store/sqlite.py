@@ -11,6 +11,7 @@ import errno
 import fcntl
 import os
 import sqlite3
+from collections.abc import Callable
 from contextlib import closing
 from pathlib import Path
 from typing import Any
@@ -27,6 +28,8 @@ _MOST_FINDINGS = 5
 _INCREMENTAL = 2  # what `PRAGMA auto_vacuum` answers
 _RESERVE_PAGES = 256  # 1 MB: the running hour's rows come and go
 _PAGES_AT_ONCE = 256
+_PAGES_A_STEP = 256  # of a backup: 1 MB, which takes a slow card some 0.1 s
+_STEPS_A_WORD = 10_000  # of SQLite's virtual machine, between two words about a check
 
 
 class Lock:
@@ -90,10 +93,17 @@ def check(database: Database) -> None:
     _refuse_damage(database.where, [str(row) for row in rows])
 
 
-def backup(database: Database, target: Path) -> None:
+def backup(
+    database: Database,
+    target: Path,
+    copied: Callable[[float], None] = lambda share: None,
+    checking: Callable[[], None] = lambda: None,
+) -> None:
     """A consistent, checked copy of a database in use; `target` is replaced when it is good.
 
-    SQLite's own backup runs in one step, so the copy is one moment's state; writers go on.
+    SQLite's own backup runs within one reading transaction, so the copy is one moment's state;
+    writers go on. `copied` hears how much of it is copied, 0 to 1, and `checking`, from time to
+    time, that the copy is being checked.
     """
     source = Path(database.where)
     if target.exists() and source.exists() and target.samefile(source):
@@ -103,8 +113,15 @@ def backup(database: Database, target: Path) -> None:
         part.unlink(missing_ok=True)
         with closing(sqlite3.connect(part)) as copy:
             with database.read() as connection:
-                _raw(connection).backup(copy)
+                # It begins with a look: what is seen then is what is copied, in all the steps.
+                connection.exec_driver_sql("SELECT count(*) FROM sqlite_master").scalar_one()
+                _raw(connection).backup(
+                    copy,
+                    pages=_PAGES_A_STEP,
+                    progress=lambda _, left, pages: copied(1.0 - left / max(pages, 1)),
+                )
             _mark(copy)
+            copy.set_progress_handler(checking, _STEPS_A_WORD)
             rows = [str(row) for (row,) in copy.execute("PRAGMA quick_check")]
         _refuse_damage(str(part), rows)
         os.replace(part, target)

@@ -80,6 +80,7 @@ def _trap(figures: _Figures, trap: TrapWeek) -> Iterator[Row]:
     for quantity, count in (
         ("drains", trap.drains),
         ("drains measured", trap.measured),
+        ("drains not learned from", trap.unlearned),
         ("drains on time", trap.on_time),
         ("drains late", trap.late),
     ):

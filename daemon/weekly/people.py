@@ -23,7 +23,11 @@ _RAISED = ("unacknowledged", "acknowledged", "shelved")
 
 
 def drain_lines(site: Site, rows: WeekRows) -> list[DrainLine]:
-    """Every drain in order of time, without those that were taken back."""
+    """Every drain in order of time, without those that were taken back.
+
+    One that was a surprise at first counts as learned from once somebody has confirmed it, be it in
+    a later week (`daemon/weekly/confirmed.py`).
+    """
     undone = {body.entry for entry in rows.entries if isinstance(body := entry.body, Undo)}
     checks = {check.seq: check for check in rows.checks}
     changes = due_changes(site, rows)
@@ -42,7 +46,7 @@ def drain_lines(site: Site, rows: WeekRows) -> list[DrainLine]:
                 outcome=drain.outcome,
                 measured_kg=0.0 if drain.outcome == "empty" else drain.volume_kg,
                 expected_kg=None if check is None else check.expected_kg,
-                believed=check is None or check.learned,
+                believed=check is None or check.learned or entry.seq in rows.confirmed,
                 late_s=_late_s(changes[drain.trap], drain, entry.at_us),
                 by=drain.by,
                 look=drain.look,
@@ -93,6 +97,7 @@ def counted(site: Site, rows: WeekRows, trap: str, lines: Sequence[DrainLine]) -
     return {
         "measured_kg": sum(measured),
         "measured": len(measured),
+        "unlearned": sum(not line.believed for line in own),
         "drains": len(own),
         "on_time": len(whole) - len(late),
         "late": len(late),

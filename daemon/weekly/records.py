@@ -39,7 +39,7 @@ class DrainLine:
     outcome: Outcome
     measured_kg: float | None
     expected_kg: Interval | None  # what the cup should have shown, with its own error
-    believed: bool  # False: too far off to be learned from at once
+    believed: bool  # False: too far off to be learned from, and confirmed by nobody
     late_s: float | None  # since when it was due; None: it was on time
     by: str
     look: str
@@ -53,6 +53,7 @@ class TrapWeek:
     shed_kg: Interval | None
     measured_kg: float
     measured: int  # how many drains were
+    unlearned: int  # how many of them were too far off, and confirmed by nobody
     drains: int
     on_time: int
     late: int

@@ -12,6 +12,7 @@ from daemon.foresight import Score
 from daemon.hour_figures import DayMembers, DrainCheck, HourFigures
 from daemon.journal import Entry
 from daemon.site.types import Site
+from daemon.weekly.confirmed import confirmed, waiting
 from daemon.weekly.weeks import Week, first_hour_us
 
 STANDING_US = 60 * DAY_US  # how far back an alarm is looked for that stood as the week began
@@ -55,6 +56,7 @@ class WeekRows:
     due_before: Sequence[Transition]  # of drains that are due, before the week
     transitions: Sequence[Transition]
     entries: Sequence[Entry]
+    confirmed: frozenset[int]  # drains that were learned from later: their numbers in the journal
 
     @property
     def hours_from_us(self) -> int:
@@ -77,6 +79,10 @@ def read_rows(store: LogRows, week: Week, site: Site, now_us: int) -> WeekRows:
     from_us, to_us = week.bounds_us(site.timezone)
     days = week.days()
     begun = store.get_meta("grid_us")
+    checks = store.drain_checks(from_us, to_us)
+    # what was confirmed may have been so weeks later; it is seldom that any drain waits for it
+    wait_us = min((check.at_us for check in waiting(checks)), default=None)
+    later = () if wait_us is None else store.entries(from_us=wait_us)
     return WeekRows(
         week=week,
         from_us=from_us,
@@ -85,11 +91,12 @@ def read_rows(store: LogRows, week: Week, site: Site, now_us: int) -> WeekRows:
         begun_us=None if begun is None else int(begun),
         hours=store.hour_figures(first_hour_us(from_us), first_hour_us(to_us)),
         days=store.day_members(days[0].isoformat(), days[-1].isoformat()),
-        checks=store.drain_checks(from_us, to_us),
+        checks=checks,
         scores=store.forecast_scores(from_us, to_us),
         due_before=store.transitions(
             from_us - STANDING_US, from_us, [due_alarm(trap) for trap in site.traps]
         ),
         transitions=store.transitions(from_us, to_us),
         entries=store.entries(from_us=from_us, to_us=to_us),
+        confirmed=confirmed(checks, later),
     )

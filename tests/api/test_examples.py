@@ -52,8 +52,8 @@ ASKED: list[tuple[str, str, str, Any]] = [
     ("post", "/alarms/{alarm}/shelve", "riser-drain-due", {"for": "2 h", "by": "AM", "key": "s1"}),
     ("post", "/alarms/{alarm}/unshelve", "riser-drain-due", {"by": "AM", "key": "u1"}),
     ("post", "/alarms/{alarm}/unshelve", "riser-drain-due", {"by": "AM", "key": "u1"}),
-    ("post", "/stations/{station}/service", "tank", {"what": "drain seen working", "key": "v1"}),
-    ("post", "/stations/{station}/service", "tank", {"what": "drain seen working", "key": "v1"}),
+    ("post", "/stations/{station}/service", "intake", {"what": "compressor serviced", "key": "v1"}),
+    ("post", "/stations/{station}/service", "intake", {"what": "compressor serviced", "key": "v1"}),
     (
         "post",
         "/sensors/{sensor}/salt-checks",

@@ -37,6 +37,17 @@ def test_the_page_says_when_all_is_well_and_when_not(running: FakeRunning, clien
     assert "All is well" not in text
 
 
+def test_the_start_says_what_is_counted_without_an_earlier_state(
+    running: FakeRunning, client: Client
+) -> None:
+    assert "earlier state" not in text_of(client)
+    running.views[:] = [replace(v, counted_from_us=NOW_US - HOUR_US) for v in running.views]
+    assert (
+        "Contents counted from Tue 1 Dec, 08:00: earlier state could not be read. There may be "
+        "more in tank and riser than is shown. Drain each once, whatever the figure says."
+    ) in text_of(client)
+
+
 def test_the_page_is_there_before_the_first_tick(running: FakeRunning, client: Client) -> None:
     running.views.clear()
     running.standing.clear()

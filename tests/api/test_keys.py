@@ -19,7 +19,7 @@ from tests.api.client import Client, client_of, problem_of
 from tests.api.fake import NOW_US, FakeRunning, StillClock, a_site
 
 TRAPS, DRAINS = "/api/v1/traps", "/api/v1/traps/tank/drains"
-SERVICE, PAIRING = "/api/v1/stations/tank/service", "/api/v1/pairing"
+SERVICE, PAIRING = "/api/v1/stations/intake/service", "/api/v1/pairing"
 HOST = "192.168.1.20:8080"
 
 
@@ -121,7 +121,7 @@ def test_a_revoked_key_is_told_so_at_the_next_request(running: FakeRunning, clie
     [
         (("read",), DRAINS, {}),
         (("read", "service"), DRAINS, {}),
-        (("read", "record"), SERVICE, {"what": "element changed"}),
+        (("read", "record"), SERVICE, {"what": "compressor serviced"}),
         (("read",), "/api/v1/alarms/riser-drain-due/acknowledge", {}),
     ],
 )
@@ -136,7 +136,7 @@ def test_a_key_does_only_what_it_was_made_for(
 
 def test_a_key_for_service_records_service(running: FakeRunning, client: Client) -> None:
     headers = bearing(a_key(running, "service"))
-    body = {"what": "element changed", "by": "AM"}
+    body = {"what": "compressor serviced", "by": "AM"}
     assert client.post(SERVICE, json=body, headers=headers).status_code == 201
     problem_of(client.get(TRAPS, headers=headers), 403, "key-may-not")
 

@@ -182,6 +182,21 @@ def test_a_calendar_drain_says_that_it_is_one(running: FakeRunning, client: Clie
     assert "Due now, by the calendar: it is drained every working day" in text
 
 
+def test_a_trap_that_is_counted_without_an_earlier_state_is_to_be_drained(
+    running: FakeRunning, client: Client
+) -> None:
+    held = replace(idle(riser_view()), counted_from_us=NOW_US - HOUR_US)
+    running.views[:] = [idle(tank_view()), held]
+    text = words_of(client.get("/round").text)
+    assert line(idle(tank_view()), held).startswith("1 to drain, riser, before you leave: how much")
+    assert "before you leave: how much is not known" in text
+    assert (
+        "There may be more in riser than is shown. Drain it once, whatever the figure says." in text
+    )
+    assert "Counted from Tue 1 Dec, 08:00: earlier state could not be read." in text
+    assert "not drained yet" not in text
+
+
 def test_a_drain_that_empties_itself_is_to_be_looked_at(
     running: FakeRunning, client: Client
 ) -> None:

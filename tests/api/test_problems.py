@@ -7,11 +7,14 @@ from collections.abc import Sequence
 
 import pytest
 
+from api.pages.forms import TOKEN
 from api.problems import KINDS
 from daemon.errors import StoreError
 from daemon.views import TrapView
 from tests.api.client import Client, client_of, problem_of
 from tests.api.fake import FakeRunning
+
+BROWSER = {"accept": "text/html,application/xhtml+xml,*/*;q=0.8"}
 
 
 class FailingRunning(FakeRunning):
@@ -43,8 +46,8 @@ def test_an_address_with_odd_characters_keeps_its_form(client: Client) -> None:
 @pytest.mark.parametrize(
     ("method", "path", "allowed"),
     [
-        ("DELETE", "/api/v1/traps/tank/drains", "GET, POST"),
-        ("PUT", "/api/v1/traps", "GET"),
+        ("DELETE", "/api/v1/traps/tank/drains", "GET, HEAD, POST"),
+        ("PUT", "/api/v1/traps", "GET, HEAD"),
         ("GET", "/api/v1/alarms/tank-drain-due/acknowledge", "POST"),
     ],
 )
@@ -67,6 +70,48 @@ def test_an_unexpected_error_is_logged_and_not_told(caplog: pytest.LogCaptureFix
     assert record.getMessage() == "GET '/api/v1/traps' failed"
     assert record.exc_info is not None
     assert "secret detail of the inside" in str(record.exc_info[1])
+
+
+def test_a_browser_gets_a_page_after_an_unexpected_error(caplog: pytest.LogCaptureFixture) -> None:
+    client = client_of(FailingRunning())
+    with caplog.at_level(logging.ERROR):
+        response = client.get("/round?trap=tank", headers=BROWSER)
+    assert response.status_code == 500
+    assert response.headers["content-type"] == "text/html; charset=utf-8"
+    assert response.headers["cache-control"] == "no-store"
+    assert "<h1>Something went wrong inside dripleg</h1>" in response.text
+    assert '<a class="button" href="/round?trap=tank">Try again</a>' in response.text
+    assert "daemon's log, at Tue 1 Dec, 09:00." in response.text.replace("\N{NO-BREAK SPACE}", " ")
+    assert "secret" not in response.text
+    assert "Traceback" not in response.text
+    (record,) = caplog.records
+    assert record.getMessage() == "GET '/round' failed"
+
+
+def test_whoever_entered_something_is_told_to_look_first() -> None:
+    client = client_of(FailingRunning())
+    form = {
+        **BROWSER,
+        "origin": "http://127.0.0.1:8080",
+        "content-type": "application/x-www-form-urlencoded",
+    }
+    response = client.post("/round/tank/drained", content=f"token={TOKEN}", headers=form)
+    assert response.status_code == 500
+    assert "may have been recorded, or not" in response.text
+    assert '<a class="button" href="/round">Look at the page</a>' in response.text
+
+
+def test_programs_get_a_document_after_an_unexpected_error() -> None:
+    client = client_of(FailingRunning())
+    problem_of(client.get("/round", headers={"accept": "*/*"}), 500, "unexpected")
+    problem_of(client.get("/api/v1/traps", headers=BROWSER), 500, "unexpected")
+
+
+def test_a_page_about_a_failure_that_fails_too_is_a_document() -> None:
+    running = FailingRunning()
+    client = client_of(running)
+    running.clock = None  # type: ignore[assignment]  # whatever else may be broken
+    problem_of(client.get("/round", headers=BROWSER), 500, "unexpected")
 
 
 def test_a_log_that_cannot_be_read_is_503_in_its_own_words(

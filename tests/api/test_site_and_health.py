@@ -2,6 +2,9 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
+from daemon.site.types import Signal
 from tests.api.client import Client, client_of
 from tests.api.fake import FakeRunning, a_site
 
@@ -102,3 +105,18 @@ def test_the_broker_s_password_is_never_shown() -> None:
     client = client_of(running)
     for path in ("/api/v1/site", "/api/v1/health", "/"):
         assert secret not in client.get(path).text
+
+
+def test_the_lamp_or_buzzer_is_shown_as_understood(running: FakeRunning, client: Client) -> None:
+    assert client.get("/api/v1/site").json()["signal"] is None
+    running.site = replace(
+        running.site, signal=Signal("buzzer", line=17, active_high=False, priorities=("high",))
+    )
+    assert client.get("/api/v1/site").json()["signal"] == {
+        "kind": "buzzer",
+        "chip": "/dev/gpiochip0",
+        "line": 17,
+        "active": "low",
+        "priorities": ["high"],
+        "pattern": "blink",
+    }

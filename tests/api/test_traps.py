@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from dataclasses import replace
 
+from daemon.clock import HOUR_US
 from tests.api.client import Client, problem_of
-from tests.api.fake import FakeRunning
+from tests.api.fake import NOW_US, FakeRunning
 
 
 def test_traps_come_in_line_order_with_interval_levels_and_due(client: Client) -> None:
@@ -60,6 +61,15 @@ def test_an_unknown_trap_is_answered_with_the_known_ones(client: Client) -> None
 
 def test_a_station_without_a_trap_is_not_a_trap(client: Client) -> None:
     problem_of(client.get("/api/v1/traps/intake"), 404, "unknown-trap")
+
+
+def test_a_trap_that_is_counted_without_an_earlier_state_says_since_when(
+    running: FakeRunning, client: Client
+) -> None:
+    running.views[1] = replace(running.views[1], counted_from_us=NOW_US - HOUR_US)
+    tank, riser = client.get("/api/v1/traps").json()
+    assert "counted_from" not in tank
+    assert riser["counted_from"] == "2026-12-01T08:00:00Z"
 
 
 def test_only_a_drain_that_empties_itself_says_how_likely_it_is_stuck(

@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+import errno
+import io
 import os
+import re
 import shutil
 import sqlite3
 import tempfile
@@ -14,6 +17,10 @@ from pathlib import Path
 import pytest
 
 from daemon.__main__ import main
+from daemon.backup_command import make_backup
+from daemon.errors import StoreError
+from daemon.site.reader import read_site
+from daemon.store import copies, sqlite
 from daemon.store.store import Store
 from tests.daemon.sealed import CHANNELS, T0, TICK, fill, ordinary, record, seal_all, shown
 from tests.daemon.test_store_opening import unprivileged
@@ -37,9 +44,15 @@ def backup(folder: Path, target: str = "copy.db", *arguments: str) -> int:
     return main(["backup", str(folder / "shop.toml"), str(folder / target), *arguments])
 
 
+@pytest.mark.parametrize("pages_a_step", [256, 1])
 def test_a_copy_made_while_the_daemon_writes_is_one_moment_s_state(
-    folder: Path, store: Store, capsys: pytest.CaptureFixture[str]
+    folder: Path,
+    store: Store,
+    capsys: pytest.CaptureFixture[str],
+    monkeypatch: pytest.MonkeyPatch,
+    pages_a_step: int,
 ) -> None:
+    monkeypatch.setattr(sqlite, "_PAGES_A_STEP", pages_a_step)
     fill(store, record(30))
     stop, ticks = threading.Event(), list(record(30))
 
@@ -63,6 +76,98 @@ def test_a_copy_made_while_the_daemon_writes_is_one_moment_s_state(
         found = list(copy.ticks(*EVER))
     assert shown(found) == shown(ticks[: len(found)])
     assert len(found) >= len(record(30))
+
+
+def test_a_daemon_that_writes_at_every_step_does_not_send_a_copy_back_to_its_start(
+    folder: Path, store: Store, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(sqlite, "_PAGES_A_STEP", 4)
+    ticks = record(30)
+    fill(store, ticks)
+    shares: list[float] = []
+
+    def copied(share: float) -> None:
+        assert not shares or share > shares[-1]
+        shares.append(share)
+        tick_us = ticks[-1][0] + TICK * len(shares)
+        store.commit_tick(tick_us, ordinary(tick_us))
+
+    copies.copy(folder / "shop.db", folder / "copy.db", copied)
+    assert len(shares) > 5
+    assert shares[-1] == 1.0
+    with Store.open(folder / "copy.db", CHANNELS) as copy:
+        assert shown(list(copy.ticks(*EVER))) == shown(ticks)
+
+
+class Terminal(io.StringIO):
+    """A person looks at it."""
+
+    def isatty(self) -> bool:
+        return True
+
+
+class Ticking:
+    """Goes on by so much at every look: a slow disk."""
+
+    def __init__(self, step_s: float) -> None:
+        self.seconds, self.step_s = 0.0, step_s
+
+    def now_us(self) -> int:
+        return 0
+
+    def monotonic(self) -> float:
+        self.seconds += self.step_s
+        return self.seconds
+
+    def wait(self, seconds: float, stop: threading.Event) -> bool:
+        raise AssertionError("nobody waits here")
+
+
+@pytest.mark.parametrize(
+    ("stream", "step_s", "told"),
+    [
+        (Terminal(), 0.4, True),
+        (Terminal(), 1e-6, False),  # done before anybody looks up
+        (io.StringIO(), 0.4, False),
+    ],
+)
+def test_a_long_copy_tells_a_terminal_how_far_it_is(
+    folder: Path,
+    store: Store,
+    monkeypatch: pytest.MonkeyPatch,
+    stream: io.StringIO,
+    step_s: float,
+    told: bool,
+) -> None:
+    monkeypatch.setattr(sqlite, "_PAGES_A_STEP", 4)
+    monkeypatch.setattr(sqlite, "_STEPS_A_WORD", 10)
+    fill(store, record(30))
+    make_backup(read_site(folder / "shop.toml"), folder / "copy.db", folder / "shop.db", stream,
+                Ticking(step_s))  # fmt: skip
+    shown = stream.getvalue()
+    shares = [int(each) for each in re.findall(r"\rcopying: +(\d+)%", shown)]
+    assert shares == sorted(set(shares))
+    assert (len(shares) > 5 and shares[-1] == 100) is told
+    assert ("\rchecking ..." in shown) is told
+    assert shown == "" or shown.endswith("\r")  # the line is taken away again
+
+
+def test_the_line_is_taken_away_also_when_the_copy_fails(
+    folder: Path, store: Store, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.setattr(sqlite, "_PAGES_A_STEP", 4)
+    monkeypatch.setattr(sqlite, "_STEPS_A_WORD", 10)
+    fill(store, record(30))
+
+    def fails(*_: object) -> None:
+        raise OSError(errno.ENOSPC, "No space left on device")
+
+    monkeypatch.setattr(os, "replace", fails)
+    stream = Terminal()
+    with pytest.raises(StoreError, match="free some space"):
+        make_backup(read_site(folder / "shop.toml"), folder / "copy.db", folder / "shop.db",
+                    stream, Ticking(0.4))  # fmt: skip
+    assert stream.getvalue().endswith(" \r")
 
 
 def test_a_copy_is_put_back_and_goes_on(folder: Path, store: Store) -> None:

@@ -7,6 +7,7 @@ import contextlib
 import socket
 import threading
 from collections.abc import Iterator
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
@@ -19,12 +20,12 @@ from daemon.check_command import check
 from daemon.check_readings import Looked, Looker, Said, device_of, missing_devices
 from daemon.check_sensors import now_section
 from daemon.check_words import plausible, remedy
-from daemon.clock import SystemClock
+from daemon.clock import HOUR_US, SystemClock
 from daemon.site.reader import parse_site
 from daemon.site.types import Site
 from sensors import reasons
 from sensors.emulated.hardware import EmulatedHardware
-from tests.api.fake import FakeRunning
+from tests.api.fake import NOW_US, FakeRunning
 from tests.daemon.broker import Broker, Listener, free_port
 
 SITE = """
@@ -289,6 +290,7 @@ def test_while_the_daemon_runs_what_it_hears_is_shown_and_no_bus_is_touched(
     parts: EmulatedHardware, tmp_path: Path
 ) -> None:
     running = FakeRunning()
+    running.views[1] = replace(running.views[1], counted_from_us=NOW_US - HOUR_US)
     server = ApiServer(create_app(running), "127.0.0.1", 0)
     server.start()
     try:
@@ -300,6 +302,10 @@ def test_while_the_daemon_runs_what_it_hears_is_shown_and_no_bus_is_touched(
     assert code == 1
     assert "Sensors now, as the running daemon last heard them" in told
     assert "20 degC" in told
+    assert told.index("What the traps hold") < told.index("Sensors now")
+    words = " ".join(told.split())
+    assert "Contents counted from Tue 1 Dec, 08:00: earlier state could not be read." in words
+    assert "There may be more in riser than is shown. Drain it once" in words
     assert "not usable: no answer" in told  # its tank-gauge
     assert "nothing yet" in told
     assert parts.i2c(1).operations == 0

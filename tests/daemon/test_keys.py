@@ -3,6 +3,7 @@ the database itself."""
 
 from __future__ import annotations
 
+import argparse
 import hashlib
 import math
 from pathlib import Path
@@ -10,9 +11,10 @@ from pathlib import Path
 import pytest
 
 from daemon import addresses
-from daemon.clock import HOUR_US
+from daemon.clock import HOUR_US, MINUTE_US, SECOND_US
 from daemon.errors import StoreError
 from daemon.keys import ID_LENGTH, ID_LETTERS, KeyRefused, KeyRing, make, name_of, scopes_of
+from daemon.keys_command import ago, run_command
 from daemon.keys_local import key_file, read_key, remove_key, write_key
 from daemon.keys_store import KeyStore
 from daemon.store.store import Store
@@ -136,6 +138,58 @@ def test_a_disk_that_is_full_keeps_nobody_out(caplog: pytest.LogCaptureFixture) 
     rows.keys[key.id] = (key, digest)
     assert KeyRing(rows, StillClock()).find(text) == key
     assert "could not be noted: no space left" in caplog.text
+
+
+# ---- as a list ----
+
+MINUTES, HOURS, DAYS = MINUTE_US, HOUR_US, 24 * HOUR_US
+
+
+@pytest.mark.parametrize(
+    ("gone_us", "words"),
+    [
+        (0, "just now"),
+        (59 * SECOND_US, "just now"),
+        (1 * MINUTES, "1 minute ago"),
+        (59 * MINUTES, "59 minutes ago"),
+        (11 * HOURS, "11 hours ago"),
+        (24 * HOURS - 1, "23 hours ago"),
+        (24 * HOURS, "1 day ago"),
+        (13 * DAYS, "13 days ago"),
+        (14 * DAYS, "on 16 Feb 2026"),
+        (-1 * DAYS, "on 3 Mar 2026"),  # the clock was ahead then
+    ],
+)
+def test_how_long_ago_is_said_in_words(gone_us: int, words: str) -> None:
+    assert ago(SHOP, NOW_US - gone_us, NOW_US) == words
+
+
+@pytest.mark.parametrize(
+    ("used_ago_us", "words"),
+    [
+        (None, "made 11 hours ago, never used"),
+        # 07:00: the hour that has just begun
+        (0, "made 11 hours ago, last used within the hour"),
+        # between 04:00 and 05:00
+        (3 * HOURS, "made 11 hours ago, last used 2 hours ago"),
+    ],
+)
+def test_the_list_says_when_a_key_was_made_and_last_used(
+    tmp_path: Path, used_ago_us: int | None, words: str
+) -> None:
+    path = tmp_path / "shop.db"
+    key, digest, _ = make("paint booth tablet", ["read", "record"], NOW_US - 11 * HOURS)
+    with KeyStore.open(path, SHOP.channels) as keys:
+        keys.add(key, digest)
+    if used_ago_us is not None:
+        with Store.open(path, SHOP.channels) as store:
+            store.key_used(key.id, NOW_US - used_ago_us)
+    options = argparse.Namespace(
+        action="list", key=None, made_for=None, may=None, host=None, png=None, svg=None
+    )
+    head, row = run_command(SHOP, options, path, StillClock(NOW_US)).splitlines()
+    assert head.split() == ["id", "for", "may", "when"]
+    assert row == f"{key.id}  paint booth tablet  read,record  {words}"
 
 
 # ---- the machine's own ----

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import logging
 import sqlite3
 from collections.abc import Iterator
@@ -14,10 +15,10 @@ import numpy as np
 import pytest
 
 from daemon.advance import Core
-from daemon.clock import DAY_US, HOUR_US, MINUTE_US, SECOND_US
+from daemon.clock import DAY_US, HOUR_US, MINUTE_US, SECOND_US, format_rfc3339
 from daemon.errors import StoreError
-from daemon.journal import Drain, Entry
-from daemon.outbox import Topics
+from daemon.journal import Drain, Entry, Undo
+from daemon.outbox import Topics, trap_message
 from daemon.replay import replay
 from daemon.shell import Shell
 from daemon.site.types import Site
@@ -260,6 +261,51 @@ def test_without_a_readable_checkpoint_it_begins_anew(daemon: Daemon) -> None:
     daemon.tick(50, 51)
     assert daemon.state.time_us == BEGUN_US + 51 * PERIOD_US
     assert daemon.state.begun_us == BEGUN_US + 50 * PERIOD_US
+
+
+NOTICE = (
+    "Contents counted from Mon 2 Mar, 07:08: earlier state could not be read. There may be "
+    "more in {} than is shown. {}, whatever the figure says."
+)
+
+
+def counted(daemon: Daemon) -> dict[str, int | None]:
+    return {view.trap: view.counted_from_us for view in daemon.shell.traps()}
+
+
+def test_what_traps_hold_is_said_to_be_counted_from_a_start_without_a_state(
+    daemon: Daemon, caplog: pytest.LogCaptureFixture
+) -> None:
+    """Until each has been drained once, also over another stop."""
+    daemon.tick(*range(50))
+    assert set(counted(daemon).values()) == {None}  # a first start has lost nothing
+    daemon.stop()
+    damage(daemon.path, "1")
+    daemon.start()
+    with caplog.at_level(logging.WARNING):
+        daemon.tick(50, 51)
+    begun_us = BEGUN_US + 50 * PERIOD_US
+    assert counted(daemon) == dict.fromkeys(SHOP.traps, begun_us)
+    assert NOTICE.format("tank, riser and bowl", "Drain each once") in caplog.text
+    sent = json.loads(trap_message(TOPICS, daemon.shell.traps()[0]).payload)
+    assert sent["counted_from"] == format_rfc3339(begun_us)
+    drained = daemon.shell.record(Drain("tank")).entry
+    assert counted(daemon) == {"tank": None, "riser": begun_us, "bowl": begun_us}
+    daemon.tick(52)
+    daemon.shell.record(Undo("tank", drained.seq))
+    assert counted(daemon)["tank"] == begun_us
+    for trap in ("tank", "riser"):
+        daemon.shell.record(Drain(trap))
+    daemon.shell.record(Drain("bowl", "partly"))  # what is left is not known either
+    daemon.tick(53)
+    daemon.stop()
+    caplog.clear()
+    daemon.start()
+    assert NOTICE.format("bowl", "Drain it once") in caplog.text
+    assert counted(daemon) == {"tank": None, "riser": None, "bowl": begun_us}
+    daemon.shell.record(Drain("bowl", "empty"))
+    daemon.tick(54)
+    assert set(counted(daemon).values()) == {None}
 
 
 def test_a_drain_recorded_beside_a_change_of_the_site_file_counts(daemon: Daemon) -> None:

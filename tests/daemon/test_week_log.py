@@ -7,18 +7,22 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from api.week_models import WeekOut
 from daemon.clock import HOUR_US, MINUTE_US, parse_rfc3339
 from daemon.foresight import Score
 from daemon.hour_figures import DayMembers, DrainCheck, HourFigures, Least
-from daemon.journal import Blotter, Body, Drain, Entry, Undo
+from daemon.journal import Blotter, Body, Confirm, Drain, Entry, Undo
 from daemon.views import Interval
+from daemon.weekly import files
 from daemon.weekly.compute import week_log
+from daemon.weekly.csv_out import csv_text
 from daemon.weekly.records import WeekLog
 from daemon.weekly.rows import read_rows
 from daemon.weekly.sheet import sheet
 from daemon.weekly.text import text_of
 from daemon.weekly.weeks import Week, first_hour_us
 from tests.daemon.shops import site
+from tests.daemon.test_week_outputs import pdf_words
 from tests.daemon.week_rows import HeldRows, a_day, an_hour, rows_of, transition
 
 SHOP = site()  # works on Monday and Tuesday, 08:00-12:00 and 13:00-17:30
@@ -253,6 +257,62 @@ def test_drains_are_on_time_or_late_against_the_alarm() -> None:
     assert "Blotter tests: Thu 5 Mar, 10:00 water (JK)." in text
     assert "was empty" in text
     assert "200 ml (100 to 300 ml); kept, not learned from" in text
+
+
+# ---- surprises that somebody confirmed ----
+
+
+def surprised(*journal: Entry) -> HeldRows:
+    """A drain of Thursday that was not learned from at once, and what was told besides."""
+    rows = rows_of(SHOP, FROM_US, TO_US)
+    rows.journal = [entry(3, at("05T10:00"), Drain("tank", "emptied", 0.9)), *journal]
+    expected = Interval(0.1, 0.2, 0.3)
+    rows.checks = [DrainCheck(3, at("05T10:00"), "tank", 0.9, expected, False)]
+    return rows
+
+
+@pytest.mark.parametrize("when", ["05T10:20", "09T10:00", "30T10:00"])
+def test_a_surprise_counts_as_learned_from_once_it_is_confirmed(when: str) -> None:
+    rows = surprised(entry(4, at(when), Confirm("tank", "AM")))
+    log = log_of(rows, now_us=at("31T00:00"))
+    assert [line.believed for line in log.drains] == [True]
+    shown = text_of(sheet(SHOP, log))
+    assert "200 ml (100 to 300 ml)" in " ".join(shown.split())
+    assert "not learned from" not in shown
+    assert "not learned from" not in pdf_words(files.pdf_bytes(SHOP, log))
+    assert "traps,tank,drains not learned from,,0,,1" in csv_text(SHOP, log)
+    assert WeekOut.of(SHOP, log).drains[0].learned_from
+
+
+@pytest.mark.parametrize(
+    "journal",
+    [
+        [],
+        [entry(4, at("05T11:00"), Confirm("riser"))],  # another trap
+        [entry(2, at("05T09:00"), Confirm("tank"))],  # spoke of an earlier one
+        # the last measurement was another by then
+        [entry(4, at("06T09:00"), Drain("tank", "emptied", 0.2)),
+         entry(5, at("06T09:01"), Confirm("tank"))],
+        [entry(4, at("06T09:00"), Drain("tank", "empty")),
+         entry(5, at("09T09:01"), Confirm("tank"))],
+    ],
+)  # fmt: skip
+def test_a_surprise_that_nobody_confirmed_is_not_learned_from(journal: list[Entry]) -> None:
+    log = log_of(surprised(*journal), now_us=at("31T00:00"))
+    assert not next(line for line in log.drains if line.measured_kg == 0.9).believed
+    assert "kept, not learned from" in text_of(sheet(SHOP, log))
+    assert "kept, not learned from" in pdf_words(files.pdf_bytes(SHOP, log))
+    assert "traps,tank,drains not learned from,,1,,1" in csv_text(SHOP, log)
+    assert not all(drain.learned_from for drain in WeekOut.of(SHOP, log).drains)
+
+
+@pytest.mark.parametrize(
+    "between", [Drain("tank"), Drain("tank", "partly", 0.1), Drain("riser", "emptied", 0.1)]
+)
+def test_a_drain_that_was_not_measured_leaves_the_surprise_to_be_confirmed(between: Drain) -> None:
+    journal = entry(4, at("06T09:00"), between), entry(5, at("06T09:01"), Confirm("tank"))
+    log = log_of(surprised(*journal))
+    assert log.drains[0].believed
 
 
 def test_a_drain_that_was_due_before_the_week_is_late() -> None:
