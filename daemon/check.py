@@ -14,11 +14,14 @@ from daemon.check_reach import keys_words, signal_words
 from daemon.moisture.description import (
     WATER_KG_PER_M3,
     Fixed,
+    Line,
+    Measured,
     Outlet,
     Source,
     Station,
     Trap,
 )
+from daemon.moisture.flow import shows_pump_ups
 from daemon.moisture.margin import SLAB_GIVE_OR_TAKE_K, SLAB_K
 from daemon.site.default_tables import defaults_table
 from daemon.site.fitting_words import drain_words, station_words
@@ -229,6 +232,16 @@ def _slab_guess(site: Site) -> str:
 # --- the compressor and the sensors ----------------------------------------------------------
 
 
+def _unwatched(line: Line) -> str:
+    """When a compressor without a contact is taken to make air."""
+    tanks = [station for station in line.stations if station.kind == "receiver"]
+    if not any(isinstance(tank.pressure, Measured) for tank in tanks):
+        return "nobody sees when: neither a contact nor the tank's pressure says so"
+    if not shows_pump_ups(line):
+        return "nobody sees when: no contact says so, and readings are too far apart"
+    return "while the tank's pressure rises: no contact says so"
+
+
 def _compressor(site: Site) -> Iterator[str]:
     compressor = site.line.compressor
     delivered, width = (
@@ -240,7 +253,7 @@ def _compressor(site: Site) -> Iterator[str]:
     if compressor.flow_meter is not None:
         yield from _row("measured by", f"{compressor.flow_meter.channel}, while it speaks")
     if compressor.running is None:
-        yield from _row("makes air", "while the tank's pressure rises: no contact says so")
+        yield from _row("makes air", _unwatched(site.line))
     else:
         mark = _mark(site, "compressor", "running")
         yield from _row("makes air", f"while {compressor.running} is closed{mark}")

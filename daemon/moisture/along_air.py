@@ -81,7 +81,8 @@ def on_time(model: Model, state: State, course: Course, known: Sequence[float]) 
     if not unknown.any():
         return on_s
     gauge = model.gauge
-    if gauge is not None and not course.silent.get(gauge[0], True):
+    seen = gauge is not None and model.sees_pump_ups
+    if gauge is not None and seen and not course.silent.get(gauge[0], True):
         return on_s + np.where(unknown, course.booked_us, 0)[:, None] / 1e6
     if model.plan.line.compressor.off_when_closed:
         unknown &= course.is_open

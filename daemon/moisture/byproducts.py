@@ -26,7 +26,8 @@ from daemon.clock import HOUR_US
 from daemon.moisture import air
 from daemon.moisture.description import Measured
 from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, positive, standard_normal
-from daemon.moisture.leaks import REFERENCE_PA, load_cycle_leak
+from daemon.moisture.flow import shortest_pump_up_s
+from daemon.moisture.leaks import load_cycle_leak
 from daemon.moisture.model import Model, State
 from daemon.moisture.plant import Phase, Plant, Sample, decay, told
 
@@ -77,11 +78,7 @@ class ByProducts:
 
     def _sampled_often(self) -> bool:
         """Whether a pump-up takes long enough to be timed by readings of its pressure."""
-        compressor, stations = self._line.compressor, self.model.plan.stations
-        volumes = [stations[row].volume for row in self.model.plan.receivers]
-        volume_m3 = sum(each.value for each in volumes if each is not None)
-        swing_pa = compressor.cut_out.value - compressor.cut_in.value
-        seconds = volume_m3 * swing_pa / (REFERENCE_PA * compressor.delivered.value)
+        seconds = shortest_pump_up_s(self._line)
         return seconds * 1e6 >= PERIODS_A_PUMP_UP * self.model.period_us
 
     # ---- tick by tick ----

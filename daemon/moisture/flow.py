@@ -15,7 +15,9 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
+from daemon.moisture.description import Line
 from daemon.moisture.ensemble import Array
+from daemon.moisture.leaks import REFERENCE_PA
 from daemon.moisture.plan import Plan
 
 # The least rise or fall of receiver pressure that is taken for a pump-up or let-down, as a share of
@@ -35,6 +37,20 @@ LONGEST_PUMP_UP_US = 2 * 3_600_000_000
 
 # A `PumpWatch`'s fields
 Watched = tuple[bool, float, int, tuple[float, float], float, int, float, int]
+
+
+def shortest_pump_up_s(line: Line) -> float:
+    """How long the compressor takes over its pressure switch's span while nobody uses air."""
+    compressor = line.compressor
+    volumes = [station.volume for station in line.stations if station.kind == "receiver"]
+    volume_m3 = sum(each.value for each in volumes if each is not None)
+    swing_pa = compressor.cut_out.value - compressor.cut_in.value
+    return volume_m3 * swing_pa / (REFERENCE_PA * compressor.delivered.value)
+
+
+def shows_pump_ups(line: Line) -> bool:
+    """Whether readings come often enough to tell by the pressure how long the compressor ran."""
+    return shortest_pump_up_s(line) >= line.period_s
 
 
 @dataclass(frozen=True, slots=True)
@@ -88,6 +104,7 @@ def told_all(
                 rise_pa = now_pa - anchor_pa
                 # else it stopped long ago, and its tank warms
                 pumping = not rise_pa + swing_pa < slowest * (now_us - anchor_us)
+                pumping &= now_us - extreme_us <= LONGEST_PUMP_UP_US
                 runs_since_us = extreme_us if pumping else now_us
                 if rise_pa > swing_pa:
                     anchor_pa, anchor_us = now_pa, now_us

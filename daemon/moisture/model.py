@@ -91,6 +91,7 @@ class Model:
         self.fittings = Fittings(self.plan)
         self.period_us = round(description.period_s * 1e6)
         self.gauge = self._watched_receiver()
+        self.sees_pump_ups = flow.shows_pump_ups(description)
         # a station's own rule, or what holds while its sensor is silent: one lag, never both
         lagging = [
             s.temperature if isinstance(s.temperature, RiseByDuty) else rule
@@ -433,7 +434,7 @@ class Model:
         known = np.full(self.plan.line.members, times.on_us / 1e6)
         if times.unknown_us == 0:
             return known
-        if self.gauge is not None:
+        if self.gauge is not None and self.sees_pump_ups:
             gauge = held.get(self.gauge[0])
             if gauge is not None and not gauge.stale(to_us, self.period_us):
                 return known + booked_us / 1e6

@@ -8,6 +8,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from daemon.moisture.description import Measured, Station
+from daemon.moisture.flow import shortest_pump_up_s, shows_pump_ups
 from daemon.site.fitting_remarks import fitting_remarks, is_dried
 from daemon.site.names import Names
 from daemon.site.types import Site
@@ -55,7 +56,7 @@ def _sensors(site: Site) -> Iterator[str]:
 
 
 def _compressor(site: Site, loaded_contact: bool) -> Iterator[str]:
-    compressor = site.line.compressor
+    compressor, period_s = site.line.compressor, site.line.period_s
     measured = any(
         station.kind == "receiver" and isinstance(station.pressure, Measured)
         for station in site.line.stations
@@ -64,6 +65,14 @@ def _compressor(site: Site, loaded_contact: bool) -> Iterator[str]:
         yield (
             "Nothing says when the compressor makes air, neither a contact nor the tank's "
             "pressure: how much water there is stays a wide guess."
+        )
+    if compressor.running is None and measured and not shows_pump_ups(site.line):
+        quickest, every = (f"{each:.0f} s" for each in (shortest_pump_up_s(site.line), period_s))
+        yield (
+            f"The compressor fills its tank in {quickest} at the quickest, and sample_every is "
+            f"{every}: the pressure turns between two readings and does not tell how long it ran. "
+            "Wire a contact, or take readings more often; until then how much water there is "
+            "stays a wide guess."
         )
     if compressor.running is not None and not loaded_contact:
         yield (

@@ -122,6 +122,9 @@ SHOPS: dict[str, str] = {
     "always open": SITE.replace(HOURS, ""),
     "outlets watched": site_text(),
     "gauge without contact": _without(SITE, "motor"),
+    "a gauge that is read too seldom": _without(SITE, "motor")
+    .replace('name = "Birch Works"', 'name = "B"\nsample_every = "60 s"')
+    .replace('volume = "100 L"', 'volume = "50 L"'),
     "contact without gauge": _without(SITE, "tank-gauge"),
     "contact alone": _without(SITE, "tank-gauge", "intake-air", "pipe-end"),
     "off at night": SITE.replace("[compressor]\n", "[compressor]\noff_when_closed = true\n"),

@@ -20,6 +20,8 @@ INTAKE = '[[station]]\nid = "intake"\nkind = "intake"\n'
 TANK = '[[station]]\nid = "tank"\nkind = "receiver"\nafter = "intake"\n'
 LINE = AIR + MOTOR + INTAKE + TANK
 REGULATOR = '[[station]]\nid = "reg"\nkind = "regulator"\nafter = "tank"\nset = "3 bar"\n'
+GAUGE = '[[sensor]]\nid = "gauge"\ndriver = "pressure-transducer"\ninput = 0\nrange = "0-12 bar"\n'
+GAUGED = GAUGE + INTAKE + TANK + 'pressure = "gauge.pressure"\nvolume = "{}"\n'
 HOURS = '[hours]\nmon = ["08:00-16:00"]\n'
 
 
@@ -101,6 +103,19 @@ def test_values_nobody_said_are_marked_and_listed_with_the_reason() -> None:
     assert "running =" not in said
 
 
+@pytest.mark.parametrize(
+    ("text", "words"),
+    [
+        (INTAKE + TANK, "nobody sees when: neither a contact nor the tank's pressure says so"),
+        (GAUGED.format("4 L"), "nobody sees when: no contact says so, and readings are too far"),
+        (GAUGED.format("40 L"), "while the tank's pressure rises: no contact says so"),
+    ],
+)
+def test_when_a_compressor_without_a_contact_makes_air(text: str, words: str) -> None:
+    assert words in " ".join(explained(text).split())
+    assert ("at the quickest" in remarks(text)) == ("too far" in words)
+
+
 def test_a_width_that_nobody_said_is_listed_apart() -> None:
     text = explained(LINE + 'volume = "100 L"\n')
     assert '  [station "tank"] volume 5 L' in text
@@ -156,6 +171,7 @@ def test_the_tanks_temperature_is_asked_for_first() -> None:
         (HOURS + LINE, "Is the compressor off at night?"),
         (HOURS + LINE, "The hours are taken for UTC"),
         (AIR + INTAKE + TANK, "Nothing says when the compressor makes air"),
+        (GAUGED.format("4 L"), "in 3 s at the quickest, and sample_every is 10 s"),
         (MOTOR + INTAKE + TANK, "Nobody measures the humidity"),
         (MOTOR + INTAKE + TANK, "There is no barometer"),
         (LINE + 'trap = { drain = "float" }', "The float drain of tank can gum shut or stick open"),

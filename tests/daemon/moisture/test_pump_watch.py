@@ -199,3 +199,25 @@ def test_a_shop_without_a_contact_finds_its_duty_and_the_water_it_makes(
         if shop is without:
             assert on_s / 3600.0 == pytest.approx(duty, rel=0.06)
     assert drawn[1] == pytest.approx(drawn[0], rel=0.08)
+
+
+def test_a_pressure_that_turns_between_readings_tells_no_duty() -> None:
+    """A small tank read once a minute, up and down by the minute: its compressor runs half of the
+    time. That is taken for noise, which it might be, and nothing is booked hours later at once."""
+    always_open = SITE[: SITE.index("[hours]")] + SITE[SITE.index("[compressor]") :]
+    text = always_open.replace('running = "motor.contact"\n', "")
+    text = text.replace('volume = "100 L"', 'volume = "50 L"')
+    shop = site(text.replace('name = "Birch Works"', 'name = "B"\nsample_every = "60 s"'))
+    readings: list[Reading] = []
+    for minute in range(12 * 60 + 1):
+        # the last turns go a little higher than all before them
+        pressure = 6.2e5 if minute % 2 else (7.8e5 if minute < 600 else 7.9e5)
+        readings += a_tick(
+            shop, BEGUN_US + minute * 60 * SECOND_US, {"tank-gauge.pressure": pressure}
+        )
+    marks = replay(Core(shop), readings, []).marks
+    hours = [mark.hour.on_s / 3600.0 for mark in marks if mark.hour is not None]
+    assert len(hours) == 12
+    for duty in hours:
+        assert duty.max() <= 1.0
+        assert np.percentile(duty, 5) < 0.5 < np.percentile(duty, 95)
