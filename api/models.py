@@ -71,6 +71,11 @@ class TrapOut(BaseModel):
         description="only while the trap's contents are counted from then, because the state "
         "before could not be read: it may hold more than is said, until it is drained once",
     )
+    questioned_ml: int | None = Field(
+        default=None,
+        description="only while a measured volume, far from what was expected, waits to be "
+        "confirmed or taken back: it is not learned from",
+    )
 
     @classmethod
     def of(cls, view: TrapView) -> TrapOut:

@@ -76,6 +76,11 @@ KINDS: dict[str, Kind] = {
         "The alarm waits for nobody",
         "Only an alarm that is unacknowledged or returned unacknowledged can be acknowledged.",
     ),
+    "nothing-to-confirm": Kind(
+        409,
+        "No volume of this trap waits to be confirmed",
+        "Only a measured volume far from what was expected waits; see questioned_ml in the trap.",
+    ),
     "cannot-be-undone": Kind(
         409,
         "The drain cannot be taken back",

@@ -36,9 +36,10 @@ def trap_payload(view: TrapView) -> dict[str, Any]:
     says what makes it due, or what will make it due next; null when neither will. Of a drain that
     empties itself the volumes are those of one that works, and `chance_stuck` is the chance that it
     does not; a drain that is worked by hand has no such key. `counted_from` is there alone
-    while a trap's contents are counted from then because the state before could not be read.
+    while a trap's contents are counted from then because the state before could not be read, and
+    `questioned_ml` while a measured volume waits to be confirmed or taken back.
     """
-    stuck, counted_us = view.chance_stuck, view.counted_from_us
+    stuck, counted_us, questioned = view.chance_stuck, view.counted_from_us, view.questioned_kg
     return {
         "trap": view.trap,
         "at": format_rfc3339(view.at_us),
@@ -57,6 +58,7 @@ def trap_payload(view: TrapView) -> dict[str, Any]:
         "since": view.since,
         **({} if stuck is None else {"chance_stuck": round(stuck, 3)}),
         **({} if counted_us is None else {"counted_from": format_rfc3339(counted_us)}),
+        **({} if questioned is None else {"questioned_ml": millilitres(questioned)}),
     }
 
 

@@ -205,6 +205,7 @@ def made() -> dict[str, list[Message]]:
         because=None,
         chance_stuck=0.1,
         counted_from_us=AT_US,
+        questioned_kg=0.2,
     )
     return {
         "service": [

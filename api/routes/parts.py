@@ -22,11 +22,17 @@ router = APIRouter()
     status_code=201,
     summary="Say that a surprising volume was right",
     dependencies=[Depends(writes_allowed)],
-    responses=answered_by("unknown-trap", *ON_WRITING),
+    responses=answered_by("unknown-trap", "nothing-to-confirm", *ON_WRITING),
 )
 def confirm(trap: str, daemon: TheDaemon, body: AcknowledgeIn) -> RecordedOut:
     """The trap's last measured drain was far off what was expected: it is learned from now."""
     described(daemon, trap)
+    if all(view.questioned_kg is None for view in daemon.traps() if view.trap == trap):
+        raise Problem(
+            "nothing-to-confirm",
+            f"no measured volume of {trap} waits: the last one was as expected, is confirmed "
+            "already, or was taken back",
+        )
     return RecordedOut.of(daemon.record(Confirm(trap, body.by or "")).entry)
 
 

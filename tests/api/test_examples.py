@@ -6,6 +6,7 @@
 from __future__ import annotations
 
 import json
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -38,7 +39,7 @@ ASKED: list[tuple[str, str, str, Any]] = [
     ("get", DRAINS, "tank", None),
     ("post", f"{DRAINS}/{{seq}}/undo", "tank 1", {"by": "AM"}),
     ("post", f"{DRAINS}/{{seq}}/undo", "tank 1", {"by": "AM"}),
-    ("post", "/traps/{trap}/confirm", "tank", {"by": "AM"}),
+    ("post", "/traps/{trap}/confirm", "riser", {"by": "AM"}),
     ("get", "/outlets", "", None),
     ("get", "/outlets/{outlet}/margin", "spray-gun", "surface_c=18.5"),
     ("post", "/outlets/{outlet}/blotter", "spray-gun", {"result": "clean", "key": "b1"}),
@@ -75,6 +76,7 @@ def a_daemon() -> FakeRunning:
     may = frozenset({"read", "record", "service"})
     made = ApiKey("k7f3q2mz", "paint booth tablet", may, NOW_US - 48 * HOUR_US)  # type: ignore[arg-type]  # scopes
     running.kept_keys.keys[made.id] = (made, digest(KEY.partition(".")[2]))
+    running.views[1] = replace(running.views[1], questioned_kg=0.26)
     running.shown_stations = [INTAKE]
     running.shown_dew_points = [
         DewPointView("riser", "cell", NOW_US, 8e5, 271.15, 276.35, 285.0, "")

@@ -12,7 +12,7 @@ from daemon.journal import Confirm, SaltCheck, Service, Serviced
 from daemon.moisture.description import Fixed, Share, Trap
 from daemon.site.types import Site
 from tests.api.client import Client, problem_of
-from tests.api.fake import NOW_US, FakeRunning
+from tests.api.fake import NOW_US, FakeRunning, tank_view
 
 
 def with_more_stations(site: Site) -> Site:
@@ -27,7 +27,18 @@ def with_more_stations(site: Site) -> Site:
     return replace(site, line=line)
 
 
+def test_a_volume_that_surprised_nobody_is_not_confirmed(
+    running: FakeRunning, client: Client
+) -> None:
+    running.views[:] = [tank_view(), replace(tank_view(), trap="riser", questioned_kg=0.2)]
+    answer = client.post("/api/v1/traps/tank/confirm", json={"by": "AM"})
+    problem = problem_of(answer, 409, "nothing-to-confirm")
+    assert "no measured volume of tank waits" in problem["detail"]
+    assert not running.journal
+
+
 def test_a_surprising_volume_is_confirmed(running: FakeRunning, client: Client) -> None:
+    running.views[:] = [replace(tank_view(), questioned_kg=3.8)]
     response = client.post("/api/v1/traps/tank/confirm", json={"by": "AM"})
     assert response.status_code == 201
     assert response.json() == {"seq": 1, "at": "2026-12-01T09:00:00Z"}

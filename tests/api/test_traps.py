@@ -72,6 +72,15 @@ def test_a_trap_that_is_counted_without_an_earlier_state_says_since_when(
     assert riser["counted_from"] == "2026-12-01T08:00:00Z"
 
 
+def test_a_trap_says_what_volume_waits_to_be_confirmed(
+    running: FakeRunning, client: Client
+) -> None:
+    running.views[1] = replace(running.views[1], questioned_kg=0.2)
+    tank, riser = client.get("/api/v1/traps").json()
+    assert "questioned_ml" not in tank
+    assert riser["questioned_ml"] == 200
+
+
 def test_only_a_drain_that_empties_itself_says_how_likely_it_is_stuck(
     running: FakeRunning, client: Client
 ) -> None:
