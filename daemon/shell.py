@@ -641,7 +641,8 @@ class Shell:
         learned = [
             each for each in estimate.learned if (each.at_us, each.trap) == (entry.at_us, trap)
         ]
-        return " ".join(learned_words(self._site, each) for each in learned)
+        last_us = state.traps[trap].last_drain_us if trap else -1
+        return " ".join(learned_words(self._site, each, last_us) for each in learned)
 
     def _with_pending(self, state: CoreState, now_us: int) -> Estimate | None:
         """What the entries that no tick has taken in yet will do; None without any."""

@@ -5,6 +5,7 @@ from __future__ import annotations
 import math
 from dataclasses import replace
 
+from daemon.clock import MINUTE_US
 from daemon.due import calendar_due_us, interval_words, volume_words
 from daemon.journal import Confirm, Drain, Entry, Service
 from daemon.moisture import beliefs as believed
@@ -18,6 +19,7 @@ _LOOKED = {
     "oily": "Oily water: look where the oil comes from, and at the coalescer's element.",
     "milky": "Milky water is oil and water mixed: only a separator or a waste carrier parts them.",
 }
+SAME_OPENING_US = 30 * MINUTE_US
 TIGHTER = 0.95  # of the spread of what is to come: from here down a person may be told so
 
 
@@ -102,13 +104,28 @@ class Taking:
         return []
 
 
+def _second_cup(learned: Learned, last_drain_us: int) -> str:
+    """More than there can be, soon after a drain: a cup may have been too small for all of it."""
+    passed_us = learned.at_us - last_drain_us
+    if last_drain_us < 0 or passed_us > SAME_OPENING_US:
+        return ""
+    if learned.measured_kg <= learned.expected_kg[1]:
+        return ""
+    minutes = max(round(passed_us / MINUTE_US), 1)
+    ago = "a minute" if minutes == 1 else f"{minutes} minutes"
+    return (
+        f" If it came out together with what was recorded {ago} before, take that one back and "
+        "enter both as one drain."
+    )
+
+
 def look_words(drain: Drain) -> str:
     """What follows from how the water looked. Common practice, no source."""
     return _LOOKED.get(drain.look, "")
 
 
-def learned_words(site: Site, learned: Learned) -> str:
-    """What is said to whoever measured."""
+def learned_words(site: Site, learned: Learned, last_drain_us: int = -1) -> str:
+    """What is said to whoever measured; `last_drain_us` is when the trap was drained before."""
     expected = interval_words(site, *learned.expected_kg)
     measured = volume_words(site, learned.measured_kg)
     found = f"you measured {measured}" if learned.measured_kg > 0.0 else "it was empty"
@@ -116,6 +133,7 @@ def learned_words(site: Site, learned: Learned) -> str:
         return (
             f"{learned.trap}: {found}, but {expected} was expected. It is kept, "
             "and not learned from until you confirm it: look at the figure and its unit again."
+            + _second_cup(learned, last_drain_us)
         )
     after = "is tighter" if learned.narrowed < TIGHTER else "has learned from it"
     return (

@@ -8,6 +8,7 @@ import pytest
 
 from daemon.advance import Core
 from daemon.journal import Drain, Entry
+from daemon.moisture.learning import Learned
 from daemon.state import CoreState, Inputs
 from daemon.taking import learned_words
 from tests.daemon.shops import SITE, site, working
@@ -65,3 +66,21 @@ def test_where_there_was_nothing_left_to_learn_it_does_not_say_tighter() -> None
     assert said[0].endswith("is tighter.")
     assert said[-1].endswith("has learned from it.")
     assert ratios[-1] == pytest.approx(1.0, abs=0.1)
+
+
+@pytest.mark.parametrize(
+    ("minutes", "volume_kg", "hinted"), [(0.5, 0.2, True), (29.0, 0.2, True), (31.0, 0.2, False)]
+)
+def test_a_second_cup_soon_after_is_asked_about(
+    minutes: float, volume_kg: float, hinted: bool
+) -> None:
+    """Somebody whose cup is too small measures twice: the second time there should be nothing."""
+    flagged = Learned(
+        RECORD[0][0], "tank", volume_kg, (0.0, 0.004, 0.01), 9.0, True, (0.0, 0.004, 0.01)
+    )
+    before_us = RECORD[0][0] - round(minutes * 60e6)
+    words = learned_words(SHOP, flagged, before_us)
+    assert ("take that one back and enter both as one drain" in words) == hinted
+    assert ("a minute before" in words) == (minutes < 1.0)
+    assert "both as one" not in learned_words(SHOP, flagged)
+    assert "both as one" not in learned_words(SHOP, replace(flagged, measured_kg=0.0), before_us)
