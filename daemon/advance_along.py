@@ -182,6 +182,7 @@ class _Watch:
         samples = found.course.times_us[:count] // SAMPLED_EVERY_US
         self.switches = any(floats.switches(core.model.plan))
         self.samples = list(changes(before_us, samples))
+        self.next_sample = 0
         self.end = found.state(count - 1)
         looks = Looks(core, self.state, found, count)
         rows = {*looks.rows(), *fitting_rows(core, found, count)}
@@ -195,16 +196,15 @@ class _Watch:
         while row < self.count:
             happens = self.plant.next(self.state.followed.plant, row)
             full = min(_next(self.looks, row, self.count), self._runs_out(row))
-            sample, margins = (
-                _next(rows, row, self.count) for rows in (self.samples, self.margins)
-            )
-            row = min(full, happens, sample, margins, self._reminds(row))
+            margins = _next(self.margins, row, self.count)
+            row = min(full, happens, margins, self._reminds(row))
             if row == self.count:
                 break
             if row == happens:
+                self._sample_before(row)
                 full = min(full, self._happened(row))
-            elif row == sample:
-                self._sampled(row)
+            else:
+                self._sample_before(row + 1)
             if row == margins:
                 full = min(full, self._margins(row))
             if row == full:
@@ -212,6 +212,7 @@ class _Watch:
             else:
                 self._glance(row)
             row += 1
+        self._sample_before(self.count)
         sensed = self.state.sensed
         observed = gathered(self.core.model.plan, sensed.observed, self.found, self.count)
         self.state = replace(self.state, model=self.end, sensed=replace(sensed, observed=observed))
@@ -261,20 +262,26 @@ class _Watch:
     def _happened(self, row: int) -> int:
         """What is followed beside the water; this tick, if an alarm hangs on it, else the end."""
         before, after = self.state, self.found.dry_state(row)
-        followed, drains = self._followed(row, after), before.drains
+        followed, drains = self._followed(row, after), before.drains  # a sample is taken with it
+        self.next_sample = bisect_left(self.samples, row + 1, self.next_sample)
         if self.core.drains.traps:
             drains = self.core.drains.leaked(drains, followed.plant)
         self.state = replace(before, followed=followed, drains=drains)
         alike = _alarming(followed.plant) == _alarming(before.followed.plant)
         return self.count if alike and drains.leak.blows == before.drains.leak.blows else row
 
-    def _sampled(self, row: int) -> None:
-        """A sample for the days ahead."""
-        followed = self.state.followed
-        before_us = self.times_us[row - 1] if row else self.found.before.time_us
-        foresight = self.core.following.foreseer.sampled(
-            followed.foresight, before_us, self.found.sight(row)
-        )
+    def _sample_before(self, row: int) -> None:
+        """Take the samples of the days ahead that stand in rows before this one."""
+        first = self.next_sample
+        self.next_sample = bisect_left(self.samples, row, first)
+        if self.next_sample == first:
+            return
+        followed, foreseer = self.state.followed, self.core.following.foreseer
+        seen = [
+            (self.times_us[at - 1] if at else self.found.before.time_us, self.found.sight(at))
+            for at in self.samples[first : self.next_sample]
+        ]
+        foresight = foreseer.sampled(followed.foresight, seen)
         self.state = replace(self.state, followed=replace(followed, foresight=foresight))
 
     def _margins(self, row: int) -> int:

@@ -8,7 +8,7 @@ remembers its last answer, which changes nothing but its cost.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, replace
 from functools import lru_cache
 from zoneinfo import ZoneInfo
@@ -91,11 +91,13 @@ class Foreseer:
         """After a step of the model from `before_us`."""
         if not outlook.is_sampled(before_us, state.time_us):
             return foresight
-        return self.sampled(foresight, before_us, outlook.sight(state))
+        return self.sampled(foresight, [(before_us, outlook.sight(self._model.plan, state))])
 
-    def sampled(self, foresight: Foresight, before_us: int, sight: outlook.Sight) -> Foresight:
-        """After a step of the model from `before_us` that is sampled."""
-        pattern = outlook.told(foresight.pattern, self._model.plan, before_us, sight)
+    def sampled(self, foresight: Foresight, seen: Iterable[tuple[int, outlook.Sight]]) -> Foresight:
+        """After steps of the model that are sampled: the time before each, and what is seen."""
+        pattern = foresight.pattern
+        for before_us, sight in seen:
+            pattern = outlook.told(pattern, self._model.plan, before_us, sight)
         return replace(foresight, pattern=pattern)
 
     def hour(

@@ -145,8 +145,14 @@ class Stretch:
             self.conditions.temperature_k[0, row],
             self.intake_ratio[row],
             self.air.drawn[row],
-            self._held(row),
+            {name: float(values[row]) for name, values in self.speaking},
         )
+
+    @property
+    def speaking(self) -> list[tuple[str, Array]]:
+        """The channels that are not silent, and what they said by each tick."""
+        silent = self.course.silent
+        return [each for each in self.course.values.items() if not silent[each[0]]]
 
     def moved(self, first: int, last: int) -> tuple[Array, Array, Array]:
         """Seconds run, air drawn in and used in the rows from `first` on, before `last`:

@@ -65,7 +65,7 @@ class Sight:
     intake_k: Array
     intake_ratio: Array  # kg/kg, of what is drawn in
     drawn_kg: Array  # of all time
-    held: Mapping[str, Held]
+    said: Mapping[str, float]  # by every channel that speaks, its last good value
 
 
 def is_sampled(before_us: int, now_us: int) -> bool:
@@ -73,10 +73,16 @@ def is_sampled(before_us: int, now_us: int) -> bool:
     return now_us // SAMPLED_EVERY_US != before_us // SAMPLED_EVERY_US
 
 
-def sight(state: State) -> Sight:
+def sight(plan: Plan, state: State) -> Sight:
     """What is seen after a step of the model."""
+    period_us = round(plan.line.period_s * 1e6)
+    said = {
+        name: held.value
+        for name, held in state.held.items()
+        if not held.stale(state.time_us, period_us)
+    }
     intake_k = state.conditions.temperature_k[0]
-    return Sight(state.time_us, intake_k, intake_ratio(state), state.air.drawn, state.held)
+    return Sight(state.time_us, intake_k, intake_ratio(state), state.air.drawn, said)
 
 
 def told(pattern: Pattern, plan: Plan, before_us: int, sight: Sight) -> Pattern:
@@ -123,10 +129,8 @@ def _standing(plan: Plan, sight: Sight, warm_k: float) -> list[tuple[str, float]
     found = []
     for station in plan.stations[1:]:
         for source, less in ((station.temperature, warm_k), (station.pressure, 0.0)):
-            if isinstance(source, Measured) and source.channel in sight.held:
-                held = sight.held[source.channel]
-                if not held.stale(sight.time_us, round(plan.line.period_s * 1e6)):
-                    found.append((source.channel, held.value - less))
+            if isinstance(source, Measured) and source.channel in sight.said:
+                found.append((source.channel, sight.said[source.channel] - less))
     return found
 
 
