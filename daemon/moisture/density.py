@@ -92,11 +92,12 @@ def compressibility_unchecked(temperature_k: Array, pressure_pa: Array, x: Array
     """`compressibility` for arrays of one or more dimensions, without checks."""
     celsius = temperature_k - 273.15
     ratio = pressure_pa / temperature_k
-    first = 1.58123e-6 + celsius * (-2.9331e-8 + celsius * 1.1043e-10)
-    second = 5.707e-6 - 2.051e-8 * celsius
-    third = 1.9898e-4 - 2.376e-6 * celsius
-    z: Array = 1.0 - ratio * (first + x * (second + x * third))
-    z += ratio * ratio * (1.83e-11 - 0.765e-8 * x * x)
+    # the coefficients of celsius first: x is often smaller than the rest, a value a member
+    constant = 1.58123e-6 + x * (5.707e-6 + x * 1.9898e-4)
+    slope = -2.9331e-8 - x * (2.051e-8 + x * 2.376e-6)
+    squared = 1.83e-11 - 0.765e-8 * x * x
+    z: Array = 1.0 - ratio * (constant + celsius * (slope + celsius * 1.1043e-10))
+    z += ratio * ratio * squared
     return z
 
 
