@@ -67,13 +67,30 @@ class _Channel:
         values = self.said.values
         order = np.arange(len(values))
         same = values == np.concatenate(([self.before.value], values[:-1]))
+        if not same.any():  # as nearly always
+            self.last_change, self.repeated = order, np.zeros_like(order)
+            return
         self.last_change = np.maximum.accumulate(np.where(same, -1, order))
         self.repeated = np.where(
             self.last_change >= 0, order - self.last_change, self.before.repeated + order + 1
         )
 
+    def _is_plain(self) -> bool:
+        """Whether no reading can be bad, at a glance."""
+        rule, values = self.rule, self.said.values
+        if rule.saturates or (rule.frozen_running_s is not None and self.may_stand()):
+            return False
+        if not (values.min() >= rule.lowest and values.max() <= rule.highest):
+            return False
+        if rule.fastest_per_s is None:
+            return True
+        steps = np.abs(np.diff(values, prepend=self.before.value))
+        return bool(steps.max() <= rule.jump)
+
     def first_bad(self) -> int:
         """The first reading that is not simply good."""
+        if self._is_plain():
+            return len(self.said.values)
         rule, before, values, times = self.rule, self.before, self.said.values, self.said.times_us
         bad = (values < rule.lowest) | (values > rule.highest)
         if rule.fastest_per_s is not None:
