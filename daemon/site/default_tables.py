@@ -83,7 +83,8 @@ def _general() -> Iterator[Row]:
     )
     share = defaults.OF_DISPLACEMENT
     yield "", "", f"{_share(share)} of `displacement`, where that is said", "practice"
-    yield "", "`running`", "the only contact that nothing else uses", "else the tank's pressure"
+    otherwise = "else the tank's pressure, read at least once in a pump-up"
+    yield "", "`running`", "the only contact that nothing else uses", otherwise
     for key, value in (("`cut_in`", defaults.CUT_IN_PA), ("`cut_out`", defaults.CUT_OUT_PA)):
         yield "", key, show_pressure(value, "metric", gauge=True), defaults.CUT_BECAUSE
     yield "", "`off_when_closed`", "`true`", "switched off overnight (practice)"
