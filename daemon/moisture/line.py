@@ -235,7 +235,12 @@ class _Step:
             self.spilled[i] -= spill
         parts = parts_of(self.plan, self.air, i, safe)
         for flow, part in zip(self.plan.outflows[i], parts, strict=True):
-            if flow.station >= 0:
+            if flow.station >= 0 and isinstance(part, float):  # all of it: the usual case
+                self.vapor_in[flow.station] += vapor
+                self.liquid_in[flow.station] += liquid
+                if self.spills:
+                    self.spill_in[flow.station] += spill
+            elif flow.station >= 0:
                 self.vapor_in[flow.station] += part * vapor
                 self.liquid_in[flow.station] += part * liquid
                 if self.spills:
