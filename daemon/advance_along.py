@@ -16,18 +16,16 @@ from daemon.advance import Core
 from daemon.alarms import Transition
 from daemon.dew_points_along import gathered
 from daemon.drain_alarms import STUCK_LIMIT
-from daemon.falls_along import gauges_after, may_fall
+from daemon.falls_along import gauges_after, may_fall, without_pressure_as_before
 from daemon.fittings_along import fitting_rows
 from daemon.followed import Followed
-from daemon.judged_along import first
 from daemon.looks_along import Looks, changes
 from daemon.moisture import floats
 from daemon.moisture.along import Stretch, stretch
 from daemon.moisture.along_course import Ints
 from daemon.moisture.along_drains import let_down_from
 from daemon.moisture.contact import ContactState
-from daemon.moisture.description import Measured, Source
-from daemon.moisture.drains import EMPTY_PA, chance_stuck
+from daemon.moisture.drains import chance_stuck
 from daemon.moisture.flow import PumpWatch
 from daemon.moisture.model import Moved, State
 from daemon.moisture.outlook import SAMPLED_EVERY_US
@@ -41,7 +39,6 @@ from daemon.ticks_along import Ticks, ticks_along
 from daemon.unset_clock import SET_FROM_US
 
 ELEMENTS = 23_552  # ticks times members that are worked on together: they stay near the processor
-HIGHEST_BAROMETER_PA = 110_000.0
 LEAST_TICKS = 6  # fewer are as quick one by one
 
 
@@ -92,11 +89,11 @@ class AdvanceAlong:
 
     def _usual(self, ticks: Ticks) -> int:
         """How many of the ticks are as usual, as far as readings tell."""
-        fittings, fitted = self.core.model.fittings, ticks.before.model.fittings
-        good = min(ticks.good, let_down_from(fitted, ticks.times_us))
-        for i, since_us in zip(fittings.tanks, fitted.empty_since_us, strict=True):
-            pressure = self.core.model.plan.stations[i].pressure
-            good = min(good, _first_other(ticks, pressure, since_us >= 0))
+        good = min(
+            ticks.good,
+            let_down_from(ticks.before.model.fittings, ticks.times_us),
+            without_pressure_as_before(self.core.model, ticks),
+        )
         for record in ticks.before.drains.drains.values():
             stuck = [chance_stuck(record.seen_us, at_us) >= STUCK_LIMIT for at_us in ticks.ends_us]
             good = 0 if stuck[0] != stuck[1] else good  # perhaps once in a year
@@ -132,19 +129,6 @@ class AdvanceAlong:
             quality=ticks.judged.after(count),
             drains=drains,
         )
-
-
-def _first_other(ticks: Ticks, pressure: Source, was_empty: bool) -> int:
-    """The first tick in which a tank may not stand with or without pressure as before."""
-    silent = not isinstance(pressure, Measured) or ticks.course.silent.get(pressure.channel, True)
-    if silent or not isinstance(pressure, Measured):
-        return 0 if was_empty else ticks.good
-    values = ticks.course.values[pressure.channel]
-    if pressure.gauge:
-        return first((values < EMPTY_PA) != was_empty, ticks.good)
-    if was_empty:
-        return 0  # not by the gauge alone
-    return first(values < EMPTY_PA + HIGHEST_BAROMETER_PA, ticks.good)
 
 
 @dataclass(frozen=True, slots=True)

@@ -7,8 +7,9 @@ import numpy as np
 from daemon.drain_watch import FALL_PA, FALL_WITHIN_US, DrainWatching
 from daemon.judged_along import first
 from daemon.moisture.conditions import LOWEST_PA
-from daemon.moisture.description import Measured
-from daemon.moisture.drains import LOW_PA
+from daemon.moisture.description import Measured, Source
+from daemon.moisture.drains import EMPTY_PA, LOW_PA
+from daemon.moisture.model import Model
 from daemon.ticks_along import Ticks
 
 HIGHEST_BAROMETER_PA = 110_000.0
@@ -17,7 +18,7 @@ Gauges = dict[str, tuple[tuple[int, float], ...]]
 
 def may_fall(watching: DrainWatching, ticks: Ticks) -> int:
     """The first tick that may be part of a fast fall; it may turn out to be none."""
-    good = _as_low(watching, ticks)
+    good = len(ticks.times_us)
     before = ticks.before.drains.gauges
     for tank, (channel, volume_m3) in watching.volumes.items():
         said = ticks.said[channel]
@@ -42,23 +43,32 @@ def may_fall(watching: DrainWatching, ticks: Ticks) -> int:
     return good
 
 
-def _as_low(watching: DrainWatching, ticks: Ticks) -> int:
-    """The first tick in which a tank may hold less than a bar, or may again, unlike before."""
-    model, good = watching.model, len(ticks.times_us)
-    fitted = ticks.before.model.fittings
-    for i, since_us in zip(model.fittings.tanks, fitted.low_since_us, strict=True):
+def without_pressure_as_before(model: Model, ticks: Ticks) -> int:
+    """The first tick in which a tank may stand without pressure, or may hold less than a bar,
+    unlike before."""
+    good, fitted = len(ticks.times_us), ticks.before.model.fittings
+    for i, empty_us, low_us in zip(
+        model.fittings.tanks, fitted.empty_since_us, fitted.low_since_us, strict=True
+    ):
         source = model.plan.stations[i].pressure
-        if not isinstance(source, Measured) or ticks.course.silent.get(source.channel, True):
-            good = good if since_us >= 0 else 0
-            continue
-        values = ticks.course.values[source.channel]
-        if source.gauge:
-            good = min(good, first((values < LOW_PA) != (since_us >= 0), good))
-        elif since_us >= 0:
-            good = min(good, first(values >= LOW_PA + LOWEST_PA, good))
-        else:
-            good = min(good, first(values < LOW_PA + HIGHEST_BAROMETER_PA, good))
+        # where no gauge speaks nobody takes the tank for empty, or for one that holds a bar
+        good = min(good, _as_before(ticks, source, EMPTY_PA, empty_us >= 0, unheard=False))
+        good = min(good, _as_before(ticks, source, LOW_PA, low_us >= 0, unheard=True))
     return good
+
+
+def _as_before(ticks: Ticks, source: Source, level_pa: float, below: bool, unheard: bool) -> int:
+    """The first tick in which a gauge may be below a level, or may not be, unlike before;
+    `unheard` is what counts where none speaks."""
+    good = len(ticks.times_us)
+    if not isinstance(source, Measured) or ticks.course.silent.get(source.channel, True):
+        return good if below == unheard else 0
+    values = ticks.course.values[source.channel]
+    if source.gauge:
+        return first((values < level_pa) != below, good)
+    if below:
+        return first(values >= level_pa + LOWEST_PA, good)
+    return first(values < level_pa + HIGHEST_BAROMETER_PA, good)
 
 
 def _rests(ticks: Ticks, row: int) -> bool:
