@@ -61,15 +61,6 @@ class Record:
                 found = min(found, int(told.times_us[place]))
         return found
 
-    def last_by(self, until_us: int) -> int:
-        """The last good reading that is not after a time; -1 where there is none."""
-        found = -1
-        for told in self.channels.values():
-            place = int(np.searchsorted(told.times_us, until_us, side="right"))
-            if place:
-                found = max(found, int(told.times_us[place - 1]))
-        return found
-
     def readings(self, after_us: int, until_us: int) -> list[Reading]:
         """The readings of (after, until] one by one, good and bad, in order of time."""
         found = [
