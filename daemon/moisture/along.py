@@ -176,8 +176,7 @@ def stretch(model: Model, state: State, course: Course, switches: Switches) -> S
     rows = zip(plan.receivers, state.air.seen, strict=True)
     if any(receiver in now.measured and not seen for receiver, seen in rows):
         return None  # the first sight of a gauge
-    same = along_air.alike(plan, course.silent)
-    saturated, intake_ratio = along_air.saturation(now, same)
+    saturated, intake_ratio = along_air.saturation(now)
     drawn = on_s * model.delivered(parameters, now, intake_ratio)
     if (meter := plan.line.compressor.flow_meter) is not None:
         to_us = int(course.times_us[-1])

@@ -9,7 +9,7 @@ change in it, and every channel is silent all along or not at all.
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from itertools import pairwise
 from typing import Any, cast
@@ -20,9 +20,9 @@ import numpy.typing as npt
 from daemon.moisture import air, flow, hardy
 from daemon.moisture.along_conditions import least_of
 from daemon.moisture.along_course import Course
+from daemon.moisture.along_fading import Fading
 from daemon.moisture.along_saturation import saturated_ratios
 from daemon.moisture.conditions import Conditions
-from daemon.moisture.description import Fixed, Like, Measured
 from daemon.moisture.ensemble import Array
 from daemon.moisture.model import DUTY_LOGIT_SD, DUTY_MEMORY_S, Model, State
 from daemon.moisture.plan import Plan
@@ -80,9 +80,8 @@ def on_time(model: Model, state: State, course: Course, known: Sequence[float]) 
     unknown = course.unknown_us > 0
     if not unknown.any():
         return on_s
-    gauge = model.gauge
-    seen = gauge is not None and model.sees_pump_ups
-    if gauge is not None and seen and not course.silent.get(gauge[0], True):
+    gauge = model.gauge if model.sees_pump_ups else None
+    if gauge is not None and not course.silent.get(gauge[0], True):
         return on_s + np.where(unknown, course.booked_us, 0)[:, None] / 1e6
     if model.plan.line.compressor.off_when_closed:
         unknown &= course.is_open
@@ -107,37 +106,16 @@ def duties(model: Model, state: State, on_s: Array, dt_s: float) -> dict[int, Ar
             keeps = (1.0 - weight) ** np.arange(1, len(now) + 1)
             found[i] = way[:, None] + keeps[:, None] * state.duty[i]
             continue
-        rows = np.empty((len(now), state.duty.shape[1]))
-        before = state.duty[i]
-        for after, share in zip(rows, now, strict=True):
-            np.subtract(share, before, out=after)
-            np.multiply(after, weight, out=after)
-            np.add(after, before, out=after)
-            before = after
-        found[i] = rows
+        found[i] = Fading(state.duty[i], now, np.full(len(now), weight)).rows()
     return found
 
 
 # ---- saturation ----
 
 
-def alike(plan: Plan, silent: Mapping[str, bool]) -> list[bool]:
-    """Which stations' temperatures differ between members by a constant, as far as is said."""
-    found = [False] * len(plan.stations)
-    for i in plan.temperature_order:
-        match plan.stations[i].temperature:
-            case Measured(channel=channel):
-                found[i] = not silent.get(channel, True)
-            case Like(station=station):
-                found[i] = found[plan.index[station]]
-            case Fixed():
-                found[i] = True
-    return found
-
-
-def saturation(now: Conditions, wander_alike: Sequence[bool]) -> tuple[Array, Array]:
+def saturation(now: Conditions) -> tuple[Array, Array]:
     """Every station's humidity ratio at saturation, and that of the air drawn in, at every tick."""
-    saturated, fraction = saturated_ratios(now.temperature_k, now.pressure_pa, wander_alike)
+    saturated, fraction = saturated_ratios(now.temperature_k, now.pressure_pa)
     if least_of(now.temperature_k, 0) <= hardy.TRIPLE_POINT_K:
         fraction *= hardy.water_over_ice(now.temperature_k[0])
     fraction *= now.relative_humidity

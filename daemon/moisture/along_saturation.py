@@ -21,11 +21,10 @@ import numpy as np
 
 from daemon.moisture import air, hardy
 from daemon.moisture.along_conditions import Wandering
-from daemon.moisture.conditions import COLDEST_K, HOTTEST_K, LOWEST_PA
+from daemon.moisture.conditions import LOWEST_PA
 from daemon.moisture.ensemble import Array
 
 ALIKE_K = 2e-11  # 1e-12 of a humidity ratio, and a hundred times what rounding makes of 300 K
-CLEAR_K = 1e-6  # nobody stands at an end of the range who stays this far from it
 FEWEST_NODES, MOST_NODES = 2, 8
 # ln e is nearly a constant less c / T, with c / T below 60 from 200 K on: its error over
 # T +- half is some c / T (half / T) ** nodes / 2 ** (nodes - 1).
@@ -35,15 +34,14 @@ MOST_SHARE = 0.9  # of vapor in air: beyond it it all but boils
 
 
 def saturated_ratios(
-    kelvin: Array | Wandering, pressure_pa: Array | Wandering, alike: Sequence[bool]
+    kelvin: Array | Wandering, pressure_pa: Array | Wandering
 ) -> tuple[Array, Array]:
     """Humidity ratios at saturation of every station, and the first one's mole fraction.
 
     Parameters
     ----------
-    kelvin, pressure_pa : (stations, ticks, members).
-    alike : of which stations it is known that every member's temperature is the same but for its
-        own constant, as long as none stands at an end of the range; of others it is looked at.
+    kelvin, pressure_pa : (stations, ticks, members); whether members' temperatures wander alike
+        is looked at, station by station, where they do not come as `Wandering`.
 
     Returns
     -------
@@ -52,7 +50,7 @@ def saturated_ratios(
     """
     ratios = np.empty(kelvin.shape)
     fraction = np.empty(kelvin.shape[1:])
-    courses = list(_courses(kelvin, alike))
+    courses = list(_courses(kelvin))
     for phase in (hardy.WATER, hardy.ICE):
         few = [course for course in courses if course.phase is phase and course.nodes]
         for course, series in zip(few, _series(phase, few), strict=True):
@@ -69,21 +67,18 @@ def saturated_ratios(
     return ratios, fraction
 
 
-def _courses(kelvin: Array | Wandering, alike: Sequence[bool]) -> Iterator[_Course]:
+def _courses(kelvin: Array | Wandering) -> Iterator[_Course]:
     if isinstance(kelvin, Wandering):
         for i, (start, way) in enumerate(zip(kelvin.start, kelvin.way, strict=True)):
             yield _Course(i, start, way)
         return
-    for i, (rows, said) in enumerate(zip(kelvin, alike, strict=True)):
+    for i, rows in enumerate(kelvin):
         way = rows[:, 0] - rows[0, 0]
-        yield _Course(i, rows[0], way if _are_alike(rows, way, said) else None)
+        yield _Course(i, rows[0], way if _are_alike(rows, way) else None)
 
 
-def _are_alike(rows: Array, way: Array, said: bool) -> bool:
-    """Whether all members go the same way: as it is said, or as it is seen."""
-    if said:
-        least, most = float(rows[0].min() + way.min()), float(rows[0].max() + way.max())
-        return least > COLDEST_K + CLEAR_K and most < HOTTEST_K - CLEAR_K
+def _are_alike(rows: Array, way: Array) -> bool:
+    """Whether all members go the same way."""
     apart = rows - rows[0]
     apart -= way[:, None]
     return bool(apart.max() <= ALIKE_K and apart.min() >= -ALIKE_K)
