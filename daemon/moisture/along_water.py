@@ -22,7 +22,7 @@ from daemon.moisture.along_fittings import FittingsAlong
 from daemon.moisture.along_receiver import Pool, Receiver, filled
 from daemon.moisture.along_waiting import Waiting, released
 from daemon.moisture.ensemble import Array
-from daemon.moisture.line import Ledger, WaterParameters, WaterState, parts_of
+from daemon.moisture.line import Ledger, WaterParameters, WaterState, part_of, parts_of
 from daemon.moisture.plan import Plan
 
 
@@ -195,7 +195,10 @@ class WaterAlong:
         safe = np.where(moving, through, 1.0) if several and moving is not None else through
         parts = parts_of(self.plan, self.air.moved, i, safe)
         for flow, part in zip(self.plan.outflows[i], parts, strict=True):
-            vapor, wet, ran_over = (_part(part, each) for each in (place.vapor_out, liquid, spill))
+            vapor = part_of(part, place.vapor_out)
+            wet, ran_over = (
+                None if each is None else part_of(part, each) for each in (liquid, spill)
+            )
             if flow.station >= 0:
                 self._vapor_in[flow.station] = vapor
                 self._liquid_in[flow.station] = wet
@@ -440,13 +443,6 @@ def _last_moving(through: Array, row: int) -> _LastMoving:
     moving = through[: row + 1] > 0.0
     ever = np.flatnonzero(moving.any(axis=0))
     return ever, row - moving[::-1].argmax(axis=0)[ever]
-
-
-def _part(part: Array | float, whole: Array | None) -> Array | None:
-    if whole is None or (isinstance(part, float) and part == 1.0):
-        return whole
-    found: Array = part * whole
-    return found
 
 
 def _plus(one: Array | None, other: Array | None) -> Array | None:

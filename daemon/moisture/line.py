@@ -235,21 +235,24 @@ class _Step:
             self.spilled[i] -= spill
         parts = parts_of(self.plan, self.air, i, safe)
         for flow, part in zip(self.plan.outflows[i], parts, strict=True):
-            if flow.station >= 0 and isinstance(part, float):  # all of it: the usual case
-                self.vapor_in[flow.station] += vapor
-                self.liquid_in[flow.station] += liquid
+            if flow.station >= 0:
+                self.vapor_in[flow.station] += part_of(part, vapor)
+                self.liquid_in[flow.station] += part_of(part, liquid)
                 if self.spills:
-                    self.spill_in[flow.station] += spill
-            elif flow.station >= 0:
-                self.vapor_in[flow.station] += part * vapor
-                self.liquid_in[flow.station] += part * liquid
-                if self.spills:
-                    self.spill_in[flow.station] += part * spill
+                    self.spill_in[flow.station] += part_of(part, spill)
             else:
-                gone = part * (liquid + spill)
-                self.vapor_out += part * vapor
+                gone = part_of(part, liquid + spill)
+                self.vapor_out += part_of(part, vapor)
                 self.liquid_out += gone
                 self.liquid_at[flow.outlet] = gone
+
+
+def part_of(part: Array | float, whole: Array) -> Array:
+    """A part of `parts_of` of this; all of it, the usual case, is the very array."""
+    if isinstance(part, float) and part == 1.0:
+        return whole
+    found: Array = part * whole
+    return found
 
 
 def parts_of(plan: Plan, moved: AirMoved, i: int, through: Array) -> list[Array | float]:
