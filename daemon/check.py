@@ -15,13 +15,12 @@ from daemon.moisture.description import (
     WATER_KG_PER_M3,
     Fixed,
     Line,
-    Measured,
     Outlet,
     Source,
     Station,
     Trap,
 )
-from daemon.moisture.flow import shows_pump_ups
+from daemon.moisture.flow import is_gauged, shows_pump_ups
 from daemon.moisture.margin import SLAB_GIVE_OR_TAKE_K, SLAB_K
 from daemon.site.default_tables import defaults_table
 from daemon.site.fitting_words import drain_words, station_words
@@ -234,8 +233,7 @@ def _slab_guess(site: Site) -> str:
 
 def _unwatched(line: Line) -> str:
     """When a compressor without a contact is taken to make air."""
-    tanks = [station for station in line.stations if station.kind == "receiver"]
-    if not any(isinstance(tank.pressure, Measured) for tank in tanks):
+    if not is_gauged(line):
         return "nobody sees when: neither a contact nor the tank's pressure says so"
     if not shows_pump_ups(line):
         return "nobody sees when: no contact says so, and readings are too far apart"

@@ -15,7 +15,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 
-from daemon.moisture.description import Line
+from daemon.moisture.description import Line, Measured
 from daemon.moisture.ensemble import Array
 from daemon.moisture.leaks import REFERENCE_PA
 from daemon.moisture.plan import Plan
@@ -46,6 +46,14 @@ def shortest_pump_up_s(line: Line) -> float:
     volume_m3 = sum(each.value for each in volumes if each is not None)
     swing_pa = compressor.cut_out.value - compressor.cut_in.value
     return volume_m3 * swing_pa / (REFERENCE_PA * compressor.delivered.value)
+
+
+def is_gauged(line: Line) -> bool:
+    """Whether anybody measures the pressure of a tank."""
+    return any(
+        station.kind == "receiver" and isinstance(station.pressure, Measured)
+        for station in line.stations
+    )
 
 
 def shows_pump_ups(line: Line) -> bool:

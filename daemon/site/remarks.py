@@ -8,7 +8,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from daemon.moisture.description import Measured, Station
-from daemon.moisture.flow import shortest_pump_up_s, shows_pump_ups
+from daemon.moisture.flow import is_gauged, shortest_pump_up_s, shows_pump_ups
 from daemon.site.fitting_remarks import fitting_remarks, is_dried
 from daemon.site.names import Names
 from daemon.site.types import Site
@@ -57,10 +57,7 @@ def _sensors(site: Site) -> Iterator[str]:
 
 def _compressor(site: Site, loaded_contact: bool) -> Iterator[str]:
     compressor, period_s = site.line.compressor, site.line.period_s
-    measured = any(
-        station.kind == "receiver" and isinstance(station.pressure, Measured)
-        for station in site.line.stations
-    )
+    measured = is_gauged(site.line)
     if compressor.running is None and not measured:
         yield (
             "Nothing says when the compressor makes air, neither a contact nor the tank's "
