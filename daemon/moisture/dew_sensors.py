@@ -18,13 +18,13 @@ from daemon.moisture.beliefs import Beliefs, bias_of
 from daemon.moisture.conditions import Conditions, Held
 from daemon.moisture.density import mole_fraction_unchecked
 from daemon.moisture.description import Measured, VentedCell
-from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array
+from daemon.moisture.ensemble import HALF_WIDTH_TO_SD, Array, percentiles
 from daemon.moisture.model import State
 from daemon.moisture.plan import Plan
 
-# A measured dew point contradicts what is believed where its least is above this percentile by so
-# much: more than rounding and a moment's lag.
-MOST_BELIEVED, WETTER_K = 95.0, 1.0
+# A measured dew point contradicts what is believed where its least is above the 95th percentile by
+# so much: more than rounding and a moment's lag.
+WETTER_K = 1.0
 DRIEST = 1e-8  # kg/kg, below every dryer's air and within the formulas' range
 
 
@@ -160,7 +160,7 @@ def wetter(plan: Plan, state: State, station: int) -> tuple[float, float] | None
     said = measured(plan, state.beliefs, state.held, state.conditions, station)
     if said is None or said.low_k is None:
         return None
-    most = float(np.percentile(state.water.leaving_ratio[station], MOST_BELIEVED))
+    most = float(percentiles(state.water.leaving_ratio[station])[2])
     pressure_pa = np.median(state.conditions.pressure_pa[station], keepdims=True)
     most_k = float(air.dew_point_unchecked(np.array([max(most, DRIEST)]), pressure_pa)[0])
     return (said.low_k, most_k) if said.low_k > most_k + WETTER_K else None
