@@ -8,7 +8,7 @@ from dataclasses import dataclass
 
 from daemon.alarms import Transition
 from daemon.clock import format_rfc3339
-from daemon.going_back import TOO_OLD_US
+from daemon.going_back import is_reckoned_with
 from daemon.journal import Drain, Entry, body_to_json
 from daemon.moisture.description import WATER_KG_PER_M3
 from daemon.units import from_si, recorded_from_si, to_si
@@ -163,7 +163,7 @@ def _not_for_replay(entry: Entry, drain: Drain, traps: Collection[str], first_us
         return "of traps that the site file does not have"
     if entry.at_us < first_us:
         return "before the first reading"
-    if entry.at_us < entry.written_us - TOO_OLD_US:
+    if not is_reckoned_with(entry):
         return "reported more than a week late, which the model did not go back for"
     return ""
 

@@ -22,6 +22,11 @@ TOO_OLD_US = 7 * DAY_US  # an entry dated before this is kept, but the model doe
 AT_ONCE_US = 10 * MINUTE_US  # of the record, between two looks at the time
 
 
+def is_reckoned_with(entry: Entry) -> bool:
+    """Whether the model goes back to when an entry is dated, should that be in the past."""
+    return entry.at_us >= entry.written_us - TOO_OLD_US
+
+
 @dataclass(frozen=True, slots=True)
 class Back:
     """A state that was come back to."""
@@ -78,7 +83,7 @@ class GoingBack:
     def _entries(self) -> list[Entry]:
         """What is recorded by now, dated after the state, in order of time."""
         found = self._store.entries(from_us=self._state.time_us + 1)
-        usable = [entry for entry in found if entry.at_us >= entry.written_us - TOO_OLD_US]
+        usable = [entry for entry in found if is_reckoned_with(entry)]
         return sorted(usable, key=lambda entry: (entry.at_us, entry.seq))
 
     def _advance(self, until_us: int, entries: list[Entry]) -> None:

@@ -12,7 +12,7 @@ from daemon.checkpoint import decode, encode
 from daemon.clock import HOUR_US, format_rfc3339
 from daemon.counted import COUNTED_KEY
 from daemon.errors import StoreError
-from daemon.going_back import TOO_OLD_US, Back, GoingBack
+from daemon.going_back import TOO_OLD_US, Back, GoingBack, is_reckoned_with
 from daemon.journal import Entry
 from daemon.moisture.ensemble import spread
 from daemon.moisture.line import new_ledger
@@ -105,11 +105,7 @@ class Recovery:
         """What a checkpoint made at a time does not know, and should: entries dated before it, and
         the times of drains that it reckons with and that were undone."""
         dated = self._store.entries(from_us=max(at_us - TOO_OLD_US, grid_us + 1), to_us=at_us + 1)
-        late = [
-            entry
-            for entry in dated
-            if entry.written_us > at_us and entry.at_us >= entry.written_us - TOO_OLD_US
-        ]
+        late = [entry for entry in dated if entry.written_us > at_us and is_reckoned_with(entry)]
         undone_us = [
             drain.at_us
             for drain, undo in self._undone()
@@ -122,7 +118,7 @@ class Recovery:
         found = []
         for seq, undo in self._store.undoings().items():
             drain = self._store.entry(seq)
-            if drain is not None and drain.at_us >= drain.written_us - TOO_OLD_US:
+            if drain is not None and is_reckoned_with(drain):
                 found.append((drain, undo))
         return found
 

@@ -21,7 +21,7 @@ from daemon.counted import COUNTED_KEY, marked, notice_of
 from daemon.dew_points import dew_point_views
 from daemon.errors import JournalError, StoreError, UndoError
 from daemon.foresight import Score
-from daemon.going_back import TOO_OLD_US, Back, GoingBack
+from daemon.going_back import Back, GoingBack, is_reckoned_with
 from daemon.hour_figures import NOTHING, Noted, joined
 from daemon.hours_left import hours_left
 from daemon.journal import Body, Drain, Entry, Undo
@@ -431,7 +431,7 @@ class Shell:
         if not late and self._undone_us is None:
             self._going = None
             return
-        usable = [entry for entry in late if entry.at_us >= entry.written_us - TOO_OLD_US]
+        usable = [entry for entry in late if is_reckoned_with(entry)]
         for entry in late:
             if entry not in usable:
                 log.warning("entry %d is more than 7 days old: kept, not reckoned with", entry.seq)
@@ -614,7 +614,7 @@ class Shell:
         state = self._state
         if len(waiting) < len(self._pending) or state is None:
             self._pending, self._going = waiting, None  # no tick had taken it in
-        elif drain.at_us >= drain.written_us - TOO_OLD_US:
+        elif is_reckoned_with(drain):
             undone_us = drain.at_us if self._undone_us is None else self._undone_us
             self._undone_us = min(undone_us, drain.at_us)
             if self._going is not None and drain.at_us <= self._going.reached_us:
